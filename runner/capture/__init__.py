@@ -1,0 +1,1 @@
+"""Frames: files found by pattern, read once, whole or refused."""

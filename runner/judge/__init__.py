@@ -1,0 +1,1 @@
+"""Verdicts and blame from readings and limits."""

@@ -1,0 +1,1 @@
+"""Readings with their uncertainty: targets find regions, methods measure them; no limit is known here."""

@@ -1,0 +1,1 @@
+"""Shelf of methods: one file per measurement; the folder is the list."""

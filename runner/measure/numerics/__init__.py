@@ -1,0 +1,1 @@
+"""Arithmetic that knows no target: edges, spectra, fits, pupils."""

@@ -1,0 +1,1 @@
+"""Shelf of targets: one file per kind of scene; the folder is the list."""

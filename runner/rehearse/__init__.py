@@ -1,0 +1,1 @@
+"""Synthetic captures through a known transfer function; every frame is marked as simulated."""
