@@ -63,7 +63,7 @@ class ShelfError(ProbatumError):
 
 
 class FrameRefused(ProbatumError):
-    """Raised when a file cannot be evidence: truncated, wrong size, twice the same, of another unit …"""
+    """Raised when a file cannot be evidence: truncated, wrong size, twice the same, of another unit."""
 
 
 class MeasurementRefused(ProbatumError):
@@ -79,4 +79,4 @@ class SigningError(ProbatumError):
 
 
 class VerificationRefused(ProbatumError):
-    """Raised when a report does not hold: changed, not signed, not following from its readings …"""
+    """Raised when a report does not hold: changed, not signed, not following from its readings."""

@@ -118,7 +118,7 @@ class Target(Protocol):
 
     def locate(
         self, frames: Sequence[Frame], regions: Sequence[Region], camera: Camera, options: Any
-    ) -> Sequence[Found | NotFound]:  # noqa: E501
+    ) -> Sequence[Found | NotFound]:
         """Find every region of the capture in its first frame; never raises for what the frame holds."""
         ...
 

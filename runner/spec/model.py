@@ -149,7 +149,7 @@ class FramePattern:
     """Which files are frames of a capture."""
 
     names: str
-    """Pattern relative to the unit's (or attempt's) folder: `*` and named parts in braces, e.g. `chart-{repeat}.tif`."""
+    """Pattern relative to the unit's (or attempt's) folder: `*` and named parts in braces (`a-{repeat}.tif`)."""
     count: int | None = None
     """How many there must be; None accepts any number from one."""
 
@@ -181,7 +181,7 @@ class Chart:
     due: str = ""
     """Calibration due date, ISO 8601."""
     transfer: tuple[tuple[float, float], ...] = ()
-    """The chart's own transfer function in the image: (cy/px, modulation), rising in frequency; empty is 1 everywhere."""
+    """The chart's own transfer function in the image: (cy/px, modulation), rising; empty is 1."""
     transfer_u: float = 0.0
     """Standard uncertainty of those modulations."""
 
