@@ -116,6 +116,14 @@ class Target(Protocol):
     REFERENCES: tuple[str, ...]
     Options: Any
 
+    def read_options(self, asked: Mapping[str, Any]) -> Any:
+        """Turn the spec's keys into the module's `Options` record.
+
+        Raises:
+            UsageError: A key or value is not allowed.
+        """
+        ...
+
     def locate(
         self, frames: Sequence[Frame], regions: Sequence[Region], camera: Camera, options: Any
     ) -> Sequence[Found | NotFound]:
@@ -132,6 +140,14 @@ class Method(Protocol):
     """What a region must offer."""
     REFERENCES: tuple[str, ...]
     Options: Any
+
+    def read_options(self, asked: Mapping[str, Any]) -> Any:
+        """Turn the spec's keys into the module's `Options` record.
+
+        Raises:
+            UsageError: A key or value is not allowed.
+        """
+        ...
 
     def quantity(self, name: str) -> QuantityInfo | None:
         """Return what a quantity name means, or None if this method does not yield it."""

@@ -1,0 +1,37 @@
+"""A frame without light: companion of other captures; the whole frame is its region."""
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+from runner.capture.frame import Frame
+from runner.measure.contract import Found, NotFound
+from runner.measure.numerics.uniform import locate_uniform
+from runner.measure.options import read_record
+from runner.spec.model import Camera, Region
+
+NAME = "dark frame"
+TITLE = "Dark frame"
+OFFERS = frozenset({"uniform"})
+METHODS: tuple[str, ...] = ()
+REFERENCES = ("EMVA Standard 1288 Release 4.0 Linear (2021), dark measurement",)
+
+
+@dataclass(frozen=True)
+class Options:
+    """There is nothing to choose."""
+
+
+def read_options(asked: Mapping[str, Any]) -> Options:
+    """Read the options; none are known."""
+    return read_record(Options, asked)
+
+
+def locate(
+    frames: Sequence[Frame],
+    regions: Sequence[Region],
+    camera: Camera,
+    options: Options,  # noqa: ARG001 - the contract's form
+) -> Sequence[Found | NotFound]:
+    """Offer each region as it stands; without regions, the whole frame."""
+    return locate_uniform(frames[0], regions, camera, lit=False)
