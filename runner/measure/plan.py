@@ -1,0 +1,207 @@
+"""Binds a spec's names to the shelves before the first frame is opened.
+
+Targets, methods, options, quantities, parameters and units: what is not known is complained about here.
+"""
+
+import difflib
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass
+from typing import Any
+
+from runner.errors import Complaint, SpecError, UsageError
+from runner.measure import shelf
+from runner.measure.contract import Method, QuantityInfo, Target, Wanted
+from runner.measure.options import describe
+from runner.spec import units
+from runner.spec.model import Bound, Capture, Limit, Spec, Station, UncertaintyComponent
+
+ALWAYS = ("exposure",)
+"""Methods that run on every region: without level and clipping nobody can tell a dark lamp from a bad unit."""
+REPEATS = frozenset({"repeat", "page"})
+"""Axes along which frames are repeats of one another."""
+
+
+@dataclass(frozen=True)
+class MethodPlan:
+    """One method on one capture."""
+
+    method: Method
+    """The module."""
+    options: Any
+    """Its options record."""
+    wanted: Mapping[str, tuple[Wanted, ...]]
+    """Readings that limits ask for, by region."""
+
+
+@dataclass(frozen=True)
+class CapturePlan:
+    """One capture, bound."""
+
+    capture: Capture
+    """As asked."""
+    target: Target
+    """The module."""
+    target_options: Any
+    """Its options record."""
+    methods: tuple[MethodPlan, ...]
+    """In the order of measuring."""
+
+
+@dataclass(frozen=True)
+class Plan:
+    """A whole spec, bound."""
+
+    spec: Spec
+    """As asked."""
+    captures: tuple[CapturePlan, ...]
+    """In the order of the spec."""
+    uncertainty: tuple[UncertaintyComponent, ...]
+    """Declared components of spec and station together."""
+
+    def defaults(self) -> dict[str, Any]:
+        """Return what the program filled in, as plain JSON data for the results."""
+        return {
+            plan.capture.name: {
+                "target": {plan.target.NAME: describe(plan.target_options)},
+                "measure": {m.method.NAME: describe(m.options) for m in plan.methods},
+            }
+            for plan in self.captures
+        }
+
+
+def bind(spec: Spec, station: Station | None = None) -> Plan:
+    """Bind every name of a spec.
+
+    Raises:
+        SpecError: With all complaints: unknown targets, methods, options, quantities, parameters, units.
+        ShelfError: A module cannot be used.
+    """
+    complaints: list[Complaint] = []
+    captures = tuple(plan for c in spec.captures if (plan := _bind_capture(spec, c, complaints)) is not None)
+    declared = spec.uncertainty + (station.uncertainty if station else ())
+    if complaints:
+        raise SpecError(tuple(complaints))
+    return Plan(spec, captures, declared)
+
+
+def _bind_capture(spec: Spec, capture: Capture, complaints: list[Complaint]) -> CapturePlan | None:
+    place = f"{spec.source}: captures, {capture.name}"
+    target = shelf.targets().get(capture.target)
+    if target is None:
+        complaints.append(_unknown(place, "target", capture.target, shelf.targets()))
+        return None
+    chosen: dict[str, Mapping[str, Any]] = dict(capture.measure) or {name: {} for name in target.METHODS}
+    chosen |= {name: {} for name in ALWAYS if name not in chosen}
+    bound: list[tuple[Method, Any]] = []
+    for name, asked in chosen.items():
+        method = shelf.methods().get(name)
+        if method is None:
+            complaints.append(_unknown(f"{place}, measure", "method", name, shelf.methods()))
+            continue
+        if not method.NEEDS <= target.OFFERS:
+            found = f"method '{name}' needs {', '.join(sorted(method.NEEDS))}; target '{target.NAME}' does not offer it"
+            complaints.append(Complaint(f"{place}, measure", found, next_step="choose another method or target"))
+            continue
+        try:
+            bound.append((method, method.read_options(asked)))
+        except UsageError as error:
+            complaints.append(Complaint(f"{place}, measure, {name}", error.found, error.allowed, error.next_step))
+    try:
+        target_options = target.read_options(capture.target_options)
+    except UsageError as error:
+        complaints.append(Complaint(f"{place}, target", error.found, error.allowed, error.next_step))
+        target_options = None
+    wanted = _bind_limits(capture, place, [m for m, _ in bound], complaints)
+    for one in capture.usable_if:
+        _bind_bound(capture, one, place, [m for m, _ in bound], complaints)
+    plans = tuple(MethodPlan(m, o, wanted.get(m.NAME, {})) for m, o in bound)
+    return CapturePlan(capture, target, target_options, plans)
+
+
+def _unknown(place: str, kind: str, name: str, known: Iterable[str]) -> Complaint:
+    near = difflib.get_close_matches(name, list(known), n=1)
+    hint = f"did you mean '{near[0]}'?" if near else ""
+    return Complaint(place, f"unknown {kind} '{name}'", f"known are: {', '.join(sorted(known))}", hint)
+
+
+def _bind_limits(
+    capture: Capture, place: str, methods: list[Method], complaints: list[Complaint]
+) -> dict[str, dict[str, tuple[Wanted, ...]]]:
+    wanted: dict[str, dict[str, tuple[Wanted, ...]]] = {}
+    for limit in capture.limits:
+        where = f"{place}, limit {limit.characteristic}"
+        method, info = _provider(limit.quantity, limit.method, methods)
+        if method is None or info is None:
+            complaints.append(_no_provider(where, limit.quantity, limit.method, methods))
+            continue
+        at = _parameters(capture, limit, info, where, complaints)
+        if at is None or not _unit_fits(capture, limit.unit, info, limit.quantity, where, complaints):
+            continue
+        one = Wanted(limit.quantity, limit.parameters, at, limit.part, limit.estimator)
+        regions = (*limit.where, *limit.against) or ("",)
+        mine = wanted.setdefault(method.NAME, {})
+        for region in regions:
+            if one not in mine.get(region, ()):
+                mine[region] = (*mine.get(region, ()), one)
+    return wanted
+
+
+def _provider(quantity: str, method: str | None, methods: list[Method]) -> tuple[Method | None, QuantityInfo | None]:
+    for candidate in methods:
+        if method in {None, candidate.NAME} and (info := candidate.quantity(quantity)) is not None:
+            return candidate, info
+    return None, None
+
+
+def _no_provider(where: str, quantity: str, method: str | None, methods: list[Method]) -> Complaint:
+    known = sorted(name for m in methods if method in {None, m.NAME} for name in m.quantities())
+    return _unknown(where, "quantity", quantity, known)
+
+
+def _parameters(
+    capture: Capture, limit: Limit, info: QuantityInfo, where: str, complaints: list[Complaint]
+) -> dict[str, float] | None:
+    context = units.context_of(capture.camera, capture.optics)
+    at: dict[str, float] = {}
+    good = True
+    for name in limit.parameters:
+        if name not in info.parameters:
+            complaints.append(Complaint(where, f"{limit.quantity} takes no '{name}'", next_step="leave it out"))
+            good = False
+    for name, unit in info.parameters.items():
+        amount = limit.parameters.get(name)
+        if amount is None:
+            complaints.append(Complaint(where, f"{limit.quantity} needs '{name}'", f"for example {name}: 0.25 {unit}"))
+            good = False
+            continue
+        try:
+            at[name] = units.convert(amount.value, amount.unit, unit, context)
+        except UsageError as error:
+            complaints.append(Complaint(where, error.found, error.allowed, error.next_step))
+            good = False
+    return at if good else None
+
+
+def _unit_fits(
+    capture: Capture, unit: str, info: QuantityInfo, quantity: str, where: str, complaints: list[Complaint]
+) -> bool:
+    try:
+        units.convert(1.0, info.unit, unit, units.context_of(capture.camera, capture.optics))
+    except UsageError as error:
+        found = f"{quantity} is measured in {info.unit}, its limit is given in {unit}: {error.found}"
+        complaints.append(Complaint(where, found, error.allowed, error.next_step))
+        return False
+    return True
+
+
+def _bind_bound(capture: Capture, bound: Bound, place: str, methods: list[Method], complaints: list[Complaint]) -> None:
+    where = f"{place}, usable_if"
+    method, info = _provider(bound.quantity, None, methods)
+    if method is None or info is None:
+        complaints.append(_no_provider(where, bound.quantity, None, methods))
+    elif info.parameters:
+        complaints.append(
+            Complaint(where, f"{bound.quantity} needs parameters", "usable_if takes plain quantities only")
+        )
+    else:
+        _unit_fits(capture, bound.unit, info, bound.quantity, where, complaints)

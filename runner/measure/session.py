@@ -1,0 +1,259 @@
+"""Measures one unit: every capture, frame, region and method of the plan, repeats combined, nothing judged.
+
+A fault of one method leaves its readings refused with the cause `fault`; all others go on.
+"""
+
+import traceback
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, field, replace
+
+from runner.capture.frame import Box, Crop, Frame, crop
+from runner.errors import FrameRefused, MeasurementRefused
+from runner.measure.contract import Found, Measurement, NotFound, QuantityInfo, Sample, Wanted
+from runner.measure.evidence import CaptureEvidence, FrameFact, RegionFact, UnitEvidence
+from runner.measure.plan import CapturePlan, MethodPlan, Plan
+from runner.measure.reading import Curve, Reading, Refusal
+from runner.measure.uncertainty import mean_of_repeats, with_declared
+from runner.spec import units
+
+Loader = Callable[[str], Sequence[Frame]]
+"""Gives the frames of a capture by its name; raises FrameRefused."""
+Painter = Callable[[str, int, Frame, Sequence[RegionFact]], None]
+"""Is shown each capture's first frame with its regions, for pictures: (capture, attempt, frame, regions)."""
+
+
+@dataclass
+class Faults:
+    """Tracebacks of the program's own faults, for the person who mends it."""
+
+    tracebacks: list[str] = field(default_factory=list)
+    """One text each."""
+
+
+def measure_attempt(
+    plan: Plan,
+    attempt: int,
+    load: Loader,
+    known_faults: Mapping[str, tuple[str, ...]],
+    *,
+    painter: Painter | None = None,
+    faults: Faults | None = None,
+) -> tuple[tuple[CaptureEvidence, ...], tuple[Reading, ...], tuple[Curve, ...]]:
+    """Measure every capture of one attempt.
+
+    Args:
+        plan: The bound spec.
+        attempt: Its number, from 1.
+        load: Gives a capture's frames.
+        known_faults: Sentences from the survey, by capture; such a capture is not measured.
+        painter: Is shown the frames, for pictures.
+        faults: Collects the program's own faults.
+    """
+    captures: list[CaptureEvidence] = []
+    readings: list[Reading] = []
+    curves: list[Curve] = []
+    companions = _Companions(plan, load, known_faults)
+    for one in plan.captures:
+        evidence, measured = _measure_capture(plan, one, attempt, load, known_faults, companions, painter, faults)
+        captures.append(evidence)
+        readings += measured.readings
+        curves += measured.curves
+    return tuple(captures), tuple(readings), tuple(curves)
+
+
+def unit_evidence(
+    serial: str, parts: Sequence[tuple[tuple[CaptureEvidence, ...], tuple[Reading, ...], tuple[Curve, ...]]]
+) -> UnitEvidence:
+    """Put the attempts of a unit together, in one fixed order."""
+    return UnitEvidence(
+        serial,
+        tuple(capture for part in parts for capture in part[0]),
+        tuple(sorted((r for part in parts for r in part[1]), key=_order)),
+        tuple(
+            sorted(
+                (c for part in parts for c in part[2]),
+                key=lambda c: (c.capture, c.attempt, c.region, c.channel, c.name, c.estimator),
+            )
+        ),
+    )
+
+
+def _order(reading: Reading) -> tuple[object, ...]:
+    parameters = sorted((k, a.value, a.unit) for k, a in reading.parameters.items())
+    place = (reading.capture, reading.attempt, reading.region, reading.channel)
+    return (*place, reading.quantity, parameters, reading.part, reading.estimator)
+
+
+class _Companions:
+    """Frames of companion captures, read when first needed and kept while this attempt is measured."""
+
+    def __init__(self, plan: Plan, load: Loader, known_faults: Mapping[str, tuple[str, ...]]) -> None:
+        self._cameras = {one.capture.name: one.capture.camera for one in plan.captures}
+        self._load, self._known_faults = load, known_faults
+        self._frames: dict[str, Sequence[Frame]] = {}
+
+    def crops(self, uses: Mapping[str, str], box: Box) -> dict[str, tuple[Crop, ...]]:
+        """Return the same box out of every companion that could be read; a role without frames is left out."""
+        found = {}
+        for role, name in uses.items():
+            frames = self._read(name)
+            if frames:
+                found[role] = tuple(crop(frame, box, self._cameras[name]) for frame in frames)
+        return found
+
+    def _read(self, name: str) -> Sequence[Frame]:
+        if name not in self._frames:
+            try:
+                self._frames[name] = () if self._known_faults.get(name) else self._load(name)
+            except FrameRefused:
+                self._frames[name] = ()  # the companion's own capture tells why
+        return self._frames[name]
+
+
+def _measure_capture(
+    plan: Plan,
+    one: CapturePlan,
+    attempt: int,
+    load: Loader,
+    known_faults: Mapping[str, tuple[str, ...]],
+    companions: _Companions,
+    painter: Painter | None,
+    faults: Faults | None,
+) -> tuple[CaptureEvidence, Measurement]:
+    name = one.capture.name
+    evidence = CaptureEvidence(name, attempt, one.capture.target, (), known_faults.get(name, ()))
+    if evidence.faults:
+        return evidence, Measurement(())
+    try:
+        frames = load(name)
+    except FrameRefused as error:
+        return replace(evidence, faults=(str(error),)), Measurement(())
+    located = [
+        one.target.locate([frame], one.capture.regions, one.capture.camera, one.target_options) for frame in frames
+    ]
+    regions = tuple(_fact(found) for found in located[0])
+    if painter is not None:
+        painter(name, attempt, frames[0], regions)
+    repeats = [
+        _measure_frame(one, frame, found, companions, faults) for frame, found in zip(frames, located, strict=True)
+    ]
+    readings = _combine([m.readings for m in repeats])
+    context = units.context_of(one.capture.camera, one.capture.optics)
+    declared = tuple(
+        replace(with_declared(reading, plan.uncertainty, context), capture=name, attempt=attempt)
+        for reading in readings
+    )
+    curves = tuple(replace(curve, capture=name, attempt=attempt) for curve in repeats[0].curves)
+    return replace(evidence, frames=tuple(_frame_fact(f) for f in frames), regions=regions), Measurement(
+        declared, curves
+    )
+
+
+def _measure_frame(
+    one: CapturePlan, frame: Frame, located: Sequence[Found | NotFound], companions: _Companions, faults: Faults | None
+) -> Measurement:
+    readings: list[Reading] = []
+    curves: list[Curve] = []
+    for found in located:
+        for plan in one.methods:
+            measured = _measure_region(one, frame, found, plan, companions, faults)
+            readings += measured.readings
+            curves += measured.curves
+    return Measurement(tuple(readings), tuple(curves))
+
+
+def _measure_region(
+    one: CapturePlan,
+    frame: Frame,
+    found: Found | NotFound,
+    plan: MethodPlan,
+    companions: _Companions,
+    faults: Faults | None,
+) -> Measurement:
+    wanted = plan.wanted.get(found.region, ())
+    if isinstance(found, NotFound):
+        if plan.method.NEEDS or found.box is None or not found.box.inside(frame.shape[1], frame.shape[0]):
+            return _refused(plan, found.region, wanted, Refusal(found.cause, found.because))
+        found = Found(found.region, found.box)
+    capture = one.capture
+    sample = Sample(
+        found,
+        crop(frame, found.box, capture.camera),
+        capture.camera,
+        capture.optics,
+        capture.chart,
+        wanted,
+        companions.crops(capture.uses, found.box),
+    )
+    try:
+        measured = plan.method.measure(sample, plan.options)
+    except MeasurementRefused as error:
+        return _refused(plan, found.region, wanted, Refusal(error.cause, str(error)))
+    except Exception as error:  # noqa: BLE001 - one method's fault must not take the unit's other readings along
+        if faults is not None:
+            faults.tracebacks.append(f"{frame.file}, {found.region}, {plan.method.NAME}\n{traceback.format_exc()}")
+        because = f"the program failed in '{plan.method.NAME}': {type(error).__name__}: {error}"
+        return _refused(plan, found.region, wanted, Refusal("fault", because))
+    return _complete(measured, plan, found.region, wanted)
+
+
+def _complete(measured: Measurement, plan: MethodPlan, region: str, wanted: tuple[Wanted, ...]) -> Measurement:
+    """Add a refused reading for whatever was wanted and did not come: silence must never look like a pass."""
+    missing = tuple(w for w in wanted if not any(_answers(r, w) for r in measured.readings))
+    if not missing:
+        return measured
+    lost = _refused(plan, region, missing, Refusal("fault", f"'{plan.method.NAME}' gave no value for it"))
+    return replace(measured, readings=(*measured.readings, *lost.readings))
+
+
+def _answers(reading: Reading, wanted: Wanted) -> bool:
+    return (reading.quantity, reading.part) == (wanted.quantity, wanted.part) and (
+        dict(reading.parameters) == dict(wanted.parameters) and wanted.estimator in {None, reading.estimator}
+    )
+
+
+def _refused(plan: MethodPlan, region: str, wanted: tuple[Wanted, ...], refusal: Refusal) -> Measurement:
+    """Give every reading that was wanted, or the method's plain ones where nothing was, its reason."""
+    asked = wanted or tuple(Wanted(q, {}, {}) for q, info in plan.method.quantities().items() if not info.parameters)
+    return Measurement(
+        tuple(
+            Reading(
+                region,
+                w.quantity,
+                _unit(plan.method.quantity(w.quantity)),
+                None,
+                None,
+                parameters=w.parameters,
+                part=w.part,
+                estimator=w.estimator or "",
+                refusal=refusal,
+            )
+            for w in asked
+        )
+    )
+
+
+def _unit(info: QuantityInfo | None) -> str:
+    return info.unit if info is not None else "1"
+
+
+def _combine(repeats: Sequence[tuple[Reading, ...]]) -> list[Reading]:
+    groups: dict[tuple[object, ...], list[Reading]] = {}
+    for readings in repeats:
+        for reading in readings:
+            parameters = tuple(sorted((k, a.value, a.unit) for k, a in reading.parameters.items()))
+            key = (reading.region, reading.channel, reading.quantity, parameters, reading.part, reading.estimator)
+            groups.setdefault(key, []).append(reading)
+    return [mean_of_repeats(group) if len(group) > 1 else group[0] for group in groups.values()]
+
+
+def _fact(found: Found | NotFound) -> RegionFact:
+    box = found.box
+    edges = None if box is None else (box.x0, box.y0, box.x1, box.y1)
+    if isinstance(found, NotFound):
+        return RegionFact(found.region, found=False, box=edges)
+    return RegionFact(found.region, found=True, box=edges, outline=found.outline)
+
+
+def _frame_fact(frame: Frame) -> FrameFact:
+    return FrameFact(frame.file, frame.sha256, frame.shape, str(frame.codes.dtype), frame.page, frame.simulated)
