@@ -1,0 +1,74 @@
+"""The circumstances of a measurement as they stand in a report: conditions, methods, deviations."""
+
+from typing import Any
+
+from runner.measure.contract import Method, Target
+from runner.measure.evidence import UnitEvidence
+from runner.measure.options import describe
+from runner.measure.plan import CapturePlan, Plan
+from runner.spec.model import Camera, Chart, Optics
+
+
+def conditions(camera: Camera, optics: Optics, chart: Chart) -> list[list[str]]:
+    """Return the stated conditions of a capture as pairs of label and text; what was not stated is left out."""
+    tone = {"linear": "linear", "srgb": "sRGB (IEC 61966-2-1)", "table": "table"}.get(camera.tone.kind)
+    rows: list[tuple[str, Any]] = [
+        ("frame size", f"{camera.width} × {camera.height} px"),
+        ("bit depth", f"{camera.bit_depth} bit"),
+        ("black level", f"{camera.black_level:g} DN"),
+        ("white level", f"{camera.white_level:g} DN"),
+        ("tone", tone or f"gamma {camera.tone.gamma:g}"),
+        ("processing", ", ".join(camera.processing) or "none"),
+        ("delivers", camera.delivers),
+        ("pixel pitch", _stated(camera.pixel_pitch_um, "µm")),
+        ("pixel fill", f"{100 * camera.fill:g} %"),
+        ("f-number", _stated(optics.f_number)),
+        ("numerical aperture", _stated(optics.numerical_aperture)),
+        ("wavelength", _stated(optics.wavelength_um, "µm")),
+        ("focal length", _stated(optics.focal_length_mm, "mm")),
+        ("magnification", _stated(optics.magnification, "×")),
+        ("chart", " ".join(part for part in (chart.name, chart.serial) if part)),
+        ("chart calibration due", chart.due),
+    ]
+    return [[label, text] for label, text in rows if text]
+
+
+def _stated(value: float | None, unit: str = "") -> str:
+    return "" if value is None else f"{value:g} {unit}".strip()
+
+
+def methods(plan: Plan) -> list[dict[str, Any]]:
+    """Return targets and methods with titles, references and options, as plain JSON data."""
+    rows: list[dict[str, Any]] = []
+    for one in plan.captures:
+        rows.append(_module(one, one.target, one.target_options))
+        rows += [_module(one, m.method, m.options) for m in one.methods]
+    return rows
+
+
+def _module(one: CapturePlan, module: Target | Method, options: Any) -> dict[str, Any]:
+    return {
+        "capture": one.capture.name,
+        "name": module.NAME,
+        "title": module.TITLE,
+        "references": list(module.REFERENCES),
+        "options": describe(options),
+    }
+
+
+def deviations(plan: Plan, evidence: UnitEvidence) -> list[str]:
+    """Return what departs from a plain measurement of raw frames, one sentence each."""
+    camera = plan.spec.camera
+    rows = []
+    if camera.delivers == "jpeg":
+        rows.append("The product delivers JPEG: its compression is part of what was measured.")
+    if camera.processing:
+        words = ", ".join(camera.processing)
+        rows.append(
+            f"The product processes its frames ({words}): the values describe optics, sensor and processing together."
+        )
+    if evidence.simulated:
+        rows.append(
+            "At least one frame is marked as simulated: this report shows a rehearsal and is no evidence of a unit."
+        )
+    return rows

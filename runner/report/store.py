@@ -1,0 +1,140 @@
+"""Files that appear whole or not at all, and the folder of a run."""
+
+import contextlib
+import fcntl
+import json
+import os
+import shutil
+import tempfile
+from collections.abc import Iterator, Mapping
+from pathlib import Path
+from typing import Any
+
+from runner.errors import UsageError
+
+RESULTS = "results.json"
+HTML = "report.html"
+HTML_SIGNATURE = "report.html.p7s"
+PDF = "report.pdf"
+PICTURES = "pictures"
+EARLIER = "earlier"
+RUN = "run.json"
+_MAKING = ".making-"
+
+
+def write_whole(path: Path, data: bytes) -> None:
+    """Write a file beside its place, flush it to the disk and rename it into place."""
+    path.parent.mkdir(parents=True, exist_ok=True)
+    handle, name = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name}.")
+    try:
+        with os.fdopen(handle, "wb") as file:
+            file.write(data)
+            file.flush()
+            os.fsync(file.fileno())
+        Path(name).chmod(0o644)
+        Path(name).replace(path)
+    except BaseException:
+        Path(name).unlink(missing_ok=True)
+        raise
+
+
+def write_unit(out: Path, serial: str, files: Mapping[str, bytes], earlier: str | None) -> Path:
+    """Write a unit's folder whole; an older one moves into the new one's `earlier/<time>/`.
+
+    Args:
+        out: Folder of the run.
+        serial: The unit.
+        files: Contents by path relative to the unit's folder.
+        earlier: Path below the unit's folder that takes the old files, or None when there are none.
+    """
+    place = out / serial
+    making = out / f"{_MAKING}{serial}"
+    shutil.rmtree(making, ignore_errors=True)
+    for name, data in files.items():
+        write_whole(making / name, data)
+    if place.exists() and earlier is not None:
+        older = place / EARLIER
+        if older.exists():
+            older.rename(making / EARLIER)
+        (making / EARLIER).mkdir(exist_ok=True)
+        place.rename(making / earlier)
+    making.rename(place)
+    return place
+
+
+def earlier_name(out: Path, serial: str) -> str | None:
+    """Return where the unit's present files would move to, or None when there are none."""
+    place = out / serial
+    if not place.exists():
+        return None
+    old = read_results(place)
+    stamp = str(old.get("time", "")) if old else ""
+    stamp = "".join(c for c in stamp if c.isalnum()) or "unreadable"
+    name, n = f"{EARLIER}/{stamp}", 2
+    while (place / name).exists():
+        name, n = f"{EARLIER}/{stamp}-{n}", n + 1
+    return name
+
+
+def read_results(folder: Path) -> dict[str, Any] | None:
+    """Return a unit folder's results, or None when there are none that can be read."""
+    try:
+        document = json.loads((folder / RESULTS).read_bytes())
+    except (OSError, ValueError):
+        return None
+    return document if isinstance(document, dict) else None
+
+
+def is_complete(folder: Path, document: Mapping[str, Any]) -> bool:
+    """Tell whether every file of a unit's folder is there."""
+    names = [RESULTS, HTML, HTML_SIGNATURE, PDF, *(f"{PICTURES}/{p['name']}" for p in document.get("pictures", ()))]
+    return all((folder / name).is_file() for name in names)
+
+
+def all_results(out: Path, digest: str) -> list[dict[str, Any]]:
+    """Return the results of every unit of one spec in a run's folder, by serial."""
+    found = []
+    for folder in sorted(p for p in out.iterdir() if p.is_dir() and not p.name.startswith(".")):
+        document = read_results(folder)
+        if document is not None and document.get("document", {}).get("digest") == digest:
+            found.append(document)
+    return sorted(found, key=lambda d: str(d["unit"]["serial"]))
+
+
+@contextlib.contextmanager
+def locked(out: Path) -> Iterator[None]:
+    """Hold the run folder's lock, so that two runs into one folder do not write the lot's files at once."""
+    with (out / ".lock").open("w") as file:
+        fcntl.flock(file, fcntl.LOCK_EX)
+        yield
+
+
+def start_run(out: Path, facts: Mapping[str, Any]) -> dict[str, Any]:
+    """Fix a run's facts at its first start; a rerun takes them from there.
+
+    Raises:
+        UsageError: The folder holds a run of another spec, program or station, or cannot be written.
+    """
+    try:
+        out.mkdir(parents=True, exist_ok=True)
+        with locked(out):
+            path = out / RUN
+            if not path.exists():
+                write_whole(path, json.dumps(facts, indent=1, sort_keys=True, ensure_ascii=False).encode() + b"\n")
+                return dict(facts)
+            kept = json.loads(path.read_text(encoding="utf-8"))
+    except OSError as error:
+        raise UsageError(
+            f"the folder cannot be written: {error.strerror}", where=str(out), next_step="choose another --out"
+        ) from error
+    except ValueError as error:
+        raise UsageError(f"{RUN} cannot be read: {error}", where=str(out), next_step="choose another --out") from error
+    differing = [k for k in facts if k != "time" and kept.get(k) != facts[k]]
+    if differing:
+        raise UsageError(
+            f"it holds a run with another {', '.join(differing)}",
+            where=str(out),
+            allowed="one folder keeps one run: the same spec, program, options and station",
+            next_step="choose another --out",
+        )
+    return dict(kept)
