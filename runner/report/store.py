@@ -20,6 +20,7 @@ PICTURES = "pictures"
 EARLIER = "earlier"
 RUN = "run.json"
 _MAKING = ".making-"
+_READY = ".ready"
 
 
 def write_whole(path: Path, data: bytes) -> None:
@@ -38,41 +39,62 @@ def write_whole(path: Path, data: bytes) -> None:
         raise
 
 
-def write_unit(out: Path, serial: str, files: Mapping[str, bytes], earlier: str | None) -> Path:
+def write_unit(out: Path, serial: str, files: Mapping[str, bytes]) -> Path:
     """Write a unit's folder whole; an older one moves into the new one's `earlier/<time>/`.
 
     Args:
         out: Folder of the run.
         serial: The unit.
         files: Contents by path relative to the unit's folder.
-        earlier: Path below the unit's folder that takes the old files, or None when there are none.
     """
-    place = out / serial
     making = out / f"{_MAKING}{serial}"
+    finish(out, serial)
     shutil.rmtree(making, ignore_errors=True)
     for name, data in files.items():
         write_whole(making / name, data)
-    if place.exists() and earlier is not None:
-        older = place / EARLIER
-        if older.exists():
-            older.rename(making / EARLIER)
-        (making / EARLIER).mkdir(exist_ok=True)
-        place.rename(making / earlier)
+    (making / _READY).touch()
+    return finish(out, serial)
+
+
+def finish(out: Path, serial: str) -> Path:
+    """Bring a folder that was made whole into its place; also one that a killed run left ready.
+
+    An older folder moves below the new one, with all that was below itself. Each step is one rename, and every
+    order of steps can be taken up again, so that nothing is lost wherever the run was cut off.
+    """
+    place, making = out / serial, out / f"{_MAKING}{serial}"
+    if not (making / _READY).exists():
+        return place
+    (making / EARLIER).mkdir(exist_ok=True)
+    if place.exists():
+        name = earlier_name(out, serial, taken=making)
+        if (place / EARLIER).exists():
+            for folder in sorted((place / EARLIER).iterdir()):
+                folder.rename(making / EARLIER / folder.name)
+            (place / EARLIER).rmdir()
+        place.rename(making / name)
+    if not any((making / EARLIER).iterdir()):
+        (making / EARLIER).rmdir()
     making.rename(place)
+    (place / _READY).unlink()
     return place
 
 
-def earlier_name(out: Path, serial: str) -> str | None:
-    """Return where the unit's present files would move to, or None when there are none."""
+def earlier_name(out: Path, serial: str, *, taken: Path | None = None) -> str:
+    """Return where the unit's present files go when new ones take their place, below the unit's folder.
+
+    Args:
+        out: Folder of the run.
+        serial: The unit.
+        taken: Another folder whose names are taken too.
+    """
     place = out / serial
-    if not place.exists():
-        return None
     old = read_results(place)
-    stamp = str(old.get("time", "")) if old else ""
-    stamp = "".join(c for c in stamp if c.isalnum()) or "unreadable"
-    name, n = f"{EARLIER}/{stamp}", 2
-    while (place / name).exists():
-        name, n = f"{EARLIER}/{stamp}-{n}", n + 1
+    stamp = "".join(c for c in str(old.get("time", "")) if c.isalnum()) if old else ""
+    base = name = f"{EARLIER}/{stamp or 'unreadable'}"
+    n = 2
+    while (place / name).exists() or (taken is not None and (taken / name).exists()):
+        name, n = f"{base}-{n}", n + 1
     return name
 
 
