@@ -93,3 +93,22 @@ def test_the_top_level_is_fixed() -> None:
     built = {"dist", "build"}
 
     assert {p.name for p in ROOT.iterdir() if not p.name.startswith(".")} - built <= fixed
+
+
+@pytest.mark.parametrize("module", MODULES, ids=lambda m: str(m.relative_to(RUNNER)))
+def test_every_field_of_a_record_has_its_sentence(module: Path) -> None:
+    """Records are frozen, and each field is followed by its sentence or carries it as metadata."""
+    tree = ast.parse(module.read_text(encoding="utf-8"))
+
+    for node in ast.walk(tree):
+        if not isinstance(node, ast.ClassDef):
+            continue
+        marks = [ast.unparse(d) for d in node.decorator_list if "dataclass" in ast.unparse(d)]
+        if not marks:
+            continue
+        mutable = {"Faults"}  # collects tracebacks while a unit is measured
+        assert "frozen=True" in marks[0] or node.name in mutable, node.name
+        for field, after in zip(node.body, [*node.body[1:], None], strict=True):
+            if isinstance(field, ast.AnnAssign) and not ast.unparse(field.target).startswith("_"):
+                told = isinstance(after, ast.Expr) and isinstance(after.value, ast.Constant)
+                assert told or "sentence" in ast.unparse(field), f"{node.name}.{ast.unparse(field.target)}"

@@ -1,0 +1,76 @@
+"""Level and clipping against scenes whose answer is counted by hand."""
+
+from dataclasses import replace
+
+import numpy as np
+import pytest
+
+from runner.capture.frame import Box, Frame, crop
+from runner.measure.contract import Found, Sample
+from runner.measure.methods import exposure
+from runner.spec.model import Camera, Chart, Optics
+
+CAMERA = Camera(width=40, height=30, bit_depth=12, black_level=64, white_level=4095)
+
+
+def _readings(codes: np.ndarray, camera: Camera = CAMERA) -> dict[str, tuple[float | None, float | None]]:
+    box = Box(0, 0, codes.shape[1], codes.shape[0])
+    sample = Sample(
+        Found("all", box), crop(Frame("a.tif", "", "", codes), box, camera), camera, Optics(), Chart(), wanted=()
+    )
+    return {r.quantity: (r.value, r.u) for r in exposure.measure(sample, exposure.read_options({})).readings}
+
+
+def test_the_level_is_a_share_of_the_range() -> None:
+    """Half-way between black and white level reads 50 %, without uncertainty when there is no noise."""
+    codes = np.full((30, 40), (64 + 4095) / 2)
+
+    assert _readings(codes)["level"] == pytest.approx((50.0, 0.0))
+
+
+def test_clipping_counts_both_true_ends_of_the_range() -> None:
+    """Pixels at 4095 of a 12-bit camera and at code 0 are clipped; a code below the black level is noise."""
+    codes = np.full((30, 40), 1000, dtype=np.uint16)
+    codes[0, :3] = 4095
+    codes[1, :2] = 0
+    codes[2, :5] = 60
+
+    assert _readings(codes)["clipped"][0] == pytest.approx(100 * 5 / 1200)
+
+
+def test_code_zero_is_ordinary_where_black_level_is_zero() -> None:
+    """Without an offset, code 0 is a dark value like any other."""
+    codes = np.zeros((30, 40), dtype=np.uint8)
+    camera = replace(CAMERA, bit_depth=8, black_level=0, white_level=255)
+
+    assert _readings(codes, camera)["clipped"][0] == 0
+
+
+def test_the_levels_uncertainty_covers_its_error() -> None:
+    """Over 1000 noisy regions the level's error is as large as stated: spread over u within 0.9 to 1.1."""
+    rng = np.random.default_rng(1)
+    ratios = []
+    for _ in range(1000):
+        codes = 2000 + rng.normal(0, 20, (30, 40))
+        value, u = _readings(codes)["level"]
+        assert value is not None
+        assert u is not None
+        ratios.append((value - 100 * (2000 - 64) / (4095 - 64)) / u)
+
+    assert 0.9 < np.std(ratios) < 1.1  # 1000 draws: the sample's own scatter is 2.2 %; robust noise adds 3 %
+
+
+def test_the_frame_is_not_changed() -> None:
+    """Measuring never writes into the pixels."""
+    codes = np.arange(1200, dtype=np.uint16).reshape(30, 40)
+    before = codes.copy()
+
+    _readings(codes)
+
+    assert np.array_equal(codes, before)
+
+
+def test_every_quantity_has_a_unit_and_a_sentence() -> None:
+    """Listings can say what each quantity means."""
+    assert set(exposure.quantities()) == {"level", "clipped"}
+    assert exposure.quantity("mtf") is None

@@ -1,0 +1,42 @@
+"""Options records are read strictly."""
+
+from dataclasses import dataclass
+
+import pytest
+
+from runner.errors import UsageError
+from runner.measure.options import describe, read_record
+
+
+@dataclass(frozen=True)
+class _Options:
+    order: int = 1
+    shading: str = "none"
+
+    def __post_init__(self) -> None:
+        if not 1 <= self.order <= 5:
+            msg = f"order is {self.order}, 1 to 5 are allowed"
+            raise ValueError(msg)
+
+
+def test_what_is_not_asked_keeps_its_default() -> None:
+    """An empty mapping gives the defaults."""
+    assert read_record(_Options, {}) == _Options()
+    assert read_record(_Options, {"order": 3}).order == 3
+
+
+def test_an_unknown_key_names_the_nearest() -> None:
+    """A typo is answered with the key that was meant."""
+    with pytest.raises(UsageError, match="unknown option 'ordre'; known are: order, shading; did you mean 'order'"):
+        read_record(_Options, {"ordre": 2})
+
+
+def test_a_refused_value_keeps_the_records_sentence() -> None:
+    """The record's own sentence reaches the user."""
+    with pytest.raises(UsageError, match="order is 9, 1 to 5 are allowed"):
+        read_record(_Options, {"order": 9})
+
+
+def test_options_are_told_as_plain_data() -> None:
+    """The plan in the results holds every option with its value."""
+    assert describe(_Options(order=2)) == {"order": 2, "shading": "none"}
