@@ -1,0 +1,18 @@
+"""`probatum methods` lists the shelf of methods."""
+
+import pytest
+
+from runner.cli import run
+from runner.exits import Exit
+
+
+def test_the_shelf_is_listed(capsys: pytest.CaptureFixture[str]) -> None:
+    """The verb lists each of the methods and ends well."""
+    assert run(["methods"]) is Exit.CONFORMS
+    assert "edge response" in capsys.readouterr().out
+
+
+def test_an_unknown_one_is_a_usage_error(capsys: pytest.CaptureFixture[str]) -> None:
+    """A name that is not there ends with exit code 2 and a sentence."""
+    assert run(["methods", "nothing"]) is Exit.USAGE
+    assert "unknown method 'nothing'" in capsys.readouterr().err
