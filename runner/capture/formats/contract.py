@@ -1,0 +1,182 @@
+"""What every file format gives back, and the checks that come before any decoding."""
+
+import json
+import re
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from typing import Protocol
+
+import numpy as np
+
+from runner.capture.frame import Codes
+from runner.errors import FrameRefused
+from runner.spec.model import Camera
+
+COPY_AGAIN = "copy the file again from the station"
+MAX_PAGES = 1000
+"""More frames than any step of an acceptance test takes into one file."""
+MAX_TEXT = 2000
+"""Characters kept of each text that a file carries; OME descriptions run to megabytes."""
+
+
+@dataclass(frozen=True)
+class Decoded:
+    """Everything that one file holds."""
+
+    pages: tuple[Codes, ...]
+    """Stored codes of each page, rows × columns, native byte order."""
+    texts: Mapping[str, str]
+    """Texts that the file carries, by the format's own names, uncut."""
+    stored: tuple[Codes, ...] = ()
+    """The codes in file order, one-dimensional pieces; empty where that is page by page, row by row."""
+    line: int = 0
+    """Length of one stored line in px (a row, a column or a tile's row); 0 for a row."""
+
+
+class Format(Protocol):
+    """The module of a file format."""
+
+    ENDINGS: tuple[str, ...]
+    """File name endings that belong to it, lower case with the dot."""
+
+    def decode(self, data: bytes, where: str, camera: Camera) -> Decoded:
+        """Decode the bytes of a whole file.
+
+        Raises:
+            FrameRefused: The file is not whole, or holds something else than mono frames of that camera's size.
+        """
+
+
+@dataclass(frozen=True)
+class Notes:
+    """What a file says of itself, in our words."""
+
+    metadata: Mapping[str, str] = field(default_factory=dict)
+    """Description, software, serial, time …; each cut to `MAX_TEXT` characters."""
+    simulated: bool = False
+    """One of the texts carries the mark of a rehearsed frame."""
+
+
+_NAMES = {
+    "imagedescription": "description",
+    "description": "description",
+    "comment": "description",
+    "software": "software",
+    "datetime": "time",
+    "creation time": "time",
+    "serial": "serial",
+    "bodyserialnumber": "serial",
+    "cameraserialnumber": "serial",
+}
+_MARK = re.compile(r"probatum\W+simulated frame", re.IGNORECASE)
+
+
+def read_notes(texts: Mapping[str, str]) -> Notes:
+    """Sort out a file's texts; a description in JSON may carry `serial` and `software` itself."""
+    found: dict[str, str] = {}
+    for name, text in texts.items():
+        ours = _NAMES.get(name.lower())
+        if ours and text.strip():
+            found.setdefault(ours, text.strip()[:MAX_TEXT])
+    for text in texts.values():
+        found |= {key: value for key, value in _from_json(text).items() if key not in found}
+    return Notes(found, simulated=any(_MARK.search(text) for text in texts.values()))
+
+
+def _from_json(text: str) -> dict[str, str]:
+    if not text.lstrip().startswith("{"):
+        return {}
+    try:
+        fields = json.loads(text)
+    except (ValueError, RecursionError):
+        return {}
+    wanted = ((key, fields.get(key)) for key in ("serial", "software"))
+    return {key: str(value).strip()[:MAX_TEXT] for key, value in wanted if isinstance(value, str | int)}
+
+
+def native(codes: Codes) -> Codes:
+    """Return codes in this machine's byte order, row after row; the same array where they are so already."""
+    return np.ascontiguousarray(codes, dtype=codes.dtype.newbyteorder("="))
+
+
+def truncated(where: str, found: str) -> FrameRefused:
+    """Return the refusal of a file that ends too early."""
+    return FrameRefused(f"the file is truncated: {found}", where=where, next_step=COPY_AGAIN)
+
+
+def check_size(width: int, height: int, camera: Camera, where: str) -> None:
+    """Refuse a frame of another size than the camera's, before its pixels are decoded.
+
+    Raises:
+        FrameRefused: The size differs.
+    """
+    if (width, height) == (camera.width, camera.height):
+        return
+    allowed = f"the spec's camera delivers {camera.width} x {camera.height} px"
+    if (width, height) == (camera.height, camera.width):
+        raise FrameRefused(
+            f"the frame is {width} x {height} px, turned by 90 degrees",
+            where=where,
+            allowed=allowed,
+            next_step="capture again without turning the frame",
+        )
+    raise FrameRefused(
+        f"the frame is {width} x {height} px",
+        where=where,
+        allowed=allowed,
+        next_step="capture again in the full frame format, or correct camera: frame_size in the spec",
+    )
+
+
+def check_mono(channels: str, where: str, *, mono: bool) -> None:
+    """Refuse colour and transparency.
+
+    Args:
+        channels: What the file holds, as words.
+        where: The file.
+        mono: It is a single grey channel.
+
+    Raises:
+        FrameRefused: It is not.
+    """
+    if not mono:
+        raise FrameRefused(
+            f"the file holds {channels}",
+            where=where,
+            allowed="this release measures mono frames: one grey channel, no transparency",
+            next_step="export the raw or grey frame",
+        )
+
+
+def check_upright(orientation: int, where: str) -> None:
+    """Refuse a file that asks its viewer to turn or mirror it: regions would lie in other corners.
+
+    Args:
+        orientation: Orientation tag of TIFF 6.0 and Exif; 0 or 1 is upright.
+        where: The file.
+
+    Raises:
+        FrameRefused: The tag asks for turning or mirroring.
+    """
+    if orientation not in {0, 1}:
+        raise FrameRefused(
+            f"the file asks to be turned or mirrored for viewing (orientation {orientation})",
+            where=where,
+            allowed="frames upright as the sensor reads them (orientation 1)",
+            next_step="export the frame without an orientation tag",
+        )
+
+
+def check_pages(pages: int, where: str) -> None:
+    """Refuse a file of more pages than a capture has.
+
+    Raises:
+        FrameRefused: There are too many.
+    """
+    if pages > MAX_PAGES:
+        raise FrameRefused(
+            f"the file holds more than {MAX_PAGES} pages",
+            where=where,
+            allowed=f"at most {MAX_PAGES} frames in one file",
+            next_step="split the stack into several files",
+        )

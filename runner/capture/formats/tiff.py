@@ -1,0 +1,151 @@
+"""TIFF: 8, 12 (packed or in 16), 16 bit, float; strips or tiles; lossless compression; pages; BigTIFF; OME.
+
+Bare pages are views of the file's bytes; everything else is decoded by tifffile.
+
+References:
+    TIFF Revision 6.0 (Adobe, 1992).
+"""
+
+import logging
+import re
+from collections.abc import Mapping
+from io import BytesIO
+from itertools import chain, pairwise
+from math import prod
+from operator import itemgetter
+
+import numpy as np
+import tifffile
+
+from runner.capture.formats.contract import Decoded, check_mono, check_size, check_upright, native, truncated
+from runner.capture.formats.ifd import Directory, read_directories
+from runner.capture.frame import Codes
+from runner.errors import FrameRefused
+from runner.spec.model import Camera
+
+ENDINGS = (".tif", ".tiff", ".btf", ".tf8")
+
+WIDTH, LENGTH, BITS, COMPRESSION, PHOTOMETRIC, FILL_ORDER = 256, 257, 258, 259, 262, 266
+ORIENTATION, SAMPLES, PREDICTOR, TILE_WIDTH, TILE_LENGTH, EXTRA_SAMPLES, SAMPLE_FORMAT = (
+    274,
+    277,
+    317,
+    322,
+    323,
+    338,
+    339,
+)
+CFA = 32803
+"""Photometric interpretation of a colour filter mosaic: still one number per pixel."""
+LOSSLESS = {1: "none", 5: "LZW", 8: "Deflate", 32946: "Deflate", 32773: "PackBits", 34925: "LZMA", 50000: "Zstandard"}
+_KINDS = {(1, 8): "u1", (1, 16): "u2", (1, 32): "u4", (2, 8): "i1", (2, 16): "i2", (2, 32): "i4"}
+_KINDS |= {(3, 32): "f4", (3, 64): "f8"}
+
+# The decoder reports odd tags of other vendors through a logger; what matters here is checked here.
+logging.getLogger("tifffile").addHandler(logging.NullHandler())
+
+
+def decode(data: bytes, where: str, camera: Camera) -> Decoded:
+    """Decode every page; see `Format.decode`."""
+    directories = read_directories(data, where)
+    for page in directories:
+        _check(page, where, camera)
+    order = "<" if data[:2] == b"II" else ">"
+    pieces = [_pieces(data, page, order) for page in directories]
+    tiled = any(TILE_WIDTH in page.integers for page in directories)
+    with tifffile.TiffFile(BytesIO(data)) as file:
+        texts = _texts(file.pages.first)
+        if len(file.pages) != len(directories):
+            raise truncated(where, f"{len(directories)} pages are listed, {len(file.pages)} can be read")
+        _check_promised(texts, len(directories), where, camera)
+        pages = tuple(
+            _plain(views, camera, where) if views and not tiled else native(file.pages[number].asarray(maxworkers=1))
+            for number, views in enumerate(pieces)
+        )
+    stored = tuple(piece for _, piece in sorted(chain(*pieces), key=itemgetter(0))) if all(pieces) else ()
+    return Decoded(pages, texts, stored, directories[0].first(TILE_WIDTH, 0))
+
+
+def _texts(page: tifffile.TiffPage) -> dict[str, str]:
+    """Return the page's texts by tag name; a tag that stands twice is numbered."""
+    texts: dict[str, str] = {}
+    for tag in page.tags.values():
+        if isinstance(tag.value, str):
+            texts[f"{tag.name} {len(texts)}" if tag.name in texts else tag.name] = tag.value
+    return texts
+
+
+def _check(page: Directory, where: str, camera: Camera) -> None:
+    samples, extra = page.first(SAMPLES, 1), page.integers.get(EXTRA_SAMPLES, ())
+    photometric, compression, bits = page.first(PHOTOMETRIC, 1), page.first(COMPRESSION, 1), page.first(BITS, 1)
+    words = "transparency" if extra else f"{samples} colour channels" if samples > 1 else "coded colours"
+    check_mono(words, where, mono=samples == 1 and not extra and photometric in {0, 1, CFA})
+    if photometric == 0:
+        raise FrameRefused(
+            "the file stores white as zero (min-is-white)",
+            where=where,
+            allowed="black as zero (min-is-black)",
+            next_step="export the frame with black as zero",
+        )
+    if compression not in LOSSLESS:
+        raise FrameRefused(
+            f"the file is compressed by TIFF method {compression}, which is not known to be lossless",
+            where=where,
+            allowed=f"no compression, {', '.join(sorted(set(LOSSLESS.values())))}",
+            next_step="export the frame without compression",
+        )
+    check_upright(page.first(ORIENTATION, 1), where)
+    check_size(page.first(WIDTH, 0), page.first(LENGTH, 0), camera, where)
+    if bits < 8:
+        raise FrameRefused(f"the file holds {bits} bit per pixel", where=where, allowed="8 bit or more per pixel")
+
+
+def _pieces(data: bytes, page: Directory, order: str) -> list[tuple[int, Codes]]:
+    """Return (offset, view of the bytes) per piece where they are plain numbers; else nothing."""
+    kind = _KINDS.get((page.first(SAMPLE_FORMAT, 1), page.first(BITS, 1)))
+    as_they_are = all(page.first(tag, 1) == 1 for tag in (COMPRESSION, FILL_ORDER, PREDICTOR))
+    if kind is None or not as_they_are:
+        return []
+    dtype, spans = np.dtype(order + kind), page.segments
+    if TILE_WIDTH in page.integers:
+        return _tiles(data, page, dtype)
+    if all(offset + count == following for (offset, count), (following, _) in pairwise(spans)):
+        spans = ((spans[0][0], sum(count for _, count in spans)),)
+    return [(offset, np.frombuffer(data, dtype, count // dtype.itemsize, offset)) for offset, count in spans]
+
+
+def _tiles(data: bytes, page: Directory, dtype: np.dtype[np.generic]) -> list[tuple[int, Codes]]:
+    """Return (offset, codes of one tile) without the padding of the tiles at the right and lower border."""
+    wide, high = page.first(TILE_WIDTH, 0), page.first(TILE_LENGTH, 0)
+    width, height = page.first(WIDTH, 0), page.first(LENGTH, 0)
+    found = []
+    for number, (offset, count) in enumerate(page.segments):
+        row, column = divmod(number, -(-width // wide))
+        tile = np.frombuffer(data, dtype, count // dtype.itemsize, offset)[: wide * high].reshape(high, wide)
+        found.append((offset, tile[: height - row * high, : width - column * wide].ravel()))
+    return found
+
+
+def _plain(pieces: list[tuple[int, Codes]], camera: Camera, where: str) -> Codes:
+    """Return the page out of its plain strips without decoding: a view of the file's bytes, if they adjoin."""
+    flat = pieces[0][1] if len(pieces) == 1 else np.concatenate([piece for _, piece in pieces])
+    wanted = camera.width * camera.height
+    if flat.size < wanted:
+        raise truncated(where, f"{wanted} px are announced, {flat.size} are there")
+    return native(flat[:wanted].reshape(camera.height, camera.width))
+
+
+def _check_promised(texts: Mapping[str, str], pages: int, where: str, camera: Camera) -> None:
+    """Refuse a stack whose own description speaks of more frames than its chain of pages holds."""
+    text = "\n".join(texts.values())
+    images = re.search(r"^ImageJ=.*?^images=(\d{1,9})\s*$", text, re.MULTILINE | re.DOTALL)
+    shape = re.search(r'^\{"shape": \[([\d, ]+)\]', text, re.MULTILINE)
+    promised = int(images[1]) if images else 1
+    if shape:
+        promised = prod(int(n) for n in shape[1].split(",")) // (camera.width * camera.height)
+    if promised > pages:
+        raise FrameRefused(
+            f"the file describes {promised} frames, {pages} can be found as pages",
+            where=where,
+            next_step="copy the file again, or export it as a TIFF with one page per frame",
+        )

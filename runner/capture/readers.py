@@ -1,0 +1,150 @@
+"""Reads a frame file once: the digest is of exactly the bytes that were decoded; what is not whole is refused."""
+
+import hashlib
+import warnings
+from importlib import import_module
+from pathlib import Path
+from typing import cast
+
+import numpy as np
+
+from runner.capture.formats.contract import COPY_AGAIN, Format, read_notes
+from runner.capture.frame import Codes, Frame
+from runner.capture.pixels import check_codes, check_tail
+from runner.errors import FrameRefused
+from runner.spec.model import Camera
+
+MAX_BYTES = 2**32
+"""Larger files would not fit a worker's memory; no single frame comes near it."""
+
+_FORMATS = (
+    (b"II*\0", "tiff"),
+    (b"MM\0*", "tiff"),
+    (b"II+\0", "tiff"),
+    (b"MM\0+", "tiff"),
+    (b"\x89PNG\r\n\x1a\n", "png"),
+    (b"\xff\xd8\xff", "jpeg"),
+    (b"\x93NUMPY", "npy"),
+)
+"""First bytes of the formats that are read; each name is a module of `runner.capture.formats`."""
+_STRANGERS = (
+    (b"BM", "a BMP picture"),
+    (b"GIF8", "a GIF picture"),
+    (b"PK\x03\x04", "a ZIP archive (or NPZ)"),
+    (b"\x1f\x8b", "a gzip archive"),
+    (b"\x89HDF", "an HDF5 file"),
+    (b"SIMPLE  =", "a FITS file"),
+    (b"%PDF", "a PDF document"),
+    (b"\x80\x04", "a Python pickle"),
+    (b"\x80\x05", "a Python pickle"),
+    (b"\0\0\0\x0cjP  ", "a JPEG 2000 picture"),
+    (b"RIFF", "a RIFF file (WebP, AVI)"),
+    (b"<", "a text with markup (HTML, XML)"),
+)
+READ = "TIFF, PNG, NPY, and JPEG where the product delivers it"
+
+
+def read_frames(path: Path, camera: Camera, *, name: str | None = None) -> tuple[Frame, ...]:
+    """Read every frame of a file.
+
+    Args:
+        path: The file.
+        camera: What the spec says about the camera: size, depth, levels.
+        name: What the frames and refusals call it; the file's own name if None.
+
+    Returns:
+        One frame per page, in the order of the file; the arrays are read-only.
+
+    Raises:
+        FrameRefused: The file cannot be evidence; says where, what was found, what is allowed and what to do.
+    """
+    where = name or path.name
+    data = _bytes(path, where)
+    module = _format(data, where, path.suffix.lower())
+    try:
+        with warnings.catch_warnings():
+            warnings.simplefilter("error", UserWarning)  # what a decoder warns of is a file that is not whole
+            decoded = module.decode(data, where, camera)
+    except FrameRefused:
+        raise
+    except Exception as error:
+        # Decoders fail in many ways on broken files; whatever they raise, this file is no evidence.
+        reason = " ".join(str(error).split())[:200] or type(error).__name__
+        raise FrameRefused(f"the file cannot be decoded ({reason})", where=where, next_step=COPY_AGAIN) from error
+    many = len(decoded.pages) > 1
+    for number, codes in enumerate(decoded.pages):
+        check_codes(codes, f"{where}, page {number + 1}" if many else where, camera)
+    check_tail(decoded, data, where, camera)
+    digest, notes = hashlib.sha256(data).hexdigest(), read_notes(decoded.texts)
+    return tuple(
+        Frame(
+            where,
+            digest,
+            _pixel_digest(codes),
+            _sealed(codes),
+            number if many else None,
+            {"page": str(number)} if many else {},
+            notes.metadata,
+            notes.simulated,
+        )
+        for number, codes in enumerate(decoded.pages)
+    )
+
+
+def _bytes(path: Path, where: str) -> bytes:
+    """Read the whole file once."""
+    try:
+        if path.is_dir():
+            raise FrameRefused("it is a folder", where=where, allowed="a frame file", next_step="check the pattern")
+        if path.exists() and not path.is_file():
+            raise FrameRefused("it is a device or a pipe", where=where, allowed="a frame file")
+        with path.open("rb") as stream:
+            data = stream.read(MAX_BYTES + 1)
+    except OSError as error:
+        reason = error.strerror or type(error).__name__
+        raise FrameRefused(
+            f"the file cannot be read ({reason.lower()})", where=where, next_step="check that it is there and readable"
+        ) from error
+    if len(data) > MAX_BYTES:
+        raise FrameRefused(
+            f"the file is larger than {MAX_BYTES} bytes", where=where, next_step="split the stack into several files"
+        )
+    if not data:
+        raise FrameRefused("the file is empty", where=where, next_step=COPY_AGAIN)
+    return data
+
+
+def _format(data: bytes, where: str, ending: str) -> Format:
+    """Return the module for what the file holds; its ending must say the same."""
+    kind = next((kind for start, kind in _FORMATS if data.startswith(start)), None)
+    if kind is None:
+        zeros = not data.strip(b"\0")
+        other = next((words for start, words in _STRANGERS if data.startswith(start)), "no picture that is known here")
+        raise FrameRefused(
+            "the file holds nothing but zeros: a copy still under way" if zeros else f"the file holds {other}",
+            where=where,
+            allowed=READ,
+            next_step=COPY_AGAIN,
+        )
+    module = cast("Format", import_module(f"runner.capture.formats.{kind}"))
+    if ending not in module.ENDINGS:
+        raise FrameRefused(
+            f"the file holds {kind.upper()}, its name ends in '{ending}'",
+            where=where,
+            allowed=f"{kind.upper()} in files that end in {', '.join(module.ENDINGS)}",
+            next_step="find out how it came by its name; export the frame again",
+        )
+    return module
+
+
+def _pixel_digest(codes: Codes) -> str:
+    """Digest shape, type and codes, whatever the file's byte order was."""
+    digest = hashlib.sha256(f"{codes.shape} {codes.dtype.kind}{codes.dtype.itemsize}".encode())
+    digest.update(np.ascontiguousarray(codes, dtype=codes.dtype.newbyteorder("<")).data)
+    return digest.hexdigest()
+
+
+def _sealed(codes: Codes) -> Codes:
+    view = codes.view()
+    view.flags.writeable = False
+    return view
