@@ -217,7 +217,7 @@ class Limit:
     where_label: str
     """The words of the spec: a region's or a group's name."""
     unit: str
-    """Unit of the limits and of the check's value."""
+    """Unit of the limits and of the check's value; empty for a value that is only reported, in its own unit."""
     at_least: float | None
     """Lower limit, or None."""
     at_most: float | None

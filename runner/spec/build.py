@@ -1,0 +1,105 @@
+"""Builds the resolved spec from its file, or from its expanded form, with all complaints at once."""
+
+from collections.abc import Mapping
+from dataclasses import replace
+from pathlib import Path
+from typing import Any
+
+from runner.errors import UsageError
+from runner.spec.captures import Defaults, Draft, build_captures
+from runner.spec.devices import build_camera, build_optics
+from runner.spec.include import read_merged
+from runner.spec.leaves import share
+from runner.spec.lint import lint
+from runner.spec.model import PROOF_EITHER_WAY, Document, Optics, Spec, UncertaintyComponent, UnitRule
+from runner.spec.revision import digest
+from runner.spec.shapes import ComponentShape, DocumentShape, RootShape
+from runner.spec.tree import Mapped, Place, Report, from_plain
+
+DEFAULT_RULE = PROOF_EITHER_WAY
+"""Where neither spec nor limit names a decision rule."""
+DEFAULT_PROBABILITY = 0.95
+"""Conformance probability where none is stated (the default of ISO 14253-1:2017)."""
+
+
+def read_spec(path: Path) -> Spec:
+    """Read a spec file, its bases included, strictly.
+
+    Raises:
+        SpecError: With every complaint at once, in the order of the lines.
+    """
+    report = Report()
+    label = path.as_posix()
+    try:
+        tree = read_merged(path, report)
+    except UsageError as error:
+        report.error(Place(label, 0, 0), error.found, error.allowed, error.next_step)
+        tree = None
+    spec = None
+    if tree is not None:
+        spec, drafts = _build(tree, report)
+        lint(drafts, report)
+    report.raise_errors()
+    if spec is None:  # pragma: no cover - a spec that was not built has complaints
+        msg = f"{label} was refused without a complaint"
+        raise AssertionError(msg)
+    return replace(spec, source=label, warnings=report.sorted("warning"))
+
+
+def from_expanded(data: Mapping[str, Any]) -> Spec:
+    """Rebuild a spec from `Spec.expanded`, e.g. out of results.json: the same records and the same digest.
+
+    The lint is not run again: it warned whoever wrote the spec, and a later program may warn of more.
+
+    Raises:
+        SpecError: The data are no expanded spec.
+    """
+    report = Report()
+    spec, _ = _build(from_plain(data, "the expanded spec"), report)
+    report.raise_errors()
+    if spec is None:  # pragma: no cover - see read_spec
+        msg = "the expanded spec was refused without a complaint"
+        raise AssertionError(msg)
+    return replace(spec, source="the expanded spec")
+
+
+def _build(tree: Mapped, report: Report) -> tuple[Spec | None, tuple[Draft, ...]]:
+    root: RootShape | None = RootShape.model_validate(tree, context=report)
+    if root is None:
+        return None, ()
+    camera = build_camera(root.camera, report) if root.camera is not None else None
+    optics = build_optics(root.optics, report) if root.optics is not None else Optics()
+    uncertainty = tuple(build_component(c) for c in root.uncertainty or () if c is not None)
+    drafts: tuple[Draft, ...] = ()
+    if camera is not None and root.captures is not None and root.sound("captures"):
+        decision = root.decision
+        probability = decision.conformance_probability if decision else None
+        defaults = Defaults(
+            (decision.rule if decision else None) or DEFAULT_RULE,
+            share(probability) if probability else DEFAULT_PROBABILITY,
+        )
+        drafts = build_captures(root, camera, optics, defaults, report)
+    if report.sorted("error") or camera is None or root.document is None or root.unit is None:
+        return None, drafts
+    expanded = root.model_dump(mode="json", by_alias=True, exclude_unset=True)
+    spec = Spec(
+        _document(root.document),
+        UnitRule(root.unit.product, root.unit.serial),
+        camera,
+        optics,
+        tuple(draft.capture for draft in drafts),
+        uncertainty,
+        expanded,
+        digest(expanded),
+    )
+    return spec, drafts
+
+
+def _document(shape: DocumentShape) -> Document:
+    return Document(**{key: getattr(shape, key) or "" for key in shape.known_keys()})
+
+
+def build_component(shape: ComponentShape) -> UncertaintyComponent:
+    """Return a declared uncertainty component."""
+    relative = share(shape.relative) if shape.relative is not None else None
+    return UncertaintyComponent(shape.name, shape.of, relative, shape.absolute, shape.shared)

@@ -1,0 +1,275 @@
+"""Builds captures and their limits from their shapes: names resolved, units joined, nothing measured."""
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass
+
+from runner.errors import UsageError
+from runner.spec import units
+from runner.spec.devices import build_camera, build_chart, build_optics, overridden
+from runner.spec.leaves import Chosen, share
+from runner.spec.model import Amount, Bound, Camera, Capture, FramePattern, Limit, Optics
+from runner.spec.regions import expand, names
+from runner.spec.shapes import PARAMETERS, CaptureShape, LimitShape, OpticsShape, RootShape
+from runner.spec.tree import Report, nearest
+
+
+@dataclass(frozen=True)
+class Defaults:
+    """What holds where a limit does not say otherwise."""
+
+    rule: str
+    """Decision rule."""
+    probability: float
+    """Conformance probability, a fraction."""
+
+
+@dataclass(frozen=True)
+class Draft:
+    """A capture with the shapes that it was built from, for complaints with their lines."""
+
+    capture: Capture
+    """The record, with the limits that are whole."""
+    shape: CaptureShape
+    """As written."""
+    limits: tuple[tuple[Limit, LimitShape], ...]
+    """Each limit with its shape."""
+
+
+def build_captures(
+    root: RootShape, camera: Camera, optics: Optics, defaults: Defaults, report: Report
+) -> tuple[Draft, ...]:
+    """Return the captures that are whole, in the order of the spec.
+
+    Args:
+        root: The whole file.
+        camera: The spec's camera.
+        optics: The spec's optics.
+        defaults: Decision rule and probability of limits that state none.
+        report: Takes the complaints.
+    """
+    shapes = {name: shape for name, shape in (root.captures or {}).items() if shape is not None}
+    _check_companions(shapes, tuple(root.captures or ()), report)
+    drafts = tuple(_build(name, shape, root, camera, optics, defaults, report) for name, shape in shapes.items())
+    whole = tuple(draft for draft in drafts if draft is not None)
+    _check_numbers(whole, report)
+    return whole
+
+
+def _build(
+    name: str, shape: CaptureShape, root: RootShape, camera: Camera, optics: Optics, defaults: Defaults, report: Report
+) -> Draft | None:
+    own_camera: Camera | None = camera
+    if not shape.sound("camera") or not shape.sound("optics"):
+        return None
+    if shape.camera is not None and root.camera is not None:
+        own_camera = build_camera(overridden(root.camera, shape.camera), report, shape.camera)
+    if shape.optics is not None:
+        optics = build_optics(root.optics or OpticsShape(), report, shape.optics)
+    if own_camera is None:
+        return None
+    context = units.context_of(own_camera, optics)
+    regions = expand(shape.regions or {}, own_camera, report)
+    meant = names(shape.regions or {}) if shape.sound("regions") else None
+    limits = tuple(
+        (limit, one)
+        for one in shape.limits or ()
+        if one is not None and (limit := _limit(one, name, meant, context, defaults, report)) is not None
+    )
+    frames = shape.frames
+    target, target_options = next(iter((shape.target or Chosen({"": {}})).options.items()))
+    capture = Capture(
+        name=name,
+        target=target,
+        frames=None if frames is None else FramePattern(frames.names, frames.count),
+        same_frames_as=shape.same_frames_as,
+        uses=shape.uses or {},
+        camera=own_camera,
+        optics=optics,
+        chart=build_chart(shape.chart, context, report),
+        regions=regions,
+        measure=shape.measure.options if shape.measure is not None else {},
+        target_options=target_options,
+        usable_if=tuple(_bounds(shape)),
+        limits=tuple(limit for limit, _ in limits),
+    )
+    return Draft(capture, shape, limits)
+
+
+def _bounds(shape: CaptureShape) -> Iterable[Bound]:
+    for quantity, one in sorted((shape.usable_if or {}).items()):
+        low, high = one.at_least, one.at_most
+        unit = (high or low or Amount(0, "1")).unit
+        yield Bound(quantity, low.value if low else None, high.value if high else None, unit)
+
+
+# ---- limits
+
+
+def _limit(
+    shape: LimitShape,
+    capture: str,
+    meant: Mapping[str, tuple[str, ...]] | None,
+    context: units.FrequencyContext,
+    defaults: Defaults,
+    report: Report,
+) -> Limit | None:
+    if meant is None:  # the regions are broken and have been complained of
+        return None
+    where = _regions(shape, "where", shape.where or (), meant, report)
+    against = _regions(shape, "against", shape.against or (), meant, report)
+    ends = _ends(shape, context, report)
+    if where is None or against is None or ends is None:
+        return None
+    if shape.combine == "range" and len(where) < 2:
+        report.error(shape.at("combine"), "a range needs two regions or more", "", "name a group or a list in where")
+    unit, low, high, nominal = ends
+    probability = shape.conformance_probability
+    return Limit(
+        characteristic=shape.characteristic,
+        capture=capture,
+        quantity=shape.quantity,
+        parameters={key: getattr(shape, key) for key in PARAMETERS if getattr(shape, key) is not None},
+        where=where,
+        where_label=", ".join(shape.where or ()),
+        unit=unit,
+        at_least=low,
+        at_most=high,
+        rule=shape.rule or defaults.rule,
+        conformance_probability=share(probability) if probability is not None else defaults.probability,
+        combine=shape.combine,
+        against=against,
+        against_label=", ".join(shape.against or ()),
+        nominal=nominal,
+        channel=shape.channel,
+        part=shape.part or "system",
+        method=shape.method,
+        estimator=shape.estimator,
+        beyond_nyquist=bool(shape.beyond_nyquist),
+        report_only=bool(shape.report_only),
+        count_bound=shape.bound,
+    )
+
+
+def _regions(
+    shape: LimitShape, key: str, wanted: tuple[str, ...], meant: Mapping[str, tuple[str, ...]], report: Report
+) -> tuple[str, ...] | None:
+    if not wanted and key == "where" and meant:
+        found = f"limit {shape.characteristic} does not say where"
+        report.error(shape.at(), found, f"regions: {', '.join(meant)}", "add where:")
+        return None
+    found_regions: list[str] = []
+    good = True
+    for name in wanted:
+        if name not in meant:
+            known = f"regions: {', '.join(meant)}" if meant else "the capture has no regions"
+            report.error(shape.at(key), f"there is no region '{name}'", known, nearest(name, meant))
+            good = False
+        for region in meant.get(name, ()):
+            if region in found_regions:
+                report.error(shape.at(key), f"{key} names region '{region}' twice", "", "keep one of them")
+                good = False
+            found_regions.append(region)
+    return tuple(found_regions) if good else None
+
+
+def _ends(
+    shape: LimitShape, context: units.FrequencyContext, report: Report
+) -> tuple[str, float | None, float | None, float | None] | None:
+    """Return unit, lower limit, upper limit and nominal value, all in that unit."""
+    if shape.report_only:
+        try:
+            return units.canonical(shape.measured_in) if shape.measured_in else "", None, None, None
+        except UsageError as error:
+            report.error(shape.at("measured_in"), error.found, error.allowed, error.next_step)
+            return None
+    try:
+        if shape.nominal is not None and shape.tolerance is not None:
+            unit = shape.nominal.unit
+            minus, plus = (_tolerance(part, unit, context) for part in shape.tolerance)
+            return unit, shape.nominal.value - minus, shape.nominal.value + plus, shape.nominal.value
+        stated = shape.at_least or shape.at_most
+        if stated is None:
+            return None
+        low, high = (
+            None if end is None else units.convert(end.value, end.unit, stated.unit, context)
+            for end in (shape.at_least, shape.at_most)
+        )
+    except UsageError as error:
+        key = "tolerance" if shape.nominal is not None else "at_most"
+        report.error(shape.at(key), error.found, error.allowed, error.next_step)
+        return None
+    if low is not None and high is not None and low > high:
+        found = f"at_least {low:g} lies above at_most {high:g}: no value can conform"
+        report.error(shape.at("at_least"), found, "", "exchange or correct them")
+        return None
+    return stated.unit, low, high, None
+
+
+def _tolerance(part: Amount, unit: str, context: units.FrequencyContext) -> float:
+    if part.unit != unit and "1" in {part.unit, unit}:
+        spelled = "a plain number" if unit == "1" else unit
+        raise units.UnitsError(
+            f"a tolerance of {units.spell(part)} on a nominal value in {spelled} could mean two things",
+            allowed=f"the nominal value's own unit, {spelled}",
+        )
+    return units.convert(part.value, part.unit, unit, context)
+
+
+# ---- between captures
+
+
+def _check_companions(shapes: Mapping[str, CaptureShape], known: tuple[str, ...], report: Report) -> None:
+    for name, shape in shapes.items():
+        if shape.sound("frames") and (shape.frames is None) == (shape.same_frames_as is None):
+            found = f"capture '{name}' has either frames or same_frames_as"
+            report.error(shape.at("same_frames_as"), found, "", "write one of the two")
+        for role, other in {"same_frames_as": shape.same_frames_as, **(shape.uses or {})}.items():
+            path = ("uses", role) if role in (shape.uses or {}) else ("same_frames_as",)
+            if other is None:
+                continue
+            if other not in known:
+                report.error(
+                    shape.at(*path),
+                    f"there is no capture '{other}'",
+                    f"captures: {', '.join(known)}",
+                    nearest(other, known),
+                )
+            elif other == name:
+                report.error(shape.at(*path), f"capture '{name}' names itself", "another capture")
+            elif role == "same_frames_as" and other in shapes and shapes[other].same_frames_as is not None:
+                report.error(
+                    shape.at(*path), f"capture '{other}' has no frames of its own", "", "name the one that has"
+                )
+            elif path[0] == "uses" and _leads_to(other, name, shapes):
+                report.error(
+                    shape.at(*path), f"'{name}' uses '{other}', which uses '{name}' in turn", "", "break the circle"
+                )
+
+
+def _leads_to(start: str, goal: str, shapes: Mapping[str, CaptureShape]) -> bool:
+    seen: set[str] = set()
+    ahead = [start]
+    while ahead:
+        name = ahead.pop()
+        if name == goal:
+            return True
+        if name not in seen and name in shapes:
+            seen.add(name)
+            ahead.extend((shapes[name].uses or {}).values())
+    return False
+
+
+def _check_numbers(drafts: tuple[Draft, ...], report: Report) -> None:
+    """A characteristic with its place and channel names one check."""
+    seen: dict[tuple[str, str, str], str] = {}
+    for draft in drafts:
+        for limit, shape in draft.limits:
+            places = (f"{limit.combine} of {limit.where_label}",) if limit.combine else limit.where or ("",)
+            for place in places:
+                key = limit.characteristic, place, limit.channel or ""
+                if key in seen:
+                    at = f" at '{place}'" if place else ""
+                    found = f"characteristic {limit.characteristic}{at} stands twice; first in {seen[key]}"
+                    report.error(shape.at("characteristic"), found, "", "give each requirement its own number")
+                    break
+                seen[key] = str(shape.at("characteristic"))
