@@ -14,7 +14,7 @@ from runner.spec.lint import lint
 from runner.spec.model import PROOF_EITHER_WAY, Document, Optics, Spec, UncertaintyComponent, UnitRule
 from runner.spec.revision import digest
 from runner.spec.shapes import ComponentShape, DocumentShape, RootShape
-from runner.spec.tree import Mapped, Place, Report, from_plain
+from runner.spec.tree import Complaints, Mapped, Place, from_plain
 
 DEFAULT_RULE = PROOF_EITHER_WAY
 """Where neither spec nor limit names a decision rule."""
@@ -28,22 +28,22 @@ def read_spec(path: Path) -> Spec:
     Raises:
         SpecError: With every complaint at once, in the order of the lines.
     """
-    report = Report()
+    complaints = Complaints()
     label = path.as_posix()
     try:
-        tree = read_merged(path, report)
+        tree = read_merged(path, complaints)
     except UsageError as error:
-        report.error(Place(label, 0, 0), error.found, error.allowed, error.next_step)
+        complaints.error(Place(label, 0, 0), error.found, error.allowed, error.next_step)
         tree = None
     spec = None
     if tree is not None:
-        spec, drafts = _build(tree, report)
-        lint(drafts, report)
-    report.raise_errors()
+        spec, drafts = _build(tree, complaints)
+        lint(drafts, complaints)
+    complaints.raise_errors()
     if spec is None:  # pragma: no cover - a spec that was not built has complaints
         msg = f"{label} was refused without a complaint"
         raise AssertionError(msg)
-    return replace(spec, source=label, warnings=report.sorted("warning"))
+    return replace(spec, source=label, warnings=complaints.sorted("warning"))
 
 
 def from_expanded(data: Mapping[str, Any]) -> Spec:
@@ -54,21 +54,21 @@ def from_expanded(data: Mapping[str, Any]) -> Spec:
     Raises:
         SpecError: The data are no expanded spec.
     """
-    report = Report()
-    spec, _ = _build(from_plain(data, "the expanded spec"), report)
-    report.raise_errors()
+    complaints = Complaints()
+    spec, _ = _build(from_plain(data, "the expanded spec"), complaints)
+    complaints.raise_errors()
     if spec is None:  # pragma: no cover - see read_spec
         msg = "the expanded spec was refused without a complaint"
         raise AssertionError(msg)
     return replace(spec, source="the expanded spec")
 
 
-def _build(tree: Mapped, report: Report) -> tuple[Spec | None, tuple[Draft, ...]]:
-    root: RootShape | None = RootShape.model_validate(tree, context=report)
+def _build(tree: Mapped, complaints: Complaints) -> tuple[Spec | None, tuple[Draft, ...]]:
+    root: RootShape | None = RootShape.model_validate(tree, context=complaints)
     if root is None:
         return None, ()
-    camera = build_camera(root.camera, report) if root.camera is not None else None
-    optics = build_optics(root.optics, report) if root.optics is not None else Optics()
+    camera = build_camera(root.camera, complaints) if root.camera is not None else None
+    optics = build_optics(root.optics, complaints) if root.optics is not None else Optics()
     uncertainty = tuple(build_component(c) for c in root.uncertainty or () if c is not None)
     drafts: tuple[Draft, ...] = ()
     if camera is not None and root.captures is not None and root.sound("captures"):
@@ -78,8 +78,8 @@ def _build(tree: Mapped, report: Report) -> tuple[Spec | None, tuple[Draft, ...]
             (decision.rule if decision else None) or DEFAULT_RULE,
             share(probability) if probability else DEFAULT_PROBABILITY,
         )
-        drafts = build_captures(root, camera, optics, defaults, report)
-    if report.sorted("error") or camera is None or root.document is None or root.unit is None:
+        drafts = build_captures(root, camera, optics, defaults, complaints)
+    if complaints.sorted("error") or camera is None or root.document is None or root.unit is None:
         return None, drafts
     expanded = root.model_dump(mode="json", by_alias=True, exclude_unset=True)
     spec = Spec(

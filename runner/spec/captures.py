@@ -5,12 +5,13 @@ from dataclasses import dataclass
 
 from runner.errors import UsageError
 from runner.spec import units
+from runner.spec.device_leaves import Chosen
 from runner.spec.devices import build_camera, build_chart, build_optics, overridden
-from runner.spec.leaves import Chosen, share
+from runner.spec.leaves import share
 from runner.spec.model import Amount, Bound, Camera, Capture, FramePattern, Limit, Optics
 from runner.spec.regions import expand, names
 from runner.spec.shapes import PARAMETERS, CaptureShape, LimitShape, OpticsShape, RootShape
-from runner.spec.tree import Report, nearest
+from runner.spec.tree import Complaints, nearest
 
 
 @dataclass(frozen=True)
@@ -36,7 +37,7 @@ class Draft:
 
 
 def build_captures(
-    root: RootShape, camera: Camera, optics: Optics, defaults: Defaults, report: Report
+    root: RootShape, camera: Camera, optics: Optics, defaults: Defaults, complaints: Complaints
 ) -> tuple[Draft, ...]:
     """Return the captures that are whole, in the order of the spec.
 
@@ -45,35 +46,41 @@ def build_captures(
         camera: The spec's camera.
         optics: The spec's optics.
         defaults: Decision rule and probability of limits that state none.
-        report: Takes the complaints.
+        complaints: Takes the complaints.
     """
     shapes = {name: shape for name, shape in (root.captures or {}).items() if shape is not None}
-    _check_companions(shapes, tuple(root.captures or ()), report)
-    drafts = tuple(_build(name, shape, root, camera, optics, defaults, report) for name, shape in shapes.items())
+    _check_companions(shapes, tuple(root.captures or ()), complaints)
+    drafts = tuple(_build(name, shape, root, camera, optics, defaults, complaints) for name, shape in shapes.items())
     whole = tuple(draft for draft in drafts if draft is not None)
-    _check_numbers(whole, report)
+    _check_numbers(whole, complaints)
     return whole
 
 
 def _build(
-    name: str, shape: CaptureShape, root: RootShape, camera: Camera, optics: Optics, defaults: Defaults, report: Report
+    name: str,
+    shape: CaptureShape,
+    root: RootShape,
+    camera: Camera,
+    optics: Optics,
+    defaults: Defaults,
+    complaints: Complaints,
 ) -> Draft | None:
     own_camera: Camera | None = camera
     if not shape.sound("camera") or not shape.sound("optics"):
         return None
     if shape.camera is not None and root.camera is not None:
-        own_camera = build_camera(overridden(root.camera, shape.camera), report, shape.camera)
+        own_camera = build_camera(overridden(root.camera, shape.camera), complaints, shape.camera)
     if shape.optics is not None:
-        optics = build_optics(root.optics or OpticsShape(), report, shape.optics)
+        optics = build_optics(root.optics or OpticsShape(), complaints, shape.optics)
     if own_camera is None:
         return None
     context = units.context_of(own_camera, optics)
-    regions = expand(shape.regions or {}, own_camera, report)
+    regions = expand(shape.regions or {}, own_camera, complaints)
     meant = names(shape.regions or {}) if shape.sound("regions") else None
     limits = tuple(
         (limit, one)
         for one in shape.limits or ()
-        if one is not None and (limit := _limit(one, name, meant, context, defaults, report)) is not None
+        if one is not None and (limit := _limit(one, name, meant, context, defaults, complaints)) is not None
     )
     frames = shape.frames
     target, target_options = next(iter((shape.target or Chosen({"": {}})).options.items()))
@@ -85,7 +92,7 @@ def _build(
         uses=shape.uses or {},
         camera=own_camera,
         optics=optics,
-        chart=build_chart(shape.chart, context, report),
+        chart=build_chart(shape.chart, context, complaints),
         regions=regions,
         measure=shape.measure.options if shape.measure is not None else {},
         target_options=target_options,
@@ -111,17 +118,19 @@ def _limit(
     meant: Mapping[str, tuple[str, ...]] | None,
     context: units.FrequencyContext,
     defaults: Defaults,
-    report: Report,
+    complaints: Complaints,
 ) -> Limit | None:
     if meant is None:  # the regions are broken and have been complained of
         return None
-    where = _regions(shape, "where", shape.where or (), meant, report)
-    against = _regions(shape, "against", shape.against or (), meant, report)
-    ends = _ends(shape, context, report)
+    where = _regions(shape, "where", shape.where or (), meant, complaints)
+    against = _regions(shape, "against", shape.against or (), meant, complaints)
+    ends = _ends(shape, context, complaints)
     if where is None or against is None or ends is None:
         return None
     if shape.combine == "range" and len(where) < 2:
-        report.error(shape.at("combine"), "a range needs two regions or more", "", "name a group or a list in where")
+        complaints.error(
+            shape.at("combine"), "a range needs two regions or more", "", "name a group or a list in where"
+        )
     unit, low, high, nominal = ends
     probability = shape.conformance_probability
     return Limit(
@@ -151,36 +160,36 @@ def _limit(
 
 
 def _regions(
-    shape: LimitShape, key: str, wanted: tuple[str, ...], meant: Mapping[str, tuple[str, ...]], report: Report
+    shape: LimitShape, key: str, wanted: tuple[str, ...], meant: Mapping[str, tuple[str, ...]], complaints: Complaints
 ) -> tuple[str, ...] | None:
     if not wanted and key == "where" and meant:
         found = f"limit {shape.characteristic} does not say where"
-        report.error(shape.at(), found, f"regions: {', '.join(meant)}", "add where:")
+        complaints.error(shape.at(), found, f"regions: {', '.join(meant)}", "add where:")
         return None
     found_regions: list[str] = []
     good = True
     for name in wanted:
         if name not in meant:
             known = f"regions: {', '.join(meant)}" if meant else "the capture has no regions"
-            report.error(shape.at(key), f"there is no region '{name}'", known, nearest(name, meant))
+            complaints.error(shape.at(key), f"there is no region '{name}'", known, nearest(name, meant))
             good = False
         for region in meant.get(name, ()):
             if region in found_regions:
-                report.error(shape.at(key), f"{key} names region '{region}' twice", "", "keep one of them")
+                complaints.error(shape.at(key), f"{key} names region '{region}' twice", "", "keep one of them")
                 good = False
             found_regions.append(region)
     return tuple(found_regions) if good else None
 
 
 def _ends(
-    shape: LimitShape, context: units.FrequencyContext, report: Report
+    shape: LimitShape, context: units.FrequencyContext, complaints: Complaints
 ) -> tuple[str, float | None, float | None, float | None] | None:
     """Return unit, lower limit, upper limit and nominal value, all in that unit."""
     if shape.report_only:
         try:
             return units.canonical(shape.measured_in) if shape.measured_in else "", None, None, None
         except UsageError as error:
-            report.error(shape.at("measured_in"), error.found, error.allowed, error.next_step)
+            complaints.error(shape.at("measured_in"), error.found, error.allowed, error.next_step)
             return None
     try:
         if shape.nominal is not None and shape.tolerance is not None:
@@ -196,11 +205,11 @@ def _ends(
         )
     except UsageError as error:
         key = "tolerance" if shape.nominal is not None else "at_most"
-        report.error(shape.at(key), error.found, error.allowed, error.next_step)
+        complaints.error(shape.at(key), error.found, error.allowed, error.next_step)
         return None
     if low is not None and high is not None and low > high:
         found = f"at_least {low:g} lies above at_most {high:g}: no value can conform"
-        report.error(shape.at("at_least"), found, "", "exchange or correct them")
+        complaints.error(shape.at("at_least"), found, "", "exchange or correct them")
         return None
     return stated.unit, low, high, None
 
@@ -218,30 +227,30 @@ def _tolerance(part: Amount, unit: str, context: units.FrequencyContext) -> floa
 # ---- between captures
 
 
-def _check_companions(shapes: Mapping[str, CaptureShape], known: tuple[str, ...], report: Report) -> None:
+def _check_companions(shapes: Mapping[str, CaptureShape], known: tuple[str, ...], complaints: Complaints) -> None:
     for name, shape in shapes.items():
         if shape.sound("frames") and (shape.frames is None) == (shape.same_frames_as is None):
             found = f"capture '{name}' has either frames or same_frames_as"
-            report.error(shape.at("same_frames_as"), found, "", "write one of the two")
+            complaints.error(shape.at("same_frames_as"), found, "", "write one of the two")
         for role, other in {"same_frames_as": shape.same_frames_as, **(shape.uses or {})}.items():
             path = ("uses", role) if role in (shape.uses or {}) else ("same_frames_as",)
             if other is None:
                 continue
             if other not in known:
-                report.error(
+                complaints.error(
                     shape.at(*path),
                     f"there is no capture '{other}'",
                     f"captures: {', '.join(known)}",
                     nearest(other, known),
                 )
             elif other == name:
-                report.error(shape.at(*path), f"capture '{name}' names itself", "another capture")
+                complaints.error(shape.at(*path), f"capture '{name}' names itself", "another capture")
             elif role == "same_frames_as" and other in shapes and shapes[other].same_frames_as is not None:
-                report.error(
+                complaints.error(
                     shape.at(*path), f"capture '{other}' has no frames of its own", "", "name the one that has"
                 )
             elif path[0] == "uses" and _leads_to(other, name, shapes):
-                report.error(
+                complaints.error(
                     shape.at(*path), f"'{name}' uses '{other}', which uses '{name}' in turn", "", "break the circle"
                 )
 
@@ -259,7 +268,7 @@ def _leads_to(start: str, goal: str, shapes: Mapping[str, CaptureShape]) -> bool
     return False
 
 
-def _check_numbers(drafts: tuple[Draft, ...], report: Report) -> None:
+def _check_numbers(drafts: tuple[Draft, ...], complaints: Complaints) -> None:
     """A characteristic with its place and channel names one check."""
     seen: dict[tuple[str, str, str], str] = {}
     for draft in drafts:
@@ -270,6 +279,6 @@ def _check_numbers(drafts: tuple[Draft, ...], report: Report) -> None:
                 if key in seen:
                     at = f" at '{place}'" if place else ""
                     found = f"characteristic {limit.characteristic}{at} stands twice; first in {seen[key]}"
-                    report.error(shape.at("characteristic"), found, "", "give each requirement its own number")
+                    complaints.error(shape.at("characteristic"), found, "", "give each requirement its own number")
                     break
                 seen[key] = str(shape.at("characteristic"))

@@ -10,58 +10,58 @@ from typing import Any
 
 from runner.errors import UsageError
 from runner.spec.leaves import read_truth, shown
-from runner.spec.tree import Listed, Mapped, Report, Text, read_tree
+from runner.spec.tree import Complaints, Listed, Mapped, Text, read_tree
 
 MAX_FILES = 8
 """Files in one chain of bases."""
 
 
-def read_merged(path: Path, report: Report) -> Mapped | None:
+def read_merged(path: Path, complaints: Complaints) -> Mapped | None:
     """Read a spec and its bases into one tree, whose places name the files.
 
     Args:
         path: The spec.
-        report: Takes the complaints.
+        complaints: Takes the complaints.
 
     Raises:
         UsageError: The spec itself cannot be read.
     """
-    tree = _read(path, path.as_posix(), path.resolve().parent, (), report)
-    return None if tree is None else _without_removed(tree, report)
+    tree = _read(path, path.as_posix(), path.resolve().parent, (), complaints)
+    return None if tree is None else _without_removed(tree, complaints)
 
 
-def _read(path: Path, label: str, top: Path, seen: tuple[Path, ...], report: Report) -> Mapped | None:
-    tree = read_tree(path, label, report)
+def _read(path: Path, label: str, top: Path, seen: tuple[Path, ...], complaints: Complaints) -> Mapped | None:
+    tree = read_tree(path, label, complaints)
     if tree is None or "include" not in tree:
         return tree
     name, place = tree.pop("include"), tree.key_places.pop("include")
     if not isinstance(name, Text):
         if name is not None:
-            report.error(place, f"{shown(name)} stands where a file is meant", "for example include: base.yaml")
+            complaints.error(place, f"{shown(name)} stands where a file is meant", "for example include: base.yaml")
         return tree
     target = path.parent / PurePosixPath(name)
     resolved = target.resolve()
     if PurePosixPath(name).is_absolute() or "\\" in name or not resolved.is_relative_to(top):
-        report.error(
+        complaints.error(
             name.place, f"the base '{name}' lies outside the spec's folder", "a file in it or below it, with /"
         )
     elif resolved in (*seen, path.resolve()):
-        report.error(
+        complaints.error(
             name.place, f"the base '{name}' includes itself, directly or through others", "", "break the circle"
         )
     elif len(seen) + 1 >= MAX_FILES:
-        report.error(name.place, f"more than {MAX_FILES} files include one another", "", "write it flatter")
+        complaints.error(name.place, f"more than {MAX_FILES} files include one another", "", "write it flatter")
     else:
         try:
-            base = _read(target, str(PurePosixPath(label).parent / name), top, (*seen, path.resolve()), report)
+            base = _read(target, str(PurePosixPath(label).parent / name), top, (*seen, path.resolve()), complaints)
         except UsageError as error:
-            report.error(name.place, f"the base '{name}' cannot be read: {error.found}", "", "check the name")
+            complaints.error(name.place, f"the base '{name}' cannot be read: {error.found}", "", "check the name")
             return tree
-        return tree if base is None else _laid_over(base, tree, report)
+        return tree if base is None else _laid_over(base, tree, complaints)
     return tree
 
 
-def _laid_over(base: Mapped, variant: Mapped, report: Report) -> Mapped:
+def _laid_over(base: Mapped, variant: Mapped, complaints: Complaints) -> Mapped:
     """Return the base with the variant's keys laid over it; the base's order is kept."""
     merged = Mapped(variant.place)
     for source in (base, variant):
@@ -69,23 +69,23 @@ def _laid_over(base: Mapped, variant: Mapped, report: Report) -> Mapped:
     for key in (*base, *(key for key in variant if key not in base)):
         below, above = base.get(key), variant.get(key, base.get(key))
         if key in base and key in variant and isinstance(below, Mapped) and isinstance(above, Mapped):
-            merged[key] = _laid_over(below, above, report)
+            merged[key] = _laid_over(below, above, complaints)
         elif key == "limits" and key in variant and isinstance(below, Listed) and isinstance(above, Listed):
-            merged[key] = _limits(below, above, report)
+            merged[key] = _limits(below, above, complaints)
         else:
             merged[key] = above
     return merged
 
 
-def _limits(base: Listed, variant: Listed, report: Report) -> Listed:
+def _limits(base: Listed, variant: Listed, complaints: Complaints) -> Listed:
     replaced: dict[str, list[Any]] = {}
     for limit in variant:
         replaced.setdefault(_characteristic(limit), []).append(limit)
     known = {_characteristic(limit) for limit in base}
     for number, limits in replaced.items():
         for limit in limits:
-            if number not in known and _removed(limit, report):
-                report.error(limit.place, f"there is no characteristic {number} to remove", "", "check the number")
+            if number not in known and _removed(limit, complaints):
+                complaints.error(limit.place, f"there is no characteristic {number} to remove", "", "check the number")
     merged = Listed(variant.place)
     done: set[str] = set()
     for limit in (*base, *variant):
@@ -94,7 +94,7 @@ def _limits(base: Listed, variant: Listed, report: Report) -> Listed:
             merged.append(limit)
         elif number not in done:
             done.add(number)
-            merged.extend(one for one in replaced[number] if not _removed(one, report))
+            merged.extend(one for one in replaced[number] if not _removed(one, complaints))
     return merged
 
 
@@ -102,21 +102,23 @@ def _characteristic(limit: Any) -> str:
     return str(limit.get("characteristic")) if isinstance(limit, Mapped) else ""
 
 
-def _removed(node: Any, report: Report) -> bool:
+def _removed(node: Any, complaints: Complaints) -> bool:
     if not isinstance(node, Mapped) or node.get("remove") is None:
         return False
     extra = [key for key in node if key not in {"remove", "characteristic"}]
     if extra:
-        report.error(node.key_places[extra[0]], f"'{extra[0]}' stands beside remove", "", "remove it or override it")
+        complaints.error(
+            node.key_places[extra[0]], f"'{extra[0]}' stands beside remove", "", "remove it or override it"
+        )
     if not (isinstance(node["remove"], Text) and node["remove"] == "true" and read_truth(node["remove"])):
-        report.error(node.key_places["remove"], f"remove is {shown(node['remove'])}", "remove: true", "")
+        complaints.error(node.key_places["remove"], f"remove is {shown(node['remove'])}", "remove: true", "")
     return True
 
 
-def _without_removed(node: Mapped, report: Report) -> Mapped:
+def _without_removed(node: Mapped, complaints: Complaints) -> Mapped:
     kept = Mapped(node.place)
     kept.key_places = node.key_places
     for key, value in node.items():
-        if not _removed(value, report):
-            kept[key] = _without_removed(value, report) if isinstance(value, Mapped) else value
+        if not _removed(value, complaints):
+            kept[key] = _without_removed(value, complaints) if isinstance(value, Mapped) else value
     return kept

@@ -3,16 +3,16 @@
 from collections.abc import Mapping
 from math import cos, hypot, radians, sin
 
-from runner.spec.leaves import FieldPoint, Point
 from runner.spec.model import Amount, Camera, Region
+from runner.spec.position_leaves import FieldPoint, Point
 from runner.spec.shapes import GridShape, RegionShape
-from runner.spec.tree import Report
+from runner.spec.tree import Complaints
 
 MIN_SIDE = 4
 """px; less cannot hold anything to measure."""
 
 
-def expand(shapes: Mapping[str, RegionShape | None], camera: Camera, report: Report) -> tuple[Region, ...]:
+def expand(shapes: Mapping[str, RegionShape | None], camera: Camera, complaints: Complaints) -> tuple[Region, ...]:
     """Return the regions of a capture in the order of the spec; a broken shape gives none.
 
     A member of a group carries the group's name and its own: `corners upper left`, `field r1c2`.
@@ -20,7 +20,7 @@ def expand(shapes: Mapping[str, RegionShape | None], camera: Camera, report: Rep
     Args:
         shapes: By name as written.
         camera: Gives the frame's size.
-        report: Takes complaints about regions off the frame and names used twice.
+        complaints: Takes complaints about regions off the frame and names used twice.
     """
     regions: list[Region] = []
     for name, shape in shapes.items():
@@ -28,8 +28,8 @@ def expand(shapes: Mapping[str, RegionShape | None], camera: Camera, report: Rep
             continue
         for region in _members(name, shape, camera):
             if any(region.name == other.name for other in regions):
-                report.error(shape.at(), f"two regions have the name '{region.name}'", "", "rename one of them")
-            _inside(region, shape, camera, report)
+                complaints.error(shape.at(), f"two regions have the name '{region.name}'", "", "rename one of them")
+            _inside(region, shape, camera, complaints)
             regions.append(region)
     return tuple(regions)
 
@@ -96,10 +96,10 @@ def _steps(start: Amount, end: Amount, count: int, whole: int) -> list[Amount]:
     return [Amount(start.value + (end.value - start.value) * i / (count - 1), start.unit) for i in range(count)]
 
 
-def _inside(region: Region, shape: RegionShape, camera: Camera, report: Report) -> None:
+def _inside(region: Region, shape: RegionShape, camera: Camera, complaints: Complaints) -> None:
     (x, y), (width, height) = region.centre_px(camera.width, camera.height), region.size_px(camera.width, camera.height)
     if min(width, height) < MIN_SIDE:
-        report.error(
+        complaints.error(
             shape.at("size"), f"region '{region.name}' is only {width} x {height} px", f"at least {MIN_SIDE} px"
         )
     edges = {"left": x - width / 2, "top": y - height / 2, "right": camera.width - x - width / 2}
@@ -109,4 +109,4 @@ def _inside(region: Region, shape: RegionShape, camera: Camera, report: Report) 
         place = shape.at("grid") if shape.grid is not None else shape.at("position")
         step = "move it or make it smaller"
         found = f"region '{region.name}' reaches {' and '.join(over)} of the frame"
-        report.error(place, found, f"inside {camera.width} x {camera.height} px", step)
+        complaints.error(place, found, f"inside {camera.width} x {camera.height} px", step)

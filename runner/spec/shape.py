@@ -1,6 +1,6 @@
 """What all shapes of a spec file have in common: mappings with known keys that tell every complaint at once.
 
-A shape never stops at the first fault. It reads what it can, tells its complaints to the report that comes as the
+A shape never stops at the first fault. It reads what it can, tells its complaints to the collection that comes as the
 validation context, and becomes None where it is broken; the words of the validating library never reach the reader.
 """
 
@@ -20,8 +20,9 @@ from pydantic import (
     model_validator,
 )
 
-from runner.spec.leaves import read_name, shown
-from runner.spec.tree import Listed, Mapped, Place, Report, Text, nearest, place_of
+from runner.spec.leaves import shown
+from runner.spec.position_leaves import read_name
+from runner.spec.tree import Complaints, Listed, Mapped, Place, Text, nearest, place_of
 
 Found = tuple[str, str, str, str]
 """A complaint of a shape about itself: key, what was found, what is allowed, what to do."""
@@ -63,26 +64,26 @@ class Shape(BaseModel):
     @model_validator(mode="wrap")
     @classmethod
     def _read(cls, data: Any, handler: ModelWrapValidatorHandler[Any], info: ValidationInfo) -> Any:
-        report: Report = info.context or Report()
+        complaints: Complaints = Complaints() if info.context is None else info.context
         node = _mapping_of(cls, data)
         if node is None:
             if data is not None:  # None was complained of when the file was read
                 keys = f"a mapping with the keys {', '.join(cls.known_keys())}"
-                report.error(place_of(data), f"{shown(data)} stands where {cls.WORDS} is meant", keys)
+                complaints.error(place_of(data), f"{shown(data)} stands where {cls.WORDS} is meant", keys)
             return None
-        flawed = _unknown(cls, node, report) | _missing(cls, node, report)
+        flawed = _unknown(cls, node, complaints) | _missing(cls, node, complaints)
         known = {key: value for key, value in node.items() if key not in flawed}
         try:
             shape = handler(known)
         except ValidationError as error:
-            flawed |= _tell(error, node, report)
+            flawed |= _tell(error, node, complaints)
             if cls.WHOLE:
                 return None
             shape = handler({key: value for key, value in known.items() if key not in flawed})
         flawed |= {key for key in shape.model_fields_set if getattr(shape, key) is None}
         shape._node, shape._flawed = node, frozenset(flawed)  # noqa: SLF001 - a pydantic private attribute of this very class
         for key, found, allowed, step in () if flawed else shape.check():
-            report.error(shape.at(key), found, allowed, step)
+            complaints.error(shape.at(key), found, allowed, step)
             flawed |= {key}
         return None if flawed and cls.WHOLE else shape
 
@@ -95,11 +96,11 @@ def _mapping_of(cls: type[Shape], data: Any) -> Mapped | None:
     return data if isinstance(data, Mapped) else None
 
 
-def _unknown(cls: type[Shape], node: Mapped, report: Report) -> set[str]:
+def _unknown(cls: type[Shape], node: Mapped, complaints: Complaints) -> set[str]:
     known = cls.known_keys()
     unknown = {key for key in node if key not in known}
     for key in unknown:
-        report.error(
+        complaints.error(
             node.key_places[key],
             f"unknown key '{key}' in {cls.WORDS}",
             f"known are: {', '.join(known)}",
@@ -108,28 +109,29 @@ def _unknown(cls: type[Shape], node: Mapped, report: Report) -> set[str]:
     return unknown
 
 
-def _missing(cls: type[Shape], node: Mapped, report: Report) -> set[str]:
+def _missing(cls: type[Shape], node: Mapped, complaints: Complaints) -> set[str]:
     for key in cls.REQUIRED:
         if key not in node:
-            report.error(node.place, f"{cls.WORDS} lacks the key '{key}'", "", f"add {key}:")
+            complaints.error(node.place, f"{cls.WORDS} lacks the key '{key}'", "", f"add {key}:")
     lacking = {key for key in cls.REQUIRED if key not in node}
     return lacking | {key for key, value in node.items() if value is None}
 
 
-def _tell(error: ValidationError, node: Mapped, report: Report) -> set[str]:
-    """Report pydantic's errors in our own sentences; return the keys they are about."""
+def _tell(error: ValidationError, node: Mapped, complaints: Complaints) -> set[str]:
+    """Tell pydantic's errors in our own sentences; return the keys they are about."""
     flawed: set[str] = set()
     for one in error.errors(include_url=False):
         path = one["loc"]
         flawed.add(str(path[0]) if path else "")
         told = one.get("ctx", {})
         if one["type"] == "spec":
-            report.error(place_of(node, *path), told["found"], told["allowed"], told["step"])
+            where = place_of(node, *path, *told["inside"])
+            complaints.error(where, told["found"], told["allowed"], told["step"])
         elif one["type"] in {"dict_type", "list_type"}:
             form = "a mapping" if one["type"] == "dict_type" else "a list"
-            report.error(place_of(node, *path), f"{shown(one['input'])} stands where {form} is meant", "", "")
-        elif one["type"] != "missing":  # told by _missing, or flawed already
-            report.error(place_of(node, *path), f"{shown(one['input'])} is not allowed here")
+            complaints.error(place_of(node, *path), f"{shown(one['input'])} stands where {form} is meant", "", "")
+        elif one["type"] not in {"missing", "told"}:  # told by _missing, or when the file was read
+            complaints.error(place_of(node, *path), f"{shown(one['input'])} is not allowed here")
     return flawed
 
 

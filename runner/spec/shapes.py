@@ -6,7 +6,7 @@ from typing import Annotated, Any, ClassVar
 
 from pydantic import ConfigDict, Field, PlainSerializer, PlainValidator, WithJsonSchema
 
-from runner.spec import leaves
+from runner.spec import device_leaves, leaves, position_leaves
 from runner.spec.leaves import choice
 from runner.spec.model import COMBINATIONS, RULES
 from runner.spec.shape import Found, Ordered, Shape
@@ -32,11 +32,11 @@ class DocumentShape(Shape):
     title: leaves.TextLeaf | None = None
     """Title, for the report's head."""
     issuer: leaves.TextLeaf | None = None
-    """Who issues the report: name, address."""
+    """Who issues the complaints: name, address."""
     customer: leaves.TextLeaf | None = None
     """For whom."""
     authorised_by: leaves.TextLeaf | None = None
-    """Who authorises the report."""
+    """Who authorises the complaints."""
 
 
 class UnitShape(Shape):
@@ -46,7 +46,7 @@ class UnitShape(Shape):
     REQUIRED: ClassVar[tuple[str, ...]] = ("product", "serial")
     product: leaves.TextLeaf
     """Kind of device."""
-    serial: leaves.Serial
+    serial: device_leaves.Serial
     """Regular expression that a whole serial matches, e.g. 'WS8-[0-9]{6}'."""
 
 
@@ -54,9 +54,9 @@ class CameraPart(Shape):
     """Camera data of one capture, in place of those of the spec."""
 
     WORDS: ClassVar[str] = "camera"
-    frame_size: leaves.FrameSize | None = None
+    frame_size: device_leaves.FrameSize | None = None
     """Width x height of a frame, e.g. 1600 x 1200 px."""
-    bit_depth: leaves.Bits | None = None
+    bit_depth: device_leaves.Bits | None = None
     """The sensor's, not the container's, e.g. 12 bit."""
     black_level: leaves.Level | None = None
     """Code without light, e.g. 64 DN."""
@@ -70,9 +70,9 @@ class CameraPart(Shape):
     """Pixel pitch on the sensor, e.g. 3.0 um."""
     fill: leaves.Share | None = None
     """Share of the pixel's area that collects light, e.g. 100 %."""
-    tone: leaves.ToneLeaf | None = None
+    tone: device_leaves.ToneLeaf | None = None
     """How codes follow light: linear, srgb, gamma 2.2, or {table: [[0, 0], …, [1, 1]]} of code and light fraction."""
-    processing: leaves.Processing | None = None
+    processing: device_leaves.Processing | None = None
     """Processing that the product applies before it delivers: none, or words of the list."""
     delivers: Annotated[str, *choice("raw", "jpeg")] | None = None
     """`jpeg` where the product delivers JPEG; else JPEG frames are refused."""
@@ -139,7 +139,7 @@ class FramesShape(Shape):
     WORDS: ClassVar[str] = "frames"
     SHORT: ClassVar[str | None] = "names"
     REQUIRED: ClassVar[tuple[str, ...]] = ("names",)
-    names: leaves.Names
+    names: device_leaves.Names
     """Pattern inside the unit's folder: * and named parts, e.g. 'chart-{repeat}.tif'."""
     count: leaves.Count | None = None
     """How many there must be; makes a lost frame visible."""
@@ -155,7 +155,7 @@ class ChartShape(Shape):
     """Its serial."""
     due: leaves.TextLeaf | None = None
     """Day on which its calibration is due, e.g. 2027-03-31."""
-    transfer: leaves.Transfer | None = None
+    transfer: device_leaves.Transfer | None = None
     """Its own transfer function in the image: pairs such as [0.25 cy/px, 0.98], rising in frequency."""
     transfer_uncertainty: leaves.ShareFromZero | None = None
     """Standard uncertainty of those modulations, e.g. 0.005."""
@@ -181,9 +181,9 @@ class GridShape(Shape):
     """Number of columns."""
     rows: leaves.GridCount
     """Number of rows."""
-    start: leaves.Pair = Field(alias="from")
+    start: position_leaves.Pair = Field(alias="from")
     """Centre of the first region, row 1 column 1."""
-    to: leaves.Pair
+    to: position_leaves.Pair
     """Centre of the last region."""
 
 
@@ -194,11 +194,11 @@ class RegionShape(Shape):
     REQUIRED: ClassVar[tuple[str, ...]] = ("size",)
     on: Annotated[str, *choice("frame", "field")] | None = None
     """What positions refer to: frame (the default) or field."""
-    position: leaves.Position | None = None
+    position: position_leaves.Position | None = None
     """Centre, x to the right then y down, in % of the frame or px; or named centres, which makes a group."""
     grid: GridShape | None = None
     """In place of position: regions r1c1, r1c2 … in rows and columns."""
-    size: leaves.Size
+    size: position_leaves.Size
     """Width and height, in % of the frame or px."""
 
     def check(self) -> Iterator[Found]:
@@ -206,7 +206,7 @@ class RegionShape(Shape):
         if (self.position is None) == (self.grid is None):
             yield "size", "a region has either a position or a grid", "", "write one of the two"
         points = list(self.position.values()) if isinstance(self.position, dict) else [self.position]
-        in_field = [isinstance(point, leaves.FieldPoint) for point in points]
+        in_field = [isinstance(point, position_leaves.FieldPoint) for point in points]
         if self.on == "field" and not all(in_field):
             yield "position", "on: field needs field heights", "for example {field: 0.8, azimuth: 45 deg}", ""
         if self.on == "frame" and any(in_field):
@@ -315,7 +315,7 @@ def _read_uses(node: Any) -> dict[str, str]:
         leaves.refuse(f"{leaves.shown(node)} stands where companions are meant", "for example {dark: dark}")
     for role in node:
         if role not in ROLES:
-            leaves.refuse(f"unknown role '{role}'", f"known are: {', '.join(ROLES)}", nearest(role, ROLES))
+            leaves.refuse(f"unknown role '{role}'", f"known are: {', '.join(ROLES)}", nearest(role, ROLES), (role,))
     return {role: leaves.read_text(name) for role, name in sorted(node.items())}
 
 
@@ -330,7 +330,7 @@ class CaptureShape(Shape):
     WORDS: ClassVar[str] = "capture"
     WHOLE: ClassVar[bool] = False
     REQUIRED: ClassVar[tuple[str, ...]] = ("target",)
-    target: leaves.TargetLeaf | None = None
+    target: device_leaves.TargetLeaf | None = None
     """Kind of scene (see `probatum targets`), or {name: {its options}}."""
     frames: FramesShape | None = None
     """Pattern of the files, or {names: …, count: …}."""
@@ -346,7 +346,7 @@ class CaptureShape(Shape):
     """The physical chart."""
     regions: Ordered[RegionShape | None] | None = None
     """Regions by name."""
-    measure: leaves.Methods | None = None
+    measure: device_leaves.Methods | None = None
     """Methods with their options; without it, the target's usual ones."""
     usable_if: dict[str, leaves.InequalityLeaf] | None = None
     """What makes the capture usable, e.g. {clipped: at most 0.01 %}; judged before the limits."""

@@ -13,7 +13,7 @@ from runner.spec.model import Station
 from runner.spec.revision import digest
 from runner.spec.shape import Found, Shape
 from runner.spec.shapes import VERSION, ComponentShape, day
-from runner.spec.tree import Place, Report, from_plain, read_tree
+from runner.spec.tree import Complaints, Place, from_plain, read_tree
 
 
 class InstrumentShape(Shape):
@@ -59,15 +59,15 @@ def read_station(path: Path) -> Station:
     Raises:
         SpecError: With every complaint at once.
     """
-    report = Report()
+    complaints = Complaints()
     label = path.as_posix()
     try:
-        tree = read_tree(path, label, report)
+        tree = read_tree(path, label, complaints)
     except UsageError as error:
-        report.error(Place(label, 0, 0), error.found, error.allowed, error.next_step)
+        complaints.error(Place(label, 0, 0), error.found, error.allowed, error.next_step)
         tree = None
-    shape: StationShape | None = StationShape.model_validate(tree, context=report) if tree is not None else None
-    report.raise_errors()
+    shape: StationShape | None = StationShape.model_validate(tree, context=complaints) if tree is not None else None
+    complaints.raise_errors()
     return station_of(shape)
 
 
@@ -89,7 +89,7 @@ def from_raw(raw: Mapping[str, Any]) -> Station:
     """
     if not raw:
         return Station()
-    report = Report()
-    shape: StationShape | None = StationShape.model_validate(from_plain(raw, "the station's data"), context=report)
-    report.raise_errors()
+    complaints = Complaints()
+    shape: StationShape | None = StationShape.model_validate(from_plain(raw, "the station's data"), context=complaints)
+    complaints.raise_errors()
     return station_of(shape)

@@ -8,7 +8,6 @@ doubled and empty keys, anchors, aliases (no document can blow up), tags, severa
 import difflib
 import re
 from collections.abc import Iterable, Iterator, Mapping
-from dataclasses import dataclass, field
 from math import isfinite
 from pathlib import Path
 from typing import Any, NamedTuple
@@ -78,24 +77,27 @@ class Listed(list[Any]):
         self.place = place
 
 
-@dataclass
-class Report:
+class Complaints:
     """Collects complaints, so that all of them are told at once."""
 
-    found: dict[tuple[Place, str], Complaint] = field(default_factory=dict)
-    """By place and sentence, so that nothing is said twice."""
+    def __init__(self) -> None:
+        self._found: dict[tuple[Place, str], Complaint] = {}  # by place and sentence: nothing is said twice
+
+    def __len__(self) -> int:
+        """Number of complaints so far."""
+        return len(self._found)
 
     def error(self, place: Place, found: str, allowed: str = "", next_step: str = "") -> None:
         """Add an error."""
-        self.found.setdefault((place, found), Complaint(str(place), found, allowed, next_step))
+        self._found.setdefault((place, found), Complaint(str(place), found, allowed, next_step))
 
     def warn(self, place: Place, found: str, allowed: str = "", next_step: str = "") -> None:
         """Add a warning."""
-        self.found.setdefault((place, found), Complaint(str(place), found, allowed, next_step, "warning"))
+        self._found.setdefault((place, found), Complaint(str(place), found, allowed, next_step, "warning"))
 
     def sorted(self, severity: str) -> tuple[Complaint, ...]:
         """Return the complaints of one severity in the order of files and lines."""
-        ordered = sorted(self.found.items(), key=lambda item: item[0][0])
+        ordered = sorted(self._found.items(), key=lambda item: item[0][0])
         return tuple(complaint for _, complaint in ordered if complaint.severity == severity)
 
     def raise_errors(self) -> None:
@@ -179,13 +181,13 @@ def from_plain(data: Any, words: str) -> Any:
     return Text.at(data, place, plain=False) if isinstance(data, str) else data
 
 
-def read_tree(path: Path, label: str, report: Report) -> Mapped | None:
+def read_tree(path: Path, label: str, complaints: Complaints) -> Mapped | None:
     """Read one YAML file whose top is a mapping.
 
     Args:
         path: The file.
         label: The file's name in complaints.
-        report: Takes the complaints.
+        complaints: Takes the complaints.
 
     Returns:
         The tree without what was refused, or None where nothing can be read.
@@ -199,32 +201,36 @@ def read_tree(path: Path, label: str, report: Report) -> Mapped | None:
             f"cannot read the file: {error.strerror}", where=label, next_step="check the path and its permissions"
         ) from error
     if len(data) > MAX_BYTES:
-        report.error(start, f"the file is larger than {MAX_BYTES // 1_000_000} MB", "", "name the spec, not the frames")
+        complaints.error(
+            start, f"the file is larger than {MAX_BYTES // 1_000_000} MB", "", "name the spec, not the frames"
+        )
         return None
     try:
         text = data.decode("utf-8-sig")
     except UnicodeDecodeError as error:
         line = data.count(b"\n", 0, error.start) + 1
         column = error.start - data.rfind(b"\n", 0, error.start)
-        report.error(Place(label, line, column), "the file is not UTF-8 text", "", "save it as UTF-8")
+        complaints.error(Place(label, line, column), "the file is not UTF-8 text", "", "save it as UTF-8")
         return None
-    return parse(text, label, report)
+    return parse(text, label, complaints)
 
 
-def parse(text: str, label: str, report: Report) -> Mapped | None:
+def parse(text: str, label: str, complaints: Complaints) -> Mapped | None:
     """Read YAML text whose top is a mapping; see `read_tree`."""
-    builder = _Builder(label, report)
+    builder = _Builder(label, complaints)
     try:
         top = builder.document(yaml.parse(text, Loader=yaml.SafeLoader))
     except yaml.YAMLError as error:
         place, found, step = _explain(error, label, text)
-        report.error(place, found, "", step)
+        complaints.error(place, found, "", step)
         return None
     except _StopReadingError:
         return None
     if top is None or isinstance(top, Mapped):
         return top
-    report.error(Place(label, 1, 1), "the file does not begin with a key", "a spec is a mapping of keys to values", "")
+    complaints.error(
+        Place(label, 1, 1), "the file does not begin with a key", "a spec is a mapping of keys to values", ""
+    )
     return None
 
 
@@ -235,8 +241,8 @@ class _StopReadingError(Exception):
 class _Builder:
     """Builds the tree from parser events; recursion is bounded by `MAX_DEPTH`."""
 
-    def __init__(self, label: str, report: Report) -> None:
-        self._label, self._report = label, report
+    def __init__(self, label: str, complaints: Complaints) -> None:
+        self._label, self._complaints = label, complaints
 
     def document(self, events: Iterator[yaml.Event]) -> Any:
         """Return the one document of the stream."""
@@ -250,7 +256,7 @@ class _Builder:
                     raise _StopReadingError
                 top = self._node(next(events), events, 0)
         if documents == 0 or top is None:
-            self._report.error(Place(self._label, 1, 1), "the file is empty", "", "write a spec")
+            self._complaints.error(Place(self._label, 1, 1), "the file is empty", "", "write a spec")
         return top
 
     def _node(self, event: yaml.Event, events: Iterator[yaml.Event], depth: int) -> Any:
@@ -288,19 +294,19 @@ class _Builder:
             place = self._place(event)
             value = self._node(next(events), events, depth + 1)
             if not isinstance(key, Text):
-                self._report.error(place, "a key is not a plain word", "", "write key: value")
+                self._complaints.error(place, "a key is not a plain word", "", "write key: value")
                 continue
             name = str(key)
             if name in mapped:
                 first = mapped.key_places[name]
-                self._report.error(
+                self._complaints.error(
                     place, f"key '{name}' stands twice; first in line {first.line}", "", "keep one of them"
                 )
                 continue
             mapped.key_places[name] = place
             mapped[name] = value
             if isinstance(value, Text) and value.plain and value in {"", "~", "null"}:
-                self._report.error(place, f"key '{name}' has no value", "", "give it one or leave the key out")
+                self._complaints.error(place, f"key '{name}' has no value", "", "give it one or leave the key out")
                 mapped[name] = None
         return mapped
 
@@ -325,7 +331,7 @@ class _Builder:
         return Place(self._label, mark.line + 1, mark.column + 1)
 
     def _error(self, event: yaml.Event, found: str, allowed: str, next_step: str) -> None:
-        self._report.error(self._place(event), found, allowed, next_step)
+        self._complaints.error(self._place(event), found, allowed, next_step)
 
 
 def _explain(error: yaml.YAMLError, label: str, text: str) -> tuple[Place, str, str]:
