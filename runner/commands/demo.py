@@ -34,12 +34,12 @@ def command(lot: str, out: Path, jobs: int) -> Exit:
 
     Some units are meant to fail. Exit code 0: every unit got its documented verdict and blame; else 70.
     """
+    home = _lot_folder(lot)
     from runner import acceptance  # noqa: PLC0415 - heavy
     from runner.rehearse.expected import found_in, read_expected  # noqa: PLC0415 - heavy
     from runner.rehearse.lot import make_lot  # noqa: PLC0415 - heavy
     from runner.rehearse.scenario import read_scenario  # noqa: PLC0415 - heavy
 
-    home = _lot_folder(lot)
     scenario, expected = read_scenario(home / SCENARIO), read_expected(home / EXPECTED)
     frames, reports = out / "frames", out / "reports"
     print(f"{scenario.title} (invented, simulated)", flush=True)

@@ -6,7 +6,7 @@ from pathlib import Path
 from typing import Any
 
 from runner.errors import UsageError
-from runner.spec.tree import Report, plain_data, read_tree
+from runner.spec.tree import Complaints, plain_data, read_tree
 
 OPEN_QUESTIONS = ("does not conform", "cannot decide")
 """Verdicts of checks that the documentation of a unit must name."""
@@ -48,9 +48,9 @@ def read_expected(path: Path) -> Expected:
     Raises:
         UsageError: The file cannot be read or lacks a part.
     """
-    report = Report()
-    data = plain_data(read_tree(path, path.name, report)) or {}
-    report.raise_errors()
+    complaints = Complaints()
+    data = plain_data(read_tree(path, path.name, complaints)) or {}
+    complaints.raise_errors()
     try:
         units = {serial: _documented(unit) for serial, unit in data["units"].items()}
         return Expected(str(data["spec"]), str(data["open_first"]), units)

@@ -15,8 +15,9 @@ from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, ValidationEr
 from runner.rehearse.optics import Transfer
 from runner.rehearse.scene import Chart, Square, View
 from runner.rehearse.sensor import Sensor, Sharpening
-from runner.spec.leaves import read_frame_size, refuse, shown
-from runner.spec.tree import Mapped, Report, nearest, number_in, place_of, read_tree
+from runner.spec.device_leaves import read_frame_size
+from runner.spec.leaves import refuse, shown
+from runner.spec.tree import Complaints, Mapped, nearest, number_in, place_of, read_tree
 
 
 def _in(**factors: float) -> BeforeValidator:
@@ -217,15 +218,15 @@ def read_scenario(path: Path) -> Scenario:
     Raises:
         SpecError: With every complaint about the file.
     """
-    report = Report()
-    tree = read_tree(path, path.name, report)
-    report.raise_errors()
+    complaints = Complaints()
+    tree = read_tree(path, path.name, complaints)
+    complaints.raise_errors()
     try:
         shape = ScenarioShape.model_validate(tree)
     except ValidationError as error:
         for item in error.errors():
-            _complain(report, tree, item)
-        report.raise_errors()
+            _complain(complaints, tree, item)
+        complaints.raise_errors()
         raise
     units = {serial: _unit(serial, unit, shape) for serial, unit in sorted(shape.units.items())}
     return Scenario(
@@ -239,18 +240,18 @@ def read_scenario(path: Path) -> Scenario:
     )
 
 
-def _complain(report: Report, tree: Mapped | None, item: Mapping[str, Any]) -> None:
+def _complain(complaints: Complaints, tree: Mapped | None, item: Mapping[str, Any]) -> None:
     where = place_of(tree, *item["loc"])
     name, context = str(item["loc"][-1]) if item["loc"] else "", item.get("ctx", {})
     if item["type"] == "extra_forbidden":
         known = {f.alias or n for s in Shape.__subclasses__() for n, f in s.model_fields.items()}
-        report.error(where, f"unknown key '{name}'", nearest(name, known), "remove or correct it")
+        complaints.error(where, f"unknown key '{name}'", nearest(name, known), "remove or correct it")
     elif item["type"] == "missing":
-        report.error(where, f"the key '{name}' is missing", "", "add it")
+        complaints.error(where, f"the key '{name}' is missing", "", "add it")
     elif item["type"] == "spec":
-        report.error(where, context["found"], context["allowed"], context["step"])
+        complaints.error(where, context["found"], context["allowed"], context["step"])
     else:
-        report.error(where, f"{name}: {item['msg'][0].lower()}{item['msg'][1:]}")
+        complaints.error(where, f"{name}: {item['msg'][0].lower()}{item['msg'][1:]}")
 
 
 def _chart(shape: ScenarioShape) -> Chart:
