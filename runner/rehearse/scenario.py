@@ -58,7 +58,7 @@ class ChartShape(Shape):
     """Side of the slanted squares."""
     slant: Degrees
     """Their turn, clockwise as seen."""
-    squares: Mapping[str, tuple[Millimetres, Millimetres]]
+    squares: Annotated[Mapping[str, tuple[Millimetres, Millimetres]], Field(min_length=1)]
     """Their centres from the chart's middle, right and down."""
     mark_side: Annotated[Millimetres, Field(gt=0)]
     """Side of the small marks."""
@@ -157,7 +157,7 @@ class ScenarioShape(Shape):
     """The lens."""
     sensor: SensorShape
     """The sensor."""
-    units: Annotated[Mapping[str, UnitShape], Field(min_length=1)]
+    units: Annotated[Mapping[Annotated[str, Field(pattern=r"^\w[\w.-]*$")], UnitShape], Field(min_length=1)]
     """Units by serial."""
 
 
@@ -240,18 +240,35 @@ def read_scenario(path: Path) -> Scenario:
     )
 
 
+_MEANT = {
+    "tuple_type": "two amounts in brackets are meant, for example [1 mm, 0 mm]",
+    "int_type": "a whole number is meant",
+    "int_parsing": "a whole number is meant",
+    "float_type": "a number is meant",
+    "float_parsing": "a number is meant",
+    "string_type": "a text is meant",
+    "dict_type": "keys with values are meant",
+    "mapping_type": "keys with values are meant",
+    "model_type": "keys with values are meant",
+    "string_pattern_mismatch": "a serial has letters, digits, - and . only",
+}
+"""Plain words for what the shapes refuse."""
+
+
 def _complain(complaints: Complaints, tree: Mapped | None, item: Mapping[str, Any]) -> None:
-    where = place_of(tree, *item["loc"])
-    name, context = str(item["loc"][-1]) if item["loc"] else "", item.get("ctx", {})
+    path = [step for step in item["loc"] if step != "[key]"]
+    where, context = place_of(tree, *path), item.get("ctx", {})
+    name = str(path[-1]) if path else "the file"
     if item["type"] == "extra_forbidden":
         known = {f.alias or n for s in Shape.__subclasses__() for n, f in s.model_fields.items()}
-        complaints.error(where, f"unknown key '{name}'", nearest(name, known), "remove or correct it")
+        hint = "it stands in the wrong place" if name in known else nearest(name, known)
+        complaints.error(where, f"unknown key '{name}'", hint, "move, correct or remove it")
     elif item["type"] == "missing":
         complaints.error(where, f"the key '{name}' is missing", "", "add it")
     elif item["type"] == "spec":
         complaints.error(where, context["found"], context["allowed"], context["step"])
     else:
-        complaints.error(where, f"{name}: {item['msg'][0].lower()}{item['msg'][1:]}")
+        complaints.error(where, f"{name}: {_MEANT.get(item['type'], item['msg'][0].lower() + item['msg'][1:])}")
 
 
 def _chart(shape: ScenarioShape) -> Chart:

@@ -73,11 +73,15 @@ def test_all_complaints_come_at_once_with_their_lines(tmp_path: Path) -> None:
     ("key", "line", "sentence"),
     [
         ("lamp", '    lamp: "dim"', "lamp: input should be 'lit' or 'off'"),
+        ("repeats", "repeats: {flat: 2}", "flat: input should be 'dark' or 'chart'"),
+        ("seed", "seed: lucky", "seed: a whole number is meant"),
+        ("photons", "fill: 1 %", "unknown key 'fill'; it stands in the wrong place"),
+        ("WS8-000101", "  WS8/000101:", "a serial has letters, digits, - and . only"),
         ("fill", "  fill: 120 %", "fill: input should be less than or equal to 1"),
         ("bit_depth", "  bit_depth: 12", "'12' is no amount that fits here"),
         ("probatum-scenario", "probatum-scenario: 2", "input should be '1'"),
         ("frame_size", "  frame_size: 1600", "'1600' is no frame size"),
-        ("aim", "    aim: 3 mm", "aim: input should be a valid tuple"),
+        ("aim", "    aim: 3 mm", "aim: two amounts in brackets are meant"),
     ],
 )
 def test_each_mistake_has_its_sentence(tmp_path: Path, key: str, line: str, sentence: str) -> None:
