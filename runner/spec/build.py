@@ -12,6 +12,7 @@ from runner.spec.include import read_merged
 from runner.spec.leaves import share
 from runner.spec.lint import lint
 from runner.spec.model import PROOF_EITHER_WAY, Document, Optics, Spec, UncertaintyComponent, UnitRule
+from runner.spec.relations import relate
 from runner.spec.revision import digest
 from runner.spec.shapes import ComponentShape, DocumentShape, RootShape
 from runner.spec.tree import Complaints, Mapped, Place, from_plain
@@ -35,10 +36,7 @@ def read_spec(path: Path) -> Spec:
     except UsageError as error:
         complaints.error(Place(label, 0, 0), error.found, error.allowed, error.next_step)
         tree = None
-    spec = None
-    if tree is not None:
-        spec, drafts = _build(tree, complaints)
-        lint(drafts, complaints)
+    spec = _build(tree, complaints, judge=True) if tree is not None else None
     complaints.raise_errors()
     if spec is None:  # pragma: no cover - a spec that was not built has complaints
         msg = f"{label} was refused without a complaint"
@@ -55,7 +53,7 @@ def from_expanded(data: Mapping[str, Any]) -> Spec:
         SpecError: The data are no expanded spec.
     """
     complaints = Complaints()
-    spec, _ = _build(from_plain(data, "the expanded spec"), complaints)
+    spec = _build(from_plain(data, "the expanded spec"), complaints, judge=False)
     complaints.raise_errors()
     if spec is None:  # pragma: no cover - see read_spec
         msg = "the expanded spec was refused without a complaint"
@@ -63,15 +61,15 @@ def from_expanded(data: Mapping[str, Any]) -> Spec:
     return replace(spec, source="the expanded spec")
 
 
-def _build(tree: Mapped, complaints: Complaints) -> tuple[Spec | None, tuple[Draft, ...]]:
+def _build(tree: Mapped, complaints: Complaints, *, judge: bool) -> Spec | None:
     root: RootShape | None = RootShape.model_validate(tree, context=complaints)
     if root is None:
-        return None, ()
+        return None
     camera = build_camera(root.camera, complaints) if root.camera is not None else None
     optics = build_optics(root.optics, complaints) if root.optics is not None else Optics()
     uncertainty = tuple(build_component(c) for c in root.uncertainty or () if c is not None)
     drafts: tuple[Draft, ...] = ()
-    if camera is not None and root.captures is not None and root.sound("captures"):
+    if root.captures is not None and root.sound("captures"):
         decision = root.decision
         probability = decision.conformance_probability if decision else None
         defaults = Defaults(
@@ -79,10 +77,13 @@ def _build(tree: Mapped, complaints: Complaints) -> tuple[Spec | None, tuple[Dra
             share(probability) if probability else DEFAULT_PROBABILITY,
         )
         drafts = build_captures(root, camera, optics, defaults, complaints)
+    if judge:
+        lint(root, drafts, uncertainty, complaints)
+        relate(root, drafts, complaints)
     if complaints.sorted("error") or camera is None or root.document is None or root.unit is None:
-        return None, drafts
+        return None
     expanded = root.model_dump(mode="json", by_alias=True, exclude_unset=True)
-    spec = Spec(
+    return Spec(
         _document(root.document),
         UnitRule(root.unit.product, root.unit.serial),
         camera,
@@ -91,8 +92,21 @@ def _build(tree: Mapped, complaints: Complaints) -> tuple[Spec | None, tuple[Dra
         uncertainty,
         expanded,
         digest(expanded),
+        places=_places(drafts),
     )
-    return spec, drafts
+
+
+def _places(drafts: tuple[Draft, ...]) -> dict[str, str]:
+    """Return the lines of captures and of what stands in them, by the words in which later complaints name them."""
+    places: dict[str, str] = {}
+    for draft in drafts:
+        words = f"captures, {draft.capture.name}"
+        places[words] = str(draft.shape.at())
+        places |= {f"{words}, {key}": str(draft.shape.at(key)) for key in ("target", "measure", "usable_if")}
+        places |= {f"{words}, measure, {name}": str(draft.shape.at("measure", name)) for name in draft.capture.measure}
+        for limit, shape in draft.limits:
+            places.setdefault(f"{words}, limit {limit.characteristic}", str(shape.at("quantity")))
+    return places
 
 
 def _document(shape: DocumentShape) -> Document:

@@ -34,16 +34,18 @@ class Draft:
     """As written."""
     limits: tuple[tuple[Limit, LimitShape], ...]
     """Each limit with its shape."""
+    fill: float | None
+    """Fill of the pixel as stated, or None."""
 
 
 def build_captures(
-    root: RootShape, camera: Camera, optics: Optics, defaults: Defaults, complaints: Complaints
+    root: RootShape, camera: Camera | None, optics: Optics, defaults: Defaults, complaints: Complaints
 ) -> tuple[Draft, ...]:
     """Return the captures that are whole, in the order of the spec.
 
     Args:
         root: The whole file.
-        camera: The spec's camera.
+        camera: The spec's camera; without one (it is broken) names are checked all the same, and nothing is built.
         optics: The spec's optics.
         defaults: Decision rule and probability of limits that state none.
         complaints: Takes the complaints.
@@ -60,28 +62,27 @@ def _build(
     name: str,
     shape: CaptureShape,
     root: RootShape,
-    camera: Camera,
+    camera: Camera | None,
     optics: Optics,
     defaults: Defaults,
     complaints: Complaints,
 ) -> Draft | None:
-    own_camera: Camera | None = camera
     if not shape.sound("camera") or not shape.sound("optics"):
-        return None
-    if shape.camera is not None and root.camera is not None:
-        own_camera = build_camera(overridden(root.camera, shape.camera), complaints, shape.camera)
+        camera = None
+    elif shape.camera is not None and root.camera is not None:
+        camera = build_camera(overridden(root.camera, shape.camera), complaints, shape.camera)
     if shape.optics is not None:
         optics = build_optics(root.optics or OpticsShape(), complaints, shape.optics)
-    if own_camera is None:
-        return None
-    context = units.context_of(own_camera, optics)
-    regions = expand(shape.regions or {}, own_camera, complaints)
+    context = units.context_of(camera, optics) if camera is not None else None
     meant = names(shape.regions or {}) if shape.sound("regions") else None
     limits = tuple(
         (limit, one)
         for one in shape.limits or ()
         if one is not None and (limit := _limit(one, name, meant, context, defaults, complaints)) is not None
     )
+    if camera is None or context is None:
+        return None
+    regions = expand(shape.regions or {}, camera, complaints)
     frames = shape.frames
     target, target_options = next(iter((shape.target or Chosen({"": {}})).options.items()))
     capture = Capture(
@@ -90,7 +91,7 @@ def _build(
         frames=None if frames is None else FramePattern(frames.names, frames.count),
         same_frames_as=shape.same_frames_as,
         uses=shape.uses or {},
-        camera=own_camera,
+        camera=camera,
         optics=optics,
         chart=build_chart(shape.chart, context, complaints),
         regions=regions,
@@ -99,7 +100,8 @@ def _build(
         usable_if=tuple(_bounds(shape)),
         limits=tuple(limit for limit, _ in limits),
     )
-    return Draft(capture, shape, limits)
+    stated = any(one is not None and one.stated("fill") for one in (root.camera, shape.camera))
+    return Draft(capture, shape, limits, camera.fill if stated else None)
 
 
 def _bounds(shape: CaptureShape) -> Iterable[Bound]:
@@ -116,15 +118,15 @@ def _limit(
     shape: LimitShape,
     capture: str,
     meant: Mapping[str, tuple[str, ...]] | None,
-    context: units.FrequencyContext,
+    context: units.FrequencyContext | None,
     defaults: Defaults,
     complaints: Complaints,
 ) -> Limit | None:
-    if meant is None:  # the regions are broken and have been complained of
+    if meant is None or not shape.sound("where") or not shape.sound("against"):  # complained of already
         return None
     where = _regions(shape, "where", shape.where or (), meant, complaints)
     against = _regions(shape, "against", shape.against or (), meant, complaints)
-    ends = _ends(shape, context, complaints)
+    ends = _ends(shape, context, complaints) if context is not None and shape.whole() else None
     if where is None or against is None or ends is None:
         return None
     if shape.combine == "range" and len(where) < 2:

@@ -306,6 +306,13 @@ class Spec:
     """File it was read from, for messages."""
     warnings: tuple[Any, ...] = ()
     """Complaints of severity `warning`."""
+    places: Mapping[str, str] = field(default_factory=dict, compare=False)
+    """`file:line:col` of what stands in the file, by words such as `captures, chart, limit 1`."""
+
+    def place(self, words: str) -> str:
+        """Return `file:line:col` of `captures, chart, limit 1` and the like, or the words with the file's name."""
+        words = words.removeprefix(f"{self.source}: ")
+        return self.places.get(words) or (f"{self.source}: {words}" if self.source else words)
 
     def capture(self, name: str) -> Capture:
         """Return the capture of that name.

@@ -29,13 +29,17 @@ Found = tuple[str, str, str, str]
 
 
 class Shape(BaseModel):
-    """A mapping with known keys."""
+    """A mapping with known keys.
+
+    Each kind says what complaints call it (`WORDS`), which key a bare text stands for (`SHORT`), which keys must be
+    there (`REQUIRED`), and whether its good keys are still of use when others are wrong (`KEPT`).
+    """
 
     model_config = ConfigDict(frozen=True, extra="forbid", use_attribute_docstrings=True)
 
     WORDS: ClassVar[str] = "this mapping"
     SHORT: ClassVar[str | None] = None
-    WHOLE: ClassVar[bool] = True
+    KEPT: ClassVar[bool] = False
     REQUIRED: ClassVar[tuple[str, ...]] = ()
     _node: Any = PrivateAttr(default=None)
     _flawed: frozenset[str] = PrivateAttr(default=frozenset())
@@ -51,6 +55,10 @@ class Shape(BaseModel):
     def sound(self, key: str) -> bool:
         """Tell whether nothing is wrong with a key."""
         return key not in self._flawed
+
+    def whole(self) -> bool:
+        """Tell whether nothing is wrong with any key."""
+        return not self._flawed
 
     def check(self) -> Iterator[Found]:
         """Yield what is wrong between the keys, once each of them is right."""
@@ -77,15 +85,17 @@ class Shape(BaseModel):
             shape = handler(known)
         except ValidationError as error:
             flawed |= _tell(error, node, complaints)
-            if cls.WHOLE:
+            try:
+                shape = handler({key: value for key, value in known.items() if key not in flawed})
+            except ValidationError:
                 return None
-            shape = handler({key: value for key, value in known.items() if key not in flawed})
         flawed |= {key for key in shape.model_fields_set if getattr(shape, key) is None}
         shape._node, shape._flawed = node, frozenset(flawed)  # noqa: SLF001 - a pydantic private attribute of this very class
         for key, found, allowed, step in () if flawed else shape.check():
             complaints.error(shape.at(key), found, allowed, step)
             flawed |= {key}
-        return None if flawed and cls.WHOLE else shape
+        shape._flawed = frozenset(flawed)  # noqa: SLF001
+        return shape if cls.KEPT or not flawed else None
 
 
 def _mapping_of(cls: type[Shape], data: Any) -> Mapped | None:

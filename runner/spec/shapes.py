@@ -217,6 +217,7 @@ class LimitShape(Shape):
     """One numbered requirement."""
 
     WORDS: ClassVar[str] = "limit"
+    KEPT: ClassVar[bool] = True
     REQUIRED: ClassVar[tuple[str, ...]] = ("characteristic", "quantity")
     characteristic: leaves.TextLeaf
     """Its number on the drawing; unique with where and channel."""
@@ -328,7 +329,7 @@ class CaptureShape(Shape):
 
     model_config = ConfigDict(json_schema_extra={"required": ["target"]})
     WORDS: ClassVar[str] = "capture"
-    WHOLE: ClassVar[bool] = False
+    KEPT: ClassVar[bool] = True
     REQUIRED: ClassVar[tuple[str, ...]] = ("target",)
     target: device_leaves.TargetLeaf | None = None
     """Kind of scene (see `probatum targets`), or {name: {its options}}."""
@@ -362,7 +363,7 @@ class RootShape(Shape):
         json_schema_extra={"required": ["probatum-spec", "document", "unit", "camera", "captures"]},
     )
     WORDS: ClassVar[str] = "the spec"
-    WHOLE: ClassVar[bool] = False
+    KEPT: ClassVar[bool] = True
     REQUIRED: ClassVar[tuple[str, ...]] = ("probatum-spec", "document", "unit", "camera", "captures")
     version: Annotated[int, *leaves.whole_number(VERSION, VERSION)] | None = Field(default=None, alias="probatum-spec")
     """Version of the format: 1."""

@@ -37,7 +37,7 @@ class StationShape(Shape):
     """A station file."""
 
     WORDS: ClassVar[str] = "the station file"
-    WHOLE: ClassVar[bool] = False
+    KEPT: ClassVar[bool] = True
     REQUIRED: ClassVar[tuple[str, ...]] = ("probatum-station", "name")
     version: Annotated[int, *leaves.whole_number(VERSION, VERSION)] | None = Field(
         default=None, alias="probatum-station"
