@@ -1,0 +1,101 @@
+"""Every name of a spec is bound to the shelves before a frame is opened."""
+
+from pathlib import Path
+
+import pytest
+
+from runner.errors import SpecError
+from runner.measure.plan import Plan, bind
+from runner.spec.build import read_spec
+from runner.spec.model import Station, UncertaintyComponent
+
+SPEC = """\
+probatum-spec: 1
+document: {{number: WS8-ACC, revision: C}}
+unit: {{product: WS8, serial: 'WS8-[0-9]{{6}}'}}
+camera: {{frame_size: 800 x 600 px, bit_depth: 12 bit, black_level: 64 DN, white_level: 4095 DN, pixel_pitch: 3 um}}
+captures:
+  chart:
+    target: {target}
+    frames: 'chart-{{repeat}}.tif'
+    regions: {{centre: {{position: [50 %, 50 %], size: [80 px, 120 px]}}}}
+    measure: {{{measure}}}
+    usable_if: {{{usable_if}}}
+    limits:
+      - {{characteristic: 1, {limit}, where: centre}}
+"""
+GOOD = {
+    "target": "slanted edge",
+    "measure": "edge response: {order: 1}",
+    "usable_if": "clipped: at most 0.01 %",
+    "limit": "quantity: mtf, frequency: 50 lp/mm, at_least: 0.45",
+}
+
+
+def _bind(folder: Path, **changes: str) -> Plan:
+    path = folder / "spec.yaml"
+    path.write_text(SPEC.format(**(GOOD | changes)))
+    return bind(read_spec(path))
+
+
+def test_a_limit_becomes_a_wanted_reading_in_the_methods_unit(tmp_path: Path) -> None:
+    """A frequency asked in lp/mm reaches the method in cy/px, and the reading keeps the words of the spec."""
+    methods = {m.method.NAME: m for m in _bind(tmp_path).captures[0].methods}
+    (wanted,) = methods["edge response"].wanted["centre"]
+
+    assert wanted.at["frequency"] == pytest.approx(0.15)  # 50 lp/mm × 0.003 mm
+    assert (wanted.parameters["frequency"].value, wanted.parameters["frequency"].unit) == (50, "lp/mm")
+
+
+def test_level_and_clipping_are_always_measured(tmp_path: Path) -> None:
+    """Exposure is bound to every capture, asked or not."""
+    assert [m.method.NAME for m in _bind(tmp_path).captures[0].methods] == ["edge response", "exposure"]
+
+
+def test_the_targets_own_methods_run_when_none_is_named(tmp_path: Path) -> None:
+    """A spec without `measure` gets what the target says."""
+    names = [m.method.NAME for m in _bind(tmp_path, measure="").captures[0].methods]
+
+    assert names == ["edge response", "exposure"]
+
+
+def test_what_the_program_filled_in_is_told(tmp_path: Path) -> None:
+    """The plan in the results holds every option of target and methods."""
+    filled = _bind(tmp_path).defaults()["chart"]
+
+    assert filled["measure"]["edge response"]["estimator"] == "joint fit"
+    assert "slanted edge" in filled["target"]
+
+
+def test_components_of_spec_and_station_add_up(tmp_path: Path) -> None:
+    """Declared components of the station come behind the spec's."""
+    path = tmp_path / "spec.yaml"
+    path.write_text(SPEC.format(**GOOD))
+    station = Station(uncertainty=(UncertaintyComponent("drift", ("mtf",), relative=0.01),))
+
+    assert [c.name for c in bind(read_spec(path), station).uncertainty] == ["drift"]
+
+
+@pytest.mark.parametrize(
+    ("changes", "complaint"),
+    [
+        ({"target": "slantd edge"}, "unknown target 'slantd edge'.*did you mean 'slanted edge'"),
+        ({"measure": "edge respons: {}"}, "unknown method 'edge respons'.*did you mean 'edge response'"),
+        ({"measure": "edge response: {ordre: 2}"}, "edge response: unknown option 'ordre'"),
+        ({"measure": "edge response: {order: 9}"}, "edge response: .*9"),
+        ({"limit": "quantity: mtf5O, at_least: 0.2 cy/px"}, "limit 1: unknown quantity 'mtf5O'.*did you mean 'mtf50'"),
+        ({"limit": "quantity: mtf, at_least: 0.2"}, "limit 1: mtf needs 'frequency'"),
+        (
+            {"limit": "quantity: mtf50, frequency: 0.2 cy/px, at_least: 0.2 cy/px"},
+            "limit 1: mtf50 takes no 'frequency'",
+        ),
+        ({"limit": "quantity: mtf50, at_least: 20 %"}, "limit 1: mtf50 is measured in cy/px, its limit is given in %"),
+        ({"limit": "quantity: mtf50, at_least: 3 cy/deg"}, "limit 1: mtf50 is measured in cy/px.*focal"),
+        ({"usable_if": "cliped: at most 1 %"}, "usable_if: unknown quantity 'cliped'.*did you mean 'clipped'"),
+        ({"target": "dark frame"}, "method 'edge response' needs edge; target 'dark frame' does not offer it"),
+    ],
+)
+def test_names_that_are_not_there_are_complained_about(tmp_path: Path, changes: dict[str, str], complaint: str) -> None:
+    """Each wrong name, option, parameter or unit ends in a sentence that says which and what is known."""
+    with pytest.raises(SpecError, match=f"captures, chart.*{complaint}"):
+        _bind(tmp_path, **changes)
