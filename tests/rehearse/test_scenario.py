@@ -28,7 +28,7 @@ def test_walnut_line_is_read_in_physical_units() -> None:
     unit = scenario.units["WS8-000106"]
 
     assert len(scenario.units) == 8
-    assert unit.lens.focus_error_um == 4000.0
+    assert unit.lens.focus_error_um == 5000.0
     assert unit.lens.wavelength_um == 0.55
     assert unit.view.mm_per_px == pytest.approx(0.36)
     assert scenario.sensor.quantum_efficiency == 0.6
