@@ -23,8 +23,12 @@ DEFAULT_PROBABILITY = 0.95
 """Conformance probability where none is stated (the default of ISO 14253-1:2017)."""
 
 
-def read_spec(path: Path) -> Spec:
+def read_spec(path: Path, station: tuple[UncertaintyComponent, ...] = ()) -> Spec:
     """Read a spec file, its bases included, strictly.
+
+    Args:
+        path: The spec.
+        station: Uncertainty components that the station declares; they count when two-sided limits are looked at.
 
     Raises:
         SpecError: With every complaint at once, in the order of the lines.
@@ -36,7 +40,7 @@ def read_spec(path: Path) -> Spec:
     except UsageError as error:
         complaints.error(Place(label, 0, 0), error.found, error.allowed, error.next_step)
         tree = None
-    spec = _build(tree, complaints, judge=True) if tree is not None else None
+    spec = _build(tree, complaints, station) if tree is not None else None
     complaints.raise_errors()
     if spec is None:  # pragma: no cover - a spec that was not built has complaints
         msg = f"{label} was refused without a complaint"
@@ -53,7 +57,7 @@ def from_expanded(data: Mapping[str, Any]) -> Spec:
         SpecError: The data are no expanded spec.
     """
     complaints = Complaints()
-    spec = _build(from_plain(data, "the expanded spec"), complaints, judge=False)
+    spec = _build(from_plain(data, "the expanded spec"), complaints, None)
     complaints.raise_errors()
     if spec is None:  # pragma: no cover - see read_spec
         msg = "the expanded spec was refused without a complaint"
@@ -61,7 +65,8 @@ def from_expanded(data: Mapping[str, Any]) -> Spec:
     return replace(spec, source="the expanded spec")
 
 
-def _build(tree: Mapped, complaints: Complaints, *, judge: bool) -> Spec | None:
+def _build(tree: Mapped, complaints: Complaints, station: tuple[UncertaintyComponent, ...] | None) -> Spec | None:
+    """Build a spec; with the station's components, look at what it asks against logic and physics too."""
     root: RootShape | None = RootShape.model_validate(tree, context=complaints)
     if root is None:
         return None
@@ -77,8 +82,8 @@ def _build(tree: Mapped, complaints: Complaints, *, judge: bool) -> Spec | None:
             share(probability) if probability else DEFAULT_PROBABILITY,
         )
         drafts = build_captures(root, camera, optics, defaults, complaints)
-    if judge:
-        lint(root, drafts, uncertainty, complaints)
+    if station is not None:
+        lint(root, drafts, (*uncertainty, *station), complaints)
         relate(root, drafts, complaints)
     if complaints.sorted("error") or camera is None or root.document is None or root.unit is None:
         return None
