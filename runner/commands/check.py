@@ -53,12 +53,14 @@ def _check(path: Path, station: "Station | None", *, expanded: bool) -> "Plan | 
     try:
         spec = read_spec(path, station.uncertainty if station is not None else ())
     except SpecError as error:
-        return _refused(path, error.complaints)
+        _refused(path, error.complaints)
+        return None
     try:
         plan = bind(spec, station)
     except SpecError as error:
         here = tuple(replace(complaint, where=spec.place(complaint.where)) for complaint in error.complaints)
-        return _refused(path, (*spec.warnings, *here))
+        _refused(path, (*spec.warnings, *here))
+        return None
     print("\n".join([*(str(warning) for warning in spec.warnings), _summary(path, spec)]))
     if expanded:
         print(canonical_json(spec.expanded).decode("utf-8"))

@@ -251,7 +251,11 @@ def _check_companions(shapes: Mapping[str, CaptureShape], known: tuple[str, ...]
                 complaints.error(
                     shape.at(*path), f"capture '{other}' has no frames of its own", "", "name the one that has"
                 )
-            elif path[0] == "uses" and _leads_to(other, name, shapes):
+            elif (
+                path[0] == "uses"
+                and _leads_to(other, name, shapes)
+                and list(shapes).index(name) < list(shapes).index(other)
+            ):
                 complaints.error(
                     shape.at(*path), f"'{name}' uses '{other}', which uses '{name}' in turn", "", "break the circle"
                 )

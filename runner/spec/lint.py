@@ -78,7 +78,7 @@ def lint(
             found.warn(root.camera.at("delivers"), note, "", "state what the product does, e.g. processing: sharpened")
         for bound in draft.capture.usable_if:
             ends = _Ends(bound.quantity, bound.at_least, bound.at_most, bound.unit)
-            _natural(ends, draft, draft.shape.at("usable_if", bound.quantity), found)
+            _natural(ends, draft, (draft.shape.at("usable_if", bound.quantity),) * 2, found)
         for limit, shape in draft.limits:
             _limit(limit, shape, draft, components, found)
 
@@ -108,6 +108,7 @@ def _serial(root: RootShape, found: Complaints) -> None:
 def _limit(
     limit: Limit, shape: LimitShape, draft: Draft, components: tuple[UncertaintyComponent, ...], found: Complaints
 ) -> None:
+    before = len(found)
     frequency = _frequency(limit, shape, draft, found)
     if limit.channel not in {None, "mono"}:
         found.error(
@@ -118,8 +119,8 @@ def _limit(
     if limit.combine == "range" and limit.at_least is not None and limit.at_least > 0:
         found.warn(shape.at("at_least"), "a range with at_least asks the regions to differ", "", "at_most is usual")
     ends = _Ends(limit.quantity, limit.at_least, limit.at_most, limit.unit, limit.combine)
-    _natural(ends, draft, shape.at(_key(limit, "at_least")), found)
-    if limit.combine in {None, "worst", "mean"} and not limit.report_only:
+    _natural(ends, draft, (shape.at(_key(limit, "at_least")), shape.at(_key(limit, "at_most"))), found)
+    if limit.combine in {None, "worst", "mean"} and len(found) == before:  # else the ceiling would say it once more
         _ceiling(limit, shape, draft, frequency, found)
     if limit.combine in {None, "worst"}:
         _tolerance(limit, shape, draft, components, found)
@@ -157,7 +158,8 @@ def _crossing_beyond_nyquist(limit: Limit, shape: LimitShape, draft: Draft, foun
 
 
 def _beyond(asked: str, frequency: float, shape: LimitShape, key: str, found: Complaints) -> None:
-    note = f"{asked} is {frequency:.4g} cy/px, beyond the Nyquist frequency of {NYQUIST:g} cy/px"
+    means = "" if asked.endswith("cy/px") else f" ({frequency:.4g} cy/px)"
+    note = f"{asked}{means} lies beyond the Nyquist frequency of {NYQUIST:g} cy/px"
     found.error(shape.at(key), note, "", "if that is meant, write beyond_nyquist: true")
 
 
@@ -170,7 +172,7 @@ def _lens(shape: LimitShape, draft: Draft, found: Complaints) -> None:
         found.warn(shape.at("part"), note, "", "state chart, transfer")
 
 
-def _natural(ends: _Ends, draft: Draft, place: Place, found: Complaints) -> None:
+def _natural(ends: _Ends, draft: Draft, places: tuple[Place, Place], found: Complaints) -> None:
     """Compare limits with the values that the quantity can have at all."""
     span = _range(ends, draft.capture.camera)
     if span is None:
@@ -178,22 +180,16 @@ def _natural(ends: _Ends, draft: Draft, place: Place, found: Complaints) -> None
     low, high = (
         None if end is None else _convert(end, ends.unit, span.unit, draft) for end in (ends.at_least, ends.at_most)
     )
-    unit = "" if span.unit == "1" else f" {span.unit}"
     words = ends.quantity.replace("_", " ")
+    least, most = (f"{end:g}" + ("" if span.unit == "1" else f" {span.unit}") for end in (span.low, span.high))
     if low is not None and low > span.high:
-        found.error(
-            place, f"{words} cannot lie above {span.high:g}{unit}: no value can conform", "", "correct at_least"
-        )
+        found.error(places[0], f"{words} cannot lie above {most}: no value can conform", "", "correct at_least")
     if high is not None and high < span.low:
-        found.error(place, f"{words} cannot lie below {span.low:g}{unit}: no value can conform", "", "correct at_most")
+        found.error(places[1], f"{words} cannot lie below {least}: no value can conform", "", "correct at_most")
     if low is not None and low <= span.low and high is None:
-        found.warn(
-            place, f"{words} is never below {span.low:g}{unit}: this limit cannot fail", "", "correct or drop it"
-        )
+        found.warn(places[0], f"{words} never lies below {least}: this limit cannot fail", "", "correct or drop it")
     if high is not None and high >= span.high and low is None:
-        found.warn(
-            place, f"{words} is never above {span.high:g}{unit}: this limit cannot fail", "", "correct or drop it"
-        )
+        found.warn(places[1], f"{words} never lies above {most}: this limit cannot fail", "", "correct or drop it")
 
 
 def _range(ends: _Ends, camera: Camera) -> Range | None:

@@ -135,7 +135,7 @@ def _tell(error: ValidationError, node: Mapped, complaints: Complaints) -> set[s
         flawed.add(str(path[0]) if path else "")
         told = one.get("ctx", {})
         if one["type"] == "spec":
-            where = place_of(node, *path, *told["inside"])
+            where = _key_place(node, path) if path and path[-1] == "[key]" else place_of(node, *path, *told["inside"])
             complaints.error(where, told["found"], told["allowed"], told["step"])
         elif one["type"] in {"dict_type", "list_type"}:
             form = "a mapping" if one["type"] == "dict_type" else "a list"
@@ -143,6 +143,13 @@ def _tell(error: ValidationError, node: Mapped, complaints: Complaints) -> set[s
         elif one["type"] not in {"missing", "told"}:  # told by _missing, or when the file was read
             complaints.error(place_of(node, *path), f"{shown(one['input'])} is not allowed here")
     return flawed
+
+
+def _key_place(node: Any, path: tuple[str | int, ...]) -> Place:
+    """Return the place of a key that is wrong itself; the path ends in the key and `[key]`."""
+    for step in path[:-2]:
+        node = node[step]
+    return node.key_places[str(path[-2])] if isinstance(node, Mapped) else place_of(node)
 
 
 def _named(node: Any) -> Any:
