@@ -1,0 +1,301 @@
+"""The joint fit of a slanted edge: where it lies, its two levels and its whole line spread, at once.
+
+First a plain edge (pixel ⊗ Gaussian, then with a tail) finds place, levels and width; then a smooth correction made of
+kernels joins in. Its prior size is not chosen but weighed by restricted likelihood, and the fit is averaged over sizes,
+so that the posterior covariance also holds what the data leave open about the shape. Because the fitted line spread is
+normalised to its whole area, tail beyond the region included, and transformed analytically, no window, no finite
+difference and no bin width biases the transfer function.
+
+References:
+    Golub and Pereyra, SIAM J. Numer. Anal. 10 (1973) 413, doi:10.1137/0710036 (separable least squares).
+    Patterson and Thompson, Biometrika 58 (1971) 545, doi:10.1093/biomet/58.3.545 (restricted likelihood).
+    Hoeting et al., Statistical Science 14 (1999) 382, doi:10.1214/ss/1009212519 (averaging over models).
+"""
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+from scipy import linalg
+
+from runner.errors import MeasurementRefused
+from runner.measure.numerics import edge_model as em
+from runner.measure.numerics.edge_geometry import find_edge
+from runner.measure.numerics.edge_model import Linear, Noise, Parts, Pixels
+from runner.measure.numerics.line_spread import Array, Lattice, lattice_for
+
+PRIOR_SIZES = np.geomspace(0.1, 0.7, 8)
+"""Prior sizes of the correction relative to the line spread's peak, weighed against each other. Never below 10 %: a
+smaller correction cannot be told from none in one region, yet would let u ignore it at high frequencies."""
+PRIOR_REACH = (2.5, 1.5)
+"""The prior falls with distance as (1 + (x / (a w))²)^-b, w the line spread's standard deviation: a line spread may
+leave the plain one most where it is high; beyond, the tail part carries what falls as 1/x²."""
+TAIL_SD = 0.2
+"""Prior of the tail's area as a share of the step: a diffraction cutoff of 0.5 cy/px has 0.4, two deviations."""
+WIDENING_SD = 0.3
+"""Prior of the Gaussian's relative change once kernels share its work."""
+SHADE_SD = 0.5
+"""Prior of the relative shading over half the edge's length, when shading is fitted."""
+MODEL_FLOOR = 1e-3
+"""Least noise of a pixel as a share of the step: no set of kernels draws a kink better, and a fit that trusted
+noiseless pixels more would press its own misfit into tails and levels."""
+LEAST_SIGMA = 0.1
+"""px; the plain edge's Gaussian gets no narrower, kernels sharpen it where needed."""
+ROUNDS = 25
+"""Most rounds of the plain fit; it takes about 8."""
+
+
+@dataclass(frozen=True)
+class EdgeFit:
+    """A fitted edge with the posterior of all its numbers."""
+
+    parts: Parts
+    """Fitted numbers."""
+    lattice: Lattice
+    """Bins and kernels."""
+    sides: tuple[float, float]
+    """The pixel's sides along the normal, px."""
+    noise: Noise
+    """Variance of a pixel at either level, misfit included."""
+    covariance: Array
+    """Posterior covariance: fixed columns, sliding columns, kernels."""
+    sampling: Array
+    """Covariance of the fitted numbers over repeated captures (the part of it that is noise)."""
+    pixels: Pixels
+    """The region."""
+    linear: Linear
+    """The last linearisation, about the fit itself."""
+    misfit: float
+    """Mean squared bin residual over its expectation; about 1."""
+    unshaded: Array
+    """What the shape (see `Parts.shape`) would become if shading were fitted, minus the fit; zeros when it is."""
+    shade_free: tuple[Array, Array]
+    """Shading that a free fit would find, and its standard uncertainties."""
+    shading: bool
+    """Shading was fitted."""
+
+    @property
+    def shape_index(self) -> Array:
+        """Places of the line spread's parts in the covariance."""
+        head = self.linear.head
+        return np.concatenate([[em.STEP, em.WIDENING, em.TAIL], np.arange(head, self.covariance.shape[0])]).astype(int)
+
+    def change(self, signal: Array) -> Array:
+        """Return by how much every fitted number moves when the region's signal changes by this much."""
+        return self.covariance @ em.response(self.pixels, self.linear, signal)
+
+
+def fit_edge(
+    signal: Array, *, order: int = 1, shading: str = "none", noise_floor: float = 0.0, aperture: float = 1.0
+) -> EdgeFit:
+    """Fit one edge of a region.
+
+    Args:
+        signal: Light, rows × columns, as a fraction of the range.
+        order: Order of the edge's polynomial, 1 to 5.
+        shading: `fitted` fits a linear shading too; `none` does not (a known one is divided out beforehand).
+        noise_floor: Least standard deviation of a pixel (quantisation), fraction of range.
+        aperture: Side of the pixel's aperture, px: the square root of its fill.
+
+    Raises:
+        MeasurementRefused: `no edge`; or `too noisy` when the fit finds no place to settle.
+    """
+    line, low, high = find_edge(signal)
+    pixels = Pixels(signal, line)
+    start = Parts(line, low, high - low, 1.5, 0.0, 0.0, 1.0, np.zeros(0), np.zeros(2))
+    reach = float(np.abs(line.distance(pixels.u, pixels.v)).max())
+    plain = _plain_fit(pixels, start, reach, aperture)
+    if order > 1:
+        bent = np.concatenate([plain.line.coefficients, np.zeros(order - 1)])
+        plain = replace(plain, line=replace(plain.line, coefficients=bent))
+    pixels.place(plain.line)
+    return _joint_fit(pixels, plain, reach, aperture, noise_floor, shading=shading == "fitted")
+
+
+def spread_width(sigma: float) -> float:
+    """Return the standard deviation of pixel ⊗ Gaussian, px."""
+    return float(np.sqrt(sigma**2 + 1 / 12))
+
+
+def _plain_fit(pixels: Pixels, parts: Parts, reach: float, aperture: float) -> Parts:
+    """Place, levels, sigma, at last tail: unweighted Gauss-Newton on a straight edge."""
+    lattice = lattice_for(reach, 0.8)
+    parts = replace(parts, kernels=np.zeros(lattice.centres.size))
+    place = [em.FIXED, em.FIXED + 1]
+    settled = False
+    for turn in range(ROUNDS):
+        linear = em.linearise(pixels, parts, lattice, parts.line.sides(aperture), None)
+        use = [em.LEVEL, em.STEP, em.WIDENING, *([em.TAIL] if settled else []), *place]
+        matrix = linear.matrix[np.ix_(use, use)]
+        matrix = matrix + np.diag(1e-9 * np.diag(matrix) + 1e-12)
+        solved = linalg.solve(matrix, linear.right[use], assume_a="pos")
+        move = {k: float(v) for k, v in zip(use, solved, strict=True)}
+        wider = float(np.clip(move[em.WIDENING] / parts.step, -0.5, 0.5))
+        slide = np.array([move[k] for k in place])
+        slide *= min(1.0, 3 * parts.sigma / max(float(np.abs(slide).sum()), 1e-9))
+        line = replace(parts.line, coefficients=parts.line.coefficients + slide)
+        parts = replace(
+            parts,
+            line=line.turned(),
+            low=parts.low + move[em.LEVEL],
+            step=parts.step + move[em.STEP],
+            sigma=max(LEAST_SIGMA, parts.sigma * float(np.exp(wider))),
+            tail=parts.tail + move.get(em.TAIL, 0.0),
+        )
+        if not 0 < parts.rise < 10 or parts.sigma > reach:
+            raise MeasurementRefused("no edge", "no pair of levels with a step between them fits the region")
+        pixels.place(parts.line)
+        still = float(np.abs(slide).max()) < 0.01 and abs(wider) < 0.02
+        if still and settled:
+            return parts
+        settled = settled or still or turn > ROUNDS // 2
+    raise MeasurementRefused("too noisy", f"the fit did not settle on an edge in {ROUNDS} rounds")
+
+
+@dataclass(frozen=True)
+class _Solved:
+    """One solution of the penalised normal equations."""
+
+    change: Array  # fixed and sliding columns: change; kernels: new areas
+    covariance: Array
+    sampling: Array
+    freedom: float  # effective number of parameters
+
+
+def _joint_fit(
+    pixels: Pixels, parts: Parts, reach: float, aperture: float, noise_floor: float, *, shading: bool
+) -> EdgeFit:
+    lattice = lattice_for(reach, spread_width(parts.sigma))
+    scale = abs(parts.rise)
+    sizes = _kernel_sizes(lattice, spread_width(parts.sigma), scale)
+    parts = replace(parts, kernels=np.zeros(lattice.centres.size), tail_width=max(1.0, spread_width(parts.sigma)))
+    floor = max(noise_floor, MODEL_FLOOR * scale)
+    linear = em.linearise(pixels, parts, lattice, parts.line.sides(aperture), None)
+    noise = _noise(linear, floor, 1.0)
+    extra = 1.0
+    for turn in range(8):
+        sides = parts.line.sides(aperture)
+        linear = em.linearise(pixels, parts, lattice, sides, noise)
+        noise = _noise(linear, floor, extra)
+        solved = _solve(linear, parts, sizes, scale, shading=shading)
+        extra = max(1.0, extra * _misfit(linear, solved)) if turn > 1 else 1.0
+        parts = _moved(parts, solved, linear, shading=shading)
+        slide = solved.change[em.FIXED : linear.head - 1]
+        if parts.line.coefficients.size == 2:
+            parts = replace(parts, line=parts.line.turned())
+        pixels.place(parts.line)
+        if turn > 2 and float(np.abs(slide).max()) < 1e-3:
+            break
+    sides = parts.line.sides(aperture)
+    linear = em.linearise(pixels, parts, lattice, sides, noise)
+    free = solved if shading else _solve(linear, parts, sizes, scale, shading=True)
+    head = linear.head
+    shade_at = [em.SHADE, head - 1]
+    unshaded = np.zeros(parts.shape.size)
+    if not shading:
+        unshaded = np.concatenate([free.change[[em.STEP, em.WIDENING, em.TAIL]], free.change[head:] - parts.kernels])
+    shade = (parts.shade if shading else free.change[shade_at], np.sqrt(np.diag(free.covariance)[shade_at]))
+    misfit = _misfit(linear, solved)
+    return EdgeFit(
+        parts,
+        lattice,
+        sides,
+        noise,
+        solved.covariance,
+        solved.sampling,
+        pixels,
+        linear,
+        misfit,
+        unshaded,
+        shade,
+        shading,
+    )
+
+
+def _kernel_sizes(lattice: Lattice, width: float, rise: float) -> Array:
+    """Prior standard deviations of the kernels' areas for a prior size of 1."""
+    fall, power = PRIOR_REACH
+    peak = rise / (width * np.sqrt(2 * np.pi))
+    return np.asarray(peak * lattice.steps * (1 + (lattice.centres / (fall * width)) ** 2) ** -power)
+
+
+def _noise(linear: Linear, floor: float, extra: float) -> Noise:
+    """Scatter of pixels about their bin's mean, apart for dark and bright side; no model of the shape enters it."""
+    variances, freedom = [], 0.0
+    for side in (linear.spread < 0.3, linear.spread > 0.7):
+        dof = float(np.maximum(linear.counts[side] - 1, 0).sum())
+        variances.append(float(linear.within[side].sum()) / dof if dof >= 10 else np.nan)
+        freedom += dof
+    if not np.isfinite(variances).all():
+        raise MeasurementRefused("outside the estimator's limits", "too few pixels lie on one side of the edge")
+    low, high = (max(v, floor**2) * extra for v in variances)
+    return Noise(low, high, max(freedom, 1.0))
+
+
+def _misfit(linear: Linear, solved: _Solved) -> float:
+    """Mean squared residual of bins over its expectation after the fit."""
+    chi = float((linear.weights * linear.counts * linear.means**2).sum())
+    freedom = max(1.0, float(np.count_nonzero(linear.counts)) - solved.freedom)
+    ratio = chi / freedom
+    # chance alone lets it leave 1 by some sqrt(2 / freedom)
+    return ratio if abs(ratio - 1) > 3 * np.sqrt(2 / freedom) else 1.0
+
+
+def _solve(linear: Linear, parts: Parts, sizes: Array, scale: float, *, shading: bool) -> _Solved:
+    """Solve the normal equations under the priors, averaged over prior sizes by their restricted likelihood."""
+    head = linear.head
+    matrix, right = linear.matrix.copy(), linear.right.copy()
+    right += matrix[:, head:] @ parts.kernels  # kernels are solved for as a whole, all else as changes
+    shade_sd = SHADE_SD if shading else 1e-9
+    for at, now, sd in (
+        (em.WIDENING, parts.widening, WIDENING_SD * scale),
+        (em.TAIL, parts.tail, TAIL_SD * scale),
+        (em.SHADE, parts.shade[0], shade_sd),
+        (head - 1, parts.shade[1], shade_sd),
+    ):
+        matrix[at, at] += 1 / sd**2
+        right[at] -= now / sd**2
+    unit = np.sqrt(np.diag(matrix))
+    unit[head:] = 1 / sizes
+    matrix /= unit[:, None] * unit[None, :]
+    right /= unit
+    factor = linalg.cho_factor(matrix[:head, :head] + 1e-12 * np.eye(head))
+    pull = linalg.cho_solve(factor, matrix[:head, head:])
+    left = matrix[head:, head:] - matrix[head:, :head] @ pull
+    values, vectors = linalg.eigh(left)
+    values = np.maximum(values, 0)
+    rho = vectors.T @ (right[head:] - pull.T @ right[:head])
+    squared = PRIOR_SIZES[:, None] ** 2
+    gain = squared / (1 + squared * values)
+    likelihood = -0.5 * (np.log1p(squared * values).sum(axis=1) - (gain * rho**2).sum(axis=1))
+    weight = np.exp(likelihood - likelihood.max())
+    weight /= weight.sum()
+    mean_gain = weight @ gain
+    kernels = vectors @ (mean_gain * rho)
+    spread = (gain - mean_gain) * rho * np.sqrt(weight)[:, None]
+    inner = vectors @ (np.diag(mean_gain) + spread.T @ spread) @ vectors.T
+    lift = np.vstack([-pull, np.eye(sizes.size)])
+    covariance = lift @ inner @ lift.T
+    sampling = lift @ (vectors * (mean_gain**2 * values)) @ (lift @ vectors).T
+    own = linalg.cho_solve(factor, np.eye(head))
+    covariance[:head, :head] += own
+    sampling[:head, :head] += own
+    change = np.concatenate([linalg.cho_solve(factor, right[:head]) - pull @ kernels, kernels])
+    freedom = head + float((mean_gain * values).sum())
+    units = unit[:, None] * unit[None, :]
+    return _Solved(change / unit, covariance / units, sampling / units, freedom)
+
+
+def _moved(parts: Parts, solved: _Solved, linear: Linear, *, shading: bool) -> Parts:
+    head, change = linear.head, solved.change
+    slide = np.clip(change[em.FIXED : head - 1], -0.5, 0.5)
+    shade = parts.shade + change[[em.SHADE, head - 1]] if shading else parts.shade
+    return replace(
+        parts,
+        line=replace(parts.line, coefficients=parts.line.coefficients + slide),
+        low=parts.low + change[em.LEVEL],
+        step=parts.step + change[em.STEP],
+        widening=parts.widening + change[em.WIDENING],
+        tail=parts.tail + change[em.TAIL],
+        kernels=change[head:],
+        shade=shade,
+    )
