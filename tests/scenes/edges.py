@@ -193,7 +193,7 @@ class EdgeScene:
         above = np.flatnonzero(y > half)
         ends = [
             brentq(lambda v: float(self.lsf(v)) - half, x[i], x[j], xtol=1e-12)
-            for i, j in ((above[0] - 1, above[0]), (above[-1], above[-1] + 1))
+            for i, j in ((above[0] - 2, above[0] + 1), (above[-1] - 1, above[-1] + 2))
         ]
         return float(ends[1] - ends[0])
 
