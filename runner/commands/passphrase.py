@@ -11,12 +11,16 @@ from runner.errors import UsageError
 VARIABLE = "PROBATUM_PASSPHRASE"
 
 
-def find_passphrase(file: Path | None, *, confirm: bool = False) -> bytes | None:
+def find_passphrase(
+    file: Path | None, *, confirm: bool = False, variable: str = VARIABLE, question: str = "Pass phrase"
+) -> bytes | None:
     """Return the pass phrase, or None when there is nowhere to ask for one.
 
     Args:
         file: File whose first line it is.
         confirm: Ask twice, for a new key.
+        variable: Environment variable.
+        question: Words of the prompt.
 
     Raises:
         UsageError: The file cannot be read.
@@ -26,8 +30,8 @@ def find_passphrase(file: Path | None, *, confirm: bool = False) -> bytes | None
             return file.read_bytes().split(b"\n", 1)[0].rstrip(b"\r")
         except OSError as error:
             raise UsageError(f"it cannot be read: {error.strerror}", where=str(file)) from error
-    if VARIABLE in os.environ:
-        return os.environ[VARIABLE].encode()
+    if variable in os.environ:
+        return os.environ[variable].encode()
     if sys.stdin.isatty():
-        return str(click.prompt("Pass phrase", hide_input=True, confirmation_prompt=confirm)).encode()
+        return str(click.prompt(question, hide_input=True, confirmation_prompt=confirm)).encode()
     return None

@@ -13,6 +13,8 @@ References:
     FIPS 186-5 (2023), ECDSA; SEC 1 v2.0 (2009), 4.1.
 """
 
+from collections.abc import Iterator
+from contextlib import contextmanager
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from hashlib import sha256
@@ -88,13 +90,23 @@ def read(der: bytes, digest: bytes, *, timed: bool) -> Signature:
     Raises:
         VerificationRefused: Another form, another document, or no true signature.
     """
-    try:
+    with refusing("the signature cannot be read"):
         return _read(der, digest, timed=timed)
+
+
+@contextmanager
+def refusing(found: str) -> Iterator[None]:
+    """Turn whatever a damaged input raises in a library into a refusal.
+
+    Args:
+        found: Begin of the sentence.
+    """
+    try:
+        yield
     except VerificationRefused:
         raise
     except Exception as error:
-        # damaged ASN.1 raises anything; all of it is a refusal
-        raise VerificationRefused(f"the signature cannot be read: {type(error).__name__}") from error
+        raise VerificationRefused(f"{found}: {type(error).__name__}") from error
 
 
 def _read(der: bytes, digest: bytes, *, timed: bool) -> Signature:

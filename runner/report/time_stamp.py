@@ -23,6 +23,7 @@ from cryptography.hazmat.primitives.asymmetric.utils import decode_dss_signature
 from cryptography.x509.oid import ExtendedKeyUsageOID
 
 from runner.errors import SigningError, VerificationRefused
+from runner.report.cms_form import refusing
 
 TIMEOUT_S = 15
 MAX_ANSWER = 1_000_000
@@ -79,13 +80,8 @@ def read(token: bytes, value: bytes) -> TimeStamp:
     Raises:
         VerificationRefused: It is not.
     """
-    try:
+    with refusing("the time stamp cannot be read"):
         return _read(token, value)
-    except VerificationRefused:
-        raise
-    except Exception as error:
-        # damaged ASN.1 raises anything; all of it is a refusal
-        raise VerificationRefused(f"the time stamp cannot be read: {type(error).__name__}") from error
 
 
 def _post(url: str, query: bytes) -> bytes:

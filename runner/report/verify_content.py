@@ -1,0 +1,212 @@
+"""What a signed report says: whole data, a page that shows them and nothing else, verdicts that follow from them."""
+
+import math
+from collections import Counter
+from collections.abc import Iterator, Mapping
+from hashlib import sha256
+from html.parser import HTMLParser
+from io import BytesIO
+from typing import Any
+
+from runner.errors import ProbatumError, VerificationRefused
+from runner.report import sign, verify_record
+from runner.report.cms_form import refusing
+from runner.report.verify_pdf import SignedPdf, quiet
+from runner.report.verify_record import Check, Terms
+from runner.spec.revision import digest
+
+RESULTS = "results.json"
+NOT_REWRITTEN = frozenset({"program", "warnings"})
+"""Keys that judging again does not give back: what wrote the report, and what the spec's file was warned of."""
+DECIDING = ("verdict", "at_fault", "simulated", "checks")
+"""Keys that another version of the program, too, must arrive at; of checks all but the sentences."""
+WORDS = frozenset({"reason", "because", "label"})
+RELATIVE = 1e-9
+"""Judging again repeats the same double arithmetic; between machines its last digits may differ, not more."""
+
+
+def read_results(attached: Mapping[str, bytes], terms: Terms) -> tuple[dict[str, Any], dict[str, bytes]]:
+    """Return the results document and its pictures out of a report's attachments.
+
+    Args:
+        attached: Contents by name.
+        terms: With the tool that reads.
+
+    Raises:
+        VerificationRefused: No strict JSON, or the attachments are not exactly it and the pictures that it lists.
+    """
+    if RESULTS not in attached:
+        raise VerificationRefused(f"{RESULTS} is not attached")
+    with refusing(f"{RESULTS} cannot be read"):
+        document = terms.tools.parse(attached[RESULTS])
+        listed = {str(p["name"]): str(p["sha256"]) for p in document["pictures"]}
+        if len(listed) != len(document["pictures"]):
+            raise VerificationRefused(f"{RESULTS} lists a picture twice")
+        pictures = {name: data for name, data in attached.items() if name != RESULTS}
+        if listed.keys() != pictures.keys():
+            odd = ", ".join(sorted(listed.keys() ^ pictures.keys()))
+            raise VerificationRefused(f"the attachments are not exactly the listed pictures: {odd}")
+        for name, data in pictures.items():
+            if listed[name] != f"sha256:{sha256(data).hexdigest()}":
+                raise VerificationRefused(f"the picture {name} is not the listed one")
+        if digest(document["spec"]) != document["document"]["digest"]:
+            raise VerificationRefused("the digest of the spec is not that of the spec inside")
+    return document, pictures
+
+
+def check_expected(document: Mapping[str, Any], terms: Terms) -> Iterator[Check]:
+    """Check that this is the unit and the spec that the reader expects."""
+    serial, spec = document["unit"]["serial"], document["document"]
+    if terms.serial is not None:
+        held = serial == terms.serial
+        yield Check("unit", held, f"it is of unit {serial}" + ("" if held else f", not of {terms.serial}"))
+    if terms.spec_digest is not None:
+        held = terms.spec_digest.removeprefix("sha256:") == spec["digest"].removeprefix("sha256:")
+        words = f"it is judged by {spec['number']} revision {spec['revision']} ({spec['digest']})"
+        yield Check("spec", held, words + ("" if held else f", not by {terms.spec_digest}"))
+
+
+def check_pdf_page(
+    signed: SignedPdf, document: Mapping[str, Any], pictures: Mapping[str, bytes], results: bytes, terms: Terms
+) -> Check:
+    """Check that a PDF is what these results print to: byte for byte with all that signing added, else its text."""
+    name = "page"
+    try:
+        unsigned = terms.tools.render_pdf(document, pictures, results)
+        stamped = signed.signature.time_stamp is not None
+        again = sign.prepare(unsigned, signed.signature.certificate, signed.time, stamped=stamped)
+    except Exception as error:  # noqa: BLE001 - an old edition or a missing font is no proof of a changed report
+        return _no_page(name, error)
+    if bytes(again.data) == signed.blank:
+        return Check(name, True, "the page printed again from the data is the same byte for byte")
+    with refusing("the text of the page cannot be read"):
+        return _by_text(name, _pdf_words(signed.data), _pdf_words(bytes(again.data)))
+
+
+def check_html_page(html: bytes, document: Mapping[str, Any], pictures: Mapping[str, bytes], terms: Terms) -> Check:
+    """Check that an HTML report is what these results print to, byte for byte, else its text."""
+    name = "page"
+    try:
+        again = terms.tools.html_page(document, pictures).encode()
+    except Exception as error:  # noqa: BLE001 - see check_pdf_page
+        return _no_page(name, error)
+    if again == html:
+        return Check(name, True, "the page printed again from the data is the same byte for byte")
+    with refusing("the text of the page cannot be read"):
+        return _by_text(name, _html_words(html), _html_words(again))
+
+
+def check_verdicts(document: Mapping[str, Any], terms: Terms) -> Check:
+    """Check that verdicts, blame and sentences follow from the readings and the spec inside."""
+    name = "verdicts"
+    try:
+        again = terms.tools.judge_again(document)
+    except ProbatumError as error:
+        return Check(name, False, f"the readings cannot be judged again: {error}")
+    except Exception as error:  # noqa: BLE001 - data that the judge cannot take are no sound report
+        return Check(name, False, f"the readings cannot be judged again: {type(error).__name__}: {error}")
+    odd = differing(_kept(document), _kept(again))
+    if not odd:
+        return Check(name, True, f"all {len(document['checks'])} verdicts follow from the readings")
+    words = "; ".join(odd[:3]) + ("; …" if len(odd) > 3 else "")
+    same_version = document["program"]["version"] == again["program"]["version"]
+    if same_version or differing(_deciding(document), _deciding(again)):
+        return Check(name, False, f"what it says does not follow from its readings: {words}")
+    found = f"all verdicts follow, but version {document['program']['version']} wrote other words: {words}"
+    return Check(name, None, found, verify_record.WORDING)
+
+
+def differing(stated: Any, again: Any, where: str = "", relative: float = RELATIVE) -> list[str]:
+    """Return where two pieces of plain JSON data differ, one phrase each; numbers may differ by a relative amount."""
+    if isinstance(stated, Mapping) and isinstance(again, Mapping):
+        rows = [f"{where}{key} is missing on one side" for key in sorted(stated.keys() ^ again.keys())]
+        for key in sorted(stated.keys() & again.keys()):
+            rows += differing(stated[key], again[key], f"{where}{key}: ", relative)
+        return rows
+    if isinstance(stated, list | tuple) and isinstance(again, list | tuple):
+        if len(stated) != len(again):
+            return [f"{where}{len(stated)} stated, {len(again)} found"]
+        rows = []
+        for index, (one, other) in enumerate(zip(stated, again, strict=True), 1):
+            rows += differing(one, other, f"{where}{_title(one, index)}: ", relative)
+        return rows
+    if _number(stated) and _number(again):
+        return [] if math.isclose(stated, again, rel_tol=relative) else [f"{where}{stated!r} stated, {again!r} found"]
+    return [] if stated == again and type(stated) is type(again) else [f"{where}{stated!r} stated, {again!r} found"]
+
+
+def _number(value: Any) -> bool:
+    return isinstance(value, int | float) and not isinstance(value, bool)
+
+
+def _title(item: Any, index: int) -> str:
+    """Name an item of a list by what a reader knows it by."""
+    if not isinstance(item, Mapping):
+        return str(index)
+    keys = ("characteristic", "name", "capture", "where", "region", "label")
+    names = [str(item[key]) for key in keys if item.get(key)]
+    return " ".join(names) or str(index)
+
+
+def _kept(document: Mapping[str, Any]) -> dict[str, Any]:
+    return {key: value for key, value in document.items() if key not in NOT_REWRITTEN}
+
+
+def _deciding(document: Mapping[str, Any]) -> dict[str, Any]:
+    kept = {key: document[key] for key in DECIDING}
+    kept["checks"] = [{k: v for k, v in check.items() if k not in WORDS} for check in document["checks"]]
+    return kept
+
+
+def _no_page(name: str, error: Exception) -> Check:
+    found = f"the page cannot be printed again here: {type(error).__name__}: {error}"
+    return Check(name, None, found, verify_record.NO_PAGE)
+
+
+def _by_text(name: str, stated: list[str], again: list[str]) -> Check:
+    """Compare by text: in order but for white space, or as a bag of words where the lines break elsewhere."""
+    if "".join(stated) == "".join(again) or Counter(stated) == Counter(again):
+        found = "the page is not the same byte for byte, but every word of it follows from the data and nothing more"
+        return Check(name, None, found, verify_record.TEXT_ONLY)
+    more, less = Counter(stated) - Counter(again), Counter(again) - Counter(stated)
+    words = f"it shows {_some(more)} where the data give {_some(less)}"
+    return Check(name, False, f"the page does not show what the data say: {words}")
+
+
+def _some(words: Counter[str]) -> str:
+    shown = list(words)[:6]
+    return "'" + " ".join(shown) + (" …" if len(words) > len(shown) else "") + "'" if shown else "nothing"
+
+
+def _pdf_words(data: bytes) -> list[str]:
+    from pypdf import PdfReader  # noqa: PLC0415 - heavy, and rarely needed
+
+    with quiet():
+        return " ".join(page.extract_text() for page in PdfReader(BytesIO(data)).pages).split()
+
+
+def _html_words(data: bytes) -> list[str]:
+    words = _Words()
+    words.feed(data.decode("utf-8"))
+    words.close()
+    return words.found
+
+
+class _Words(HTMLParser):
+    """Collects every word and every attribute of a page, style and script included: all of it can show something."""
+
+    def __init__(self) -> None:
+        super().__init__()
+        self.found: list[str] = []
+
+    def handle_starttag(self, tag: str, attrs: list[tuple[str, str | None]]) -> None:
+        """Keep a tag and its attributes."""
+        self.found += [f"<{tag}>", *(f"{key}={value}" for key, value in sorted(attrs) if key not in {"d", "src"})]
+
+    def handle_data(self, data: str) -> None:
+        """Keep the words."""
+        self.found += data.split()
+
+    def handle_comment(self, data: str) -> None:
+        """Keep comments, too."""
+        self.found += data.split()

@@ -1,0 +1,123 @@
+"""Measures a report's unit again from its frames: the same files, the same values, the same verdicts."""
+
+from collections.abc import Mapping
+from hashlib import sha256
+from pathlib import Path
+from typing import Any
+
+from runner.errors import ProbatumError
+from runner.report import verify_record
+from runner.report.verify_content import differing
+from runner.report.verify_record import Check, Terms
+
+SHARE_OF_U = 0.01
+"""A value measured again may differ by u/100: far below what any decision rests on, far above round-off."""
+RELATIVE_U = 0.01
+"""So may u itself, relative to itself."""
+ROUND_OFF = 1e-9
+"""Relative; where u is zero, or a value is a bound."""
+
+
+def check_frames(document: Mapping[str, Any], frames: Path, terms: Terms) -> list[Check]:
+    """Check digests, values, verdicts and pictures against what the frames give.
+
+    Args:
+        document: The signed results.
+        frames: Folder of frames.
+        terms: With the tool that measures.
+    """
+    try:
+        again, pictures = terms.tools.measure_again(document, frames)
+    except ProbatumError as error:
+        return [Check("frames", False, f"the unit cannot be measured again: {error}")]
+    except Exception as error:  # noqa: BLE001 - whatever goes wrong, the report is not confirmed
+        return [Check("frames", False, f"the unit cannot be measured again: {type(error).__name__}: {error}")]
+    checks = [_digests(document, again)]
+    if checks[0].held:
+        checks += [_values(document, again), _verdicts(document, again), _pictures(document, pictures)]
+    return checks
+
+
+def _digests(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
+    def files(one: Mapping[str, Any]) -> list[dict[str, Any]]:
+        keys = ("name", "attempt", "frames", "file_faults")
+        return [{key: capture[key] for key in keys} for capture in one["captures"]]
+
+    odd = differing(files(document), files(again))
+    if odd:
+        return Check("frames", False, f"these are not the frames of the report: {_few(odd)}")
+    count = sum(len(capture["frames"]) for capture in document["captures"])
+    return Check("frames", True, f"all {count} frames have the digests of the report")
+
+
+def _values(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
+    stated, found = _by_key(document["readings"]), _by_key(again["readings"])
+    if stated.keys() != found.keys() or len(stated) != len(document["readings"]):
+        return Check("values", False, "measured again, other readings come out than the report lists")
+    odd = [f"{_words(key)}: {why}" for key in stated if (why := _other(stated[key], found[key]))]
+    if odd:
+        return Check("values", False, f"measured again, values differ: {_few(odd)}")
+    return Check("values", True, f"all {len(stated)} readings come out again within u/100")
+
+
+def _other(stated: Mapping[str, Any], found: Mapping[str, Any]) -> str:
+    """Tell how a reading differs, or return nothing."""
+    whether = [
+        (one["value"] is None, one["u"] is None, one["measured_in"], one["refusal"] is None) for one in (stated, found)
+    ]
+    if whether[0] != whether[1]:
+        return "measured on one side only"
+    if stated["refusal"] is not None and stated["refusal"]["cause"] != found["refusal"]["cause"]:
+        return f"'{stated['refusal']['cause']}' stated, '{found['refusal']['cause']}' found"
+    if differing(stated["bound"], found["bound"], relative=SHARE_OF_U):
+        return f"bound {stated['bound']} stated, {found['bound']} found"
+    if stated["value"] is None:
+        return ""
+    u = stated["u"] or 0.0
+    allowed = max(SHARE_OF_U * u, ROUND_OFF * abs(stated["value"]))
+    if abs(stated["value"] - found["value"]) > allowed:
+        return f"{stated['value']:.6g} stated, {found['value']:.6g} found, u {u:.2g}"
+    if abs(u - (found["u"] or 0.0)) > RELATIVE_U * u:
+        return f"u {u:.3g} stated, {found['u']:.3g} found"
+    return ""
+
+
+def _verdicts(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
+    def verdicts(one: Mapping[str, Any]) -> dict[str, Any]:
+        keys = ("characteristic", "capture", "where", "channel", "verdict", "at_fault")
+        checks = [{key: check[key] for key in keys} for check in one["checks"]]
+        return {"verdict": one["verdict"], "at_fault": one["at_fault"], "checks": checks}
+
+    odd = differing(verdicts(document), verdicts(again))
+    if odd:
+        return Check("verdicts from frames", False, f"measured again, verdicts change: {_few(odd)}")
+    return Check("verdicts from frames", True, "measured again, no verdict changes")
+
+
+def _pictures(document: Mapping[str, Any], pictures: Mapping[str, bytes]) -> Check:
+    stated = {p["name"]: p["sha256"] for p in document["pictures"]}
+    found = {name: f"sha256:{sha256(data).hexdigest()}" for name, data in pictures.items()}
+    odd = sorted(name for name in stated.keys() | found.keys() if stated.get(name) != found.get(name))
+    if odd:
+        words = f"painted again from the frames, these pictures differ: {', '.join(odd)}"
+        return Check("pictures", None, words, verify_record.PICTURES)
+    return Check("pictures", True, f"all {len(stated)} pictures come out of the frames again byte for byte")
+
+
+_KEYS = ("capture", "attempt", "region", "channel", "quantity", "part", "estimator")
+
+
+def _by_key(readings: list[dict[str, Any]]) -> dict[tuple[Any, ...], dict[str, Any]]:
+    def parameters(reading: Mapping[str, Any]) -> tuple[Any, ...]:
+        return tuple(sorted((name, *amount) for name, amount in reading["parameters"].items()))
+
+    return {(*(reading[k] for k in _KEYS), parameters(reading)): reading for reading in readings}
+
+
+def _words(key: tuple[Any, ...]) -> str:
+    capture, attempt, region, _channel, quantity, *_ = key
+    return f"{capture} {attempt}, {region or 'whole capture'}, {quantity}"
+
+
+def _few(rows: list[str]) -> str:
+    return "; ".join(rows[:3]) + (f"; and {len(rows) - 3} more" if len(rows) > 3 else "")
