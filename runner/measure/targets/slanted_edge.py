@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 
 from runner.capture.frame import Box, Frame, Signal, crop
-from runner.errors import MeasurementRefused
+from runner.errors import MeasurementRefused, UsageError
 from runner.measure.contract import Found, NotFound
 from runner.measure.numerics.edge_search import (
     LEAST_MODULATION,
@@ -20,6 +20,7 @@ from runner.measure.numerics.edge_search import (
 )
 from runner.measure.options import read_record
 from runner.spec.model import Camera, Region
+from runner.spec.units import parse_amount
 
 NAME = "slanted edge"
 TITLE = "Slanted edge"
@@ -35,6 +36,8 @@ LEAST_ANGLE = 2.0
 """Degrees from the nearest axis: below, the edge passes fewer than two pixels on 60 px of its length."""
 LARGEST_REST = 0.25
 """The edge may stay off the region's centre by that share of the region's extent along its normal."""
+MOST_SEARCH = 200.0
+"""px; further away the edge is another one."""
 SMALLEST = 16
 """A region needs that many px each way to show two plateaus and an edge."""
 
@@ -43,16 +46,31 @@ SMALLEST = 16
 class Options:
     """How far the edge may lie from where the spec says."""
 
-    search: float = field(default=10.0, metadata={"sentence": "How far a region may move to follow its edge, px."})
+    search: float | str = field(
+        default=10.0, metadata={"sentence": "How far a region may move to follow its edge, px."}
+    )
 
     def __post_init__(self) -> None:
-        """Keep the distance inside its meaning."""
-        if isinstance(self.search, bool) or not isinstance(self.search, (int, float)) or not 0 <= self.search <= 200:
-            raise ValueError(f"search must be a length of 0 to 200 px, found {self.search!r}")
+        """Turn a length with its unit into px and keep it inside its meaning."""
+        object.__setattr__(self, "search", _length(self.search))
+
+
+def _length(asked: object) -> float:
+    value = asked
+    if isinstance(asked, str):
+        try:
+            amount = parse_amount(asked)
+        except UsageError as error:
+            raise ValueError(f"search is {asked!r}: {error.found}; allowed is a length, for example 10 px") from error
+        value = amount.value if amount.unit == "px" else None
+    if isinstance(value, bool) or not isinstance(value, (int, float)) or not 0 <= value <= MOST_SEARCH:
+        allowed = f"a length from 0 to {MOST_SEARCH:g} px, for example 10 px"
+        raise ValueError(f"search is {asked!r}; allowed is {allowed}")
+    return float(value)
 
 
 def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options; lengths are plain numbers in px.
+    """Read the options; a length is written with its unit, `10 px`, or as a plain number of px.
 
     Raises:
         UsageError: A key or value is not allowed.

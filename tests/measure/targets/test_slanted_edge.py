@@ -175,8 +175,10 @@ def test_regions_keep_their_order() -> None:
 def test_options_are_checked() -> None:
     """The search distance is a length from 0 to 200 px; unknown keys are refused with the known ones."""
     assert slanted_edge.read_options({}).search == 10
-    with pytest.raises(UsageError, match=r"search must be a length of 0 to 200 px, found -1"):
-        slanted_edge.read_options({"search": -1})
+    assert slanted_edge.read_options({"search": "12 px"}).search == 12
+    for wrong in (-1, True, "3 mm", "far", 201):
+        with pytest.raises(UsageError, match=r"search is .*allowed is a length"):
+            slanted_edge.read_options({"search": wrong})
     with pytest.raises(UsageError, match=r"unknown option 'serach'; known are: search; did you mean 'search'"):
         slanted_edge.read_options({"serach": 3})
 
