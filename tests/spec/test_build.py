@@ -102,7 +102,11 @@ PLANTED = [
     ("uses: {dark: dark}", "uses: {drak: §dark}", "unknown role 'drak'"),
     ("uses: {dark: dark}", "uses: {dark: §drak}", "there is no capture 'drak'"),
     ("uses: {dark: dark}", "uses: {dark: §chart}", "capture 'chart' names itself"),
-    ("target: dark frame", "target: dark frame, uses: {flat: §chart}", "'dark' uses 'chart', which uses 'dark' in turn"),
+    (
+        "target: dark frame",
+        "target: dark frame, uses: {flat: §chart}",
+        "'dark' uses 'chart', which uses 'dark' in turn",
+    ),
     ("    uses: {dark: dark}\n", "    chart: {due: §2027-02-30}\n", "'2027-02-30' is no day of the calendar"),
     ("    uses: {dark: dark}\n", "    chart: {transfer: §[[0.3 cy/px, 1], [0.2 cy/px, 1]]}\n", "do not rise"),
     # regions
@@ -124,7 +128,11 @@ PLANTED = [
     (ONE, ONE.replace("0.25 cy/px", "§0.25"), "'0.25' has no unit here"),
     (ONE, ONE.replace("0.25 cy/px", "§0.25 DN"), "unit DN does not fit here"),
     (ONE, ONE.replace("0.25 cy/px", "§0.7 cy/px"), "0.7 cy/px lies beyond the Nyquist frequency"),
-    (ONE, ONE.replace("0.25 cy/px", "§10 lp/mm object"), "lp/mm object cannot be converted without optics, magnification"),
+    (
+        ONE,
+        ONE.replace("0.25 cy/px", "§10 lp/mm object"),
+        "lp/mm object cannot be converted without optics, magnification",
+    ),
     (ONE, ONE.replace("where: centre", "where: §center"), "there is no region 'center'"),
     (ONE, ONE.replace("where: centre", "where: §[corners, lower right]"), "names region 'corners lower right' twice"),
     (ONE, "§" + ONE.replace("where: centre, ", ""), "limit 1 does not say where"),
@@ -155,14 +163,201 @@ PLANTED = [
 ]
 
 
-@pytest.mark.parametrize(("old", "new", "sentence"), PLANTED, ids=[f"{i}-{s[:40]}" for i, (_, _, s) in enumerate(PLANTED)])
+@pytest.mark.parametrize(
+    ("old", "new", "sentence"), PLANTED, ids=[f"{i}-{s[:40]}" for i, (_, _, s) in enumerate(PLANTED)]
+)
 def test_a_planted_error_gets_its_sentence_and_place(tmp_path: Path, old: str, new: str, sentence: str) -> None:
     """A planted error is told once, in its own sentence, at its own line and column, and draws no other error."""
     text, place = planted(old, new)
     path = write(tmp_path, text)
 
-    with pytest.raises(SpecError, match="spec.yaml") as caught:
+    with pytest.raises(SpecError, match=r"spec\.yaml") as caught:
         read_spec(path)
 
-    assert [(c.where, c.severity) for c in caught.value.complaints] == [(f"{path.as_posix()}:{place}", "error")], caught.value
+    assert [(c.where, c.severity) for c in caught.value.complaints] == [(f"{path.as_posix()}:{place}", "error")], (
+        caught.value
+    )
     assert sentence in caught.value.complaints[0].found
+
+
+WARNED = [
+    ("'WS8-[0-9]{6}'", "§'.+'", "the serial's pattern matches any text"),
+    (ONE, _one("at_least: §0"), "mtf never lies below 0: this limit cannot fail"),
+    (ONE, _one("at_most: §0.90"), "an mtf above 0.754 at 0.25 cy/px cannot be"),
+    (CENTRE, f"{CENTRE}\n      spare: §{CENTRE[8:]}", "no limit asks for region 'spare' of capture 'chart'"),
+    (
+        THREE,
+        "§{characteristic: 3, quantity: mtf, frequency: 0.15 cy/px, where: corners, at_least: 0.45}",
+        "implied by 2",
+    ),
+    (THREE, "§{characteristic: 3, quantity: mtf50, where: lower right, at_least: 0.1 cy/px}", "implied by 2"),
+    (ONE, _one("nominal: §0.45, tolerance: 0.02"), "exceeds a quarter"),
+    (
+        DARK,
+        f"{DARK}\n  spare: §{{target: dark frame, frames: 'spare.tif'}}",
+        "has no limits and no other capture uses it",
+    ),
+    (THREE, THREE.replace("at_most: 0.05", "at_least: §0.01"), "asks the regions to differ"),
+]
+
+
+def test_the_spec_of_the_tests_draws_no_complaint(tmp_path: Path) -> None:
+    """What the planted errors are planted in is clean, so that each complaint is about what was planted."""
+    assert read_spec(write(tmp_path)).warnings == ()
+
+
+def test_all_complaints_come_at_once_in_the_order_of_the_lines(tmp_path: Path) -> None:
+    """Errors in every part of a file are told together, sorted by line, each once."""
+    text = TEXT.replace("revision: C", "revison: C").replace("64 DN", "64").replace("count: 2", "count: two")
+    text = text.replace("0.45}", "0.45 cy/p}").replace("where: corners, at_least", "where: edges, at_least")
+
+    with pytest.raises(SpecError, match="did you mean 'revision'") as caught:
+        read_spec(write(tmp_path, text))
+
+    lines = [int(c.where.rsplit(":", 2)[1]) for c in caught.value.complaints]
+    assert lines == sorted(lines)
+    assert set(lines) == {2, 7, 18, 28, 29}
+
+
+def test_the_ready_specs_can_be_used() -> None:
+    """Every spec that travels with the program is read without a complaint or warning."""
+    found = [read_spec(path) for path in sorted(folder("specs").glob("*.yaml"))]
+
+    assert found
+    assert all(spec.warnings == () for spec in found)
+
+
+def test_a_spec_is_resolved(tmp_path: Path) -> None:
+    """Records carry what the file says: units, defaults of the decision, groups spread into their members."""
+    spec = read_spec(write(tmp_path))
+
+    chart = spec.capture("chart")
+    assert (spec.camera.width, spec.camera.height, spec.camera.bit_depth, spec.camera.pixel_pitch_um) == (
+        1600,
+        1200,
+        12,
+        3,
+    )
+    assert spec.optics.wavelength_um == pytest.approx(0.55, rel=1e-15)
+    assert [r.name for r in chart.regions] == ["centre", "corners upper left", "corners lower right"]
+    assert [r.group for r in chart.regions] == [None, "corners", "corners"]
+    first, second, third = chart.limits
+    assert first.parameters == {"frequency": Amount(0.25, "cy/px")}
+    assert (first.characteristic, first.unit, first.at_least, first.at_most) == ("1", "1", 0.45, None)
+    assert (first.rule, first.conformance_probability) == (PROOF_EITHER_WAY, 0.95)
+    assert second.where == ("corners upper left", "corners lower right")
+    assert (third.combine, third.unit, third.at_most) == ("range", "cy/px", 0.05)
+    assert [capture.name for capture in spec.captures] == ["dark", "chart"]
+
+
+def test_the_expanded_form_gives_the_same_spec_back(tmp_path: Path) -> None:
+    """The expanded form, after a journey through sorted canonical JSON, rebuilds the same records and digest."""
+    for path in (write(tmp_path), *folder("specs").glob("*.yaml")):
+        spec = read_spec(path)
+        again = from_expanded(json.loads(canonical_json(spec.expanded)))
+
+        assert again.digest == spec.digest
+        assert replace(again, source=spec.source, warnings=spec.warnings) == spec
+
+
+def test_the_digest_is_of_what_is_asked(tmp_path: Path) -> None:
+    """Comments, spelling of numbers, quotes and order of keys keep the digest; a limit or a revision changes it."""
+    spec = read_spec(write(tmp_path))
+    same = (
+        TEXT.replace("3.0 um", "3 µm  # pitch")
+        .replace("0.20 cy/px", '"2e-1 cy/px"')
+        .replace("revision: C", "'revision': 'C'")
+    )
+    same = same.replace("document: {number: WS8-ACC, 'revision': 'C'}", "document: {revision: C, number: WS8-ACC}")
+    assert read_spec(write(tmp_path, same)).digest == spec.digest
+
+    for old, new in (("0.45", "0.46"), ("revision: C", "revision: D"), ("count: 2", "count: 3")):
+        assert read_spec(write(tmp_path, TEXT.replace(old, new))).digest != spec.digest
+
+
+def test_later_complaints_find_their_lines(tmp_path: Path) -> None:
+    """What is refused when names are bound to methods is told with the line, not with words alone."""
+    path = write(tmp_path)
+    spec = read_spec(path)
+
+    assert spec.place(f"{spec.source}: captures, chart, limit 2") == f"{path.as_posix()}:29:39"
+    assert spec.place("captures, chart, measure, edge response") == f"{path.as_posix()}:25:30"
+    assert spec.place("captures, nowhere") == f"{path.as_posix()}: captures, nowhere"
+
+
+def test_a_missing_file_is_a_complaint(tmp_path: Path) -> None:
+    """A spec that cannot be read is refused in one sentence that names it."""
+    with pytest.raises(SpecError, match=r"none\.yaml: cannot read the file: No such file"):
+        read_spec(tmp_path / "none.yaml")
+
+
+def _mutations(text: str) -> list[str]:
+    """Return the text with each of its keys deleted, doubled, misspelt and emptied, in block and in flow form."""
+    found = []
+    for key in sorted({word.strip(" {-'") for line in text.splitlines() for word in line.split(":")[:-1]}):
+        word = key.split(",")[-1].strip()
+        if word and text.count(f"{word}:"):
+            found += [
+                text.replace(f"{word}:", new, 1) for new in ("", f"{word}: 1, {word}:", f"{word}x:", f"{word}: #")
+            ]
+    lines = text.splitlines(keepends=True)
+    return (
+        found
+        + ["".join(lines[:i] + lines[i + 1 :]) for i in range(len(lines))]
+        + ["".join(lines[: i + 1] + lines[i:]) for i in range(len(lines))]
+    )
+
+
+def test_deleting_doubling_or_misspelling_any_key_never_crashes(tmp_path: Path) -> None:
+    """Whatever is done to a key or a line, the outcome is a spec or complaints that name the file and a line."""
+    mutations = _mutations(TEXT)
+    assert len(mutations) > 150
+
+    for text in mutations:
+        _read_or_refuse(write(tmp_path, text))
+
+
+def test_a_doubled_key_never_wins_silently(tmp_path: Path) -> None:
+    """Every key of the file, doubled in its place, is refused (never: the last one wins)."""
+    for line in TEXT.splitlines(keepends=True):
+        if line.lstrip().startswith("-") or "limits" in line:
+            continue
+        with pytest.raises(SpecError, match=r"stands twice|indentation|is not YAML"):
+            read_spec(write(tmp_path, TEXT.replace(line, line + line, 1)))
+
+
+@settings(max_examples=150, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
+@given(
+    st.integers(0, len(TEXT) - 1),
+    st.integers(0, 12),
+    st.text(alphabet="{}[]:,#'\"&*!|>%@`-\t\n\0\x85 a0.é\U0001f600", max_size=6),
+)
+def test_random_damage_never_crashes(tmp_path: Path, start: int, length: int, inserted: str) -> None:
+    """Random characters in a random place end in a spec or in complaints, never in another error."""
+    _read_or_refuse(write(tmp_path, TEXT[:start] + inserted + TEXT[start + length :]))
+
+
+def _read_or_refuse(path: Path) -> None:
+    try:
+        spec: Any = read_spec(path)
+    except SpecError as refused:
+        told = refused.complaints
+        assert told
+        assert all(c.where.startswith(path.as_posix()) and c.found for c in told)
+    else:
+        assert spec.digest.startswith("sha256:")
+        assert from_expanded(json.loads(canonical_json(spec.expanded))).digest == spec.digest
+
+
+@pytest.mark.parametrize(("old", "new", "sentence"), WARNED, ids=[sentence[:40] for _, _, sentence in WARNED])
+def test_what_cannot_fail_or_decide_is_warned_of(tmp_path: Path, old: str, new: str, sentence: str) -> None:
+    """A spec that asks for nothing sensible can be used, but says so at its line."""
+    text, place = planted(old, new)
+    if "quarter" in sentence:
+        text = text.replace("captures:\n", "uncertainty: [{name: chart, of: mtf, relative: 2 %}]\ncaptures:\n", 1)
+        place = f"{int(place.split(':')[0]) + 1}:{place.split(':')[1]}"
+    path = write(tmp_path, text)
+
+    told = {c.where: c.found for c in read_spec(path).warnings}
+
+    assert sentence in told.get(f"{path.as_posix()}:{place}", ""), told
