@@ -6,7 +6,7 @@ true` takes a key, or a characteristic, away. A base lies in the folder of the s
 """
 
 from pathlib import Path, PurePosixPath
-from typing import Any
+from typing import Any, TypeGuard
 
 from runner.errors import UsageError
 from runner.spec.leaves import read_truth, shown
@@ -68,13 +68,17 @@ def _laid_over(base: Mapped, variant: Mapped, complaints: Complaints) -> Mapped:
         merged.key_places.update(source.key_places)
     for key in (*base, *(key for key in variant if key not in base)):
         below, above = base.get(key), variant.get(key, base.get(key))
-        if key in base and key in variant and isinstance(below, Mapped) and isinstance(above, Mapped):
+        if key in base and key in variant and _mergeable(below) and _mergeable(above):
             merged[key] = _laid_over(below, above, complaints)
         elif key == "limits" and key in variant and isinstance(below, Listed) and isinstance(above, Listed):
             merged[key] = _limits(below, above, complaints)
         else:
             merged[key] = above
     return merged
+
+
+def _mergeable(node: Any) -> TypeGuard[Mapped]:
+    return isinstance(node, Mapped) and "remove" not in node
 
 
 def _limits(base: Listed, variant: Listed, complaints: Complaints) -> Listed:

@@ -16,7 +16,7 @@ from typing import Any
 from runner.errors import UsageError
 
 MAX_WHOLE = 2**53
-"""Beyond it a JSON number is not every whole number (RFC 7493, 2.2)."""
+"""Beyond it a JSON number is not every whole number (RFC 7493, 2.2); those that spell a double are still read."""
 
 
 def canonical_json(data: Any) -> bytes:
@@ -46,7 +46,7 @@ def _write(data: Any, put: Any) -> None:
     elif isinstance(data, float):
         put(_decimal(data))
     elif isinstance(data, int):
-        if abs(data) > MAX_WHOLE:
+        if abs(data) > MAX_WHOLE and (abs(data) > 1e21 or _decimal(float(data)) != str(data)):
             raise UsageError(f"the whole number {data} is too large for JSON", allowed=f"up to {MAX_WHOLE}")
         put(str(int(data)))
     elif isinstance(data, Mapping):
