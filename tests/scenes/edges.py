@@ -147,7 +147,7 @@ class EdgeScene:
         Raises:
             ValueError: It does not fall so far below 2 cy/px.
         """
-        f = np.linspace(0, 2, 4001)
+        f = np.linspace(0, 2, 401)
         below = np.flatnonzero(self.mtf(f) < level)
         if below.size == 0:
             raise ValueError(f"the transfer function does not fall to {level} below 2 cy/px")
