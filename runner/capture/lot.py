@@ -56,6 +56,8 @@ class UnitFolder:
     """Sentences that hold for the whole unit: none of its captures is measured."""
     remarks: tuple[str, ...] = ()
     """Sentences that change no verdict, e.g. a number missing among the attempts."""
+    unused: tuple[str, ...] = ()
+    """Files that no pattern used, relative to `folder`; a folder that was not entered ends with `/`."""
 
 
 @dataclass(frozen=True)
@@ -96,25 +98,22 @@ def find_lot(frames_dir: Path, spec: Spec, units: Sequence[str] = ()) -> Lot:
             raise UsageError(f"'{serial}' is not a serial of this spec", allowed=f"serials like {spec.unit.serial}")
     missing = [serial for serial in wanted if serial not in folders]
     if len(wanted) == 1 and missing and not folders:
-        only, left = _unit(wanted[0], frames_dir, spec, {})
+        only = _unit(wanted[0], frames_dir, spec, {})
         if any(attempt.frames[name] for attempt in only.attempts for name in attempt.frames):
-            return Lot(frames_dir, (only,), (), tuple(left))
+            return Lot(frames_dir, (only,), (), only.unused)
     if missing:
         raise UsageError(
             f"no frames of unit {', '.join(missing)}",
             where=str(frames_dir),
-            allowed=f"there are {_some(sorted(folders, key=natural))}" if folders else "there are no units at all",
+            allowed=f"there are {some(sorted(folders, key=natural))}" if folders else "there are no units at all",
             next_step="check the serial and the folder",
         )
     if not folders and re.fullmatch(spec.unit.serial, frames_dir.resolve().name):
         strangers.append(
             f"{frames_dir.name} is itself the folder of a unit: give the folder above, or --unit {frames_dir.name}"
         )
-    found = []
-    for serial in sorted(folders, key=natural):
-        unit, left = _unit(serial, folders[serial], spec, folders)
-        found.append(unit)
-        unused += [f"{serial}/{file}" for file in left]
+    found = [_unit(serial, folders[serial], spec, folders) for serial in sorted(folders, key=natural)]
+    unused += [f"{unit.serial}/{file}" for unit in found for file in unit.unused]
     judged = tuple(unit for unit in found if not wanted or unit.serial in wanted)
     others = tuple(unit for unit in found if wanted and unit.serial not in wanted)
     return Lot(frames_dir, judged, others, tuple(unused), tuple(strangers))
@@ -144,8 +143,8 @@ def _sort_entries(root: Path, spec: Spec) -> tuple[dict[str, Path], list[str], l
     return folders, unused, strangers
 
 
-def _unit(serial: str, folder: Path, spec: Spec, folders: Mapping[str, Path]) -> tuple[UnitFolder, list[str]]:
-    """Return a unit and its files that no pattern used."""
+def _unit(serial: str, folder: Path, spec: Spec, folders: Mapping[str, Path]) -> UnitFolder:
+    """Return a unit with its attempts; `folders` are all units of the lot."""
     faults = [
         f"the folders {serial} and {twin} differ only in case or spelling: which unit is it? keep one of them"
         for twin in sorted(folders, key=natural)
@@ -171,7 +170,7 @@ def _unit(serial: str, folder: Path, spec: Spec, folders: Mapping[str, Path]) ->
         attempt, left = _attempt(number, place, spec)
         found.append(attempt)
         unused += left if place == folder else [f"{place.name}/{file}" for file in left]
-    return UnitFolder(serial, folder, tuple(found), tuple(faults), tuple(remarks)), unused
+    return UnitFolder(serial, folder, tuple(found), tuple(faults), tuple(remarks), tuple(unused))
 
 
 def _attempt_folders(folder: Path) -> tuple[list[tuple[int, Path]], list[str], list[str]]:
@@ -255,7 +254,7 @@ def _gap(pattern: FilePattern, refs: Sequence[FrameRef]) -> str:
         return ""
     there = {int(value) for value in values}
     lost = [n for n in range(min(1, *there), max(there)) if n not in there]
-    return f", {pattern.axes[0]} {_some([str(n) for n in lost])} missing" if lost else ""
+    return f", {pattern.axes[0]} {some([str(n) for n in lost])} missing" if lost else ""
 
 
 def _files(folder: Path) -> tuple[list[str], list[str]]:
@@ -282,5 +281,6 @@ def fold(serial: str) -> str:
     return unicodedata.normalize("NFKC", serial).casefold()
 
 
-def _some(names: Sequence[str]) -> str:
+def some(names: Sequence[str]) -> str:
+    """Return the first five of some names in one line, and how many more there are."""
     return ", ".join(names[:5]) + (f" and {len(names) - 5} more" if len(names) > 5 else "")

@@ -1,0 +1,329 @@
+"""Looks through every frame of a lot before anything is measured: whole, single, and of this unit.
+
+All units under FRAMES are compared, also those that were not asked for; so order, the number of processes and the
+choice of units change nothing. Only digests and small facts are kept, one file at a time is in memory.
+"""
+
+import re
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from concurrent.futures import ProcessPoolExecutor
+from dataclasses import dataclass, replace
+from multiprocessing import get_context
+from pathlib import Path
+
+import numpy as np
+
+from runner.capture.frame import Frame
+from runner.capture.lot import FrameRef, Lot, UnitFolder, count_fault, fold, some
+from runner.capture.readers import read_frames
+from runner.errors import FrameRefused
+from runner.spec.model import Camera, Spec
+
+DARK = "dark frame"
+"""The target whose frames may honestly be alike: clamped at zero they hold nothing else."""
+CLAMPED = 1e-4
+"""Share of pixels above zero up to which a dark frame counts as clamped: a few hot pixels."""
+
+Progress = Callable[[int, int], None]
+"""Is told how many files of how many have been read."""
+
+
+@dataclass(frozen=True)
+class PageFacts:
+    """What is kept of one frame."""
+
+    pixels_sha256: str
+    """Digest of the decoded pixels."""
+    constant: float | None
+    """The one code that every pixel has, or None."""
+    clamped: bool
+    """Nearly every pixel is zero."""
+
+
+@dataclass(frozen=True)
+class FileFacts:
+    """What is kept of one file."""
+
+    serial: str
+    """The unit under whose folder it lies."""
+    attempt: int
+    """Attempt."""
+    file: str
+    """Path relative to the attempt's folder."""
+    captures: tuple[str, ...]
+    """Captures that use it with one and the same camera."""
+    sha256: str = ""
+    """Digest of its bytes; empty if it was refused."""
+    pages: tuple[PageFacts, ...] = ()
+    """Frame by frame."""
+    claims: str = ""
+    """Serial that the file's own texts name."""
+    simulated: bool = False
+    """Marked as a rehearsed frame."""
+    refusal: str = ""
+    """The sentence, if the file was refused."""
+
+
+Place = tuple[str, int, str]
+"""Serial, attempt, capture."""
+
+
+@dataclass(frozen=True)
+class Survey:
+    """What was found out about all files of a lot."""
+
+    files: tuple[FileFacts, ...]
+    """Every file, in the order of the lot."""
+    sentences: Mapping[Place, tuple[str, ...]]
+    """Faults by serial, attempt and capture."""
+    marks: Mapping[Place, tuple[str, ...]]
+    """Flags by serial, attempt and capture."""
+    unused: Mapping[str, tuple[str, ...]]
+    """By serial: files that no pattern used."""
+
+    def faults(self, serial: str, attempt: int, capture: str) -> tuple[str, ...]:
+        """Return everything that makes a capture unusable, also what the lot's folders alone show."""
+        return self.sentences.get((serial, attempt, capture), ())
+
+    def flags(self, serial: str, attempt: int, capture: str) -> tuple[str, ...]:
+        """Return what a reader of the report should know and what changes no verdict."""
+        return self.marks.get((serial, attempt, capture), ())
+
+    def digests(self, serial: str, attempt: int) -> Mapping[str, tuple[str, str]]:
+        """Return (digest of the bytes, digest of the first frame's pixels) of every file that was not refused."""
+        return {
+            f.file: (f.sha256, f.pages[0].pixels_sha256)
+            for f in self.files
+            if (f.serial, f.attempt) == (serial, attempt) and not f.refusal
+        }
+
+    def simulated(self, serial: str) -> bool:
+        """Tell whether one of a unit's frames is marked as rehearsed."""
+        return any(f.simulated for f in self.files if f.serial == serial)
+
+
+def survey(lot: Lot, spec: Spec, jobs: int = 1, progress: Progress | None = None) -> Survey:
+    """Read every frame of every unit once and find what cannot be evidence.
+
+    Args:
+        lot: The folders.
+        spec: Captures with their cameras.
+        jobs: Processes; the result does not depend on it.
+        progress: Is told after each file.
+    """
+    units = sorted((*lot.units, *lot.others), key=lambda unit: unit.serial)
+    tasks = list(_tasks(units, spec))
+    files = tuple(_all_facts(tasks, jobs, progress))
+    sentences, marks = _Collector(), _Collector()
+    for unit in units:
+        _folder_faults(unit, spec, files, sentences)
+    for facts in files:
+        if facts.refusal:
+            sentences.add(facts, facts.refusal)
+    _foreign(files, spec, sentences)
+    _twice(files, spec, sentences, marks)
+    return Survey(files, sentences.frozen(), marks.frozen(), {unit.serial: unit.unused for unit in units})
+
+
+def load(refs: Sequence[FrameRef], camera: Camera, expected: Mapping[str, str]) -> tuple[Frame, ...]:
+    """Read the frames of a capture for measuring; they must still be the ones that were looked through.
+
+    Args:
+        refs: The files, in order.
+        camera: The capture's camera.
+        expected: Digest of every file's bytes at the survey.
+
+    Returns:
+        All frames in order, with the axes of their file names and pages.
+
+    Raises:
+        FrameRefused: A file has changed since, or cannot be evidence.
+    """
+    frames: list[Frame] = []
+    for ref in refs:
+        for frame in read_frames(ref.path, camera, name=ref.file):
+            if frame.sha256 != expected.get(ref.file):
+                raise FrameRefused(
+                    "the file changed while the run was going on",
+                    where=ref.file,
+                    next_step="let the copying end, then run again",
+                )
+            frames.append(replace(frame, axes={**ref.axes, **frame.axes}))
+    return tuple(frames)
+
+
+_Task = tuple[Path, Camera, FileFacts]
+
+
+def _tasks(units: Iterable[UnitFolder], spec: Spec) -> Iterator[_Task]:
+    """Yield every file once per camera it is to be read with."""
+    for unit in units:
+        for attempt in unit.attempts:
+            users: dict[tuple[Path, str, Camera], list[str]] = {}
+            for capture in spec.captures:
+                for ref in attempt.frames[capture.name]:
+                    users.setdefault((ref.path, ref.file, capture.camera), []).append(capture.name)
+            for (path, file, camera), captures in users.items():
+                yield path, camera, FileFacts(unit.serial, attempt.number, file, tuple(captures))
+
+
+def _all_facts(tasks: Sequence[_Task], jobs: int, progress: Progress | None) -> Iterator[FileFacts]:
+    if jobs == 1 or len(tasks) < 2:
+        yield from _counted(map(_facts, tasks), len(tasks), progress)
+        return
+    workers = min(jobs, len(tasks))
+    with ProcessPoolExecutor(workers, get_context("spawn")) as pool:
+        chunk = max(1, min(8, len(tasks) // (4 * workers)))
+        yield from _counted(pool.map(_facts, tasks, chunksize=chunk), len(tasks), progress)
+
+
+def _counted(found: Iterable[FileFacts], total: int, progress: Progress | None) -> Iterator[FileFacts]:
+    for done, facts in enumerate(found, 1):
+        if progress is not None:
+            progress(done, total)
+        yield facts
+
+
+def _facts(task: _Task) -> FileFacts:
+    path, camera, facts = task
+    try:
+        frames = read_frames(path, camera, name=facts.file)
+    except FrameRefused as error:
+        return replace(facts, refusal=str(error))
+    return replace(
+        facts,
+        sha256=frames[0].sha256,
+        pages=tuple(_page_facts(frame) for frame in frames),
+        claims=frames[0].metadata.get("serial", ""),
+        simulated=frames[0].simulated,
+    )
+
+
+def _page_facts(frame: Frame) -> PageFacts:
+    codes = frame.codes
+    constant = float(codes[0, 0]) if codes[0, 0] == codes[-1, -1] and bool((codes == codes[0, 0]).all()) else None
+    return PageFacts(frame.pixels_sha256, constant, int(np.count_nonzero(codes)) <= CLAMPED * codes.size)
+
+
+class _Collector:
+    """Gathers sentences by place, each once, in the order in which they come."""
+
+    def __init__(self) -> None:
+        self._found: dict[Place, dict[str, None]] = {}
+
+    def add(self, facts: FileFacts, sentence: str) -> None:
+        """Note a sentence for every capture that uses the file."""
+        for capture in facts.captures:
+            self.put((facts.serial, facts.attempt, capture), sentence)
+
+    def put(self, place: Place, sentence: str) -> None:
+        """Note a sentence."""
+        self._found.setdefault(place, {})[sentence] = None
+
+    def frozen(self) -> Mapping[Place, tuple[str, ...]]:
+        """Return what was gathered."""
+        return {place: tuple(sentences) for place, sentences in self._found.items()}
+
+
+def _folder_faults(unit: UnitFolder, spec: Spec, files: Sequence[FileFacts], sentences: _Collector) -> None:
+    """Note what folders and numbers of frames show: doubled units, lost, surplus and contested files."""
+    of_unit = [facts for facts in files if facts.serial == unit.serial]
+    for attempt in unit.attempts:
+        for capture in spec.captures:
+            place = (unit.serial, attempt.number, capture.name)
+            for sentence in (*unit.faults, *attempt.faults[capture.name]):
+                sentences.put(place, sentence)
+            used = [f for f in of_unit if f.attempt == attempt.number and capture.name in f.captures]
+            frames = sum(max(1, len(facts.pages)) for facts in used)
+            lost = count_fault(capture, attempt.frames[capture.name], frames)
+            if lost:
+                sentences.put(place, lost)
+
+
+def _foreign(files: Sequence[FileFacts], spec: Spec, sentences: _Collector) -> None:
+    """Note every file that names another unit, in its texts or in its name."""
+    known = {fold(facts.serial) for facts in files}
+    for facts in files:
+        claimed = facts.claims if re.fullmatch(spec.unit.serial, facts.claims) else ""
+        if claimed and fold(claimed) != fold(facts.serial):
+            sentences.add(
+                facts,
+                f"{facts.file}: the file says that it is of unit {claimed}, it lies with {facts.serial}; "
+                "find out which unit it shows, and capture again",
+            )
+        for named in _serials_in(facts.file, spec.unit.serial):
+            if fold(named) != fold(facts.serial) and (fold(named) in known or _alike(named, facts.serial)):
+                sentences.add(
+                    facts,
+                    f"{facts.file}: the name says unit {named}, the file lies with {facts.serial}; "
+                    "find out which unit it shows, and capture again",
+                )
+
+
+def _alike(named: str, serial: str) -> bool:
+    """Tell whether a text differs from a serial in digits only, and is more than digits: no date, no counter."""
+    digits = re.compile(r"\d")
+    return not named.isdigit() and digits.sub("0", fold(named)) == digits.sub("0", fold(serial))
+
+
+def _serials_in(file: str, pattern: str) -> list[str]:
+    """Return the longest serials among the runs of whole words of a file's path."""
+    words = [(m.start(), m.end()) for m in re.finditer(r"[^\W_]+", file)]
+    found, taken = [], 0
+    for first, (start, _) in enumerate(words):
+        if start < taken:
+            continue
+        for _, end in reversed(words[first:]):
+            if re.fullmatch(pattern, file[start:end]):
+                found.append(file[start:end])
+                taken = end
+                break
+    return found
+
+
+def _twice(files: Sequence[FileFacts], spec: Spec, sentences: _Collector, marks: _Collector) -> None:
+    """Note frames that hold the same pixels; real frames differ at least in their noise.
+
+    Constant frames and clamped dark frames are alike by nature: they are flagged, and the methods say what is wrong.
+    """
+    dark = {capture.name for capture in spec.captures if capture.target == DARK}
+    alike: dict[str, dict[tuple[str, int, str, int], FileFacts]] = {}
+    for facts in files:
+        for number, page in enumerate(facts.pages):
+            if page.constant is not None:
+                marks.add(facts, f"{facts.file}: every pixel is {page.constant:g} DN")
+            elif page.clamped and dark.issuperset(facts.captures):
+                marks.add(facts, f"{facts.file}: nearly every pixel is 0 DN, the dark signal is clamped")
+            else:
+                same = alike.setdefault(page.pixels_sha256, {})
+                same.setdefault((facts.serial, facts.attempt, facts.file, number), facts)
+    users = _users(files)
+    for same in alike.values():
+        if len(same) < 2:
+            continue
+        for key, facts in same.items():
+            others = [_name(other, key, same[other]) for other in same if other != key]
+            which = f", page {key[3] + 1}" if len(facts.pages) > 1 else ""
+            for capture in users[key[:3]]:
+                sentences.put(
+                    (facts.serial, facts.attempt, capture),
+                    f"{facts.file}{which}: the same pixels as {some(others)}; "
+                    "every frame must be captured anew: capture again what was copied",
+                )
+
+
+def _users(files: Sequence[FileFacts]) -> Mapping[tuple[str, int, str], list[str]]:
+    """Return the captures of each file, over all cameras it is read with."""
+    users: dict[tuple[str, int, str], list[str]] = {}
+    for facts in files:
+        users.setdefault((facts.serial, facts.attempt, facts.file), []).extend(facts.captures)
+    return users
+
+
+def _name(other: tuple[str, int, str, int], seen_from: tuple[str, int, str, int], facts: FileFacts) -> str:
+    """Name a frame as far as it differs in unit, attempt and page from the one that is spoken of."""
+    words = [f"unit {other[0]}"] if other[0] != seen_from[0] else []
+    words += [f"attempt {other[1]}"] if other[:2] != seen_from[:2] else []
+    words += [other[2]] if other[:3] != seen_from[:3] else []
+    words += [f"page {other[3] + 1}"] if len(facts.pages) > 1 else []
+    return ", ".join(words)
