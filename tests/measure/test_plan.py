@@ -19,14 +19,14 @@ captures:
     target: {target}
     frames: 'chart-{{repeat}}.tif'
     regions: {{centre: {{position: [50 %, 50 %], size: [80 px, 120 px]}}}}
-    measure: {{{measure}}}
+    {measure}
     usable_if: {{{usable_if}}}
     limits:
       - {{characteristic: 1, {limit}, where: centre}}
 """
 GOOD = {
     "target": "slanted edge",
-    "measure": "edge response: {order: 1}",
+    "measure": "measure: {edge response: {order: 1}}",
     "usable_if": "clipped: at most 0.01 %",
     "limit": "quantity: mtf, frequency: 50 lp/mm, at_least: 0.45",
 }
@@ -80,9 +80,12 @@ def test_components_of_spec_and_station_add_up(tmp_path: Path) -> None:
     ("changes", "complaint"),
     [
         ({"target": "slantd edge"}, "unknown target 'slantd edge'.*did you mean 'slanted edge'"),
-        ({"measure": "edge respons: {}"}, "unknown method 'edge respons'.*did you mean 'edge response'"),
-        ({"measure": "edge response: {ordre: 2}"}, "edge response: unknown option 'ordre'"),
-        ({"measure": "edge response: {order: 9}"}, "edge response: .*9"),
+        (
+            {"measure": "measure: {edge respons: {order: 1}}"},
+            "unknown method 'edge respons'.*did you mean 'edge response'",
+        ),
+        ({"measure": "measure: {edge response: {ordre: 2}}"}, "edge response: unknown option 'ordre'"),
+        ({"measure": "measure: {edge response: {order: 9}}"}, "edge response: .*9"),
         ({"limit": "quantity: mtf5O, at_least: 0.2 cy/px"}, "limit 1: unknown quantity 'mtf5O'.*did you mean 'mtf50'"),
         ({"limit": "quantity: mtf, at_least: 0.2"}, "limit 1: mtf needs 'frequency'"),
         (

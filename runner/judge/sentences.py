@@ -1,0 +1,91 @@
+"""Values in plain words: digits chosen so that the reason shows."""
+
+from math import ceil, floor, isfinite, log10
+
+from runner.judge.verdict import Check
+
+MOST_DECIMALS = 9
+
+
+def show(value: float, u: float | None, unit: str, *, against: tuple[float | None, ...] = ()) -> str:
+    """Return `value ± U unit`, U = 2u with two significant digits (ISO/IEC Guide 98-3, 7.2.6).
+
+    Args:
+        value: The value.
+        u: Standard uncertainty, or None for a bare value.
+        unit: Unit; `1` is left out.
+        against: Limits; digits are added until the rounded value shows on which side of each it lies.
+    """
+    wide = 2 * (u or 0.0)
+    places = decimals(value, wide, against)
+    text = f"{value:.{places}f}"
+    if u:
+        text += f" ± {wide:.{places}f}"
+    return text if unit in {"1", ""} else f"{text} {unit}"
+
+
+def decimals(value: float, wide: float, against: tuple[float | None, ...] = ()) -> int:
+    """Return how many decimals a value needs."""
+    places = _for_two_digits(wide) if wide > 0 and isfinite(wide) else _for_digits(value, 4)
+    for limit in against:
+        while limit is not None and places < MOST_DECIMALS and value != limit and _hides(value, limit, places):
+            places += 1
+    return places
+
+
+def _hides(value: float, limit: float, places: int) -> bool:
+    shown, edge = round(value, places), round(limit, places)
+    return shown == edge or (shown < edge) != (value < limit) or (edge != limit and (shown < limit) != (value < limit))
+
+
+def _for_two_digits(wide: float) -> int:
+    return min(MOST_DECIMALS, max(0, 1 - floor(log10(wide) + 1e-12)))
+
+
+def _for_digits(value: float, digits: int) -> int:
+    if value == 0 or not isfinite(value):
+        return 0
+    return 0 if float(value).is_integer() else min(MOST_DECIMALS, max(0, digits - ceil(log10(abs(value)))))
+
+
+def requirement(check: Check) -> str:
+    """Return a check's limits in words, e.g. `at least 0.200 cy/px`."""
+    unit = "" if check.measured_in in {"1", ""} else f" {check.measured_in}"
+    parts = []
+    if check.at_least is not None:
+        parts.append(f"at least {check.at_least:g}")
+    if check.at_most is not None:
+        parts.append(f"at most {check.at_most:g}")
+    return " and ".join(parts) + unit if parts else ""
+
+
+def joined(words: "list[str] | tuple[str, ...]") -> str:
+    """Return words as a list in a sentence."""
+    return words[0] if len(words) == 1 else ", ".join(words[:-1]) + " and " + words[-1] if words else ""
+
+
+_MEANS = {
+    ("mtf", "low"): "the unit is soft there",
+    ("mtf", "high"): "the unit transfers more than it may there",
+    ("edge_width", "high"): "the unit is soft there",
+    ("lsf_fwhm", "high"): "the unit is soft there",
+    ("overshoot", "high"): "the unit sharpens its edges too much there",
+    ("undershoot", "high"): "the unit sharpens its edges too much there",
+    ("edge_noise", "high"): "the unit is too noisy there",
+    ("lsf_asymmetry", "high"): "the unit smears edges to one side there",
+}
+
+
+def consequence(check: Check) -> str:
+    """Return what a check that does not conform says about the unit."""
+    if check.where.startswith("range of"):
+        return "the unit is too uneven over the field"
+    side = "high" if check.at_most is not None and (check.value is None or check.value >= _middle(check)) else "low"
+    family = "mtf" if check.quantity.startswith("mtf") else check.quantity
+    return _MEANS.get((family, side), "the unit does not meet the requirement there")
+
+
+def _middle(check: Check) -> float:
+    if check.at_least is None or check.at_most is None:
+        return float("-inf")
+    return (check.at_least + check.at_most) / 2

@@ -1,0 +1,165 @@
+"""One unit's judgement: usable captures, every limit's checks, the roll-up, blame, reasons and the next step."""
+
+from collections.abc import Sequence
+
+from runner.judge import blame
+from runner.judge.checks import checks_of, not_measured
+from runner.judge.sentences import joined
+from runner.judge.usability import judge_capture
+from runner.judge.verdict import (
+    AT_FAULT_CANNOT_TELL,
+    AT_FAULT_CAPTURE,
+    AT_FAULT_PROGRAM,
+    AT_FAULT_UNIT,
+    CANNOT_DECIDE,
+    CONFORMS,
+    DOES_NOT_CONFORM,
+    NOT_MEASURED,
+    REPORT_ONLY,
+    CaptureState,
+    Check,
+    Judgement,
+)
+from runner.measure.evidence import UnitEvidence
+from runner.measure.reading import Reading
+from runner.spec.model import Capture, Spec
+
+_BLAME_ORDER = (AT_FAULT_PROGRAM, AT_FAULT_CAPTURE, AT_FAULT_CANNOT_TELL, AT_FAULT_UNIT)
+"""Whose fault a unit's `not measured` is when its checks disagree: what can be mended at once comes first."""
+
+
+def judge_unit(spec: Spec, evidence: UnitEvidence) -> Judgement:
+    """Judge one unit from its spec and its evidence alone, now or months later.
+
+    Args:
+        spec: Limits and rules.
+        evidence: Readings and the state of files, over all attempts.
+    """
+    states = tuple(
+        judge_capture(spec.capture(c.name), c, _readings(evidence, c.name, c.attempt)) for c in evidence.captures
+    )
+    checks = tuple(check for c in spec.captures for check in _capture_checks(c, states, evidence))
+    return _rolled_up(checks, states)
+
+
+def roll_up(verdicts: Sequence[str]) -> str:
+    """Return a unit's verdict from its checks' verdicts; report-only ones never enter."""
+    judged = [v for v in verdicts if v != REPORT_ONLY]
+    for verdict in (DOES_NOT_CONFORM, NOT_MEASURED, CANNOT_DECIDE):
+        if verdict in judged:
+            return verdict
+    return CONFORMS if judged and all(v == CONFORMS for v in judged) else NOT_MEASURED
+
+
+def _readings(evidence: UnitEvidence, capture: str, attempt: int) -> list[Reading]:
+    return [r for r in evidence.readings if (r.capture, r.attempt) == (capture, attempt)]
+
+
+def _capture_checks(capture: Capture, states: Sequence[CaptureState], evidence: UnitEvidence) -> list[Check]:
+    mine = [s for s in states if s.name == capture.name]
+    whole = [s for s in mine if s.usable and all(o.usable for o in states if o.attempt == s.attempt)]
+    usable = whole or [s for s in mine if s.usable]
+    checks: list[Check] = []
+    for limit in capture.limits:
+        if len(usable) == 1:
+            attempt = usable[0].attempt
+            readings: dict[str, list[Reading]] = {}
+            for reading in _readings(evidence, capture.name, attempt):
+                readings.setdefault(reading.region, []).append(reading)
+            checks += checks_of(capture, limit, readings, attempt)
+        elif usable:
+            numbers = joined([str(s.attempt) for s in usable])
+            reason = f"two valid attempts, no rule: attempts {numbers} of '{capture.name}' can be used"
+            two = blame.TWO_ATTEMPTS
+            checks += not_measured(limit, usable[-1].attempt, reason, two.at_fault, two.because)
+        elif mine:
+            last = mine[-1]
+            reason = f"'{capture.name}' cannot be used: {last.faults[0]}"
+            fault, because = last.at_fault or AT_FAULT_CANNOT_TELL, last.because or ""
+            checks += not_measured(limit, last.attempt, reason, fault, because)
+        else:
+            reason = f"'{capture.name}' was not captured"
+            checks += not_measured(limit, 1, reason, blame.FILE.at_fault, "there is no frame of it")
+    return checks
+
+
+def _rolled_up(checks: tuple[Check, ...], states: tuple[CaptureState, ...]) -> Judgement:
+    verdict = roll_up([c.verdict for c in checks])
+    deciding = [c for c in checks if c.verdict == verdict]
+    at_fault, because = _blame(verdict, deciding)
+    reasons = tuple(
+        dict.fromkeys(c.reason for c in sorted(checks, key=_weight) if c.verdict not in {CONFORMS, REPORT_ONLY})
+    )
+    if not [c for c in checks if c.verdict != REPORT_ONLY]:
+        return Judgement(
+            NOT_MEASURED,
+            AT_FAULT_CANNOT_TELL,
+            "the spec holds no limit to judge",
+            ("No limit was judged.",),
+            "Add limits to the spec.",
+            checks,
+            states,
+        )
+    if verdict == CONFORMS:
+        reasons = (_all_well(checks),)
+    return Judgement(verdict, at_fault, because, reasons, _next(verdict, at_fault, deciding), checks, states)
+
+
+def _weight(check: Check) -> tuple[int, float, str]:
+    order = (DOES_NOT_CONFORM, NOT_MEASURED, CANNOT_DECIDE, CONFORMS, REPORT_ONLY)
+    return order.index(check.verdict), (1.0 if check.probability is None else check.probability), check.characteristic
+
+
+def _blame(verdict: str, deciding: Sequence[Check]) -> tuple[str | None, str]:
+    if verdict == CONFORMS:
+        return None, ""
+    if verdict == CANNOT_DECIDE:
+        return None, "the uncertainty straddles a limit"
+    if verdict == DOES_NOT_CONFORM:
+        worst = min(deciding, key=_weight)
+        return AT_FAULT_UNIT, worst.because or ""
+    for word in _BLAME_ORDER:
+        for check in deciding:
+            if check.at_fault == word:
+                return word, check.because or ""
+    return AT_FAULT_CANNOT_TELL, ""
+
+
+def _all_well(checks: Sequence[Check]) -> str:
+    judged = [c for c in checks if c.verdict == CONFORMS]
+    known = [c for c in judged if c.probability is not None]
+    count = f"All {len(judged)} checks conform" if len(judged) > 1 else "The one check conforms"
+    if not known:
+        return f"{count}."
+    nearest = min(known, key=_margin)
+    return f"{count}; nearest to its limit: {nearest.reason}."
+
+
+def _margin(check: Check) -> float:
+    """Return the distance to the nearest limit in standard uncertainties, or relative to the limit where u is 0."""
+    if check.value is None:
+        return float("inf")
+    ends = [e for e in (check.at_least, check.at_most) if e is not None]
+    nearest = min((abs(check.value - e) for e in ends), default=float("inf"))
+    return nearest / check.u if check.u else nearest * 1e9
+
+
+def _next(verdict: str, at_fault: str | None, deciding: Sequence[Check]) -> str:
+    if verdict == CONFORMS:
+        return "Release the unit."
+    if verdict == DOES_NOT_CONFORM:
+        return "Reject the unit; the report goes with it."
+    if verdict == CANNOT_DECIDE:
+        numbers = joined(sorted({c.characteristic for c in deciding}, key=_natural))
+        return f"Hold the unit; take more frames for characteristic {numbers}, or let the engineer decide."
+    names = joined(sorted({f"'{c.capture}'" for c in deciding}))
+    if at_fault == AT_FAULT_PROGRAM:
+        return "Keep the unit and its frames; tell whoever maintains the program."
+    if at_fault == AT_FAULT_CAPTURE:
+        return f"Capture again: {names}. First mend what the reason says."
+    return f"Capture again: {names}. First capture a unit known to be good in the same place: it tells unit from bench."
+
+
+def _natural(word: str) -> tuple[int, str]:
+    digits = "".join(c for c in word if c.isdecimal())
+    return (int(digits) if digits else 0), word
