@@ -128,14 +128,18 @@ def _verify_one(path: Path, terms: Terms) -> Outcome:
     signers: list[x509.Certificate] = []
     contents = None
     if files.pdf is not None:
-        found = _refusing(checks, store.PDF, lambda: verify_parts.check_pdf(files.pdf or b"", terms, checks))
+        own: list[Check] = []
+        found = _refusing(own, "report", lambda: verify_parts.check_pdf(files.pdf or b"", terms, own))
+        checks += _named("PDF", own)
         if found is not None:
             signer, contents = found
             signers.append(signer)
     elif files.html is not None:
         contents = _refusing(checks, store.RESULTS, lambda: verify_parts.loose_contents(files, terms))
     if files.html is not None:
-        page = _refusing(checks, store.HTML, lambda: verify_parts.check_html(files, contents, terms, checks))
+        mine: list[Check] = []
+        page = _refusing(mine, "report", lambda: verify_parts.check_html(files, contents, terms, mine))
+        checks += _named("HTML", mine)
         signers += [] if page is None else [page]
     if contents is not None and signers:
         known = contents
@@ -146,6 +150,10 @@ def _verify_one(path: Path, terms: Terms) -> Outcome:
         remarks.append("whether the certificate was revoked was not checked: no --crl was given")
     document = contents.document if contents is not None and signers else None
     return Outcome(path, tuple(checks), tuple(remarks), terms.accept, document)
+
+
+def _named(file: str, checks: list[Check]) -> list[Check]:
+    return [replace(check, name=f"{file} {check.name}") for check in checks]
 
 
 def _refusing(checks: list[Check], name: str, step: Callable[[], T]) -> T | None:

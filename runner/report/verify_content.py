@@ -70,30 +70,28 @@ def check_pdf_page(
     signed: SignedPdf, document: Mapping[str, Any], pictures: Mapping[str, bytes], results: bytes, terms: Terms
 ) -> Check:
     """Check that a PDF is what these results print to: byte for byte with all that signing added, else its text."""
-    name = "page"
     try:
         unsigned = terms.tools.render_pdf(document, pictures, results)
         stamped = signed.signature.time_stamp is not None
         again = sign.prepare(unsigned, signed.signature.certificate, signed.time, stamped=stamped)
     except Exception as error:  # noqa: BLE001 - an old edition or a missing font is no proof of a changed report
-        return _no_page(name, error)
+        return _no_page(error)
     if bytes(again.data) == signed.blank:
-        return Check(name, True, "the page printed again from the data is the same byte for byte")
+        return Check("page", True, "the page printed again from the data is the same byte for byte")
     with refusing("the text of the page cannot be read"):
-        return _by_text(name, _pdf_words(signed.data), _pdf_words(bytes(again.data)))
+        return _by_text(document, _pdf_words(signed.data), _pdf_words(bytes(again.data)), terms)
 
 
 def check_html_page(html: bytes, document: Mapping[str, Any], pictures: Mapping[str, bytes], terms: Terms) -> Check:
     """Check that an HTML report is what these results print to, byte for byte, else its text."""
-    name = "page"
     try:
         again = terms.tools.html_page(document, pictures).encode()
     except Exception as error:  # noqa: BLE001 - see check_pdf_page
-        return _no_page(name, error)
+        return _no_page(error)
     if again == html:
-        return Check(name, True, "the page printed again from the data is the same byte for byte")
+        return Check("page", True, "the page printed again from the data is the same byte for byte")
     with refusing("the text of the page cannot be read"):
-        return _by_text(name, _html_words(html), _html_words(again))
+        return _by_text(document, _html_words(html), _html_words(again), terms)
 
 
 def check_verdicts(document: Mapping[str, Any], terms: Terms) -> Check:
@@ -107,9 +105,9 @@ def check_verdicts(document: Mapping[str, Any], terms: Terms) -> Check:
         return Check(name, False, f"the readings cannot be judged again: {type(error).__name__}: {error}")
     odd = differing(_kept(document), _kept(again))
     if not odd:
-        return Check(name, True, f"all {len(document['checks'])} verdicts follow from the readings")
+        return Check(name, True, f"every verdict follows from the readings ({len(document['checks'])})")
     words = "; ".join(odd[:3]) + ("; …" if len(odd) > 3 else "")
-    same_version = document["program"]["version"] == again["program"]["version"]
+    same_version = document["program"]["version"] == terms.tools.program()["version"]
     if same_version or differing(_deciding(document), _deciding(again)):
         return Check(name, False, f"what it says does not follow from its readings: {words}")
     found = f"all verdicts follow, but version {document['program']['version']} wrote other words: {words}"
@@ -158,19 +156,25 @@ def _deciding(document: Mapping[str, Any]) -> dict[str, Any]:
     return kept
 
 
-def _no_page(name: str, error: Exception) -> Check:
+def _no_page(error: Exception) -> Check:
     found = f"the page cannot be printed again here: {type(error).__name__}: {error}"
-    return Check(name, None, found, verify_record.NO_PAGE)
+    return Check("page", None, found, verify_record.NO_PAGE)
 
 
-def _by_text(name: str, stated: list[str], again: list[str]) -> Check:
-    """Compare by text: in order but for white space, or as a bag of words where the lines break elsewhere."""
-    if "".join(stated) == "".join(again) or Counter(stated) == Counter(again):
-        found = "the page is not the same byte for byte, but every word of it follows from the data and nothing more"
-        return Check(name, None, found, verify_record.TEXT_ONLY)
-    more, less = Counter(stated) - Counter(again), Counter(again) - Counter(stated)
-    words = f"it shows {_some(more)} where the data give {_some(less)}"
-    return Check(name, False, f"the page does not show what the data say: {words}")
+def _by_text(document: Mapping[str, Any], stated: list[str], again: list[str], terms: Terms) -> Check:
+    """Compare by text where the bytes differ: in order but for white space, or as a bag if lines break elsewhere.
+
+    What lies over or under the words is not seen that way, so this never counts as fully compared; and where all
+    versions are the same, the bytes must be, too.
+    """
+    if "".join(stated) != "".join(again) and Counter(stated) != Counter(again):
+        more, less = Counter(stated) - Counter(again), Counter(again) - Counter(stated)
+        words = f"it shows {_some(more)} where the data give {_some(less)}"
+        return Check("page", False, f"the page does not show what the data say: {words}")
+    if document["program"] == terms.tools.program():
+        return Check("page", False, "the same versions print another page from the data, though with the same words")
+    found = "the page is not the same byte for byte, but every word of it follows from the data and nothing more"
+    return Check("page", None, found, verify_record.TEXT_ONLY)
 
 
 def _some(words: Counter[str]) -> str:

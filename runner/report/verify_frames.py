@@ -47,7 +47,7 @@ def _digests(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
     if odd:
         return Check("frames", False, f"these are not the frames of the report: {_few(odd)}")
     count = sum(len(capture["frames"]) for capture in document["captures"])
-    return Check("frames", True, f"all {count} frames have the digests of the report")
+    return Check("frames", True, f"every frame has the digest of the report ({count})")
 
 
 def _values(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
@@ -57,7 +57,7 @@ def _values(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
     odd = [f"{_words(key)}: {why}" for key in stated if (why := _other(stated[key], found[key]))]
     if odd:
         return Check("values", False, f"measured again, values differ: {_few(odd)}")
-    return Check("values", True, f"all {len(stated)} readings come out again within u/100")
+    return Check("values", True, f"every reading comes out again within u/100 ({len(stated)})")
 
 
 def _other(stated: Mapping[str, Any], found: Mapping[str, Any]) -> str:
@@ -101,7 +101,7 @@ def _pictures(document: Mapping[str, Any], pictures: Mapping[str, bytes]) -> Che
     if odd:
         words = f"painted again from the frames, these pictures differ: {', '.join(odd)}"
         return Check("pictures", None, words, verify_record.PICTURES)
-    return Check("pictures", True, f"all {len(stated)} pictures come out of the frames again byte for byte")
+    return Check("pictures", True, f"every picture comes out of the frames again byte for byte ({len(stated)})")
 
 
 _KEYS = ("capture", "attempt", "region", "channel", "quantity", "part", "estimator")

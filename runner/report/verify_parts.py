@@ -56,7 +56,7 @@ def check_pdf(data: bytes, terms: Terms, checks: list[Check]) -> tuple[x509.Cert
     attached = verify_pdf.attachments(data)
     document, pictures = verify_content.read_results(attached, terms)
     contents = Contents(document, attached[verify_content.RESULTS], pictures)
-    found = f"results.json and {len(pictures)} pictures are attached, as listed"
+    found = f"results.json is attached, and exactly the pictures that it lists ({len(pictures)})"
     checks.append(Check("attachments", True, found))
     checks.append(verify_content.check_pdf_page(signed, document, pictures, contents.results, terms))
     return signed.signature.certificate, contents

@@ -160,14 +160,16 @@ def attachments(data: bytes) -> dict[str, bytes]:
         listed = {spec.objgen for _, spec in found}
         holders = [o for o in pdf.objects if isinstance(o, pikepdf.Dictionary) and "/EF" in o]
         embedded = [o for o in pdf.objects if isinstance(o, pikepdf.Stream) and o.get("/Type") == "/EmbeddedFile"]
-        names = [str(spec.UF) for _, spec in found]
+        names = [name for name, _ in found]
         if len(set(names)) != len(names):
             raise VerificationRefused("a file is attached twice under one name")
+        if any({str(spec.F), str(spec.UF)} != {name} or len(spec.EF) > 1 for name, spec in found):
+            raise VerificationRefused("a file is attached under two names")
         if {o.objgen for o in holders} != listed or len(embedded) != len(found):
             raise VerificationRefused("a file is attached that the list of attachments does not name")
         if any(spec.get("/AFRelationship") != "/Data" for _, spec in found):
             raise VerificationRefused("an attached file is not marked as the report's data")
-        return {str(spec.UF): bytes(spec.EF.F.read_bytes()) for _, spec in found}
+        return {name: bytes(spec.EF.F.read_bytes()) for name, spec in found}
 
 
 @contextmanager

@@ -72,6 +72,8 @@ class Outcome:
 class Tools:
     """The rest of the program as verification needs it; tests put stand-ins here."""
 
+    program: Callable[[], dict[str, Any]]
+    """Tells the versions of this program and of all that its pages depend on."""
     parse: Callable[[bytes], dict[str, Any]]
     """Reads `results.json` strictly."""
     render_pdf: Callable[[Mapping[str, Any], Mapping[str, bytes], bytes], bytes]

@@ -13,6 +13,7 @@ from runner.report.verify_record import Tools
 def default_tools() -> Tools:
     """Return the program's own tools."""
     return Tools(
+        program=_program,
         parse=_parse,
         render_pdf=_render_pdf,
         html_page=_html_page,
@@ -20,6 +21,12 @@ def default_tools() -> Tools:
         measure_again=_measure_again,
         lot_files=_lot_files,
     )
+
+
+def _program() -> dict[str, Any]:
+    from runner.report.document import program  # noqa: PLC0415 - heavy
+
+    return program()
 
 
 def _parse(data: bytes) -> dict[str, Any]:

@@ -1,0 +1,216 @@
+"""A small world for signing and verifying: keys, a results document, pages printed by stand-ins, a folder of it all."""
+
+import html
+import json
+import warnings
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
+from datetime import UTC, datetime
+from hashlib import sha256
+from io import BytesIO
+from pathlib import Path
+from typing import Any
+
+from cryptography import x509
+from PIL import Image
+
+from runner.errors import VerificationRefused
+from runner.report import certificates as profiles
+from runner.report.keys import StationKey
+from runner.report.sign import sign_detached, sign_pdf
+from runner.report.verify_record import Tools
+from runner.spec.revision import canonical_json, digest
+
+MADE = datetime(2026, 3, 2, 8, 0, tzinfo=UTC)
+SIGNED = datetime(2026, 3, 14, 9, 30, tzinfo=UTC)
+NOW = datetime(2026, 5, 1, 12, 0, tzinfo=UTC)
+
+
+@dataclass(frozen=True)
+class Authority:
+    """A root with its key, and one station."""
+
+    root: x509.Certificate
+    """Certificate of the authority."""
+    root_key: Any
+    """Its key."""
+    station: StationKey
+    """A station that it issued."""
+
+
+def authority(name: str = "Walnut Works test authority", station: str = "Bench 2", made: datetime = MADE) -> Authority:
+    """Make an authority and a station at a given time."""
+    root_key, key = profiles.new_private_key(), profiles.new_private_key()
+    root = profiles.root_certificate(root_key, name, made)
+    certificate = profiles.station_certificate(key.public_key(), station, root, root_key, made)
+    return Authority(root, root_key, StationKey(key, certificate))
+
+
+def picture(shade: int = 128) -> bytes:
+    """Return a small PNG."""
+    out = BytesIO()
+    Image.new("L", (24, 16), shade).save(out, "PNG")
+    return out.getvalue()
+
+
+PICTURES = {"chart-overview.png": picture()}
+
+
+def results(serial: str = "WS8-000101", value: float = 0.1874, verdict: str = "does not conform") -> dict[str, Any]:
+    """Return a results document with one reading and one check."""
+    spec = {"probatum-spec": 1, "document": {"number": "WS8-ACC", "revision": "C"}}
+    frame = {"file": "chart-01.tif", "sha256": "0" * 64, "shape": [1200, 1600], "dtype": "uint16", "page": None}
+    reading = {
+        "capture": "chart",
+        "attempt": 1,
+        "region": "lower left",
+        "channel": "mono",
+        "quantity": "mtf50",
+        "parameters": {},
+        "part": "system",
+        "estimator": "joint fit",
+        "value": value,
+        "u": 0.003,
+        "measured_in": "cy/px",
+        "bound": None,
+        "refusal": None,
+    }
+    return {
+        "format": "probatum-results/1",
+        "program": {"name": "probatum", "version": "1"},
+        "document": {"number": "WS8-ACC", "revision": "C", "digest": digest(spec)},
+        "spec": spec,
+        "unit": {"serial": serial, "lot": "L7"},
+        "time": "2026-03-14T09:29:00Z",
+        "simulated": False,
+        "captures": [{"name": "chart", "attempt": 1, "frames": [frame], "file_faults": []}],
+        "readings": [reading],
+        "pictures": [{"name": n, "sha256": f"sha256:{sha256(d).hexdigest()}"} for n, d in PICTURES.items()],
+        "warnings": [],
+    } | judged(value, verdict)
+
+
+def judged(value: float, verdict: str | None = None) -> dict[str, Any]:
+    """Return what a judge says of the reading: at least 0.2."""
+    right = "conforms" if value >= 0.2 else "does not conform"
+    check = {
+        "characteristic": 2,
+        "capture": "chart",
+        "where": "lower left",
+        "channel": "mono",
+        "value": value,
+        "u": 0.003,
+        "at_least": 0.2,
+        "verdict": verdict or right,
+        "at_fault": None if (verdict or right) == "conforms" else "unit",
+        "reason": f"lower left corner: {value:.3f} cy/px, at least 0.200",
+    }
+    return {
+        "verdict": check["verdict"],
+        "at_fault": check["at_fault"],
+        "because": "the unit is soft",
+        "checks": [check],
+    }
+
+
+def canonical(document: Mapping[str, Any]) -> bytes:
+    """Return the bytes of results.json."""
+    return canonical_json(document) + b"\n"
+
+
+def parse(data: bytes) -> dict[str, Any]:
+    """Read results.json strictly."""
+    document: dict[str, Any] = json.loads(data)
+    if canonical(document) != data:
+        raise VerificationRefused("its bytes are not in canonical form")
+    return document
+
+
+def html_page(document: Mapping[str, Any], pictures: Mapping[str, bytes]) -> str:
+    """Print a page."""
+    check = document["checks"][0]
+    rows = [document["unit"]["serial"], document["verdict"], check["reason"], check["verdict"], *sorted(pictures)]
+    body = "\n".join(f"<p>{html.escape(str(row))}</p>" for row in rows)
+    return f'<!doctype html>\n<html lang="en"><title>Test report</title><body>\n{body}\n</body></html>\n'
+
+
+def render_pdf(document: Mapping[str, Any], pictures: Mapping[str, bytes], data: bytes) -> bytes:
+    """Print results to PDF/A-3 with their attachments."""
+    return print_pdf(html_page(document, pictures), pictures, data)
+
+
+def print_pdf(page: str, pictures: Mapping[str, bytes], data: bytes) -> bytes:
+    """Print any page to PDF/A-3 with attachments."""
+    from weasyprint import HTML, Attachment
+
+    day = datetime(2026, 3, 14, tzinfo=UTC)
+    files = {"results.json": data, **pictures}
+    attached = [
+        Attachment(file_obj=BytesIO(d), name=n, relationship="Data", created=day, modified=day, base_url="report:/x")
+        for n, d in files.items()
+    ]
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", ResourceWarning)  # the library leaves its own colour profile open
+        pdf: bytes = HTML(string=page).write_pdf(
+            pdf_variant="pdf/a-3u", pdf_tags=True, attachments=attached, pdf_identifier=sha256(data).digest()[:16]
+        )
+    return pdf
+
+
+def judge_again(document: Mapping[str, Any]) -> dict[str, Any]:
+    """Judge again: the verdict that follows from the value."""
+    return dict(document) | judged(document["readings"][0]["value"])
+
+
+def measure_again(document: Mapping[str, Any], frames: Path) -> tuple[dict[str, Any], dict[str, bytes]]:
+    """Measure again: the value that stands in the folder's one file."""
+    value = float((frames / "value.txt").read_text())
+    frame = document["captures"][0]["frames"][0] | {"sha256": (frames / "digest.txt").read_text()}
+    captures = [document["captures"][0] | {"frames": [frame]}]
+    readings = [document["readings"][0] | {"value": value}]
+    return dict(document) | {"captures": captures, "readings": readings} | judged(value), dict(PICTURES)
+
+
+def lot_files(_folder: Path, lot: Mapping[str, Any], documents: tuple[Mapping[str, Any], ...]) -> dict[str, bytes]:
+    """Write a lot's files."""
+    verdicts = {d["unit"]["serial"]: d["verdict"] for d in documents}
+    table = "".join(f"{serial},{verdict}\r\n" for serial, verdict in verdicts.items()).encode()
+    data = json.dumps({"lot": lot["lot"], "program": {"version": "1"}, "units": verdicts}).encode()
+    return {"lot.json": data, "lot.html": b"<p>" + table, "lot.csv": table, "lot-values.json": data}
+
+
+def program() -> dict[str, Any]:
+    """Tell this version."""
+    return {"name": "probatum", "version": "1"}
+
+
+TOOLS = Tools(program, parse, render_pdf, html_page, judge_again, measure_again, lot_files)
+
+
+def other_version(tools: Tools = TOOLS) -> Tools:
+    """Return tools of another version: its pages have the same words and other bytes."""
+
+    def pdf(document: Mapping[str, Any], pictures: Mapping[str, bytes], data: bytes) -> bytes:
+        return print_pdf(html_page(document, pictures).replace("<p>", '<p style="margin: 9pt">'), pictures, data)
+
+    def page(document: Mapping[str, Any], pictures: Mapping[str, bytes]) -> str:
+        return html_page(document, pictures).replace("\n", "\n  ")
+
+    later = {"name": "probatum", "version": "2"}
+    return replace(tools, program=lambda: later, render_pdf=pdf, html_page=page)
+
+
+def write_unit(folder: Path, key: StationKey, document: Mapping[str, Any], time: datetime = SIGNED) -> Path:
+    """Write a unit's folder as a run leaves it."""
+    data = canonical(document)
+    page = html_page(document, PICTURES).encode()
+    files = {
+        "results.json": data,
+        "report.html": page,
+        "report.html.p7s": sign_detached(page, key, time=time),
+        "report.pdf": sign_pdf(render_pdf(document, PICTURES, data), key, time=time),
+    }
+    (folder / "pictures").mkdir(parents=True)
+    for name, contents in (files | {f"pictures/{n}": d for n, d in PICTURES.items()}).items():
+        (folder / name).write_bytes(contents)
+    return folder
