@@ -113,7 +113,7 @@ def _bind_capture(spec: Spec, capture: Capture, complaints: list[Complaint]) -> 
         target_options = None
     wanted = _bind_limits(capture, place, [m for m, _ in bound], complaints)
     for one in capture.usable_if:
-        _bind_bound(capture, one, place, [m for m, _ in bound], complaints)
+        _bind_bound(capture, one, place, [m for m, _ in bound], wanted, complaints)
     plans = tuple(MethodPlan(m, o, wanted.get(m.NAME, {})) for m, o in bound)
     return CapturePlan(capture, target, target_options, plans)
 
@@ -196,7 +196,14 @@ def _unit_fits(
     return True
 
 
-def _bind_bound(capture: Capture, bound: Bound, place: str, methods: list[Method], complaints: list[Complaint]) -> None:
+def _bind_bound(
+    capture: Capture,
+    bound: Bound,
+    place: str,
+    methods: list[Method],
+    wanted: dict[str, dict[str, tuple[Wanted, ...]]],
+    complaints: list[Complaint],
+) -> None:
     where = f"{place}, usable_if"
     method, info = _provider(bound.quantity, None, methods)
     if method is None or info is None:
@@ -205,5 +212,7 @@ def _bind_bound(capture: Capture, bound: Bound, place: str, methods: list[Method
         complaints.append(
             Complaint(where, f"{bound.quantity} needs parameters", "usable_if takes plain quantities only")
         )
-    else:
-        _unit_fits(capture, bound.unit, info, bound.quantity, where, complaints)
+    elif _unit_fits(capture, bound.unit, info, bound.quantity, where, complaints):
+        mine = wanted.setdefault(method.NAME, {})
+        for region in [r.name for r in capture.regions] or [""]:
+            mine[region] = (*mine.get(region, ()), Wanted(bound.quantity, {}, {}))

@@ -100,12 +100,20 @@ def mean_of_repeats(readings: Sequence[Reading]) -> Reading:
     values = [r.value for r in readings if r.value is not None]
     if len(values) != n:
         return next(r for r in readings if r.value is None)
-    parts = tuple(_mean_component([r.components[i] for r in readings]) for i in range(len(first.components)))
+    names = dict.fromkeys((c.name, c.shared) for r in readings for c in r.components)
+    parts = tuple(_mean_component(_named(readings, name)) for name in names)
     rest = sqrt(max(0.0, float(np.mean([(r.u or 0.0) ** 2 - combined(r.components) ** 2 for r in readings]))))
     flags = tuple(dict.fromkeys(flag for r in readings for flag in r.flags))
     if _scatters(values, readings):
         flags = (*flags, "the repeats scatter more than their noise explains")
     return replace(first, value=float(np.mean(values)), u=hypot(combined(parts), rest), components=parts, flags=flags)
+
+
+def _named(readings: Sequence[Reading], name: tuple[str, str | None]) -> list[Component]:
+    """Return one component of every repeat; a repeat that lacks it counts with nothing."""
+    found = [next((c for c in r.components if (c.name, c.shared) == name), None) for r in readings]
+    some = next(c for c in found if c is not None)
+    return [replace(some, u=0.0) if c is None else c for c in found]
 
 
 def _mean_component(parts: Sequence[Component]) -> Component:
