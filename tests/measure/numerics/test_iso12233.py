@@ -97,6 +97,22 @@ def test_stated_uncertainty_covers_its_own_noiseless_value() -> None:
     assert 0.85 <= np.sqrt(np.mean(z**2)) <= 1.15
 
 
+def test_crossings_uncertainty_is_first_order_in_little_noise() -> None:
+    """With little noise the crossing's u is that of the curve over its slope, within 10 %; with more it is greater."""
+    rng = np.random.default_rng(21)
+    shape = SCENE.signal().shape
+    for sigma, least, most in ((60.0, 0.95, 1.1), (1400.0, 1.02, 3.0)):
+        ratios = []
+        for _ in range(6):
+            one = estimate(SCENE.signal() + sigma * rng.standard_normal(shape))
+            crossing = one.mtf_crossing(0.5)
+            assert crossing is not None
+            slope = np.gradient(SCENE.mtf(one.frequency), one.frequency)
+            first_order = one.mtf_at(crossing[0])[1] / abs(np.interp(crossing[0], one.frequency, slope))
+            ratios.append(crossing[1] / first_order)
+        assert least < np.mean(ratios) < most
+
+
 def test_noise_may_be_told() -> None:
     """A noise told from outside replaces the estimate; twice the noise is twice the uncertainty."""
     one, two = (estimate(SCENE.signal(), noise=n) for n in (100.0, (200.0, 200.0)))
