@@ -186,9 +186,9 @@ def _transfer_claims(draft: Draft, found: Complaints) -> None:
         for other in claims:
             if not strong.bears_on(other) or other.frequency > strong.frequency:
                 continue
-            later = max(strong, other, key=lambda claim: claim.shape.at())
+            earlier, later = sorted((strong, other), key=lambda claim: claim.shape.at())
             if other.kind == FALLS and other.modulation < strong.modulation:
-                _contradiction(strong.limit, other.limit, later.shape, found)
+                _contradiction(earlier.limit, later.limit, later.shape, found)
             covered = set(other.limit.where) <= set(strong.limit.where) and other.limit.at_most is None
             if other.kind != FALLS and other.modulation <= strong.modulation and covered:
                 _idle(other.limit, strong.limit, later.shape, found)

@@ -39,6 +39,20 @@ captures:
 """
 """Draws no complaint and no warning."""
 
+FLAT = """\
+probatum-spec: 1
+document: {number: WS8-FLD, revision: A}
+unit: {product: WS8, serial: 'WS8-[0-9]{6}'}
+camera: {frame_size: 64 x 48 px, bit_depth: 12 bit, black_level: 64 DN, white_level: 4095 DN}
+captures:
+  flat:
+    target: flat field
+    frames: 'flat-{repeat}.npy'
+    regions: {middle: {position: [50 %, 50 %], size: [16 px, 16 px]}}
+    limits: [{characteristic: 1, quantity: level, where: middle, at_least: 20 %}]
+"""
+"""A spec of one evenly lit field of 64 x 48 px, for which small frames do."""
+
 
 def planted(old: str, new: str) -> tuple[str, str]:
     """Return the spec's text with one part replaced, and `line:col` of the mark in it.

@@ -10,7 +10,14 @@ from runner.resources import folder
 from runner.spec.schema import DIALECT, spec_schema
 from tests.scenes.spec_text import TEXT
 
-TYPES = {"object": dict, "array": list, "string": str, "boolean": bool, "number": (int, float), "integer": int}
+TYPES: dict[str, Any] = {
+    "object": dict,
+    "array": list,
+    "string": str,
+    "boolean": bool,
+    "number": (int, float),
+    "integer": int,
+}
 
 
 def _fits(node: Any, schema: Any, root: dict[str, Any]) -> bool:

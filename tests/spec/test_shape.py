@@ -70,7 +70,7 @@ def test_every_fault_is_told_and_the_rest_is_kept() -> None:
         "f:3:10 inner part lacks the key 'name'",
         "f:3:11 unknown key 'nme' in inner part",
         "f:3:23 the part is called wrong",
-        "f:3:47 '3' has no unit here",
+        "f:3:46 '3' has no unit here",
         "f:4:8 '7' stands where a mapping is meant",
     ]
     assert shape is not None
