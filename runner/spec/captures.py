@@ -2,6 +2,7 @@
 
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
+from decimal import Decimal
 
 from runner.errors import UsageError
 from runner.spec import units
@@ -197,7 +198,9 @@ def _ends(
         if shape.nominal is not None and shape.tolerance is not None:
             unit = shape.nominal.unit
             minus, plus = (_tolerance(part, unit, context) for part in shape.tolerance)
-            return unit, shape.nominal.value - minus, shape.nominal.value + plus, shape.nominal.value
+            nominal = Decimal(repr(shape.nominal.value))  # 0.30 - 0.02 is 0.28, as whoever wrote it reckons
+            lower, upper = nominal - Decimal(repr(minus)), nominal + Decimal(repr(plus))
+            return unit, float(lower), float(upper), shape.nominal.value
         stated = shape.at_least or shape.at_most
         if stated is None:
             return None

@@ -51,7 +51,10 @@ NATURAL = {
     "lsf_fwhm": Range(0, inf, "px"),
     "overshoot": Range(0, inf, "1"),
     "undershoot": Range(0, inf, "1"),
-    "edge_angle": Range(-90, 90, "deg"),
+    "edge_angle": Range(-45, 45, "deg"),  # from the nearest pixel axis
+    "edge_noise": Range(0, inf, "1"),
+    "lsf_asymmetry": Range(-1, 1, "1"),
+    "phase_transfer": Range(-180, 180, "deg"),
     "edge_modulation": Range(0, 1, "1"),
     "clipped": Range(0, 1, "1"),
 }

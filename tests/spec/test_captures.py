@@ -32,6 +32,10 @@ def test_a_nominal_value_with_tolerance(tmp_path: Path) -> None:
 
     assert (limit.at_least, limit.nominal, limit.unit) == (2.0, 3.0, "px")
     assert limit.at_most == pytest.approx(5.0, rel=1e-12)
+    limit = _limit(
+        tmp_path, "characteristic: 1, quantity: mtf50, where: centre, nominal: 0.30 cy/px, tolerance: 0.02 cy/px"
+    )
+    assert (limit.at_least, limit.at_most) == (0.28, 0.32)  # in decimals; 0.30 - 0.02 is not 0.28 in binary
 
 
 def test_a_limit_may_differ_from_the_decision(tmp_path: Path) -> None:

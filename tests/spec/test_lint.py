@@ -73,8 +73,8 @@ def test_a_lens_alone_has_no_pixel(tmp_path: Path) -> None:
 
 def test_natural_ranges(tmp_path: Path) -> None:
     """A limit outside what a quantity can have is refused; one at its end cannot fail."""
-    assert _told(tmp_path, "quantity: edge_angle, at_least: 91 deg") == [
-        "error: edge angle cannot lie above 90 deg: no value can conform"
+    assert _told(tmp_path, "quantity: edge_angle, at_least: 46 deg") == [
+        "error: edge angle cannot lie above 45 deg: no value can conform"
     ]
     assert _told(tmp_path, "quantity: edge_width, at_most: -1 px") == [
         "error: edge width cannot lie below 0 px: no value can conform"
