@@ -229,7 +229,17 @@ def _chart(u: float) -> tuple[Component, ...]:
 def _valued(edge: Edge, blank: Reading, found: Gradient, extra: tuple[Component, ...] = ()) -> Reading:
     components = (*_components(edge, found), *extra)
     u = sqrt(sum(part.u**2 for part in components))
-    return replace(blank, value=float(found.value), u=u, components=components, flags=found.flags)
+    return replace(blank, value=float(found.value), u=u, components=components, flags=(*found.flags, *_remarks(edge)))
+
+
+def _remarks(edge: Edge) -> tuple[str, ...]:
+    fit = edge.curves.fit
+    remarks = []
+    if fit.left_out:
+        remarks.append(f"defect pixels left out: {fit.left_out}")
+    if fit.excess > 1:
+        remarks.append(f"noise variance raised {fit.excess:.2g} times for correlation between pixels or misfit")
+    return tuple(remarks)
 
 
 def _components(edge: Edge, found: Gradient) -> tuple[Component, ...]:
@@ -239,7 +249,7 @@ def _components(edge: Edge, found: Gradient) -> tuple[Component, ...]:
     scatter = min(found.u(without_shading(fit.sampling, fit.linear.head)), whole)
     shape = sqrt(max(0.0, whole**2 - scatter**2))
     parts = [Component("noise", scatter, "A", fit.noise.dof, averages=True)]
-    if found.least_u > whole:  # from draws: which part is noise cannot be told, so none of it averages
+    if found.least_u > 1.001 * whole:  # from draws: which part is noise cannot be told, so none of it averages
         parts = [Component("noise", found.least_u, "A", fit.noise.dof)]
         shape = 0.0
     parts.append(Component("method bias", sqrt(shape**2 + _wave_loss(edge, found) ** 2), "B"))

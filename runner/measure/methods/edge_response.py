@@ -40,6 +40,8 @@ FROM = "from"
 MOST_CLIPPED = 0.001
 """Share of the region's pixels at the white level or the black end: hot and dead pixels stay below, a clipped plateau
 (+35 % in MTF50) does not."""
+MOST_CUT = 0.05
+"""Share of the region at its own highest code: noise of 1 DN or more leaves one in a hundred there."""
 DARKEST = 4.0
 """DN over black that the brightest per cent of the region must reach: below, rounding makes the picture."""
 
@@ -175,6 +177,7 @@ def refuse_exposure(sample: Sample) -> None:
                 allowed=f"at most {100 * MOST_CLIPPED:g} %",
                 next_step="give less light" if end == "white level" else "raise the black level",
             )
+    _refuse_cut_plateau(codes)
     bright = float(np.quantile(signal, 0.99))
     if bright * span < DARKEST:
         raise MeasurementRefused(
@@ -182,6 +185,21 @@ def refuse_exposure(sample: Sample) -> None:
             f"the brightest part of the region lies {bright * span:.1f} DN over black",
             allowed=f"at least {DARKEST:g} DN",
             next_step="give more light",
+        )
+
+
+def _refuse_cut_plateau(codes: Any) -> None:
+    """Refuse a bright level that is cut below the stated white level: one single code where the dark side has noise."""
+    top = codes.max()
+    share = float(np.mean(codes == top))
+    dark = codes[codes <= np.quantile(codes, 0.25)].astype(np.float64)
+    noise = 1.4826 * float(np.median(np.abs(dark - np.median(dark))))
+    if share > MOST_CUT and noise > 1:
+        raise MeasurementRefused(
+            "clipped",
+            f"{100 * share:.0f} % of the region's pixels have its highest code, {top}, while its dark side has noise",
+            allowed=f"at most {100 * MOST_CUT:g} %",
+            next_step="state the true white level, and give less light",
         )
 
 

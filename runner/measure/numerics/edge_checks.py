@@ -3,6 +3,7 @@
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from runner.errors import MeasurementRefused
 from runner.measure.numerics.edge_curves import Curves
@@ -33,8 +34,14 @@ LEAST_REACH = 1.2
 """Plateau must be seen out to this many 10-90 % widths from the edge (three sigma of a Gaussian)."""
 MOST_EXTRAPOLATED = 0.08
 """Share of the fitted step that may lie outside the levels seen; the widest tails reach 2 % in small regions."""
+MOST_UNEVEN = 0.01
+"""Rms of 8 × 8 px means beside the edge as a share of the step: 1 % left in costs about 1 % of MTF50."""
 MOST_SHADED = 0.01
-"""Relative change of MTF50 that a free shading would bring: more is uneven light, to be measured, not guessed."""
+"""Relative change of MTF50 that a free shading would bring, if light certainly changes along the edge: more is to be
+measured, not guessed."""
+MOST_SHADED_ACROSS = 0.03
+"""The same where light changes across the edge only: there a diffraction tail looks much alike, and up to this change
+u bears it."""
 
 
 @dataclass(frozen=True)
@@ -116,6 +123,7 @@ def check(curves: Curves, *, shading_known: bool) -> tuple[float, Straightness]:
     _check_levels(curves)
     _check_alone(curves)
     straight = straightness(fit)
+    _check_plateaus(curves)
     half = crossing(curves, 0.5, most)
     if half is not None:
         _check_shape(curves, half.value, half.u(fit.covariance), straight, shading_known=shading_known)
@@ -158,23 +166,57 @@ def _check_levels(curves: Curves) -> None:
         )
 
 
-def strange_share(fit: EdgeFit, rise: float) -> float:
+def strange_share(curves: Curves) -> float:
     """Return the share of 4 × 4 px squares, away from the edge, that lie off their plateau."""
-    rows, columns = (n // 4 * 4 for n in fit.pixels.shape)
-    residual = fit.linear.residual.reshape(fit.pixels.shape)[:rows, :columns]
-    squares = residual.reshape(rows // 4, 4, columns // 4, 4).mean(axis=(1, 3))
-    noise = float(np.sqrt(max(fit.noise.low, fit.noise.high))) / 4
-    return float(np.mean(np.abs(squares) > max(STRANGE * rise, CERTAIN * min(noise, 0.25 * rise))))
+    squares, seen = _squares(curves, 4)
+    noise = float(np.sqrt(max(curves.fit.noise.low, curves.fit.noise.high))) / 4
+    limit = max(STRANGE * curves.rise, CERTAIN * min(noise, 0.25 * curves.rise))
+    return float(np.mean((np.abs(squares) > limit) & seen))
+
+
+def unevenness(curves: Curves) -> tuple[float, bool]:
+    """Return the rms of 8 × 8 px means on the plateaus about the fit, noise taken off, and whether it is certain."""
+    squares, seen = _squares(curves, 8)
+    count = int(seen.sum())
+    if count < 4:
+        return 0.0, False
+    noise = (curves.fit.noise.low + curves.fit.noise.high) / 2 / 64
+    mean = float(np.mean(squares[seen] ** 2))
+    return float(np.sqrt(max(0.0, mean - noise))), mean > noise * (1 + CERTAIN * float(np.sqrt(2 / count)))
+
+
+def _squares(curves: Curves, side: int) -> tuple[Array, NDArray[np.bool_]]:
+    """Mean residuals in squares, and which of them lie on a plateau."""
+    fit = curves.fit
+    rows, columns = (n // side * side for n in fit.pixels.shape)
+
+    def means(values: Array) -> Array:
+        kept = values.reshape(fit.pixels.shape)[:rows, :columns]
+        return np.asarray(kept.reshape(rows // side, side, columns // side, side).mean(axis=(1, 3)))
+
+    away = edge_width(curves).value + side
+    return means(fit.linear.residual), np.abs(means(fit.parts.line.distance(fit.pixels.u, fit.pixels.v))) > away
 
 
 def _check_alone(curves: Curves) -> None:
-    share = strange_share(curves.fit, curves.rise)
+    share = strange_share(curves)
     if share > STRANGE_SHARE:
         raise MeasurementRefused(
             "two edges",
             f"{100 * share:.1f} % of the region lies more than {100 * STRANGE:g} % of the step off the fitted edge",
             allowed=f"at most {100 * STRANGE_SHARE:g} %",
             next_step="make the region smaller, or look for another edge, a corner or dirt in it",
+        )
+
+
+def _check_plateaus(curves: Curves) -> None:
+    rms, certain = unevenness(curves)
+    if certain and rms > MOST_UNEVEN * curves.rise:
+        raise MeasurementRefused(
+            "uneven",
+            f"the levels beside the edge vary by {100 * rms / curves.rise:.1f} % of the step (rms of 8 × 8 px means)",
+            allowed=f"at most {100 * MOST_UNEVEN:g} %",
+            next_step="set 'shading: {from: ROLE}' with a flat frame, or 'shading: fitted', or clean the chart",
         )
 
 
@@ -211,14 +253,15 @@ def shading_shows(fit: EdgeFit, deviations: float = 2.0) -> bool:
 
 
 def _check_even(curves: Curves, half: float) -> None:
-    (across, along), _ = curves.fit.shade_free
+    (across, along), u = curves.fit.shade_free
     found = crossing(curves, 0.5, 1.0)
     change = abs(shading_effect(curves, found.by)) / half if found is not None else 0.0
-    if shading_shows(curves.fit, CERTAIN) and change > MOST_SHADED:
+    limit = MOST_SHADED if abs(along) > CERTAIN * u[1] else MOST_SHADED_ACROSS
+    if shading_shows(curves.fit, CERTAIN) and change > limit:
         raise MeasurementRefused(
             "uneven",
             f"illumination changes by {100 * across:.1f} % across and {100 * along:.1f} % along the edge over half its "
             f"length, which may cost {100 * change:.1f} % of MTF50",
-            allowed=f"at most {100 * MOST_SHADED:g} %",
+            allowed=f"at most {100 * limit:g} %",
             next_step="set 'shading: {from: ROLE}' with a flat frame, or 'shading: fitted'",
         )

@@ -5,6 +5,7 @@ values are of the whole line spread: the edge spread runs from 0 to 1, the trans
 """
 
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 
@@ -49,6 +50,7 @@ class Curves:
         self.nodes = fit.lattice.nodes
         self.at_nodes = (fit.linear.model.value - fit.parts.low) / self.rise
         self.density_at_nodes = fit.linear.model.slope / self.rise
+        self.levels: dict[float, Gradient] = {}
 
     def full(self, by: Array) -> Array:
         """Turn a derivative to the shape into one to every fitted number."""
@@ -96,6 +98,7 @@ class Curves:
         unit = np.exp(-1j * np.angle(h))[:, None] * by
         return h, unit.real, unit.imag
 
+    @cached_property
     def draws(self) -> Array:
         """Return draws of the shape from the posterior, draws × parts; always the same ones for the same fit."""
         values, vectors = np.linalg.eigh(self.posterior)

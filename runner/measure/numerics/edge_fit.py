@@ -21,6 +21,7 @@ from runner.errors import MeasurementRefused
 from runner.measure.numerics import edge_model as em
 from runner.measure.numerics.edge_geometry import find_edge
 from runner.measure.numerics.edge_model import Linear, Noise, Parts, Pixels
+from runner.measure.numerics.edge_noise import correlation, defects, misfit, noise_of
 from runner.measure.numerics.line_spread import Array, Lattice, lattice_for
 
 PRIOR_SIZES = np.geomspace(0.1, 0.7, 8)
@@ -33,6 +34,8 @@ TAIL_SD = 0.2
 """Prior of the tail's area as a share of the step: a diffraction cutoff of 0.5 cy/px has 0.4, two deviations."""
 WIDENING_SD = 0.3
 """Prior of the Gaussian's relative change once kernels share its work."""
+SHIFT_SD = 0.5
+"""px; prior of the spread's place against the line of the plain fit."""
 SHADE_SD = 0.5
 """Prior of the relative shading over half the edge's length, when shading is fitted."""
 MODEL_FLOOR = 1e-3
@@ -55,7 +58,7 @@ class EdgeFit:
     sides: tuple[float, float]
     """The pixel's sides along the normal, px."""
     noise: Noise
-    """Variance of a pixel at either level, misfit included."""
+    """Variance of a pixel at either level."""
     covariance: Array
     """Posterior covariance: fixed columns, sliding columns, kernels."""
     sampling: Array
@@ -64,8 +67,10 @@ class EdgeFit:
     """The region."""
     linear: Linear
     """The last linearisation, about the fit itself."""
-    misfit: float
-    """Mean squared bin residual over its expectation; about 1."""
+    excess: float
+    """Factor by which misfit or correlation between pixels raised the noise variance."""
+    left_out: int
+    """Defect pixels that were left out."""
     unshaded: Array
     """What the shape (see `Parts.shape`) would become if shading were fitted, minus the fit; zeros when it is."""
     shade_free: tuple[Array, Array]
@@ -77,7 +82,9 @@ class EdgeFit:
     def shape_index(self) -> Array:
         """Places of the line spread's parts in the covariance."""
         head = self.linear.head
-        return np.concatenate([[em.STEP, em.WIDENING, em.TAIL], np.arange(head, self.covariance.shape[0])]).astype(int)
+        return np.concatenate(
+            [[em.STEP, em.WIDENING, em.SHIFT, em.TAIL], np.arange(head, self.covariance.shape[0])]
+        ).astype(int)
 
     def change(self, signal: Array) -> Array:
         """Return by how much every fitted number moves when the region's signal changes by this much."""
@@ -101,12 +108,14 @@ def fit_edge(
     """
     line, low, high = find_edge(signal)
     pixels = Pixels(signal, line)
-    start = Parts(line, low, high - low, 1.5, 0.0, 0.0, 1.0, np.zeros(0), np.zeros(2))
+    start = Parts(line, low, high - low, 1.5, 0.0, 0.0, 0.0, 1.0, np.zeros(0), np.zeros(2))
     reach = float(np.abs(line.distance(pixels.u, pixels.v)).max())
     plain = _plain_fit(pixels, start, reach, aperture)
     if order > 1:
         bent = np.concatenate([plain.line.coefficients, np.zeros(order - 1)])
         plain = replace(plain, line=replace(plain.line, coefficients=bent))
+        pixels.place(plain.line)
+        plain = _plain_fit(pixels, plain, reach, aperture)
     pixels.place(plain.line)
     return _joint_fit(pixels, plain, reach, aperture, noise_floor, shading=shading == "fitted")
 
@@ -117,10 +126,10 @@ def spread_width(sigma: float) -> float:
 
 
 def _plain_fit(pixels: Pixels, parts: Parts, reach: float, aperture: float) -> Parts:
-    """Place, levels, sigma, at last tail: unweighted Gauss-Newton on a straight edge."""
-    lattice = lattice_for(reach, 0.8)
-    parts = replace(parts, kernels=np.zeros(lattice.centres.size))
-    place = [em.FIXED, em.FIXED + 1]
+    """Place, levels, sigma, at last tail: unweighted Gauss-Newton."""
+    lattice = lattice_for(reach, 0.8).without_kernels()
+    order = parts.line.coefficients.size - 1
+    place = [em.FIXED + k for k in range(order + 1)]
     settled = False
     for turn in range(ROUNDS):
         linear = em.linearise(pixels, parts, lattice, parts.line.sides(aperture), None)
@@ -135,13 +144,14 @@ def _plain_fit(pixels: Pixels, parts: Parts, reach: float, aperture: float) -> P
         line = replace(parts.line, coefficients=parts.line.coefficients + slide)
         parts = replace(
             parts,
-            line=line.turned(),
+            line=line.turned() if order == 1 else line,
             low=parts.low + move[em.LEVEL],
             step=parts.step + move[em.STEP],
             sigma=max(LEAST_SIGMA, parts.sigma * float(np.exp(wider))),
             tail=parts.tail + move.get(em.TAIL, 0.0),
         )
-        if not 0 < parts.rise < 10 or parts.sigma > reach:
+        lost = abs(float(line.coefficients[0])) > reach or float(np.abs(line.coefficients[1:]).sum()) > reach
+        if lost or not 0 < parts.rise < 10 or parts.sigma > reach:
             raise MeasurementRefused("no edge", "no pair of levels with a step between them fits the region")
         pixels.place(parts.line)
         still = float(np.abs(slide).max()) < 0.01 and abs(wider) < 0.02
@@ -169,32 +179,36 @@ def _joint_fit(
     sizes = _kernel_sizes(lattice, spread_width(parts.sigma), scale)
     parts = replace(parts, kernels=np.zeros(lattice.centres.size), tail_width=max(1.0, spread_width(parts.sigma)))
     floor = max(noise_floor, MODEL_FLOOR * scale)
-    linear = em.linearise(pixels, parts, lattice, parts.line.sides(aperture), None)
-    noise = _noise(linear, floor, 1.0)
-    extra = 1.0
+    noise = noise_of(em.linearise(pixels, parts, lattice, parts.line.sides(aperture), None), floor)
+    excess, together, left_out = 1.0, 1.0, 0
     for turn in range(8):
-        sides = parts.line.sides(aperture)
-        linear = em.linearise(pixels, parts, lattice, sides, noise)
-        noise = _noise(linear, floor, extra)
+        linear = em.linearise(pixels, parts, lattice, parts.line.sides(aperture), noise.times(excess))
         solved = _solve(linear, parts, sizes, scale, shading=shading)
-        extra = max(1.0, extra * _misfit(linear, solved)) if turn > 1 else 1.0
         parts = _moved(parts, solved, linear, shading=shading)
         slide = solved.change[em.FIXED : linear.head - 1]
         if parts.line.coefficients.size == 2:
             parts = replace(parts, line=parts.line.turned())
         pixels.place(parts.line)
-        if turn > 2 and float(np.abs(slide).max()) < 1e-3:
-            break
+        if turn == 1:
+            left_out = _fill_defects(pixels, em.linearise(pixels, parts, lattice, parts.line.sides(aperture), noise))
+        if turn == 2:
+            together = correlation(linear, pixels.shape)
+        if turn > 1:
+            before, excess = excess, max(1.0, excess * misfit(linear, solved.freedom), together)
+            if float(np.abs(slide).max()) < 1e-3 and abs(excess / before - 1) < 0.05:
+                break
+        noise = noise_of(linear, floor)
     sides = parts.line.sides(aperture)
-    linear = em.linearise(pixels, parts, lattice, sides, noise)
+    linear = em.linearise(pixels, parts, lattice, sides, noise.times(excess))
     free = solved if shading else _solve(linear, parts, sizes, scale, shading=True)
     head = linear.head
     shade_at = [em.SHADE, head - 1]
     unshaded = np.zeros(parts.shape.size)
     if not shading:
-        unshaded = np.concatenate([free.change[[em.STEP, em.WIDENING, em.TAIL]], free.change[head:] - parts.kernels])
+        unshaded = np.concatenate(
+            [free.change[[em.STEP, em.WIDENING, em.SHIFT, em.TAIL]], free.change[head:] - parts.kernels]
+        )
     shade = (parts.shade if shading else free.change[shade_at], np.sqrt(np.diag(free.covariance)[shade_at]))
-    misfit = _misfit(linear, solved)
     return EdgeFit(
         parts,
         lattice,
@@ -204,11 +218,20 @@ def _joint_fit(
         solved.sampling,
         pixels,
         linear,
-        misfit,
+        excess,
+        left_out,
         unshaded,
         shade,
         shading,
     )
+
+
+def _fill_defects(pixels: Pixels, linear: Linear) -> int:
+    """Give defect pixels the fitted value, so that they neither pull the fit nor count as noise."""
+    found = defects(linear)
+    pixels.signal = pixels.signal.copy()
+    pixels.signal[found] -= linear.residual[found]
+    return int(found.size)
 
 
 def _kernel_sizes(lattice: Lattice, width: float, rise: float) -> Array:
@@ -216,28 +239,6 @@ def _kernel_sizes(lattice: Lattice, width: float, rise: float) -> Array:
     fall, power = PRIOR_REACH
     peak = rise / (width * np.sqrt(2 * np.pi))
     return np.asarray(peak * lattice.steps * (1 + (lattice.centres / (fall * width)) ** 2) ** -power)
-
-
-def _noise(linear: Linear, floor: float, extra: float) -> Noise:
-    """Scatter of pixels about their bin's mean, apart for dark and bright side; no model of the shape enters it."""
-    variances, freedom = [], 0.0
-    for side in (linear.spread < 0.3, linear.spread > 0.7):
-        dof = float(np.maximum(linear.counts[side] - 1, 0).sum())
-        variances.append(float(linear.within[side].sum()) / dof if dof >= 10 else np.nan)
-        freedom += dof
-    if not np.isfinite(variances).all():
-        raise MeasurementRefused("outside the estimator's limits", "too few pixels lie on one side of the edge")
-    low, high = (max(v, floor**2) * extra for v in variances)
-    return Noise(low, high, max(freedom, 1.0))
-
-
-def _misfit(linear: Linear, solved: _Solved) -> float:
-    """Mean squared residual of bins over its expectation after the fit."""
-    chi = float((linear.weights * linear.counts * linear.means**2).sum())
-    freedom = max(1.0, float(np.count_nonzero(linear.counts)) - solved.freedom)
-    ratio = chi / freedom
-    # chance alone lets it leave 1 by some sqrt(2 / freedom)
-    return ratio if abs(ratio - 1) > 3 * np.sqrt(2 / freedom) else 1.0
 
 
 def _solve(linear: Linear, parts: Parts, sizes: Array, scale: float, *, shading: bool) -> _Solved:
@@ -248,6 +249,8 @@ def _solve(linear: Linear, parts: Parts, sizes: Array, scale: float, *, shading:
     shade_sd = SHADE_SD if shading else 1e-9
     for at, now, sd in (
         (em.WIDENING, parts.widening, WIDENING_SD * scale),
+        (em.SHIFT, parts.shift, SHIFT_SD * scale),
+        (em.FIXED, 0.0, 1e-9),  # the line stays where it is, so that the shape is linear; the shift moves instead
         (em.TAIL, parts.tail, TAIL_SD * scale),
         (em.SHADE, parts.shade[0], shade_sd),
         (head - 1, parts.shade[1], shade_sd),
@@ -295,6 +298,7 @@ def _moved(parts: Parts, solved: _Solved, linear: Linear, *, shading: bool) -> P
         low=parts.low + change[em.LEVEL],
         step=parts.step + change[em.STEP],
         widening=parts.widening + change[em.WIDENING],
+        shift=parts.shift + change[em.SHIFT],
         tail=parts.tail + change[em.TAIL],
         kernels=change[head:],
         shade=shade,

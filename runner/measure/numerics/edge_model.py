@@ -1,8 +1,9 @@
 """The model of a slanted edge and one linearisation of it on all pixels of a region.
 
 Signal at a pixel = shading × (dark level + Σ area_k × spread_k(d)), d the pixel centre's distance along the normal. The
-parts k are: pixel ⊗ Gaussian, that Gaussian's widening, a 1/x² tail, and kernels. Sums over pixels are taken bin by bin
-along the normal, residuals are exact at every pixel: binning slows the convergence by a trifle and biases nothing.
+parts k are: pixel ⊗ Gaussian, its widening and its shift (derivatives), a 1/x² tail, and kernels. Sums over pixels are
+taken bin by bin along the normal, residuals are exact at every pixel: binning slows the convergence by a trifle and
+biases nothing.
 """
 
 from dataclasses import dataclass
@@ -24,9 +25,9 @@ from runner.measure.numerics.line_spread import (
 
 Complex = NDArray[np.complex128]
 
-LEVEL, STEP, WIDENING, TAIL, SHADE = range(5)
+LEVEL, STEP, WIDENING, SHIFT, TAIL, SHADE = range(6)
 """Columns that are functions of the distance alone, before the kernels."""
-FIXED = 5
+FIXED = 6
 """How many of them there are."""
 
 
@@ -44,6 +45,8 @@ class Parts:
     """Its Gaussian's standard deviation, px."""
     widening: float
     """Amount of its derivative to log sigma, fraction of range."""
+    shift: float
+    """Amount of its derivative along the normal, fraction of range times px: moves the spread against the line."""
     tail: float
     """Area of the tail part, fraction of range."""
     tail_width: float
@@ -60,8 +63,8 @@ class Parts:
 
     @property
     def shape(self) -> Array:
-        """Amounts of the line spread's parts: step, widening, tail, kernels."""
-        return np.concatenate([[self.step, self.widening, self.tail], self.kernels])
+        """Amounts of the line spread's parts: step, widening, shift, tail, kernels."""
+        return np.concatenate([[self.step, self.widening, self.shift, self.tail], self.kernels])
 
 
 @dataclass(frozen=True)
@@ -74,6 +77,10 @@ class Noise:
     """At the bright level."""
     dof: float
     """Degrees of freedom of both together."""
+
+    def times(self, factor: float) -> "Noise":
+        """Return the same with both variances multiplied."""
+        return Noise(self.low * factor, self.high * factor, self.dof)
 
     def at(self, spread: Array) -> Array:
         """Return the variance where the edge spread has these values, linear in level."""
@@ -103,7 +110,7 @@ class Model:
     slope: Array
     """Its derivative along the normal, 1/px."""
     columns: Array
-    """nodes × (level, step, widening, tail, shading along d, kernels)."""
+    """nodes × (level, step, widening, shift, tail, shading along d, kernels)."""
     sliding: tuple[tuple[Array, int], ...]
     """Columns that also vary along the edge: (profile, order of the polynomial); geometry, then shading along v."""
 
@@ -115,9 +122,9 @@ def model_of(parts: Parts, lattice: Lattice, sides: tuple[float, float]) -> Mode
     slope = densities @ parts.shape
     columns = np.empty((value.size, FIXED + lattice.centres.size))
     columns[:, LEVEL] = 1.0
-    columns[:, STEP : TAIL + 1] = spreads[:, :3]
+    columns[:, STEP : TAIL + 1] = spreads[:, :4]
     columns[:, SHADE] = lattice.nodes / parts.line.half * value
-    columns[:, FIXED:] = spreads[:, 3:]
+    columns[:, FIXED:] = spreads[:, 4:]
     sliding = [(-slope, j) for j in range(parts.line.coefficients.size)]
     return Model(value, slope, columns, (*sliding, (value, 1)))
 
@@ -125,7 +132,7 @@ def model_of(parts: Parts, lattice: Lattice, sides: tuple[float, float]) -> Mode
 def shape_columns(
     x: Array, parts: Parts, lattice: Lattice, sides: tuple[float, float], *, at_nodes: bool = False
 ) -> tuple[Array, Array]:
-    """Return edge spreads and line spreads of the parts (step, widening, tail, kernels), points × parts.
+    """Return edge spreads and line spreads of the parts (step, widening, shift, tail, kernels), points × parts.
 
     Args:
         x: Distances, px.
@@ -135,27 +142,26 @@ def shape_columns(
         at_nodes: `x` are the lattice's nodes, whose kernel values are kept.
     """
     sigma = parts.sigma
-    spread, density, bend = pixel_gauss(x, sigma, sides)
     # heat equation: the derivative of a Gaussian-blurred function to log sigma is sigma² times its second derivative
-    step = 0.02 * sigma
-    further = (pixel_gauss(x + step, sigma, sides)[2] - pixel_gauss(x - step, sigma, sides)[2]) / (2 * step)
+    spread, density, bend, further = pixel_gauss(x, sigma, sides)
     tail_spread, tail_density = tail(x, parts.tail_width)
     kernel_spreads, kernel_densities = (lattice.spreads, lattice.densities) if at_nodes else lattice.kernels(x)
-    first = np.column_stack([spread, sigma**2 * bend, tail_spread])
-    second = np.column_stack([density, sigma**2 * further, tail_density])
+    first = np.column_stack([spread, sigma**2 * bend, -density, tail_spread])
+    second = np.column_stack([density, sigma**2 * further, -bend, tail_density])
     return np.hstack([first, kernel_spreads]), np.hstack([second, kernel_densities])
 
 
 def shape_transfers(frequency: Array, parts: Parts, lattice: Lattice, sides: tuple[float, float]) -> Complex:
-    """Return the transforms of the parts (step, widening, tail, kernels), frequencies × parts."""
+    """Return the transforms of the parts (step, widening, shift, tail, kernels), frequencies × parts."""
     base = pixel_transfer(frequency, sides) * gauss_transfer(frequency, parts.sigma)
     widening = -base * (2 * np.pi * parts.sigma * frequency) ** 2
-    first = np.column_stack([base, widening, tail_transfer(frequency, parts.tail_width)])
-    return np.hstack([first.astype(np.complex128), lattice.transfer(frequency)])
+    shift = -2j * np.pi * frequency * base
+    first = np.column_stack([base, widening, shift, tail_transfer(frequency, parts.tail_width)])
+    return np.hstack([first, lattice.transfer(frequency)])
 
 
-AREAS = (1.0, 0.0, 1.0)
-"""Areas of step, widening and tail; each kernel's is 1."""
+AREAS = (1.0, 0.0, 0.0, 1.0)
+"""Areas of step, widening, shift and tail; each kernel's is 1."""
 
 
 @dataclass(frozen=True)
@@ -200,8 +206,8 @@ def linearise(
     if parts.shade.any():
         fitted *= 1 + parts.shade[0] * d / parts.line.half + parts.shade[1] * pixels.polynomials[1]
     residual = pixels.signal - fitted
-    index = np.asarray(np.rint(at), dtype=np.intp)
     size = lattice.nodes.size
+    index = np.clip(np.asarray(np.rint(at), dtype=np.intp), 0, size - 1)
     counts = np.bincount(index, minlength=size).astype(np.float64)
     sums = _summed(index, residual, size)
     squares = _summed(index, residual * residual, size)

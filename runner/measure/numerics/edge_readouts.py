@@ -31,6 +31,8 @@ def level(curves: Curves, share: float) -> Gradient:
     Raises:
         MeasurementRefused: `not defined`, it crosses nowhere.
     """
+    if share in curves.levels:
+        return curves.levels[share]
     e, nodes = curves.at_nodes, curves.nodes
     rising = np.flatnonzero((e[:-1] <= share) & (e[1:] > share))
     if not rising.size:
@@ -41,7 +43,8 @@ def level(curves: Curves, share: float) -> Gradient:
         value, _, slope, _ = curves.at(x)
         x += float(np.clip((share - value) / slope, -0.05, 0.05)) if slope > 0 else 0.0
     _, by, slope, _ = curves.at(x)
-    return Gradient(x, curves.full(-by / slope))
+    curves.levels[share] = Gradient(x, curves.full(-by / slope))
+    return curves.levels[share]
 
 
 def edge_width(curves: Curves) -> Gradient:
@@ -101,7 +104,7 @@ def beyond(curves: Curves, *, bright: bool) -> Gradient:
     # at its bound: the greatest of many noisy values, by draws
     columns = curves.fit.linear.model.columns[near]
     parts = np.hstack([columns[:, em.STEP : em.TAIL + 1], columns[:, em.FIXED :]])[::4]
-    drawn = curves.draws()
+    drawn = curves.draws
     spread = drawn @ parts.T / (drawn @ curves.areas)[:, None]
     most = 100 * np.maximum(0.0, (spread - 1 if bright else -spread).max(axis=1))
     u = float(np.sqrt(np.mean((most - 100 * value) ** 2)))
@@ -161,7 +164,7 @@ def _first_below(grid: Array, size: Array, modulation: float) -> float | None:
 def _drawn(curves: Curves, grid: Array, modulation: Array, value: float) -> float:
     """Standard uncertainty of a crossing from draws; draws without one count as the end of the band."""
     columns = em.shape_transfers(grid, curves.fit.parts, curves.fit.lattice, curves.fit.sides)
-    drawn = curves.draws()
+    drawn = curves.draws
     size = np.abs(drawn @ columns.T) / (drawn @ curves.areas)[:, None]
     below = size < modulation
     first = np.where(below.any(axis=1), grid[below.argmax(axis=1)], grid[-1])

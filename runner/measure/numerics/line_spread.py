@@ -11,7 +11,7 @@ References:
     finite slope at zero frequency, hence a line spread that falls as 1/x².
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import lru_cache
 
 import numpy as np
@@ -35,8 +35,8 @@ KERNEL_SIGMA = 0.7
 """Kernel sigma in units of its distance to the next: neighbours overlap smoothly, without ripple."""
 
 
-def pixel_gauss(x: Array, sigma: float, sides: tuple[float, float]) -> tuple[Array, Array, Array]:
-    """Return edge spread, line spread and its slope of a square pixel's aperture blurred by a Gaussian.
+def pixel_gauss(x: Array, sigma: float, sides: tuple[float, float]) -> tuple[Array, Array, Array, Array]:
+    """Return edge spread, line spread and its first two derivatives of a square pixel's aperture blurred by a Gaussian.
 
     Args:
         x: Distances along the normal, px.
@@ -44,7 +44,7 @@ def pixel_gauss(x: Array, sigma: float, sides: tuple[float, float]) -> tuple[Arr
         sides: The pixel's two sides as seen along the normal, px: a·cos t and a·sin t for side a and edge angle t.
 
     Returns:
-        (edge spread from 0 to 1, line spread in 1/px, its derivative in 1/px²).
+        (edge spread from 0 to 1, line spread in 1/px, its derivatives in 1/px² and 1/px³).
     """
     a, b = (max(side, _THINNEST) / 2 for side in sides)
     corners = np.array([a + b, a - b, b - a, -a - b]) / sigma
@@ -55,7 +55,7 @@ def pixel_gauss(x: Array, sigma: float, sides: tuple[float, float]) -> tuple[Arr
     # antiderivatives of the normal distribution, the second difference of which is the trapezoid's part
     once = z * phi + density
     twice = 0.5 * ((z * z + 1) * phi + z * density)
-    return sigma**2 * (twice @ signs), sigma * (once @ signs), phi @ signs
+    return sigma**2 * (twice @ signs), sigma * (once @ signs), phi @ signs, density @ signs / sigma
 
 
 def pixel_transfer(frequency: Array, sides: tuple[float, float]) -> Array:
@@ -119,6 +119,11 @@ class Lattice:
         """Return the kernels' transforms ∫ k(x) exp(-2πi f x) dx, frequencies × kernels."""
         f = frequency[:, None]
         return np.asarray(np.exp(-2 * (np.pi * self.sigmas[None, :] * f) ** 2 - 2j * np.pi * f * self.centres[None, :]))
+
+    def without_kernels(self) -> "Lattice":
+        """Return the same bins with no kernels, for a plain edge."""
+        none, no_columns = np.zeros(0), np.zeros((self.nodes.size, 0))
+        return replace(self, centres=none, sigmas=none, steps=none, spreads=no_columns, densities=no_columns)
 
     def kernels(self, x: Array) -> tuple[Array, Array]:
         """Return the kernels' edge spreads and line spreads at any x, points × kernels."""
