@@ -14,7 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from runner.measure.reading import Component
-from runner.measure.uncertainty import DRAWS, seed_of
+from runner.measure.uncertainty import Input, propagate
 
 Values = NDArray[np.float64]
 
@@ -70,11 +70,11 @@ def combine(
         return _worst(x[:n], at_least, at_most)
 
     plain = float(model(values[:, None])[0])
-    drawn = model(_draws(everyone))
-    u = float(drawn.std(ddof=1))
+    drawn = propagate(model, [_input(m) for m in everyone], label=kind)
+    u = drawn.u
     if kind not in {"range", "worst"}:
         return plain, u
-    excess = float(drawn.mean()) - plain
+    excess = drawn.mean - plain
     value = max(0.0, plain - excess) if kind == "range" else plain - excess
     return value, sqrt(u**2 + excess**2 / 3)
 
@@ -88,22 +88,13 @@ def _worst(x: Values, at_least: float | None, at_most: float | None) -> Values:
     return np.asarray(np.take_along_axis(x, farthest[None, :], axis=0)[0])
 
 
-def _draws(members: Sequence[Member]) -> Values:
-    rng = np.random.default_rng(seed_of([(m.region, m.value, m.u) for m in members]))
-    names = sorted({c.shared for m in members for c in m.components if c.shared})
-    common = {name: rng.standard_normal(DRAWS) for name in names}
-    rows = []
-    for m in members:
-        shared: dict[str, float] = {}
-        for c in m.components:
-            if c.shared:
-                shared[c.shared] = shared.get(c.shared, 0.0) + c.u
-        own = sqrt(max(0.0, m.u**2 - sum(u**2 for u in shared.values())))
-        row = m.value + own * rng.standard_normal(DRAWS)
-        for name, size in shared.items():
-            row += size * common[name]
-        rows.append(row)
-    return np.array(rows)
+def _input(member: Member) -> Input:
+    shared: dict[str, float] = {}
+    for c in member.components:
+        if c.shared:
+            shared[c.shared] = shared.get(c.shared, 0.0) + c.u
+    own = sqrt(max(0.0, member.u**2 - sum(u**2 for u in shared.values())))
+    return Input(member.value, own, shared)
 
 
 def combine_bounds(
