@@ -308,7 +308,7 @@ def _twice(files: Sequence[FileFacts], spec: Spec, sentences: _Collector, marks:
                 sentences.put(
                     (facts.serial, facts.attempt, capture),
                     f"{facts.file}{which}: the same pixels as {some(others)}; "
-                    "every frame must be captured anew: capture again what was copied",
+                    "every frame must be captured anew; capture again what was copied",
                 )
 
 

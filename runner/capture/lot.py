@@ -146,7 +146,7 @@ def _sort_entries(root: Path, spec: Spec) -> tuple[dict[str, Path], list[str], l
 def _unit(serial: str, folder: Path, spec: Spec, folders: Mapping[str, Path]) -> UnitFolder:
     """Return a unit with its attempts; `folders` are all units of the lot."""
     faults = [
-        f"the folders {serial} and {twin} differ only in case or spelling: which unit is it? keep one of them"
+        f"the folders {serial} and {twin} differ only in case or spelling; find out which unit it is and keep one of them"
         for twin in sorted(folders, key=natural)
         if twin != serial and fold(twin) == fold(serial)
     ]
@@ -155,13 +155,13 @@ def _unit(serial: str, folder: Path, spec: Spec, folders: Mapping[str, Path]) ->
         attempts = [(1, folder)]
     elif any(pattern.match(file) is not None for pattern in _patterns(spec).values() for file in loose):
         faults.append(
-            f"frames lie both in the folder of {serial} itself and in its attempt folders: "
+            f"frames lie both in the folder of {serial} itself and in its attempt folders; "
             "put each attempt's frames into a folder of its own"
         )
     numbers = [number for number, _ in attempts]
     for number in sorted({n for n in numbers if numbers.count(n) > 1}):
         names = " and ".join(path.name for n, path in attempts if n == number)
-        faults.append(f"the folders {names} both claim to be attempt {number}: number the attempts anew")
+        faults.append(f"the folders {names} both claim to be attempt {number}; number the attempts anew")
     gaps = [n for n in range(1, max(numbers)) if n not in numbers]
     remarks = [f"attempt {', '.join(map(str, gaps))} of {serial} is not there"] if gaps else []
     unused = [] if attempts == [(1, folder)] else loose + skipped

@@ -19,7 +19,7 @@ from dataclasses import dataclass
 from datetime import UTC, datetime
 from hashlib import sha256
 
-from asn1crypto import cms, core
+from asn1crypto import cms
 from asn1crypto import x509 as asn1_x509
 from cryptography import x509
 from cryptography.exceptions import InvalidSignature
@@ -29,6 +29,18 @@ from cryptography.hazmat.primitives.asymmetric.utils import decode_dss_signature
 from cryptography.hazmat.primitives.serialization import Encoding
 
 from runner.errors import VerificationRefused
+from runner.report.der import (
+    CONTEXT_0,
+    CONTEXT_1,
+    GENERALIZED_TIME,
+    OCTETS,
+    SEQUENCE,
+    SET,
+    UTC_TIME,
+    oid,
+    small,
+    tlv,
+)
 
 P256_ORDER = 0xFFFFFFFF00000000FFFFFFFFFFFFFFFFBCE6FAADA7179E84F3B9CAC2FC632551
 """Order n of the curve P-256 (NIST SP 800-186, 3.2.1.3)."""
@@ -178,37 +190,37 @@ def _build(
     attributes = _attributes(digest, certificate_der, time)
     signer = [
         _VERSION_1,
-        _tlv(_SEQUENCE, to_be_signed["issuer"].dump(), to_be_signed["serial_number"].dump()),
+        tlv(SEQUENCE, to_be_signed["issuer"].dump(), to_be_signed["serial_number"].dump()),
         _SHA_256,
-        _tlv(_CONTEXT_0, *attributes),
+        tlv(CONTEXT_0, *attributes),
         _ECDSA_WITH_SHA_256,
-        _tlv(_OCTETS, value),
+        tlv(OCTETS, value),
     ]
     if time_stamp is not None:
-        signer.append(_tlv(_CONTEXT_1, _attribute(_TIME_STAMP, time_stamp)))
-    data = _tlv(
-        _SEQUENCE,
+        signer.append(tlv(CONTEXT_1, _attribute(_TIME_STAMP, time_stamp)))
+    data = tlv(
+        SEQUENCE,
         _VERSION_1,
-        _tlv(_SET, _SHA_256),
-        _tlv(_SEQUENCE, _DATA),
-        _tlv(_CONTEXT_0, certificate_der),
-        _tlv(_SET, _tlv(_SEQUENCE, *signer)),
+        tlv(SET, _SHA_256),
+        tlv(SEQUENCE, _DATA),
+        tlv(CONTEXT_0, certificate_der),
+        tlv(SET, tlv(SEQUENCE, *signer)),
     )
-    return _tlv(_SEQUENCE, _SIGNED_DATA, _tlv(_CONTEXT_0, data))
+    return tlv(SEQUENCE, _SIGNED_DATA, tlv(CONTEXT_0, data))
 
 
 def _to_sign(digest: bytes, certificate: x509.Certificate, time: datetime | None) -> bytes:
     """Return the bytes under the signature value: the attributes as a plain set (RFC 5652, 5.4)."""
-    return _tlv(_SET, *_attributes(digest, certificate.public_bytes(Encoding.DER), time))
+    return tlv(SET, *_attributes(digest, certificate.public_bytes(Encoding.DER), time))
 
 
 def _attributes(digest: bytes, certificate_der: bytes, time: datetime | None) -> list[bytes]:
     # ESSCertIDv2 with its default algorithm, SHA-256, binds every byte of the certificate to the signature
-    bound = _tlv(_SEQUENCE, _tlv(_OCTETS, sha256(certificate_der).digest()))
+    bound = tlv(SEQUENCE, tlv(OCTETS, sha256(certificate_der).digest()))
     attributes = [
         _attribute(_CONTENT_TYPE, _DATA),
-        _attribute(_MESSAGE_DIGEST, _tlv(_OCTETS, digest)),
-        _attribute(_SIGNING_CERTIFICATE, _tlv(_SEQUENCE, _tlv(_SEQUENCE, bound))),
+        _attribute(_MESSAGE_DIGEST, tlv(OCTETS, digest)),
+        _attribute(_SIGNING_CERTIFICATE, tlv(SEQUENCE, tlv(SEQUENCE, bound))),
     ]
     if time is not None:
         attributes.append(_attribute(_SIGNING_TIME, _time(time)))
@@ -216,40 +228,24 @@ def _attributes(digest: bytes, certificate_der: bytes, time: datetime | None) ->
 
 
 def _attribute(kind: bytes, value: bytes) -> bytes:
-    return _tlv(_SEQUENCE, kind, _tlv(_SET, value))
+    return tlv(SEQUENCE, kind, tlv(SET, value))
 
 
 def _time(time: datetime) -> bytes:
     """Return a time as RFC 5652, 11.3 wants it: two-digit years until 2049."""
     moment = time.astimezone(UTC)
     if 1950 <= moment.year < 2050:
-        return _tlv(_UTC_TIME, moment.strftime("%y%m%d%H%M%SZ").encode())
-    return _tlv(_GENERALIZED_TIME, moment.strftime("%Y%m%d%H%M%SZ").encode())
+        return tlv(UTC_TIME, moment.strftime("%y%m%d%H%M%SZ").encode())
+    return tlv(GENERALIZED_TIME, moment.strftime("%Y%m%d%H%M%SZ").encode())
 
 
-def _tlv(tag: int, *parts: bytes) -> bytes:
-    """Return one DER value: tag, length, contents (X.690, 8.1 and 10.1)."""
-    contents = b"".join(parts)
-    size = len(contents)
-    if size < 0x80:
-        return bytes((tag, size)) + contents
-    octets = size.to_bytes((size.bit_length() + 7) // 8, "big")
-    return bytes((tag, 0x80 | len(octets))) + octets + contents
-
-
-def _oid(dotted: str) -> bytes:
-    encoded: bytes = core.ObjectIdentifier(dotted).dump()
-    return encoded
-
-
-_SEQUENCE, _SET, _OCTETS, _CONTEXT_0, _CONTEXT_1, _UTC_TIME, _GENERALIZED_TIME = 0x30, 0x31, 4, 0xA0, 0xA1, 23, 24
-_VERSION_1 = b"\x02\x01\x01"
-_DATA = _oid("1.2.840.113549.1.7.1")
-_SIGNED_DATA = _oid("1.2.840.113549.1.7.2")
-_CONTENT_TYPE = _oid("1.2.840.113549.1.9.3")
-_MESSAGE_DIGEST = _oid("1.2.840.113549.1.9.4")
-_SIGNING_TIME = _oid("1.2.840.113549.1.9.5")
-_TIME_STAMP = _oid("1.2.840.113549.1.9.16.2.14")
-_SIGNING_CERTIFICATE = _oid("1.2.840.113549.1.9.16.2.47")
-_SHA_256 = _tlv(_SEQUENCE, _oid("2.16.840.1.101.3.4.2.1"))
-_ECDSA_WITH_SHA_256 = _tlv(_SEQUENCE, _oid("1.2.840.10045.4.3.2"))
+_VERSION_1 = small(1)
+_DATA = oid("1.2.840.113549.1.7.1")
+_SIGNED_DATA = oid("1.2.840.113549.1.7.2")
+_CONTENT_TYPE = oid("1.2.840.113549.1.9.3")
+_MESSAGE_DIGEST = oid("1.2.840.113549.1.9.4")
+_SIGNING_TIME = oid("1.2.840.113549.1.9.5")
+_TIME_STAMP = oid("1.2.840.113549.1.9.16.2.14")
+_SIGNING_CERTIFICATE = oid("1.2.840.113549.1.9.16.2.47")
+_SHA_256 = tlv(SEQUENCE, oid("2.16.840.1.101.3.4.2.1"))
+_ECDSA_WITH_SHA_256 = tlv(SEQUENCE, oid("1.2.840.10045.4.3.2"))

@@ -126,6 +126,8 @@ def prepare(pdf: bytes, certificate: x509.Certificate, time: datetime, *, stampe
     from pyhanko.sign.fields import MDPPerm, SigFieldSpec, SigSeedSubFilter  # noqa: PLC0415
     from pyhanko.sign.signers import cms_embedder, pdf_byterange  # noqa: PLC0415
 
+    if b"/ByteRange" in pdf:
+        raise SigningError("the PDF was signed before")
     try:
         writer = _writer(pdf, time)
         embedder = cms_embedder.PdfCMSEmbedder(SigFieldSpec(FIELD, on_page=-1, readable_field_name=READABLE_FIELD))

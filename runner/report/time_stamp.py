@@ -5,6 +5,7 @@ server's own certificate, which the signature binds; reading accepts nothing els
 
 References:
     RFC 3161 (2001), Time-Stamp Protocol, doi:10.17487/RFC3161; RFC 5816 (2010), doi:10.17487/RFC5816.
+    RFC 5754 (2010), SHA-2 in Cryptographic Message Syntax, doi:10.17487/RFC5754.
 """
 
 import urllib.error
@@ -15,6 +16,7 @@ from hashlib import sha1, sha256
 from typing import Any
 
 from asn1crypto import cms, tsp
+from asn1crypto import x509 as asn1_x509
 from cryptography import x509
 from cryptography.exceptions import InvalidSignature
 from cryptography.hazmat.primitives import hashes
@@ -24,6 +26,7 @@ from cryptography.x509.oid import ExtendedKeyUsageOID
 
 from runner.errors import SigningError, VerificationRefused
 from runner.report.cms_form import refusing
+from runner.report.der import CONTEXT_0, NULL, OCTETS, SEQUENCE, SET, oid, small, tlv
 
 TIMEOUT_S = 15
 MAX_ANSWER = 1_000_000
@@ -34,6 +37,16 @@ HASHES: dict[str, type[hashes.HashAlgorithm]] = {
     "sha512": hashes.SHA512,
 }
 """Digests that a server may use; nothing weaker."""
+_SIGNED_DATA, _INFO = oid("1.2.840.113549.1.7.2"), oid("1.2.840.113549.1.9.16.1.4")
+_DIGESTS = {name: tlv(SEQUENCE, oid(f"2.16.840.1.101.3.4.2.{n}")) for n, name in enumerate(HASHES, 1)}
+_SIGNATURES = {
+    **{("ecdsa", name): tlv(SEQUENCE, oid(f"1.2.840.10045.4.3.{n}")) for n, name in enumerate(HASHES, 2)},
+    **{
+        ("rsassa_pkcs1v15", name): tlv(SEQUENCE, oid(f"1.2.840.113549.1.1.{n}"), NULL)
+        for n, name in enumerate(HASHES, 11)
+    },
+}
+"""Algorithms as RFC 5754 writes them (2, 3.2, 3.3)."""
 
 
 @dataclass(frozen=True)
@@ -93,51 +106,83 @@ def _post(url: str, query: bytes) -> bytes:
 
 
 def _cut_down(token: Any) -> bytes:
-    """Leave only the signer's own certificate in a token; the rest of that list is not signed."""
+    """Write a token anew with nothing in it but what is signed, and the certificate that the signature binds."""
     data = token["content"]
     (signer,) = data["signer_infos"]
-    mine = [c for c in data["certificates"] or () if _is_signer(c.chosen, signer["sid"])]
-    data["certificates"] = cms.CertificateSet(mine)
-    data["crls"] = None
-    signer["unsigned_attrs"] = None
-    cut: bytes = cms.ContentInfo({"content_type": "signed_data", "content": data}).dump(force=True)
-    return cut
+    (certificate,) = (c.chosen.dump() for c in data["certificates"] or () if _is_signer(c.chosen, signer["sid"]))
+    return _build(data, signer, certificate)
 
 
 def _is_signer(certificate: Any, sid: Any) -> bool:
-    if sid.name != "issuer_and_serial_number":
-        raise VerificationRefused("the time stamp names its signer in another way")
     stated = sid.chosen
     return bool(
-        certificate["tbs_certificate"]["serial_number"].native == stated["serial_number"].native
+        sid.name == "issuer_and_serial_number"
+        and certificate["tbs_certificate"]["serial_number"].native == stated["serial_number"].native
         and certificate.issuer.dump() == stated["issuer"].dump()
     )
 
 
+def _build(data: Any, signer: Any, certificate_der: bytes) -> bytes:
+    """Return a token in its one form: of two ways to write an algorithm, the one of RFC 5754."""
+    to_be_signed = asn1_x509.Certificate.load(certificate_der, strict=True)["tbs_certificate"]
+    digest = _DIGESTS[signer["digest_algorithm"]["algorithm"].native]
+    used = signer["signature_algorithm"]
+    signature = _SIGNATURES[used.signature_algo, _hash_of(signer)]
+    parts = tlv(
+        SEQUENCE,
+        small(1),
+        tlv(SEQUENCE, to_be_signed["issuer"].dump(), to_be_signed["serial_number"].dump()),
+        digest,
+        tlv(CONTEXT_0, signer["signed_attrs"].contents),
+        signature,
+        tlv(OCTETS, signer["signature"].native),
+    )
+    info = tlv(CONTEXT_0, tlv(OCTETS, _info_der(data)))
+    content = tlv(
+        SEQUENCE,
+        small(3),
+        tlv(SET, digest),
+        tlv(SEQUENCE, _INFO, info),
+        tlv(CONTEXT_0, certificate_der),
+        tlv(SET, parts),
+    )
+    return tlv(SEQUENCE, _SIGNED_DATA, tlv(CONTEXT_0, content))
+
+
+def _info_der(data: Any) -> bytes:
+    der: bytes = data["encap_content_info"]["content"].contents
+    return der
+
+
+def _hash_of(signer: Any) -> str:
+    """Return the digest under the signature value: RSA may leave it to the digest algorithm."""
+    used = signer["signature_algorithm"]
+    plain = used["algorithm"].native == "rsassa_pkcs1v15"
+    name: str = signer["digest_algorithm"]["algorithm"].native if plain else used.hash_algo
+    return name
+
+
 def _read(token: bytes, value: bytes) -> TimeStamp:
-    content = cms.ContentInfo.load(token, strict=True)
-    if content.copy().dump(force=True) != token:
-        raise VerificationRefused("the time stamp is not written in the one allowed way")
-    data = content["content"]
+    data = cms.ContentInfo.load(token, strict=True)["content"]
     (signer,) = data["signer_infos"]
     (choice,) = data["certificates"]
-    algorithm = signer["digest_algorithm"]["algorithm"].native
-    _check_unsigned_parts(content, data, signer, choice)
     certificate_der = choice.chosen.dump()
+    if _build(data, signer, certificate_der) != token:
+        raise VerificationRefused("the time stamp holds something that is not signed, or is written in another way")
     attributes = {a["type"].native: a["values"] for a in signer["signed_attrs"]}
     if len(attributes) != len(signer["signed_attrs"]):
         raise VerificationRefused("the time stamp states an attribute twice")
-    encapsulated = data["encap_content_info"]
-    info_der = bytes(encapsulated["content"].parsed.dump())
-    if attributes["content_type"][0].native != "tst_info" or encapsulated["content_type"].native != "tst_info":
+    if attributes["content_type"][0].native != "tst_info":
         raise VerificationRefused("the time stamp holds something else")
-    if attributes["message_digest"][0].native != _digest(algorithm, info_der):
+    if attributes["message_digest"][0].native != _digest(
+        signer["digest_algorithm"]["algorithm"].native, _info_der(data)
+    ):
         raise VerificationRefused("the time stamp was changed after signing")
     _check_binding(attributes, certificate_der)
     certificate = x509.load_der_x509_certificate(certificate_der)
-    _check_value(certificate, signer, algorithm)
+    _check_value(certificate, signer)
     _check_purpose(certificate)
-    info = encapsulated["content"].parsed
+    info = tsp.TSTInfo.load(_info_der(data), strict=True)
     imprint = info["message_imprint"]
     if imprint["hash_algorithm"]["algorithm"].native != "sha256" or (
         imprint["hashed_message"].native != sha256(value).digest()
@@ -145,24 +190,6 @@ def _read(token: bytes, value: bytes) -> TimeStamp:
         raise VerificationRefused("the time stamp is over another signature")
     time: datetime = info["gen_time"].native
     return TimeStamp(time, certificate)
-
-
-def _check_unsigned_parts(content: Any, data: Any, signer: Any, choice: Any) -> None:
-    (listed,) = data["digest_algorithms"]
-    plain = (
-        content["content_type"].native == "signed_data"
-        and data["version"].native == "v3"
-        and signer["version"].native == "v1"
-        and listed.dump() == signer["digest_algorithm"].dump()
-        and listed["parameters"].native is None
-        and signer["signature_algorithm"]["parameters"].native is None
-        and choice.name == "certificate"
-        and _is_signer(choice.chosen, signer["sid"])
-        and not len(data["crls"] or ())
-        and not len(signer["unsigned_attrs"] or ())
-    )
-    if not plain:
-        raise VerificationRefused("the time stamp holds something that is not signed")
 
 
 def _check_binding(attributes: dict[str, Any], certificate_der: bytes) -> None:
@@ -181,17 +208,17 @@ def _check_binding(attributes: dict[str, Any], certificate_der: bytes) -> None:
         raise VerificationRefused("the time stamp does not bind its server's certificate")
 
 
-def _check_value(certificate: x509.Certificate, signer: Any, algorithm: str) -> None:
+def _check_value(certificate: x509.Certificate, signer: Any) -> None:
     public, value = certificate.public_key(), signer["signature"].native
-    signed = signer["signed_attrs"].untag().dump()
-    used = signer["signature_algorithm"]
+    signed = tlv(SET, signer["signed_attrs"].contents)
+    kind, algorithm = signer["signature_algorithm"].signature_algo, HASHES[_hash_of(signer)]()
     try:
-        if isinstance(public, ec.EllipticCurvePublicKey) and used.signature_algo == "ecdsa":
+        if isinstance(public, ec.EllipticCurvePublicKey) and kind == "ecdsa":
             if encode_dss_signature(*decode_dss_signature(value)) != value:
                 raise VerificationRefused("the time stamp's value is not written in the one allowed way")
-            public.verify(value, signed, ec.ECDSA(HASHES[used.hash_algo]()))
-        elif isinstance(public, rsa.RSAPublicKey) and used.signature_algo == "rsassa_pkcs1v15":
-            public.verify(value, signed, padding.PKCS1v15(), HASHES[algorithm]())
+            public.verify(value, signed, ec.ECDSA(algorithm))
+        elif isinstance(public, rsa.RSAPublicKey) and kind == "rsassa_pkcs1v15":
+            public.verify(value, signed, padding.PKCS1v15(), algorithm)
         else:
             raise VerificationRefused("the time stamp is signed in a way that this program does not know")
     except InvalidSignature as error:

@@ -19,7 +19,9 @@ FREQUENCIES = (0.1, 0.25, 0.5)
 
 def camera_of(scene: EdgeScene) -> Camera:
     """Return the camera that a scene was rendered for."""
-    tone = Tone() if scene.tone == "linear" else Tone("srgb") if scene.tone == "srgb" else Tone("gamma", float(scene.tone))
+    tone = (
+        Tone() if scene.tone == "linear" else Tone("srgb") if scene.tone == "srgb" else Tone("gamma", float(scene.tone))
+    )
     width, height = scene.size
     return Camera(width, height, scene.bits, scene.black, scene.white, fill=scene.fill, tone=tone)
 
@@ -32,9 +34,7 @@ def cropped(codes: NDArray[Any], camera: Camera) -> Crop:
 
 def at(quantity: str, frequency: float, estimator: str | None = None) -> Wanted:
     """Return a wish for a quantity at a frequency, cy/px."""
-    return Wanted(
-        quantity, {"frequency": Amount(frequency, "cy/px")}, {"frequency": frequency}, estimator=estimator
-    )
+    return Wanted(quantity, {"frequency": Amount(frequency, "cy/px")}, {"frequency": frequency}, estimator=estimator)
 
 
 def wishes(estimator: str | None = None) -> tuple[Wanted, ...]:

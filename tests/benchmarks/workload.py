@@ -1,0 +1,61 @@
+"""What the benchmarks measure on: one large frame with many slanted edges, and a spec that asks for all of them."""
+
+from pathlib import Path
+
+import numpy as np
+import tifffile
+
+from tests.scenes.edges import EdgeScene
+from tests.scenes.line_spreads import Gaussian
+
+WIDTH, HEIGHT = 4000, 3000
+COLUMNS, ROWS = 5, 5
+REGION = (100, 160)
+
+
+def centres() -> list[tuple[int, int]]:
+    """Return the centres of the 25 regions, px."""
+    return [
+        (WIDTH * (2 * i + 1) // (2 * COLUMNS), HEIGHT * (2 * j + 1) // (2 * ROWS))
+        for j in range(ROWS)
+        for i in range(COLUMNS)
+    ]
+
+
+def frame(seed: int = 1) -> np.ndarray:
+    """Return a 12 MP 16-bit frame: noise around mid level with a slanted edge at each centre."""
+    rng = np.random.default_rng(seed)
+    codes = np.round(rng.normal(20000, 150, (HEIGHT, WIDTH))).astype(np.uint16)
+    w, h = REGION[0] + 60, REGION[1] + 60
+    for n, (x, y) in enumerate(centres()):
+        scene = EdgeScene(Gaussian(0.5 + 0.01 * n), size=(w, h), direction=4 + 0.2 * n, read_noise=150)
+        codes[y - h // 2 : y - h // 2 + h, x - w // 2 : x - w // 2 + w] = scene.render(rng)
+    return codes
+
+
+SPEC = """\
+probatum-spec: 1
+document: {number: BENCH, revision: A, title: "Benchmark"}
+unit: {product: BENCH, serial: 'B-[0-9]{4}'}
+camera: {frame_size: 4000 x 3000 px, bit_depth: 16 bit, black_level: 0 DN, white_level: 65535 DN}
+captures:
+  chart:
+    target: slanted edge
+    frames: {names: 'chart-{repeat}.tif', count: 1}
+    regions:
+      edges:
+        grid: {columns: 5, rows: 5, from: [10 %, 10 %], to: [90 %, 90 %]}
+        size: [100 px, 160 px]
+    limits:
+      - {characteristic: 1, quantity: mtf50, where: edges, at_least: 0.15 cy/px}
+      - {characteristic: 2, quantity: mtf, frequency: 0.25 cy/px, where: edges, at_least: 0.2}
+"""
+
+
+def lay_out(folder: Path) -> tuple[Path, Path]:
+    """Write spec and one unit's frame; return their paths."""
+    spec, unit = folder / "bench.yaml", folder / "frames" / "B-0001"
+    unit.mkdir(parents=True)
+    spec.write_text(SPEC)
+    tifffile.imwrite(unit / "chart-1.tif", frame())
+    return spec, unit / "chart-1.tif"
