@@ -1,0 +1,136 @@
+"""The report on paper: PDF/A-3u with the results and pictures attached, the same bytes for the same results."""
+
+import logging
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
+from datetime import datetime
+from hashlib import sha256
+from io import BytesIO
+from typing import Any
+
+from runner.errors import UsageError
+from runner.report.page import paper_page
+from runner.resources import folder
+
+_FONTS = ("DejaVuSans.ttf", "DejaVuSans-Bold.ttf", "DejaVuSansMono.ttf")
+
+
+def render_pdf(document: Mapping[str, Any], pictures: Mapping[str, bytes], results_bytes: bytes) -> bytes:
+    """Return a unit's report as PDF/A-3u, unsigned.
+
+    Attached are exactly `results.json` (relationship Data) and the listed pictures (Supplement). Dates are the
+    verdict's, the identifier is the digest of the results, fonts travel with the program, and nothing is fetched.
+
+    Args:
+        document: The results.
+        pictures: PNG by name.
+        results_bytes: `results.json` as written.
+
+    Raises:
+        UsageError: A character has no glyph in the fonts, or the system has no font at all.
+    """
+    from weasyprint import HTML  # noqa: PLC0415 - heavy
+    from weasyprint.text.fonts import FontConfiguration  # noqa: PLC0415
+
+    _need_a_system_font()
+    moment = datetime.fromisoformat(str(document["time"]))
+    files = {f"report:/fonts/{name}": ("font/ttf", _font(name)) for name in _FONTS}
+    files |= {f"report:/pictures/{name}": ("image/png", data) for name, data in pictures.items()}
+    with _no_missing_glyph():
+        page = HTML(string=paper_page(document, pictures), base_url="report:/", url_fetcher=_closed(files))
+        written = page.write_pdf(
+            font_config=FontConfiguration(),
+            pdf_variant="pdf/a-3u",
+            pdf_tags=True,
+            attachments=list(_attachments(document, pictures, results_bytes, moment)),
+            pdf_identifier=sha256(results_bytes).digest()[:16],
+        )
+    return bytes(written)
+
+
+def _attachments(
+    document: Mapping[str, Any], pictures: Mapping[str, bytes], results: bytes, moment: datetime
+) -> Iterator[Any]:
+    from weasyprint import Attachment  # noqa: PLC0415 - heavy
+
+    rows = [("results.json", results, "Results of the test, from which this page was made", "Data")]
+    rows += [
+        (p["name"], pictures[p["name"]], "Picture shown in this report", "Supplement") for p in document["pictures"]
+    ]
+    for name, data, words, relationship in rows:
+        yield Attachment(
+            file_obj=BytesIO(data),
+            name=name,
+            description=words,
+            created=moment,
+            modified=moment,
+            relationship=relationship,
+            base_url="report:/attached",
+        )
+
+
+def _closed(files: Mapping[str, tuple[str, bytes]]) -> Any:
+    """Return a fetcher that knows these files and nothing else: no disk, no network."""
+    from weasyprint.urls import FatalURLFetchingError, URLFetcher, URLFetcherResponse  # noqa: PLC0415 - heavy
+
+    class Closed(URLFetcher):  # type: ignore[misc]  # the library publishes no types
+        def __init__(self) -> None:
+            super().__init__(allowed_protocols=["report"])
+
+        def fetch(self, url: str, headers: Any = None) -> Any:  # noqa: ARG002 - the library's form
+            if url not in files:
+                msg = f"the report asks for {url[:80]!r}, which is none of its files"
+                raise FatalURLFetchingError(msg)
+            kind, data = files[url]
+            return URLFetcherResponse(url, data, {"Content-Type": kind})
+
+    return Closed()
+
+
+def _font(name: str) -> bytes:
+    return (folder("templates") / "fonts" / name).read_bytes()
+
+
+@contextmanager
+def _no_missing_glyph() -> Iterator[None]:
+    """Turn the renderer's warnings about missing glyphs into an error that names the characters."""
+    found: list[str] = []
+
+    class Listen(logging.Handler):
+        def emit(self, record: logging.LogRecord) -> None:
+            text = record.getMessage()
+            if ".notdef" in text:
+                found.append(text)
+
+    logger, listen = logging.getLogger("weasyprint"), Listen(logging.WARNING)
+    kept = logger.handlers[:], logger.propagate
+    logger.handlers, logger.propagate = [listen], False
+    try:
+        yield
+    finally:
+        logger.handlers, logger.propagate = kept
+    if found:
+        raise UsageError(
+            f"the report's fonts lack a character: {found[0]}",
+            allowed="Latin, Greek, Cyrillic, Arabic, Hebrew and mathematical characters",
+            next_step="write the name or text in the spec with other characters",
+        )
+
+
+def _need_a_system_font() -> None:
+    """Refuse to start where the text engine would crash: it needs one system font even if it never uses it."""
+    import cffi  # noqa: PLC0415 - comes with the renderer
+
+    ffi = cffi.FFI()
+    ffi.cdef(
+        "typedef struct { int nfont; int sfont; void *fonts; } FcFontSet; FcFontSet *FcConfigGetFonts(void *, int);"
+    )
+    ffi.cdef("int FcInit(void);")
+    try:
+        library = ffi.dlopen("libfontconfig.so.1")
+    except OSError:
+        return  # another system: its own text engine brings its fonts
+    library.FcInit()
+    fonts = library.FcConfigGetFonts(ffi.NULL, 0)
+    if fonts == ffi.NULL or fonts.nfont == 0:
+        raise UsageError("the system has no font at all", next_step="install one, e.g. the package fonts-dejavu-core")

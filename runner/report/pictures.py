@@ -1,0 +1,92 @@
+"""Overview pictures: a frame in full tone with the regions as found, numbered like the page's tables."""
+
+import io
+from collections.abc import Mapping, Sequence
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from runner.capture.frame import Codes, linearise
+from runner.resources import folder
+from runner.spec.model import Camera
+
+if TYPE_CHECKING:
+    from PIL import Image, ImageDraw
+
+WIDEST = 1000
+"""px: enough to see where a region lies; values stand in the table, never in the picture."""
+GREYS = 64
+"""Steps of grey kept, so that sensor noise does not fill the file."""
+OUTLINE, SHADOW = (255, 196, 0), (20, 20, 20)
+_DISPLAY_GAMMA = 2.2
+
+
+def overview(codes: Codes, camera: Camera, regions: Sequence[Mapping[str, Any]]) -> bytes:
+    """Return a PNG of a frame with thin region outlines and numbered balloons; same input, same bytes.
+
+    Tone: light from black to white level, shown through a gamma of 2.2, not stretched; larger frames are averaged over
+    whole blocks of pixels.
+
+    Args:
+        codes: Rows × columns, DN.
+        camera: Levels and tone.
+        regions: `region`, `found`, `box` (x0, y0, x1, y1 in px, or None), `outline` ((x, y) px).
+    """
+    from PIL import Image, ImageDraw  # noqa: PLC0415 - heavy
+
+    block = max(1, -(-codes.shape[1] // WIDEST))
+    rows, columns = codes.shape[0] // block * block, codes.shape[1] // block * block
+    small = codes[:rows, :columns].reshape(rows // block, block, columns // block, block).mean(axis=(1, 3))
+    light = np.clip(linearise(small, camera), 0, 1) ** (1 / _DISPLAY_GAMMA)
+    grey = (np.round(light * (GREYS - 1)) * (255 / (GREYS - 1))).astype(np.uint8)
+    picture = Image.fromarray(grey).convert("RGB")
+    draw = ImageDraw.Draw(picture)
+    for number, region in enumerate(regions, 1):
+        _draw_region(draw, region, number, 1 / block)
+    return _png(picture)
+
+
+def _draw_region(draw: "ImageDraw.ImageDraw", region: Mapping[str, Any], number: int, scale: float) -> None:
+    if region["box"] is None:
+        return
+    x0, y0, x1, y1 = (v * scale for v in region["box"])
+    corners = [(x0, y0), (x1, y0), (x1, y1), (x0, y1), (x0, y0)]
+    for colour, width in ((SHADOW, 4), (OUTLINE, 2)):
+        if region["found"]:
+            draw.line(corners, fill=colour, width=width)
+        else:
+            _dashed(draw, corners, colour, width)
+    if len(region["outline"]) == 2:
+        ends = [(x * scale, y * scale) for x, y in region["outline"]]
+        draw.line(ends, fill=SHADOW, width=3)
+        draw.line(ends, fill=OUTLINE, width=1)
+    _balloon(draw, x1 + 16, max(16.0, y0), number)
+
+
+def _dashed(
+    draw: "ImageDraw.ImageDraw", corners: Sequence[tuple[float, float]], colour: tuple[int, int, int], width: int
+) -> None:
+    for (ax, ay), (bx, by) in zip(corners[:-1], corners[1:], strict=True):
+        length = max(abs(bx - ax), abs(by - ay), 1.0)
+        for start in np.arange(0.0, length, 12.0):
+            a, b = start / length, min(1.0, (start + 7.0) / length)
+            ends = [(ax + a * (bx - ax), ay + a * (by - ay)), (ax + b * (bx - ax), ay + b * (by - ay))]
+            draw.line(ends, fill=colour, width=width)
+
+
+def _balloon(draw: "ImageDraw.ImageDraw", x: float, y: float, number: int) -> None:
+    from PIL import ImageFont  # noqa: PLC0415 - heavy
+
+    font = ImageFont.truetype(str(folder("templates") / "fonts" / "DejaVuSans-Bold.ttf"), 16)
+    draw.ellipse((x - 14, y - 14, x + 14, y + 14), fill=SHADOW)
+    draw.ellipse((x - 12, y - 12, x + 12, y + 12), fill=OUTLINE)
+    draw.text((x, y), str(number), fill=SHADOW, font=font, anchor="mm")
+
+
+def _png(picture: "Image.Image") -> bytes:
+    from PIL import Image  # noqa: PLC0415 - heavy
+
+    small = picture.quantize(160, method=Image.Quantize.MEDIANCUT, dither=Image.Dither.NONE)
+    out = io.BytesIO()
+    small.save(out, "PNG", optimize=False, compress_level=6)
+    return out.getvalue()
