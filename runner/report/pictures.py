@@ -2,6 +2,7 @@
 
 import io
 from collections.abc import Mapping, Sequence
+from itertools import pairwise
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -66,7 +67,7 @@ def _draw_region(draw: "ImageDraw.ImageDraw", region: Mapping[str, Any], number:
 def _dashed(
     draw: "ImageDraw.ImageDraw", corners: Sequence[tuple[float, float]], colour: tuple[int, int, int], width: int
 ) -> None:
-    for (ax, ay), (bx, by) in zip(corners[:-1], corners[1:], strict=True):
+    for (ax, ay), (bx, by) in pairwise(corners):
         length = max(abs(bx - ax), abs(by - ay), 1.0)
         for start in np.arange(0.0, length, 12.0):
             a, b = start / length, min(1.0, (start + 7.0) / length)
