@@ -91,7 +91,7 @@ def transfer_picture(curve: Mapping[str, Any], checks: Sequence[Mapping[str, Any
     if us:
         upper = [frame.at(x, min(top, y + 2 * u)) for x, y, u in zip(xs, ys, us, strict=True)]
         lower = [frame.at(x, max(0.0, y - 2 * u)) for x, y, u in zip(xs, ys, us, strict=True)]
-        parts.append(f'<path d="{_path([*upper, *reversed(lower)])} Z" fill="{BAND}" class="band"/>')
+        parts.append(f'<path d="{_path([*upper, *reversed(lower)])} Z" fill="{BAND}" class="band-area"/>')
     parts.append(
         f'<path d="{_path([frame.at(*p) for p in zip(xs, ys, strict=True)])}" {_stroke(LINE, 1.6)} class="curve"/>'
     )

@@ -12,18 +12,28 @@ from runner.judge.lot import margin
 from runner.judge.sentences import decimals, show
 from runner.judge.verdict import CONFORMS, NOT_MEASURED, REPORT_ONLY
 from runner.report import drawing
+from runner.report.circumstance_facts import (
+    MOST_ROWS,
+    Document,
+    Pair,
+    capture_fact,
+    capture_title,
+    deviations_fact,
+    first_attempts,
+    frame_fact,
+    machine_fact,
+    methods_fact,
+    sentence,
+    station_fact,
+    uncertainty_fact,
+)
 from runner.report.document import canonical
 from runner.report.evidence_facts import CurveFact, PictureFact, curve_facts, picture_facts
 
-MOST_ROWS = 60
-"""Rows of the results table on paper; beyond, rows that conform are counted and results.json holds them."""
 WORST = 3
 """Margins drawn on page one."""
 PROBABLE = 0.9995
 """From here on a probability prints as `> 99.9 %`."""
-
-Document = Mapping[str, Any]
-Pair = tuple[str, str]
 
 
 @dataclass(frozen=True)
@@ -174,9 +184,9 @@ def report_facts(document: Document) -> Report:
         simulated=_simulated(document),
         verdict=verdict_fact(document["verdict"], 96),
         fault=_fault(document["at_fault"]),
-        because=_sentence(document["because"]),
+        because=sentence(document["because"]),
         next=document["next"],
-        reasons=tuple(_sentence(r) for r in document["reasons"][:4]),
+        reasons=tuple(sentence(r) for r in document["reasons"][:4]),
         more_reasons=_more(len(document["reasons"]) - 4),
         margins=_margins(checks),
         who=_who(document, digest),
@@ -188,15 +198,15 @@ def report_facts(document: Document) -> Report:
         pictures=picture_facts(document),
         curves=curve_facts(document),
         conditions=tuple(
-            TableFact(_capture_title(c), tuple((a, b) for a, b in c["conditions"])) for c in _first_attempts(document)
+            TableFact(capture_title(c), tuple((a, b) for a, b in c["conditions"])) for c in first_attempts(document)
         ),
-        station=_station(document),
-        captures=tuple(_capture(c) for c in document["captures"]),
-        frames=tuple(_frame(c, f) for c in document["captures"] for f in c["frames"]),
-        methods=_methods(document),
-        uncertainty=_uncertainty(document),
-        deviations=_deviations(document),
-        machine=_machine(document["program"]),
+        station=station_fact(document),
+        captures=tuple(capture_fact(c) for c in document["captures"]),
+        frames=tuple(frame_fact(c, f) for c in document["captures"] for f in c["frames"]),
+        methods=methods_fact(document),
+        uncertainty=uncertainty_fact(document),
+        deviations=deviations_fact(document),
+        machine=machine_fact(document["program"]),
     )
 
 
@@ -219,8 +229,8 @@ def check_fact(check: Mapping[str, Any]) -> CheckFact:
         probability=probability_text(check["probability"]),
         rule=f"{check['rule']}, {100 * check['conformance_probability']:g} %",
         verdict=verdict_fact(check["verdict"]),
-        reason=_sentence(check["reason"]),
-        because=f"{at_fault} {_sentence(check['because'] or '')}".strip(),
+        reason=sentence(check["reason"]),
+        because=f"{at_fault} {sentence(check['because'] or '')}".strip(),
     )
 
 
@@ -292,11 +302,6 @@ def _fault(word: str | None) -> str:
     }.get(word, f"At fault: {word}.")
 
 
-def _sentence(text: str) -> str:
-    plain = text.strip()
-    return plain if not plain or plain[-1] in ".!?" else f"{plain}."
-
-
 def _more(number: int) -> str:
     return f"{number} more of this kind stand in the results below." if number > 0 else ""
 
@@ -348,93 +353,21 @@ def _conformity(document: Document) -> tuple[str, ...]:
     ]
     rules = dict.fromkeys((c["rule"], c["conformance_probability"]) for c in judged)
     named = "; ".join(f"{rule} at a conformance probability of {100 * p:g} %" for rule, p in rules)
-    return (
+    statement = (
         f"Unit {document['unit']['serial']}, judged by test spec {asked['number']} revision {asked['revision']}: "
-        f"{document['verdict']}. Of {len(judged)} checks: {', '.join(counts) or 'none'}.",
+        f"{document['verdict']}. Of {len(judged)} checks: {', '.join(counts) or 'none'}."
+    )
+    rule = (
         f"Decision rule: {named or 'none applied'}. The probability is that of the true value lying inside the limits, "
-        "given the value and its uncertainty (JCGM 106:2012, clause 7); the acceptance limit is the limit after the guard band.",
+        "given the value and its uncertainty (JCGM 106:2012, clause 7); the acceptance limit is the limit after the "
+        "guard band."
+    )
+    return (
+        statement,
+        rule,
         "Values are judged unrounded. U is the expanded uncertainty, k = 2, a coverage of about 95 %.",
         "The statement relates only to the unit tested, as captured in the frames listed below.",
     )
-
-
-def _first_attempts(document: Document) -> list[Mapping[str, Any]]:
-    seen: dict[str, Mapping[str, Any]] = {}
-    for capture in document["captures"]:
-        seen.setdefault(capture["name"], capture)
-    return list(seen.values())
-
-
-def _capture_title(capture: Mapping[str, Any]) -> str:
-    return f"{capture['name']} ({capture['target']})"
-
-
-def _station(document: Document) -> tuple[Pair, ...]:
-    station = document["station"]
-    rows = [(k.replace("_", " "), str(v)) for k, v in station.items() if isinstance(v, str) and v]
-    for one in station.get("instruments", ()):
-        words = [f"{k} {v}" for k, v in one.items() if k != "name"]
-        rows.append((str(one.get("name", "instrument")), ", ".join(words)))
-    return tuple(rows)
-
-
-def _capture(capture: Mapping[str, Any]) -> tuple[str, str, str, str]:
-    state = "usable" if capture["usable"] else "not usable"
-    remarks = [*capture["faults"], *([capture["because"]] if capture["because"] else [])]
-    return capture["name"], str(capture["attempt"]), state, " ".join(_sentence(r) for r in remarks) or "–"
-
-
-def _frame(capture: Mapping[str, Any], frame: Mapping[str, Any]) -> tuple[str, str, str]:
-    page = "" if frame["page"] is None else f", page {frame['page']}"
-    attempt = "" if capture["attempt"] == 1 else f"attempt {capture['attempt']}: "
-    rows, columns = frame["shape"][:2]
-    size = f"{columns} × {rows} {frame['dtype']}" + (", simulated" if frame["simulated"] else "")
-    return f"{attempt}{frame['file']}{page}", size, frame["sha256"].removeprefix("sha256:")
-
-
-def _methods(document: Document) -> tuple[tuple[str, str, str], ...]:
-    rows: dict[tuple[str, str], tuple[str, str, str]] = {}
-    for method in document["methods"]:
-        options = ", ".join(f"{k.replace('_', ' ')}: {_plain(v)}" for k, v in method["options"].items())
-        row = (method["title"], options or "no options", "; ".join(method["references"]))
-        rows.setdefault((method["name"], options), row)
-    return tuple(rows.values())
-
-
-def _plain(value: Any) -> str:
-    if isinstance(value, Mapping):
-        return ", ".join(f"{k} {v}" for k, v in value.items())
-    return f"{value:g}" if isinstance(value, float) else str(value)
-
-
-def _uncertainty(document: Document) -> tuple[tuple[str, str, str], ...]:
-    """Return the components of the readings that checks use."""
-    used = {(c["capture"], c["quantity"], repr(c["parameters"]), c["part"]) for c in document["checks"]}
-    rows = []
-    for reading in document["readings"]:
-        key = (reading["capture"], reading["quantity"], repr(reading["parameters"]), reading["part"])
-        if key in used and reading["u"]:
-            parts = [f"{c['name']} {c['u']:.2g} ({c['type']})" for c in reading["components"] if c["u"] > 0]
-            unit = "" if reading["measured_in"] == "1" else f" {reading['measured_in']}"
-            where = reading["region"] or "whole frame"
-            rows.append((f"{where}: {reading['label']}", f"{reading['u']:.2g}{unit}", ", ".join(parts)))
-    return tuple(rows[:MOST_ROWS])
-
-
-def _deviations(document: Document) -> tuple[str, ...]:
-    rows = [*document["deviations"], *(f"Warning of the spec: {_sentence(w)}" for w in document["warnings"])]
-    flags = dict.fromkeys(f"{r['region']}: {r['label']}: {flag}" for r in document["readings"] for flag in r["flags"])
-    rows += [_sentence(f) for f in flags]
-    if document["unused"]:
-        rows.append(f"Files that no pattern used: {', '.join(document['unused'])}.")
-    if document["earlier"]:
-        rows.append(f"An earlier result of this unit is kept in the folder {document['earlier']}.")
-    return tuple(rows[:MOST_ROWS])
-
-
-def _machine(program: Mapping[str, Any]) -> str:
-    versions = ", ".join(f"{name} {version}" for name, version in program["versions"].items())
-    return f"{program['name']} {program['version']}, template {program['template']}; {versions}; {program['machine']}"
 
 
 def sentences(document: Document) -> tuple[str, ...]:

@@ -1,0 +1,103 @@
+"""The circumstances as they appear on a page: captures, frames, methods, uncertainty, deviations, machine."""
+
+from collections.abc import Mapping
+from typing import Any
+
+MOST_ROWS = 60
+"""Rows of a table on paper; all others stand in results.json."""
+
+Document = Mapping[str, Any]
+Pair = tuple[str, str]
+
+
+def sentence(text: str) -> str:
+    """Return words with a full stop at their end."""
+    plain = text.strip()
+    return plain if not plain or plain[-1] in ".!?" else f"{plain}."
+
+
+def first_attempts(document: Document) -> list[Mapping[str, Any]]:
+    """Return each capture once, by its first attempt."""
+    seen: dict[str, Mapping[str, Any]] = {}
+    for capture in document["captures"]:
+        seen.setdefault(capture["name"], capture)
+    return list(seen.values())
+
+
+def capture_title(capture: Mapping[str, Any]) -> str:
+    """Return a capture's name with its target."""
+    return f"{capture['name']} ({capture['target']})"
+
+
+def station_fact(document: Document) -> tuple[Pair, ...]:
+    """Return what the station file states."""
+    station = document["station"]
+    rows = [(k.replace("_", " "), str(v)) for k, v in station.items() if isinstance(v, str) and v]
+    for one in station.get("instruments", ()):
+        words = [f"{k} {v}" for k, v in one.items() if k != "name"]
+        rows.append((str(one.get("name", "instrument")), ", ".join(words)))
+    return tuple(rows)
+
+
+def capture_fact(capture: Mapping[str, Any]) -> tuple[str, str, str, str]:
+    """Return name, attempt, state and remarks of a capture."""
+    state = "usable" if capture["usable"] else "not usable"
+    remarks = [*capture["faults"], *([capture["because"]] if capture["because"] else [])]
+    return capture["name"], str(capture["attempt"]), state, " ".join(sentence(r) for r in remarks) or "–"
+
+
+def frame_fact(capture: Mapping[str, Any], frame: Mapping[str, Any]) -> tuple[str, str, str]:
+    """Return file, size and digest of a frame."""
+    page = "" if frame["page"] is None else f", page {frame['page']}"
+    attempt = "" if capture["attempt"] == 1 else f"attempt {capture['attempt']}: "
+    rows, columns = frame["shape"][:2]
+    size = f"{columns} × {rows} {frame['dtype']}" + (", simulated" if frame["simulated"] else "")
+    return f"{attempt}{frame['file']}{page}", size, frame["sha256"].removeprefix("sha256:")
+
+
+def methods_fact(document: Document) -> tuple[tuple[str, str, str], ...]:
+    """Return title, options and sources of every module that took part."""
+    rows: dict[tuple[str, str], tuple[str, str, str]] = {}
+    for method in document["methods"]:
+        options = ", ".join(f"{k.replace('_', ' ')}: {_plain(v)}" for k, v in method["options"].items())
+        row = (method["title"], options or "no options", "; ".join(method["references"]))
+        rows.setdefault((method["name"], options), row)
+    return tuple(rows.values())
+
+
+def _plain(value: Any) -> str:
+    if isinstance(value, Mapping):
+        return ", ".join(f"{k} {v}" for k, v in value.items())
+    return f"{value:g}" if isinstance(value, float) else str(value)
+
+
+def uncertainty_fact(document: Document) -> tuple[tuple[str, str, str], ...]:
+    """Return the components of the readings that checks use."""
+    used = {(c["capture"], c["quantity"], repr(c["parameters"]), c["part"]) for c in document["checks"]}
+    rows = []
+    for reading in document["readings"]:
+        key = (reading["capture"], reading["quantity"], repr(reading["parameters"]), reading["part"])
+        if key in used and reading["u"]:
+            parts = [f"{c['name']} {c['u']:.2g} ({c['type']})" for c in reading["components"] if c["u"] > 0]
+            unit = "" if reading["measured_in"] == "1" else f" {reading['measured_in']}"
+            where = reading["region"] or "whole frame"
+            rows.append((f"{where}: {reading['label']}", f"{reading['u']:.2g}{unit}", ", ".join(parts)))
+    return tuple(rows[:MOST_ROWS])
+
+
+def deviations_fact(document: Document) -> tuple[str, ...]:
+    """Return deviations, warnings, remarks, files not used and earlier results."""
+    rows = [*document["deviations"], *(f"Warning of the spec: {sentence(w)}" for w in document["warnings"])]
+    flags = dict.fromkeys(f"{r['region']}: {r['label']}: {flag}" for r in document["readings"] for flag in r["flags"])
+    rows += [sentence(f) for f in flags]
+    if document["unused"]:
+        rows.append(f"Files that no pattern used: {', '.join(document['unused'])}.")
+    if document["earlier"]:
+        rows.append(f"An earlier result of this unit is kept in the folder {document['earlier']}.")
+    return tuple(rows[:MOST_ROWS])
+
+
+def machine_fact(program: Mapping[str, Any]) -> str:
+    """Return program, versions and machine."""
+    versions = ", ".join(f"{name} {version}" for name, version in program["versions"].items())
+    return f"{program['name']} {program['version']}, template {program['template']}; {versions}; {program['machine']}"

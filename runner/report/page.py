@@ -1,0 +1,63 @@
+"""The report as HTML: one self-contained file for screens, and the page that is printed as PDF."""
+
+import base64
+import re
+from collections.abc import Mapping
+from html import unescape
+from typing import Any
+
+from runner.report.facts import report_facts
+from runner.resources import folder
+
+EDITION = "1"
+"""Folder of the templates; older editions are kept, so that older reports can be compared."""
+
+
+def html_page(document: Mapping[str, Any], pictures: Mapping[str, bytes]) -> str:
+    """Return a unit's report as one self-contained HTML file: no script, nothing loaded from elsewhere.
+
+    Args:
+        document: The results.
+        pictures: PNG by name.
+    """
+
+    def place(name: str) -> str:
+        return "data:image/png;base64," + base64.b64encode(pictures[name]).decode()
+
+    return _render("screen", document, place)
+
+
+def paper_page(document: Mapping[str, Any], pictures: Mapping[str, bytes]) -> str:  # noqa: ARG001 - same form as above
+    """Return the page that is printed; pictures and fonts are named, not contained."""
+    return _render("paper", document, lambda name: f"report:/pictures/{name}")
+
+
+def plain_text(html: str) -> str:
+    """Return a page's text with single spaces, for finding sentences in it."""
+    body = re.sub(r"<(style|script)\b.*?</\1>", " ", html, flags=re.DOTALL)
+    return " ".join(unescape(re.sub(r"<[^>]*>", " ", body)).split())
+
+
+def environment(**filters: Any) -> Any:
+    """Return the template environment: escaping on, unknown names are errors.
+
+    Args:
+        filters: Further filters by name.
+    """
+    from jinja2 import Environment, FileSystemLoader, StrictUndefined  # noqa: PLC0415 - heavy
+
+    templates = Environment(
+        loader=FileSystemLoader(folder("templates") / EDITION),
+        autoescape=True,
+        undefined=StrictUndefined,
+        trim_blocks=True,
+        keep_trailing_newline=True,
+    )
+    templates.filters |= filters
+    return templates
+
+
+def _render(kind: str, document: Mapping[str, Any], place: Any) -> str:
+    style = (folder("templates") / EDITION / f"{kind}.css").read_text(encoding="utf-8")
+    template = environment(place=place).get_template(f"{kind}.html")
+    return str(template.render(r=report_facts(document), style=style, created=document["time"]))
