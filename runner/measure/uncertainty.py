@@ -152,9 +152,7 @@ def _seed(inputs: Sequence[Input], draws: int, label: str) -> int:
     return int.from_bytes(sha256(f"{label}|{draws}|{told}".encode()).digest()[:16], "big")
 
 
-def with_declared(
-    reading: Reading, components: Sequence[UncertaintyComponent], context: FrequencyContext
-) -> Reading:
+def with_declared(reading: Reading, components: Sequence[UncertaintyComponent], context: FrequencyContext) -> Reading:
     """Add the declared components that belong to a reading's quantity.
 
     Of several with one name the last counts: the station's own replaces the spec's default.
@@ -170,9 +168,7 @@ def with_declared(
     if reading.value is None or reading.u is None:
         return reading
     chosen = {c.name: c for c in components if reading.quantity in c.of}
-    added = tuple(
-        Component(c.name, _declared_u(c, reading, context), "B", shared=c.shared) for c in chosen.values()
-    )
+    added = tuple(Component(c.name, _declared_u(c, reading, context), "B", shared=c.shared) for c in chosen.values())
     if not added:
         return reading
     u = combined_u([1.0] * (len(added) + 1), [reading.u, *(c.u for c in added)])

@@ -5,7 +5,7 @@ from datetime import UTC, datetime
 from typing import Any
 
 from runner.report import store
-from runner.report.document import canonical
+from runner.report.document import canonical, parse
 from runner.report.keys import StationKey
 from runner.report.page import html_page
 from runner.report.pdf import render_pdf
@@ -32,8 +32,9 @@ def unit_files(
         SigningError: The key or the time stamp server does not serve.
     """
     results = canonical(document)
-    html = html_page(document, pictures).encode()
-    pdf = render_pdf(document, pictures, results)
+    read_back = parse(results)  # pages show what the file holds, in the file's order, as everyone else will read it
+    html = html_page(read_back, pictures).encode()
+    pdf = render_pdf(read_back, pictures, results)
     files = {
         store.RESULTS: results,
         store.HTML: html,

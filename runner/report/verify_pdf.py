@@ -167,9 +167,14 @@ def attachments(data: bytes) -> dict[str, bytes]:
             raise VerificationRefused("a file is attached under two names")
         if {o.objgen for o in holders} != listed or len(embedded) != len(found):
             raise VerificationRefused("a file is attached that the list of attachments does not name")
-        if any(spec.get("/AFRelationship") != "/Data" for _, spec in found):
-            raise VerificationRefused("an attached file is not marked as the report's data")
+        if any(spec.get("/AFRelationship") != _relationship(name) for name, spec in found):
+            raise VerificationRefused("an attached file is not marked as what it is to the report")
         return {name: bytes(spec.EF.F.read_bytes()) for name, spec in found}
+
+
+def _relationship(name: str) -> str:
+    """Return what a file must be to the document (ISO 19005-3): the results are its data, all else adds to it."""
+    return "/Data" if name == "results.json" else "/Supplement"
 
 
 @contextmanager

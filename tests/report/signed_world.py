@@ -146,7 +146,14 @@ def print_pdf(page: str, pictures: Mapping[str, bytes], data: bytes) -> bytes:
     day = datetime(2026, 3, 14, tzinfo=UTC)
     files = {"results.json": data, **pictures}
     attached = [
-        Attachment(file_obj=BytesIO(d), name=n, relationship="Data", created=day, modified=day, base_url="report:/x")
+        Attachment(
+            file_obj=BytesIO(d),
+            name=n,
+            relationship="Data" if n == "results.json" else "Supplement",
+            created=day,
+            modified=day,
+            base_url="report:/x",
+        )
         for n, d in files.items()
     ]
     with warnings.catch_warnings():

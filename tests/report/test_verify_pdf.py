@@ -135,7 +135,7 @@ def test_an_attachment_of_another_relation_is_refused(tmp_path: Path) -> None:
         _attached(pdf)["results.json"].AFRelationship = pikepdf.Name.Alternative
         pdf.save(tmp_path / "more.pdf")
 
-    with pytest.raises(VerificationRefused, match="not marked as the report's data"):
+    with pytest.raises(VerificationRefused, match="not marked as what it is to the report"):
         verify_pdf.attachments((tmp_path / "more.pdf").read_bytes())
 
 
