@@ -4,8 +4,9 @@ Targets, methods, options, quantities, parameters and units: what is not known i
 """
 
 import difflib
+import re
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, fields, replace
 from typing import Any
 
 from runner.errors import Complaint, SpecError, UsageError
@@ -80,7 +81,7 @@ def bind(spec: Spec, station: Station | None = None) -> Plan:
     captures = tuple(plan for c in spec.captures if (plan := _bind_capture(spec, c, complaints)) is not None)
     declared = spec.uncertainty + (station.uncertainty if station else ())
     if complaints:
-        raise SpecError(tuple(complaints))
+        raise SpecError(tuple(replace(c, where=spec.place(c.where)) for c in complaints))
     return Plan(spec, captures, declared)
 
 
@@ -106,8 +107,9 @@ def _bind_capture(spec: Spec, capture: Capture, complaints: list[Complaint]) -> 
             bound.append((method, method.read_options(asked)))
         except UsageError as error:
             complaints.append(Complaint(f"{place}, measure, {name}", error.found, error.allowed, error.next_step))
+    _bind_axes(capture, place, complaints)
     try:
-        target_options = target.read_options(capture.target_options)
+        target_options = target.read_options({**_shared_options(target, chosen), **capture.target_options})
     except UsageError as error:
         complaints.append(Complaint(f"{place}, target", error.found, error.allowed, error.next_step))
         target_options = None
@@ -116,6 +118,22 @@ def _bind_capture(spec: Spec, capture: Capture, complaints: list[Complaint]) -> 
         _bind_bound(capture, one, place, [m for m, _ in bound], wanted, complaints)
     plans = tuple(MethodPlan(m, o, wanted.get(m.NAME, {})) for m, o in bound)
     return CapturePlan(capture, target, target_options, plans)
+
+
+def _shared_options(target: Target, chosen: Mapping[str, Mapping[str, Any]]) -> dict[str, Any]:
+    """Return options written under a method that its target takes too, e.g. how far an edge is searched for."""
+    known = {f.name for f in fields(target.Options)}
+    return {key: value for asked in chosen.values() for key, value in asked.items() if key in known}
+
+
+def _bind_axes(capture: Capture, place: str, complaints: list[Complaint]) -> None:
+    """Frames along any other axis are no repeats: averaging over them would mix conditions."""
+    if capture.frames is None:
+        return
+    for axis in re.findall(r"\{([^}]*)\}", capture.frames.names):
+        if axis not in REPEATS:
+            found = f"the target '{capture.target}' does not know frames along '{axis}'"
+            complaints.append(Complaint(f"{place}, frames", found, "{repeat} names repeats of one condition"))
 
 
 def _unknown(place: str, kind: str, name: str, known: Iterable[str]) -> Complaint:
@@ -135,7 +153,7 @@ def _bind_limits(
             complaints.append(_no_provider(where, limit.quantity, limit.method, methods))
             continue
         at = _parameters(capture, limit, info, where, complaints)
-        if at is None or not _unit_fits(capture, limit.unit, info, limit.quantity, where, complaints):
+        if at is None or not _unit_fits(capture, limit.unit, _yielded(limit, info), limit.quantity, where, complaints):
             continue
         one = Wanted(limit.quantity, limit.parameters, at, limit.part, limit.estimator)
         regions = (*limit.where, *limit.against) or ("",)
@@ -144,6 +162,11 @@ def _bind_limits(
             if one not in mine.get(region, ()):
                 mine[region] = (*mine.get(region, ()), one)
     return wanted
+
+
+def _yielded(limit: Limit, info: QuantityInfo) -> QuantityInfo:
+    """Return what a limit's value is: a ratio of two readings is a plain number whatever their unit."""
+    return replace(info, unit="1") if limit.combine == "ratio" else info
 
 
 def _provider(quantity: str, method: str | None, methods: list[Method]) -> tuple[Method | None, QuantityInfo | None]:

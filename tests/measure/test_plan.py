@@ -84,21 +84,45 @@ def test_components_of_spec_and_station_add_up(tmp_path: Path) -> None:
             {"measure": "measure: {edge respons: {order: 1}}"},
             "unknown method 'edge respons'.*did you mean 'edge response'",
         ),
-        ({"measure": "measure: {edge response: {ordre: 2}}"}, "edge response: unknown option 'ordre'"),
-        ({"measure": "measure: {edge response: {order: 9}}"}, "edge response: .*9"),
-        ({"limit": "quantity: mtf5O, at_least: 0.2 cy/px"}, "limit 1: unknown quantity 'mtf5O'.*did you mean 'mtf50'"),
-        ({"limit": "quantity: mtf, at_least: 0.2"}, "limit 1: mtf needs 'frequency'"),
+        ({"measure": "measure: {edge response: {ordre: 2}}"}, "unknown option 'ordre'"),
+        ({"measure": "measure: {edge response: {order: 9}}"}, "9"),
+        ({"limit": "quantity: mtf5O, at_least: 0.2 cy/px"}, "unknown quantity 'mtf5O'.*did you mean 'mtf50'"),
+        ({"limit": "quantity: mtf, at_least: 0.2"}, "mtf needs 'frequency'"),
         (
             {"limit": "quantity: mtf50, frequency: 0.2 cy/px, at_least: 0.2 cy/px"},
-            "limit 1: mtf50 takes no 'frequency'",
+            "mtf50 takes no 'frequency'",
         ),
-        ({"limit": "quantity: mtf50, at_least: 20 %"}, "limit 1: mtf50 is measured in cy/px, its limit is given in %"),
-        ({"limit": "quantity: mtf50, at_least: 3 cy/deg"}, "limit 1: mtf50 is measured in cy/px.*focal"),
-        ({"usable_if": "cliped: at most 1 %"}, "usable_if: unknown quantity 'cliped'.*did you mean 'clipped'"),
+        ({"limit": "quantity: mtf50, at_least: 20 %"}, "mtf50 is measured in cy/px, its limit is given in %"),
+        ({"limit": "quantity: mtf50, at_least: 3 cy/deg"}, "mtf50 is measured in cy/px.*focal"),
+        ({"usable_if": "cliped: at most 1 %"}, "unknown quantity 'cliped'.*did you mean 'clipped'"),
         ({"target": "dark frame"}, "method 'edge response' needs edge; target 'dark frame' does not offer it"),
     ],
 )
 def test_names_that_are_not_there_are_complained_about(tmp_path: Path, changes: dict[str, str], complaint: str) -> None:
     """Each wrong name, option, parameter or unit ends in a sentence that says which and what is known."""
-    with pytest.raises(SpecError, match=f"captures, chart.*{complaint}"):
+    with pytest.raises(SpecError, match=rf"spec\.yaml:\d+:\d+: .*{complaint}"):
         _bind(tmp_path, **changes)
+
+
+def test_a_search_distance_written_under_the_method_reaches_the_target(tmp_path: Path) -> None:
+    """An option that method and target share need be written only once."""
+    filled = _bind(tmp_path, measure="measure: {edge response: {search: 4 px}}").defaults()["chart"]
+
+    assert filled["target"]["slanted edge"]["search"] == 4
+    assert filled["measure"]["edge response"]["search"] == 4
+
+
+def test_a_ratios_limit_is_a_plain_number(tmp_path: Path) -> None:
+    """The ratio of two frequencies is judged in % whatever unit they have."""
+    limit = "quantity: mtf50, combine: ratio, against: centre, at_least: 70 %"
+
+    assert _bind(tmp_path, limit=limit).spec.captures[0].limits[0].unit == "%"
+
+
+def test_frames_along_other_axes_are_not_averaged(tmp_path: Path) -> None:
+    """A pattern with a focus axis is refused while no method knows what to do with it."""
+    path = tmp_path / "spec.yaml"
+    path.write_text(SPEC.format(**GOOD).replace("chart-{repeat}.tif", "chart-{z}.tif"))
+
+    with pytest.raises(SpecError, match="does not know frames along 'z'"):
+        bind(read_spec(path))
