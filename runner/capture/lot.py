@@ -146,7 +146,7 @@ def _sort_entries(root: Path, spec: Spec) -> tuple[dict[str, Path], list[str], l
 def _unit(serial: str, folder: Path, spec: Spec, folders: Mapping[str, Path]) -> UnitFolder:
     """Return a unit with its attempts; `folders` are all units of the lot."""
     faults = [
-        f"the folders {serial} and {twin} differ only in case or spelling; find out which unit it is and keep one of them"
+        f"the folders {serial} and {twin} differ only in case or spelling; find out which unit it is, keep one of them"
         for twin in sorted(folders, key=natural)
         if twin != serial and fold(twin) == fold(serial)
     ]

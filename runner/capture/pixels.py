@@ -9,6 +9,8 @@ from runner.capture.frame import Codes
 from runner.errors import FrameRefused
 from runner.spec.model import Camera
 
+MOST_DARK_RUN = 64
+"""Exact zeros in a row that a sensor with a black level never gives; padding of tiles may hide the others."""
 ZERO_TAIL = 4096
 """Bytes of zeros at the end that are more than chance: the usual block of file systems and network copies."""
 
@@ -117,7 +119,8 @@ def check_tail(decoded: Decoded, data: bytes, where: str, camera: Camera) -> Non
     stored = decoded.stored or tuple(page.ravel() for page in decoded.pages)
     run, before = _zero_run(stored, decoded.line or decoded.pages[0].shape[1])
     size, total = stored[0].dtype.itemsize, sum(piece.size for piece in stored)
-    if run * size < min(ZERO_TAIL, total * size):
+    padded = camera.black_level > 0 and data.endswith(bytes(ZERO_TAIL)) and run >= MOST_DARK_RUN
+    if run * size < min(ZERO_TAIL, total * size) and not padded:
         return
     if camera.black_level <= 0:
         lit = camera.black_level + 0.1 * (camera.white_level - camera.black_level)

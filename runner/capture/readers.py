@@ -8,9 +8,9 @@ from typing import cast
 
 import numpy as np
 
-from runner.capture.formats.contract import COPY_AGAIN, Format, read_notes
+from runner.capture.formats.contract import COPY_AGAIN, Format, check_size, read_notes
 from runner.capture.frame import Codes, Frame
-from runner.capture.pixels import check_codes, check_tail
+from runner.capture.pixels import ZERO_TAIL, check_codes, check_tail
 from runner.errors import FrameRefused
 from runner.spec.model import Camera
 
@@ -65,14 +65,18 @@ def read_frames(path: Path, camera: Camera, *, name: str | None = None) -> tuple
         with warnings.catch_warnings():
             warnings.simplefilter("error", UserWarning)  # what a decoder warns of is a file that is not whole
             decoded = module.decode(data, where, camera)
-    except FrameRefused:
-        raise
+    except FrameRefused as error:
+        raise _unfinished(data, where) or error from error
     except Exception as error:
         # Decoders fail in many ways on broken files; whatever they raise, this file is no evidence.
         reason = " ".join(str(error).split())[:200] or type(error).__name__
-        raise FrameRefused(f"the file cannot be decoded ({reason})", where=where, next_step=COPY_AGAIN) from error
+        plain = FrameRefused(f"the file cannot be decoded ({reason})", where=where, next_step=COPY_AGAIN)
+        raise _unfinished(data, where) or plain from error
     many = len(decoded.pages) > 1
     for number, codes in enumerate(decoded.pages):
+        if codes.ndim != 2:
+            raise FrameRefused("a page is no plain picture", where=where, next_step=COPY_AGAIN)
+        check_size(codes.shape[1], codes.shape[0], camera, where)
         check_codes(codes, f"{where}, page {number + 1}" if many else where, camera)
     check_tail(decoded, data, where, camera)
     digest, notes = hashlib.sha256(data).hexdigest(), read_notes(decoded.texts)
@@ -89,6 +93,15 @@ def read_frames(path: Path, camera: Camera, *, name: str | None = None) -> tuple
         )
         for number, codes in enumerate(decoded.pages)
     )
+
+
+def _unfinished(data: bytes, where: str) -> FrameRefused | None:
+    """Return the likeliest reason why a file whose end is still zero cannot be decoded."""
+    zeros = len(data) - len(data.rstrip(b"\0"))
+    if zeros < ZERO_TAIL:
+        return None
+    found = f"its last {zeros} bytes are zero, and it cannot be decoded: a copy still under way"
+    return FrameRefused(found, where=where, next_step=COPY_AGAIN)
 
 
 def _bytes(path: Path, where: str) -> bytes:

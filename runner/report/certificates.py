@@ -178,8 +178,10 @@ def _extension(extensions: x509.Extensions, kind: type[T]) -> T | None:
 
 
 def _name(text: str) -> x509.Name:
-    if not text.strip() or len(text) > MAX_NAME or not text.isprintable():
-        raise SigningError(f"'{text}' cannot stand in a certificate as a name", allowed=f"1 to {MAX_NAME} characters")
+    if not text.strip() or len(text.encode()) > MAX_NAME or not text.isprintable():
+        raise SigningError(
+            f"'{text}' cannot stand in a certificate as a name", allowed=f"1 to {MAX_NAME} bytes of UTF-8"
+        )
     return x509.Name([x509.NameAttribute(NameOID.COMMON_NAME, text.strip())])
 
 

@@ -224,7 +224,7 @@ BAD_FILES = (
           lambda c: tiff((c // 16).astype(np.uint8), compression="jpeg")),
     _file("PNG cut", "does not end with the end mark of a PNG", lambda c: png(c)[:15000], "png"),
     _file("PNG cut in its header", "inside its header", lambda c: png(c)[:20], "png"),
-    _file("PNG with a zero tail", "end mark of a PNG", lambda c: zero_tail(png(c), 4096), "png"),
+    _file("PNG with a zero tail", "bytes are zero", lambda c: zero_tail(png(c), 4096), "png"),
     _file("PNG with a wrong check sum", "cannot be decoded", _broken_check_sum, "png"),
     _file("PNG in colour", "3 colour channels", lambda c: png(_rgb(c)), "png"),
     _file("PNG with transparency", "transparency", lambda c: png(np.stack([_rgb(c)[..., 0]] * 2, -1)), "png"),
@@ -250,7 +250,7 @@ BAD_FILES = (
     _file("PNG under another name", "the file holds PNG, its name ends in '.tif'", png),
     _file("text", "no picture that is known here", lambda _: b"exposure 20 ms\n" * 3000),
     _file("web page", "text with markup", lambda _: b"<!doctype html><title>404</title>"),
-    _file("pickle", "a Python pickle", lambda c: pickle.dumps(c), "npy"),
+    _file("pickle", "a Python pickle", pickle.dumps, "npy"),
 )  # fmt: skip
 """Each replaces the second chart frame by a file that cannot be evidence."""
 
@@ -314,7 +314,8 @@ BAD_SETS = (
     BadCapture("serial of another unit inside", "says that it is of unit WS8-000999", _named_inside),
     BadCapture("serial of another unit in the name", "the name says unit WS8-000999",
                _rename("chart-2.tif", "chart-WS8-000999.tif")),
-    BadCapture("frame lost", "1 of 2 frames 'chart-.*', repeat 1 missing", lambda r: (r / UNIT / "chart-1.tif").unlink()),
+    BadCapture("frame lost", "1 of 2 frames 'chart-.*', repeat 1 missing",
+               lambda r: (r / UNIT / "chart-1.tif").unlink()),
     BadCapture("frame too many", "3 frames 'chart-.*', the spec asks for 2",
                lambda r: (r / UNIT / "chart-3.tif").write_bytes(tiff(chart_codes(9))) and None),
     BadCapture("no chart at all", "there is no frame 'chart-", _no_chart),

@@ -1,12 +1,15 @@
 """What the tests of the capture layer share."""
 
-from pathlib import Path
+from typing import TYPE_CHECKING
 
 import pytest
 
 from runner.spec.build import read_spec
 from runner.spec.model import Spec
 from tests.capture.bad_frames import SPEC_TEXT
+
+if TYPE_CHECKING:
+    from pathlib import Path
 
 
 @pytest.fixture(scope="session")

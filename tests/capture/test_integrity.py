@@ -5,11 +5,10 @@ from pathlib import Path
 
 import pytest
 
-from runner.capture.integrity import load, survey
+from runner.capture.integrity import survey
 from runner.capture.lot import find_lot
-from runner.errors import FrameRefused
 from runner.spec.model import Spec
-from tests.capture.bad_frames import BAD_CAPTURES, NEIGHBOUR, UNIT, BadCapture, good_lot
+from tests.capture.bad_frames import BAD_CAPTURES, UNIT, BadCapture, good_lot
 
 
 def _sentences(root: Path, spec: Spec, units: tuple[str, ...] = ()) -> dict[tuple[str, int, str], tuple[str, ...]]:

@@ -110,12 +110,16 @@ CUT = {name: FORMATS[name] for name in FORMATS} | {
 
 @pytest.mark.parametrize("name", CUT)
 def test_every_cut_is_refused(name: str, tmp_path: Path) -> None:
-    """A file that ends early is refused wherever it ends: sixty places, the last byte among them."""
-    data, _, camera = CUT[name]
+    """A file that ends early is refused wherever it ends: sixty places; only padding behind all that counts may go."""
+    data, codes, camera = CUT[name]
     path = tmp_path / name
+    padding = 16 if name in {"pages.tif", "shaped.tif"} else 0  # what the writer puts behind the last directory
 
-    for size in {*np.linspace(1, len(data) - 1, 58).astype(int).tolist(), len(data) - 1, len(data) - 2}:
+    for size in {*np.linspace(1, len(data) - 1 - padding, 58).astype(int).tolist(), len(data) - 1, len(data) - 2}:
         path.write_bytes(data[:size])
+        if size >= len(data) - padding:
+            assert np.array_equal(np.stack([frame.codes for frame in read_frames(path, camera)]), codes)
+            continue
         with pytest.raises(FrameRefused, match=re.escape(name)):
             read_frames(path, camera)
 
@@ -128,7 +132,7 @@ def test_zero_tail_is_refused_at_every_length(name: str, tmp_path: Path) -> None
 
     for size in np.linspace(4096, len(data), 40).astype(int).tolist():
         path.write_bytes(zero_tail(data, size) if size < len(data) else bytes(size))
-        with pytest.raises(FrameRefused, match="zero|truncated|cannot be decoded"):
+        with pytest.raises(FrameRefused, match=r"zero|truncated|cannot be decoded"):
             read_frames(path, camera)
 
 
@@ -284,7 +288,7 @@ def test_ending_must_fit_the_content(tmp_path: Path) -> None:
     (tmp_path / "a.tif").write_bytes(npy(CODES))
     (tmp_path / "frame").write_bytes(tiff(CODES))
 
-    with pytest.raises(FrameRefused, match="holds NPY, its name ends in '.tif'"):
+    with pytest.raises(FrameRefused, match=r"holds NPY, its name ends in '\.tif'"):
         read_frames(tmp_path / "a.tif", CAMERA)
     with pytest.raises(FrameRefused, match="holds TIFF, its name ends in ''"):
         read_frames(tmp_path / "frame", CAMERA)

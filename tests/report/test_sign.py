@@ -154,7 +154,7 @@ def test_a_signed_report_is_not_signed_again() -> None:
 
 def test_long_names_fit() -> None:
     """The room for a signature grows with its certificate."""
-    key = world.authority("Ä" * 64, "ß" * 64).station
+    key = world.authority("Ä" * 32, "ß" * 32).station
 
     verify_pdf.read_signature(sign.sign_pdf(attacks.target().unsigned, key, time=world.SIGNED))
 
@@ -187,7 +187,7 @@ def test_a_time_stamp_is_carried_along(tmp_path: Path) -> None:
     verify_pdf.check_structure(signed)
     (tmp_path / "report.pdf").write_bytes(pdf)
     assert signed.signature.time_stamp is not None
-    assert len(page) > 2000
+    assert len(page) > len(sign.sign_detached(b"page", made.station)) + 500
     assert "Signature is Valid." in _run(tmp_path, "pdfsig", "-nocert", "report.pdf")
 
 
