@@ -134,10 +134,10 @@ def propagate(
     words = sorted({word for one in inputs for word in one.shared})
     common = {word: generator.standard_normal(draws) for word in words}
     rows = np.empty((len(inputs), draws))
-    for row, one in zip(rows, inputs, strict=True):
-        row[:] = one.value + one.u * _unit_draws(generator, one.shape, draws)
+    for number, one in enumerate(inputs):
+        rows[number] = one.value + one.u * _unit_draws(generator, one.shape, draws)
         for word, u in one.shared.items():
-            row += u * common[word]
+            rows[number] += u * common[word]
     return Propagated(np.sort(np.asarray(model(rows), float)))
 
 

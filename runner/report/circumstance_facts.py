@@ -73,12 +73,12 @@ def _plain(value: Any) -> str:
 
 def uncertainty_fact(document: Document) -> tuple[tuple[str, str, str], ...]:
     """Return the components of the readings that checks use."""
-    used = {(c["capture"], c["quantity"], repr(c["parameters"]), c["part"]) for c in document["checks"]}
+    keys = ("capture", "attempt", "quantity", "parameters", "part")
+    used = [[c[k] for k in keys] for c in document["checks"]]
     rows = []
     for reading in document["readings"]:
-        key = (reading["capture"], reading["quantity"], repr(reading["parameters"]), reading["part"])
-        if key in used and reading["u"]:
-            parts = [f"{c['name']} {c['u']:.2g} ({c['type']})" for c in reading["components"] if c["u"] > 0]
+        if reading["u"] and [reading[k] for k in keys] in used:
+            parts = [f"{c['name']} {c['u']:.2g} {c['type']}" for c in reading["components"] if c["u"] > 0]
             unit = "" if reading["measured_in"] == "1" else f" {reading['measured_in']}"
             where = reading["region"] or "whole frame"
             rows.append((f"{where}: {reading['label']}", f"{reading['u']:.2g}{unit}", ", ".join(parts)))
@@ -88,8 +88,11 @@ def uncertainty_fact(document: Document) -> tuple[tuple[str, str, str], ...]:
 def deviations_fact(document: Document) -> tuple[str, ...]:
     """Return deviations, warnings, remarks, files not used and earlier results."""
     rows = [*document["deviations"], *(f"Warning of the spec: {sentence(w)}" for w in document["warnings"])]
-    flags = dict.fromkeys(f"{r['region']}: {r['label']}: {flag}" for r in document["readings"] for flag in r["flags"])
-    rows += [sentence(f) for f in flags]
+    flags: dict[str, list[str]] = {}
+    for reading in document["readings"]:
+        for flag in reading["flags"]:
+            flags.setdefault(f"{reading['label']}: {flag}", []).append(reading["region"] or "whole frame")
+    rows += [sentence(f"{flag} ({', '.join(dict.fromkeys(places))})") for flag, places in flags.items()]
     if document["unused"]:
         rows.append(f"Files that no pattern used: {', '.join(document['unused'])}.")
     if document["earlier"]:

@@ -247,10 +247,8 @@ def _line(x1: float, y1: float, x2: float, y2: float, colour: str, more: str, na
 
 def _text(x: float, y: float, words: str, size: int, anchor: str, colour: str) -> str:
     name = "t-faint" if colour == FAINT else "t-ink"
-    return (
-        f'<text x="{x:.1f}" y="{y:.1f}" font-size="{size}" text-anchor="{anchor}" font-family="DejaVu Sans, sans-serif" '
-        f'fill="{colour}" class="{name}">{escape(words)}</text>'
-    )
+    place = f'x="{x:.1f}" y="{y:.1f}" font-size="{size}" text-anchor="{anchor}"'
+    return f'<text {place} font-family="DejaVu Sans" fill="{colour}" class="{name}">{escape(words)}</text>'
 
 
 def _svg(parts: Sequence[str], wide: float, high: float, title: str) -> str:

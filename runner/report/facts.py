@@ -287,7 +287,8 @@ def _margins(checks: Sequence[Mapping[str, Any]]) -> tuple[MarginFact, ...]:
     rows = []
     for check in sorted(judged, key=_distance)[:WORST]:
         title = f"{check['characteristic']}. {check['label']}, {check['where'] or 'whole frame'}"
-        text = f"{value_text(check)}; limit {_limits(check['at_least'], check['at_most'], check['measured_in'], exact=True)}"
+        limit = _limits(check["at_least"], check["at_most"], check["measured_in"], exact=True)
+        text = f"{value_text(check)}; limit {limit}"
         rows.append(MarginFact(title, text, drawing.margin_picture(check, f"{title}: {text}")))
     return tuple(rows)
 

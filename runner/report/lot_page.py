@@ -9,7 +9,7 @@ from runner.judge.verdict import REPORT_ONLY
 from runner.report import drawing
 from runner.report.circumstance_facts import Pair, sentence
 from runner.report.facts import VerdictFact, verdict_fact
-from runner.report.page import EDITION, environment
+from runner.report.page import EDITION, environment, inline
 from runner.resources import folder
 
 
@@ -75,7 +75,7 @@ def html(lot: Mapping[str, Any], documents: Sequence[Mapping[str, Any]]) -> str:
         documents: Units' results.
     """
     style = (folder("templates") / EDITION / "screen.css").read_text(encoding="utf-8")
-    return str(environment().get_template("lot.html").render(r=lot_facts(lot, documents), style=style))
+    return str(environment(drawing=inline).get_template("lot.html").render(r=lot_facts(lot, documents), style=style))
 
 
 def lot_facts(lot: Mapping[str, Any], documents: Sequence[Mapping[str, Any]]) -> LotReport:

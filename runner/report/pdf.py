@@ -36,8 +36,10 @@ def render_pdf(document: Mapping[str, Any], pictures: Mapping[str, bytes], resul
     moment = datetime.fromisoformat(str(document["time"]))
     files = {f"report:/fonts/{name}": ("font/ttf", _font(name)) for name in _FONTS}
     files |= {f"report:/pictures/{name}": ("image/png", data) for name, data in pictures.items()}
+    text, drawings = paper_page(document)
+    files |= {address: ("image/svg+xml", data) for address, data in drawings.items()}
     with _no_missing_glyph():
-        page = HTML(string=paper_page(document, pictures), base_url="report:/", url_fetcher=_closed(files))
+        page = HTML(string=text, base_url="report:/", url_fetcher=_closed(files))
         written = page.write_pdf(
             font_config=FontConfiguration(),
             pdf_variant="pdf/a-3u",
