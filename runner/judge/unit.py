@@ -24,6 +24,8 @@ from runner.measure.evidence import UnitEvidence
 from runner.measure.reading import Reading
 from runner.spec.model import Capture, Spec
 
+MOST_PLACES = 4
+"""Places named in one sentence; the checks name all."""
 _BLAME_ORDER = (AT_FAULT_PROGRAM, AT_FAULT_CAPTURE, AT_FAULT_CANNOT_TELL, AT_FAULT_UNIT)
 """Whose fault a unit's `not measured` is when its checks disagree: what can be mended at once comes first."""
 
@@ -116,13 +118,27 @@ def _blame(verdict: str, deciding: Sequence[Check]) -> tuple[str | None, str]:
     if verdict == CANNOT_DECIDE:
         return None, "the uncertainty straddles a limit"
     if verdict == DOES_NOT_CONFORM:
-        worst = min(deciding, key=_weight)
-        return AT_FAULT_UNIT, worst.because or ""
+        return AT_FAULT_UNIT, _what_is_wrong(deciding)
     for word in _BLAME_ORDER:
         for check in deciding:
             if check.at_fault == word:
                 return word, check.because or ""
     return AT_FAULT_CANNOT_TELL, ""
+
+
+def _what_is_wrong(deciding: Sequence[Check]) -> str:
+    """Return what the failing checks say about the unit, each thing once, with its places."""
+    places: dict[str, list[str]] = {}
+    for check in sorted(deciding, key=_weight):
+        what = (check.because or "").removesuffix(" there")
+        places.setdefault(what, []).append(check.where)
+    said = []
+    for what, where in places.items():
+        named = [place for place in dict.fromkeys(where) if place]
+        more = f" and {len(named) - MOST_PLACES} more" if len(named) > MOST_PLACES else ""
+        words = joined(named) if not more else ", ".join(named[:MOST_PLACES]) + more
+        said.append(f"{what} ({words})" if words else what)
+    return "; ".join(said)
 
 
 def _all_well(checks: Sequence[Check]) -> str:

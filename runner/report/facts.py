@@ -140,6 +140,8 @@ class Report:
     """What the results table leaves to results.json, or empty."""
     not_measured: tuple[CheckFact, ...]
     """What has no value, and why."""
+    not_measured_because: tuple[str, ...]
+    """Who is at fault for it and why, each once."""
     reported: tuple[CheckFact, ...]
     """Values without a limit."""
     pictures: tuple[PictureFact, ...]
@@ -184,7 +186,7 @@ def report_facts(document: Document) -> Report:
         simulated=_simulated(document),
         verdict=verdict_fact(document["verdict"], 96),
         fault=_fault(document["at_fault"]),
-        because=sentence(document["because"]),
+        because=_capital(sentence(document["because"])),
         next=document["next"],
         reasons=tuple(sentence(r) for r in document["reasons"][:4]),
         more_reasons=_more(len(document["reasons"]) - 4),
@@ -194,6 +196,9 @@ def report_facts(document: Document) -> Report:
         checks=tuple(check_fact(c) for c in kept),
         left_out=left_out,
         not_measured=tuple(check_fact(c) for c in checks if c["verdict"] == NOT_MEASURED),
+        not_measured_because=tuple(
+            dict.fromkeys(check_fact(c).because for c in checks if c["verdict"] == NOT_MEASURED)
+        ),
         reported=tuple(check_fact(c) for c in checks if c["verdict"] == REPORT_ONLY),
         pictures=picture_facts(document),
         curves=curve_facts(document),
@@ -230,7 +235,7 @@ def check_fact(check: Mapping[str, Any]) -> CheckFact:
         rule=f"{check['rule']}, {100 * check['conformance_probability']:g} %",
         verdict=verdict_fact(check["verdict"]),
         reason=sentence(check["reason"]),
-        because=f"{at_fault} {sentence(check['because'] or '')}".strip(),
+        because=f"{at_fault} {_capital(sentence(check['because'] or ''))}".strip(),
     )
 
 
@@ -301,6 +306,10 @@ def _fault(word: str | None) -> str:
         "cannot tell": "At fault: cannot tell.",
         "program": "At fault: the program.",
     }.get(word, f"At fault: {word}.")
+
+
+def _capital(text: str) -> str:
+    return text[:1].upper() + text[1:]
 
 
 def _more(number: int) -> str:
