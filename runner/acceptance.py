@@ -29,7 +29,7 @@ from runner.measure.plan import Plan, bind
 from runner.report import store
 from runner.report.document import RunFacts, to_document
 from runner.spec.build import read_spec
-from runner.spec.model import Station
+from runner.spec.model import Spec, Station
 from runner.spec.station import read_station
 
 ONE_THREAD = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "NUMEXPR_NUM_THREADS")
@@ -169,7 +169,9 @@ def accept_units(job: Job, units: Sequence[UnitFolder], announce: Announce) -> I
         yield from _announced(results, len(units), announce)
         return
     _one_thread_each()
-    with ProcessPoolExecutor(job.order.jobs, get_context("spawn"), _start_worker, (job,)) as pool:
+    with ProcessPoolExecutor(
+        job.order.jobs, get_context("spawn"), _start_worker, (job.order, job.plan.spec, job.facts, job.survey)
+    ) as pool:
         yield from _announced(pool.map(_accept_in_worker, units), len(units), announce)
 
 
@@ -260,8 +262,9 @@ _worker: list[Job] = []
 """The job of a worker process, set once when it starts."""
 
 
-def _start_worker(job: Job) -> None:
-    _worker[:] = [job]
+def _start_worker(order: Order, spec: Spec, facts: RunFacts, survey: integrity.Survey) -> None:
+    """Bind the spec again: modules, of which a plan is made, do not travel between processes."""
+    _worker[:] = [Job(order, bind(spec, facts.station), facts, survey)]
 
 
 def _accept_in_worker(unit: UnitFolder) -> UnitResult:

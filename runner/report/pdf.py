@@ -1,6 +1,7 @@
 """The report on paper: PDF/A-3u with the results and pictures attached, the same bytes for the same results."""
 
 import logging
+import warnings
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from datetime import datetime
@@ -38,7 +39,9 @@ def render_pdf(document: Mapping[str, Any], pictures: Mapping[str, bytes], resul
     files |= {f"report:/pictures/{name}": ("image/png", data) for name, data in pictures.items()}
     text, drawings = paper_page(document)
     files |= {address: ("image/svg+xml", data) for address, data in drawings.items()}
-    with _no_missing_glyph():
+    with _no_missing_glyph(), warnings.catch_warnings():
+        # the renderer leaves its own colour profile to be closed by the garbage collector
+        warnings.filterwarnings("ignore", "unclosed file .*icc", ResourceWarning)
         page = HTML(string=text, base_url="report:/", url_fetcher=_closed(files))
         written = page.write_pdf(
             font_config=FontConfiguration(),
