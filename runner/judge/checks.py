@@ -2,7 +2,7 @@
 
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
-from math import inf
+from math import inf, isfinite
 
 from runner.judge import blame, decision_rule
 from runner.judge.combine import Member, combine, combine_bounds
@@ -183,6 +183,8 @@ def _combined(
         if not isinstance(known, str):
             return _bounded(blank, limit, *known)
     others = [_member(capture, r, unit) for r in against]
+    if not all(isfinite(m.value) and isfinite(m.u) for m in [*valued, *others]):
+        return _refused(blank, Refusal("fault", "a member's value is no number"))
     try:
         value, u = combine(str(limit.combine), valued, others, **ends)
     except ZeroDivisionError as error:

@@ -74,7 +74,7 @@ def combine(
     u = drawn.u
     if kind not in {"range", "worst"}:
         return plain, u
-    excess = drawn.mean - plain
+    excess = drawn.mean - plain if n > 1 else 0.0  # one member alone is picked from nothing
     value = max(0.0, plain - excess) if kind == "range" else plain - excess
     return value, sqrt(u**2 + excess**2 / 3)
 

@@ -1,0 +1,137 @@
+"""A unit's roll-up, blame and attempts."""
+
+from dataclasses import replace
+from itertools import combinations_with_replacement
+
+import pytest
+
+from runner.judge.unit import judge_unit, roll_up
+from runner.measure.evidence import CaptureEvidence
+from runner.measure.reading import CAUSES
+from tests.judge.hand_made import FRAME, evidence, limit, reading, refused, spec
+
+WORDS = ("conforms", "does not conform", "cannot decide", "not measured", "report only")
+
+
+@pytest.mark.parametrize(
+    "verdicts",
+    [v for n in range(4) for v in combinations_with_replacement(WORDS, n)],
+    ids=lambda v: "+".join(v) or "none",
+)
+def test_the_roll_up(verdicts: tuple[str, ...]) -> None:
+    """Any failure fails; else anything not measured; else anything undecided; only then it conforms; none is none."""
+    judged = set(verdicts) - {"report only"}
+    order = ("does not conform", "not measured", "cannot decide", "conforms")
+
+    assert roll_up(verdicts) == next((word for word in order if word in judged), "not measured")
+
+
+def test_a_good_unit() -> None:
+    """A unit far inside its limit conforms, nobody is at fault, and the operator releases it."""
+    judged = judge_unit(spec(limit()), evidence(reading(0.3)))
+
+    assert (judged.verdict, judged.at_fault, judged.next) == ("conforms", None, "Release the unit.")
+    assert judged.reasons[0].startswith("The one check conforms; nearest to its limit: centre: mtf50 0.3000 ± 0.0020")
+
+
+def test_a_soft_unit_is_named_with_its_places() -> None:
+    """A unit that fails is at fault itself, and the sentence names what and where."""
+    limits = limit(where=("left", "right"), where_label="sides")
+    judged = judge_unit(spec(limits), evidence(reading(0.15, region="left"), reading(0.16, region="right")))
+
+    assert (judged.verdict, judged.at_fault) == ("does not conform", "unit")
+    assert judged.because == "the unit is soft (left and right)"
+
+
+def test_a_unit_on_its_limit_is_held() -> None:
+    """A value that straddles its limit leads to more frames, not to a verdict."""
+    judged = judge_unit(spec(limit()), evidence(reading(0.2)))
+
+    assert (judged.verdict, judged.at_fault) == ("cannot decide", None)
+    assert judged.next.startswith("Hold the unit; take more frames for characteristic 1")
+
+
+@pytest.mark.parametrize("cause", CAUSES)
+def test_every_refusal_ends_as_not_measured_with_its_blame(cause: str) -> None:
+    """No cause of a missing value ever conforms or fails the unit, and each has someone or nobody to blame."""
+    judged = judge_unit(spec(limit()), evidence(refused(cause)))
+
+    assert judged.verdict == "not measured"
+    assert judged.at_fault in {"capture", "cannot tell", "program"}
+    assert judged.because
+    assert f"because of {cause}" in judged.reasons[0]
+
+
+@pytest.mark.parametrize("cause", ["no edge", "no modulation", "no picture", "too noisy"])
+def test_what_a_bad_unit_could_cause_names_the_frame_that_settles_it(cause: str) -> None:
+    """A wholly defocused or dead unit is not a dark lamp: nobody is blamed, and the settling frame is named."""
+    judged = judge_unit(spec(limit()), evidence(refused(cause)))
+
+    assert judged.at_fault == "cannot tell"
+    assert "a frame of a unit known to be good" in judged.because
+
+
+def test_a_dark_lamp_is_the_captures_fault() -> None:
+    """The level against dark blames the capture."""
+    judged = judge_unit(spec(limit()), evidence(refused("too dark")))
+
+    assert (judged.at_fault, judged.next[:14]) == ("capture", "Capture again:")
+
+
+def test_a_missing_reading_is_the_programs_fault() -> None:
+    """A limit without any reading can never pass in silence."""
+    judged = judge_unit(spec(limit()), evidence())
+
+    assert (judged.verdict, judged.at_fault) == ("not measured", "program")
+
+
+def test_a_refused_file_makes_every_check_of_its_capture_not_measured() -> None:
+    """One bad file blames the capture, whatever readings there are."""
+    bad = CaptureEvidence("chart", 1, "slanted edge", (FRAME,), ("chart-1.tif: it is truncated",))
+    judged = judge_unit(spec(limit("1"), limit("2", where=("left",))), evidence(reading(0.3), captures=[bad]))
+
+    assert [(c.verdict, c.at_fault) for c in judged.checks] == [("not measured", "capture")] * 2
+    assert "it is truncated" in judged.checks[0].reason
+
+
+def test_two_valid_attempts_need_a_rule() -> None:
+    """Without a retest rule two usable attempts are not judged: the better one is never picked."""
+    two = [CaptureEvidence("chart", n, "slanted edge", (FRAME,)) for n in (1, 2)]
+    judged = judge_unit(spec(limit()), evidence(reading(0.1), replace(reading(0.3), attempt=2), captures=two))
+
+    assert judged.verdict == "not measured"
+    assert "two valid attempts, no rule" in judged.reasons[0]
+
+
+def test_a_second_attempt_after_an_unusable_one_is_judged() -> None:
+    """An attempt that could not be used does not count against the next."""
+    bad = CaptureEvidence("chart", 1, "slanted edge", (), ("chart-1.tif: it is empty",))
+    good = CaptureEvidence("chart", 2, "slanted edge", (FRAME,))
+    judged = judge_unit(spec(limit()), evidence(replace(reading(0.3), attempt=2), captures=[bad, good]))
+
+    assert (judged.verdict, judged.checks[0].attempt) == ("conforms", 2)
+
+
+def test_a_failure_outweighs_what_was_not_measured() -> None:
+    """A unit that fails one limit does not conform though another was not measured."""
+    judged = judge_unit(
+        spec(limit("1"), limit("2", where=("left",))), evidence(reading(0.1), refused("no edge", "left"))
+    )
+
+    assert (judged.verdict, judged.at_fault) == ("does not conform", "unit")
+
+
+def test_a_spec_without_limits_judges_nothing() -> None:
+    """No checks at all is not measured, and so is a spec that only reports."""
+    assert judge_unit(spec(), evidence()).verdict == "not measured"
+    assert judge_unit(spec(limit(report_only=True, at_least=None)), evidence(reading(0.3))).verdict == "not measured"
+
+
+def test_judging_again_gives_the_same() -> None:
+    """A judgement depends on nothing but spec and evidence."""
+    asked, found = (
+        spec(limit(combine="range", where=("left", "right"), where_label="sides", at_least=None, at_most=0.1)),
+        (evidence(reading(0.21, 0.01, "left"), reading(0.29, 0.02, "right"))),
+    )
+
+    assert judge_unit(asked, found) == judge_unit(asked, found)
