@@ -21,6 +21,8 @@ def show(value: float, u: float | None, unit: str, *, against: tuple[float | Non
     text = f"{value:.{places}f}"
     if u:
         text += f" ± {wide:.{places}f}"
+    elif "." in text:
+        text = text.rstrip("0").rstrip(".")
     return text if unit in {"1", ""} else f"{text} {unit}"
 
 

@@ -1,0 +1,7 @@
+"""What all tests share."""
+
+from hypothesis import settings
+
+# The first example of a property pays for imports; how long it takes says nothing about the rule.
+settings.register_profile("probatum", deadline=None, derandomize=True)
+settings.load_profile("probatum")

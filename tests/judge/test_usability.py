@@ -1,0 +1,73 @@
+"""Whether a capture may be judged at all."""
+
+import math
+
+import pytest
+
+from runner.judge.usability import judge_capture
+from runner.measure.evidence import CaptureEvidence
+from runner.spec.model import Bound
+from tests.judge.hand_made import FRAME, reading, refused, spec
+
+CLIPPED = Bound("clipped", None, 0.01, "%")
+GOOD = CaptureEvidence("chart", 1, "slanted edge", (FRAME,))
+
+
+def _clipped(value: float | None):  # type: ignore[no-untyped-def]  # noqa: ANN202
+    return reading(value, 0.0, quantity="clipped", measured_in="%")
+
+
+def _state(*readings, bounds=(CLIPPED,), capture=GOOD):  # type: ignore[no-untyped-def]  # noqa: ANN001, ANN002, ANN202
+    return judge_capture(spec(usable_if=bounds).captures[0], capture, readings)
+
+
+def test_a_bound_that_holds_leaves_the_capture_usable() -> None:
+    """On its end a bound still holds."""
+    assert _state(_clipped(0.01)).usable
+
+
+def test_a_broken_bound_names_place_value_and_bound() -> None:
+    """Clipping beyond the bound makes the capture unusable and blames it."""
+    state = _state(_clipped(0.5))
+
+    assert (state.usable, state.at_fault) == (False, "capture")
+    assert state.faults == ("centre: clipped 0.5 %, at most 0.01 % makes the capture usable",)
+
+
+def test_a_bound_is_judged_in_its_own_unit() -> None:
+    """A share in % is compared with a bound given as a plain number."""
+    assert not _state(_clipped(0.5), bounds=(Bound("clipped", None, 0.001, "1"),)).usable
+    assert _state(_clipped(0.05), bounds=(Bound("clipped", None, 0.001, "1"),)).usable
+
+
+def test_what_was_never_measured_makes_the_capture_unusable() -> None:
+    """A bound on a quantity without any reading cannot be passed in silence."""
+    assert "was not measured" in _state(reading(0.3)).faults[0]
+
+
+@pytest.mark.parametrize("value", [math.nan, math.inf, None])
+def test_what_is_no_number_makes_the_capture_unusable(value: float | None) -> None:
+    """NaN never satisfies a bound."""
+    assert not _state(_clipped(value)).usable
+
+
+def test_a_refused_region_speaks_for_itself() -> None:
+    """A region that gave no value leaves the capture to its other regions; its own checks tell why."""
+    assert _state(refused("no edge", quantity="clipped", measured_in="%"), _clipped(0.0)).usable
+
+
+def test_files_come_before_readings() -> None:
+    """A refused file makes the capture unusable whatever was read."""
+    state = _state(_clipped(0.0), capture=CaptureEvidence("chart", 1, "slanted edge", (FRAME,), ("a.tif: empty",)))
+
+    assert (state.usable, state.at_fault, state.faults) == (False, "capture", ("a.tif: empty",))
+
+
+def test_a_quantity_that_the_unit_could_spoil_blames_nobody() -> None:
+    """Low edge modulation may be stray light or a bad unit."""
+    state = _state(
+        reading(5.0, 0.1, quantity="edge_modulation", measured_in="%"),
+        bounds=(Bound("edge_modulation", 20.0, None, "%"),),
+    )
+
+    assert (state.usable, state.at_fault) == (False, "cannot tell")
