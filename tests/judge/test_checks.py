@@ -1,6 +1,7 @@
 """Limits against readings: units, uniqueness, combinations, what is only reported."""
 
 import math
+from typing import Any
 
 import pytest
 from hypothesis import given
@@ -8,12 +9,14 @@ from hypothesis import strategies as st
 
 from runner.judge.checks import checks_of, not_measured
 from runner.judge.unit import judge_unit
+from runner.judge.verdict import Check
 from runner.measure.reading import Reading
+from runner.spec.model import Limit
 from tests.judge.hand_made import evidence, limit, reading, refused, spec
 
 
-def _check(asked: object, *readings: Reading, at: int = 0):  # type: ignore[no-untyped-def]  # noqa: ANN202
-    return judge_unit(spec(asked), evidence(*readings)).checks[at]  # type: ignore[arg-type]
+def _check(asked: Limit, *readings: Reading, at: int = 0) -> Check:
+    return judge_unit(spec(asked), evidence(*readings)).checks[at]
 
 
 def test_a_value_is_converted_into_the_limits_unit() -> None:
@@ -52,7 +55,12 @@ def test_a_combination_with_a_lost_member_is_not_measured(combine: str) -> None:
 def test_a_ratio_is_a_plain_number_or_percent() -> None:
     """Sides at 0.24 against a centre of 0.3 are a ratio of 0.8, or 80 %."""
     known = (reading(0.3), reading(0.24, region="left"), reading(0.24, region="right"))
-    shared = {"combine": "ratio", "where": ("left", "right"), "where_label": "sides", "against": ("centre",)}
+    shared: dict[str, Any] = {
+        "combine": "ratio",
+        "where": ("left", "right"),
+        "where_label": "sides",
+        "against": ("centre",),
+    }
 
     assert _check(limit(unit="1", at_least=0.7, **shared), *known).value == pytest.approx(0.8, rel=1e-3)
     assert _check(limit(unit="%", at_least=70.0, **shared), *known).value == pytest.approx(80, rel=1e-3)
@@ -60,7 +68,7 @@ def test_a_ratio_is_a_plain_number_or_percent() -> None:
 
 def test_a_ratio_to_nothing_is_refused() -> None:
     """A denominator that cannot be told from 0 gives no ratio."""
-    shared = {"combine": "ratio", "where": ("left",), "where_label": "left", "against": ("centre",)}
+    shared: dict[str, Any] = {"combine": "ratio", "where": ("left",), "where_label": "left", "against": ("centre",)}
     check = _check(limit(unit="1", at_least=0.7, **shared), reading(0.001, 0.001), reading(0.3, region="left"))
 
     assert (check.verdict, "cannot be told from 0" in check.reason) == ("not measured", True)
@@ -111,7 +119,7 @@ def test_a_capture_that_cannot_be_used_yields_all_its_checks() -> None:
 )
 def test_what_is_no_number_never_conforms(value: float | None, u: float | None, combine: str | None) -> None:
     """Whatever stands in a reading in place of a number, no check of it conforms."""
-    shared = {"where": ("left", "centre"), "where_label": "both", "against": ("centre",)}
+    shared: dict[str, Any] = {"where": ("left", "centre"), "where_label": "both", "against": ("centre",)}
     asked = limit(combine=combine, at_least=-1e9, at_most=1e9, **shared)
     bad = reading(value, u, "left", components=())
     capture = spec(asked).captures[0]

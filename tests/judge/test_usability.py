@@ -1,11 +1,14 @@
 """Whether a capture may be judged at all."""
 
 import math
+from collections.abc import Sequence
 
 import pytest
 
 from runner.judge.usability import judge_capture
+from runner.judge.verdict import CaptureState
 from runner.measure.evidence import CaptureEvidence
+from runner.measure.reading import Reading
 from runner.spec.model import Bound
 from tests.judge.hand_made import FRAME, reading, refused, spec
 
@@ -13,11 +16,11 @@ CLIPPED = Bound("clipped", None, 0.01, "%")
 GOOD = CaptureEvidence("chart", 1, "slanted edge", (FRAME,))
 
 
-def _clipped(value: float | None):  # type: ignore[no-untyped-def]  # noqa: ANN202
+def _clipped(value: float | None) -> Reading:
     return reading(value, 0.0, quantity="clipped", measured_in="%")
 
 
-def _state(*readings, bounds=(CLIPPED,), capture=GOOD):  # type: ignore[no-untyped-def]  # noqa: ANN001, ANN002, ANN202
+def _state(*readings: Reading, bounds: Sequence[Bound] = (CLIPPED,), capture: CaptureEvidence = GOOD) -> CaptureState:
     return judge_capture(spec(usable_if=bounds).captures[0], capture, readings)
 
 

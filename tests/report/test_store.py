@@ -38,7 +38,7 @@ def test_a_failed_write_leaves_the_old_file(tmp_path: Path, monkeypatch: pytest.
     def full(_handle: int) -> None:
         raise OSError(28, "No space left on device")
 
-    monkeypatch.setattr(store.os, "fsync", full)
+    monkeypatch.setattr("os.fsync", full)
     with pytest.raises(OSError, match="No space left"):
         store.write_whole(tmp_path / "b.json", b"new")
 
