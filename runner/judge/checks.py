@@ -7,7 +7,7 @@ from math import inf, isfinite
 from runner.judge import blame, decision_rule
 from runner.judge.combine import Member, combine, combine_bounds
 from runner.judge.decision_rule import Limits
-from runner.judge.sentences import consequence, joined, requirement, show
+from runner.judge.sentences import combination_steps, consequence, joined, requirement, show
 from runner.judge.verdict import (
     AT_FAULT_UNIT,
     CANNOT_DECIDE,
@@ -186,11 +186,15 @@ def _combined(
     if not all(isfinite(m.value) and isfinite(m.u) for m in [*valued, *others]):
         return _refused(blank, Refusal("fault", "a member's value is no number"))
     try:
-        value, u = combine(str(limit.combine), valued, others, **ends)
+        made = combine(str(limit.combine), valued, others, **ends)
     except ZeroDivisionError as error:
         return _refused(blank, Refusal("not defined", str(error)))
     factor = 100.0 if limit.combine == "ratio" and limit.unit == "%" else 1.0
-    return _judged(blank, limit, factor * value, factor * u, inf)
+    check = _judged(blank, limit, factor * made.value, factor * made.u, inf)
+    if check.value is None:
+        return check
+    steps = combination_steps(check, str(limit.combine), factor * made.plain, factor * made.excess)
+    return replace(check, steps=steps)
 
 
 def _worst_refusal(refused: Sequence[Reading]) -> Refusal:

@@ -33,6 +33,20 @@ class Member:
     """Its parts in the limit's unit."""
 
 
+@dataclass(frozen=True)
+class Combined:
+    """One value of several regions, with the steps that a reader can follow with a pencil."""
+
+    value: float
+    """Value, the excess of picking extremes taken off."""
+    u: float
+    """Standard uncertainty."""
+    plain: float
+    """The same arithmetic on the members' values, nothing taken off."""
+    excess: float = 0.0
+    """By how much noise alone makes a range or a worst member read too far out."""
+
+
 def combine(
     kind: str,
     members: Sequence[Member],
@@ -40,8 +54,8 @@ def combine(
     *,
     at_least: float | None,
     at_most: float | None,
-) -> tuple[float, float]:
-    """Return value and standard uncertainty of a combination.
+) -> Combined:
+    """Return value and standard uncertainty of a combination, and how they came about.
 
     Args:
         kind: `worst`, `range`, `mean` or `ratio`.
@@ -73,10 +87,10 @@ def combine(
     drawn = propagate(model, [_input(m) for m in everyone], label=kind)
     u = drawn.u
     if kind not in {"range", "worst"}:
-        return plain, u
+        return Combined(plain, u, plain)
     excess = drawn.mean - plain if n > 1 else 0.0  # one member alone is picked from nothing
     value = max(0.0, plain - excess) if kind == "range" else plain - excess
-    return value, sqrt(u**2 + excess**2 / 3)
+    return Combined(value, sqrt(u**2 + excess**2 / 3), plain, plain - value)
 
 
 def _worst(x: Values, at_least: float | None, at_most: float | None) -> Values:

@@ -66,6 +66,29 @@ def joined(words: "list[str] | tuple[str, ...]") -> str:
     return words[0] if len(words) == 1 else ", ".join(words[:-1]) + " and " + words[-1] if words else ""
 
 
+def combination_steps(check: Check, kind: str, plain: float, excess: float) -> str:
+    """Return how a combination came about, so that it can be followed from its members' values.
+
+    Args:
+        check: The judged combination.
+        kind: `worst`, `range`, `mean` or `ratio`.
+        plain: The arithmetic on the members' values alone.
+        excess: What is taken off it, because extremes of noisy values read too far out; 0 if nothing is.
+    """
+    if kind == "ratio":
+        return f"{check.where}: {check.label}, mean of the members over the mean they are compared with"
+    if kind == "mean" or not excess:
+        words = {"mean": "mean of the members", "range": "largest less smallest member", "worst": "the worst member"}
+        return f"{check.where}: {check.label}, {words[kind]}"
+    places = decimals(plain, 2 * (check.u or 0.0))
+    unit = "" if check.measured_in in {"1", ""} else f" {check.measured_in}"
+    found, off = f"{plain:.{places}f}{unit}", f"{abs(excess):.{places}f}{unit}"
+    words = {"range": "largest less smallest member is", "worst": "the worst member reads"}
+    way = "taken off" if excess > 0 else "added"
+    because = "which is how far noise alone carries the extremes of this many values"
+    return f"{check.where}: {check.label}, {words[kind]} {found}; {off} is {way}, {because}"
+
+
 _MEANS = {
     ("mtf", "low"): "the unit is soft there",
     ("mtf", "high"): "the unit transfers more than it may there",

@@ -75,6 +75,8 @@ class Check:
     """Why that is at fault."""
     attempt: int = 1
     """Attempt judged."""
+    steps: str = ""
+    """How a combination came about from its members, as a sentence; empty for a single region."""
 
 
 @dataclass(frozen=True)

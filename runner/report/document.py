@@ -281,9 +281,15 @@ def _reading_back(data: Mapping[str, Any]) -> Reading:
     )
 
 
+def _number(characteristic: str) -> int | str:
+    """Return a plain number as one; `010` and the like stay text, so that no two characteristics become the same."""
+    plain = characteristic.isdecimal() and str(int(characteristic)) == characteristic
+    return int(characteristic) if plain else characteristic
+
+
 def _check(check: Check) -> dict[str, Any]:
     return {
-        "characteristic": int(check.characteristic) if check.characteristic.isdecimal() else check.characteristic,
+        "characteristic": _number(check.characteristic),
         "capture": check.capture,
         "attempt": check.attempt,
         "where": check.where,
@@ -308,6 +314,7 @@ def _check(check: Check) -> dict[str, Any]:
         "at_fault": check.at_fault,
         "because": check.because,
         "reason": check.reason,
+        "steps": check.steps,
     }
 
 

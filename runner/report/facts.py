@@ -138,6 +138,8 @@ class Report:
     """Results."""
     left_out: str
     """What the results table leaves to results.json, or empty."""
+    combined: tuple[str, ...]
+    """How values of several regions came about, one sentence each."""
     not_measured: tuple[CheckFact, ...]
     """What has no value, and why."""
     not_measured_because: tuple[str, ...]
@@ -195,6 +197,7 @@ def report_facts(document: Document) -> Report:
         conformity=_conformity(document),
         checks=tuple(check_fact(c) for c in kept),
         left_out=left_out,
+        combined=tuple(sentence(c["steps"]) for c in kept if c["steps"]),
         not_measured=tuple(check_fact(c) for c in checks if c["verdict"] == NOT_MEASURED),
         not_measured_because=tuple(
             dict.fromkeys(check_fact(c).because for c in checks if c["verdict"] == NOT_MEASURED)
@@ -394,6 +397,6 @@ def sentences(document: Document) -> tuple[str, ...]:
     ]
     for check in (*facts.checks, *facts.not_measured, *facts.reported):
         found += [check.number, check.where, check.quantity, check.value, check.limit, check.verdict.word]
-    found += [check.reason for check in facts.not_measured]
+    found += [*facts.combined, *(check.reason for check in facts.not_measured)]
     found += [cell for row in (*facts.frames, *facts.uncertainty, *facts.captures) for cell in row]
     return tuple(dict.fromkeys(text for text in found if text))

@@ -53,6 +53,16 @@ def test_a_combination_with_a_lost_member_is_not_measured(combine: str) -> None:
     assert (check.verdict, check.at_fault, check.value) == ("not measured", "cannot tell", None)
 
 
+def test_a_combination_can_be_followed_with_a_pencil() -> None:
+    """The steps of a range start from its members' own range, and what is taken off leads to the value."""
+    asked = limit(combine="range", where=("left", "right"), where_label="sides", at_least=None, at_most=0.1)
+    check = _check(asked, reading(0.302, 0.002, region="left"), reading(0.3, 0.002, region="right"))
+
+    assert check.value is not None
+    off = 0.002 - check.value
+    assert f"largest less smallest member is 0.0020 cy/px; {off:.4f} cy/px is taken off" in check.steps
+
+
 def test_a_ratio_is_a_plain_number_or_percent() -> None:
     """Sides at 0.24 against a centre of 0.3 are a ratio of 0.8, or 80 %."""
     known = (reading(0.3), reading(0.24, region="left"), reading(0.24, region="right"))

@@ -35,8 +35,8 @@ def test_the_truth_is_covered(kind: str) -> None:
         for _ in range(120):
             members = _members(rng, truth)
             first, second = (members[:2], members[2:]) if kind == "ratio" else (members, [])
-            value, u = combine(kind, first, second, at_least=0.1, at_most=None)
-            held.append(abs(value - _true(kind, truth)) <= 2 * u)
+            made = combine(kind, first, second, at_least=0.1, at_most=None)
+            held.append(abs(made.value - _true(kind, truth)) <= 2 * made.u)
 
     assert np.mean(held) >= 0.93 - 2 * np.sqrt(0.93 * 0.07 / len(held))
 
@@ -46,8 +46,9 @@ def test_what_members_share_cancels_in_a_range_and_stays_in_a_mean() -> None:
     parts = (Component("chart", 0.01, "B", shared="chart"),)
     members = [Member(f"r{i}", v, 0.01, parts) for i, v in enumerate((0.2, 0.3))]
 
-    assert combine("range", members, at_least=None, at_most=1.0) == pytest.approx((0.1, 0.0), abs=1e-9)
-    assert combine("mean", members, at_least=None, at_most=1.0)[1] == pytest.approx(0.01, rel=0.02)
+    made = combine("range", members, at_least=None, at_most=1.0)
+    assert [made.value, made.u] == pytest.approx([0.1, 0.0], abs=1e-9)
+    assert combine("mean", members, at_least=None, at_most=1.0).u == pytest.approx(0.01, rel=0.02)
 
 
 def test_the_range_of_equal_corners_is_not_read_too_large() -> None:
@@ -56,7 +57,7 @@ def test_the_range_of_equal_corners_is_not_read_too_large() -> None:
     found = []
     for _ in range(60):
         members = [Member(f"r{i}", rng.normal(0.3, 0.01), 0.01) for i in range(4)]
-        found.append(combine("range", members, at_least=None, at_most=1.0)[0])
+        found.append(combine("range", members, at_least=None, at_most=1.0).value)
 
     assert np.mean(found) < 1.3 * 0.01
     assert min(found) >= 0
@@ -65,19 +66,19 @@ def test_the_range_of_equal_corners_is_not_read_too_large() -> None:
 def test_a_range_cut_at_zero_keeps_its_uncertainty() -> None:
     """Four equal values have range 0 with an uncertainty, not 0 ± 0."""
     members = [Member(f"r{i}", 0.3, 0.01) for i in range(4)]
-    value, u = combine("range", members, at_least=None, at_most=1.0)
+    made = combine("range", members, at_least=None, at_most=1.0)
 
-    assert value == 0
-    assert u > 0.005
+    assert made.value == 0
+    assert made.u > 0.005
 
 
 def test_worst_is_the_side_of_the_limit() -> None:
     """The worst against a lower limit is the smallest, against an upper the largest, against both the farthest out."""
     members = [Member("a", 0.2, 1e-6), Member("b", 0.5, 1e-6)]
 
-    assert combine("worst", members, at_least=0.1, at_most=None)[0] == pytest.approx(0.2, abs=1e-5)
-    assert combine("worst", members, at_least=None, at_most=1.0)[0] == pytest.approx(0.5, abs=1e-5)
-    assert combine("worst", members, at_least=0.0, at_most=0.6)[0] == pytest.approx(0.5, abs=1e-5)
+    assert combine("worst", members, at_least=0.1, at_most=None).value == pytest.approx(0.2, abs=1e-5)
+    assert combine("worst", members, at_least=None, at_most=1.0).value == pytest.approx(0.5, abs=1e-5)
+    assert combine("worst", members, at_least=0.0, at_most=0.6).value == pytest.approx(0.5, abs=1e-5)
 
 
 def test_a_ratio_to_nothing_is_refused() -> None:

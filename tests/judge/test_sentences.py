@@ -6,7 +6,7 @@ import pytest
 from hypothesis import assume, given
 from hypothesis import strategies as st
 
-from runner.judge.sentences import consequence, decimals, joined, requirement, show
+from runner.judge.sentences import combination_steps, consequence, decimals, joined, requirement, show
 from runner.judge.verdict import Check
 
 CHECK = Check(
@@ -71,3 +71,13 @@ def test_lists_in_sentences() -> None:
     """One, two and more names read like English."""
     assert [joined(list("abc")[:n]) for n in range(4)] == ["", "a", "a and b", "a, b and c"]
     assert decimals(0.0, 0.0) == 0
+
+
+def test_a_range_tells_what_was_taken_off() -> None:
+    """A reader finds the members' own range and what noise alone accounts for, with the digits of the value."""
+    check = replace(CHECK, where="range of corners", value=0.0001, u=0.0019)
+
+    told = combination_steps(check, "range", 0.0019, 0.0018)
+    assert "largest less smallest member is 0.0019 cy/px; 0.0018 cy/px is taken off" in told
+    assert "added" in combination_steps(check, "worst", 0.1881, -0.0012)
+    assert combination_steps(check, "mean", 0.3, 0.0).endswith("mean of the members")
