@@ -175,7 +175,13 @@ def _tell(outcome: "Outcome", out: Path) -> None:
     for unit in outcome.units:
         counts[unit.verdict] = counts.get(unit.verdict, 0) + 1
     words = ", ".join(f"{n} {verdict}" for verdict, n in counts.items()) or "no unit was found"
-    print(f"\n{len(outcome.units)} unit(s): {words}")
+    number = len(outcome.units)
+    print(f"\n{number} {'unit' if number == 1 else 'units'}: {words}")
     for name in outcome.unused:
         print(f"not used: {name}")
+    if not number:
+        print(
+            "FRAMES holds one folder per unit, named by its serial; when the frames of one unit lie in FRAMES itself, "
+            "name it with --unit SERIAL"
+        )
     print(f"open first: {out / 'lot.html'}")

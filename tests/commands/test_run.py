@@ -46,7 +46,7 @@ def test_a_line_per_unit_for_people(bench: Path, capsys: pytest.CaptureFixture[s
 
     out = capsys.readouterr().out
     assert f"1/2 {UNIT}  CONFORMS" in out
-    assert "2 unit(s): 2 conforms" in out
+    assert "2 units: 2 conforms" in out
     assert "open first:" in out
 
 
@@ -88,3 +88,13 @@ def test_a_spec_error_exits_2_with_its_place(bench: Path, capsys: pytest.Capture
     assert _run(bench) is Exit.USAGE
     assert "spec.yaml:18:5: " in capsys.readouterr().err
     assert not (bench / "out").exists()
+
+
+def test_frames_without_a_folder_of_their_own_get_a_hint(bench: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    """When the frames of one unit lie in FRAMES itself, the last lines say how to name the unit."""
+    spec, frames = bench / "spec.yaml", bench / "frames" / UNIT
+
+    assert run(["run", str(spec), str(frames), "--out", str(bench / "out")]) is Exit.NOT_MEASURED
+    out = capsys.readouterr().out
+    assert "0 units: no unit was found" in out
+    assert "name it with --unit SERIAL" in out
