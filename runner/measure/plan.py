@@ -14,6 +14,7 @@ from runner.measure import shelf
 from runner.measure.contract import Method, QuantityInfo, Target, Wanted
 from runner.measure.options import describe
 from runner.spec import units
+from runner.spec.build import DEFAULT_PROBABILITY, DEFAULT_RULE
 from runner.spec.model import Bound, Capture, Limit, Spec, Station, UncertaintyComponent
 
 ALWAYS = ("exposure",)
@@ -61,13 +62,16 @@ class Plan:
 
     def defaults(self) -> dict[str, Any]:
         """Return what the program filled in, as plain JSON data for the results."""
-        return {
+        captures = {
             plan.capture.name: {
                 "target": {plan.target.NAME: describe(plan.target_options)},
                 "measure": {m.method.NAME: describe(m.options) for m in plan.methods},
             }
             for plan in self.captures
         }
+        asked = self.spec.expanded.get("decision") or {}
+        decision = {"rule": DEFAULT_RULE, "conformance_probability": DEFAULT_PROBABILITY}
+        return {"captures": captures, "decision": {k: v for k, v in decision.items() if k not in asked}}
 
 
 def bind(spec: Spec, station: Station | None = None) -> Plan:

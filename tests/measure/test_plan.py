@@ -61,7 +61,7 @@ def test_the_targets_own_methods_run_when_none_is_named(tmp_path: Path) -> None:
 
 def test_what_the_program_filled_in_is_told(tmp_path: Path) -> None:
     """The plan in the results holds every option of target and methods."""
-    filled = _bind(tmp_path).defaults()["chart"]
+    filled = _bind(tmp_path).defaults()["captures"]["chart"]
 
     assert filled["measure"]["edge response"]["estimator"] == "joint fit"
     assert "slanted edge" in filled["target"]
@@ -106,7 +106,7 @@ def test_names_that_are_not_there_are_complained_about(tmp_path: Path, changes: 
 
 def test_a_search_distance_written_under_the_method_reaches_the_target(tmp_path: Path) -> None:
     """An option that method and target share need be written only once."""
-    filled = _bind(tmp_path, measure="measure: {edge response: {search: 4 px}}").defaults()["chart"]
+    filled = _bind(tmp_path, measure="measure: {edge response: {search: 4 px}}").defaults()["captures"]["chart"]
 
     assert filled["target"]["slanted edge"]["search"] == 4
     assert filled["measure"]["edge response"]["search"] == 4
@@ -126,3 +126,12 @@ def test_frames_along_other_axes_are_not_averaged(tmp_path: Path) -> None:
 
     with pytest.raises(SpecError, match="does not know frames along 'z'"):
         bind(read_spec(path))
+
+
+def test_the_decision_rule_that_was_filled_in_is_told(tmp_path: Path) -> None:
+    """A spec without a rule is judged by `proof either way` at 95 %, and the plan says so; a stated one it leaves out."""
+    assert _bind(tmp_path).defaults()["decision"] == {"rule": "proof either way", "conformance_probability": 0.95}
+    path = tmp_path / "other.yaml"
+    path.write_text(SPEC.format(**GOOD) + "decision: {rule: guarded acceptance}\n")
+
+    assert bind(read_spec(path)).defaults()["decision"] == {"conformance_probability": 0.95}
