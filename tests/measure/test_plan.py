@@ -129,7 +129,7 @@ def test_frames_along_other_axes_are_not_averaged(tmp_path: Path) -> None:
 
 
 def test_the_decision_rule_that_was_filled_in_is_told(tmp_path: Path) -> None:
-    """Without a rule a spec is judged by `proof either way` at 95 %, as the plan tells; what is stated it leaves out."""
+    """The plan tells the rule and the probability that the spec left out, and nothing that it states."""
     assert _bind(tmp_path).defaults()["decision"] == {"rule": "proof either way", "conformance_probability": 0.95}
     path = tmp_path / "other.yaml"
     path.write_text(SPEC.format(**GOOD) + "decision: {rule: guarded acceptance}\n")
