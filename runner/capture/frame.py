@@ -24,7 +24,10 @@ class Frame:
     sha256: str
     """Digest of the file's bytes."""
     pixels_sha256: str
-    """Digest of the decoded pixels, shape and type: the same picture in another file has the same one."""
+    """Digest of the decoded pixels, shape and type: the same picture in another file has the same one.
+
+    Empty where nothing is to be compared.
+    """
     codes: Codes
     """Stored codes, rows × columns."""
     page: int | None = None

@@ -1,6 +1,7 @@
 """Reads a frame file once: the digest is of exactly the bytes that were decoded; what is not whole is refused."""
 
 import hashlib
+import os
 import warnings
 from importlib import import_module
 from pathlib import Path
@@ -8,14 +9,11 @@ from typing import cast
 
 import numpy as np
 
-from runner.capture.formats.contract import COPY_AGAIN, Format, check_size, read_notes
+from runner.capture.formats.contract import COPY_AGAIN, MAX_BYTES, Format, check_size, read_notes
 from runner.capture.frame import Codes, Frame
 from runner.capture.pixels import ZERO_TAIL, check_codes, check_tail
 from runner.errors import FrameRefused
 from runner.spec.model import Camera
-
-MAX_BYTES = 2**32
-"""Larger files would not fit a worker's memory; no single frame comes near it."""
 
 _FORMATS = (
     (b"II*\0", "tiff"),
@@ -44,13 +42,14 @@ _STRANGERS = (
 READ = "TIFF, PNG, NPY, and JPEG where the product delivers it"
 
 
-def read_frames(path: Path, camera: Camera, *, name: str | None = None) -> tuple[Frame, ...]:
+def read_frames(path: Path, camera: Camera, *, name: str | None = None, compare: bool = True) -> tuple[Frame, ...]:
     """Read every frame of a file.
 
     Args:
         path: The file.
         camera: What the spec says about the camera: size, depth, levels.
         name: What the frames and refusals call it; the file's own name if None.
+        compare: Digest the pixels too, so that frames can be compared with each other; half of the work of reading.
 
     Returns:
         One frame per page, in the order of the file; the arrays are read-only.
@@ -84,7 +83,7 @@ def read_frames(path: Path, camera: Camera, *, name: str | None = None) -> tuple
         Frame(
             where,
             digest,
-            _pixel_digest(codes),
+            _pixel_digest(codes) if compare else "",
             _sealed(codes),
             number if many else None,
             {"page": str(number)} if many else {},
@@ -112,13 +111,15 @@ def _bytes(path: Path, where: str) -> bytes:
         if path.exists() and not path.is_file():
             raise FrameRefused("it is a device or a pipe", where=where, allowed="a frame file")
         with path.open("rb") as stream:
-            data = stream.read(MAX_BYTES + 1)
+            # Not `read(MAX_BYTES + 1)`: that sets aside all of those bytes first, which costs more than reading.
+            size = os.fstat(stream.fileno()).st_size
+            data = stream.read() if size <= MAX_BYTES else b""
     except OSError as error:
         reason = error.strerror or type(error).__name__
         raise FrameRefused(
             f"the file cannot be read ({reason.lower()})", where=where, next_step="check that it is there and readable"
         ) from error
-    if len(data) > MAX_BYTES:
+    if max(size, len(data)) > MAX_BYTES:
         raise FrameRefused(
             f"the file is larger than {MAX_BYTES} bytes", where=where, next_step="split the stack into several files"
         )

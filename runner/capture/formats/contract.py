@@ -15,6 +15,8 @@ from runner.spec.model import Camera
 COPY_AGAIN = "copy the file again from the station"
 MAX_PAGES = 1000
 """More frames than any step of an acceptance test takes into one file."""
+MAX_BYTES = 2**32
+"""Of a file, and of its pixels when unpacked; more would not fit a worker's memory, and no frame comes near it."""
 MAX_TEXT = 2000
 """Characters kept of each text that a file carries; OME descriptions run to megabytes."""
 
@@ -167,8 +169,13 @@ def check_upright(orientation: int, where: str) -> None:
         )
 
 
-def check_pages(pages: int, where: str) -> None:
-    """Refuse a file of more pages than a capture has.
+def check_pages(pages: int, where: str, page_bytes: int = 0) -> None:
+    """Refuse a file of more pages than a capture has, or than fit into memory.
+
+    Args:
+        pages: How many there are.
+        where: The file.
+        page_bytes: Bytes that the pixels of one page fill.
 
     Raises:
         FrameRefused: There are too many.
@@ -178,5 +185,12 @@ def check_pages(pages: int, where: str) -> None:
             f"the file holds more than {MAX_PAGES} pages",
             where=where,
             allowed=f"at most {MAX_PAGES} frames in one file",
+            next_step="split the stack into several files",
+        )
+    if pages * page_bytes > MAX_BYTES:
+        raise FrameRefused(
+            f"the file unpacks to {pages * page_bytes} bytes of pixels",
+            where=where,
+            allowed=f"at most {MAX_BYTES} bytes in one file",
             next_step="split the stack into several files",
         )

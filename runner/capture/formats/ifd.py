@@ -14,8 +14,13 @@ from runner.capture.formats.contract import check_pages, truncated
 from runner.errors import FrameRefused
 
 STRIP_OFFSETS, STRIP_COUNTS, TILE_OFFSETS, TILE_COUNTS = 273, 279, 324, 325
+_PIECES = frozenset({STRIP_OFFSETS, STRIP_COUNTS, TILE_OFFSETS, TILE_COUNTS})
 _TYPES = {1: "B", 2: "s", 3: "H", 4: "I", 5: "II", 6: "b", 7: "B", 8: "h", 9: "i", 10: "ii", 11: "f", 12: "d"}
 _TYPES |= {13: "I", 16: "Q", 17: "q", 18: "Q"}
+MOST_PIECES = 2**20
+"""Tiles of 16 x 16 px in a frame of 268 megapixels; no page has more pieces."""
+MOST_VALUES = 64
+"""Values of any other tag; those that are needed here have a few, private ones hold megabytes."""
 
 
 @dataclass(frozen=True)
@@ -99,7 +104,7 @@ class _Walker:
         if value_at + size > len(self._data):
             end = len(self._data)
             raise truncated(self._where, f"tag {tag} ends at byte {value_at + size}, the file at byte {end}")
-        if form not in {"B", "H", "I", "Q"}:
+        if form not in {"B", "H", "I", "Q"} or count > (MOST_PIECES if tag in _PIECES else MOST_VALUES):
             return None
         return tag, self._get(f"{count}{form}", value_at)
 

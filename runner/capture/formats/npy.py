@@ -6,6 +6,7 @@ References:
 
 from io import BytesIO
 from math import prod
+from tokenize import TokenError
 
 import numpy as np
 from numpy.lib import format as npy
@@ -28,6 +29,8 @@ def decode(data: bytes, where: str, camera: Camera) -> Decoded:
             allowed="whole or floating-point numbers",
             next_step="save the frame as an array of numbers",
         )
+    if min(shape, default=0) < 0:
+        raise FrameRefused(f"the array claims the shape {shape}", where=where, next_step=COPY_AGAIN)
     if len(shape) not in {2, 3}:
         raise FrameRefused(
             f"the array has {len(shape)} axes", where=where, allowed="rows x columns, or frames x rows x columns"
@@ -63,8 +66,8 @@ def _header(data: bytes, where: str) -> tuple[tuple[int, ...], bool, np.dtype[np
                 next_step="save the frame as a plain array of numbers",
             )
         shape, columns_first, dtype = read(stream)
-    except ValueError as error:
-        reason = " ".join(str(error).split())[:200]
+    except (ValueError, SyntaxError, MemoryError, RecursionError, TokenError) as error:
+        reason = " ".join(str(error.args[0] if error.args else error).split())[:200]
         raise FrameRefused(
             f"the array's header cannot be read ({reason})", where=where, next_step=COPY_AGAIN
         ) from error

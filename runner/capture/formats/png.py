@@ -27,13 +27,21 @@ def decode(data: bytes, where: str, camera: Camera) -> Decoded:
     width, height, bits, colour = struct.unpack_from(">IIBB", data, 16)
     check_mono(_COLOURS.get(colour, f"pixels of the unknown kind {colour}"), where, mono=colour == 0)
     check_size(width, height, camera, where)
-    if bits < 8:
+    if bits not in {8, 16}:
         raise FrameRefused(f"the file holds {bits} bit per pixel", where=where, allowed="8 or 16 bit per pixel")
     if not data.endswith(_LAST_CHUNK):
         raise truncated(where, "it does not end with the end mark of a PNG")
     with PngImageFile(BytesIO(data)) as checked:
         checked.verify()  # every chunk against its CRC; decoding alone lets a zeroed tail pass
     with PngImageFile(BytesIO(data)) as picture:
+        check_size(*picture.size, camera, where)  # a second header would win
+        if getattr(picture, "is_animated", False):
+            raise FrameRefused(
+                f"the file holds an animation of {picture.n_frames} pictures",
+                where=where,
+                allowed="one frame in a PNG",
+                next_step="export each frame as a file of its own",
+            )
         check_mono("transparency", where, mono="transparency" not in picture.info)
         picture.load()
         check_upright(int(picture.getexif().get(274, 1)), where)

@@ -17,7 +17,15 @@ from operator import itemgetter
 import numpy as np
 import tifffile
 
-from runner.capture.formats.contract import Decoded, check_mono, check_size, check_upright, native, truncated
+from runner.capture.formats.contract import (
+    Decoded,
+    check_mono,
+    check_pages,
+    check_size,
+    check_upright,
+    native,
+    truncated,
+)
 from runner.capture.formats.ifd import Directory, read_directories
 from runner.capture.frame import Codes
 from runner.errors import FrameRefused
@@ -26,15 +34,10 @@ from runner.spec.model import Camera
 ENDINGS = (".tif", ".tiff", ".btf", ".tf8")
 
 WIDTH, LENGTH, BITS, COMPRESSION, PHOTOMETRIC, FILL_ORDER = 256, 257, 258, 259, 262, 266
-ORIENTATION, SAMPLES, PREDICTOR, TILE_WIDTH, TILE_LENGTH, EXTRA_SAMPLES, SAMPLE_FORMAT = (
-    274,
-    277,
-    317,
-    322,
-    323,
-    338,
-    339,
-)
+ORIENTATION, SAMPLES, STRIP_ROWS, PREDICTOR, TILE_WIDTH, TILE_LENGTH = 274, 277, 278, 317, 322, 323
+EXTRA_SAMPLES, SAMPLE_FORMAT = 338, 339
+MOST_TILE = 4096
+"""Side of a tile in px that no writer of small frames exceeds."""
 CFA = 32803
 """Photometric interpretation of a colour filter mosaic: still one number per pixel."""
 LOSSLESS = {1: "none", 5: "LZW", 8: "Deflate", 32946: "Deflate", 32773: "PackBits", 34925: "LZMA", 50000: "Zstandard"}
@@ -50,6 +53,7 @@ def decode(data: bytes, where: str, camera: Camera) -> Decoded:
     directories = read_directories(data, where)
     for page in directories:
         _check(page, where, camera)
+    check_pages(len(directories), where, camera.width * camera.height * (directories[0].first(BITS, 1) + 7) // 8)
     order = "<" if data[:2] == b"II" else ">"
     pieces = [_pieces(data, page, order) for page in directories]
     tiled = any(TILE_WIDTH in page.integers for page in directories)
@@ -78,7 +82,7 @@ def _texts(page: tifffile.TiffPage) -> dict[str, str]:
 def _check(page: Directory, where: str, camera: Camera) -> None:
     samples, extra = page.first(SAMPLES, 1), page.integers.get(EXTRA_SAMPLES, ())
     photometric, compression, bits = page.first(PHOTOMETRIC, 1), page.first(COMPRESSION, 1), page.first(BITS, 1)
-    words = "transparency" if extra else f"{samples} colour channels" if samples > 1 else "coded colours"
+    words = "transparency" if extra else f"{samples} colour channels" if samples != 1 else "coded colours"
     check_mono(words, where, mono=samples == 1 and not extra and photometric in {0, 1, CFA})
     if photometric == 0:
         raise FrameRefused(
@@ -98,6 +102,43 @@ def _check(page: Directory, where: str, camera: Camera) -> None:
     check_size(page.first(WIDTH, 0), page.first(LENGTH, 0), camera, where)
     if bits < 8:
         raise FrameRefused(f"the file holds {bits} bit per pixel", where=where, allowed="8 bit or more per pixel")
+    _check_pieces(page, where, bits, packed=compression == 1)
+
+
+def _check_pieces(page: Directory, where: str, bits: int, *, packed: bool) -> None:
+    """Refuse strips and tiles that do not fit the frame: a decoder would set aside what they claim, or misread them.
+
+    Bare pixels must fill as many bytes as their depth says, within an eighth for padding: 12 bit kept in 16 but
+    announced as packed would be read as a picture of other codes. Behind a compression this cannot be seen, and few
+    programs pack and compress; those files are refused.
+    """
+    width, height = page.first(WIDTH, 0), page.first(LENGTH, 0)
+    tiled = TILE_WIDTH in page.integers
+    wide = page.first(TILE_WIDTH, 0) if tiled else width
+    high = page.first(TILE_LENGTH, 0) if tiled else page.first(STRIP_ROWS, height)
+    if wide < 1 or high < 1 or (tiled and (wide > max(MOST_TILE, width + 15) or high > max(MOST_TILE, height + 15))):
+        raise FrameRefused(
+            f"the file cuts a frame of {width} x {height} px into pieces of {wide} x {high} px",
+            where=where,
+            allowed=f"tiles up to {MOST_TILE} px or the frame's own size",
+            next_step="export the file again",
+        )
+    rows = -(-width // wide) * -(-height // high) * (high if tiled else min(high, height))
+    wanted, there = rows * -(-wide * bits // 8), sum(count for _, count in page.segments)
+    if packed and there > 1.125 * wanted:
+        raise FrameRefused(
+            f"{width} x {height} px of {bits} bit fill {wanted} bytes, the file holds {there}",
+            where=where,
+            allowed="as many bytes as the announced depth needs",
+            next_step="export the frame with the depth in which the pixels are stored",
+        )
+    if not packed and bits not in {8, 16, 32, 64}:
+        raise FrameRefused(
+            f"the file packs {bits} bit per pixel and compresses them",
+            where=where,
+            allowed="8, 16 or 32 bit per pixel where there is compression",
+            next_step="export the frame without compression, or in 16 bit",
+        )
 
 
 def _pieces(data: bytes, page: Directory, order: str) -> list[tuple[int, Codes]]:
@@ -137,12 +178,14 @@ def _plain(pieces: list[tuple[int, Codes]], camera: Camera, where: str) -> Codes
 
 def _check_promised(texts: Mapping[str, str], pages: int, where: str, camera: Camera) -> None:
     """Refuse a stack whose own description speaks of more frames than its chain of pages holds."""
-    text = "\n".join(texts.values())
-    images = re.search(r"^ImageJ=.*?^images=(\d{1,9})\s*$", text, re.MULTILINE | re.DOTALL)
-    shape = re.search(r'^\{"shape": \[([\d, ]+)\]', text, re.MULTILINE)
-    promised = int(images[1]) if images else 1
-    if shape:
-        promised = prod(int(n) for n in shape[1].split(",")) // (camera.width * camera.height)
+    promised = 1
+    for text in texts.values():
+        images = re.search(r"^images=(\d{1,9})\s*$", text, re.MULTILINE) if text.startswith("ImageJ=") else None
+        shape = re.match(r'\{"shape": \[(\d{1,9}(?:, \d{1,9}){1,7})\]', text)
+        if images:
+            promised = max(promised, int(images[1]))
+        if shape:
+            promised = max(promised, prod(int(n) for n in shape[1].split(",")) // (camera.width * camera.height))
     if promised > pages:
         raise FrameRefused(
             f"the file describes {promised} frames, {pages} can be found as pages",
