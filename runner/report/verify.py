@@ -37,18 +37,20 @@ def verify(path: Path, terms: Terms) -> Iterator[Outcome]:
     if not units:
         yield _verify_one(path, terms)
         return
-    documents = []
+    if _holds_report(path):  # a good report laid into a lot's own folder hides none of its units
+        yield _one_of_many(path, terms, lot=False)
+    lot, documents = verify_lot.has_files(path), []
     for folder in units:
-        outcome = _in_lot(folder, terms)
+        outcome = _one_of_many(folder, terms, lot=lot)
         documents.append(None if outcome.exit is Exit.DOES_NOT_CONFORM else outcome.document)
         yield outcome
-    if verify_lot.has_files(path):
+    if lot:
         yield verify_lot.check_lot(path, documents, terms)
 
 
-def _in_lot(folder: Path, terms: Terms) -> Outcome:
+def _one_of_many(folder: Path, terms: Terms, *, lot: bool) -> Outcome:
     try:
-        return _verify_one(folder, terms)
+        return _verify_one(folder, terms, lot=lot)
     except UsageError as error:  # one folder's trouble stops no other
         return Outcome(folder, (Check("report", False, error.found),), accept=terms.accept)
 
@@ -109,17 +111,18 @@ def terms_of(
 
 def _units(path: Path) -> list[Path]:
     """Return the unit folders of a lot's folder; none if it is something else."""
-    if not path.is_dir() or _holds_report(path):
-        return []
-    inside = sorted(p for p in path.iterdir() if p.is_dir() and not p.name.startswith("."))
-    return [p for p in inside if _holds_report(p)]
+    try:
+        inside = sorted(p for p in path.iterdir() if p.is_dir()) if path.is_dir() else []
+        return [p for p in inside if not p.name.startswith(".") and _holds_report(p)]
+    except OSError as error:
+        raise UsageError(f"it cannot be read: {error.strerror}", where=str(path)) from error
 
 
 def _holds_report(folder: Path) -> bool:
     return any((folder / name).is_file() for name in REPORTS)
 
 
-def _verify_one(path: Path, terms: Terms) -> Outcome:
+def _verify_one(path: Path, terms: Terms, *, lot: bool = False) -> Outcome:
     try:
         files, remarks = _read(path)
     except OSError as error:
@@ -143,9 +146,14 @@ def _verify_one(path: Path, terms: Terms) -> Outcome:
         signers += [] if page is None else [page]
     if contents is not None and signers:
         known = contents
-        checks += _refusing(checks, "contents", lambda: verify_parts.check_document(known, terms)) or []
+        place = path.resolve().name if path.is_dir() else None
+        said = _refusing(checks, "contents", lambda: verify_parts.check_document(known, terms, place, lot=lot))
+        checks += said or []
         if path.is_dir():
             checks.append(verify_parts.check_together(files, known, signers))
+    if not terms.roots:
+        marks = dict.fromkeys(profiles.fingerprint(one) for one in signers)
+        remarks += [f"digest of the signer's certificate in full: {mark}" for mark in marks]
     if not terms.crls and terms.roots:
         remarks.append("whether the certificate was revoked was not checked: no --crl was given")
     document = contents.document if contents is not None and signers else None

@@ -1,17 +1,15 @@
 """What a signed report says: whole data, a page that shows them and nothing else, verdicts that follow from them."""
 
 import math
-from collections import Counter
+import re
 from collections.abc import Iterator, Mapping
 from hashlib import sha256
-from html.parser import HTMLParser
-from io import BytesIO
 from typing import Any
 
 from runner.errors import ProbatumError, VerificationRefused
-from runner.report import sign, verify_record
+from runner.report import sign, verify_record, verify_text
 from runner.report.cms_form import refusing
-from runner.report.verify_pdf import SignedPdf, quiet
+from runner.report.verify_pdf import SignedPdf
 from runner.report.verify_record import Check, Terms
 from runner.spec.revision import digest
 
@@ -66,6 +64,22 @@ def check_expected(document: Mapping[str, Any], terms: Terms) -> Iterator[Check]
         yield Check("spec", held, words + ("" if held else f", not by {terms.spec_digest}"))
 
 
+def check_serial(document: Mapping[str, Any], folder: str, *, lot: bool) -> Iterator[Check]:
+    """Check that a report does not lie in the place of another unit's, and that its serial is one of its spec.
+
+    Args:
+        document: The results.
+        folder: Name of the folder that it lies in.
+        lot: The folder is one of a lot's, each of which is named by its unit's serial; else any name will do that is
+            not itself the serial of another unit.
+    """
+    serial, pattern = str(document["unit"]["serial"]), str(document["spec"]["unit"]["serial"])
+    if re.fullmatch(pattern, serial) is None:
+        yield Check("unit", False, f"'{serial}' is no serial of its spec, which asks for {pattern}")
+    elif folder != serial and (lot or re.fullmatch(pattern, folder)):
+        yield Check("unit", False, f"the folder {folder} holds the report of another unit, {serial}")
+
+
 def check_pdf_page(
     signed: SignedPdf, document: Mapping[str, Any], pictures: Mapping[str, bytes], results: bytes, terms: Terms
 ) -> Check:
@@ -79,7 +93,8 @@ def check_pdf_page(
     if bytes(again.data) == signed.blank:
         return Check("page", True, "the page printed again from the data is the same byte for byte")
     with refusing("the text of the page cannot be read"):
-        return _by_text(document, _pdf_words(signed.data), _pdf_words(bytes(again.data)), terms)
+        texts = verify_text.pdf_text(signed.data), verify_text.pdf_text(bytes(again.data))
+        return _by_text(document, verify_text.compare_pdf(*texts), terms)
 
 
 def check_html_page(html: bytes, document: Mapping[str, Any], pictures: Mapping[str, bytes], terms: Terms) -> Check:
@@ -91,7 +106,7 @@ def check_html_page(html: bytes, document: Mapping[str, Any], pictures: Mapping[
     if again == html:
         return Check("page", True, "the page printed again from the data is the same byte for byte")
     with refusing("the text of the page cannot be read"):
-        return _by_text(document, _html_words(html), _html_words(again), terms)
+        return _by_text(document, verify_text.compare_html(html, again), terms)
 
 
 def check_verdicts(document: Mapping[str, Any], terms: Terms) -> Check:
@@ -161,56 +176,15 @@ def _no_page(error: Exception) -> Check:
     return Check("page", None, found, verify_record.NO_PAGE)
 
 
-def _by_text(document: Mapping[str, Any], stated: list[str], again: list[str], terms: Terms) -> Check:
-    """Compare by text where the bytes differ: in order but for white space, or as a bag if lines break elsewhere.
+def _by_text(document: Mapping[str, Any], found: verify_text.Order | str, terms: Terms) -> Check:
+    """Judge a page whose bytes differ by its text: never as fully compared, for what covers the words is not seen.
 
-    What lies over or under the words is not seen that way, so this never counts as fully compared; and where all
-    versions are the same, the bytes must be, too.
+    Where all versions are the same, the bytes must be, too.
     """
-    if "".join(stated) != "".join(again) and Counter(stated) != Counter(again):
-        more, less = Counter(stated) - Counter(again), Counter(again) - Counter(stated)
-        words = f"it shows {_some(more)} where the data give {_some(less)}"
-        return Check("page", False, f"the page does not show what the data say: {words}")
+    if isinstance(found, str):
+        return Check("page", False, f"the page does not show what the data say: {found}")
     if document["program"] == terms.tools.program():
-        return Check("page", False, "the same versions print another page from the data, though with the same words")
-    found = "the page is not the same byte for byte, but every word of it follows from the data and nothing more"
-    return Check("page", None, found, verify_record.TEXT_ONLY)
-
-
-def _some(words: Counter[str]) -> str:
-    shown = list(words)[:6]
-    return "'" + " ".join(shown) + (" …" if len(words) > len(shown) else "") + "'" if shown else "nothing"
-
-
-def _pdf_words(data: bytes) -> list[str]:
-    from pypdf import PdfReader  # noqa: PLC0415 - heavy, and rarely needed
-
-    with quiet():
-        return " ".join(page.extract_text() for page in PdfReader(BytesIO(data)).pages).split()
-
-
-def _html_words(data: bytes) -> list[str]:
-    words = _Words()
-    words.feed(data.decode("utf-8"))
-    words.close()
-    return words.found
-
-
-class _Words(HTMLParser):
-    """Collects every word and every attribute of a page, style and script included: all of it can show something."""
-
-    def __init__(self) -> None:
-        super().__init__()
-        self.found: list[str] = []
-
-    def handle_starttag(self, tag: str, attrs: list[tuple[str, str | None]]) -> None:
-        """Keep a tag and its attributes."""
-        self.found += [f"<{tag}>", *(f"{key}={value}" for key, value in sorted(attrs) if key not in {"d", "src"})]
-
-    def handle_data(self, data: str) -> None:
-        """Keep the words."""
-        self.found += data.split()
-
-    def handle_comment(self, data: str) -> None:
-        """Keep comments, too."""
-        self.found += data.split()
+        return Check("page", False, f"the same versions print another page from the data, though with {found.value}")
+    words = f"the page is not the same byte for byte (other versions printed it); it shows {found.value}"
+    accept = verify_record.TEXT_ONLY if found is verify_text.Order.SAME else verify_record.NO_PAGE
+    return Check("page", None, words, accept)

@@ -15,7 +15,9 @@ SHARE_OF_U = 0.01
 RELATIVE_U = 0.01
 """So may u itself, relative to itself."""
 ROUND_OFF = 1e-9
-"""Relative; where u is zero, or a value is a bound."""
+"""Relative; where u is zero."""
+OF_A_CURVE = 1e-4
+"""Points of a curve may differ by this part of its largest value: a fraction of a drawn line, far above round-off."""
 
 
 def check_frames(document: Mapping[str, Any], frames: Path, terms: Terms) -> list[Check]:
@@ -34,7 +36,8 @@ def check_frames(document: Mapping[str, Any], frames: Path, terms: Terms) -> lis
         return [Check("frames", False, f"the unit cannot be measured again: {type(error).__name__}: {error}")]
     checks = [_digests(document, again)]
     if checks[0].held:
-        checks += [_values(document, again), _verdicts(document, again), _pictures(document, pictures)]
+        checks += [_values(document, again), _curves(document, again), _verdicts(document, again)]
+        checks.append(_pictures(document, again, pictures))
     return checks
 
 
@@ -82,6 +85,34 @@ def _other(stated: Mapping[str, Any], found: Mapping[str, Any]) -> str:
     return ""
 
 
+def _curves(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
+    keys = ("name", "region", "capture", "attempt", "channel", "estimator")
+
+    def by_key(one: Mapping[str, Any]) -> dict[tuple[Any, ...], dict[str, Any]]:
+        return {tuple(curve[k] for k in keys): curve for curve in one["curves"]}
+
+    stated, found = by_key(document), by_key(again)
+    if stated.keys() != found.keys() or len(stated) != len(document["curves"]):
+        return Check("curves", False, "measured again, other curves come out than the report lists")
+    odd = [f"{key[0]} of {key[1] or 'the frame'}" for key in stated if not _alike(stated[key], found[key])]
+    if odd:
+        return Check("curves", False, f"measured again, curves differ: {_few(odd)}")
+    return Check("curves", True, f"every curve comes out again ({len(stated)})")
+
+
+def _alike(stated: Mapping[str, Any], found: Mapping[str, Any]) -> bool:
+    if (stated["x_in"], stated["y_in"]) != (found["x_in"], found["y_in"]):
+        return False
+    for axis in ("x", "y", "u"):
+        one, other = stated[axis], found[axis]
+        if len(one) != len(other):
+            return False
+        allowed = OF_A_CURVE * max((abs(v) for v in other), default=0.0)
+        if any(abs(a - b) > allowed for a, b in zip(one, other, strict=True)):
+            return False
+    return True
+
+
 def _verdicts(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
     def verdicts(one: Mapping[str, Any]) -> dict[str, Any]:
         keys = ("characteristic", "capture", "where", "channel", "verdict", "at_fault")
@@ -94,14 +125,17 @@ def _verdicts(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
     return Check("verdicts from frames", True, "measured again, no verdict changes")
 
 
-def _pictures(document: Mapping[str, Any], pictures: Mapping[str, bytes]) -> Check:
+def _pictures(document: Mapping[str, Any], again: Mapping[str, Any], pictures: Mapping[str, bytes]) -> Check:
+    """Compare by digest; where versions are the same, another picture is another frame or was painted by hand."""
     stated = {p["name"]: p["sha256"] for p in document["pictures"]}
     found = {name: f"sha256:{sha256(data).hexdigest()}" for name, data in pictures.items()}
     odd = sorted(name for name in stated.keys() | found.keys() if stated.get(name) != found.get(name))
-    if odd:
-        words = f"painted again from the frames, these pictures differ: {', '.join(odd)}"
-        return Check("pictures", None, words, verify_record.PICTURES)
-    return Check("pictures", True, f"every picture comes out of the frames again byte for byte ({len(stated)})")
+    if not odd:
+        return Check("pictures", True, f"every picture comes out of the frames again byte for byte ({len(stated)})")
+    words = f"painted again from the frames, these pictures differ: {', '.join(odd)}"
+    if stated.keys() != found.keys() or document["program"] == again["program"]:
+        return Check("pictures", False, words)
+    return Check("pictures", None, words, verify_record.PICTURES)
 
 
 _KEYS = ("capture", "attempt", "region", "channel", "quantity", "part", "estimator")

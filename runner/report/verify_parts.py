@@ -145,9 +145,18 @@ def check_together(files: Files, contents: Contents, signers: list[x509.Certific
     return Check("files", True, "all files of the report agree")
 
 
-def check_document(contents: Contents, terms: Terms) -> list[Check]:
-    """Check what a report says: the expected unit, verdicts that follow, and with frames every value."""
+def check_document(contents: Contents, terms: Terms, folder: str | None = None, *, lot: bool = False) -> list[Check]:
+    """Check what a report says: the expected unit, verdicts that follow, and with frames every value.
+
+    Args:
+        contents: What it says.
+        terms: What the reader expects.
+        folder: Name of the folder that was given, or None for a file.
+        lot: The folder is one of a lot's.
+    """
     checks = [*verify_content.check_expected(contents.document, terms)]
+    if folder is not None:
+        checks += verify_content.check_serial(contents.document, folder, lot=lot)
     checks.append(verify_content.check_verdicts(contents.document, terms))
     if terms.frames is not None:
         checks += verify_frames.check_frames(contents.document, terms.frames, terms)

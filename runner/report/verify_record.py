@@ -84,8 +84,8 @@ class Tools:
     """Judges the readings of a results document again and writes the whole document anew."""
     measure_again: Callable[[Mapping[str, Any], Path], tuple[dict[str, Any], dict[str, bytes]]]
     """Measures from the frames in a folder; returns a whole document and its pictures."""
-    lot_files: Callable[[Path, Mapping[str, Any], tuple[Mapping[str, Any], ...]], dict[str, bytes]]
-    """Writes a lot's files anew from `lot.json`'s facts and the units' results."""
+    lot_files: Callable[[Mapping[str, Any], tuple[Mapping[str, Any], ...]], dict[str, bytes]]
+    """Writes a lot's files anew from the units' results, and from `lot.json` what files no pattern used."""
 
 
 @dataclass(frozen=True)

@@ -84,7 +84,7 @@ def _signer(certificate: x509.Certificate, moment: _Moment, terms: Terms) -> tup
     if fault:
         return None, Check("signer", False, f"the certificate of '{name}' could not sign: {fault}")
     if not terms.roots:
-        mark = profiles.fingerprint(certificate)
+        mark = short_mark(profiles.fingerprint(certificate))
         found = f"signed by '{name}' ({mark}), for whom nobody vouches: no --root was given, and a name proves nothing"
         return None, Check("signer", None, found, verify_record.UNKNOWN_SIGNER)
     root = _issuer(certificate, moment.time, terms)
@@ -92,6 +92,12 @@ def _signer(certificate: x509.Certificate, moment: _Moment, terms: Terms) -> tup
         found = f"none of the given authorities issued the certificate of '{name}'; a name alone proves nothing"
         return None, Check("signer", False, found)
     return root, Check("signer", True, f"signed by '{name}', for whom '{profiles.common_name(root)}' vouches")
+
+
+def short_mark(fingerprint: str) -> str:
+    """Return the first 64 bits of `sha256:…` in groups that two people can read out to each other."""
+    digits = fingerprint.removeprefix("sha256:")
+    return " ".join(digits[n : n + 4] for n in range(0, 16, 4)) + " …"
 
 
 def _issuer(certificate: x509.Certificate, time: datetime, terms: Terms) -> x509.Certificate | None:

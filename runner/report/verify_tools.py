@@ -38,13 +38,24 @@ def _parse(data: bytes) -> dict[str, Any]:
 def _render_pdf(document: Mapping[str, Any], pictures: Mapping[str, bytes], results: bytes) -> bytes:
     from runner.report.pdf import render_pdf  # noqa: PLC0415 - heavy
 
+    _need_edition(document)
     return render_pdf(document, pictures, results)
 
 
 def _html_page(document: Mapping[str, Any], pictures: Mapping[str, bytes]) -> str:
     from runner.report.page import html_page  # noqa: PLC0415 - heavy
 
+    _need_edition(document)
     return html_page(document, pictures)
+
+
+def _need_edition(document: Mapping[str, Any]) -> None:
+    from runner.report.page import EDITION  # noqa: PLC0415 - heavy
+
+    edition = document["program"]["template"]
+    if edition != EDITION:
+        found = f"it was printed with edition {edition} of the templates, this version has {EDITION}"
+        raise VerificationRefused(found, next_step="verify it with a version that has them")
 
 
 def _judge_again(document: Mapping[str, Any]) -> dict[str, Any]:
@@ -96,19 +107,17 @@ def _facts(document: Mapping[str, Any]) -> Any:
     return RunFacts(document["time"], document["unit"]["lot"], document["operator"], from_raw(raw))
 
 
-def _lot_files(folder: Path, lot: Mapping[str, Any], documents: tuple[Mapping[str, Any], ...]) -> dict[str, bytes]:
+def _lot_files(lot: Mapping[str, Any], documents: tuple[Mapping[str, Any], ...]) -> dict[str, bytes]:
     from runner.report import lot_files, store  # noqa: PLC0415 - heavy
-    from runner.report.document import RunFacts, from_document  # noqa: PLC0415
-    from runner.spec.model import Station  # noqa: PLC0415
+    from runner.report.document import canonical, from_document  # noqa: PLC0415
 
     spec, _ = from_document(documents[0])
-    facts = RunFacts(lot["time"], lot["lot"], lot["operator"], Station(name=lot["station"]))
     scratch = Path(tempfile.mkdtemp())
     try:
-        for document in documents:
-            serial = document["unit"]["serial"]
-            store.write_whole(scratch / serial / store.RESULTS, (folder / serial / store.RESULTS).read_bytes())
-        lot_files.write_lot_files(scratch, spec, facts, tuple(lot["unused"]))
+        for number, document in enumerate(documents):  # a serial is a stranger's word until it is vouched for: no path
+            (scratch / str(number)).mkdir()
+            (scratch / str(number) / store.RESULTS).write_bytes(canonical(document))
+        lot_files.write_lot_files(scratch, spec, _facts(documents[0]), tuple(lot["unused"]))
         return {file.name: file.read_bytes() for file in sorted(scratch.iterdir()) if file.is_file()}
     finally:
         shutil.rmtree(scratch, ignore_errors=True)

@@ -1,25 +1,32 @@
 """A small world for signing and verifying: keys, a results document, pages printed by stand-ins, a folder of it all."""
 
+import atexit
 import html
 import json
+import shutil
+import tempfile
 import warnings
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
-from datetime import UTC, datetime
+from datetime import UTC, datetime, timedelta
+from functools import cache
 from hashlib import sha256
 from io import BytesIO
 from pathlib import Path
 from typing import Any
 
 from cryptography import x509
+from cryptography.hazmat.primitives.serialization import Encoding, NoEncryption, PrivateFormat
 from PIL import Image
 
+from runner import acceptance
 from runner.errors import VerificationRefused
 from runner.report import certificates as profiles
 from runner.report.keys import StationKey
 from runner.report.sign import sign_detached, sign_pdf
 from runner.report.verify_record import Tools
 from runner.spec.revision import canonical_json, digest
+from tests.capture.bad_frames import SPEC_TEXT, UNIT, good_lot
 
 MADE = datetime(2026, 3, 2, 8, 0, tzinfo=UTC)
 SIGNED = datetime(2026, 3, 14, 9, 30, tzinfo=UTC)
@@ -58,7 +65,11 @@ PICTURES = {"chart-overview.png": picture()}
 
 def results(serial: str = "WS8-000101", value: float = 0.1874, verdict: str = "does not conform") -> dict[str, Any]:
     """Return a results document with one reading and one check."""
-    spec = {"probatum-spec": 1, "document": {"number": "WS8-ACC", "revision": "C"}}
+    spec = {
+        "probatum-spec": 1,
+        "document": {"number": "WS8-ACC", "revision": "C"},
+        "unit": {"product": "WS8", "serial": "WS8-[0-9]{6}"},
+    }
     frame = {"file": "chart-01.tif", "sha256": "0" * 64, "shape": [1200, 1600], "dtype": "uint16", "page": None}
     reading = {
         "capture": "chart",
@@ -82,9 +93,12 @@ def results(serial: str = "WS8-000101", value: float = 0.1874, verdict: str = "d
         "spec": spec,
         "unit": {"serial": serial, "lot": "L7"},
         "time": "2026-03-14T09:29:00Z",
+        "operator": "",
+        "station": {},
         "simulated": False,
         "captures": [{"name": "chart", "attempt": 1, "frames": [frame], "file_faults": []}],
         "readings": [reading],
+        "curves": [],
         "pictures": [{"name": n, "sha256": f"sha256:{sha256(d).hexdigest()}"} for n, d in PICTURES.items()],
         "warnings": [],
     } | judged(value, verdict)
@@ -178,7 +192,7 @@ def measure_again(document: Mapping[str, Any], frames: Path) -> tuple[dict[str, 
     return dict(document) | {"captures": captures, "readings": readings} | judged(value), dict(PICTURES)
 
 
-def lot_files(_folder: Path, lot: Mapping[str, Any], documents: tuple[Mapping[str, Any], ...]) -> dict[str, bytes]:
+def lot_files(lot: Mapping[str, Any], documents: tuple[Mapping[str, Any], ...]) -> dict[str, bytes]:
     """Write a lot's files."""
     verdicts = {d["unit"]["serial"]: d["verdict"] for d in documents}
     table = "".join(f"{serial},{verdict}\r\n" for serial, verdict in verdicts.items()).encode()
@@ -221,3 +235,70 @@ def write_unit(folder: Path, key: StationKey, document: Mapping[str, Any], time:
     for name, contents in (files | {f"pictures/{n}": d for n, d in PICTURES.items()}).items():
         (folder / name).write_bytes(contents)
     return folder
+
+
+@dataclass(frozen=True)
+class Bench:
+    """Real reports: two good units, judged and signed by the program itself."""
+
+    authority: Authority
+    """Who vouches for the station."""
+    spec: Path
+    """Test spec."""
+    frames: Path
+    """Frames of both units."""
+    reports: Path
+    """The lot's folder."""
+    unit: Path
+    """Folder of the first unit's report."""
+
+
+def bench(folder: Path) -> Bench:
+    """Run the program on two good units in a folder; the station's key is as old as a minute."""
+    made = authority(made=datetime.now(UTC) - timedelta(minutes=1))
+    spec, frames, key, reports = folder / "spec.yaml", folder / "frames", folder / "key.pem", folder / "reports"
+    spec.write_text(SPEC_TEXT)
+    good_lot(frames)
+    private = made.station.private.private_bytes(Encoding.PEM, PrivateFormat.PKCS8, NoEncryption())
+    key.write_bytes(private + made.station.certificate.public_bytes(Encoding.PEM))
+    outcome = acceptance.run(acceptance.Order(spec=spec, frames=frames, out=reports, lot="L7", key=key))
+    assert [unit.verdict for unit in outcome.units] == ["conforms", "conforms"]
+    return Bench(made, spec, frames, reports, reports / UNIT)
+
+
+@cache
+def shared_bench() -> Bench:
+    """Run the program once for all tests of a process; who spoils a report copies it before."""
+    folder = Path(tempfile.mkdtemp(prefix="bench-"))
+    atexit.register(shutil.rmtree, folder, ignore_errors=True)
+    return bench(folder)
+
+
+def printed_once(tools: Tools) -> Tools:
+    """Return tools that keep what they printed and judged, and give it again for the same arguments.
+
+    They are functions of their arguments (`test_verify_tools` holds them to it), so that a verdict with kept pages is
+    the verdict without.
+    """
+    kept: dict[Any, Any] = {}
+
+    def keep(name: str, call: Callable[..., Any]) -> Callable[..., Any]:
+        def answer(document: Mapping[str, Any], *more: Any) -> Any:
+            key = (name, canonical(document), *map(repr, more))
+            if key not in kept:
+                kept[key] = call(document, *more)
+            return kept[key]
+
+        return answer
+
+    return replace(
+        tools,
+        render_pdf=keep("pdf", tools.render_pdf),
+        html_page=keep("html", tools.html_page),
+        judge_again=keep("judge", tools.judge_again),
+    )
+
+
+def pictures_of(unit: Path) -> dict[str, bytes]:
+    """Return the pictures beside a real report."""
+    return {file.name: file.read_bytes() for file in sorted((unit / "pictures").iterdir())}
