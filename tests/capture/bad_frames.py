@@ -11,6 +11,7 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from math import erf
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import tifffile
@@ -56,7 +57,8 @@ def chart_codes(seed: int) -> Codes:
 
 def dark_codes(seed: int) -> Codes:
     """Return one frame without light."""
-    return np.random.default_rng(seed).normal(BLACK, 4, (HEIGHT, WIDTH)).round().clip(0).astype(np.uint16)
+    signal: NDArray[np.float64] = np.random.default_rng(seed).normal(BLACK, 4, (HEIGHT, WIDTH))
+    return signal.round().clip(0).astype(np.uint16)
 
 
 def good_unit(folder: Path, seed: int) -> None:
@@ -73,7 +75,7 @@ def good_lot(root: Path) -> None:
     good_unit(root / NEIGHBOUR, 200)
 
 
-def tiff(codes: NDArray[np.generic], **options: object) -> bytes:
+def tiff(codes: NDArray[np.generic], **options: Any) -> bytes:
     """Return a TIFF without a description."""
     file = io.BytesIO()
     tifffile.imwrite(file, codes, **{"metadata": None, "photometric": "minisblack", **options})
@@ -300,6 +302,10 @@ def _no_chart(root: Path) -> None:
         file.unlink()
 
 
+def _one_more(root: Path) -> None:
+    (root / UNIT / "chart-3.tif").write_bytes(tiff(chart_codes(9)))
+
+
 def _stuck_buffer(root: Path) -> None:
     (root / UNIT / "chart-1.tif").unlink()
     (root / UNIT / "chart-2.tif").write_bytes(tiff(np.stack([chart_codes(111)] * 2)))
@@ -317,7 +323,7 @@ BAD_SETS = (
     BadCapture("frame lost", "1 of 2 frames 'chart-.*', repeat 1 missing",
                lambda r: (r / UNIT / "chart-1.tif").unlink()),
     BadCapture("frame too many", "3 frames 'chart-.*', the spec asks for 2",
-               lambda r: (r / UNIT / "chart-3.tif").write_bytes(tiff(chart_codes(9))) and None),
+               _one_more),
     BadCapture("no chart at all", "there is no frame 'chart-", _no_chart),
     BadCapture("copy under way", "1 of 2 frames", _rename("chart-2.tif", "chart-2.tif.part")),
     BadCapture("another case", "1 of 2 frames", _rename("chart-2.tif", "Chart-2.tif")),

@@ -296,7 +296,8 @@ def test_ending_must_fit_the_content(tmp_path: Path) -> None:
 
 def test_bytes_are_read_once(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     """The digest is of the bytes that were decoded: the file is opened a single time."""
-    path, opened, open_file = tmp_path / "a.tif", list[Path](), Path.open
+    path, opened = tmp_path / "a.tif", list[Path]()
+    open_file: Callable[..., object] = Path.open
     path.write_bytes(tiff(CODES, compression="zlib"))
 
     def counted(self: Path, *args: str) -> object:
