@@ -154,6 +154,8 @@ def _verify_one(path: Path, terms: Terms, *, lot: bool = False) -> Outcome:
     if not terms.roots:
         marks = dict.fromkeys(profiles.fingerprint(one) for one in signers)
         remarks += [f"digest of the signer's certificate in full: {mark}" for mark in marks]
+    if terms.crls and not terms.roots:
+        remarks.append("no revocation list was looked at: it counts only with its authority, and no --root was given")
     if not terms.crls and terms.roots:
         remarks.append("whether the certificate was revoked was not checked: no --crl was given")
     document = contents.document if contents is not None and signers else None
