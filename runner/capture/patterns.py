@@ -72,5 +72,5 @@ def natural(text: str) -> tuple[object, ...]:
     """Return a key that sorts text as people do: `z2` before `z10`, and plain numbers by their value."""
     if _NUMBER.fullmatch(text):
         return (0, float(text), text)
-    chunks = tuple((0, int(c), "") if c.isdigit() else (1, 0, c) for c in re.split("([0-9]+)", text) if c)
+    chunks = tuple((0, int(c), "") if c[0] in "0123456789" else (1, 0, c) for c in re.split("([0-9]+)", text) if c)
     return (1, chunks, text)

@@ -38,9 +38,9 @@ def check_codes(codes: Codes, where: str, camera: Camera) -> None:
             next_step="capture again in the camera's full depth",
         )
     low, high = codes.min(), codes.max()
-    if codes.dtype.kind == "i" and low < 0:
+    if low < (0 if codes.dtype.kind == "i" else -top):  # noise about a subtracted dark frame is honest
         raise FrameRefused(
-            f"the lowest code is {low} DN", where=where, allowed=allowed, next_step="export unsigned codes"
+            f"the lowest code is {low:.10g} DN", where=where, allowed=allowed, next_step="export unsigned codes"
         )
     if codes.dtype.kind != "f" and _left_aligned(codes, camera.bit_depth):
         raise FrameRefused(

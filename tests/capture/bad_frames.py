@@ -51,14 +51,13 @@ def chart_codes(seed: int) -> Codes:
     noise = np.random.default_rng(seed).normal(0, 8, (HEIGHT, WIDTH))
     y, x = np.mgrid[0.5:HEIGHT, 0.5:WIDTH]
     across = (x - WIDTH / 2) * np.cos(np.radians(5)) + (y - HEIGHT / 2) * np.sin(np.radians(5))
-    step = np.vectorize(erf, otypes=[float])(across / (0.7 * np.sqrt(2)))
+    step: NDArray[np.float64] = np.vectorize(erf, otypes=[float])(across / (0.7 * np.sqrt(2)))
     return np.clip(np.rint(1700 + 1200 * step + noise), 0, WHITE).astype(np.uint16)
 
 
 def dark_codes(seed: int) -> Codes:
     """Return one frame without light."""
-    signal: NDArray[np.float64] = np.random.default_rng(seed).normal(BLACK, 4, (HEIGHT, WIDTH))
-    return signal.round().clip(0).astype(np.uint16)
+    return np.random.default_rng(seed).normal(BLACK, 4, (HEIGHT, WIDTH)).round().clip(0).astype(np.uint16)
 
 
 def good_unit(folder: Path, seed: int) -> None:
