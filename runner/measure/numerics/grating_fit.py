@@ -237,13 +237,15 @@ class _Line:
 
     def __init__(self, places: Real, half: float) -> None:
         self._places, self._half = places, half
+        self._waves: dict[float, Complex] = {}
         self._known: dict[tuple[int, float], complex] = {}
 
     def sum(self, power: int, w: float) -> complex:
         """Return Σ (r/half)^power e^{2πi w r}."""
         if (power, w) not in self._known:
-            waves = np.exp(2j * np.pi * w * self._places)
-            self._known[power, w] = complex(((self._places / self._half) ** power * waves).sum())
+            if w not in self._waves:
+                self._waves[w] = np.exp(2j * np.pi * w * self._places)
+            self._known[power, w] = complex((self._places / self._half) ** power @ self._waves[w])
         return self._known[power, w]
 
 

@@ -1,0 +1,110 @@
+"""Finds a grating's frequency in the spatial Fourier transform of a patch, to start a fit from.
+
+The patch is freed of its mean and tilt and multiplied by a Hann window, whose side lobes fall as 1/k³, so that neither
+the background nor the cut at the border covers a weak line. The highest ordinate off the origin is refined by a
+parabola through the logarithms of its neighbours (within a tenth of a bin for a Hann window).
+
+References:
+    F. J. Harris, Proc. IEEE 66 (1978) 51 (windows for harmonic analysis).
+"""
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy import fft
+
+Real = NDArray[np.float64]
+
+GUARD = 2.0
+"""Ordinates this near to the origin, in bins, belong to the background as the window spreads it."""
+
+
+@dataclass(frozen=True)
+class Line:
+    """The strongest line of a patch's spectrum."""
+
+    frequency: tuple[float, float]
+    """Components along x and y, cy/px of the frame; y ≥ 0, and x > 0 where y = 0."""
+    contrast: float
+    """Its power over the median power of all ordinates."""
+    periods: float
+    """Periods between two borders of the patch, counted along the frequency's own direction."""
+
+
+def strongest_line(
+    values: NDArray[np.floating], pitch: tuple[float, float] = (1.0, 1.0), *, guard: float = GUARD
+) -> Line | None:
+    """Find the strongest line.
+
+    Args:
+        values: Patch, rows × columns, light.
+        pitch: Distance of neighbouring columns and rows, px of the frame.
+        guard: Bins around the origin to leave out.
+
+    Returns:
+        The line, or None for a patch that is constant or smaller than 8 × 8.
+    """
+    rows, columns = values.shape
+    if min(rows, columns) < 8 or np.ptp(values) == 0:
+        return None
+    power = spectrum(values)
+    fx, fy = fft.rfftfreq(columns), fft.fftfreq(rows)
+    away = np.hypot(fx[None, :] * columns, fy[:, None] * rows)
+    searched = np.where(away > guard, power, 0.0)
+    row, column = np.unravel_index(int(np.argmax(searched)), power.shape)
+    x = (fx[column] + _shift(power, int(row), int(column), 1) / columns) / pitch[0]
+    y = (fy[row] + _shift(power, int(row), int(column), 0) / rows) / pitch[1]
+    if y < 0 or (y == 0 and x < 0):
+        x, y = -x, -y
+    median = float(np.median(power.ravel()[:: max(1, power.size // 20000)]))
+    contrast = float(power[row, column]) / median if median > 0 else float("inf")
+    size = np.array([columns * pitch[0], rows * pitch[1]])
+    reach = float(np.abs([x, y]) @ size / np.hypot(x, y)) if x or y else 0.0
+    return Line((float(x), float(y)), contrast, float(np.hypot(x, y)) * reach)
+
+
+def spectrum(values: NDArray[np.floating]) -> Real:
+    """Return the power spectrum of a patch without its mean and tilt, Hann window, over the half plane of x ≥ 0.
+
+    Args:
+        values: Rows × columns.
+
+    Returns:
+        Rows × (columns // 2 + 1), in the order of `scipy.fft.rfft2`; a line of amplitude a stands at a²/4.
+    """
+    rows, columns = values.shape
+    x, y = _centred(columns), _centred(rows)
+    flat = values - values.mean()
+    slope_x = float(x @ flat.sum(axis=0)) / (rows * float(x @ x))
+    slope_y = float(y @ flat.sum(axis=1)) / (columns * float(y @ y))
+    flat = flat - slope_x * x[None, :] - slope_y * y[:, None]
+    wx, wy = _hann(columns), _hann(rows)
+    flat = flat * (wx / wx.mean())[None, :] * (wy / wy.mean())[:, None]
+    transformed = fft.rfft2(flat.astype(np.float32)) / flat.size
+    return np.asarray(transformed.real**2 + transformed.imag**2, dtype=np.float64)
+
+
+def _centred(n: int) -> Real:
+    return np.arange(n, dtype=np.float64) - (n - 1) / 2
+
+
+def _hann(n: int) -> Real:
+    return 0.5 - 0.5 * np.cos(2 * np.pi * (np.arange(n) + 0.5) / n)
+
+
+def _shift(power: Real, row: int, column: int, axis: int) -> float:
+    """Return where the peak of a parabola through three log ordinates lies, bins from the middle one."""
+    index = [row, column]
+    around = []
+    for step in (-1, 0, 1):
+        at = list(index)
+        at[axis] += step
+        if axis == 0:
+            at[0] %= power.shape[0]
+        if not 0 <= at[1] < power.shape[1]:
+            return 0.0
+        around.append(float(np.log(power[at[0], at[1]] + 1e-300)))
+    before, middle, after = around
+    bend = before - 2 * middle + after
+    return 0.0 if bend >= 0 else float(np.clip((before - after) / (2 * bend), -0.5, 0.5))
