@@ -72,17 +72,23 @@ def _plain(value: Any) -> str:
 
 
 def uncertainty_fact(document: Document) -> tuple[tuple[str, str, str], ...]:
-    """Return the components of the readings that checks use."""
-    keys = ("capture", "attempt", "quantity", "parameters", "part")
-    used = [[c[k] for k in keys] for c in document["checks"]]
+    """Return the components of the readings that checks use, in themselves or as members of a combination."""
     rows = []
     for reading in document["readings"]:
-        if reading["u"] and [reading[k] for k in keys] in used:
+        if reading["u"] and any(_uses(check, reading) for check in document["checks"]):
             parts = [f"{c['name']} {c['u']:.2g} {c['type']}" for c in reading["components"] if c["u"] > 0]
             unit = "" if reading["measured_in"] == "1" else f" {reading['measured_in']}"
             where = reading["region"] or "whole frame"
-            rows.append((f"{where}: {reading['label']}", f"{reading['u']:.2g}{unit}", ", ".join(parts)))
-    return tuple(rows[:MOST_ROWS])
+            channel = "" if reading["channel"] == "mono" else f", {reading['channel']}"
+            rows.append((f"{where}{channel}: {reading['label']}", f"{reading['u']:.2g}{unit}", ", ".join(parts)))
+    left = len(rows) - MOST_ROWS
+    return (*rows[:MOST_ROWS], *([(f"{left} more readings", "", "stand in results.json")] if left > 0 else []))
+
+
+def _uses(check: Mapping[str, Any], reading: Mapping[str, Any]) -> bool:
+    keys = ("capture", "attempt", "channel", "quantity", "parameters", "part", "estimator")
+    same = all(check[key] == reading[key] for key in keys)
+    return same and (check["where"] == reading["region"] or bool(check["steps"]))
 
 
 def deviations_fact(document: Document) -> tuple[str, ...]:
@@ -97,7 +103,8 @@ def deviations_fact(document: Document) -> tuple[str, ...]:
         rows.append(f"Files that no pattern used: {', '.join(document['unused'])}.")
     if document["earlier"]:
         rows.append(f"An earlier result of this unit is kept in the folder {document['earlier']}.")
-    return tuple(rows[:MOST_ROWS])
+    left = len(rows) - MOST_ROWS
+    return (*rows[:MOST_ROWS], *([f"{left} more remarks stand in results.json."] if left > 0 else []))
 
 
 def machine_fact(program: Mapping[str, Any]) -> str:

@@ -11,7 +11,9 @@ from html import escape
 from math import floor, isfinite, log10
 from typing import Any
 
-INK, FAINT, BAND, LINE, MARK = "#1c2126", "#8a939b", "#c9d8e6", "#1f5a8c", "#8c2f1f"
+INK, FAINT, BAND, LINE, MARK = "#1c2126", "#5b646c", "#c9d8e6", "#1f5a8c", "#8c2f1f"
+FONT = "Report, DejaVu Sans, sans-serif"
+"""`Report` is the font that travels with the program: paper must not depend on what else a machine has."""
 COLOURS: Mapping[str, str] = {
     "conforms": "#1b7a3a",
     "does not conform": "#b3261e",
@@ -20,8 +22,12 @@ COLOURS: Mapping[str, str] = {
     "report only": "#5b646c",
 }
 """Green, red, yellow (dark enough to read) and blue after IEC 60073; always the third cue after word and shape."""
-_WIDE, _HIGH = 300.0, 190.0
-_LEFT, _RIGHT, _TOP, _BOTTOM = 34.0, 8.0, 10.0, 30.0
+_WIDE, _HIGH = 300.0, 170.0
+_LEFT, _RIGHT, _TOP, _BOTTOM = 34.0, 10.0, 18.0, 31.0
+_TICK, _WORD = 9.5, 10.0
+"""px: sizes of letters; on paper, where 300 px are 76 mm, they are 7 pt."""
+_APART = 70.0
+"""px: limits nearer than this have their words on outer sides."""
 
 
 @dataclass(frozen=True)
@@ -54,9 +60,9 @@ def verdict_shape(verdict: str, size: int = 64) -> str:
     line = f'fill="none" stroke="{colour}" class="s-{slug(verdict)}"'
     shapes = {
         "conforms": f'<circle cx="32" cy="32" r="30" {fill}/>'
-        '<path d="M18 33 L28 43 L47 22" fill="none" stroke="#fff" stroke-width="7"/>',
+        '<path d="M18 33 L28 43 L47 22" fill="none" stroke="#fff" stroke-width="7" class="s-ground"/>',
         "does not conform": f'<rect x="4" y="4" width="56" height="56" rx="4" {fill}/>'
-        '<rect x="14" y="27" width="36" height="10" fill="#fff"/>',
+        '<rect x="14" y="27" width="36" height="10" fill="#fff" class="v-ground"/>',
         "cannot decide": f'<path d="M32 3 L61 32 L32 61 L3 32 Z" {line} stroke-width="5"/>'
         f'<path d="M32 3 L32 61 L3 32 Z" {fill}/>',
         "not measured": f'<circle cx="32" cy="32" r="27" {line} stroke-width="9" stroke-dasharray="28 14.41"/>',
@@ -79,13 +85,14 @@ def transfer_picture(curve: Mapping[str, Any], checks: Sequence[Mapping[str, Any
         title: Alternative text.
     """
     xs, ys, us = curve["x"], curve["y"], curve["u"]
-    top = max(1.05, 1.05 * max((y for y in ys if isfinite(y)), default=1.0))
-    frame = Frame((0.0, max(xs[-1], 0.5)), (0.0, top), (_LEFT, _TOP, _WIDE - _RIGHT, _HIGH - _BOTTOM))
+    marks = [mark for check in checks for mark in _limit_marks(check)]
+    top = 1.05 * max(1.0, *(y for y in ys if isfinite(y)), *(mark.y for mark in marks))
+    right = max(xs[-1], 0.5, *(mark.x for mark in marks))
+    frame = Frame((0.0, right), (0.0, top), (_LEFT, _TOP, _WIDE - _RIGHT, _HIGH - _BOTTOM))
     parts = [*_axes(frame, _ticks(*frame.x, 5), _ticks(0.0, top, 4), "spatial frequency, cy/px", "mtf")]
-    for x, y, word in ((0.5, top, "Nyquist"),):
-        (a, b), (c, d) = frame.at(x, 0), frame.at(x, y)
-        parts.append(_line(a, b, c, d, FAINT, 'stroke-dasharray="3 3"', "faint"))
-        parts.append(_text(a - 3, d + 9, word, 8, "end", FAINT))
+    (a, b), (c, d) = frame.at(0.5, 0), frame.at(0.5, top)
+    parts.append(_line(a, b, c, d, FAINT, 'stroke-dasharray="3 3"', "faint"))
+    parts.append(_text(c + 3, d + 8, "Nyquist", _TICK, "start", FAINT) if right > 0.5 else "")
     (a, b), (c, d) = frame.at(frame.x[0], 0.5), frame.at(frame.x[1], 0.5)
     parts.append(_line(a, b, c, d, FAINT, 'stroke-dasharray="1 3"', "faint"))
     if us:
@@ -95,29 +102,46 @@ def transfer_picture(curve: Mapping[str, Any], checks: Sequence[Mapping[str, Any
     parts.append(
         f'<path d="{_path([frame.at(*p) for p in zip(xs, ys, strict=True)])}" {_stroke(LINE, 1.6)} class="curve"/>'
     )
-    parts += [mark for check in checks for mark in _limit_marks(frame, check)]
+    parts += [line for mark in marks for line in _drawn(frame, mark)]
     return _svg(parts, _WIDE, _HIGH, title)
 
 
-def _limit_marks(frame: Frame, check: Mapping[str, Any]) -> list[str]:
-    """Mark a limit: a short bar with a foot on the side where values are not allowed."""
+@dataclass(frozen=True)
+class Mark:
+    """A limit's place on a transfer curve."""
+
+    x: float
+    """cy/px."""
+    y: float
+    """Modulation."""
+    across: bool
+    """It bounds the frequency, not the modulation."""
+    sign: float
+    """-1 for a lower limit, 1 for an upper one."""
+
+
+def _limit_marks(check: Mapping[str, Any]) -> list[Mark]:
+    """Return the places of a check's limits, if it is on `mtf` at a frequency or on a frequency in cy/px."""
+    quantity, frequency = check["quantity"], check["parameters"].get("frequency")
+    level = quantity.removeprefix("mtf")
     marks = []
-    for key, sign in (("at_least", -1.0), ("at_most", 1.0)):
-        limit = check[key]
+    for limit, sign in ((check["at_least"], -1.0), (check["at_most"], 1.0)):
         if limit is None:
             continue
-        frequency = check["parameters"].get("frequency")
-        if check["quantity"] == "mtf" and frequency is not None and frequency[1] == "cy/px":
-            x, y = frame.at(frequency[0], limit)
-            marks.append(_line(x - 7, y, x + 7, y, MARK, 'stroke-width="2"', "mark"))
-            marks.append(_line(x, y, x, y - 6 * sign, MARK, 'stroke-width="1"', "mark"))
-        elif (
-            check["quantity"].startswith("mtf") and check["quantity"][3:].isdigit() and check["measured_in"] == "cy/px"
-        ):
-            x, y = frame.at(limit, int(check["quantity"][3:]) / 100)
-            marks.append(_line(x, y - 7, x, y + 7, MARK, 'stroke-width="2"', "mark"))
-            marks.append(_line(x, y, x - 6 * sign, y, MARK, 'stroke-width="1"', "mark"))
+        if quantity == "mtf" and frequency is not None and frequency[1] == "cy/px":
+            marks.append(Mark(frequency[0], limit, across=False, sign=sign))
+        elif quantity.startswith("mtf") and level.isdigit() and check["measured_in"] == "cy/px":
+            marks.append(Mark(limit, int(level) / 100, across=True, sign=sign))
     return marks
+
+
+def _drawn(frame: Frame, mark: Mark) -> list[str]:
+    """Draw a limit: a short bar with a foot on the side where values are not allowed."""
+    x, y = frame.at(mark.x, mark.y)
+    foot = 6 * mark.sign
+    bar, end = ((0, 7), (x + foot, y)) if mark.across else ((7, 0), (x, y - foot))
+    heavy = _line(x - bar[0], y - bar[1], x + bar[0], y + bar[1], MARK, 'stroke-width="2"', "mark")
+    return [heavy, _line(x, y, *end, MARK, 'stroke-width="1"', "mark")]
 
 
 def edge_picture(fit: Mapping[str, Any], residual: Mapping[str, Any] | None, title: str) -> str:
@@ -131,14 +155,14 @@ def edge_picture(fit: Mapping[str, Any], residual: Mapping[str, Any] | None, tit
     xs, ys = fit["x"], fit["y"]
     span = (min(xs), max(xs))
     low, high = min(-0.1, *ys), max(1.1, *ys)
-    frame = Frame(span, (low, high), (_LEFT, 8.0, _WIDE - _RIGHT, 92.0))
+    frame = Frame(span, (low, high), (_LEFT, _TOP, _WIDE - _RIGHT, 76.0))
     parts = [*_axes(frame, (), (0.0, 0.5, 1.0), "", "edge")]
     parts.append(
         f'<path d="{_path([frame.at(*p) for p in zip(xs, ys, strict=True)])}" {_stroke(LINE, 1.6)} class="curve"/>'
     )
     if residual is not None and residual["x"]:
         top = max(0.1, 1.1 * max(abs(y) for y in residual["y"]))
-        below = Frame(span, (-top, top), (_LEFT, 102.0, _WIDE - _RIGHT, _HIGH - _BOTTOM))
+        below = Frame(span, (-top, top), (_LEFT, 95.0, _WIDE - _RIGHT, _HIGH - _BOTTOM))
         tick = _nice(top / 1.2)
         parts += _axes(below, _ticks(*span, 6), (-tick, 0.0, tick), "distance from the edge, px", "fit − data, %")
         dots = [below.at(x, y) for x, y in zip(residual["x"], residual["y"], strict=True) if span[0] <= x <= span[1]]
@@ -164,10 +188,7 @@ def margin_picture(check: Mapping[str, Any], title: str) -> str:
     parts.append(
         f'<rect x="{low:.1f}" y="17" width="{max(0.0, high - low):.1f}" height="10" fill="#dfe5ea" class="zone"/>'
     )
-    for limit in limits:
-        x = frame.at(limit, 0)[0]
-        parts.append(_line(x, 6, x, 38, INK, 'stroke-width="2"', "ink"))
-        parts.append(_text(x, 50, f"limit {limit:g}", 9, "middle", INK))
+    parts += _limits(frame, limits, (6, 38, 50), "limit ")
     for guard in guards:
         if guard not in limits:
             x = frame.at(guard, 0)[0]
@@ -192,10 +213,7 @@ def strip_picture(values: Sequence[tuple[float, str]], limits: Sequence[float], 
     pad = 0.1 * (max(ends) - min(ends)) or abs(max(ends)) or 1.0
     frame = Frame((min(ends) - pad, max(ends) + pad), (0.0, 1.0), (6.0, 4.0, 394.0, 34.0))
     parts = [_line(6, 19, 394, 19, FAINT, "", "faint")]
-    for limit in limits:
-        x = frame.at(limit, 0)[0]
-        parts.append(_line(x, 4, x, 34, INK, 'stroke-width="2"', "ink"))
-        parts.append(_text(x, 45, f"{limit:g}", 9, "middle", INK))
+    parts += _limits(frame, limits, (4, 34, 46), "")
     for value, verdict in values:
         x = frame.at(value, 0)[0]
         name, colour = slug(verdict), COLOURS.get(verdict, INK)
@@ -205,20 +223,33 @@ def strip_picture(values: Sequence[tuple[float, str]], limits: Sequence[float], 
     return _svg(parts, 400.0, 48.0, title)
 
 
+def _limits(frame: Frame, limits: Sequence[float], heights: tuple[float, float, float], word: str) -> list[str]:
+    """Draw limits as heavy bars (from, to) with their figures (base line) beneath; figures of two never meet."""
+    top, bottom, base = heights
+    places = [frame.at(limit, 0)[0] for limit in limits]
+    near = max(places, default=0.0) - min(places, default=0.0) < _APART
+    anchors = ("end", "start") if len(limits) == 2 and near else ("middle", "middle")
+    parts = []
+    for limit, x, anchor in zip(limits, places, anchors, strict=False):
+        parts.append(_line(x, top, x, bottom, INK, 'stroke-width="2"', "ink"))
+        parts.append(_text(x, base, f"{word}{limit:.10g}", _WORD, anchor, INK))
+    return parts
+
+
 def _axes(frame: Frame, xs: Sequence[float], ys: Sequence[float], x_word: str, y_word: str) -> list[str]:
     left, top, right, bottom = frame.box
     parts = [_line(left, bottom, right, bottom, INK, "", "ink"), _line(left, top, left, bottom, INK, "", "ink")]
     for x in xs:
         place = frame.at(x, frame.y[0])[0]
         parts.append(_line(place, bottom, place, bottom + 3, INK, "", "ink"))
-        parts.append(_text(place, bottom + 12, f"{x:g}", 8, "middle", INK))
+        parts.append(_text(place, bottom + 13, f"{x:g}", _TICK, "middle", INK))
     for y in ys:
         place = frame.at(frame.x[0], y)[1]
         parts.append(_line(left - 3, place, left, place, INK, "", "ink"))
-        parts.append(_text(left - 5, place + 3, f"{y:g}", 8, "end", INK))
+        parts.append(_text(left - 5, place + 3, f"{y:g}", _TICK, "end", INK))
     if x_word:
-        parts.append(_text((left + right) / 2, bottom + 24, x_word, 9, "middle", INK))
-    parts.append(_text(left + 4, top + 7, y_word, 9, "start", INK))
+        parts.append(_text((left + right) / 2, bottom + 27, x_word, _WORD, "middle", INK))
+    parts.append(_text(left + 4, top - 5, y_word, _WORD, "start", INK))
     return parts
 
 
@@ -245,10 +276,10 @@ def _line(x1: float, y1: float, x2: float, y2: float, colour: str, more: str, na
     return f'<path d="M{x1:.1f} {y1:.1f}L{x2:.1f} {y2:.1f}" fill="none" stroke="{colour}" class="{name}" {more}/>'
 
 
-def _text(x: float, y: float, words: str, size: int, anchor: str, colour: str) -> str:
+def _text(x: float, y: float, words: str, size: float, anchor: str, colour: str) -> str:
     name = "t-faint" if colour == FAINT else "t-ink"
-    place = f'x="{x:.1f}" y="{y:.1f}" font-size="{size}" text-anchor="{anchor}"'
-    return f'<text {place} font-family="DejaVu Sans" fill="{colour}" class="{name}">{escape(words)}</text>'
+    place = f'x="{x:.1f}" y="{y:.1f}" font-size="{size:g}" text-anchor="{anchor}"'
+    return f'<text {place} font-family="{FONT}" fill="{colour}" class="{name}">{escape(words)}</text>'
 
 
 def _svg(parts: Sequence[str], wide: float, high: float, title: str) -> str:

@@ -7,7 +7,7 @@ from typing import Any
 from runner.report import drawing
 
 MOST_REGIONS = 12
-"""Regions drawn on paper; the curves of all others stand in results.json."""
+"""Regions whose curves a page shows; those of all others stand in results.json."""
 
 
 @dataclass(frozen=True)
@@ -38,42 +38,51 @@ class CurveFact:
 
 def picture_facts(document: Mapping[str, Any]) -> tuple[PictureFact, ...]:
     """Return the overviews that show regions; a capture without regions needs no picture on paper."""
-    captures = {c["name"]: c for c in document["captures"]}
     facts = []
     for picture in document["pictures"]:
-        regions = captures[picture["capture"]]["regions"]
+        capture = _pictured(picture, document["captures"])
+        regions = capture["regions"]
         named = tuple(
             (str(n), r["region"] + ("" if r["found"] else " (not found)"))
             for n, r in enumerate(regions, 1)
             if r["region"]
         )
         if named:
-            title = f"Regions of '{picture['capture']}' as found"
+            attempt = "" if capture["attempt"] == 1 else f", attempt {capture['attempt']}"
+            title = f"Regions of '{capture['name']}'{attempt} as found"
             words = ", ".join(f"{n} {name}" for n, name in named)
-            facts.append(
-                PictureFact(picture["name"], title, f"Frame of {picture['capture']} with regions {words}", named)
-            )
+            alt = f"Frame of {capture['name']}{attempt} with regions {words}"
+            facts.append(PictureFact(picture["name"], title, alt, named))
     return tuple(facts)
 
 
-def curve_facts(document: Mapping[str, Any]) -> tuple[CurveFact, ...]:
-    """Return the drawn curves of the regions that checks name, those with trouble first."""
+def _pictured(picture: Mapping[str, Any], captures: Sequence[Mapping[str, Any]]) -> Mapping[str, Any]:
+    """Return the capture that a picture shows; of several attempts its name tells which."""
+    mine = [c for c in captures if c["name"] == picture["capture"]]
+    return next((c for c in mine if picture["name"].endswith(f"-attempt-{c['attempt']}-overview.png")), mine[0])
+
+
+def curve_facts(document: Mapping[str, Any]) -> tuple[tuple[CurveFact, ...], int]:
+    """Return the drawn curves of regions, those with trouble first, and how many are left out."""
     facts = []
     curves = [c for c in document["curves"] if c["name"] == "mtf"]
     for curve in sorted(curves, key=lambda c: _trouble(c, document["checks"]))[:MOST_REGIONS]:
         mine = _checks(curve, document["checks"])
         spread, residual = (_companion(curve, document["curves"], name) for name in ("edge spread", "residual"))
-        where = curve["region"] or "whole frame"
-        title = f"{where} ({curve['capture']}, {curve['estimator']})"
+        channel = "" if curve["channel"] == "mono" else f", {curve['channel']}"
+        where = f"{curve['region'] or 'whole frame'}{channel}"
+        attempt = "" if curve["attempt"] == 1 else f", attempt {curve['attempt']}"
+        title = f"{where} ({curve['capture']}{attempt}, {curve['estimator']})"
         transfer = drawing.transfer_picture(curve, mine, f"Transfer curve of {where} with limits")
         edge = drawing.edge_picture(spread, residual, f"Edge fit of {where} with its residual") if spread else ""
         facts.append(CurveFact(title, transfer, edge))
-    return tuple(facts)
+    return tuple(facts), len(curves) - len(facts)
 
 
 def _checks(curve: Mapping[str, Any], checks: Sequence[Mapping[str, Any]]) -> list[Mapping[str, Any]]:
     same = [c for c in checks if (c["capture"], c["attempt"]) == (curve["capture"], curve["attempt"])]
-    return [c for c in same if c["where"] == curve["region"] and c["part"] == "system"]
+    mine = [c for c in same if (c["where"], c["channel"]) == (curve["region"], curve["channel"])]
+    return [c for c in mine if c["part"] == "system"]
 
 
 def _trouble(curve: Mapping[str, Any], checks: Sequence[Mapping[str, Any]]) -> int:

@@ -3,15 +3,30 @@
 Templates put these strings into place and do nothing else.
 """
 
+from collections import Counter
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from hashlib import sha256
 from typing import Any
 
 from runner.judge.lot import margin
-from runner.judge.sentences import decimals, show
-from runner.judge.verdict import CONFORMS, NOT_MEASURED, REPORT_ONLY
+from runner.judge.verdict import CANNOT_DECIDE, CONFORMS, DOES_NOT_CONFORM, NOT_MEASURED, REPORT_ONLY
 from runner.report import drawing
+from runner.report.check_facts import (
+    CheckFact,
+    VerdictFact,
+    WhyFact,
+    blame_texts,
+    capital,
+    check_fact,
+    fault_text,
+    limit_text,
+    place,
+    reason_texts,
+    value_text,
+    verdict_fact,
+    why_facts,
+)
 from runner.report.circumstance_facts import (
     MOST_ROWS,
     Document,
@@ -29,23 +44,12 @@ from runner.report.circumstance_facts import (
 )
 from runner.report.document import canonical
 from runner.report.evidence_facts import CurveFact, PictureFact, curve_facts, picture_facts
+from runner.spec.model import SIMPLE_ACCEPTANCE
 
 WORST = 3
 """Margins drawn on page one."""
-PROBABLE = 0.9995
-"""From here on a probability prints as `> 99.9 %`."""
-
-
-@dataclass(frozen=True)
-class VerdictFact:
-    """A verdict as it appears."""
-
-    word: str
-    """The word."""
-    slug: str
-    """The word as a class name."""
-    shape: str
-    """Its shape as SVG."""
+REASONS = 4
+"""Reasons on page one."""
 
 
 @dataclass(frozen=True)
@@ -58,34 +62,6 @@ class MarginFact:
     """Value and requirement."""
     picture: str
     """SVG."""
-
-
-@dataclass(frozen=True)
-class CheckFact:
-    """One row of the results."""
-
-    number: str
-    """Characteristic."""
-    where: str
-    """Place."""
-    quantity: str
-    """Quantity."""
-    value: str
-    """Value ± U with unit, or a bound, or a dash."""
-    limit: str
-    """Limits."""
-    acceptance: str
-    """Acceptance limits."""
-    probability: str
-    """Probability of conformity."""
-    rule: str
-    """Decision rule."""
-    verdict: VerdictFact
-    """Verdict."""
-    reason: str
-    """Sentence."""
-    because: str
-    """Who is at fault and why, for what was not measured."""
 
 
 @dataclass(frozen=True)
@@ -140,7 +116,7 @@ class Report:
     """What the results table leaves to results.json, or empty."""
     combined: tuple[str, ...]
     """How values of several regions came about, one sentence each."""
-    not_measured: tuple[CheckFact, ...]
+    not_measured: tuple[WhyFact, ...]
     """What has no value, and why."""
     not_measured_because: tuple[str, ...]
     """Who is at fault for it and why, each once."""
@@ -150,6 +126,8 @@ class Report:
     """Overviews."""
     curves: tuple[CurveFact, ...]
     """Curves per region."""
+    curves_left_out: str
+    """How many curves are left to results.json, or empty."""
     conditions: tuple[TableFact, ...]
     """Conditions per capture."""
     station: tuple[Pair, ...]
@@ -178,6 +156,8 @@ def report_facts(document: Document) -> Report:
     checks = document["checks"]
     digest = sha256(canonical(document)).hexdigest()
     kept, left_out = _kept(checks)
+    reasons = reason_texts(document["reasons"])
+    curves, more_curves = curve_facts(document)
     return Report(
         title=f"Test report {unit['serial']}",
         identity=f"{asked['number']}-{asked['revision']} / {unit['serial']} / {digest[:12]}",
@@ -187,30 +167,27 @@ def report_facts(document: Document) -> Report:
         product=unit["product"],
         simulated=_simulated(document),
         verdict=verdict_fact(document["verdict"], 96),
-        fault=_fault(document["at_fault"]),
-        because=_capital(sentence(document["because"])),
+        fault=fault_text(document["at_fault"]),
+        because=capital(sentence(document["because"])),
         next=document["next"],
-        reasons=tuple(sentence(r) for r in document["reasons"][:4]),
-        more_reasons=_more(len(document["reasons"]) - 4),
+        reasons=reasons[:REASONS],
+        more_reasons=_more(len(reasons) - REASONS, "reasons", "the results below"),
         margins=_margins(checks),
         who=_who(document, digest),
         conformity=_conformity(document),
         checks=tuple(check_fact(c) for c in kept),
         left_out=left_out,
         combined=tuple(sentence(c["steps"]) for c in kept if c["steps"]),
-        not_measured=tuple(check_fact(c) for c in checks if c["verdict"] == NOT_MEASURED),
-        not_measured_because=tuple(
-            dict.fromkeys(check_fact(c).because for c in checks if c["verdict"] == NOT_MEASURED)
-        ),
+        not_measured=why_facts(checks),
+        not_measured_because=blame_texts(checks),
         reported=tuple(check_fact(c) for c in checks if c["verdict"] == REPORT_ONLY),
         pictures=picture_facts(document),
-        curves=curve_facts(document),
-        conditions=tuple(
-            TableFact(capture_title(c), tuple((a, b) for a, b in c["conditions"])) for c in first_attempts(document)
-        ),
+        curves=curves,
+        curves_left_out=_more(more_curves, "curves", "results.json"),
+        conditions=_conditions(document),
         station=station_fact(document),
         captures=tuple(capture_fact(c) for c in document["captures"]),
-        frames=tuple(frame_fact(c, f) for c in document["captures"] for f in c["frames"]),
+        frames=tuple(dict.fromkeys(frame_fact(c, f) for c in document["captures"] for f in c["frames"])),
         methods=methods_fact(document),
         uncertainty=uncertainty_fact(document),
         deviations=deviations_fact(document),
@@ -218,71 +195,15 @@ def report_facts(document: Document) -> Report:
     )
 
 
-def verdict_fact(word: str, size: int = 14) -> VerdictFact:
-    """Return a verdict with its shape."""
-    return VerdictFact(word, drawing.slug(word), drawing.verdict_shape(word, size))
-
-
-def check_fact(check: Mapping[str, Any]) -> CheckFact:
-    """Return one check as a row."""
-    unit = check["measured_in"]
-    at_fault = _fault(check["at_fault"])
-    return CheckFact(
-        number=str(check["characteristic"]),
-        where=check["where"] or "whole frame",
-        quantity=check["label"],
-        value=value_text(check),
-        limit=_limits(check["at_least"], check["at_most"], unit, exact=True),
-        acceptance=_limits(check["acceptance"]["at_least"], check["acceptance"]["at_most"], unit, u=check["u"]),
-        probability=probability_text(check["probability"]),
-        rule=f"{check['rule']}, {100 * check['conformance_probability']:g} %",
-        verdict=verdict_fact(check["verdict"]),
-        reason=sentence(check["reason"]),
-        because=f"{at_fault} {_capital(sentence(check['because'] or ''))}".strip(),
-    )
-
-
-def value_text(check: Mapping[str, Any]) -> str:
-    """Return value ± U of a check with enough digits to see why, a bound, or a dash."""
-    if check["bound"] is not None:
-        side, end = check["bound"]
-        return f"{side} {show(end, None, check['measured_in'])}"
-    if check["value"] is None:
-        return "–"
-    return show(check["value"], check["u"], check["measured_in"], against=(check["at_least"], check["at_most"]))
-
-
-def probability_text(probability: float | None) -> str:
-    """Return a probability of conformity; what rounds to 0 or 100 % is told as a bound."""
-    if probability is None:
-        return "–"
-    if probability >= PROBABLE:
-        return "> 99.9 %"
-    return "< 0.1 %" if probability < 1 - PROBABLE else f"{100 * probability:.1f} %"
-
-
-def _limits(low: float | None, high: float | None, unit: str, *, exact: bool = False, u: float | None = None) -> str:
-    if low is not None and high is not None and low > high:
-        return "none: no value can be accepted"
-    parts = [f"{sign} {_number(end, exact=exact, u=u)}" for sign, end in (("≥", low), ("≤", high)) if end is not None]
-    return " and ".join(parts) + ("" if unit in {"1", ""} or not parts else f" {unit}") or "–"
-
-
-def _number(value: float, *, exact: bool, u: float | None) -> str:
-    if exact or not u:
-        return f"{value:.10g}"
-    return f"{value:.{decimals(value, 2 * u)}f}"
-
-
 def _kept(checks: Sequence[Mapping[str, Any]]) -> tuple[list[Mapping[str, Any]], str]:
     judged = [c for c in checks if c["verdict"] != REPORT_ONLY]
     if len(judged) <= MOST_ROWS:
         return judged, ""
-    other = [c for c in judged if c["verdict"] != CONFORMS]
-    near = sorted((c for c in judged if c["verdict"] == CONFORMS), key=_distance)
-    chosen = [*other, *near][:MOST_ROWS]
-    kept = [c for c in judged if any(c is one for one in chosen)]
-    return kept, f"{len(judged) - len(kept)} more checks, farther from their limits, stand in results.json."
+    order = (DOES_NOT_CONFORM, CANNOT_DECIDE, NOT_MEASURED, CONFORMS)
+    ranked = sorted(judged, key=lambda c: (order.index(c["verdict"]), _distance(c)))
+    chosen = {id(c) for c in ranked[:MOST_ROWS]}
+    left = ranked[MOST_ROWS:]
+    return [c for c in judged if id(c) in chosen], f"{len(left)} more checks stand in results.json: {_counts(left)}."
 
 
 def _distance(check: Mapping[str, Any]) -> float:
@@ -294,29 +215,14 @@ def _margins(checks: Sequence[Mapping[str, Any]]) -> tuple[MarginFact, ...]:
     judged = [c for c in checks if c["verdict"] != REPORT_ONLY and margin(c) is not None]
     rows = []
     for check in sorted(judged, key=_distance)[:WORST]:
-        title = f"{check['characteristic']}. {check['label']}, {check['where'] or 'whole frame'}"
-        limit = _limits(check["at_least"], check["at_most"], check["measured_in"], exact=True)
-        text = f"{value_text(check)}; limit {limit}"
+        title = f"{check['characteristic']}. {check['label']}, {place(check)}"
+        text = f"{value_text(check)}; limit {limit_text(check)}"
         rows.append(MarginFact(title, text, drawing.margin_picture(check, f"{title}: {text}")))
     return tuple(rows)
 
 
-def _fault(word: str | None) -> str:
-    return {
-        None: "",
-        "unit": "At fault: the unit.",
-        "capture": "At fault: the capture, not the unit.",
-        "cannot tell": "At fault: cannot tell.",
-        "program": "At fault: the program.",
-    }.get(word, f"At fault: {word}.")
-
-
-def _capital(text: str) -> str:
-    return text[:1].upper() + text[1:]
-
-
-def _more(number: int) -> str:
-    return f"{number} more of this kind stand in the results below." if number > 0 else ""
+def _more(number: int, what: str, where: str) -> str:
+    return f"{number} more {what} stand in {where}." if number > 0 else ""
 
 
 def _grouped(serial: str) -> tuple[str, ...]:
@@ -361,19 +267,14 @@ def _who(document: Document, digest: str) -> tuple[Pair, ...]:
 def _conformity(document: Document) -> tuple[str, ...]:
     asked = document["document"]
     judged = [c for c in document["checks"] if c["verdict"] != REPORT_ONLY]
-    counts = [
-        f"{sum(c['verdict'] == word for c in judged)} {word}" for word in dict.fromkeys(c["verdict"] for c in judged)
-    ]
-    rules = dict.fromkeys((c["rule"], c["conformance_probability"]) for c in judged)
-    named = "; ".join(f"{rule} at a conformance probability of {100 * p:g} %" for rule, p in rules)
     statement = (
         f"Unit {document['unit']['serial']}, judged by test spec {asked['number']} revision {asked['revision']}: "
-        f"{document['verdict']}. Of {len(judged)} checks: {', '.join(counts) or 'none'}."
+        f"{document['verdict']}. Checks: {len(judged)}; {_counts(judged) or 'nothing was judged'}."
     )
     rule = (
-        f"Decision rule: {named or 'none applied'}. The probability is that of the true value lying inside the limits, "
-        "given the value and its uncertainty (JCGM 106:2012, clause 7); the acceptance limit is the limit after the "
-        "guard band."
+        f"Decision rule: {_rules(judged) or 'none applied'}. The probability is that of the true value lying inside "
+        "the limits, given the value and its uncertainty (JCGM 106:2012, clause 7); the acceptance limit is the limit "
+        "after the guard band."
     )
     return (
         statement,
@@ -383,20 +284,26 @@ def _conformity(document: Document) -> tuple[str, ...]:
     )
 
 
-def sentences(document: Document) -> tuple[str, ...]:
-    """Return every value, verdict and sentence that a page prints, for finding them in its text."""
-    facts = report_facts(document)
-    found = [
-        facts.serial,
-        facts.verdict.word,
-        facts.fault,
-        facts.because,
-        facts.next,
-        *facts.reasons,
-        *facts.conformity,
-    ]
-    for check in (*facts.checks, *facts.not_measured, *facts.reported):
-        found += [check.number, check.where, check.quantity, check.value, check.limit, check.verdict.word]
-    found += [*facts.combined, *(check.reason for check in facts.not_measured)]
-    found += [cell for row in (*facts.frames, *facts.uncertainty, *facts.captures) for cell in row]
-    return tuple(dict.fromkeys(text for text in found if text))
+def _conditions(document: Document) -> tuple[TableFact, ...]:
+    """Return the conditions, those that several captures share once."""
+    shared: dict[tuple[Pair, ...], list[str]] = {}
+    for capture in first_attempts(document):
+        shared.setdefault(tuple((a, b) for a, b in capture["conditions"]), []).append(capture_title(capture))
+    return tuple(TableFact(", ".join(titles), rows) for rows, titles in shared.items())
+
+
+def _counts(checks: Sequence[Mapping[str, Any]]) -> str:
+    counts = Counter(c["verdict"] for c in checks)
+    return ", ".join(f"{n} × {word}" for word, n in counts.items())
+
+
+def _rules(checks: Sequence[Mapping[str, Any]]) -> str:
+    """Return the decision rules, with the characteristics that each is for if there are several."""
+    rules: dict[str, list[str]] = {}
+    for check in checks:
+        asked = f" at a conformance probability of {100 * check['conformance_probability']:.10g} %"
+        words = check["rule"] + ("" if check["rule"] == SIMPLE_ACCEPTANCE else asked)
+        rules.setdefault(words, []).append(str(check["characteristic"]))
+    if len(rules) < 2:
+        return "".join(rules)
+    return "; ".join(f"{words} for {', '.join(dict.fromkeys(numbers))}" for words, numbers in rules.items())

@@ -5,10 +5,10 @@ from dataclasses import dataclass
 from typing import Any
 from urllib.parse import quote
 
-from runner.judge.verdict import REPORT_ONLY
+from runner.judge.verdict import REPORT_ONLY, VERDICTS
 from runner.report import drawing
+from runner.report.check_facts import VerdictFact, place, verdict_fact
 from runner.report.circumstance_facts import Pair, sentence
-from runner.report.facts import VerdictFact, verdict_fact
 from runner.report.page import EDITION, environment, inline
 from runner.resources import folder
 
@@ -60,7 +60,7 @@ class LotReport:
     units: tuple[UnitRow, ...]
     """Units by serial."""
     worst: tuple[tuple[str, str, str], ...]
-    """Unit, margin, sentence."""
+    """Unit, margin in standard uncertainties, sentence."""
     strips: tuple[StripFact, ...]
     """Values against limits."""
     unused: tuple[str, ...]
@@ -90,16 +90,16 @@ def lot_facts(lot: Mapping[str, Any], documents: Sequence[Mapping[str, Any]]) ->
         ("Operator", lot["operator"]),
         ("Tested", lot["time"].replace("T", " ").replace("Z", " UTC")),
     ]
-    blame = tuple((f"at fault: {word}", str(n)) for word, n in lot["blame"].items())
+    blame = tuple((word, str(n)) for word, n in sorted(lot["blame"].items()))
     return LotReport(
         title=lot["title"] or f"Lot by {asked['number']}",
         simulated="Simulated: a rehearsal with synthetic frames, no evidence of any unit." if lot["simulated"] else "",
         total=f"{lot['total']} units" if lot["total"] != 1 else "1 unit",
-        counts=tuple((verdict_fact(word, 40), str(n)) for word, n in lot["counts"].items()),
+        counts=tuple((verdict_fact(word, 40), str(lot["counts"][word])) for word in VERDICTS),
         blame=blame,
         who=tuple((label, text) for label, text in who if text),
         units=tuple(_unit(u) for u in lot["units"]),
-        worst=tuple((f"{w['serial']}", f"{w['margin']:+.1f} u", sentence(w["reason"])) for w in lot["worst"]),
+        worst=tuple((f"{w['serial']}", _signed(w["margin"]), sentence(w["reason"])) for w in lot["worst"]),
         strips=_strips(documents),
         unused=tuple(lot["unused"]),
     )
@@ -112,26 +112,34 @@ def _unit(unit: Mapping[str, Any]) -> UnitRow:
 
 
 def _strips(documents: Sequence[Mapping[str, Any]]) -> tuple[StripFact, ...]:
-    """Return one strip per characteristic; each unit shows its value nearest to the limit."""
-    values: dict[str, dict[str, Any]] = {}
+    """Return one strip per requirement; each unit shows its value nearest to the limit."""
+    values: dict[tuple[Any, ...], dict[str, Any]] = {}
     for document in documents:
         for check in document["checks"]:
             if check["value"] is None or check["verdict"] == REPORT_ONLY:
                 continue
-            row = values.setdefault(str(check["characteristic"]), {"check": check, "units": {}})
+            key = tuple(check[k] for k in ("characteristic", "label", "measured_in", "at_least", "at_most"))
+            row = values.setdefault(key, {"check": check, "units": {}, "places": {}})
+            row["places"][place(check)] = None
             serial = document["unit"]["serial"]
             row["units"].setdefault(serial, []).append((check["value"], check["verdict"]))
     strips = []
-    for number, row in values.items():
-        check = row["check"]
+    for row in values.values():
+        check, places = row["check"], list(row["places"])
         limits = [end for end in (check["at_least"], check["at_most"]) if end is not None]
         nearest = [min(v, key=lambda pair: _inside(pair[0], check)) for v in row["units"].values()]
         unit = "" if check["measured_in"] == "1" else f", {check['measured_in']}"
-        title = f"{number}. {check['label']}{unit}"
+        where = places[0] if len(places) == 1 else f"{len(places)} places"
+        title = f"{check['characteristic']}. {check['label']}, {where}{unit}"
         strips.append(
             StripFact(title, drawing.strip_picture(nearest, limits, f"{title}: values of the lot with limits"))
         )
     return tuple(strips)
+
+
+def _signed(margin: float) -> str:
+    """Return a margin with its sign, never as a zero that hides which side it is on."""
+    return f"{margin:+.1f}" if abs(margin) >= 0.05 or margin == 0 else f"{margin:+.1g}"
 
 
 def _inside(value: float, check: Mapping[str, Any]) -> float:

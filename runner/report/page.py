@@ -3,7 +3,6 @@
 import base64
 import re
 from collections.abc import Mapping
-from html import unescape
 from typing import Any
 
 from markupsafe import Markup
@@ -54,12 +53,6 @@ def paper_page(document: Mapping[str, Any]) -> tuple[str, dict[str, bytes]]:
 def inline(svg: str) -> str:
     """Put a drawing into the page itself, where it follows the page's colours."""
     return Markup(svg)  # noqa: S704 - made by `drawing`, which escapes every word
-
-
-def plain_text(html: str) -> str:
-    """Return a page's text with single spaces, for finding sentences in it."""
-    body = re.sub(r"<(style|script)\b.*?</\1>", " ", html, flags=re.DOTALL)
-    return " ".join(unescape(re.sub(r"<[^>]*>", " ", body)).split())
 
 
 def environment(**filters: Any) -> Any:

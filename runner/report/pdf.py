@@ -1,6 +1,7 @@
 """The report on paper: PDF/A-3u with the results and pictures attached, the same bytes for the same results."""
 
 import logging
+import re
 import warnings
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
@@ -115,8 +116,10 @@ def _no_missing_glyph() -> Iterator[None]:
     finally:
         logger.handlers, logger.propagate = kept
     if found:
+        points = dict.fromkeys(re.findall(r"\(U\+([0-9A-F]+)\)", "\n".join(found)))
+        characters = ", ".join(f"{chr(int(point, 16))!r} (U+{point})" for point in [*points][:5]) or found[0]
         raise UsageError(
-            f"the report's fonts lack a character: {found[0]}",
+            f"the report's fonts lack: {characters}",
             allowed="Latin, Greek, Cyrillic, Arabic, Hebrew and mathematical characters",
             next_step="write the name or text in the spec with other characters",
         )

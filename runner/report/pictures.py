@@ -16,17 +16,21 @@ if TYPE_CHECKING:
 
 WIDEST = 1000
 """px: enough to see where a region lies; values stand in the table, never in the picture."""
+NARROWEST = 500
+"""px: smaller frames are shown larger by whole pixels, else the balloons would cover them."""
 GREYS = 64
 """Steps of grey kept, so that sensor noise does not fill the file."""
 OUTLINE, SHADOW = (255, 196, 0), (20, 20, 20)
 _DISPLAY_GAMMA = 2.2
+_BALLOON = 16.0
+"""px: half of a balloon with its surroundings."""
 
 
 def overview(codes: Codes, camera: Camera, regions: Sequence[Mapping[str, Any]]) -> bytes:
     """Return a PNG of a frame with thin region outlines and numbered balloons; same input, same bytes.
 
     Tone: light from black to white level, shown through a gamma of 2.2, not stretched; larger frames are averaged over
-    whole blocks of pixels.
+    whole blocks of pixels, the pixels of small ones are repeated.
 
     Args:
         codes: Rows × columns, DN.
@@ -40,14 +44,17 @@ def overview(codes: Codes, camera: Camera, regions: Sequence[Mapping[str, Any]])
     small = codes[:rows, :columns].reshape(rows // block, block, columns // block, block).mean(axis=(1, 3))
     light = np.clip(linearise(small, camera), 0, 1) ** (1 / _DISPLAY_GAMMA)
     grey = (np.round(light * (GREYS - 1)) * (255 / (GREYS - 1))).astype(np.uint8)
-    picture = Image.fromarray(grey).convert("RGB")
+    larger = max(1, NARROWEST // grey.shape[1])
+    picture = Image.fromarray(grey.repeat(larger, axis=0).repeat(larger, axis=1)).convert("RGB")
     draw = ImageDraw.Draw(picture)
     for number, region in enumerate(regions, 1):
-        _draw_region(draw, region, number, 1 / block)
+        _draw_region(draw, region, number, larger / block, picture.size)
     return _png(picture)
 
 
-def _draw_region(draw: "ImageDraw.ImageDraw", region: Mapping[str, Any], number: int, scale: float) -> None:
+def _draw_region(
+    draw: "ImageDraw.ImageDraw", region: Mapping[str, Any], number: int, scale: float, size: tuple[int, int]
+) -> None:
     if region["box"] is None:
         return
     x0, y0, x1, y1 = (v * scale for v in region["box"])
@@ -61,7 +68,9 @@ def _draw_region(draw: "ImageDraw.ImageDraw", region: Mapping[str, Any], number:
         ends = [(x * scale, y * scale) for x, y in region["outline"]]
         draw.line(ends, fill=SHADOW, width=3)
         draw.line(ends, fill=OUTLINE, width=1)
-    _balloon(draw, x1 + 16, max(16.0, y0), number)
+    across = x1 + _BALLOON if x1 + 2 * _BALLOON <= size[0] else x0 - _BALLOON  # on the side where there is room
+    inside = [min(max(place, _BALLOON), end - _BALLOON) for place, end in zip((across, y0), size, strict=True)]
+    _balloon(draw, inside[0], inside[1], number)
 
 
 def _dashed(
