@@ -34,12 +34,12 @@ def verify(path: Path, terms: Terms) -> Iterator[Outcome]:
         UsageError: There is no report at that place.
     """
     units = _units(path)
-    if not units:
+    lot, documents = verify_lot.has_files(path), []
+    if not units and (not lot or _holds_report(path)):
         yield _verify_one(path, terms)
         return
     if _holds_report(path):  # a good report laid into a lot's own folder hides none of its units
         yield _one_of_many(path, terms, lot=False)
-    lot, documents = verify_lot.has_files(path), []
     for folder in units:
         outcome = _one_of_many(folder, terms, lot=lot)
         documents.append(None if outcome.exit is Exit.DOES_NOT_CONFORM else outcome.document)

@@ -47,6 +47,8 @@ def _checks(folder: Path, documents: Sequence[Mapping[str, Any] | None], terms: 
     if len(signed) < len(documents):
         count = len(documents) - len(signed)
         return [Check("lot", False, f"{count} of its units do not hold, so neither do the lot's own files")]
+    if not signed:
+        return [Check("lot", False, "the lot's own files are here, but no unit's report")]
     odd = _strangers(signed)
     if odd:
         return [Check("lot", False, odd)]
