@@ -53,7 +53,7 @@ def decode(data: bytes, where: str, camera: Camera) -> Decoded:
     directories = read_directories(data, where)
     for page in directories:
         _check(page, where, camera)
-    check_pages(len(directories), where, camera.width * camera.height * (directories[0].first(BITS, 1) + 7) // 8)
+    check_pages(len(directories), where, camera.width * camera.height * -(-directories[0].first(BITS, 1) // 8))
     order = "<" if data[:2] == b"II" else ">"
     pieces = [_pieces(data, page, order) for page in directories]
     tiled = any(TILE_WIDTH in page.integers for page in directories)
