@@ -18,7 +18,7 @@ from runner.measure.numerics import edge_model as em
 from runner.measure.numerics import edge_readouts as readouts
 from runner.measure.numerics.edge_checks import Straightness, shading_effect, shading_shows
 from runner.measure.numerics.edge_curves import Curves, Gradient
-from runner.measure.numerics.line_spread import Array, pixel_transfer
+from runner.measure.numerics.line_spread import GRID, Array, pixel_transfer
 from runner.measure.reading import Component, Curve, Reading, Refusal
 
 ESTIMATOR = "joint fit"
@@ -165,61 +165,60 @@ def _mtf(edge: Edge, wanted: Wanted, blank: Reading) -> Reading:
     gradient = edge.curves.modulus_at(frequency)
     if wanted.part != "lens":
         return _valued(edge, blank, gradient)
-    divisor, chart, u_chart = _divisor(edge, frequency)
+    (divisor,), (chart,) = _divisor(edge, np.array([frequency]))
+    if np.isnan(chart):
+        raise MeasurementRefused(
+            "not defined",
+            f"the chart's own transfer function is stated up to {edge.sample.chart.transfer[-1][0]:g} cy/px only, not "
+            f"at {frequency:.3f}",
+        )
     if divisor < LEAST_DIVISOR:
         raise MeasurementRefused(
             "not defined",
             f"pixel and chart together pass {divisor:.3f} at {frequency:g} cy/px",
             allowed=f"at least {LEAST_DIVISOR:g} to be divided out",
         )
-    value = gradient.value / divisor
-    lens = Gradient(value, gradient.by / divisor, gradient.flags, gradient.least_u / divisor)
-    return _valued(edge, blank, lens, _chart(value * u_chart / chart))
+    value = float(gradient.value / divisor)
+    lens = Gradient(value, gradient.by / divisor, gradient.flags, float(gradient.least_u / divisor))
+    return _valued(edge, blank, lens, _chart(value * edge.sample.chart.transfer_u / float(chart)))
 
 
 def _crossing(edge: Edge, modulation: float, wanted: Wanted, blank: Reading) -> Reading:
-    lens = wanted.part == "lens"
-    most = edge.band
-    if lens:
-        grid = np.arange(0.0, edge.band, readouts.GRID)
-        good = [_divisor(edge, float(f))[0] >= LEAST_DIVISOR for f in grid]
-        most = float(grid[int(np.argmin(good)) - 1]) if not all(good) else edge.band
-
-    def divisor(frequency: Array) -> Array:
-        return np.array([_divisor(edge, float(f))[0] for f in frequency]) if lens else np.ones_like(frequency)
-
-    found = readouts.crossing(edge.curves, modulation, most, divisor)
+    if wanted.part == "lens":
+        found, most, extra = _lens_crossing(edge, modulation)
+    else:
+        found, most, extra = readouts.crossing(edge.curves, modulation, edge.band), edge.band, ()
     if found is None:
         return replace(blank, bound=("above", most), flags=(f"no crossing up to {most:.3f} cy/px",))
-    extra: tuple[Component, ...] = ()
-    if lens:
-        _, chart, u_chart = _divisor(edge, found.value)
-        near = np.array([found.value - 1e-4, found.value + 1e-4])
-        slope = float(np.diff(edge.curves.modulus(near)[0] / divisor(near))[0]) / 2e-4
-        extra = _chart(modulation * u_chart / chart / abs(slope)) if slope else ()
     return _valued(edge, blank, found, extra)
 
 
-def _divisor(edge: Edge, frequency: float) -> tuple[float, float, float]:
-    """Return pixel × chart, the chart alone and its u at a frequency.
+def _lens_crossing(edge: Edge, modulation: float) -> tuple[Gradient | None, float, tuple[Component, ...]]:
+    """Return the crossing, the end of the band where pixel and chart can be divided out, and the chart's part of u."""
+    divisor, chart = _divisor(edge, GRID)
+    divisor = np.where(divisor >= LEAST_DIVISOR, divisor, np.nan)
+    usable = np.isfinite(divisor)
+    most = edge.band if usable.all() else min(edge.band, float(GRID[max(int(np.argmin(usable)) - 1, 0)]))
+    found = readouts.crossing(edge.curves, modulation, most, divisor)
+    if found is None or not edge.sample.chart.transfer_u:
+        return found, most, ()
+    lens = edge.curves.on_grid[0] / divisor
+    near = [found.value - 0.005, found.value + 0.005]
+    slope = float(np.diff(np.interp(near, GRID[usable], lens[usable]))[0]) / 0.01
+    relative = edge.sample.chart.transfer_u / float(np.interp(found.value, GRID, chart))
+    return found, most, _chart(modulation * relative / abs(slope)) if slope else ()
 
-    Raises:
-        MeasurementRefused: `not defined`, the chart's transfer function does not reach that far.
-    """
-    chart = edge.sample.chart
-    pixel = float(pixel_transfer(np.array([frequency]), edge.curves.fit.sides)[0])
+
+def _divisor(edge: Edge, frequency: Array) -> tuple[Array, Array]:
+    """Return pixel × chart, and the chart alone, at some frequencies; NaN beyond the chart's stated ones."""
+    pixel, chart = pixel_transfer(frequency, edge.curves.fit.sides), edge.sample.chart
     if not chart.transfer:
-        return pixel, 1.0, chart.transfer_u
+        return pixel, np.ones_like(frequency)
     points, values = (np.array(each) for each in zip(*chart.transfer, strict=True))
     if points[0] > 0:
         points, values = np.insert(points, 0, 0.0), np.insert(values, 0, 1.0)
-    if frequency > points[-1]:
-        raise MeasurementRefused(
-            "not defined",
-            f"the chart's own transfer function is stated up to {points[-1]:g} cy/px only, not at {frequency:.3f}",
-        )
-    own = float(np.interp(frequency, points, values))
-    return pixel * own, own, chart.transfer_u
+    own = np.interp(frequency, points, values, right=np.nan)
+    return pixel * own, own
 
 
 def _chart(u: float) -> tuple[Component, ...]:

@@ -173,7 +173,7 @@ def test_line_spread_and_transfer_function_agree_in_energy(name: str) -> None:
     """∫ l² dx = 2 ∫₀ |H|² df within 1e-3 (Parseval), both taken from the same fit."""
     curves = Curves(fit_edge(EdgeScene(SPREADS[name], (80, 120), 5.0).render() / 65535))
     x = np.linspace(-30, 30, 2401)
-    in_space = np.sum(np.array([curves.at(float(v))[2] for v in x]) ** 2) * (x[1] - x[0])
+    in_space = np.sum(curves.at(x)[2] ** 2) * (x[1] - x[0])
     f = np.arange(0, 3, 0.002) + 0.001
     h, _ = curves.transfer(f)
     assert 2 * np.sum(np.abs(h) ** 2) * 0.002 == pytest.approx(in_space, rel=1e-3)

@@ -4,7 +4,7 @@ Frequencies run along the edge's normal, in cycles per pixel. The program's own 
 jointly (`numerics.edge_fit`); `iso 12233:2014` follows the standard's letter, for comparison with other laboratories.
 """
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, replace
 from math import isfinite, sqrt
 from typing import Any
@@ -112,9 +112,9 @@ def measure(sample: Sample, options: Options) -> Measurement:
     refuse_exposure(sample)
     signal, flat = _shading_undone(sample, options)
     standard = tuple(Wanted(name, {}, {}) for name in edge_readings.STANDARD)
-    asked = (*sample.wanted, *standard)
+    asked = _once((*sample.wanted, *standard), options.estimator)
     by_iso = [w for w in asked if (w.estimator or options.estimator) == ISO and _iso_yields(w.quantity)]
-    refused = [w for w in sample.wanted if w.estimator == ISO and not _iso_yields(w.quantity)]
+    refused = [w for w in asked if w.estimator == ISO and not _iso_yields(w.quantity)]
     by_fit = [w for w in asked if w not in by_iso and w not in refused]
     readings: list[Reading] = [_iso_refusal(sample, w) for w in refused]
     curves: tuple[Curve, ...] = ()
@@ -134,7 +134,7 @@ def measure(sample: Sample, options: Options) -> Measurement:
         measured = _by_iso(sample, signal, by_iso, noise)
         readings += measured.readings
         curves += measured.curves
-    return Measurement(_once(readings), curves)
+    return Measurement(tuple(readings), curves)
 
 
 def _fitted(sample: Sample, options: Options, signal: Any, flat: Flat | None) -> edge_readings.Edge:
@@ -218,12 +218,12 @@ def _shading_undone(sample: Sample, options: Options) -> tuple[Any, Flat | None]
     return sample.crop.signal / flat.field, flat
 
 
-def _once(readings: list[Reading]) -> tuple[Reading, ...]:
-    """Drop readings that were asked for and are standard too."""
-    kept: dict[tuple[object, ...], Reading] = {}
-    for reading in readings:
-        parameters = tuple(sorted((k, a.value, a.unit) for k, a in reading.parameters.items()))
-        kept.setdefault((reading.quantity, parameters, reading.part, reading.estimator), reading)
+def _once(wishes: Iterable[Wanted], estimator: str) -> tuple[Wanted, ...]:
+    """Drop wishes that come twice: asked for by several limits, or asked for and standard too."""
+    kept: dict[tuple[object, ...], Wanted] = {}
+    for wanted in wishes:
+        parameters = tuple(sorted((k, a.value, a.unit) for k, a in wanted.parameters.items()))
+        kept.setdefault((wanted.quantity, parameters, wanted.part, wanted.estimator or estimator), wanted)
     return tuple(kept.values())
 
 

@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from runner.errors import MeasurementRefused
-from runner.measure.numerics.edge_curves import Curves
+from runner.measure.numerics.edge_curves import Curves, Gradient
 from runner.measure.numerics.edge_fit import EdgeFit
 from runner.measure.numerics.edge_geometry import edge_length
 from runner.measure.numerics.edge_readouts import crossing, edge_width
@@ -80,8 +80,7 @@ def band(fit: EdgeFit) -> float:
     Raises:
         MeasurementRefused: `too few crossings` or `undersampled`.
     """
-    d = np.sort(fit.parts.line.distance(fit.pixels.u, fit.pixels.v))
-    near = d[np.abs(d) < 1.5]
+    near = np.sort(fit.pixels.distance[np.abs(fit.pixels.distance) < 1.5])
     gap = float(np.diff(near).max()) if near.size > 2 else np.inf
     shape = fit.pixels.shape
     length = edge_length(shape, fit.parts.line.normal, float(fit.parts.line.coefficients[0]))
@@ -126,7 +125,7 @@ def check(curves: Curves, *, shading_known: bool) -> tuple[float, Straightness]:
     _check_plateaus(curves)
     half = crossing(curves, 0.5, most)
     if half is not None:
-        _check_shape(curves, half.value, half.u(fit.covariance), straight, shading_known=shading_known)
+        _check_shape(curves, half, straight, shading_known=shading_known)
     return most, straight
 
 
@@ -195,7 +194,7 @@ def _squares(curves: Curves, side: int) -> tuple[Array, NDArray[np.bool_]]:
         return np.asarray(kept.reshape(rows // side, side, columns // side, side).mean(axis=(1, 3)))
 
     away = edge_width(curves).value + side
-    return means(fit.linear.residual), np.abs(means(fit.parts.line.distance(fit.pixels.u, fit.pixels.v))) > away
+    return means(fit.linear.residual), np.abs(means(fit.pixels.distance)) > away
 
 
 def _check_alone(curves: Curves) -> None:
@@ -220,7 +219,8 @@ def _check_plateaus(curves: Curves) -> None:
         )
 
 
-def _check_shape(curves: Curves, half: float, u: float, straight: Straightness, *, shading_known: bool) -> None:
+def _check_shape(curves: Curves, crossed: Gradient, straight: Straightness, *, shading_known: bool) -> None:
+    half, u = crossed.value, crossed.u(curves.fit.covariance)
     if u > LEAST_KNOWN * half:
         raise MeasurementRefused(
             "too noisy",
@@ -238,7 +238,7 @@ def _check_shape(curves: Curves, half: float, u: float, straight: Straightness, 
             next_step="raise the order of the edge (up to 5) or make the region shorter",
         )
     if not shading_known:
-        _check_even(curves, half)
+        _check_even(curves, crossed)
 
 
 def shading_effect(curves: Curves, by: Array) -> float:
@@ -252,10 +252,9 @@ def shading_shows(fit: EdgeFit, deviations: float = 2.0) -> bool:
     return bool(np.any(np.abs(found) > deviations * u))
 
 
-def _check_even(curves: Curves, half: float) -> None:
+def _check_even(curves: Curves, crossed: Gradient) -> None:
     (across, along), u = curves.fit.shade_free
-    found = crossing(curves, 0.5, 1.0)
-    change = abs(shading_effect(curves, found.by)) / half if found is not None else 0.0
+    change = abs(shading_effect(curves, crossed.by)) / crossed.value
     limit = MOST_SHADED if abs(along) > CERTAIN * u[1] else MOST_SHADED_ACROSS
     if shading_shows(curves.fit, CERTAIN) and change > limit:
         raise MeasurementRefused(

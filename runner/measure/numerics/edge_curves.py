@@ -5,7 +5,7 @@ values are of the whole line spread: the edge spread runs from 0 to 1, the trans
 """
 
 from dataclasses import dataclass
-from functools import cached_property
+from functools import cached_property, lru_cache
 
 import numpy as np
 
@@ -58,53 +58,69 @@ class Curves:
         whole[self.index] = by
         return whole
 
-    def at(self, x: float) -> tuple[float, Array, float, Array]:
-        """Return edge spread, its derivatives to the shape, line spread and its derivatives at one distance."""
-        spreads, densities = em.shape_columns(np.array([x]), self.fit.parts, self.fit.lattice, self.fit.sides)
-        e, d = (float(c[0] @ self.shape) / self.rise for c in (spreads, densities))
-        return e, (spreads[0] - e * self.areas) / self.rise, d, (densities[0] - d * self.areas) / self.rise
+    def at(self, x: Array) -> tuple[Array, Array, Array, Array]:
+        """Return edge spread, its derivatives to the shape, line spread and its derivatives at some distances."""
+        spreads, densities = em.shape_columns(x, self.fit.parts, self.fit.lattice, self.fit.sides)
+        e, d = (columns @ self.shape / self.rise for columns in (spreads, densities))
+        by_e, by_d = (
+            (columns - value[:, None] * self.areas) / self.rise for columns, value in ((spreads, e), (densities, d))
+        )
+        return e, by_e, d, by_d
 
-    def transfer(self, frequency: Array) -> tuple[Complex, Complex]:
-        """Return ∫ line spread · exp(-2πi f x) dx about the fitted edge line, and its derivatives to the shape."""
+    def transfer(self, frequency: Array | None) -> tuple[Complex, Complex]:
+        """Return ∫ line spread · exp(-2πi f x) dx about the fitted edge line, and its derivatives to the shape.
+
+        Args:
+            frequency: cy/px; None for the whole `GRID`.
+        """
         columns = em.shape_transfers(frequency, self.fit.parts, self.fit.lattice, self.fit.sides)
         value = columns @ self.shape / self.rise
         return value, np.asarray((columns - value[:, None] * self.areas) / self.rise)
 
-    def modulus(self, frequency: Array) -> tuple[Array, Array]:
+    def modulus(self, frequency: Array | None) -> tuple[Array, Array]:
         """Return |H| corrected for its own noise, and its standard uncertainty.
 
         |H| of a noisy H reads high: E|Ĥ|² = |H|² + the variances of both components, which is taken off. The noise
         is that of repeated captures; what the data leave open about the shape does not make |H| read high.
         """
-        h, along, across = self._components(frequency)
-        noise = _quadratic(along, self.sampling) + _quadratic(across, self.sampling)
-        size = np.sqrt(np.maximum(0.0, np.abs(h) ** 2 - noise))
-        u = _quadratic(along, self.posterior)
-        # near zero either component may be the one that counts
-        near = np.abs(h) ** 2 < 9 * noise
-        return size, np.sqrt(np.where(near, np.maximum(u, _quadratic(across, self.posterior)), u))
+        size, u, _ = self._modulus(frequency)
+        return size, u
+
+    @cached_property
+    def on_grid(self) -> tuple[Array, Array]:
+        """Return the same on `GRID`."""
+        return self.modulus(None)
 
     def modulus_at(self, frequency: float) -> Gradient:
         """Return the same at one frequency, with its derivatives."""
-        at = np.array([frequency])
-        (size,), (u,) = self.modulus(at)
-        _, along, _ = self._components(at)
-        flags = ("near zero: corrected for its own noise",) if size < 3 * u else ()
-        return Gradient(float(size), self.full(along[0]), flags, float(u))
+        (size,), (u,), along = self._modulus(np.array([frequency]))
+        return Gradient(float(size), self.full(along[0]), (), float(u))
 
-    def _components(self, frequency: Array) -> tuple[Complex, Array, Array]:
-        """H and the derivatives of its components along and across its own direction."""
+    def _modulus(self, frequency: Array | None) -> tuple[Array, Array, Array]:
         h, by = self.transfer(frequency)
+        # derivatives of H's components along and across its own direction
         unit = np.exp(-1j * np.angle(h))[:, None] * by
-        return h, unit.real, unit.imag
+        along, across = unit.real, unit.imag
+        noise = _quadratic(along, self.sampling) + _quadratic(across, self.sampling)
+        size = np.sqrt(np.maximum(0.0, np.abs(h) ** 2 - noise))
+        u = _quadratic(along, self.posterior)
+        near = np.abs(h) ** 2 < 9 * noise
+        if near.any():  # near zero either component may be the one that counts
+            u[near] = np.maximum(u[near], _quadratic(across[near], self.posterior))
+        return size, np.sqrt(u), along
 
     @cached_property
     def draws(self) -> Array:
         """Return draws of the shape from the posterior, draws × parts; always the same ones for the same fit."""
-        values, vectors = np.linalg.eigh(self.posterior)
-        normal = np.random.default_rng(12233).standard_normal((DRAWS, values.size))
-        return np.asarray(self.shape + (normal * np.sqrt(np.maximum(values, 0))) @ vectors.T)
+        scale = np.sqrt(np.diag(self.posterior))
+        root = np.linalg.cholesky(self.posterior / (scale[:, None] * scale) + 1e-9 * np.eye(scale.size))
+        return np.asarray(self.shape + (_normal(scale.size) @ root.T) * scale)
+
+
+@lru_cache(maxsize=16)
+def _normal(size: int) -> Array:
+    return np.random.default_rng(12233).standard_normal((DRAWS, size))
 
 
 def _quadratic(by: Array, covariance: Array) -> Array:
-    return np.asarray(np.maximum(0.0, np.einsum("fi,fi->f", by @ covariance, by)))
+    return np.asarray(np.maximum(0.0, ((by @ covariance) * by).sum(axis=1)))

@@ -13,6 +13,7 @@ References:
 """
 
 from dataclasses import dataclass, replace
+from functools import cached_property
 
 import numpy as np
 from scipy import linalg
@@ -20,7 +21,7 @@ from scipy import linalg
 from runner.errors import MeasurementRefused
 from runner.measure.numerics import edge_model as em
 from runner.measure.numerics.edge_geometry import find_edge
-from runner.measure.numerics.edge_model import Linear, Noise, Parts, Pixels
+from runner.measure.numerics.edge_model import Linear, Noise, Parts, Pixels, Residuals
 from runner.measure.numerics.edge_noise import correlation, defects, misfit, noise_of
 from runner.measure.numerics.line_spread import Array, Lattice, lattice_for
 
@@ -78,7 +79,7 @@ class EdgeFit:
     shading: bool
     """Shading was fitted."""
 
-    @property
+    @cached_property
     def shape_index(self) -> Array:
         """Places of the line spread's parts in the covariance."""
         head = self.linear.head
@@ -109,7 +110,7 @@ def fit_edge(
     line, low, high = find_edge(signal)
     pixels = Pixels(signal, line)
     start = Parts(line, low, high - low, 1.5, 0.0, 0.0, 0.0, 1.0, np.zeros(0), np.zeros(2))
-    reach = float(np.abs(line.distance(pixels.u, pixels.v)).max())
+    reach = float(np.abs(pixels.distance).max())
     plain = _plain_fit(pixels, start, reach, aperture)
     if order > 1:
         bent = np.concatenate([plain.line.coefficients, np.zeros(order - 1)])
@@ -163,12 +164,40 @@ def _plain_fit(pixels: Pixels, parts: Parts, reach: float, aperture: float) -> P
 
 @dataclass(frozen=True)
 class _Solved:
-    """One solution of the penalised normal equations."""
+    """One solution of the penalised normal equations; covariances are made when they are asked for."""
 
-    change: Array  # fixed and sliding columns: change; kernels: new areas
-    covariance: Array
-    sampling: Array
-    freedom: float  # effective number of parameters
+    change: Array
+    """Fixed and sliding columns: change; kernels: new areas."""
+    freedom: float
+    """Effective number of parameters."""
+    unit: Array
+    """Scale of every parameter: all below is of parameters times unit."""
+    head: Array
+    """Covariance of the parameters before the kernels, kernels known."""
+    lift: Array
+    """How all parameters follow the principal directions of the kernels."""
+    data: Array
+    """Information of the data along each direction."""
+    gain: Array
+    """Variance along each direction, averaged over prior sizes."""
+    between: Array
+    """Prior sizes × directions: deviation of each size's solution from the average, times the root of its weight."""
+
+    @cached_property
+    def covariance(self) -> Array:
+        """Posterior covariance."""
+        aside = self.lift @ self.between.T
+        return self._whole((self.lift * self.gain) @ self.lift.T + aside @ aside.T)
+
+    @cached_property
+    def sampling(self) -> Array:
+        """Covariance over repeated captures."""
+        return self._whole((self.lift * (self.gain**2 * self.data)) @ self.lift.T)
+
+    def _whole(self, inner: Array) -> Array:
+        size = self.head.shape[0]
+        inner[:size, :size] += self.head
+        return np.asarray(inner / (self.unit[:, None] * self.unit[None, :]))
 
 
 def _joint_fit(
@@ -179,7 +208,7 @@ def _joint_fit(
     sizes = _kernel_sizes(lattice, spread_width(parts.sigma), scale)
     parts = replace(parts, kernels=np.zeros(lattice.centres.size), tail_width=max(1.0, spread_width(parts.sigma)))
     floor = max(noise_floor, MODEL_FLOOR * scale)
-    noise = noise_of(em.linearise(pixels, parts, lattice, parts.line.sides(aperture), None), floor)
+    noise = noise_of(em.residuals(pixels, parts, lattice, parts.line.sides(aperture)), floor)
     excess, together, left_out = 1.0, 1.0, 0
     for turn in range(8):
         linear = em.linearise(pixels, parts, lattice, parts.line.sides(aperture), noise.times(excess))
@@ -190,7 +219,7 @@ def _joint_fit(
             parts = replace(parts, line=parts.line.turned())
         pixels.place(parts.line)
         if turn == 1:
-            left_out = _fill_defects(pixels, em.linearise(pixels, parts, lattice, parts.line.sides(aperture), noise))
+            left_out = _fill_defects(pixels, em.residuals(pixels, parts, lattice, parts.line.sides(aperture)))
         if turn == 2:
             together = correlation(linear, pixels.shape)
         if turn > 1:
@@ -226,12 +255,12 @@ def _joint_fit(
     )
 
 
-def _fill_defects(pixels: Pixels, linear: Linear) -> int:
+def _fill_defects(pixels: Pixels, found: Residuals) -> int:
     """Give defect pixels the fitted value, so that they neither pull the fit nor count as noise."""
-    found = defects(linear)
+    places = defects(found)
     pixels.signal = pixels.signal.copy()
-    pixels.signal[found] -= linear.residual[found]
-    return int(found.size)
+    pixels.signal[places] -= found.residual[places]
+    return int(places.size)
 
 
 def _kernel_sizes(lattice: Lattice, width: float, rise: float) -> Array:
@@ -261,10 +290,9 @@ def _solve(linear: Linear, parts: Parts, sizes: Array, scale: float, *, shading:
     unit[head:] = 1 / sizes
     matrix /= unit[:, None] * unit[None, :]
     right /= unit
-    factor = linalg.cho_factor(matrix[:head, :head] + 1e-12 * np.eye(head))
-    pull = linalg.cho_solve(factor, matrix[:head, head:])
-    left = matrix[head:, head:] - matrix[head:, :head] @ pull
-    values, vectors = linalg.eigh(left)
+    own = linalg.inv(matrix[:head, :head] + 1e-12 * np.eye(head))
+    pull = own @ matrix[:head, head:]
+    values, vectors = np.linalg.eigh(matrix[head:, head:] - matrix[head:, :head] @ pull)
     values = np.maximum(values, 0)
     rho = vectors.T @ (right[head:] - pull.T @ right[:head])
     squared = PRIOR_SIZES[:, None] ** 2
@@ -274,18 +302,11 @@ def _solve(linear: Linear, parts: Parts, sizes: Array, scale: float, *, shading:
     weight /= weight.sum()
     mean_gain = weight @ gain
     kernels = vectors @ (mean_gain * rho)
-    spread = (gain - mean_gain) * rho * np.sqrt(weight)[:, None]
-    inner = vectors @ (np.diag(mean_gain) + spread.T @ spread) @ vectors.T
-    lift = np.vstack([-pull, np.eye(sizes.size)])
-    covariance = lift @ inner @ lift.T
-    sampling = lift @ (vectors * (mean_gain**2 * values)) @ (lift @ vectors).T
-    own = linalg.cho_solve(factor, np.eye(head))
-    covariance[:head, :head] += own
-    sampling[:head, :head] += own
-    change = np.concatenate([linalg.cho_solve(factor, right[:head]) - pull @ kernels, kernels])
+    between = (gain - mean_gain) * rho * np.sqrt(weight)[:, None]
+    change = np.concatenate([own @ right[:head] - pull @ kernels, kernels])
     freedom = head + float((mean_gain * values).sum())
-    units = unit[:, None] * unit[None, :]
-    return _Solved(change / unit, covariance / units, sampling / units, freedom)
+    lift = np.vstack([-pull @ vectors, vectors])
+    return _Solved(change / unit, freedom, unit, own, lift, values, mean_gain, between)
 
 
 def _moved(parts: Parts, solved: _Solved, linear: Linear, *, shading: bool) -> Parts:

@@ -40,16 +40,12 @@ class EdgeLine:
 
     def distance(self, u: Array, v: Array) -> Array:
         """Return signed distances to the edge, px, positive on the bright side; exact for a straight edge."""
+        if not self.coefficients[1:].any():
+            return np.asarray(u - self.coefficients[0])
         t = v / self.half
         g = legendre.legval(t, self.coefficients)
-        slope = self.slope(t)
+        slope = legendre.legval(t, legendre.legder(self.coefficients)) / self.half
         return np.asarray((u - g) / np.sqrt(1 + slope * slope))
-
-    def slope(self, t: Array | float) -> Array:
-        """Return du/dv at v = half·t."""
-        if self.coefficients.size < 2:
-            return np.zeros_like(np.asarray(t, dtype=np.float64))
-        return np.asarray(legendre.legval(t, legendre.legder(self.coefficients)) / self.half)
 
     @property
     def tilt(self) -> float:

@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 
 from runner.measure.numerics.edge_geometry import EdgeLine
 from runner.measure.numerics.line_spread import (
+    GRID,
     Array,
     Lattice,
     gauss_transfer,
@@ -96,9 +97,12 @@ class Pixels:
         self.place(line)
 
     def place(self, line: EdgeLine) -> None:
-        """Take the coordinates of this line's normal."""
-        self.u, self.v = line.along(self.shape)
-        self.polynomials = legendre.legvander(self.v / line.half, max(1, line.coefficients.size - 1)).T
+        """Take the coordinates of this line's normal, and the distances from it."""
+        u, self.v = line.along(self.shape)
+        self.distance = line.distance(u, self.v)
+        t = self.v / line.half
+        order = line.coefficients.size - 1
+        self.polynomials = [np.ones_like(t), t, *(legendre.legvander(t, order).T[2:] if order > 1 else ())]
 
 
 @dataclass(frozen=True)
@@ -151,13 +155,18 @@ def shape_columns(
     return np.hstack([first, kernel_spreads]), np.hstack([second, kernel_densities])
 
 
-def shape_transfers(frequency: Array, parts: Parts, lattice: Lattice, sides: tuple[float, float]) -> Complex:
-    """Return the transforms of the parts (step, widening, shift, tail, kernels), frequencies × parts."""
-    base = pixel_transfer(frequency, sides) * gauss_transfer(frequency, parts.sigma)
-    widening = -base * (2 * np.pi * parts.sigma * frequency) ** 2
-    shift = -2j * np.pi * frequency * base
-    first = np.column_stack([base, widening, shift, tail_transfer(frequency, parts.tail_width)])
-    return np.hstack([first, lattice.transfer(frequency)])
+def shape_transfers(frequency: Array | None, parts: Parts, lattice: Lattice, sides: tuple[float, float]) -> Complex:
+    """Return the transforms of the parts (step, widening, shift, tail, kernels), frequencies × parts; None: on GRID."""
+    kernels = lattice.on_grid if frequency is None else lattice.transfer(frequency)
+    f = GRID if frequency is None else frequency
+    base = pixel_transfer(f, sides) * gauss_transfer(f, parts.sigma)
+    columns = np.empty((f.size, 4 + kernels.shape[1]), dtype=np.complex128)
+    columns[:, 0] = base
+    columns[:, 1] = -base * (2 * np.pi * parts.sigma * f) ** 2
+    columns[:, 2] = -2j * np.pi * f * base
+    columns[:, 3] = tail_transfer(f, parts.tail_width)
+    columns[:, 4:] = kernels
+    return columns
 
 
 AREAS = (1.0, 0.0, 0.0, 1.0)
@@ -165,29 +174,44 @@ AREAS = (1.0, 0.0, 0.0, 1.0)
 
 
 @dataclass(frozen=True)
-class Linear:
-    """Normal equations of one Gauss-Newton step, in the order fixed columns, sliding columns, kernels."""
+class Residuals:
+    """The model against all pixels."""
 
     model: Model
-    """Where it was linearised."""
+    """The model at the nodes."""
     index: NDArray[np.intp]
     """Bin of every pixel."""
     residual: Array
     """Exact residual of every pixel."""
+    counts: Array
+    """Pixels per bin."""
+    sums: Array
+    """Sum of residuals per bin."""
+    spread: Array
+    """Normalised edge spread at the nodes."""
+
+    @property
+    def means(self) -> Array:
+        """Mean residual per bin."""
+        return np.asarray(self.sums / np.maximum(self.counts, 1))
+
+    @property
+    def within(self) -> Array:
+        """Sum of squared residuals about that mean, per bin."""
+        squares = _summed(self.index, self.residual * self.residual, self.counts.size)
+        return np.asarray(squares - self.counts * self.means**2)
+
+
+@dataclass(frozen=True)
+class Linear(Residuals):
+    """Normal equations of one Gauss-Newton step, in the order fixed columns, sliding columns, kernels."""
+
     matrix: Array
     """Jᵀ W J."""
     right: Array
     """Jᵀ W r."""
-    counts: Array
-    """Pixels per bin."""
-    means: Array
-    """Mean residual per bin."""
-    within: Array
-    """Sum of squared residuals about that mean, per bin."""
     weights: Array
     """1 / variance of a pixel, per bin."""
-    spread: Array
-    """Normalised edge spread at the nodes."""
 
     @property
     def head(self) -> int:
@@ -195,68 +219,75 @@ class Linear:
         return FIXED + len(self.model.sliding)
 
 
+def residuals(pixels: Pixels, parts: Parts, lattice: Lattice, sides: tuple[float, float]) -> Residuals:
+    """Compare the model with all pixels, which were placed on the parts' line before."""
+    model = model_of(parts, lattice, sides)
+    at = lattice.warped(pixels.distance)
+    fitted = lattice.interpolate(at, model.value, model.slope)
+    if parts.shade.any():
+        fitted *= 1 + parts.shade[0] * pixels.distance / parts.line.half + parts.shade[1] * pixels.polynomials[1]
+    residual = pixels.signal - fitted
+    size = lattice.nodes.size
+    index = np.clip((at + 0.5).astype(np.intp), 0, size - 1)
+    counts = np.bincount(index, minlength=size).astype(np.float64)
+    sums = _summed(index, residual, size)
+    return Residuals(model, index, residual, counts, sums, (model.value - parts.low) / parts.rise)
+
+
 def linearise(
     pixels: Pixels, parts: Parts, lattice: Lattice, sides: tuple[float, float], noise: Noise | None
 ) -> Linear:
     """Linearise the model about `parts` on all pixels; without noise every pixel has weight 1."""
-    model = model_of(parts, lattice, sides)
-    d = parts.line.distance(pixels.u, pixels.v)
-    at = lattice.warped(d)
-    fitted = lattice.interpolate(at, d, model.value, model.slope)
-    if parts.shade.any():
-        fitted *= 1 + parts.shade[0] * d / parts.line.half + parts.shade[1] * pixels.polynomials[1]
-    residual = pixels.signal - fitted
-    size = lattice.nodes.size
-    index = np.clip(np.asarray(np.rint(at), dtype=np.intp), 0, size - 1)
-    counts = np.bincount(index, minlength=size).astype(np.float64)
-    sums = _summed(index, residual, size)
-    squares = _summed(index, residual * residual, size)
-    spread = (model.value - parts.low) / parts.rise
-    weights = 1 / noise.at(spread) if noise is not None else np.ones(size)
-    matrix = _matrix(pixels, model, index, counts, weights)
-    right = _right(pixels, model, index, residual, sums, weights)
-    means = sums / np.maximum(counts, 1)
-    return Linear(model, index, residual, matrix, right, counts, means, squares - counts * means**2, weights, spread)
+    found = residuals(pixels, parts, lattice, sides)
+    weights = 1 / noise.at(found.spread) if noise is not None else np.ones(lattice.nodes.size)
+    matrix = _matrix(pixels, found, weights)
+    right = _right(pixels, found, found.residual, found.sums, weights)
+    return Linear(**vars(found), matrix=matrix, right=right, weights=weights)
 
 
 def response(pixels: Pixels, linear: Linear, change: Array) -> Array:
     """Return Jᵀ W change for any change of the region's signal (rows × columns, or flat)."""
     flat = np.ravel(change)
-    sums = _summed(linear.index, flat, linear.counts.size)
-    return _right(pixels, linear.model, linear.index, flat, sums, linear.weights)
+    return _right(pixels, linear, flat, _summed(linear.index, flat, linear.counts.size), linear.weights)
 
 
 def _summed(index: NDArray[np.intp], values: Array, size: int) -> Array:
     return np.asarray(np.bincount(index, values, minlength=size), dtype=np.float64)
 
 
-def _right(pixels: Pixels, model: Model, index: NDArray[np.intp], values: Array, sums: Array, weights: Array) -> Array:
-    fixed = model.columns.T @ (weights * sums)
+def _right(pixels: Pixels, found: Residuals, values: Array, sums: Array, weights: Array) -> Array:
+    fixed = found.model.columns.T @ (weights * sums)
     moments = {0: sums}
-    for _, j in model.sliding:
+    for _, j in found.model.sliding:
         if j not in moments:
-            moments[j] = _summed(index, values * pixels.polynomials[j], sums.size)
-    slid = [float((weights * profile) @ moments[j]) for profile, j in model.sliding]
+            moments[j] = _summed(found.index, values * pixels.polynomials[j], sums.size)
+    slid = [float((weights * profile) @ moments[j]) for profile, j in found.model.sliding]
     return np.concatenate([fixed[:FIXED], slid, fixed[FIXED:]])
 
 
-def _matrix(pixels: Pixels, model: Model, index: NDArray[np.intp], counts: Array, weights: Array) -> Array:
-    used = np.flatnonzero(counts)
-    f, w = model.columns[used], weights[used]
-    fixed = f.T @ (f * (w * counts[used])[:, None])
-    moments: dict[tuple[int, int], Array] = {(0, 0): counts[used]}
+def _matrix(pixels: Pixels, found: Residuals, weights: Array) -> Array:
+    used = np.flatnonzero(found.counts)
+    w, sliding = weights[used], found.model.sliding
+    f = found.model.columns[used]
+    scaled = f * np.sqrt(w * found.counts[used])[:, None]
+    fixed = scaled.T @ scaled
+    moments: dict[tuple[int, int], Array] = {(0, 0): found.counts[used]}
 
     def moment(i: int, j: int) -> Array:
         key = (min(i, j), max(i, j))
         if key not in moments:
             product = pixels.polynomials[key[1]] * (pixels.polynomials[key[0]] if key[0] else 1.0)
-            moments[key] = _summed(index, product, counts.size)[used]
+            moments[key] = _summed(found.index, product, found.counts.size)[used]
         return moments[key]
 
-    slid = np.column_stack([(w * profile[used]) * moment(0, j) for profile, j in model.sliding])
+    slid = np.column_stack([(w * profile[used]) * moment(0, j) for profile, j in sliding])
     cross = f.T @ slid
-    own = np.array([[(w * p[used] * q[used]) @ moment(i, j) for q, j in model.sliding] for p, i in model.sliding])
-    a, b = slice(0, FIXED), slice(FIXED, None)
-    return np.block(
-        [[fixed[a, a], cross[a], fixed[a, b]], [cross[a].T, own, cross[b].T], [fixed[b, a], cross[b], fixed[b, b]]]
-    )
+    own = np.array([[(w * p[used] * q[used]) @ moment(i, j) for q, j in sliding] for p, i in sliding])
+    head, size = FIXED + len(sliding), f.shape[1] + len(sliding)
+    matrix = np.empty((size, size))
+    fixed_at = np.concatenate([np.arange(FIXED), np.arange(head, size)])
+    matrix[np.ix_(fixed_at, fixed_at)] = fixed
+    matrix[fixed_at, FIXED:head] = cross
+    matrix[FIXED:head, fixed_at] = cross.T
+    matrix[FIXED:head, FIXED:head] = own
+    return matrix

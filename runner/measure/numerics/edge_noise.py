@@ -4,7 +4,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from runner.errors import MeasurementRefused
-from runner.measure.numerics.edge_model import Linear, Noise
+from runner.measure.numerics.edge_model import Linear, Noise, Residuals
 from runner.measure.numerics.line_spread import Array
 
 SIDES = (0.3, 0.7)
@@ -23,28 +23,29 @@ MOST_DEFECTS = 0.005
 """Share of defects from which they are structure and stay in."""
 
 
-def noise_of(linear: Linear, floor: float) -> Noise:
+def noise_of(found: Residuals, floor: float) -> Noise:
     """Return the scatter of pixels about their bin's mean, apart for dark and bright side.
 
     No model of the line spread's shape enters it: pixels of one bin have the same distance from the edge.
 
     Args:
-        linear: The last linearisation.
+        found: The model against all pixels.
         floor: Least standard deviation of a pixel, fraction of range.
 
     Raises:
         MeasurementRefused: Too few pixels on one side.
     """
     variances, freedom = [], 0.0
-    for side in (linear.spread < SIDES[0], linear.spread > SIDES[1]):
-        dof = float(np.maximum(linear.counts[side] - 1, 0).sum())
+    within = found.within
+    for side in (found.spread < SIDES[0], found.spread > SIDES[1]):
+        dof = float(np.maximum(found.counts[side] - 1, 0).sum())
         if dof < LEAST_DOF:
             raise MeasurementRefused(
                 "outside the estimator's limits",
                 "too few pixels lie on one side of the edge",
                 next_step="make the region larger, or centre it on the edge",
             )
-        variances.append(float(linear.within[side].sum()) / dof)
+        variances.append(float(within[side].sum()) / dof)
         freedom += dof
     low, high = (max(v, floor**2) for v in variances)
     return Noise(low, high, max(freedom, 1.0))
@@ -92,13 +93,13 @@ def _summed(values: Array, reach: int) -> float:
     return total
 
 
-def defects(linear: Linear) -> NDArray[np.intp]:
+def defects(found: Residuals) -> NDArray[np.intp]:
     """Return the places of defect pixels: few, and far outside the noise of their own side of the edge."""
-    spread = linear.spread[linear.index]
+    spread = found.spread[found.index]
     sd = np.empty(2)
     for k, side in enumerate((spread < SIDES[0], spread > SIDES[1])):
-        sd[k] = 1.4826 * float(np.median(np.abs(linear.residual[side]))) if side.any() else 0.0
+        sd[k] = 1.4826 * float(np.median(np.abs(found.residual[side]))) if side.any() else 0.0
     limit = DEFECT * np.maximum(sd[0] + (sd[1] - sd[0]) * np.clip(spread, 0, 1), sd.max() / 4)
     # where the signal is steep, a residual may be the fit's
-    found = np.flatnonzero((np.abs(linear.residual) > limit) & (limit > 0))
-    return found if found.size <= MOST_DEFECTS * linear.residual.size else np.zeros(0, dtype=np.intp)
+    places = np.flatnonzero((np.abs(found.residual) > limit) & (limit > 0))
+    return places if places.size <= MOST_DEFECTS * found.residual.size else np.zeros(0, dtype=np.intp)

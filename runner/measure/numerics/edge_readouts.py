@@ -6,19 +6,20 @@ first order; where a curve is flat or a value sits at its bound, u comes from dr
 References:
     ISO 12233:2014 6.2 (frequencies along the normal).
     Kelly, Statistical Method (1923): skewness of a distribution from its 10, 50 and 90 % points (from memory).
+    Efron and Tibshirani, An Introduction to the Bootstrap (1993), ch. 10: estimates of bias (from memory).
 """
-
-from collections.abc import Callable
 
 import numpy as np
 
 from runner.errors import MeasurementRefused
 from runner.measure.numerics import edge_model as em
 from runner.measure.numerics.edge_curves import Curves, Gradient
-from runner.measure.numerics.line_spread import Array
+from runner.measure.numerics.line_spread import GRID, Array
 
-GRID = 0.005
-"""cy/px; step of the grid on which crossings are looked for."""
+LEVELS = (0.1, 0.5, 0.9)
+"""Shares of the step whose places widths and symmetry are made of."""
+CLEAR = 3.0
+"""Standard deviations from which an extremum stands out of the noise."""
 FLAT = 0.3
 """Relative difference of the crossings of the band's two sides from which first order is no longer trusted."""
 LEAST_MODULUS = 0.02
@@ -31,20 +32,26 @@ def level(curves: Curves, share: float) -> Gradient:
     Raises:
         MeasurementRefused: `not defined`, it crosses nowhere.
     """
-    if share in curves.levels:
-        return curves.levels[share]
+    if share not in curves.levels:
+        shares = sorted({*LEVELS, share})
+        starts = np.array([_rise_through(curves, each) for each in shares])
+        value, _, slope, _ = curves.at(starts)
+        # one Newton step from the chord between two nodes: good to 1e-7 px
+        steps = np.where(slope > 0, (shares - value) / np.where(slope > 0, slope, 1.0), 0.0)
+        places = starts + np.clip(steps, -0.05, 0.05)
+        _, by, slope, _ = curves.at(places)
+        for each, x, row in zip(shares, places, -by / slope[:, None], strict=True):
+            curves.levels[each] = Gradient(float(x), curves.full(row))
+    return curves.levels[share]
+
+
+def _rise_through(curves: Curves, share: float) -> float:
     e, nodes = curves.at_nodes, curves.nodes
     rising = np.flatnonzero((e[:-1] <= share) & (e[1:] > share))
     if not rising.size:
         raise MeasurementRefused("not defined", f"the edge spread does not cross {100 * share:g} % of the step")
     at = int(rising[np.argmin(np.abs(nodes[rising]))])
-    x = float(np.interp(share, e[at : at + 2], nodes[at : at + 2]))
-    for _ in range(2):
-        value, _, slope, _ = curves.at(x)
-        x += float(np.clip((share - value) / slope, -0.05, 0.05)) if slope > 0 else 0.0
-    _, by, slope, _ = curves.at(x)
-    curves.levels[share] = Gradient(x, curves.full(-by / slope))
-    return curves.levels[share]
+    return float(np.interp(share, e[at : at + 2], nodes[at : at + 2]))
 
 
 def edge_width(curves: Curves) -> Gradient:
@@ -70,105 +77,105 @@ def full_width(curves: Curves) -> Gradient:
     """
     density, nodes = curves.density_at_nodes, curves.nodes
     top = int(np.argmax(density))
-    peak = float(nodes[top])
-    _, _, height, by_height = curves.at(peak)
-    ends: list[Gradient] = []
-    for way in (-1, 1):
-        side = density[top::way]
-        below = np.flatnonzero(side < height / 2)
+    half = float(density[top]) / 2
+    ends, slopes = np.zeros(2), np.zeros(2)
+    for k, way in enumerate((-1, 1)):
+        below = np.flatnonzero(density[top::way] < half)
         if not below.size:
             raise MeasurementRefused("not defined", "the line spread does not fall to half its maximum in the region")
         outer = top + way * int(below[0])
         pair = [outer, outer - way]
-        x = float(np.interp(height / 2, density[pair], nodes[pair]))
-        slope = float((density[pair[1]] - density[pair[0]]) / (nodes[pair[1]] - nodes[pair[0]]))
-        for _ in range(2):
-            x += float(np.clip((height / 2 - curves.at(x)[2]) / slope, -0.05, 0.05))
-        ends.append(Gradient(x, curves.full(-(curves.at(x)[3] - by_height / 2) / slope)))
-    return Gradient(ends[1].value - ends[0].value, ends[1].by - ends[0].by)
+        ends[k] = np.interp(half, density[pair], nodes[pair])
+        slopes[k] = (density[pair[1]] - density[pair[0]]) / (nodes[pair[1]] - nodes[pair[0]])
+    ends += np.clip((half - curves.at(ends)[2]) / slopes, -0.05, 0.05)
+    by = curves.at(np.append(ends, nodes[top]))[3]
+    moved = -(by[:2] - by[2] / 2) / slopes[:, None]
+    return Gradient(float(ends[1] - ends[0]), curves.full(moved[1] - moved[0]))
 
 
 def beyond(curves: Curves, *, bright: bool) -> Gradient:
-    """Return overshoot (bright side) or undershoot (dark side) of the edge spread, % of the step, 0 when none."""
+    """Return overshoot (bright side) or undershoot (dark side) of the edge spread, % of the step; never below 0.
+
+    The highest point of a noisy curve reads high, and where there is no overshoot it is chance that makes one. So,
+    unless the extremum stands out by three of its own deviations, draws from the posterior tell how far its maximum
+    scatters and how far above the curve they start from it lies on average; that lift is taken off (bootstrap
+    correction of bias, Efron and Tibshirani 1993, ch. 10). u never falls below the posterior's deviation at the
+    extremum itself: an edge spread known to that much at one point cannot tell overshoot from none any better, even
+    where the value is held at zero.
+    """
     reach = 6 * edge_width(curves).value + 2
-    near = np.abs(curves.nodes) < min(reach, float(curves.nodes[-1]) / 1.2)
-    nodes = curves.nodes[near]
+    near = np.flatnonzero(np.abs(curves.nodes) < min(reach, float(curves.nodes[-1]) / 1.2))
     excess = curves.at_nodes[near] - 1 if bright else -curves.at_nodes[near]
     at = int(np.argmax(excess))
-    _, by, _, _ = curves.at(float(nodes[at]))
-    by = by if bright else -by
-    value = max(0.0, float(excess[at]))
-    gradient = Gradient(100 * value, curves.full(100 * by))
-    if 100 * value > 3 * gradient.u(curves.fit.covariance):
+    _, by, _, _ = curves.at(curves.nodes[near[at : at + 1]])
+    value = 100 * max(0.0, float(excess[at]))
+    gradient = Gradient(value, curves.full(100 * by[0] if bright else -100 * by[0]))
+    own = gradient.u(curves.fit.covariance)
+    if value > CLEAR * own:
         return gradient
-    # at its bound: the greatest of many noisy values, by draws
-    columns = curves.fit.linear.model.columns[near]
-    parts = np.hstack([columns[:, em.STEP : em.TAIL + 1], columns[:, em.FIXED :]])[::4]
-    drawn = curves.draws
-    spread = drawn @ parts.T / (drawn @ curves.areas)[:, None]
+    columns = curves.fit.linear.model.columns[near[::4]]
+    parts = np.hstack([columns[:, em.STEP : em.TAIL + 1], columns[:, em.FIXED :]])
+    spread = curves.draws @ parts.T / (curves.draws @ curves.areas)[:, None]
     most = 100 * np.maximum(0.0, (spread - 1 if bright else -spread).max(axis=1))
-    u = float(np.sqrt(np.mean((most - 100 * value) ** 2)))
-    return Gradient(100 * value, np.zeros_like(gradient.by), ("not told from none",), u)
+    lift = float(most.mean()) - value
+    return Gradient(max(0.0, value - lift), gradient.by, (), max(own, float(most.std())))
 
 
-Divisor = Callable[[Array], Array]
-"""A transfer function that is divided out, by frequency in cy/px."""
-
-
-def crossing(curves: Curves, modulation: float, most: float, divisor: Divisor = np.ones_like) -> Gradient | None:
+def crossing(curves: Curves, modulation: float, most: float, divisor: Array | None = None) -> Gradient | None:
     """Return the first frequency at which |H| / divisor falls to a modulation, or None if it does not up to `most`.
 
     Args:
         curves: The fitted edge.
         modulation: Between 0 and 1.
-        most: End of the band, cy/px.
-        divisor: What is divided out; 1 by default.
+        most: End of the band, cy/px, at most 1.
+        divisor: What is divided out, on `GRID`, NaN where it cannot be; nothing by default.
     """
-    grid = np.linspace(0.0, most, max(3, int(np.ceil(most / GRID)) + 1))
-    part = divisor(grid)
-    size, u = (each / part for each in curves.modulus(grid))
-    first = _first_below(grid, size, modulation)
-    if first is None:
+    part = divisor if divisor is not None else np.ones_like(GRID)
+    size, u = (each / part for each in curves.on_grid)
+    found = _first_below(size, modulation)
+    if found is None or found[0] > most:
         return None
-    near = np.array([first - 1e-4, first + 1e-4])
-    slope = float(np.diff(curves.modulus(near)[0] / divisor(near))[0]) / 2e-4
-    by = curves.modulus_at(first).by / float(divisor(np.array([first]))[0])
+    first, slope = found
+    by = curves.modulus_at(first).by / float(np.interp(first, GRID, part))
     gradient = Gradient(first, -by / slope if slope < 0 else 0 * by)
-    early, late = _first_below(grid, size - u, modulation), _first_below(grid, size + u, modulation)
+    early, late = _first_below(size - u, modulation), _first_below(size + u, modulation)
     linear = gradient.u(curves.fit.covariance)
     if early is not None and late is not None and slope < 0:
-        sides = first - early, late - first
+        sides = first - early[0], late[0] - first
         if max(sides) - min(sides) < FLAT * sum(sides) and abs(sum(sides) / 2 - linear) < FLAT * linear:
             return gradient
-    u_drawn = _drawn(curves, grid, modulation * part, first)
+    u_drawn = _drawn(curves, modulation * part, first, most)
     return Gradient(first, gradient.by, ("the curve is flat at the crossing",), u_drawn)
 
 
-def _first_below(grid: Array, size: Array, modulation: float) -> float | None:
+def _first_below(size: Array, modulation: float) -> tuple[float, float] | None:
+    """Return (frequency, slope there) of the first fall below a modulation on `GRID`, by a parabola through three."""
     below = np.flatnonzero(size < modulation)
     if not below.size or below[0] == 0:
         return None
     k = int(below[0])
-    # a parabola through three points is good to 1e-6 on this grid, a line to 1e-4
     lo = max(0, k - 2)
-    x, y = grid[lo : lo + 3], size[lo : lo + 3] - modulation
-    a, b, c = np.polyfit(x - grid[k - 1], y, 2)
-    roots = np.roots([a, b, c]) if abs(a) > 1e-9 else np.array([-c / b])
-    real = roots[np.isreal(roots)].real + grid[k - 1]
-    inside = real[(real >= grid[k - 1] - 1e-9) & (real <= grid[k] + 1e-9)]
-    if inside.size:
-        return float(inside[0])
-    return float(np.interp(-modulation, -size[k - 1 : k + 1], grid[k - 1 : k + 1]))
+    y0, y1, y2 = (float(v) - modulation for v in size[lo : lo + 3])
+    bend, tilt = (y0 - 2 * y1 + y2) / 2, (y2 - y0) / 2
+    # in grid steps from the middle one: y1 + tilt t + bend t²; the root on the falling branch, written stably
+    inner = tilt * tilt - 4 * bend * y1
+    start, step = float(GRID[lo + 1]), float(GRID[1])
+    if tilt < 0 and inner >= 0:
+        t = 2 * y1 / (-tilt + inner**0.5)
+        if k - 1 - 1e-9 <= lo + 1 + t <= k + 1e-9:
+            return start + step * t, (tilt + 2 * bend * t) / step
+    high, low = float(size[k - 1]), float(size[k])
+    return float(GRID[k - 1]) + step * (high - modulation) / (high - low), (low - high) / step
 
 
-def _drawn(curves: Curves, grid: Array, modulation: Array, value: float) -> float:
+def _drawn(curves: Curves, modulation: Array, value: float, most: float) -> float:
     """Standard uncertainty of a crossing from draws; draws without one count as the end of the band."""
-    columns = em.shape_transfers(grid, curves.fit.parts, curves.fit.lattice, curves.fit.sides)
+    columns = em.shape_transfers(None, curves.fit.parts, curves.fit.lattice, curves.fit.sides)
     drawn = curves.draws
     size = np.abs(drawn @ columns.T) / (drawn @ curves.areas)[:, None]
     below = size < modulation
-    first = np.where(below.any(axis=1), grid[below.argmax(axis=1)], grid[-1])
-    return float(np.sqrt(np.mean((first - value) ** 2)))
+    first = np.where(below.any(axis=1), GRID[below.argmax(axis=1)], most)
+    return float(np.sqrt(np.mean((np.minimum(first, most) - value) ** 2)))
 
 
 def phase(curves: Curves, frequency: float) -> Gradient:

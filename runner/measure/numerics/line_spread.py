@@ -12,7 +12,7 @@ References:
 """
 
 from dataclasses import dataclass, replace
-from functools import lru_cache
+from functools import cached_property, lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -33,6 +33,8 @@ WIDE = 2.0
 """px; line spreads of a greater standard deviation are fitted on a lattice scaled up with them."""
 KERNEL_SIGMA = 0.7
 """Kernel sigma in units of its distance to the next: neighbours overlap smoothly, without ripple."""
+GRID: Array = 0.005 * np.arange(201.0)
+"""Frequencies on which transfer functions are tabulated, cy/px: a parabola between three is good to 1e-6."""
 
 
 def pixel_gauss(x: Array, sigma: float, sides: tuple[float, float]) -> tuple[Array, Array, Array, Array]:
@@ -105,20 +107,29 @@ class Lattice:
         """Return positions in units of nodes: 0 at the first node, 1 at the second."""
         return np.asarray((np.arcsinh(x / (WARP * self.scale)) - self.first) / self.pitch)
 
-    def interpolate(self, at: Array, x: Array, values: Array, slopes: Array) -> Array:
+    @cached_property
+    def stretch(self) -> Array:
+        """Distance from node to node, px, as the derivative of position to warped position at each node."""
+        return np.asarray(self.pitch * np.hypot(WARP * self.scale, self.nodes))
+
+    def interpolate(self, at: Array, values: Array, slopes: Array) -> Array:
         """Cubic Hermite interpolation between nodes; `at` is `warped(x)`, slopes are per px."""
         left = np.clip(at.astype(np.intp), 0, self.nodes.size - 2)
-        x0 = self.nodes[left]
-        width = np.diff(self.nodes)[left]
-        t = (x - x0) / width
-        y0, rise = values[left], np.diff(values)[left]
-        s0, s1 = slopes[left] * width, slopes[left + 1] * width
-        return np.asarray(y0 + t * (s0 + t * (3 * rise - 2 * s0 - s1 + t * (s0 + s1 - 2 * rise))))
+        t = at - left
+        slope = slopes * self.stretch
+        rise, s0, s1 = np.diff(values), slope[:-1], slope[1:]
+        second, third = 3 * rise - 2 * s0 - s1, s0 + s1 - 2 * rise
+        return np.asarray(values[left] + t * (s0[left] + t * (second[left] + t * third[left])))
 
     def transfer(self, frequency: Array) -> NDArray[np.complex128]:
         """Return the kernels' transforms ∫ k(x) exp(-2πi f x) dx, frequencies × kernels."""
         f = frequency[:, None]
         return np.asarray(np.exp(-2 * (np.pi * self.sigmas[None, :] * f) ** 2 - 2j * np.pi * f * self.centres[None, :]))
+
+    @cached_property
+    def on_grid(self) -> NDArray[np.complex128]:
+        """The same on `GRID`, kept for every edge of this lattice."""
+        return self.transfer(GRID)
 
     def without_kernels(self) -> "Lattice":
         """Return the same bins with no kernels, for a plain edge."""
