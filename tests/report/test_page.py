@@ -1,6 +1,7 @@
 """The screen report: one file for itself, readable without eyes, and nothing in the data becomes markup."""
 
 import base64
+import re
 from itertools import pairwise
 
 import pytest
@@ -67,6 +68,16 @@ def test_tables_and_pictures_explain_themselves(pages: list[Page]) -> None:
         assert all(one["alt"] for one in page.all("img"))
         for one in page.all("svg"):
             assert one.get("aria-hidden") == "true" or (one["role"] == "img" and one["aria-label"])
+
+
+def test_the_page_claims_no_more_than_it_is(pages: list[Page]) -> None:
+    """It is no certificate, and the program's name stands only in the command to check it and beneath its end."""
+    for page in pages:
+        text = page.words["main"][0]
+        assert not re.search(r"certif|approv|accredit", text.lower())
+        said, end = text.partition("End of report")[::2]
+        assert said.replace("probatum verify report.pdf", "").lower().count("probatum") == 0
+        assert end.count("probatum") == 1
 
 
 def test_markup_in_the_data_stays_text() -> None:
