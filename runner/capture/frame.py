@@ -94,8 +94,8 @@ def crop(frame: Frame, box: Box, camera: Camera) -> Crop:
 def linearise(codes: Codes, camera: Camera) -> Signal:
     """Turn stored codes into light as a fraction of the range from black to white level.
 
-    Values outside the range stay outside (noise below black is kept, so that means are unbiased); a tone curve is
-    continued as a straight line with its end slope, and below black as its own mirror image.
+    Values outside the range stay outside (noise below black is kept, so that means are unbiased): above white a formula
+    goes on as it is, a table as a straight line with its end slope; below black a tone curve is its own mirror image.
 
     Args:
         codes: Rows × columns, DN.

@@ -6,6 +6,7 @@ import unicodedata
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
+from typing import NoReturn
 
 from runner.capture.patterns import FilePattern, natural, read_pattern
 from runner.errors import UsageError
@@ -121,15 +122,7 @@ def find_lot(frames_dir: Path, spec: Spec, units: Sequence[str] = ()) -> Lot:
 
 def _sort_entries(root: Path, spec: Spec) -> tuple[dict[str, Path], list[str], list[str]]:
     """Return the unit folders by serial, loose files, and a sentence per folder that is no unit's."""
-    try:
-        entries = sorted(root.iterdir(), key=lambda entry: natural(entry.name))
-    except OSError as error:
-        reason = (error.strerror or "cannot be read").lower()
-        raise UsageError(
-            f"the folder of frames cannot be read: {reason}",
-            where=str(root),
-            allowed="a folder with one folder per unit, named by its serial",
-        ) from error
+    entries = _entries(root)
     folders, unused, strangers = dict[str, Path](), list[str](), list[str]()
     for entry in entries:
         if not entry.is_dir():
@@ -173,10 +166,27 @@ def _unit(serial: str, folder: Path, spec: Spec, folders: Mapping[str, Path]) ->
     return UnitFolder(serial, folder, tuple(found), tuple(faults), tuple(remarks), tuple(unused))
 
 
+def _entries(folder: Path) -> list[Path]:
+    """Return what lies in a folder, in people's order."""
+    try:
+        return sorted(folder.iterdir(), key=lambda entry: natural(entry.name))
+    except OSError as error:
+        raise _unreadable(error, folder) from error
+
+
+def _unreadable(error: OSError, folder: Path) -> UsageError:
+    return UsageError(
+        f"the folder of frames cannot be read: {(error.strerror or 'cannot be read').lower()}",
+        where=str(error.filename or folder),
+        allowed="a folder with one folder per unit, named by its serial",
+        next_step="check that it is there and readable, with all folders in it",
+    )
+
+
 def _attempt_folders(folder: Path) -> tuple[list[tuple[int, Path]], list[str], list[str]]:
     """Return the attempts by number, and what lies beside them: files, and folders that were not entered."""
     attempts, files, skipped = [], [], []
-    for entry in sorted(folder.iterdir(), key=lambda entry: natural(entry.name)):
+    for entry in _entries(folder):
         number = _ATTEMPT.fullmatch(entry.name)
         if number and entry.is_dir():
             attempts.append((int(number[1]), entry))
@@ -261,7 +271,11 @@ def _files(folder: Path) -> tuple[list[str], list[str]]:
     """Return every file below a folder that may be a frame, and the rest; linked folders are not entered."""
     files: list[str] = []
     rest: list[str] = []
-    for place, folders, names in os.walk(folder):
+
+    def stop(error: OSError) -> NoReturn:  # left to itself, the walk passes over what it cannot read
+        raise _unreadable(error, folder) from error
+
+    for place, folders, names in os.walk(folder, onerror=stop):
         prefix = Path(place).relative_to(folder).as_posix()
         prefix = "" if prefix == "." else f"{prefix}/"
         shut = [name for name in folders if name.startswith(".") or (Path(place) / name).is_symlink()]
