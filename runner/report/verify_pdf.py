@@ -116,6 +116,8 @@ def check_structure(signed: SignedPdf) -> None:
             raise VerificationRefused(f"a reader finds {len(embedded)} signatures in place of one")
         (one,) = embedded
         status = _status(one)
+        if "/DocMDP" not in reader.root.get("/Perms", {}):
+            raise VerificationRefused("a reader finds that it is signed, but not closed to changes")
         certified = reader.root["/Perms"].raw_get("/DocMDP").reference
         faults = {
             "its signature is not intact": status.intact and status.valid,

@@ -4,14 +4,18 @@ It is the weaker way: what lies over or under the words, and what a drawing show
 """
 
 import re
+from collections import Counter
 from collections.abc import Sequence
 from enum import Enum
 from html.parser import HTMLParser
 from io import BytesIO
 
+from runner.judge.verdict import VERDICTS
 from runner.report.verify_pdf import quiet
 
-_PAGE_NUMBER = re.compile(r"\bpage \d+ of \d+\b")
+_RUNNING = re.compile(r"^.*\bpage \d+ of \d+$", re.MULTILINE)
+_DECIMAL = re.compile(r"[-−]?\d+\.\d+")
+_VERDICT_WORDS = frozenset(" ".join(VERDICTS).split())
 _SHOWN = 6
 """Words shown of a difference."""
 
@@ -35,8 +39,9 @@ def compare_pdf(stated: str, again: str) -> Order | str:
     """Tell how the texts of two PDFs agree, or in a few words how they do not.
 
     White space is left out, because lines break elsewhere in another version of the printer. Where pages do, too,
-    text moves as a whole (drawings and columns are drawn at other turns): then each word of either side must occur on
-    the other, page numbers apart; a word broken at a line's end counts by its parts.
+    text moves as a whole (drawings and columns are drawn at other turns) and heads of tables come again: then, the line
+    at the foot of the page apart, each word of either side must occur on the other, and numbers and the words of
+    verdicts as often; a word broken at a line's end counts by its parts.
 
     Args:
         stated: Text of the report.
@@ -44,7 +49,7 @@ def compare_pdf(stated: str, again: str) -> Order | str:
     """
     if _joined(stated) == _joined(again):
         return Order.SAME
-    stated, again = (_PAGE_NUMBER.sub("", text) for text in (stated, again))
+    stated, again = (_RUNNING.sub("", text) for text in (stated, again))
     more, less = _foreign(stated, again), _foreign(again, stated)
     if more or less:
         return _difference(more, less)
@@ -72,9 +77,17 @@ def _joined(text: str) -> str:
 
 
 def _foreign(text: str, other: str) -> list[str]:
-    """Return the words of a text that do not occur in another."""
-    known = _joined(other)
-    return [word for word in dict.fromkeys(text.split()) if word not in known and word.removesuffix("-") not in known]
+    """Return the words of a text that another lacks, or has less often where that weighs."""
+    here, there = Counter(text.split()), Counter(other.split())
+    known = _joined(other).replace("-", "")  # a hyphen may show only where a line ends
+
+    def lacks(word: str) -> bool:
+        if word.replace("-", "") not in known:
+            return True
+        weighs = word.lower().strip(".,;:") in _VERDICT_WORDS or _DECIMAL.fullmatch(word) is not None
+        return weighs and here[word] > there[word]
+
+    return [word for word in here if lacks(word)]
 
 
 def _difference(more: Sequence[str], less: Sequence[str]) -> str:

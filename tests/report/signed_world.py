@@ -20,14 +20,15 @@ from cryptography.hazmat.primitives.serialization import Encoding, NoEncryption,
 from PIL import Image
 
 from runner import acceptance
-from runner.errors import VerificationRefused
 from runner.report import certificates as profiles
+from runner.report.document import canonical, parse
 from runner.report.keys import StationKey
 from runner.report.sign import sign_detached, sign_pdf
 from runner.report.verify_record import Tools
-from runner.spec.revision import canonical_json, digest
+from runner.spec.revision import digest
 from tests.capture.bad_frames import SPEC_TEXT, UNIT, good_lot
 
+__all__ = ["canonical", "parse"]  # the program's own, for whoever builds a world
 MADE = datetime(2026, 3, 2, 8, 0, tzinfo=UTC)
 SIGNED = datetime(2026, 3, 14, 9, 30, tzinfo=UTC)
 NOW = datetime(2026, 5, 1, 12, 0, tzinfo=UTC)
@@ -125,19 +126,6 @@ def judged(value: float, verdict: str | None = None) -> dict[str, Any]:
         "because": "the unit is soft",
         "checks": [check],
     }
-
-
-def canonical(document: Mapping[str, Any]) -> bytes:
-    """Return the bytes of results.json."""
-    return canonical_json(document) + b"\n"
-
-
-def parse(data: bytes) -> dict[str, Any]:
-    """Read results.json strictly."""
-    document: dict[str, Any] = json.loads(data)
-    if canonical(document) != data:
-        raise VerificationRefused("its bytes are not in canonical form")
-    return document
 
 
 def html_page(document: Mapping[str, Any], pictures: Mapping[str, bytes]) -> str:

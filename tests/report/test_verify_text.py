@@ -26,15 +26,38 @@ def test_parts_may_move_when_pages_break_elsewhere() -> None:
     """The same words in another order are told apart from the same order; page numbers do not count."""
     first, second, _ = TEXT.split("\n")
 
-    assert verify_text.compare_pdf(f"{second}\npage 1 of 3\n{first}", TEXT) is Order.OTHER
+    assert verify_text.compare_pdf(f"{second}\nWS8-ACC / 1 page 1 of 3\n{first}", TEXT) is Order.OTHER
+    assert verify_text.compare_pdf(f"{second}\nlower\n{first}", TEXT) is Order.OTHER
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "words"),
+    [
+        ("does not conform", "conforms", "'conforms' where the data give 'does not conform'"),
+        ("0.250", "0.187", "'0.187' where the data give '0.250'"),
+    ],
+)
+def test_numbers_and_verdicts_are_counted(old: str, new: str, words: str) -> None:
+    """A verdict or value that stands elsewhere on the page is not free to stand here."""
+    first, second, _ = (TEXT.replace(old, new) + "\n").split("\n", 2)
+    more = "\nsummary: 0.250 does not conform"
+
+    assert verify_text.compare_pdf(f"{second}\n{first}{more}", TEXT + more) == f"it shows {words}"
+
+
+def test_a_word_broken_at_a_lines_end_is_the_same_word() -> None:
+    """A soft hyphen shows where a line breaks, and long digests break anywhere."""
+    whole = "Probability 2ed0612cbce380455508 b a"
+
+    assert verify_text.compare_pdf("a b Proba-\nbility 2ed0612c\nbce380455508", whole) is Order.OTHER
 
 
 @pytest.mark.parametrize(
     ("text", "words"),
     [
         (TEXT.replace("0.187", "0.287"), "'0.287' where the data give '0.187'"),
-        (TEXT + " CONFORMS", "'CONFORMS' where the data give nothing"),
-        (TEXT.replace("does not conform", ""), "nothing where the data give 'does not'"),
+        ("CONFORMS " + TEXT, "'CONFORMS' where the data give nothing"),
+        (TEXT.replace("does not conform", ""), "nothing where the data give 'does not conform'"),
         ("", "nothing where the data give 'lower left 0.187 conforms upper right …'"),
     ],
 )
