@@ -1,0 +1,102 @@
+"""Evidence on a page: each picture with its own attempt's regions, the curves with trouble first, the rest counted."""
+
+from typing import Any
+
+from runner.report.evidence_facts import MOST_REGIONS, curve_facts, picture_facts
+from tests.report import printed_world as world
+
+
+def test_a_picture_names_its_regions_by_number() -> None:
+    """Balloons are numbered from 1 in the order of the regions; the words stand in caption and alternative text."""
+    (fact,) = picture_facts(world.failing())
+
+    assert fact.regions == tuple((str(n), name) for n, name in enumerate(world.BOXES, 1))
+    assert fact.title == "Regions of 'chart' as found"
+    assert fact.alt.startswith("Frame of chart with regions 1 centre, 2 corners upper left, ")
+
+
+def test_regions_that_were_not_found_are_told() -> None:
+    """Every region of a frame without edges is marked so."""
+    (fact,) = picture_facts(world.unmeasured())
+
+    assert {name.endswith(" (not found)") for _, name in fact.regions} == {True}
+
+
+def test_each_attempt_has_its_own_regions() -> None:
+    """The picture of the first attempt is not explained by the regions of the second, whatever their order."""
+    document = world.document()
+    chart = document["captures"][1]
+    lost = [region | {"found": False} for region in chart["regions"]]
+    document["captures"].append(chart | {"attempt": 2, "regions": lost})
+    second = document["pictures"][0] | {"name": "chart-attempt-2-overview.png"}
+    document["pictures"].insert(0, second)
+
+    two, one = picture_facts(document)
+
+    assert two.title == "Regions of 'chart', attempt 2 as found"
+    assert two.regions[0] == ("1", "centre (not found)")
+    assert (one.title, one.regions[0]) == ("Regions of 'chart' as found", ("1", "centre"))
+
+
+def test_a_capture_without_regions_needs_no_picture() -> None:
+    """A dark frame's overview stays out of the page."""
+    document = world.document()
+    document["pictures"] = [document["pictures"][0] | {"name": "dark-overview.png", "capture": "dark"}]
+
+    assert picture_facts(document) == ()
+
+
+def test_regions_with_trouble_come_first() -> None:
+    """The soft corners stand before the others; each has its transfer curve and its edge."""
+    facts, left = curve_facts(world.failing())
+
+    assert [fact.title for fact in facts[:2]] == [
+        "corners upper right (chart, joint fit)",
+        "corners lower right (chart, joint fit)",
+    ]
+    assert (len(facts), left) == (5, 0)
+    assert all(fact.edge.count("<svg") == 1 for fact in facts)
+
+
+def test_limits_are_drawn_where_they_are_asked() -> None:
+    """The centre's curve bears its one limit, a corner's its own, and none bears the range's."""
+    facts, _ = curve_facts(world.document())
+    marks = {fact.title.split(" (")[0]: fact.transfer.count('class="mark"') for fact in facts}
+
+    assert set(marks.values()) == {2}, "a bar and its foot"
+    assert set(marks) == set(world.BOXES)
+
+
+def _with_curves(curves: list[Any]) -> dict[str, Any]:
+    document = world.document()
+    keys = ("capture", "attempt", "region", "channel", "name", "estimator", "x_in", "y_in")
+    rows = [{k: getattr(c, k) for k in keys} | {"x": list(c.x), "y": list(c.y), "u": list(c.u)} for c in curves]
+    return document | {"curves": rows}
+
+
+def test_more_regions_than_a_page_holds_are_counted() -> None:
+    """Twelve are drawn, and how many are left out is told."""
+    curves = [curve for n in range(MOST_REGIONS + 5) for curve in world.curves_of(f"region {n}")]
+
+    facts, left = curve_facts(_with_curves(curves))
+
+    assert (len(facts), left) == (12, 5)
+
+
+def test_colours_and_attempts_are_kept_apart() -> None:
+    """A curve takes limits and edge of its own channel and attempt only, and its title names them."""
+    curves = [*world.curves_of("centre", channel="red"), *world.curves_of("centre", attempt=2)]
+    facts, _ = curve_facts(_with_curves(curves))
+
+    assert [fact.title for fact in facts] == [
+        "centre, red (chart, joint fit)",
+        "centre (chart, attempt 2, joint fit)",
+    ]
+    assert [fact.transfer.count('class="mark"') for fact in facts] == [0, 0], "the limits are on mono, attempt 1"
+
+
+def test_a_curve_without_edge_fit_stands_alone() -> None:
+    """A method that fits no edge yields a transfer curve only."""
+    facts, _ = curve_facts(_with_curves(world.curves_of("centre")[:1]))
+
+    assert [fact.edge for fact in facts] == [""]
