@@ -26,6 +26,8 @@ _WIDE, _HIGH = 300.0, 170.0
 _LEFT, _RIGHT, _TOP, _BOTTOM = 34.0, 10.0, 18.0, 31.0
 _TICK, _WORD = 9.5, 10.0
 """px: sizes of letters; on paper, where 300 px are 76 mm, they are 7 pt."""
+_LETTER = 6.4
+"""px: width of a figure of `_WORD` size."""
 _APART = 70.0
 """px: limits nearer than this have their words on outer sides."""
 
@@ -231,8 +233,12 @@ def _limits(frame: Frame, limits: Sequence[float], heights: tuple[float, float, 
     anchors = ("end", "start") if len(limits) == 2 and near else ("middle", "middle")
     parts = []
     for limit, x, anchor in zip(limits, places, anchors, strict=False):
+        words = f"{word}{limit:.10g}"
+        before = {"end": 1.0, "middle": 0.5, "start": 0.0}[anchor] * _LETTER * len(words)
+        after = _LETTER * len(words) - before
+        inside = min(max(x, frame.box[0] + before), frame.box[2] - after)
         parts.append(_line(x, top, x, bottom, INK, 'stroke-width="2"', "ink"))
-        parts.append(_text(x, base, f"{word}{limit:.10g}", _WORD, anchor, INK))
+        parts.append(_text(inside, base, words, _WORD, anchor, INK))
     return parts
 
 
