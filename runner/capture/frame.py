@@ -7,6 +7,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from runner.capture.mosaic import plane, sites
 from runner.spec.model import Camera
 
 Codes = NDArray[Any]
@@ -29,7 +30,7 @@ class Frame:
     Empty where nothing is to be compared.
     """
     codes: Codes
-    """Stored codes, rows × columns."""
+    """Stored codes, rows × columns; RGB frames have their three channels as a last axis."""
     page: int | None = None
     """Page of a multi-page file, from 0; None for a single page."""
     axes: Mapping[str, str] = field(default_factory=dict)
@@ -77,18 +78,24 @@ class Crop:
     """The same as light, black level and tone undone."""
     axes: Mapping[str, str] = field(default_factory=dict)
     """The frame's axes."""
+    channel: str = "mono"
+    """Colour channel."""
+    sites: NDArray[np.bool_] | None = None
+    """The channel's own pixels in a mosaic, rows × columns: only they may be used; None is all of them."""
 
 
-def crop(frame: Frame, box: Box, camera: Camera) -> Crop:
-    """Cut a box out of a frame and linearise it. The frame is not changed.
+def crop(frame: Frame, box: Box, camera: Camera, channel: str = "mono") -> Crop:
+    """Cut a box out of one channel of a frame and linearise it. The frame is not changed.
 
     Args:
         frame: The frame.
         box: Whole pixels, inside the frame.
-        camera: Its levels and tone.
+        camera: Its levels, tone and mosaic.
+        channel: One of the camera's channels.
     """
-    codes = frame.codes[box.y0 : box.y1, box.x0 : box.x1]
-    return Crop(frame.file, box, codes, linearise(codes, camera), frame.axes)
+    codes = plane(frame.codes, channel, camera)[box.y0 : box.y1, box.x0 : box.x1]
+    mask = sites(channel, camera, (box.y0, box.x0), (codes.shape[0], codes.shape[1]))
+    return Crop(frame.file, box, codes, linearise(codes, camera), frame.axes, channel, mask)
 
 
 def linearise(codes: Codes, camera: Camera) -> Signal:

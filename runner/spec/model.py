@@ -93,6 +93,11 @@ class Camera:
     delivers: str = "raw"
     """`raw` or `jpeg`: JPEG frames are refused unless the product delivers them."""
 
+    @property
+    def channels(self) -> tuple[str, ...]:
+        """Names of the colour channels; `mono` for a camera without colour."""
+        return ("mono",) if self.mosaic == "none" and self.colour == "mono" else ("red", "green", "blue")
+
     def __post_init__(self) -> None:
         """Keep the pixel's fill inside its meaning."""
         if not 0 < self.fill <= 1:

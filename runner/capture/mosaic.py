@@ -1,0 +1,54 @@
+"""Colour channels of a frame: where the pixels of each lie, and one grey picture to find things in.
+
+A mosaic is never demosaiced: a channel is measured on its own pixels at their true places, both green sites together,
+and frequencies stay in cycles per pixel of the whole grid.
+"""
+
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from runner.spec.model import Camera
+
+Mask = NDArray[np.bool_]
+_LETTERS = {"red": "R", "green": "G", "blue": "B"}
+
+
+def sites(channel: str, camera: Camera, origin: tuple[int, int], shape: tuple[int, int]) -> Mask | None:
+    """Return where a channel's pixels lie in a part of a frame.
+
+    Args:
+        channel: One of the camera's channels.
+        camera: Its mosaic.
+        origin: First row and column of the part.
+        shape: Rows and columns of the part.
+
+    Returns:
+        Rows × columns, or None where every pixel belongs to the channel (mono, or one plane of RGB).
+    """
+    if camera.mosaic == "none":
+        return None
+    cell = np.array([letter == _LETTERS[channel] for letter in camera.mosaic]).reshape(2, 2)
+    rows, columns = (np.arange(first, first + count) % 2 for first, count in zip(origin, shape, strict=True))
+    return np.asarray(cell[np.ix_(rows, columns)])
+
+
+def plane(codes: NDArray[Any], channel: str, camera: Camera) -> NDArray[Any]:
+    """Return the rows × columns that hold a channel: one plane of RGB frames, else the frame itself."""
+    return codes[..., camera.channels.index(channel)] if codes.ndim == 3 else codes
+
+
+def grey(codes: NDArray[Any], camera: Camera) -> NDArray[Any]:
+    """Return one picture of all channels, rows × columns, in which a target can be found.
+
+    RGB planes are averaged with the weights 1, 2, 1 of a mosaic cell. A mosaic is smoothed by [1 2 1]/4 along both
+    axes, which gives each pixel the same weights wherever it lies in its cell and moves nothing.
+    """
+    if codes.ndim == 3:
+        return np.asarray((codes[..., 0] + 2.0 * codes[..., 1] + codes[..., 2]) / 4)
+    if camera.mosaic == "none":
+        return codes
+    padded = np.pad(codes.astype(np.float32), 1, mode="reflect")  # reflection keeps the cell's order
+    along = (padded[:, :-2] + 2 * padded[:, 1:-1] + padded[:, 2:]) / 4
+    return np.asarray((along[:-2] + 2 * along[1:-1] + along[2:]) / 4)
