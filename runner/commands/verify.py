@@ -103,8 +103,8 @@ def _tell(path: Path, outcomes: Iterator["Outcome"], *, quiet: bool) -> Exit:
         _tell_own(outcome, quiet=quiet)
     if not quiet or end is not Exit.CONFORMS:
         bad = sum(outcome.exit is Exit.DOES_NOT_CONFORM for outcome in units)
-        count = f"{bad} of {len(units)} units REFUSED" if bad else f"{len(units)} units"
-        _say(f"{path}: {_ENDS[end]} ({count})")
+        whole = "the lot's own files" if end is Exit.DOES_NOT_CONFORM else f"{len(units)} units"
+        _say(f"{path}: {_ENDS[end]} ({f'{bad} of {len(units)} units' if bad else whole})")
     return end
 
 
@@ -150,9 +150,11 @@ def _tell_own(outcome: "Outcome", *, quiet: bool) -> None:
 
 
 def _tell_common(units: "list[Outcome]", *, quiet: bool) -> None:
-    """Tell once what is open in several units, and what is remarked of them."""
+    """Tell once what is open in units that are not refused, and what is remarked of them."""
     rows: dict[tuple[str, str], list[str]] = {}
     for outcome in units:
+        if outcome.exit is Exit.DOES_NOT_CONFORM:
+            continue  # its own lines say why; what else is open in it decides nothing
         for files, check in _merged(outcome.checks):
             if check.held is None and not (quiet and check.accept in outcome.accept):
                 row = (_word(check, outcome), f"{files}{check.name}: {check.sentence}")

@@ -143,5 +143,103 @@ def test_a_changed_lot_table_is_refused(bench: Path, tmp_path: Path) -> None:
 
 def test_nothing_to_verify_is_a_usage_error(bench: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
     """A path without a report ends in a sentence, not in success."""
-    assert _verify(bench, tmp_path / "nothing") in {Exit.USAGE, Exit.DOES_NOT_CONFORM}
-    assert "Traceback" not in capsys.readouterr().err
+    assert _verify(bench, tmp_path / "nothing") is Exit.USAGE
+    assert "nothing: it cannot be read" in capsys.readouterr().err
+
+
+# ---- what is printed
+
+
+def _lines(capsys: pytest.CaptureFixture[str]) -> list[str]:
+    return [line.strip() for line in capsys.readouterr().out.splitlines()]
+
+
+def test_a_lot_that_holds_is_told_in_a_line_for_each_unit(bench: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    """One line for each unit with its verdict, one for the lot's own files, one for the end."""
+    assert _verify(bench, bench / "out") is Exit.CONFORMS
+    lines = _lines(capsys)
+
+    assert lines[:3] == [f"{bench / 'out'}:", f"holds    {UNIT}  conforms", f"holds    {NEIGHBOUR}  conforms"]
+    assert lines[3] == "holds    lot.json, lot.html, lot.csv, lot-values.json: what the units' results give"
+    assert lines[-1] == f"{bench / 'out'}: everything holds (2 units)"
+    assert len(lines) <= 6
+
+
+def test_only_units_that_do_not_hold_are_told_in_detail(
+    bench: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """The reason stands below the unit, which says nothing of itself any more; the other unit keeps its line."""
+    lot = Path(shutil.copytree(bench / "out", tmp_path / "lot"))
+    _edit(lot / UNIT / "report.html", b"conforms", b"Conforms")
+    assert _verify(bench, lot) is Exit.DOES_NOT_CONFORM
+    lines = _lines(capsys)
+
+    assert lines[1:3] == [
+        f"REFUSED  {UNIT}",
+        "HTML report: it was changed after signing: its digest is not the signed one",
+    ]
+    assert lines[3] == f"holds    {NEIGHBOUR}  conforms"
+    assert lines[-1] == f"{lot}: REFUSED (1 of 2 units)"
+
+
+def test_what_is_open_in_all_units_is_told_once(bench: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    """The unknown signer is named once for the lot, with the digest that people compare; accepted, it stays named."""
+    assert run(["verify", str(bench / "out")]) is Exit.CANNOT_DECIDE
+    lines = _lines(capsys)
+    (told,) = [line for line in lines if "nobody vouches" in line]
+    (full,) = [line for line in lines if "in full" in line]
+    mark = full.rsplit("sha256:", 1)[1]
+
+    assert lines[1] == f"open     {UNIT}  conforms"
+    assert told.startswith("open     all units: PDF and HTML signer: signed by 'Bench 2' (")
+    assert f"({mark[:4]} {mark[4:8]} {mark[8:12]} {mark[12:16]} …)" in told
+    assert run(["verify", str(bench / "out"), "--accept", "unknown-signer"]) is Exit.CONFORMS
+    assert f"accepted {UNIT}  conforms" in _lines(capsys)
+
+
+def test_one_report_is_told_in_full(bench: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    """What the report says of its unit stands first; what holds of PDF and page alike is told once."""
+    assert _verify(bench, bench / "out" / UNIT) is Exit.CONFORMS
+    lines = _lines(capsys)
+
+    assert lines[0] == f"{bench / 'out' / UNIT}: everything holds"
+    assert lines[1].startswith(f"says     unit {UNIT}: conforms (by WS8-BAD revision A, 20")
+    assert [line for line in lines if " signer: " in line] == [
+        "holds    PDF and HTML signer: signed by 'Bench 2', for whom 'Nut test root' vouches"
+    ]
+    assert "holds    verdicts: every verdict follows from the readings (1)" in lines
+
+
+def test_quiet_prints_only_what_does_not_hold(
+    bench: Path, unit: Path, tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """Nothing at all where everything holds; the refused unit and the end otherwise."""
+    assert _verify(bench, bench / "out", "--quiet") is Exit.CONFORMS
+    assert _verify(bench, unit, "--quiet") is Exit.CONFORMS
+    assert _lines(capsys) == []
+
+    lot = Path(shutil.copytree(bench / "out", tmp_path / "lot"))
+    _edit(lot / UNIT / "report.html", b"conforms", b"Conforms")
+    _verify(bench, lot, "--quiet")
+    lines = _lines(capsys)
+    assert lines[0] == f"REFUSED  {UNIT}"
+    assert not any(NEIGHBOUR in line or line.startswith(("holds", "note")) for line in lines)
+
+
+def test_names_cannot_steer_the_terminal(unit: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    """A file's name that would wipe the line and write a better one is printed as what it is."""
+    (unit / "x\x1b[2K\rreport: everything holds\u202e").write_bytes(b"")
+    run(["verify", str(unit)])
+    out = capsys.readouterr().out
+
+    assert "x\\x1b[2K\\rreport: everything holds\\u202e" in out
+    assert not {"\x1b", "\r", "\u202e"} & set(out)
+
+
+def test_several_reports_end_with_the_most_serious(bench: Path, unit: Path) -> None:
+    """One refused report among good ones refuses the call."""
+    _edit(unit / "report.html", b"conforms", b"Conforms")
+    good = str(bench / "out" / UNIT)
+
+    assert _verify(bench, unit, good) is Exit.DOES_NOT_CONFORM
+    assert _verify(bench, bench / "out" / UNIT, str(bench / "out" / NEIGHBOUR)) is Exit.CONFORMS

@@ -14,7 +14,7 @@ CAMERA = Camera(width=1600, height=1200, bit_depth=12, black_level=64, white_lev
 
 def test_what_was_not_stated_is_left_out() -> None:
     """No row says `None`."""
-    rows = dict(map(tuple, conditions(CAMERA, Optics(f_number=2.8), Chart())))
+    rows = dict(conditions(CAMERA, Optics(f_number=2.8), Chart()))
 
     assert rows["frame size"] == "1600 × 1200 px"
     assert (rows["f-number"], rows["tone"]) == ("2.8", "linear")
@@ -23,7 +23,7 @@ def test_what_was_not_stated_is_left_out() -> None:
 
 def test_a_tone_curve_is_named() -> None:
     """The reader sees which curve was undone."""
-    rows = dict(map(tuple, conditions(replace(CAMERA, tone=Tone("gamma", 2.2)), Optics(), Chart())))
+    rows = dict(conditions(replace(CAMERA, tone=Tone("gamma", 2.2)), Optics(), Chart()))
 
     assert rows["tone"] == "gamma 2.2"
 
