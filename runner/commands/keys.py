@@ -4,7 +4,7 @@ from pathlib import Path
 
 import click
 
-from runner.commands.passphrase import find_passphrase
+from runner.commands.passphrase import VARIABLE, find_passphrase
 from runner.errors import UsageError
 
 AUTHORITY_VARIABLE = "PROBATUM_AUTHORITY_PASSPHRASE"
@@ -19,7 +19,7 @@ _AUTHORITY_FILE = click.option(
 _FILE = click.option(
     "--passphrase-file",
     type=click.Path(path_type=Path),
-    help="File with the new key's pass phrase; else PROBATUM_PASSPHRASE, or a prompt.",
+    help=f"File with the new key's pass phrase; else {VARIABLE}, or a prompt.",
 )
 
 
@@ -40,7 +40,7 @@ def make_authority(folder: Path, name: str, passphrase_file: Path | None) -> Non
     """Make an authority in a new FOLDER: its key, root.pem for readers, and a revocation list (15 years)."""
     from runner.report import keys  # noqa: PLC0415 - heavy
 
-    root = keys.make_authority(folder, name, _asked(find_passphrase(passphrase_file, confirm=True)))
+    root = keys.make_authority(folder, name, _new_passphrase(passphrase_file))
     print(f"authority '{name}' made in {folder}; give {root} to whoever reads reports, keep the rest offline")
 
 
@@ -69,7 +69,7 @@ def make_station(
         name,
         authority,
         _authority_passphrase(authority_passphrase_file),
-        _asked(find_passphrase(passphrase_file, confirm=True)),
+        _new_passphrase(passphrase_file),
         pem=pem,
         crl_url=crl_url,
     )
@@ -88,11 +88,18 @@ def renew_crl(authority: Path, authority_passphrase_file: Path | None, revoke: P
     print(f"{file} written; readers give it to: probatum verify … --crl {file.name}")
 
 
+def _new_passphrase(file: Path | None) -> bytes:
+    found = find_passphrase(file, confirm=True, question="Pass phrase of the new key")
+    return _asked(found, "the new key", VARIABLE, "--passphrase-file")
+
+
 def _authority_passphrase(file: Path | None) -> bytes:
-    return _asked(find_passphrase(file, variable=AUTHORITY_VARIABLE, question="Pass phrase of the authority"))
+    found = find_passphrase(file, variable=AUTHORITY_VARIABLE, question="Pass phrase of the authority")
+    return _asked(found, "the authority", AUTHORITY_VARIABLE, "--authority-passphrase-file")
 
 
-def _asked(passphrase: bytes | None) -> bytes:
+def _asked(passphrase: bytes | None, of: str, variable: str, option: str) -> bytes:
     if not passphrase:
-        raise UsageError("a pass phrase is needed", next_step="set the variable, give the file, or run on a terminal")
+        step = f"set {variable}, give {option}, or run on a terminal"
+        raise UsageError(f"the pass phrase of {of} is {'missing' if passphrase is None else 'empty'}", next_step=step)
     return passphrase
