@@ -2,6 +2,7 @@
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from functools import cached_property
 from typing import Any
 
 import numpy as np
@@ -74,14 +75,19 @@ class Crop:
     """Where it lies."""
     codes: Codes
     """Stored codes, rows × columns."""
-    signal: Signal
-    """The same as light, black level and tone undone."""
+    camera: Camera
+    """Levels and tone."""
     axes: Mapping[str, str] = field(default_factory=dict)
     """The frame's axes."""
     channel: str = "mono"
     """Colour channel."""
     sites: NDArray[np.bool_] | None = None
     """The channel's own pixels in a mosaic, rows × columns: only they may be used; None is all of them."""
+
+    @cached_property
+    def signal(self) -> Signal:
+        """The codes as light, black level and tone undone; worked out when first asked for."""
+        return linearise(self.codes, self.camera)
 
 
 def crop(frame: Frame, box: Box, camera: Camera, channel: str = "mono") -> Crop:
@@ -95,7 +101,7 @@ def crop(frame: Frame, box: Box, camera: Camera, channel: str = "mono") -> Crop:
     """
     codes = plane(frame.codes, channel, camera)[box.y0 : box.y1, box.x0 : box.x1]
     mask = sites(channel, camera, (box.y0, box.x0), (codes.shape[0], codes.shape[1]))
-    return Crop(frame.file, box, codes, linearise(codes, camera), frame.axes, channel, mask)
+    return Crop(frame.file, box, codes, camera, frame.axes, channel, mask)
 
 
 def linearise(codes: Codes, camera: Camera) -> Signal:

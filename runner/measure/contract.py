@@ -62,7 +62,7 @@ class Sample:
     found: Found
     """The region as found."""
     crop: Crop
-    """Its pixels."""
+    """Its pixels, in one colour channel; of a mosaic only those in `crop.sites` may be used."""
     camera: Camera
     """Levels, pitch, fill."""
     optics: Optics
@@ -72,7 +72,9 @@ class Sample:
     wanted: tuple[Wanted, ...]
     """Readings that limits ask for; a method may offer more."""
     companions: Mapping[str, tuple[Crop, ...]] = field(default_factory=dict)
-    """Crops of the same box from companion captures by role."""
+    """Crops of the same box and channel from companion captures by role."""
+    frames: tuple[Crop, ...] = ()
+    """For a method that takes a capture's frames together: all of them, `crop` first; else empty."""
 
 
 @dataclass(frozen=True)
@@ -132,7 +134,11 @@ class Target(Protocol):
 
 
 class Method(Protocol):
-    """A measurement."""
+    """A measurement.
+
+    It sees one region of one frame in one colour channel; the session averages repeats. A module with
+    `TOGETHER = True` gets all frames of the capture at once instead, in `sample.frames`.
+    """
 
     NAME: str
     TITLE: str

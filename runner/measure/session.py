@@ -8,6 +8,7 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
 from runner.capture.frame import Box, Crop, Frame, crop
+from runner.capture.mosaic import grey
 from runner.errors import FrameRefused, MeasurementRefused
 from runner.measure.contract import Found, Measurement, NotFound, QuantityInfo, Sample, Wanted
 from runner.measure.evidence import CaptureEvidence, FrameFact, RegionFact, UnitEvidence
@@ -92,13 +93,13 @@ class _Companions:
         self._load, self._known_faults = load, known_faults
         self._frames: dict[str, Sequence[Frame]] = {}
 
-    def crops(self, uses: Mapping[str, str], box: Box) -> dict[str, tuple[Crop, ...]]:
+    def crops(self, uses: Mapping[str, str], box: Box, channel: str) -> dict[str, tuple[Crop, ...]]:
         """Return the same box out of every companion that could be read; a role without frames is left out."""
         found = {}
         for role, name in uses.items():
-            frames = self._read(name)
-            if frames:
-                found[role] = tuple(crop(frame, box, self._cameras[name]) for frame in frames)
+            frames, camera = self._read(name), self._cameras[name]
+            if frames and channel in camera.channels:
+                found[role] = tuple(crop(frame, box, camera, channel) for frame in frames)
         return found
 
     def _read(self, name: str) -> Sequence[Frame]:
@@ -128,62 +129,81 @@ def _measure_capture(
         frames = load(name)
     except FrameRefused as error:
         return replace(evidence, faults=(str(error),)), Measurement(())
-    located = [
-        one.target.locate([frame], one.capture.regions, one.capture.camera, one.target_options) for frame in frames
-    ]
+    camera = one.capture.camera
+    located = []
+    for frame in frames:
+        seen = replace(frame, codes=grey(frame.codes, camera))
+        located.append(one.target.locate([seen], one.capture.regions, camera, one.target_options))
+        if painter is not None and frame is frames[0]:
+            painter(name, attempt, seen, tuple(_fact(found) for found in located[0]))
     regions = tuple(_fact(found) for found in located[0])
-    if painter is not None:
-        painter(name, attempt, frames[0], regions)
+    each = [plan for plan in one.methods if not getattr(plan.method, "TOGETHER", False)]
     repeats = [
-        _measure_frame(one, frame, found, companions, faults) for frame, found in zip(frames, located, strict=True)
+        _measure_frames(one, each, (frame,), found, companions, faults)
+        for frame, found in zip(frames, located, strict=True)
     ]
+    at_once = [plan for plan in one.methods if plan not in each]
+    repeats.append(_measure_frames(one, at_once, frames, located[0], companions, faults))
     readings = _combine([m.readings for m in repeats])
     context = units.context_of(one.capture.camera, one.capture.optics)
     declared = tuple(
         replace(with_declared(reading, plan.uncertainty, context), capture=name, attempt=attempt)
         for reading in readings
     )
-    curves = tuple(replace(curve, capture=name, attempt=attempt) for curve in repeats[0].curves)
+    curves = tuple(
+        replace(curve, capture=name, attempt=attempt) for curve in (*repeats[0].curves, *repeats[-1].curves)
+    )
     return replace(evidence, frames=tuple(_frame_fact(f) for f in frames), regions=regions), Measurement(
         declared, curves
     )
 
 
-def _measure_frame(
-    one: CapturePlan, frame: Frame, located: Sequence[Found | NotFound], companions: _Companions, faults: Faults | None
+def _measure_frames(
+    one: CapturePlan,
+    plans: Sequence[MethodPlan],
+    frames: Sequence[Frame],
+    located: Sequence[Found | NotFound],
+    companions: _Companions,
+    faults: Faults | None,
 ) -> Measurement:
+    """Let methods measure one frame, or all frames together, in every region and channel."""
     readings: list[Reading] = []
     curves: list[Curve] = []
-    for found in located:
-        for plan in one.methods:
-            measured = _measure_region(one, frame, found, plan, companions, faults)
-            readings += measured.readings
-            curves += measured.curves
+    for found in located if plans else ():
+        for channel in one.capture.camera.channels:
+            for plan in plans:
+                measured = _measure_region(one, frames, found, channel, plan, companions, faults)
+                readings += (replace(reading, channel=channel) for reading in measured.readings)
+                curves += (replace(curve, channel=channel) for curve in measured.curves)
     return Measurement(tuple(readings), tuple(curves))
 
 
 def _measure_region(
     one: CapturePlan,
-    frame: Frame,
+    frames: Sequence[Frame],
     found: Found | NotFound,
+    channel: str,
     plan: MethodPlan,
     companions: _Companions,
     faults: Faults | None,
 ) -> Measurement:
     wanted = plan.wanted.get(found.region, ())
+    first = frames[0]
     if isinstance(found, NotFound):
-        if plan.method.NEEDS or found.box is None or not found.box.inside(frame.shape[1], frame.shape[0]):
+        if plan.method.NEEDS or found.box is None or not found.box.inside(first.shape[1], first.shape[0]):
             return _refused(plan, found.region, wanted, Refusal(found.cause, found.because))
         found = Found(found.region, found.box)
     capture = one.capture
+    crops = tuple(crop(frame, found.box, capture.camera, channel) for frame in frames)
     sample = Sample(
         found,
-        crop(frame, found.box, capture.camera),
+        crops[0],
         capture.camera,
         capture.optics,
         capture.chart,
         wanted,
-        companions.crops(capture.uses, found.box),
+        companions.crops(capture.uses, found.box, channel),
+        crops if getattr(plan.method, "TOGETHER", False) else (),
     )
     try:
         measured = plan.method.measure(sample, plan.options)
@@ -191,7 +211,7 @@ def _measure_region(
         return _refused(plan, found.region, wanted, Refusal(error.cause, str(error)))
     except Exception as error:  # noqa: BLE001 - one method's fault must not take the unit's other readings along
         if faults is not None:
-            faults.tracebacks.append(f"{frame.file}, {found.region}, {plan.method.NAME}\n{traceback.format_exc()}")
+            faults.tracebacks.append(f"{first.file}, {found.region}, {plan.method.NAME}\n{traceback.format_exc()}")
         because = f"the program failed in '{plan.method.NAME}': {type(error).__name__}: {error}"
         return _refused(plan, found.region, wanted, Refusal("fault", because))
     return _complete(measured, plan, found.region, wanted)
