@@ -12,7 +12,7 @@ from cryptography.hazmat.primitives.serialization import Encoding
 
 from runner.errors import VerificationRefused
 from runner.report import cms_form
-from tests.report import attacks
+from tests.report import attacks_cms
 from tests.report import signed_world as world
 
 DATA = b"<p>lower left corner: 0.187 cy/px</p>\n"
@@ -73,8 +73,8 @@ def test_every_bit_of_a_detached_signature_counts() -> None:
     assert accepted == []
 
 
-@pytest.mark.parametrize("change", attacks.CMS, ids=lambda change: str(change.__name__))
-def test_unsigned_parts_may_not_differ(change: attacks.CmsAttack) -> None:
+@pytest.mark.parametrize("change", attacks_cms.CMS, ids=lambda change: str(change.__name__))
+def test_unsigned_parts_may_not_differ(change: attacks_cms.CmsAttack) -> None:
     """What the signature does not cover is prescribed to the byte."""
     with pytest.raises(VerificationRefused, match="the signature"):
         cms_form.read(change(_made(), AUTHORITY), DIGEST, timed=True)
@@ -84,13 +84,13 @@ def test_the_twin_of_a_signature_value_is_true_but_refused() -> None:
     """(r, n - s) satisfies ECDSA as well (SEC 1, 4.1.4); only the lower s is written and accepted."""
     der = _made()
     (signer,) = cms.ContentInfo.load(der)["content"]["signer_infos"]
-    (other,) = cms.ContentInfo.load(attacks.twin_value(der, AUTHORITY))["content"]["signer_infos"]
+    (other,) = cms.ContentInfo.load(attacks_cms.twin_value(der, AUTHORITY))["content"]["signer_infos"]
 
     r, s = decode_dss_signature(signer["signature"].native)
     assert decode_dss_signature(other["signature"].native) == (r, cms_form.P256_ORDER - s)
     assert s <= cms_form.P256_ORDER // 2
     with pytest.raises(VerificationRefused, match="not written in the one allowed way"):
-        cms_form.read(attacks.twin_value(der, AUTHORITY), DIGEST, timed=True)
+        cms_form.read(attacks_cms.twin_value(der, AUTHORITY), DIGEST, timed=True)
 
 
 def test_the_low_value_is_written_every_time() -> None:
