@@ -27,22 +27,31 @@ Table = Mapping[str, Sequence[Reading]]
 
 
 def checks_of(capture: Capture, limit: Limit, readings: Table, attempt: int) -> list[Check]:
-    """Return every check of a usable capture's limit."""
+    """Return every check of a usable capture's limit: each region, and each colour channel unless one is named."""
     regions = limit.where or ("",)
-    if limit.combine is None:
-        return [_one(capture, limit, region, _find(limit, readings, region), attempt) for region in regions]
-    members = [_find(limit, readings, region) for region in regions]
-    against = [_find(limit, readings, region) for region in limit.against]
-    return [_combined(capture, limit, members, against, attempt)]
+    checks = []
+    for one in _by_channel(capture, limit):
+        if one.combine is None:
+            checks += [_one(capture, one, region, _find(one, readings, region), attempt) for region in regions]
+        else:
+            members = [_find(one, readings, region) for region in regions]
+            against = [_find(one, readings, region) for region in one.against]
+            checks.append(_combined(capture, one, members, against, attempt))
+    return checks
 
 
-def not_measured(limit: Limit, attempt: int, reason: str, at_fault: str, because: str) -> list[Check]:
+def not_measured(capture: Capture, limit: Limit, attempt: int, reason: str, at_fault: str, because: str) -> list[Check]:
     """Return every check of a limit whose capture cannot be judged."""
     places = [_where(limit)] if limit.combine else list(limit.where or ("",))
     return [
-        replace(_blank(limit, place, attempt), verdict=NOT_MEASURED, reason=reason, at_fault=at_fault, because=because)
+        replace(_blank(one, place, attempt), verdict=NOT_MEASURED, reason=reason, at_fault=at_fault, because=because)
+        for one in _by_channel(capture, limit)
         for place in places
     ]
+
+
+def _by_channel(capture: Capture, limit: Limit) -> list[Limit]:
+    return [replace(limit, channel=channel) for channel in capture.camera.channels if limit.channel in {None, channel}]
 
 
 def _find(limit: Limit, readings: Table, region: str) -> Reading:
@@ -50,7 +59,10 @@ def _find(limit: Limit, readings: Table, region: str) -> Reading:
         if _answers(reading, limit):
             return reading
     lost = Refusal("fault", f"{label(limit.quantity, limit.parameters, limit.part)} has no reading")
-    return Reading(region, limit.quantity, limit.unit, None, None, parameters=limit.parameters, refusal=lost)
+    channel = limit.channel or "mono"
+    return Reading(
+        region, limit.quantity, limit.unit, None, None, parameters=limit.parameters, channel=channel, refusal=lost
+    )
 
 
 def _answers(reading: Reading, limit: Limit) -> bool:
@@ -217,4 +229,5 @@ def _in_unit(capture: Capture, value: float, unit: str, wanted: str) -> float:
 
 
 def _place(check: Check) -> str:
-    return f"{check.where}: " if check.where else ""
+    words = check.where if check.channel == "mono" else f"{check.where} {check.channel}".strip()
+    return f"{words}: " if words else ""

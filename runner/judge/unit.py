@@ -73,15 +73,15 @@ def _capture_checks(capture: Capture, states: Sequence[CaptureState], evidence: 
             numbers = joined([str(s.attempt) for s in usable])
             reason = f"two valid attempts, no rule: attempts {numbers} of '{capture.name}' can be used"
             two = blame.TWO_ATTEMPTS
-            checks += not_measured(limit, usable[-1].attempt, reason, two.at_fault, two.because)
+            checks += not_measured(capture, limit, usable[-1].attempt, reason, two.at_fault, two.because)
         elif mine:
             last = mine[-1]
             reason = f"'{capture.name}' cannot be used: {last.faults[0]}"
             fault, because = last.at_fault or AT_FAULT_CANNOT_TELL, last.because or ""
-            checks += not_measured(limit, last.attempt, reason, fault, because)
+            checks += not_measured(capture, limit, last.attempt, reason, fault, because)
         else:
             reason = f"'{capture.name}' was not captured"
-            checks += not_measured(limit, 1, reason, blame.FILE.at_fault, "there is no frame of it")
+            checks += not_measured(capture, limit, 1, reason, blame.FILE.at_fault, "there is no frame of it")
     return checks
 
 

@@ -55,7 +55,8 @@ def _broken(capture: Capture, bound: Bound, readings: Sequence[Reading]) -> list
 
 
 def _place(reading: Reading) -> str:
-    return f"{reading.region}: " if reading.region else ""
+    words = reading.region if reading.channel == "mono" else f"{reading.region} {reading.channel}".strip()
+    return f"{words}: " if words else ""
 
 
 def _words(bound: Bound) -> str:

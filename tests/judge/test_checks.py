@@ -1,6 +1,7 @@
 """Limits against readings: units, uniqueness, combinations, what is only reported."""
 
 import math
+from dataclasses import replace
 from typing import Any
 
 import pytest
@@ -12,7 +13,7 @@ from runner.judge.unit import judge_unit
 from runner.judge.verdict import Check
 from runner.measure.reading import Reading
 from runner.spec.model import Limit
-from tests.judge.hand_made import evidence, limit, reading, refused, spec
+from tests.judge.hand_made import CAMERA, evidence, limit, reading, refused, spec
 
 
 def _check(asked: Limit, *readings: Reading, at: int = 0) -> Check:
@@ -107,6 +108,22 @@ def test_the_worst_of_valued_and_bounded_members_is_the_valued_one() -> None:
     assert check.value == pytest.approx(0.3)
 
 
+def test_each_colour_channel_is_checked_unless_one_is_named() -> None:
+    """A limit without channel holds in red, green and blue; a lost channel is not measured, never left out."""
+    asked, green = limit("1"), limit("2", channel="green")
+    colour = replace(spec(asked, green).captures[0], camera=replace(CAMERA, mosaic="RGGB"))
+    readings = {"centre": [reading(0.3, channel="red"), reading(0.25, channel="green")]}
+    checks = checks_of(colour, asked, readings, 1) + checks_of(colour, green, readings, 1)
+
+    assert [(c.characteristic, c.channel, c.verdict) for c in checks] == [
+        ("1", "red", "conforms"),
+        ("1", "green", "conforms"),
+        ("1", "blue", "not measured"),
+        ("2", "green", "conforms"),
+    ]
+    assert checks[0].reason.startswith("centre red: mtf50")
+
+
 def test_another_estimators_reading_does_not_answer() -> None:
     """A limit that names an estimator is answered by that one only."""
     check = _check(limit(estimator="iso 12233:2014"), reading(0.3))
@@ -116,7 +133,8 @@ def test_another_estimators_reading_does_not_answer() -> None:
 
 def test_a_capture_that_cannot_be_used_yields_all_its_checks() -> None:
     """Every limit yields its checks always."""
-    checks = not_measured(limit(where=("left", "right")), 1, "gone", "capture", "file")
+    asked = limit(where=("left", "right"))
+    checks = not_measured(spec(asked).captures[0], asked, 1, "gone", "capture", "file")
 
     assert [(c.where, c.verdict, c.at_fault) for c in checks] == [("left", "not measured", "capture")] * 1 + [
         ("right", "not measured", "capture")
