@@ -11,7 +11,9 @@ from math import sqrt
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
+from runner.capture.frame import Crop
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.options import read_record
 from runner.measure.reading import Component, Reading
@@ -53,8 +55,8 @@ def measure(sample: Sample, options: Options) -> Measurement:  # noqa: ARG001 - 
     The level's noise is taken from differences of neighbouring columns, which a scene's edges hardly enter
     (median absolute deviation; 1.4826 turns it into a standard deviation for normal noise).
     """
-    signal, codes = sample.crop.signal, sample.crop.codes
-    step = np.diff(signal, axis=1)
+    codes, signal = _own(sample.crop.codes, sample.crop.sites), _own(sample.crop.signal, sample.crop.sites)
+    step = _steps(sample.crop)
     noise = 1.4826 * float(np.median(np.abs(step - np.median(step)))) / sqrt(2) if step.size else 0.0
     u_level = 100 * noise / sqrt(signal.size)
     at_end = int(np.count_nonzero((codes >= sample.camera.white_level) | (codes <= 0)))
@@ -89,6 +91,18 @@ def measure(sample: Sample, options: Options) -> Measurement:  # noqa: ARG001 - 
             ),
         )
     )
+
+
+def _own(values: NDArray[Any], sites: NDArray[np.bool_] | None) -> NDArray[Any]:
+    """Return the channel's own pixels; all of them where there is no mosaic."""
+    return values if sites is None else values[sites]
+
+
+def _steps(crop: Crop) -> NDArray[np.float64]:
+    """Return differences of neighbouring pixels of one channel: the next column, or the one after it in a mosaic."""
+    if crop.sites is None:
+        return np.diff(crop.signal, axis=1)
+    return (crop.signal[:, 2:] - crop.signal[:, :-2])[crop.sites[:, 2:]]
 
 
 def _noise(u: float) -> tuple[Component, ...]:

@@ -74,3 +74,18 @@ def test_every_quantity_has_a_unit_and_a_sentence() -> None:
     """Listings can say what each quantity means."""
     assert set(exposure.quantities()) == {"level", "clipped"}
     assert exposure.quantity("mtf") is None
+
+
+def test_a_mosaics_channel_counts_its_own_pixels_only() -> None:
+    """Level and clipping of blue come from the blue quarter; other colours clip beside it unnoticed."""
+    camera = replace(CAMERA, mosaic="RGGB")
+    codes = np.full((30, 40), 4095, dtype=np.uint16)
+    codes[1::2, 1::2] = 1000
+    codes[1, 1] = 4095
+    box = Box(0, 0, 40, 30)
+    cut = crop(Frame("a.tif", "", "", codes), box, camera, "blue")
+    found = exposure.measure(Sample(Found("all", box), cut, camera, Optics(), Chart(), wanted=()), exposure.Options())
+    values = {r.quantity: r.value for r in found.readings}
+
+    assert values["clipped"] == pytest.approx(100 / 300)
+    assert values["level"] == pytest.approx(100 * (299 * 1000 + 4095 - 300 * 64) / 300 / (4095 - 64))
