@@ -7,7 +7,7 @@ from typing import Any
 from runner.judge.sentences import decimals, show
 from runner.judge.verdict import NOT_MEASURED
 from runner.report import drawing
-from runner.report.circumstance_facts import sentence
+from runner.report.circumstance_facts import capital, sentence
 
 PROBABLE = 0.9995
 """From here on a probability prints as `> 99.9 %`."""
@@ -94,10 +94,10 @@ def value_text(check: Check) -> str:
     ends = (check["at_least"], check["at_most"], *check["acceptance"].values())
     if check["bound"] is not None:
         side, end = check["bound"]
-        return f"{side} {_joined(show(end, None, check['measured_in'], against=ends), check['measured_in'])}"
+        return f"{side} {show(end, None, check['measured_in'], against=ends)}"
     if check["value"] is None:
         return "–"
-    return _joined(show(check["value"], check["u"], check["measured_in"], against=ends), check["measured_in"])
+    return show(check["value"], check["u"], check["measured_in"], against=ends).replace("± ", f"±{JOIN}")
 
 
 def limit_text(check: Check) -> str:
@@ -129,14 +129,14 @@ def probability_text(probability: float | None, asked: float) -> str:
     if probability is None:
         return "–"
     if asked < PROBABLE and probability >= PROBABLE:
-        return "> 99.9 %"
+        return f">{JOIN}99.9{JOIN}%"
     if asked < PROBABLE and probability <= 1 - PROBABLE:
-        return "< 0.1 %"
+        return f"<{JOIN}0.1{JOIN}%"
     per_cent, edges = 100 * probability, (round(100 * asked, 9), round(100 * (1 - asked), 9))
     places = 1
     while places < MOST_PLACES and any(_hidden(per_cent, edge, places) for edge in edges):
         places += 1
-    return f"{per_cent:.{places}f} %"
+    return f"{per_cent:.{places}f}{JOIN}%"
 
 
 def fault_text(word: str | None) -> str:
@@ -148,11 +148,6 @@ def fault_text(word: str | None) -> str:
         "cannot tell": "At fault: cannot tell.",
         "program": "At fault: the program.",
     }.get(word, f"At fault: {word}.")
-
-
-def capital(text: str) -> str:
-    """Return words with a capital letter at their begin."""
-    return text[:1].upper() + text[1:]
 
 
 def why_facts(checks: Sequence[Check]) -> tuple[WhyFact, ...]:
@@ -195,13 +190,7 @@ def _by_cause(rows: Iterable[tuple[str, str]]) -> dict[str, list[str]]:
 
 def _range(low: float | None, high: float | None, unit: str, number: Any) -> str:
     parts = [f"{sign}{JOIN}{number(end)}" for sign, end in (("≥", low), ("≤", high)) if end is not None]
-    return " and ".join(parts) + ("" if unit in {"1", ""} or not parts else f"{JOIN}{unit}") or "–"
-
-
-def _joined(text: str, unit: str) -> str:
-    """Keep value and uncertainty on one line; only the unit may stand on the next."""
-    number = text.removesuffix(f" {unit}")
-    return number.replace(" ", JOIN) + text[len(number) :]
+    return " and ".join(parts) + ("" if unit in {"1", ""} or not parts else f" {unit}") or "–"
 
 
 def _hidden(value: float, edge: float, places: int) -> bool:

@@ -16,6 +16,11 @@ def sentence(text: str) -> str:
     return plain if not plain or plain[-1] in ".!?" else f"{plain}."
 
 
+def capital(text: str) -> str:
+    """Return words with a capital letter at their begin."""
+    return text[:1].upper() + text[1:]
+
+
 def first_attempts(document: Document) -> list[Mapping[str, Any]]:
     """Return each capture once, by its first attempt."""
     seen: dict[str, Mapping[str, Any]] = {}
@@ -42,7 +47,7 @@ def station_fact(document: Document) -> tuple[Pair, ...]:
 def capture_fact(capture: Mapping[str, Any]) -> tuple[str, str, str, str]:
     """Return name, attempt, state and remarks of a capture."""
     state = "usable" if capture["usable"] else "not usable"
-    remarks = [*capture["faults"], *([capture["because"]] if capture["because"] else [])]
+    remarks = [*capture["faults"], *([capital(capture["because"])] if capture["because"] else [])]
     return capture["name"], str(capture["attempt"]), state, " ".join(sentence(r) for r in remarks) or "–"
 
 

@@ -84,7 +84,7 @@ def test_captures_tell_their_state() -> None:
     bad = good | {"attempt": 2, "usable": False, "faults": ["a.tif: cut off", "b.tif: empty"], "because": "the file"}
 
     assert capture_fact(good) == ("dark", "1", "usable", "–")
-    assert capture_fact(bad) == ("dark", "2", "not usable", "a.tif: cut off. b.tif: empty. the file.")
+    assert capture_fact(bad) == ("dark", "2", "not usable", "a.tif: cut off. b.tif: empty. The file.")
     assert [c["name"] for c in first_attempts({"captures": [good, bad, good | {"name": "chart"}]})] == ["dark", "chart"]
 
 
