@@ -5,6 +5,7 @@ from datetime import UTC, datetime, timedelta
 from hashlib import sha256
 from io import BytesIO
 from pathlib import Path
+from typing import Any
 
 import pytest
 from cryptography.hazmat.primitives.serialization import Encoding
@@ -29,8 +30,15 @@ def authority() -> signed_world.Authority:
 @pytest.fixture(scope="module")
 def files(authority: signed_world.Authority) -> dict[str, bytes]:
     """Return the failing unit's files, made from results in another order of keys."""
-    document = dict(reversed(world.failing().items()))
+    document: dict[str, Any] = _turned(world.failing())
     return unit_files(document, world.pictures(), authority.station, [])
+
+
+def _turned(data: Any) -> Any:
+    """Return plain data with the keys of every mapping in the opposite order."""
+    if isinstance(data, dict):
+        return {key: _turned(data[key]) for key in reversed(data)}
+    return [_turned(item) for item in data] if isinstance(data, list) else data
 
 
 def test_everything_is_there_and_nothing_else(files: dict[str, bytes], tmp_path: Path) -> None:
