@@ -75,7 +75,8 @@ def html(lot: Mapping[str, Any], documents: Sequence[Mapping[str, Any]]) -> str:
         documents: Units' results.
     """
     style = (folder("templates") / EDITION / "screen.css").read_text(encoding="utf-8")
-    return str(environment(drawing=inline).get_template("lot.html").render(r=lot_facts(lot, documents), style=style))
+    template = environment().get_template("lot.html")
+    return str(template.render(r=lot_facts(lot, documents), style=style, drawing=inline))
 
 
 def lot_facts(lot: Mapping[str, Any], documents: Sequence[Mapping[str, Any]]) -> LotReport:

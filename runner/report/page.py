@@ -3,6 +3,7 @@
 import base64
 import re
 from collections.abc import Mapping
+from functools import cache
 from typing import Any
 
 from markupsafe import Markup
@@ -55,13 +56,22 @@ def inline(svg: str) -> str:
     return Markup(svg)  # noqa: S704 - made by `drawing`, which escapes every word
 
 
-def environment(**filters: Any) -> Any:
+@cache
+def environment() -> Any:
     """Return the template environment: escaping on, unknown names are errors.
 
-    Args:
-        filters: Further filters by name.
+    Made once: reading the templates takes a tenth of a page's time. What two filters do differs from page to page, so a
+    page gives them to `render`: `drawing` puts an SVG text into its place, `place` gives a picture's address.
     """
-    from jinja2 import Environment, FileSystemLoader, StrictUndefined  # noqa: PLC0415 - heavy
+    from jinja2 import Environment, FileSystemLoader, StrictUndefined, pass_context  # noqa: PLC0415 - heavy
+
+    @pass_context
+    def place(context: Any, name: str) -> Any:
+        return context["place"](name)
+
+    @pass_context
+    def drawing(context: Any, svg: str) -> Any:
+        return context["drawing"](svg)
 
     templates = Environment(
         loader=FileSystemLoader(folder("templates") / EDITION),
@@ -70,11 +80,12 @@ def environment(**filters: Any) -> Any:
         trim_blocks=True,
         keep_trailing_newline=True,
     )
-    templates.filters |= {"css": Markup, **filters}  # style sheets are the program's own
+    # style sheets are the program's own
+    templates.filters |= {"css": Markup, "place": place, "drawing": drawing}
     return templates
 
 
-def _render(kind: str, document: Mapping[str, Any], **filters: Any) -> str:
+def _render(kind: str, document: Mapping[str, Any], **more: Any) -> str:
     style = (folder("templates") / EDITION / f"{kind}.css").read_text(encoding="utf-8")
-    template = environment(**filters).get_template(f"{kind}.html")
-    return str(template.render(r=report_facts(document), style=style, created=document["time"]))
+    template = environment().get_template(f"{kind}.html")
+    return str(template.render(r=report_facts(document), style=style, created=document["time"], **more))

@@ -12,6 +12,7 @@ from typing import Any
 
 from runner.errors import UsageError
 from runner.report.page import paper_page
+from runner.report.pdf_pictures import indexed
 from runner.resources import folder
 
 _FONTS = ("DejaVuSans.ttf", "DejaVuSans-Bold.ttf", "DejaVuSansMono.ttf")
@@ -38,6 +39,7 @@ def render_pdf(document: Mapping[str, Any], pictures: Mapping[str, bytes], resul
     moment = datetime.fromisoformat(str(document["time"]))
     files = {f"report:/fonts/{name}": ("font/ttf", _font(name)) for name in _FONTS}
     files |= {f"report:/pictures/{name}": ("image/png", data) for name, data in pictures.items()}
+    ready = {f"report:/pictures/{name}": indexed(data) for name, data in pictures.items()}
     text, drawings = paper_page(document)
     files |= {address: ("image/svg+xml", data) for address, data in drawings.items()}
     with _no_missing_glyph(), warnings.catch_warnings():
@@ -50,6 +52,7 @@ def render_pdf(document: Mapping[str, Any], pictures: Mapping[str, bytes], resul
             pdf_tags=True,
             attachments=list(_attachments(document, pictures, results_bytes, moment)),
             pdf_identifier=sha256(results_bytes).digest()[:16],
+            cache={address: picture for address, picture in ready.items() if picture is not None},
         )
     return bytes(written)
 
