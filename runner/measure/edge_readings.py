@@ -251,7 +251,8 @@ def _components(edge: Edge, found: Gradient) -> tuple[Component, ...]:
     if found.least_u > 1.001 * whole:  # from draws: which part is noise cannot be told, so none of it averages
         parts = [Component("noise", found.least_u, "A", fit.noise.dof)]
         shape = 0.0
-    parts.append(Component("method bias", sqrt(shape**2 + _wave_loss(edge, found) ** 2), "B"))
+    bias = sqrt(shape**2 + _wave_loss(edge, found) ** 2 + found.bias**2)
+    parts.append(Component("method bias", bias, "B"))
     if fit.shading:
         parts.append(Component("shading", sqrt(max(0.0, found.u(fit.covariance) ** 2 - whole**2)), "B"))
     elif shading_shows(fit):

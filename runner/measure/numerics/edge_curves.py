@@ -30,6 +30,8 @@ class Gradient:
     """Remarks."""
     least_u: float = 0.0
     """Standard uncertainty found by draws from the posterior where first order says less."""
+    bias: float = 0.0
+    """Standard uncertainty of a bias that the fit's covariance does not hold."""
 
     def u(self, covariance: Array) -> float:
         """Return the first-order standard uncertainty under a covariance (JCGM 100:2008 5.2.2)."""

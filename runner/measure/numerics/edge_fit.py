@@ -10,6 +10,7 @@ References:
     Golub and Pereyra, SIAM J. Numer. Anal. 10 (1973) 413, doi:10.1137/0710036 (separable least squares).
     Patterson and Thompson, Biometrika 58 (1971) 545, doi:10.1093/biomet/58.3.545 (restricted likelihood).
     Hoeting et al., Statistical Science 14 (1999) 382, doi:10.1214/ss/1009212519 (averaging over models).
+    Tukey, Exploratory Data Analysis (1977), ch. 16 (twicing; from memory).
 """
 
 from dataclasses import dataclass, replace
@@ -64,6 +65,8 @@ class EdgeFit:
     """Posterior covariance: fixed columns, sliding columns, kernels."""
     sampling: Array
     """Covariance of the fitted numbers over repeated captures (the part of it that is noise)."""
+    smoothing: Array
+    """Estimated bias of the fitted numbers by the kernels' prior."""
     pixels: Pixels
     """The region."""
     linear: Linear
@@ -190,6 +193,13 @@ class _Solved:
         return self._whole((self.lift * self.gain) @ self.lift.T + aside @ aside.T)
 
     @cached_property
+    def smoothing(self) -> Array:
+        """Estimated bias of every parameter by the prior's pull, Tukey's twicing: what the fit of itself would lose."""
+        at = self.lift.shape[0] - self.lift.shape[1]
+        directions = self.lift[at:].T @ (self.change[at:] * self.unit[at:])
+        return np.asarray(self.lift @ ((self.gain * self.data - 1) * directions) / self.unit)
+
+    @cached_property
     def sampling(self) -> Array:
         """Covariance over repeated captures."""
         return self._whole((self.lift * (self.gain**2 * self.data)) @ self.lift.T)
@@ -245,6 +255,7 @@ def _joint_fit(
         noise,
         solved.covariance,
         solved.sampling,
+        solved.smoothing,
         pixels,
         linear,
         excess,

@@ -18,6 +18,8 @@ from runner.measure.numerics.line_spread import GRID, Array
 
 LEVELS = (0.1, 0.5, 0.9)
 """Shares of the step whose places widths and symmetry are made of."""
+KINK = 0.015
+"""Kernels round off a kink: noiseless boxes, triangles and exponentials have their half width within 1.5 %."""
 CLEAR = 3.0
 """Standard deviations from which an extremum stands out of the noise."""
 FLAT = 0.3
@@ -72,6 +74,9 @@ def asymmetry(curves: Curves) -> Gradient:
 def full_width(curves: Curves) -> Gradient:
     """Return the full width of the line spread at half its maximum, px.
 
+    It hangs on the height of one point, which smoothing lowers where the line spread is peaked and raises where it is
+    flat: the estimated smoothing is taken off, and counts in full as a standard uncertainty of what is left of it.
+
     Raises:
         MeasurementRefused: `not defined`, the line spread does not fall to half on either side.
     """
@@ -90,7 +95,9 @@ def full_width(curves: Curves) -> Gradient:
     ends += np.clip((half - curves.at(ends)[2]) / slopes, -0.05, 0.05)
     by = curves.at(np.append(ends, nodes[top]))[3]
     moved = -(by[:2] - by[2] / 2) / slopes[:, None]
-    return Gradient(float(ends[1] - ends[0]), curves.full(moved[1] - moved[0]))
+    gradient = curves.full(moved[1] - moved[0])
+    value, smoothing = float(ends[1] - ends[0]), float(gradient @ curves.fit.smoothing)
+    return Gradient(value - smoothing, gradient, bias=float(np.hypot(smoothing, KINK * value / np.sqrt(3))))
 
 
 def beyond(curves: Curves, *, bright: bool) -> Gradient:
