@@ -19,7 +19,7 @@ import runner
 from runner.capture import integrity
 from runner.capture.frame import Frame
 from runner.capture.lot import AttemptFolder, Lot, UnitFolder, find_lot
-from runner.errors import FrameRefused, UsageError
+from runner.errors import FrameRefused, StorageError, UsageError
 from runner.exits import Exit, most_serious
 from runner.judge import verdict
 from runner.judge.unit import judge_unit
@@ -34,6 +34,10 @@ from runner.spec.station import read_station
 
 ONE_THREAD = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "NUMEXPR_NUM_THREADS")
 """Set to 1 before numpy is imported: results must not depend on how many cores a machine has."""
+
+
+RUN_AGAIN = "make room, or bring the folder back, and run again; finished units are kept"
+"""What to do when results cannot be written."""
 
 
 @dataclass(frozen=True)
@@ -177,9 +181,14 @@ def accept_units(job: Job, units: Sequence[UnitFolder], announce: Announce) -> I
 
 def accept_unit(job: Job, unit: UnitFolder) -> UnitResult:
     """Measure, judge and report one unit; never raises for what happens to it."""
-    kept = _kept(job, unit)
-    if kept is not None:
-        return kept
+    try:
+        with store.unit_locked(job.order.out, unit.serial):
+            return _kept(job, unit) or _accept(job, unit)
+    except OSError as error:  # the folder of the run is gone, or cannot be written any more
+        return _unwritten(job, unit, error)
+
+
+def _accept(job: Job, unit: UnitFolder) -> UnitResult:
     try:
         evidence, pictures, tracebacks = measure_unit(job.plan, unit, job.survey)
     except Exception:  # noqa: BLE001 - a fault of the program leaves this unit not measured and the lot goes on
@@ -189,14 +198,11 @@ def accept_unit(job: Job, unit: UnitFolder) -> UnitResult:
         document = _document(job, unit, evidence, judgement, pictures)
         from runner.report.unit_files import unit_files  # noqa: PLC0415 - heavy: drawing, PDF, signing
 
-        folder = store.write_unit(
-            job.order.out,
-            unit.serial,
-            unit_files(document, pictures, _signer(job), tracebacks, job.order.timestamp_url),
-        )
-    except Exception as error:  # noqa: BLE001 - as above; a full disk also ends here
+        files = unit_files(document, pictures, _signer(job), tracebacks, job.order.timestamp_url)
+    except Exception as error:  # noqa: BLE001 - as above
         _note_fault(job, unit.serial, [*tracebacks, traceback.format_exc()])
         return _fault_result(job, unit, error)
+    folder = store.write_unit(job.order.out, unit.serial, files)
     return _result(document, folder, fault=bool(tracebacks))
 
 
@@ -231,8 +237,13 @@ def conclude(job: Job, lot: Lot, results: tuple[UnitResult, ...]) -> Outcome:
     """Write the lot's files from all results of this spec in the folder, under a lock."""
     from runner.report.lot_files import write_lot_files  # noqa: PLC0415 - not needed while units are measured
 
-    with store.locked(job.order.out):
-        lot_data = write_lot_files(job.order.out, job.plan.spec, job.facts, lot.unused)
+    try:
+        with store.locked(job.order.out):
+            lot_data = write_lot_files(job.order.out, job.plan.spec, job.facts, lot.unused)
+    except OSError as error:
+        raise StorageError(
+            f"the lot's files cannot be written: {error.strerror}", where=str(job.order.out), next_step=RUN_AGAIN
+        ) from error
     serials = {r.serial for r in results}
 
     def documents() -> Iterator[dict[str, Any]]:
@@ -356,6 +367,13 @@ def _note_fault(job: Job, serial: str, tracebacks: list[str]) -> None:
         store.write_whole(job.order.out / f"fault-{serial}.txt", "\n\n".join(tracebacks).encode())
     except OSError:
         return  # the disk itself may be what failed; the result says so on the screen
+
+
+def _unwritten(job: Job, unit: UnitFolder, error: OSError) -> UnitResult:
+    because = f"its results cannot be written: {error.strerror or error}"
+    where = job.order.out / unit.serial
+    what = RUN_AGAIN[:1].upper() + RUN_AGAIN[1:] + "."
+    return UnitResult(unit.serial, verdict.NOT_MEASURED, verdict.AT_FAULT_PROGRAM, because, what, Exit.FAULT, where)
 
 
 def _fault_result(job: Job, unit: UnitFolder, error: Exception) -> UnitResult:

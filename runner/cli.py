@@ -7,7 +7,7 @@ from collections.abc import Sequence
 import click
 
 import runner
-from runner.errors import ProbatumError, VerificationRefused
+from runner.errors import ProbatumError, StorageError, VerificationRefused
 from runner.exits import Exit
 
 COMMANDS = {
@@ -70,6 +70,9 @@ def run(arguments: Sequence[str]) -> Exit:
     except VerificationRefused as error:
         print(error, file=sys.stderr)
         return Exit.DOES_NOT_CONFORM
+    except StorageError as error:
+        print(error, file=sys.stderr)
+        return Exit.FAULT
     except ProbatumError as error:
         print(error, file=sys.stderr)
         return Exit.USAGE

@@ -7,6 +7,7 @@ ProbatumError
 ├── FrameRefused          a file that cannot be evidence; its capture is not measured
 ├── MeasurementRefused    a method that will not give a value for its region; the check is `not measured`
 ├── SigningError          a report could not be signed: exit 2
+├── StorageError          results that cannot be written, a full disk or a lost folder: exit 70
 └── VerificationRefused   a report that does not hold: exit 1
 """
 
@@ -76,6 +77,10 @@ class MeasurementRefused(ProbatumError):
 
 class SigningError(ProbatumError):
     """Raised when a report cannot be signed or its time stamp cannot be had."""
+
+
+class StorageError(ProbatumError):
+    """Raised when results cannot be written: a full disk, a folder that is gone."""
 
 
 class VerificationRefused(ProbatumError):

@@ -10,7 +10,7 @@ from runner import acceptance
 from runner.acceptance import Order
 from runner.capture import integrity
 from runner.capture.lot import find_lot
-from runner.errors import SpecError, UsageError
+from runner.errors import SpecError, StorageError, UsageError
 from runner.exits import Exit
 from runner.judge.unit import judge_unit
 from runner.measure.methods import edge_response
@@ -147,17 +147,48 @@ def test_a_fault_of_the_program_is_named_and_the_lot_goes_on(tmp_path: Path, mon
 
 
 def test_a_fault_while_reporting_is_caught_too(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
-    """When a report cannot be written the unit ends by the program's fault and the traceback is kept."""
+    """When a report cannot be made the unit ends by the program's fault and the traceback is kept."""
 
-    def full(*_: object) -> None:
-        raise OSError(28, "No space left on device")
+    def broken(*_: object) -> None:
+        raise ZeroDivisionError
+
+    monkeypatch.setattr("runner.report.unit_files.unit_files", broken)
+    outcome = acceptance.run(_order(tmp_path))
+
+    assert outcome.exit is Exit.FAULT
+    assert outcome.units[0].at_fault == "program"
+    assert "ZeroDivisionError" in (tmp_path / "out" / f"fault-{UNIT}.txt").read_text()
+
+
+def test_a_full_disk_is_no_fault_of_the_programs_logic(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Results that cannot be written end their unit with a plain sentence and what to do; the rerun completes."""
+    write_unit = store.write_unit
+
+    def full(out: Path, serial: str, files: dict[str, bytes]) -> Path:
+        if serial == UNIT:
+            raise OSError(28, "No space left on device")
+        return write_unit(out, serial, files)
 
     monkeypatch.setattr(store, "write_unit", full)
     outcome = acceptance.run(_order(tmp_path))
 
     assert outcome.exit is Exit.FAULT
-    assert "No space left" in outcome.units[0].because
-    assert "No space left" in (tmp_path / "out" / f"fault-{UNIT}.txt").read_text()
+    assert outcome.units[0].because == "its results cannot be written: No space left on device"
+    assert "run again" in outcome.units[0].next
+    monkeypatch.undo()
+    monkeypatch.setenv("XDG_CONFIG_HOME", str(tmp_path / "config"))
+    assert [u.kept for u in acceptance.run(_order(tmp_path)).units] == [False, True]
+
+
+def test_lot_files_that_cannot_be_written_are_told(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """A disk that fills up at the very end raises the error that the command line turns into a sentence and 70."""
+
+    def full(*_: object) -> None:
+        raise OSError(28, "No space left on device")
+
+    monkeypatch.setattr("runner.report.lot_files.write_lot_files", full)
+    with pytest.raises(StorageError, match="the lot's files cannot be written: No space left on device"):
+        acceptance.run(_order(tmp_path))
 
 
 @pytest.mark.parametrize(

@@ -7,6 +7,7 @@ import os
 import shutil
 import tempfile
 from collections.abc import Iterator, Mapping
+from hashlib import sha256
 from pathlib import Path
 from typing import Any
 
@@ -21,11 +22,17 @@ EARLIER = "earlier"
 RUN = "run.json"
 _MAKING = ".making-"
 _READY = ".ready"
+_RUN_LOCK = ".lock"
+_UNITS_LOCK = ".lock-units"
 
 
 def write_whole(path: Path, data: bytes) -> None:
-    """Write a file beside its place, flush it to the disk and rename it into place."""
+    """Write a file beside its place, flush it to the disk and rename it into place; folders are made as needed."""
     path.parent.mkdir(parents=True, exist_ok=True)
+    _write_beside(path, data)
+
+
+def _write_beside(path: Path, data: bytes) -> None:
     handle, name = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name}.")
     try:
         with os.fdopen(handle, "wb") as file:
@@ -37,6 +44,17 @@ def write_whole(path: Path, data: bytes) -> None:
     except BaseException:
         Path(name).unlink(missing_ok=True)
         raise
+    _flush_folder(path.parent)
+
+
+def _flush_folder(folder: Path) -> None:
+    """Flush a folder's entries, so that a rename outlives a power cut; some network file systems cannot do it."""
+    handle = os.open(folder, os.O_RDONLY)
+    try:
+        with contextlib.suppress(OSError):
+            os.fsync(handle)
+    finally:
+        os.close(handle)
 
 
 def write_unit(out: Path, serial: str, files: Mapping[str, bytes]) -> Path:
@@ -50,8 +68,10 @@ def write_unit(out: Path, serial: str, files: Mapping[str, bytes]) -> Path:
     making = out / f"{_MAKING}{serial}"
     finish(out, serial)
     shutil.rmtree(making, ignore_errors=True)
+    making.mkdir()  # without its parents: a run's folder that is gone must not come back with half of its units
     for name, data in files.items():
-        write_whole(making / name, data)
+        (making / name).parent.mkdir(exist_ok=True)
+        _write_beside(making / name, data)
     (making / _READY).touch()
     return finish(out, serial)
 
@@ -64,6 +84,7 @@ def finish(out: Path, serial: str) -> Path:
     """
     place, making = out / serial, out / f"{_MAKING}{serial}"
     if not (making / _READY).exists():
+        (place / _READY).unlink(missing_ok=True)  # a run that was killed between the last two steps left it
         return place
     (making / EARLIER).mkdir(exist_ok=True)
     if place.exists():
@@ -77,6 +98,7 @@ def finish(out: Path, serial: str) -> Path:
         (making / EARLIER).rmdir()
     making.rename(place)
     (place / _READY).unlink()
+    _flush_folder(out)
     return place
 
 
@@ -125,9 +147,28 @@ def all_results(out: Path, digest: str) -> list[dict[str, Any]]:
 
 @contextlib.contextmanager
 def locked(out: Path) -> Iterator[None]:
-    """Hold the run folder's lock, so that two runs into one folder do not write the lot's files at once."""
-    with (out / ".lock").open("w") as file:
+    """Hold the run folder's lock, so that two runs into one folder do not write the lot's files at once.
+
+    Whoever holds it also clears away what a killed run left half written beside the lot's files.
+    """
+    with (out / _RUN_LOCK).open("w") as file:
         fcntl.flock(file, fcntl.LOCK_EX)
+        for name in out.glob(".*.*.????????"):
+            if name.is_file():
+                name.unlink(missing_ok=True)
+        yield
+
+
+@contextlib.contextmanager
+def unit_locked(out: Path, serial: str) -> Iterator[None]:
+    """Hold one unit's lock, so that of two runs into one folder the second waits and finds the unit done.
+
+    It is a byte of one file, at a place that the serial gives; the system lets go of it when a process dies. A process
+    holds at most one of them at a time, since closing the file gives up all of its locks.
+    """
+    place = int.from_bytes(sha256(serial.encode()).digest()[:7], "big")
+    with (out / _UNITS_LOCK).open("r+b" if (out / _UNITS_LOCK).exists() else "a+b") as file:
+        fcntl.lockf(file, fcntl.LOCK_EX, 1, place)
         yield
 
 
