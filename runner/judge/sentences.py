@@ -5,6 +5,8 @@ from math import ceil, floor, isfinite, log10
 from runner.judge.verdict import Check
 
 MOST_DECIMALS = 9
+MOST_BESIDE_A_LIMIT = 15
+"""Decimals a value may need to show on which side of its limit it lies; what is nearer is equal to double precision."""
 
 
 def show(value: float, u: float | None, unit: str, *, against: tuple[float | None, ...] = ()) -> str:
@@ -30,7 +32,7 @@ def decimals(value: float, wide: float, against: tuple[float | None, ...] = ()) 
     """Return how many decimals a value needs."""
     places = _for_two_digits(wide) if wide > 0 and isfinite(wide) else _for_digits(value, 4)
     for limit in against:
-        while limit is not None and places < MOST_DECIMALS and value != limit and _hides(value, limit, places):
+        while limit is not None and places < MOST_BESIDE_A_LIMIT and value != limit and _hides(value, limit, places):
             places += 1
     return places
 

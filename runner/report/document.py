@@ -1,9 +1,12 @@
 """`results.json`: the one document from which everything in a report comes, and the way back for re-judging."""
 
+import ctypes
 import json
 import platform
+import zlib
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from functools import cache
 from importlib import metadata
 from typing import Any
 
@@ -21,8 +24,24 @@ from runner.spec.revision import canonical_json
 FORMAT = "probatum-results/1"
 TEMPLATE = "1"
 """Edition of the templates that print it."""
-LIBRARIES = ("numpy", "scipy", "scikit-image", "pillow", "tifffile", "imagecodecs", "weasyprint", "pyhanko")
+LIBRARIES = (
+    "numpy",
+    "scipy",
+    "scikit-image",
+    "pillow",
+    "tifffile",
+    "imagecodecs",
+    "weasyprint",
+    "pydyf",
+    "pikepdf",
+    "pyhanko",
+)
 """What a measured or printed digit may depend on."""
+SHARED = {
+    "pango": ("libpango-1.0.so.0", "pango_version_string"),
+    "harfbuzz": ("libharfbuzz.so.0", "hb_version_string"),
+}
+"""Libraries of the system on which a printed page's bytes depend: file, and the function that tells its version."""
 
 
 @dataclass(frozen=True)
@@ -45,9 +64,22 @@ def program() -> dict[str, Any]:
         "name": "probatum",
         "version": runner.__version__,
         "template": TEMPLATE,
-        "versions": {"python": platform.python_version()} | {name: metadata.version(name) for name in LIBRARIES},
+        "versions": {"python": platform.python_version(), "zlib": zlib.ZLIB_RUNTIME_VERSION}
+        | {name: metadata.version(name) for name in LIBRARIES}
+        | {name: _shared_version(*where) for name, where in SHARED.items()},
         "machine": f"{platform.system()} {platform.machine()}",
     }
+
+
+@cache
+def _shared_version(file: str, function: str) -> str:
+    """Return what a shared library says of itself, or `unknown` where it goes by another name."""
+    try:
+        ask = getattr(ctypes.CDLL(file), function)
+    except (OSError, AttributeError):
+        return "unknown"
+    ask.restype = ctypes.c_char_p
+    return str(ask().decode())
 
 
 def to_document(

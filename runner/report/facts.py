@@ -191,7 +191,7 @@ def report_facts(document: Document) -> Report:
         methods=methods_fact(document),
         uncertainty=uncertainty_fact(document),
         deviations=deviations_fact(document),
-        machine=machine_fact(document["program"]),
+        machine=f"{machine_fact(document['program'])}; results.json has the SHA-256 digest {digest}",
     )
 
 

@@ -35,11 +35,12 @@ def unit_files(
     read_back = parse(results)  # pages show what the file holds, in the file's order, as everyone else will read it
     html = html_page(read_back, pictures).encode()
     pdf = render_pdf(read_back, pictures, results)
+    now = datetime.now(UTC)
     files = {
         store.RESULTS: results,
         store.HTML: html,
-        store.HTML_SIGNATURE: sign_detached(html, key),
-        store.PDF: sign_pdf(pdf, key, time=datetime.now(UTC), timestamp_url=timestamp_url),
+        store.HTML_SIGNATURE: sign_detached(html, key, time=now, timestamp_url=timestamp_url),
+        store.PDF: sign_pdf(pdf, key, time=now, timestamp_url=timestamp_url),
     }
     files |= {f"{store.PICTURES}/{name}": data for name, data in pictures.items()}
     if tracebacks:
