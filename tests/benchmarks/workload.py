@@ -11,6 +11,8 @@ from tests.scenes.line_spreads import Gaussian
 WIDTH, HEIGHT = 4000, 3000
 COLUMNS, ROWS = 5, 5
 REGION = (100, 160)
+SIGMAS = tuple(0.5 + 0.01 * n for n in range(COLUMNS * ROWS))
+"""px: Gaussian blur of each edge."""
 
 
 def centres() -> list[tuple[int, int]]:
@@ -28,7 +30,7 @@ def frame(seed: int = 1) -> np.ndarray:
     codes = np.round(rng.normal(20000, 150, (HEIGHT, WIDTH))).astype(np.uint16)
     w, h = REGION[0] + 60, REGION[1] + 60
     for n, (x, y) in enumerate(centres()):
-        scene = EdgeScene(Gaussian(0.5 + 0.01 * n), size=(w, h), direction=4 + 0.2 * n, read_noise=150)
+        scene = EdgeScene(Gaussian(SIGMAS[n]), size=(w, h), direction=4 + 0.2 * n, read_noise=150)
         codes[y - h // 2 : y - h // 2 + h, x - w // 2 : x - w // 2 + w] = scene.render(rng)
     return codes
 
