@@ -26,7 +26,7 @@ from runner.judge.unit import judge_unit
 from runner.measure import session
 from runner.measure.evidence import CaptureEvidence, RegionFact, UnitEvidence
 from runner.measure.plan import Plan, bind
-from runner.report import store
+from runner.report import glyphs, store
 from runner.report.document import RunFacts, to_document
 from runner.spec.build import read_spec
 from runner.spec.model import Spec, Station
@@ -145,6 +145,8 @@ def read(order: Order) -> tuple[Plan, RunFacts]:
     spec = read_spec(order.spec)
     station = read_station(order.station) if order.station else Station()
     plan = bind(spec, station)
+    stated = {"--operator": order.operator, "--lot": order.lot, str(order.spec): spec.expanded}
+    glyphs.check(stated | {str(order.station): station.raw})
     kept = store.start_run(
         order.out,
         {
