@@ -15,14 +15,16 @@ Values = NDArray[np.float64]
 
 @dataclass(frozen=True)
 class Shading:
-    """Light of a lens over the field, 1 on its axis: cos⁴ law, two pupils that cover each other, a polynomial."""
+    """Light of a lens over the field, 1 on its axis: cos⁴ law, a rim that cuts the pupil, a polynomial."""
 
     size: tuple[int, int] = (160, 120)
     """Width and height of the frame, px."""
     angle: float = 0.0
     """Field angle at half the diagonal from the axis, degrees, for cos⁴."""
     vignette: float = 0.0
-    """Shift of the two equal pupils against each other at half the diagonal, in pupil radii, 0 to 2."""
+    """Shift of a round rim against the round pupil at half the diagonal, in pupil radii."""
+    pupil: float = 1.2
+    """Radius of that rim in pupil radii, at least 1: it cuts the pupil from a shift of radius - 1 on."""
     axis: tuple[float, float] = (0.0, 0.0)
     """The axis from the frame's centre, px."""
     powers: tuple[tuple[int, int, float], ...] = ()
@@ -40,8 +42,7 @@ class Shading:
         v = (y - h / 2 - self.axis[1]) / self.half_diagonal
         r2 = u**2 + v**2
         light = (1 + r2 * np.tan(np.radians(self.angle)) ** 2) ** -2.0  # cos⁴ of atan(r tan angle)
-        half = np.minimum(1.0, np.sqrt(r2) * self.vignette / 2)  # area common to two unit circles, over π
-        light = light * 2 / np.pi * (np.arccos(half) - half * np.sqrt(1 - half**2))
+        light = light * _overlap(np.sqrt(r2) * self.vignette, self.pupil)
         for a, b, c in self.powers:
             light = light + c * u**a * v**b
         return np.asarray(light, dtype=np.float64)
@@ -54,9 +55,18 @@ class Shading:
     def mean(self, x0: float, x1: float, y0: float, y1: float) -> float:
         """Return the mean over a rectangle by Gauss-Legendre quadrature of the closed form, 16 × 16 points."""
         nodes, weights = np.polynomial.legendre.leggauss(16)
-        x: Values = np.array((x0 + x1) / 2 + (x1 - x0) / 2 * nodes)
-        y: Values = np.array((y0 + y1) / 2 + (y1 - y0) / 2 * nodes)
+        x: Values = (x0 + x1) / 2 + (x1 - x0) / 2 * nodes.astype(np.float64)
+        y: Values = (y0 + y1) / 2 + (y1 - y0) / 2 * nodes.astype(np.float64)
         return float(weights @ self.at(x[None, :], y[:, None]) @ weights / 4)
+
+
+def _overlap(shift: Values, rim: float) -> Values:
+    """Return the share of the unit circle that a circle of radius rim ≥ 1, shifted, leaves open."""
+    d = np.clip(shift, max(rim - 1, 1e-12), rim + 1)
+    a = np.arccos(np.clip((d**2 + 1 - rim**2) / (2 * d), -1, 1))
+    b = np.arccos(np.clip((d**2 + rim**2 - 1) / (2 * d * rim), -1, 1))
+    kite = np.sqrt(np.maximum(0.0, (rim + 1 - d) * (d + 1 - rim) * (d - 1 + rim) * (d + 1 + rim))) / 2
+    return np.asarray((a + rim**2 * b - kite) / np.pi, dtype=np.float64)
 
 
 @dataclass(frozen=True)

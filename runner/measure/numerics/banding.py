@@ -29,6 +29,7 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy import ndimage, special
 
 Real = NDArray[np.float64]
 
@@ -132,13 +133,15 @@ def banding(
     grid = np.append(grid, 0.5)
     model = _fit(values, shading_order, [])
     chances: list[float] = []
+    passed: list[float] = []
     while len(chances) < most:
-        frequency, chance = _highest(grid, model)
+        frequency, chance = _highest(grid, model, passed)
         if chance > false_alarms:
             break
         wider = _fit(values, shading_order, [*model.frequencies, frequency])
         if min(wider.frequencies) < grid[0]:  # it is shading that the polynomial does not follow
-            break
+            passed.append(frequency)
+            continue
         chances.append(chance)
         model = wider
     ordinates, level = _spectrum(grid, model.residual)
@@ -178,23 +181,22 @@ def _spectrum(grid: Real, residual: Real) -> tuple[Real, Real]:
 
 def _medians(ordinates: Real, aside: int) -> Real:
     """Return the median of each ordinate and so many to both sides."""
-    from scipy.ndimage import median_filter  # noqa: PLC0415 - heavy
-
-    return np.asarray(median_filter(ordinates, 2 * aside + 1, mode="reflect"))
+    return np.asarray(ndimage.median_filter(ordinates, 2 * aside + 1, mode="reflect"))
 
 
-def _highest(grid: Real, model: "_Model") -> tuple[float, float]:
-    """Return the frequency that noise gives least of all, and the probability that it gives any such."""
-    from scipy.special import stdtr  # noqa: PLC0415 - heavy
+def _highest(grid: Real, model: "_Model", passed: list[float]) -> tuple[float, float]:
+    """Return the frequency that noise gives least of all, and the probability that it gives any such.
 
+    Frequencies of lines known, and those passed over, are left out.
+    """
     count = model.residual.size
     ordinates, level = _spectrum(grid, model.residual)
     level = np.maximum(level, _medians(ordinates, PADDING * NEAR) / log(2))
     z = ordinates / np.maximum(level, np.finfo(float).tiny)
     d = log(2) ** 2 * count / 2  # a median's variance, 1/n, over ln 2 squared: that of the mean of so many
     chances = (1 + z / d) ** -d
-    chances[-1] = 2 * stdtr(2 * d, -sqrt(z[-1]))
-    for known in model.frequencies:
+    chances[-1] = 2 * special.stdtr(2 * d, -sqrt(z[-1]))
+    for known in (*model.frequencies, *passed):
         chances[np.abs(grid - known) < APART / count] = 1.0
     best = int(np.argmin(chances))
     chance = float(chances[best])

@@ -1,0 +1,285 @@
+"""Defects larger than a pixel: columns and rows that depart as a whole, and blemishes, smooth spots on a flat.
+
+Columns: the means of the columns against the median of pairs of neighbours, in units of 1.4826 times the median size of
+these departures. A single hot pixel would lift its column's mean: what defective pixels have beyond k
+times the noise is taken off the means first, which leaves a column that is defective as a whole with k times the noise
+of a pixel, many times that of a mean.
+
+Blemishes: the flat is reduced to means of cells of a quarter of the least size looked for, or of more cells where the
+noise asks for it, and divided by its local background: a polynomial of order 4 through a coarse map, and on top the
+median of that map over a window of a given share of the frame. Cells beyond the contrast (and beyond k times the noise
+of a cell) that touch make a spot; its size is the side of the square of the same area, but no more than the short side
+of its bounding box, so that a line is no blemish. Spots wider than some 0.7 of the window are taken for background.
+
+References:
+    EMVA Standard 1288 Release 4.0 Linear (2021), column and row means, defects of the mean frame.
+    Thresholds (5 times the noise of column means; contrast and size of blemishes): common practice, no source.
+"""
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from math import ceil, hypot, sqrt
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy import ndimage
+
+from runner.measure.numerics.defect_ground import Ground, ground, local_medians, surface
+from runner.measure.numerics.defects import Defect, K
+
+Real = NDArray[np.float64]
+
+NEIGHBOURS = 10
+"""Pairs of columns left and right that a column is compared with; up to four bad ones nearby leave their median."""
+WINDOW = 0.15
+"""Width of the background's window over the frame's shorter side: spots up to a tenth of that side are seen whole."""
+COARSE = 64
+"""Blocks of the coarse map along the shorter side."""
+ORDER = 4
+"""Order of the background's polynomial; higher ones swing in the corners."""
+TRUST = 0.5
+"""Where the background departs from the polynomial, it is trusted to this share of that: near borders the median over
+the window is one-sided."""
+EXACT = 1e-6
+"""Significance is at most one over this, where there is no noise at all."""
+
+
+@dataclass(frozen=True)
+class LineDefect:
+    """A defective column or row."""
+
+    direction: str
+    """`column` or `row`."""
+    at: int
+    """Which one, from 0."""
+    contrast: float
+    """Its mean over that of its neighbours, in the frame's unit."""
+    significance: float
+    """That over the noise of such means."""
+
+
+@dataclass(frozen=True)
+class Blemish:
+    """A smooth spot on a flat."""
+
+    x: float
+    """Its middle, px from the frame's left border."""
+    y: float
+    """Its middle, px from the frame's upper border."""
+    contrast: float
+    """Mean departure of its middle (half its width) from the background, as a share of that; negative is darker."""
+    contrast_u: float
+    """Its standard uncertainty from noise and from what the background leaves elsewhere."""
+    size: float
+    """Side of the square of the same area, at most the short side of its bounding box, px."""
+    size_u: float
+    """Its standard uncertainty from the cells' width."""
+    significance: float
+    """Contrast over its u."""
+
+
+@dataclass(frozen=True)
+class Blemishes:
+    """What was found, and what could have been."""
+
+    spots: tuple[Blemish, ...]
+    """The strongest first."""
+    least: float
+    """Contrast from which on spots are told: what was asked, or k times the noise of a cell if that is more."""
+    cell: int
+    """Width of a cell, px."""
+
+
+def line_defects(frame: NDArray[Any], pixels: Sequence[Defect] = (), k: float = K) -> tuple[LineDefect, ...]:
+    """Find columns and rows that depart as a whole from their neighbours.
+
+    Args:
+        frame: Mean frame, rows × columns.
+        pixels: Its hot, or dead, dim and bright pixels.
+        k: Times the noise of a column's (row's) mean.
+
+    Raises:
+        ValueError: Values that are not finite.
+    """
+    if not np.isfinite(np.sum(frame, dtype=np.float64)):
+        raise ValueError("the frame holds values that are not finite numbers")
+    rows, columns, beyond = _beyond(frame, pixels, k)
+    found: list[LineDefect] = []
+    for axis, direction, at in ((0, "column", columns), (1, "row", rows)):
+        means = frame.mean(axis=axis, dtype=np.float64)
+        away = _from_neighbours(means)
+        kept = _from_neighbours(means - np.bincount(at, beyond, means.size) / frame.shape[axis])
+        noise = 1.4826 * float(np.median(np.abs(kept)))
+        least = max(noise, 1e-9 * float(np.abs(means).max()), float(np.finfo(float).tiny))
+        places = np.flatnonzero(np.abs(kept) > k * least)
+        found += [LineDefect(direction, int(i), float(away[i]), float(kept[i] / least)) for i in places]
+    return tuple(found)
+
+
+def off_lines(pixels: Sequence[Defect], lines: Sequence[LineDefect]) -> tuple[Defect, ...]:
+    """Return the pixels that lie on none of the defective columns and rows, so that none is counted twice."""
+    columns = {line.at for line in lines if line.direction == "column"}
+    rows = {line.at for line in lines if line.direction == "row"}
+    return tuple(p for p in pixels if p.x not in columns and p.y not in rows)
+
+
+def blemishes(flat: NDArray[Any], contrast: float, size: float, *, k: float = K, window: float = WINDOW) -> Blemishes:
+    """Find smooth spots of a flat that are of more than a given contrast over more than a given size.
+
+    Args:
+        flat: Mean of flat frames, rows × columns, light over black.
+        contrast: Share of the background's light, above 0.
+        size: Width of the spot over which it must depart by the contrast, px, 2 or more.
+        k: Times the noise of a cell that a spot must pass too.
+        window: Width of the background's window over the frame's shorter side.
+
+    Raises:
+        ValueError: Contrast or size out of range, a size of no less than the window, no light.
+    """
+    short = min(flat.shape)
+    if contrast <= 0 or not 2 <= size < window * short:
+        raise ValueError(
+            f"contrast {contrast:g} and size {size:g} px; above 0, and 2 px to the window of the background, "
+            f"{window * short:.0f} px of this frame, are allowed"
+        )
+    cell = max(2, int(size / 4))
+    block, wide = max(1, round(short / COARSE / cell)), window * short / cell
+    away, doubt = _against_background(_cell_means(flat, cell), block, wide)
+    of = ground(away)
+    joined = min(ceil(k * float(np.median(of.noise)) / contrast), int(size / cell))
+    if joined > 1:
+        away = ndimage.uniform_filter(away, joined, mode="reflect")
+        of = ground(away)
+    doubt = replace(doubt, noise=np.hypot(doubt.noise, 1.4826 * np.median(np.abs(of.level - np.median(of.level)))))
+    spots = [one for sign in (1, -1) for one in _spots(away, sign, contrast, k, of, doubt)]
+    found = [_blemish(one, wide, cell) for one in spots]
+    found = sorted((one for one in found if one.size >= size), key=lambda one: -abs(one.contrast))
+    return Blemishes(tuple(found), max(contrast, k * float(np.median(of.noise))), cell)
+
+
+def _beyond(frame: NDArray[Any], pixels: Sequence[Defect], k: float) -> tuple[NDArray[np.intp], NDArray[np.intp], Real]:
+    """Return rows and columns of the pixels and what each has beyond k times the noise."""
+    rows = np.array([p.y for p in pixels], dtype=np.intp)
+    columns = np.array([p.x for p in pixels], dtype=np.intp)
+    share = 1 - k / np.array([max(k, abs(p.significance)) for p in pixels], dtype=np.float64)
+    return rows, columns, np.asarray(share * (frame[rows, columns] - local_medians(frame, rows, columns)))
+
+
+def _from_neighbours(means: Real) -> Real:
+    """Return each mean less what its neighbours say: the median over pairs left and right, whose slope cancels.
+
+    Near the ends there are fewer pairs; the first and last three are taken from pairs on one side, continued straight.
+    """
+    count, reach = means.size, min(NEIGHBOURS, (means.size - 1) // 2)
+    out = np.zeros(count)
+    if count < 8:
+        return out
+    inner = np.arange(reach, count - reach)
+    steps = np.arange(1, reach + 1)[:, None]
+    out[inner] = means[inner] - np.median((means[inner - steps] + means[inner + steps]) / 2, axis=0)
+    for i in range(reach):
+        for at, way in ((i, 1), (count - 1 - i, -1)):
+            near = np.arange(1, (i if i >= 3 else reach) + 1)
+            pairs = means[at - near] + means[at + near] if i >= 3 else 4 * means[at + way * near]
+            if i < 3:
+                pairs = pairs - 2 * means[at + 2 * way * near]
+            out[at] = means[at] - float(np.median(pairs)) / 2
+    return out
+
+
+def _cell_means(frame: NDArray[Any], width: int) -> Real:
+    """Return the means of square cells; a rest narrower than a cell at the right and lower border is left out."""
+    down, across = frame.shape[0] // width, frame.shape[1] // width
+    rows = np.empty((down, across * width))
+    for y in range(down):
+        np.sum(frame[y * width : (y + 1) * width, : across * width], axis=0, out=rows[y])
+    sums: Real = rows[:, ::width].copy()
+    for i in range(1, width):
+        sums += rows[:, i::width]
+    return sums / width**2
+
+
+def _against_background(cells: Real, block: int, window: float) -> tuple[Real, Ground]:
+    """Return cells over their background, less 1, and as the noise of a ground how far the background may be off."""
+    coarse = ground(cells, block=block)
+    y, x = (2 * v / n - 1 for v, n in zip((coarse.y, coarse.x), cells.shape, strict=True))
+    powers = [(a, b) for a in range(ORDER + 1) for b in range(ORDER + 1 - a)]
+    terms = np.column_stack([np.outer(y**b, x**a).ravel() for a, b in powers])
+    smooth = (terms @ np.linalg.lstsq(terms, coarse.level.ravel(), rcond=None)[0]).reshape(coarse.level.shape)
+    width = max(3, 2 * int(window / block / 2) + 1)
+    # past the border the map goes on as its mirror image turned over, so that a slope goes on too
+    aside = [min(width // 2, n - 1) for n in smooth.shape]
+    rest = np.pad(coarse.level - smooth, [(a, a) for a in aside], mode="reflect", reflect_type="odd")
+    inside = tuple(slice(a, a + n) for a, n in zip(aside, smooth.shape, strict=True))
+    local = ndimage.median_filter(rest, width, mode="nearest")[inside]
+    level = smooth + local
+    if level.min() <= 0:
+        raise ValueError(f"the flat's light falls to {level.min():g}; light over black is needed everywhere")
+    away = surface(level, coarse.y, coarse.x, np.arange(cells.shape[0]), np.arange(cells.shape[1]))
+    np.divide(cells, away, out=away)
+    away -= 1
+    return away, replace(coarse, level=level, noise=TRUST * np.abs(local) / level)
+
+
+@dataclass(frozen=True)
+class _Spot:
+    """Cells of one spot, dark ones with their sign turned."""
+
+    first: tuple[int, int]
+    rows: NDArray[np.intp]
+    columns: NDArray[np.intp]
+    """Cells beyond the contrast, from the first row and column."""
+    depth: Real
+    noise: Real
+    doubt: Real
+    """Of each of these cells."""
+    area: int
+    """Cells beyond half the contrast."""
+    sign: int
+
+
+def _spots(cells: Real, sign: int, contrast: float, k: float, of: Ground, doubt: Ground) -> list[_Spot]:
+    """Return the groups of cells above the contrast.
+
+    Cells that are joined by others above half the contrast are one group: noise tears a spot at its border.
+    """
+    away = sign * cells
+    rows, columns = np.nonzero(away > contrast)
+    noise, off = of.noise_at(rows, columns), doubt.noise_at(rows, columns)
+    keep = away[rows, columns] > np.maximum(k * noise, off)
+    rows, columns, noise, off = rows[keep], columns[keep], noise[keep], off[keep]
+    if rows.size == 0:
+        return []
+    labels, _ = ndimage.label(away > max(contrast, k * float(np.median(of.noise))) / 2, np.ones((3, 3)))
+    boxes = ndimage.find_objects(labels)
+    own = labels[rows, columns]
+    spots: list[_Spot] = []
+    for number in np.unique(own).tolist():
+        box, mine = boxes[number - 1], own == number
+        y, x = rows[mine], columns[mine]
+        first = int(y.min()), int(x.min())
+        area = int(np.count_nonzero(labels[box] == number))
+        spots.append(_Spot(first, y - first[0], x - first[1], away[y, x], noise[mine], off[mine], area, sign))
+    return spots
+
+
+def _blemish(spot: _Spot, window: float, cell: int) -> Blemish:
+    y = float(np.average(spot.rows, weights=spot.depth))
+    x = float(np.average(spot.columns, weights=spot.depth))
+    size = min(sqrt(spot.rows.size), float(np.ptp(spot.rows) + 1), float(np.ptp(spot.columns) + 1))
+    middle = np.hypot(spot.rows - y, spot.columns - x) <= max(size / 4, 0.75)
+    if not np.any(middle):  # bent round its own middle
+        middle[:] = True
+    contrast, count = float(spot.depth[middle].mean()), int(middle.sum())
+    pull = contrast * (spot.area / window**2) ** 2  # so much of the window pulls its median
+    u = hypot(float(spot.noise[middle].mean()) / sqrt(count), float(spot.doubt[middle].mean()), pull)
+    return Blemish(
+        x=cell * (spot.first[1] + x + 0.5),
+        y=cell * (spot.first[0] + y + 0.5),
+        contrast=spot.sign * contrast,
+        contrast_u=u,
+        size=cell * size,
+        size_u=cell / sqrt(6),
+        significance=spot.sign * contrast / max(u, EXACT * contrast),
+    )
