@@ -310,9 +310,9 @@ def _region(fact: RegionFact) -> dict[str, Any]:
 def _document(
     job: Job, unit: UnitFolder, evidence: UnitEvidence, judgement: verdict.Judgement, pictures: Mapping[str, bytes]
 ) -> dict[str, Any]:
-    names = {picture_name(c.name, c.attempt): c.name for c in evidence.captures}
+    shown = {picture_name(c.name, c.attempt): {"capture": c.name, "attempt": c.attempt} for c in evidence.captures}
     listed = tuple(
-        {"name": name, "kind": "regions", "capture": names[name], "sha256": f"sha256:{sha256(data).hexdigest()}"}
+        {"name": name, "kind": "regions", "sha256": sha256(data).hexdigest(), **shown[name]}
         for name, data in sorted(pictures.items())
     )
     earlier = store.earlier_name(job.order.out, unit.serial) if (job.order.out / unit.serial).exists() else None

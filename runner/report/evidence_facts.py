@@ -57,9 +57,9 @@ def picture_facts(document: Mapping[str, Any]) -> tuple[PictureFact, ...]:
 
 
 def _pictured(picture: Mapping[str, Any], captures: Sequence[Mapping[str, Any]]) -> Mapping[str, Any]:
-    """Return the capture that a picture shows; of several attempts its name tells which."""
-    mine = [c for c in captures if c["name"] == picture["capture"]]
-    return next((c for c in mine if picture["name"].endswith(f"-attempt-{c['attempt']}-overview.png")), mine[0])
+    """Return the capture and attempt that a picture shows."""
+    keys = picture["capture"], picture["attempt"]
+    return next(c for c in captures if (c["name"], c["attempt"]) == keys)
 
 
 def curve_facts(document: Mapping[str, Any]) -> tuple[tuple[CurveFact, ...], int]:

@@ -45,7 +45,7 @@ def read_results(attached: Mapping[str, bytes], terms: Terms) -> tuple[dict[str,
             odd = ", ".join(sorted(listed.keys() ^ pictures.keys()))
             raise VerificationRefused(f"the attachments are not exactly the listed pictures: {odd}")
         for name, data in pictures.items():
-            if listed[name] != f"sha256:{sha256(data).hexdigest()}":
+            if listed[name] != sha256(data).hexdigest():
                 raise VerificationRefused(f"the picture {name} is not the listed one")
         if digest(document["spec"]) != document["document"]["digest"]:
             raise VerificationRefused("the digest of the spec is not that of the spec inside")

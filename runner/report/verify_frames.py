@@ -128,7 +128,7 @@ def _verdicts(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
 def _pictures(document: Mapping[str, Any], again: Mapping[str, Any], pictures: Mapping[str, bytes]) -> Check:
     """Compare by digest; where versions are the same, another picture is another frame or was painted by hand."""
     stated = {p["name"]: p["sha256"] for p in document["pictures"]}
-    found = {name: f"sha256:{sha256(data).hexdigest()}" for name, data in pictures.items()}
+    found = {name: sha256(data).hexdigest() for name, data in pictures.items()}
     odd = sorted(name for name in stated.keys() | found.keys() if stated.get(name) != found.get(name))
     if not odd:
         return Check("pictures", True, f"every picture comes out of the frames again byte for byte ({len(stated)})")

@@ -102,7 +102,7 @@ def document(
     )
     curves = tuple(curve for r in BOXES for curve in curves_of(r)) if regions else ()
     evidence = UnitEvidence(serial, captures, tuple(rows), curves)
-    listed = ({"name": PICTURE, "kind": "regions", "capture": "chart", "sha256": _digest(picture())},)
+    listed = ({"name": PICTURE, "kind": "regions", "capture": "chart", "attempt": 1, "sha256": _digest(picture())},)
     raw = dict(station or {"name": "bench 2", "place": "hall 1"})
     facts = RunFacts(TIME, lot, "Kim", Station(str(raw.get("name", "")), raw=raw))
     made = to_document(plan(), evidence, judge_unit(plan().spec, evidence), facts, pictures=listed)
@@ -169,4 +169,4 @@ def _regions(*, found: bool = True) -> tuple[RegionFact, ...]:
 
 
 def _digest(data: bytes) -> str:
-    return f"sha256:{sha256(data).hexdigest()}"
+    return sha256(data).hexdigest()

@@ -100,7 +100,7 @@ def results(serial: str = "WS8-000101", value: float = 0.1874, verdict: str = "d
         "captures": [{"name": "chart", "attempt": 1, "frames": [frame], "file_faults": []}],
         "readings": [reading],
         "curves": [],
-        "pictures": [{"name": n, "sha256": f"sha256:{sha256(d).hexdigest()}"} for n, d in PICTURES.items()],
+        "pictures": [{"name": n, "sha256": sha256(d).hexdigest()} for n, d in PICTURES.items()],
         "warnings": [],
     } | judged(value, verdict)
 

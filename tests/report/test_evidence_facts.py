@@ -28,7 +28,7 @@ def test_each_attempt_has_its_own_regions() -> None:
     chart = document["captures"][1]
     lost = [region | {"found": False} for region in chart["regions"]]
     document["captures"].append(chart | {"attempt": 2, "regions": lost})
-    second = document["pictures"][0] | {"name": "chart-attempt-2-overview.png"}
+    second = document["pictures"][0] | {"name": "chart-attempt-2-overview.png", "attempt": 2}
     document["pictures"].insert(0, second)
 
     two, one = picture_facts(document)
