@@ -1,6 +1,5 @@
 """`probatum check`: read specs and list every complaint; show the regions on a frame."""
 
-from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -58,8 +57,7 @@ def _check(path: Path, station: "Station | None", *, expanded: bool) -> "Plan | 
     try:
         plan = bind(spec, station)
     except SpecError as error:
-        here = tuple(replace(complaint, where=spec.place(complaint.where)) for complaint in error.complaints)
-        _refused(path, (*spec.warnings, *here))
+        _refused(path, (*spec.warnings, *error.complaints))
         return None
     print("\n".join([*(str(warning) for warning in spec.warnings), _summary(path, spec)]))
     if expanded:
