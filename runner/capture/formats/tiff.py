@@ -132,6 +132,13 @@ def _check_pieces(page: Directory, where: str, bits: int, *, packed: bool) -> No
             allowed="as many bytes as the announced depth needs",
             next_step="export the frame with the depth in which the pixels are stored",
         )
+    if packed and page.first(PREDICTOR, 1) != 1:
+        raise FrameRefused(
+            "the file announces differences of pixels without compression, which readers take in two ways",
+            where=where,
+            allowed="differences (a predictor) only where there is compression",
+            next_step="export the frame without a predictor",
+        )
     if not packed and bits not in {8, 16, 32, 64}:
         raise FrameRefused(
             f"the file packs {bits} bit per pixel and compresses them",
@@ -144,7 +151,7 @@ def _check_pieces(page: Directory, where: str, bits: int, *, packed: bool) -> No
 def _pieces(data: bytes, page: Directory, order: str) -> list[tuple[int, Codes]]:
     """Return (offset, view of the bytes) per piece where they are plain numbers; else nothing."""
     kind = _KINDS.get((page.first(SAMPLE_FORMAT, 1), page.first(BITS, 1)))
-    as_they_are = all(page.first(tag, 1) == 1 for tag in (COMPRESSION, FILL_ORDER, PREDICTOR))
+    as_they_are = all(page.first(tag, 1) == 1 for tag in (COMPRESSION, FILL_ORDER))
     if kind is None or not as_they_are:
         return []
     dtype, spans = np.dtype(order + kind), page.segments

@@ -15,7 +15,7 @@ from runner.capture.formats import tiff as reader
 from runner.capture.readers import read_frames
 from runner.errors import FrameRefused
 from runner.spec.model import Camera
-from tests.capture.bad_frames import chart_codes, tiff
+from tests.capture.bad_frames import chart_codes, tiff, zero_tail
 from tests.capture.hand_made import packed_12_bit, tiff_by_hand
 
 CODES = chart_codes(1)
@@ -129,6 +129,21 @@ def test_depth_that_the_bytes_deny_is_refused() -> None:
         _pages(tiff_by_hand([zlib.compress(CODES.tobytes())], bits=12, tags={259: 8}))
     with pytest.raises(FrameRefused, match=r"truncated: 19200 px are announced, 14400 are there"):
         _pages(tiff_by_hand([packed_12_bit(CODES)]))
+
+
+def test_differences_without_compression_are_refused() -> None:
+    """A predictor without compression is undone by some readers and passed over by others: no evidence."""
+    with pytest.raises(FrameRefused, match="differences of pixels without compression, which readers take in two ways"):
+        _pages(tiff_by_hand([CODES.tobytes()], tags={317: 2}))
+
+
+def test_zero_tail_of_tiles_counts_the_pixels_of_the_picture(tmp_path: Path) -> None:
+    """4096 zero bytes are the last 32 lines of a tile of 64 x 48 px; 8 of them show, 32 px wide, at the border."""
+    path = tmp_path / "a.tif"
+    path.write_bytes(zero_tail(tiff(CODES, tile=(48, 64)), 4096))
+
+    with pytest.raises(FrameRefused, match="the last 256 of 19200 pixels are zero"):
+        read_frames(path, CAMERA)
 
 
 @pytest.mark.parametrize("tags", [{322: 0, 323: 0}, {322: 65536, 323: 65536, 259: 8}, {278: 0}], ids=str)
