@@ -153,7 +153,7 @@ def blemishes(flat: NDArray[Any], contrast: float, size: float, *, k: float = K,
         of = ground(away)
     doubt = replace(doubt, noise=np.hypot(doubt.noise, 1.4826 * np.median(np.abs(of.level - np.median(of.level)))))
     spots = [one for sign in (1, -1) for one in _spots(away, sign, contrast, k, of, doubt)]
-    found = [_blemish(one, wide, cell) for one in spots]
+    found = [_blemish(one, wide, cell, max(1, joined)) for one in spots]
     found = sorted((one for one in found if one.size >= size), key=lambda one: -abs(one.contrast))
     return Blemishes(tuple(found), max(contrast, k * float(np.median(of.noise))), cell)
 
@@ -264,7 +264,7 @@ def _spots(cells: Real, sign: int, contrast: float, k: float, of: Ground, doubt:
     return spots
 
 
-def _blemish(spot: _Spot, window: float, cell: int) -> Blemish:
+def _blemish(spot: _Spot, window: float, cell: int, joined: int) -> Blemish:
     y = float(np.average(spot.rows, weights=spot.depth))
     x = float(np.average(spot.columns, weights=spot.depth))
     size = min(sqrt(spot.rows.size), float(np.ptp(spot.rows) + 1), float(np.ptp(spot.columns) + 1))
@@ -273,7 +273,8 @@ def _blemish(spot: _Spot, window: float, cell: int) -> Blemish:
         middle[:] = True
     contrast, count = float(spot.depth[middle].mean()), int(middle.sum())
     pull = contrast * (spot.area / window**2) ** 2  # so much of the window pulls its median
-    u = hypot(float(spot.noise[middle].mean()) / sqrt(count), float(spot.doubt[middle].mean()), pull)
+    noise = float(spot.noise[middle].mean()) / max(1.0, sqrt(count) / joined)  # joined cells share their noise
+    u = hypot(noise, float(spot.doubt[middle].mean()), pull)
     return Blemish(
         x=cell * (spot.first[1] + x + 0.5),
         y=cell * (spot.first[0] + y + 0.5),

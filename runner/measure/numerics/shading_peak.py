@@ -28,6 +28,9 @@ CURVED = 3.0
 """The surface must be curved by so many of its standard uncertainties in every direction."""
 SKEWED = 1.5
 """A cubic term moves the top by twice what halving the window's area shows; as a u it is covered by 2 × 1.5 of it."""
+SAMPLED = 0.01
+"""Block widths by which few blocks in the smallest windows move the top of an even law at most (half in larger ones);
+found over 600 closed-form fields, the worst a cone."""
 
 
 @dataclass(frozen=True)
@@ -89,11 +92,14 @@ def find_peak(x: Real, y: Real, light: Real, u: Real, size: tuple[int, int]) -> 
         return None
     at, turn, radius = top
     covariance = (turn * spreads**2) @ turn.T
+    bound = SAMPLED * block
     narrow = _fit_top(points, values, spreads, at, radius / sqrt(2), np.full(2, block))
     if radius / sqrt(2) >= LEAST_RADIUS * block and narrow is not None:
         apart = narrow[0] - at
         chance = ((turn - narrow[1]) * spreads) ** 2
         covariance = covariance + SKEWED**2 * np.diag(np.maximum(0.0, apart**2 - chance.sum(axis=1)))
+        bound /= 2
+    covariance = covariance + bound**2 / 3 * np.eye(2)
     return Peak(float(at[0]), float(at[1]), covariance, size)
 
 
