@@ -5,7 +5,7 @@ from dataclasses import dataclass, field
 from typing import Any, ClassVar, Protocol
 
 from runner.capture.frame import Box, Crop, Frame
-from runner.measure.reading import Curve, Reading
+from runner.measure.reading import Curve, Map, Reading, Spot
 from runner.spec.model import Amount, Camera, Chart, Optics, Region
 
 
@@ -75,6 +75,8 @@ class Sample:
     """Crops of the same box and channel from companion captures by role."""
     frames: tuple[Crop, ...] = ()
     """For a method that takes a capture's frames together: all of them, `crop` first; else empty."""
+    channels: Mapping[str, tuple[Crop, ...]] = field(default_factory=dict)
+    """For such a method, the same frames in every colour channel by its name."""
 
 
 @dataclass(frozen=True)
@@ -85,6 +87,10 @@ class Measurement:
     """Readings, also those refused."""
     curves: tuple[Curve, ...] = ()
     """Curves."""
+    maps: tuple[Map, ...] = ()
+    """Maps."""
+    spots: tuple[Spot, ...] = ()
+    """Things at places."""
 
 
 @dataclass(frozen=True)

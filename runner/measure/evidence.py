@@ -1,9 +1,8 @@
 """Everything that was found out about one unit before anyone judges it."""
 
-from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 
-from runner.measure.reading import Curve, Reading
+from runner.measure.reading import Curve, Map, Reading, Spot
 
 
 @dataclass(frozen=True)
@@ -58,7 +57,7 @@ class CaptureEvidence:
 
 @dataclass(frozen=True)
 class UnitEvidence:
-    """One unit's captures, readings and curves over all attempts."""
+    """One unit's captures and all that was measured, over all attempts."""
 
     serial: str
     """The unit."""
@@ -68,8 +67,10 @@ class UnitEvidence:
     """Sorted by capture, attempt, region, channel, quantity, parameters, part, estimator."""
     curves: tuple[Curve, ...]
     """Sorted like readings."""
-    pictures: Mapping[str, bytes] = field(default_factory=dict)
-    """PNG files by name, e.g. `chart-overview.png`."""
+    maps: tuple[Map, ...] = ()
+    """Sorted like readings."""
+    spots: tuple[Spot, ...] = ()
+    """Sorted like readings, then by kind and place."""
 
     @property
     def simulated(self) -> bool:

@@ -132,6 +132,56 @@ class Curve:
     """Name of the estimator."""
 
 
+@dataclass(frozen=True)
+class Map:
+    """A quantity over an area, drawn by the report: shading over the frame, a spectrum over frequencies."""
+
+    region: str
+    """Region's name; empty for the whole frame."""
+    name: str
+    """`spectrum`, `shading` …"""
+    x: tuple[float, ...]
+    """Positions of the columns."""
+    y: tuple[float, ...]
+    """Positions of the rows."""
+    values: tuple[tuple[float, ...], ...]
+    """Rows × columns."""
+    axes_in: str
+    """Unit of x and y."""
+    values_in: str
+    """Unit of the values."""
+    marks: tuple[tuple[float, float, str], ...] = ()
+    """x, y and words of what is marked."""
+    capture: str = ""
+    """Capture; filled by the session."""
+    attempt: int = 1
+    """Attempt; filled by the session."""
+    channel: str = "mono"
+    """Colour channel."""
+
+
+@dataclass(frozen=True)
+class Spot:
+    """One thing at a place in the frame: a defective pixel, a cluster, a blemish."""
+
+    region: str
+    """Region's name; empty for the whole frame."""
+    kind: str
+    """`hot pixel`, `dead pixel`, `cluster` …"""
+    x: float
+    """Column, px of the frame; the centre of an extended one."""
+    y: float
+    """Row, px of the frame."""
+    words: str
+    """How far it departs, with figures."""
+    capture: str = ""
+    """Capture; filled by the session."""
+    attempt: int = 1
+    """Attempt; filled by the session."""
+    channel: str = "mono"
+    """Colour channel."""
+
+
 def label(quantity: str, parameters: Mapping[str, Amount], part: str = "system") -> str:
     """Return a quantity's name in words, with what it is taken at and of which part."""
     words = quantity.replace("_", " ")

@@ -13,7 +13,7 @@ from runner.errors import FrameRefused, MeasurementRefused
 from runner.measure.contract import Found, Measurement, NotFound, QuantityInfo, Sample, Wanted
 from runner.measure.evidence import CaptureEvidence, FrameFact, RegionFact, UnitEvidence
 from runner.measure.plan import CapturePlan, MethodPlan, Plan
-from runner.measure.reading import Curve, Reading, Refusal
+from runner.measure.reading import Curve, Map, Reading, Refusal, Spot
 from runner.measure.uncertainty import mean_of_repeats, with_declared
 from runner.spec import units
 
@@ -21,6 +21,16 @@ Loader = Callable[[str], Sequence[Frame]]
 """Gives the frames of a capture by its name; raises FrameRefused."""
 Painter = Callable[[str, int, Frame, Sequence[RegionFact]], None]
 """Is shown each capture's first frame with its regions, for pictures: (capture, attempt, frame, regions)."""
+
+
+@dataclass(frozen=True)
+class Attempt:
+    """What one attempt gave."""
+
+    captures: tuple[CaptureEvidence, ...]
+    """Every capture of the plan."""
+    measured: Measurement
+    """Readings with repeats combined, curves, maps and spots."""
 
 
 @dataclass
@@ -39,7 +49,7 @@ def measure_attempt(
     *,
     painter: Painter | None = None,
     faults: Faults | None = None,
-) -> tuple[tuple[CaptureEvidence, ...], tuple[Reading, ...], tuple[Curve, ...]]:
+) -> Attempt:
     """Measure every capture of one attempt.
 
     Args:
@@ -50,39 +60,42 @@ def measure_attempt(
         painter: Is shown the frames, for pictures.
         faults: Collects the program's own faults.
     """
-    captures: list[CaptureEvidence] = []
-    readings: list[Reading] = []
-    curves: list[Curve] = []
     companions = _Companions(plan, load, known_faults)
-    for one in plan.captures:
-        evidence, measured = _measure_capture(plan, one, attempt, load, known_faults, companions, painter, faults)
-        captures.append(evidence)
-        readings += measured.readings
-        curves += measured.curves
-    return tuple(captures), tuple(readings), tuple(curves)
+    parts = [
+        _measure_capture(plan, one, attempt, load, known_faults, companions, painter, faults) for one in plan.captures
+    ]
+    return Attempt(tuple(evidence for evidence, _ in parts), _joined([measured for _, measured in parts]))
 
 
-def unit_evidence(
-    serial: str, parts: Sequence[tuple[tuple[CaptureEvidence, ...], tuple[Reading, ...], tuple[Curve, ...]]]
-) -> UnitEvidence:
+def unit_evidence(serial: str, attempts: Sequence[Attempt]) -> UnitEvidence:
     """Put the attempts of a unit together, in one fixed order."""
+    all_of = _joined([attempt.measured for attempt in attempts])
     return UnitEvidence(
         serial,
-        tuple(capture for part in parts for capture in part[0]),
-        tuple(sorted((r for part in parts for r in part[1]), key=_order)),
-        tuple(
-            sorted(
-                (c for part in parts for c in part[2]),
-                key=lambda c: (c.capture, c.attempt, c.region, c.channel, c.name, c.estimator),
-            )
-        ),
+        tuple(capture for attempt in attempts for capture in attempt.captures),
+        tuple(sorted(all_of.readings, key=_order)),
+        tuple(sorted(all_of.curves, key=lambda c: (*_place(c), c.name, c.estimator))),
+        tuple(sorted(all_of.maps, key=lambda m: (*_place(m), m.name))),
+        tuple(sorted(all_of.spots, key=lambda s: (*_place(s), s.kind, s.y, s.x))),
     )
+
+
+def _joined(parts: Sequence[Measurement]) -> Measurement:
+    return Measurement(
+        tuple(reading for part in parts for reading in part.readings),
+        tuple(curve for part in parts for curve in part.curves),
+        tuple(one for part in parts for one in part.maps),
+        tuple(spot for part in parts for spot in part.spots),
+    )
+
+
+def _place(one: Reading | Curve | Map | Spot) -> tuple[str, int, str, str]:
+    return one.capture, one.attempt, one.region, one.channel
 
 
 def _order(reading: Reading) -> tuple[object, ...]:
     parameters = sorted((k, a.value, a.unit) for k, a in reading.parameters.items())
-    place = (reading.capture, reading.attempt, reading.region, reading.channel)
-    return (*place, reading.quantity, parameters, reading.part, reading.estimator)
+    return (*_place(reading), reading.quantity, parameters, reading.part, reading.estimator)
 
 
 class _Companions:
@@ -144,18 +157,16 @@ def _measure_capture(
     ]
     at_once = [plan for plan in one.methods if plan not in each]
     repeats.append(_measure_frames(one, at_once, frames, located[0], companions, faults))
-    readings = _combine([m.readings for m in repeats])
     context = units.context_of(one.capture.camera, one.capture.optics)
-    declared = tuple(
-        replace(with_declared(reading, plan.uncertainty, context), capture=name, attempt=attempt)
-        for reading in readings
+    declared = [with_declared(r, plan.uncertainty, context) for r in _combine([m.readings for m in repeats])]
+    shown = _joined([repeats[0], repeats[-1]])  # curves of the first frame stand for all, those of all frames as well
+    measured = Measurement(
+        tuple(replace(reading, capture=name, attempt=attempt) for reading in declared),
+        tuple(replace(curve, capture=name, attempt=attempt) for curve in shown.curves),
+        tuple(replace(area, capture=name, attempt=attempt) for area in shown.maps),
+        tuple(replace(spot, capture=name, attempt=attempt) for spot in shown.spots),
     )
-    curves = tuple(
-        replace(curve, capture=name, attempt=attempt) for curve in (*repeats[0].curves, *repeats[-1].curves)
-    )
-    return replace(evidence, frames=tuple(_frame_fact(f) for f in frames), regions=regions), Measurement(
-        declared, curves
-    )
+    return replace(evidence, frames=tuple(_frame_fact(f) for f in frames), regions=regions), measured
 
 
 def _measure_frames(
@@ -167,15 +178,20 @@ def _measure_frames(
     faults: Faults | None,
 ) -> Measurement:
     """Let methods measure one frame, or all frames together, in every region and channel."""
-    readings: list[Reading] = []
-    curves: list[Curve] = []
+    parts = []
     for found in located if plans else ():
         for channel in one.capture.camera.channels:
             for plan in plans:
                 measured = _measure_region(one, frames, found, channel, plan, companions, faults)
-                readings += (replace(reading, channel=channel) for reading in measured.readings)
-                curves += (replace(curve, channel=channel) for curve in measured.curves)
-    return Measurement(tuple(readings), tuple(curves))
+                parts.append(
+                    Measurement(
+                        tuple(replace(reading, channel=channel) for reading in measured.readings),
+                        tuple(replace(curve, channel=channel) for curve in measured.curves),
+                        tuple(replace(area, channel=channel) for area in measured.maps),
+                        tuple(replace(spot, channel=channel) for spot in measured.spots),
+                    )
+                )
+    return _joined(parts)
 
 
 def _measure_region(
@@ -195,6 +211,8 @@ def _measure_region(
         found = Found(found.region, found.box)
     capture = one.capture
     crops = tuple(crop(frame, found.box, capture.camera, channel) for frame in frames)
+    together = getattr(plan.method, "TOGETHER", False)
+    others = {name: tuple(crop(f, found.box, capture.camera, name) for f in frames) for name in capture.camera.channels}
     sample = Sample(
         found,
         crops[0],
@@ -203,7 +221,8 @@ def _measure_region(
         capture.chart,
         wanted,
         companions.crops(capture.uses, found.box, channel),
-        crops if getattr(plan.method, "TOGETHER", False) else (),
+        crops if together else (),
+        others if together else {},
     )
     try:
         measured = plan.method.measure(sample, plan.options)

@@ -5,7 +5,7 @@ import json
 import platform
 import zlib
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import asdict, dataclass, field
 from functools import cache
 from importlib import metadata
 from typing import Any
@@ -15,7 +15,7 @@ from runner.errors import VerificationRefused
 from runner.judge.verdict import Check, Judgement
 from runner.measure.evidence import CaptureEvidence, FrameFact, RegionFact, UnitEvidence
 from runner.measure.plan import Plan
-from runner.measure.reading import Component, Curve, Reading, Refusal
+from runner.measure.reading import Component, Curve, Map, Reading, Refusal, Spot
 from runner.report.conditions import conditions, deviations, methods
 from runner.spec.build import from_expanded
 from runner.spec.model import Amount, Spec, Station
@@ -65,10 +65,14 @@ def program() -> dict[str, Any]:
         "version": runner.__version__,
         "template": TEMPLATE,
         "versions": {"python": platform.python_version(), "zlib": zlib.ZLIB_RUNTIME_VERSION}
-        | {name: metadata.version(name) for name in LIBRARIES}
+        | {name: _version(name) for name in LIBRARIES}
         | {name: _shared_version(*where) for name, where in SHARED.items()},
         "machine": f"{platform.system()} {platform.machine()}",
     }
+
+
+_version = cache(metadata.version)
+"""Version of an installed library; reading it from the disk for every unit takes as long as the whole HTML page."""
 
 
 @cache
@@ -124,7 +128,8 @@ def to_document(
         "readings": [_reading(reading) for reading in evidence.readings],
         "checks": [_check(check) for check in judgement.checks],
         "curves": [_curve(curve) for curve in evidence.curves],
-        "maps": [],
+        "maps": [asdict(one) for one in evidence.maps],
+        "spots": [asdict(one) for one in evidence.spots],
         "pictures": [dict(picture) for picture in pictures],
         "methods": methods(plan),
         "deviations": deviations(plan, evidence),
@@ -170,6 +175,8 @@ def from_document(document: Mapping[str, Any]) -> tuple[Spec, UnitEvidence]:
             tuple(_capture_back(c) for c in document["captures"]),
             tuple(_reading_back(r) for r in document["readings"]),
             tuple(_curve_back(c) for c in document["curves"]),
+            tuple(_map_back(m) for m in document.get("maps", ())),
+            tuple(Spot(**s) for s in document.get("spots", ())),
         )
     except (KeyError, TypeError, ValueError, AttributeError) as error:
         raise VerificationRefused(f"it cannot be read back: {type(error).__name__}: {error}") from error
@@ -380,3 +387,9 @@ def _curve_back(data: Mapping[str, Any]) -> Curve:
         data["channel"],
         data["estimator"],
     )
+
+
+def _map_back(data: Mapping[str, Any]) -> Map:
+    rows = tuple(tuple(row) for row in data["values"])
+    marks = tuple((float(x), float(y), str(words)) for x, y, words in data["marks"])
+    return Map(**(dict(data) | {"x": tuple(data["x"]), "y": tuple(data["y"]), "values": rows, "marks": marks}))

@@ -37,6 +37,8 @@ def check_frames(document: Mapping[str, Any], frames: Path, terms: Terms) -> lis
     checks = [_digests(document, again)]
     if checks[0].held:
         checks += [_values(document, again), _curves(document, again), _verdicts(document, again)]
+        if any(one.get(kind) for one in (document, again) for kind in ("maps", "spots")):
+            checks.append(_maps_and_spots(document, again))
         checks.append(_pictures(document, again, pictures))
     return checks
 
@@ -98,6 +100,30 @@ def _curves(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
     if odd:
         return Check("curves", False, f"measured again, curves differ: {_few(odd)}")
     return Check("curves", True, f"every curve comes out again ({len(stated)})")
+
+
+def _maps_and_spots(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
+    def maps(one: Mapping[str, Any]) -> dict[str, Mapping[str, Any]]:
+        return {f"{m['name']} of {m['region'] or 'the frame'} {m['capture']} {m['attempt']}": m for m in one.get("maps", ())}
+
+    stated, found = maps(document), maps(again)
+    if stated.keys() != found.keys() or document.get("spots", []) != again.get("spots", []):
+        return Check("maps and spots", False, "measured again, other maps or spots come out than the report lists")
+    odd = [name for name in stated if not _same_map(stated[name], found[name])]
+    if odd:
+        return Check("maps and spots", False, f"measured again, maps differ: {_few(odd)}")
+    return Check("maps and spots", True, f"every map and spot comes out again ({len(stated) + len(found)})")
+
+
+def _same_map(stated: Mapping[str, Any], found: Mapping[str, Any]) -> bool:
+    fixed = ("x", "y", "axes_in", "values_in")
+    if any(stated[k] != found[k] for k in fixed) or len(stated["values"]) != len(found["values"]):
+        return False
+    pairs = [
+        pair for one, two in zip(stated["values"], found["values"], strict=True) for pair in zip(one, two, strict=True)
+    ]
+    allowed = OF_A_CURVE * max((abs(b) for _, b in pairs), default=0.0)
+    return all(abs(a - b) <= allowed for a, b in pairs)
 
 
 def _alike(stated: Mapping[str, Any], found: Mapping[str, Any]) -> bool:

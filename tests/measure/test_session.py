@@ -1,6 +1,7 @@
 """A unit is measured whole: faults stay where they arise, silence never looks like a value."""
 
 from collections.abc import Mapping, Sequence
+from dataclasses import replace
 from types import SimpleNamespace
 from typing import Any, cast
 
@@ -11,7 +12,7 @@ from runner.capture.frame import Box, Frame
 from runner.errors import FrameRefused, MeasurementRefused
 from runner.measure.contract import Found, Measurement, Method, NotFound, QuantityInfo, Sample, Target, Wanted
 from runner.measure.plan import CapturePlan, MethodPlan, Plan
-from runner.measure.reading import Component, Curve, Reading
+from runner.measure.reading import Component, Curve, Map, Reading, Spot
 from runner.measure.session import Faults, measure_attempt, unit_evidence
 from runner.spec.model import (
     Amount,
@@ -93,7 +94,8 @@ def _frame(level: int, repeat: str = "1") -> Frame:
 
 
 def _run(plan: Plan, *frames: Frame, faults: Faults | None = None) -> tuple[Any, Any, Any]:
-    return measure_attempt(plan, 1, lambda _name: frames or (_frame(100),), {}, faults=faults)
+    attempt = measure_attempt(plan, 1, lambda _name: frames or (_frame(100),), {}, faults=faults)
+    return attempt.captures, attempt.measured.readings, attempt.measured.curves
 
 
 def test_a_reading_carries_its_capture_and_attempt() -> None:
@@ -158,19 +160,17 @@ def test_a_refused_file_makes_its_capture_faulty() -> None:
     def load(_name: str) -> Sequence[Frame]:
         raise FrameRefused("it is truncated", where="1.tif")
 
-    captures, readings, _ = measure_attempt(_plan(), 1, load, {})
+    attempt = measure_attempt(_plan(), 1, load, {})
 
-    assert captures[0].faults == ("1.tif: it is truncated",)
-    assert readings == ()
+    assert attempt.captures[0].faults == ("1.tif: it is truncated",)
+    assert attempt.measured.readings == ()
 
 
 def test_a_known_fault_is_not_even_loaded() -> None:
     """What the survey refused is not opened again."""
-    captures, _, _ = measure_attempt(
-        _plan(), 1, lambda _name: pytest.fail("opened"), {"chart": ("a.tif: twice the same",)}
-    )
+    attempt = measure_attempt(_plan(), 1, lambda _name: pytest.fail("opened"), {"chart": ("a.tif: twice the same",)})
 
-    assert captures[0].faults == ("a.tif: twice the same",)
+    assert attempt.captures[0].faults == ("a.tif: twice the same",)
 
 
 def test_companions_reach_the_method() -> None:
@@ -191,7 +191,28 @@ def test_the_painter_sees_the_first_frame_with_its_regions() -> None:
 
 def test_evidence_is_put_in_one_fixed_order() -> None:
     """The order of attempts and regions given does not change the evidence."""
-    one = _run(_plan(regions=("b", "a")))
-    two = _run(_plan(regions=("a", "b")))
+    one = measure_attempt(_plan(regions=("b", "a")), 1, lambda _name: (_frame(100),), {})
+    two = measure_attempt(_plan(regions=("a", "b")), 1, lambda _name: (_frame(100),), {})
 
     assert unit_evidence("S", [one]).readings == unit_evidence("S", [two]).readings
+
+
+def test_frames_may_be_taken_together_in_every_channel() -> None:
+    """A method that asks for it sees all frames at once, each channel in turn, with the others beside it."""
+    seen: list[tuple[str, int, list[str]]] = []
+
+    def measure(sample: Sample, _options: Any) -> Measurement:
+        seen.append((sample.crop.channel, len(sample.frames), sorted(sample.channels)))
+        spot = Spot(sample.found.region, "hot pixel", 3.0, 2.0, "9 times the noise")
+        area = Map(sample.found.region, "shading", (0.0,), (0.0,), ((1.0,),), "px", "1")
+        return Measurement((), (), (area,), (spot,))
+
+    plan = _plan()
+    colour = replace(plan.captures[0].capture, camera=replace(CAMERA, mosaic="RGGB"))
+    method = cast("Method", SimpleNamespace(NAME="m", TOGETHER=True, NEEDS=(), measure=measure, quantities=dict))
+    capture = replace(plan.captures[0], capture=colour, methods=(MethodPlan(method, None, {}),))
+    attempt = measure_attempt(replace(plan, captures=(capture,)), 2, lambda _n: (_frame(7), _frame(8)), {})
+
+    assert seen == [(c, 2, ["blue", "green", "red"]) for c in ("red", "green", "blue")]
+    assert {(s.capture, s.attempt, s.kind) for s in attempt.measured.spots} == {("chart", 2, "hot pixel")}
+    assert [m.channel for m in unit_evidence("S", [attempt]).maps] == ["blue", "green", "red"]
