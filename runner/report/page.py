@@ -9,6 +9,7 @@ from typing import Any
 from markupsafe import Markup
 
 from runner.report.facts import report_facts
+from runner.report.paper_drawing import from_the_left
 from runner.resources import folder
 
 EDITION = "1"
@@ -41,10 +42,11 @@ def paper_page(document: Mapping[str, Any]) -> tuple[str, dict[str, bytes]]:
     drawings: dict[str, bytes] = {}
 
     def drawing(svg: str) -> str:
-        address = next((known for known, data in drawings.items() if data == svg.encode()), "")
+        data = from_the_left(svg).encode()
+        address = next((known for known, other in drawings.items() if other == data), "")
         if not address:
             address = f"report:/drawings/{len(drawings) + 1}.svg"
-            drawings[address] = svg.encode()
+            drawings[address] = data
         words = re.search(r'aria-label="([^"]*)"', svg)
         return Markup(f'<img src="{address}" alt="{words[1] if words else ""}">')  # noqa: S704 - words are escaped
 

@@ -61,3 +61,30 @@ def lay_out(folder: Path) -> tuple[Path, Path]:
     spec.write_text(SPEC)
     tifffile.imwrite(unit / "chart-1.tif", frame())
     return spec, unit / "chart-1.tif"
+
+
+CAPTURE = """\
+  chart{n}:
+    target: slanted edge
+    frames: {{names: 'chart{n}-{{repeat}}.tif', count: 1}}
+    regions: {{edge: {{position: [50 %, 50 %], size: [100 px, 160 px]}}}}
+    limits:
+      - {{characteristic: {n}1, quantity: mtf50, where: edge, at_least: 0.15 cy/px}}
+      - {{characteristic: {n}2, quantity: mtf, frequency: 0.25 cy/px, where: edge, at_least: 0.2}}
+      - {{characteristic: {n}3, quantity: mtf, frequency: 0.125 cy/px, where: edge, at_least: 0.2}}
+      - {{characteristic: {n}4, quantity: mtf, frequency: 0.35 cy/px, where: edge, at_least: 0.01}}
+      - {{characteristic: {n}5, quantity: overshoot, where: edge, at_most: 10 %}}
+"""
+
+
+def lay_out_pictures(folder: Path) -> Path:
+    """Write spec and one unit of six captures, each with one picture, one region and five limits; return the spec."""
+    spec, unit = folder / "pictures.yaml", folder / "frames" / "B-0001"
+    unit.mkdir(parents=True)
+    head = SPEC.split("captures:", maxsplit=1)[0].replace("4000 x 3000 px", "1000 x 750 px")
+    spec.write_text(head + "captures:\n" + "".join(CAPTURE.format(n=n) for n in range(1, 7)))
+    rng = np.random.default_rng(2)
+    for n in range(1, 7):
+        scene = EdgeScene(Gaussian(0.5 + 0.02 * n), size=(1000, 750), direction=5, read_noise=150)
+        tifffile.imwrite(unit / f"chart{n}-1.tif", scene.render(rng))
+    return spec
