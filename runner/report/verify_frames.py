@@ -104,7 +104,8 @@ def _curves(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
 
 def _maps_and_spots(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
     def maps(one: Mapping[str, Any]) -> dict[str, Mapping[str, Any]]:
-        return {f"{m['name']} of {m['region'] or 'the frame'} {m['capture']} {m['attempt']}": m for m in one.get("maps", ())}
+        keys = ("name", "region", "capture", "attempt", "channel")
+        return {" ".join(str(m[k]) for k in keys): m for m in one.get("maps", ())}
 
     stated, found = maps(document), maps(again)
     if stated.keys() != found.keys() or document.get("spots", []) != again.get("spots", []):
