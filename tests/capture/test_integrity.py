@@ -79,8 +79,7 @@ def test_order_processes_and_choice_of_units_change_nothing(tmp_path: Path, spec
 def test_clamped_dark_frames_are_flagged_and_no_fault(tmp_path: Path, spec: Spec) -> None:
     """Dark frames clamped at zero are alike by nature; lit frames that are alike are not excused."""
     good_lot(tmp_path)
-    black = replace(spec.captures[0], camera=replace(spec.camera, black_level=0))
-    spec = replace(spec, captures=(black, spec.captures[1]))
+    spec = replace(spec, captures=tuple(replace(c, camera=replace(c.camera, black_level=0)) for c in spec.captures))
     for serial, first, second in ((UNIT, _clamped(3), _clamped(3)), (NEIGHBOUR, _clamped(3), tiff(dark_codes(9) * 0))):
         (tmp_path / serial / "dark-1.tif").write_bytes(first)
         (tmp_path / serial / "dark-2.tif").write_bytes(second)
@@ -92,6 +91,12 @@ def test_clamped_dark_frames_are_flagged_and_no_fault(tmp_path: Path, spec: Spec
         f"dark-{n}.tif: nearly every pixel is 0 DN, the dark signal is clamped" for n in (1, 2)
     )
     assert seen.flags(NEIGHBOUR, 1, "dark")[1] == "dark-2.tif: every pixel is 0 DN"
+
+    for repeat in (1, 2):
+        (tmp_path / UNIT / f"chart-{repeat}.tif").write_bytes(_clamped(50))
+    seen = survey(find_lot(tmp_path, spec), spec)
+    assert set(seen.sentences) == {(UNIT, 1, "chart")}
+    assert "the same pixels as" in seen.faults(UNIT, 1, "chart")[0]
 
 
 def test_the_same_file_in_two_attempts_is_told(tmp_path: Path, spec: Spec) -> None:
