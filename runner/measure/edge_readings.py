@@ -2,7 +2,8 @@
 
 Parts: `noise` (what would scatter over repeated captures; falls with their number), `method bias` (what the data leave
 open about the line spread's shape, and departures of the edge from its fitted curve), `shading` (what a fitted shading
-leaves open, or a shading too small to refuse), `flat` (the flat frame's noise), `chart` (its calibration).
+leaves open, or a shading too small to refuse), `flat` (the flat frame's noise), `rounding` (to whole codes, where
+noise does not average it out), `chart` (its calibration).
 """
 
 import re
@@ -108,6 +109,8 @@ class Edge:
     """Departures from the fitted curve."""
     flat: Array | None
     """Covariance of everything fitted that the flat's noise brings; None without a flat."""
+    rounding: Array
+    """Deviations of all fitted numbers that rounding to codes brings, deviations × numbers."""
 
 
 def read(edge: Edge, wanted: Wanted) -> Reading:
@@ -236,8 +239,10 @@ def _remarks(edge: Edge) -> tuple[str, ...]:
     remarks = []
     if fit.left_out:
         remarks.append(f"defect pixels left out: {fit.left_out}")
-    if fit.excess > 1:
-        remarks.append(f"noise variance raised {fit.excess:.2g} times for correlation between pixels or misfit")
+    if fit.together is not None:
+        remarks.append(f"noise goes together between pixels: {fit.together.whole:.2g} times the variance in means")
+    elif fit.excess > 1:
+        remarks.append(f"noise variance raised {fit.excess:.2g} times for misfit")
     return tuple(remarks)
 
 
@@ -260,6 +265,8 @@ def _components(edge: Edge, found: Gradient) -> tuple[Component, ...]:
         parts.append(Component("shading", abs(shading_effect(edge.curves, found.by)) / sqrt(3), "B"))
     if edge.flat is not None:
         parts.append(Component("flat", found.u(edge.flat), "A"))
+    if edge.rounding.size:
+        parts.append(Component("rounding", float(np.linalg.norm(edge.rounding @ found.by)), "B"))
     return tuple(part for part in parts if part.u > 0 or part.name == "noise")
 
 

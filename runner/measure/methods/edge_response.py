@@ -11,12 +11,14 @@ from typing import Any
 
 import numpy as np
 
+from runner.capture.frame import Crop, linearise
 from runner.errors import MeasurementRefused, UsageError
 from runner.measure import edge_readings
 from runner.measure.contract import Measurement, QuantityInfo, Sample, Wanted
 from runner.measure.numerics.edge_checks import check
 from runner.measure.numerics.edge_curves import Curves
 from runner.measure.numerics.edge_fit import fit_edge
+from runner.measure.numerics.edge_rounding import rounding
 from runner.measure.numerics.edge_shading import Flat, smooth_flat
 from runner.measure.options import read_record
 from runner.measure.reading import Component, Curve, Reading, Refusal
@@ -138,18 +140,27 @@ def measure(sample: Sample, options: Options) -> Measurement:
 
 
 def _fitted(sample: Sample, options: Options, signal: Any, flat: Flat | None) -> edge_readings.Edge:
-    camera = sample.camera
-    rounding = 1 / (camera.white_level - camera.black_level) / sqrt(12)
+    camera, crop = sample.camera, sample.crop
     fit = fit_edge(
         signal,
         order=options.order,
         shading="fitted" if options.shading == "fitted" else "none",
-        noise_floor=rounding,
+        noise_floor=1 / (camera.white_level - camera.black_level) / sqrt(12),
         aperture=sqrt(camera.fill),
+        sites=crop.sites,
     )
     curves = Curves(fit)
     band, straight = check(curves, shading_known=fit.shading)
-    return edge_readings.Edge(sample, curves, band, straight, None if flat is None else flat.covariance_of(fit, signal))
+    moved = rounding(fit, (_code(crop, fit.parts.low), _code(crop, fit.parts.low + fit.parts.rise)))
+    of_flat = None if flat is None else flat.covariance_of(fit, signal)
+    return edge_readings.Edge(sample, curves, band, straight, of_flat, moved)
+
+
+def _code(crop: Crop, level: float) -> float:
+    """Return the width of one code at a level, fraction of range; a tone curve makes it differ from level to level."""
+    nearest = int(crop.codes.flat[int(np.argmin(np.abs(crop.signal - level)))])
+    one, next_one = linearise(np.array([nearest, nearest + 1]), crop.camera)
+    return float(next_one - one)
 
 
 def refuse_exposure(sample: Sample) -> None:
@@ -159,7 +170,8 @@ def refuse_exposure(sample: Sample) -> None:
         MeasurementRefused: `clipped`, `too bright`, `too dark` or `no picture`.
     """
     camera = sample.camera
-    codes, signal = sample.crop.codes, sample.crop.signal
+    crop = sample.crop
+    codes, signal = (each if crop.sites is None else each[crop.sites] for each in (crop.codes, crop.signal))
     if codes.size == 0 or codes.min() == codes.max():
         raise MeasurementRefused("no picture", f"every pixel of the region has the code {codes.flat[0]}")
     span = camera.white_level - camera.black_level
@@ -214,7 +226,7 @@ def _shading_undone(sample: Sample, options: Options) -> tuple[Any, Flat | None]
             f"the companion '{role}' that shading is taken from is missing or unusable",
             next_step=f"name it under 'uses' ({role}: CAPTURE) and capture it",
         )
-    flat = smooth_flat([crop.signal for crop in crops])
+    flat = smooth_flat([crop.signal for crop in crops], sample.crop.sites)
     return sample.crop.signal / flat.field, flat
 
 
@@ -255,6 +267,10 @@ def _iso_refusal(sample: Sample, wanted: Wanted) -> Reading:
 def _by_iso(sample: Sample, signal: Any, wanted: list[Wanted], noise: float | None) -> Measurement:
     from runner.measure.numerics import iso12233  # noqa: PLC0415 - only specs that ask for it need it
 
+    if sample.crop.sites is not None:
+        because = f"'{ISO}' takes whole rows, which a mosaic's channel has not; '{JOINT_FIT}' takes pixels as they lie"
+        refusal = Refusal("outside the estimator's limits", because)
+        return Measurement(tuple(_blank(sample, w, ISO, refusal) for w in wanted))
     try:
         found = iso12233.estimate(signal, noise=noise)
     except MeasurementRefused as error:

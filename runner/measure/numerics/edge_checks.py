@@ -66,7 +66,7 @@ def straightness(fit: EdgeFit) -> Straightness:
     information = np.bincount(segment, weight * slope * slope, minlength=count)
     pull = np.bincount(segment, weight * slope * linear.residual, minlength=count)
     good = information > 0.2 * information.max()
-    variance = 1 / information[good]
+    variance = fit.of_means / fit.excess / information[good]
     shift = -pull[good] / information[good]
     freedom = max(1, shift.size - fit.parts.line.coefficients.size)
     chi = float((shift**2 / variance).sum())
@@ -167,34 +167,40 @@ def _check_levels(curves: Curves) -> None:
 
 def strange_share(curves: Curves) -> float:
     """Return the share of 4 × 4 px squares, away from the edge, that lie off their plateau."""
-    squares, seen = _squares(curves, 4)
-    noise = float(np.sqrt(max(curves.fit.noise.low, curves.fit.noise.high))) / 4
+    squares, counts, seen = _squares(curves, 4)
+    noise = float(np.sqrt(max(curves.fit.noise.low, curves.fit.noise.high) * curves.fit.of_means / counts.max()))
     limit = max(STRANGE * curves.rise, CERTAIN * min(noise, 0.25 * curves.rise))
     return float(np.mean((np.abs(squares) > limit) & seen))
 
 
 def unevenness(curves: Curves) -> tuple[float, bool]:
     """Return the rms of 8 × 8 px means on the plateaus about the fit, noise taken off, and whether it is certain."""
-    squares, seen = _squares(curves, 8)
-    count = int(seen.sum())
-    if count < 4:
+    squares, counts, seen = _squares(curves, 8)
+    number = int(seen.sum())
+    if number < 4:
         return 0.0, False
-    noise = (curves.fit.noise.low + curves.fit.noise.high) / 2 / 64
+    # neighbouring squares share what correlates their pixels
+    noise = (curves.fit.noise.low + curves.fit.noise.high) / 2 * curves.fit.of_means / float(counts[seen].mean())
     mean = float(np.mean(squares[seen] ** 2))
-    return float(np.sqrt(max(0.0, mean - noise))), mean > noise * (1 + CERTAIN * float(np.sqrt(2 / count)))
+    freedom = number / max(1.0, curves.fit.of_means / 4)
+    return float(np.sqrt(max(0.0, mean - noise))), mean > noise * (1 + CERTAIN * float(np.sqrt(2 / freedom)))
 
 
-def _squares(curves: Curves, side: int) -> tuple[Array, NDArray[np.bool_]]:
-    """Mean residuals in squares, and which of them lie on a plateau."""
-    fit = curves.fit
-    rows, columns = (n // side * side for n in fit.pixels.shape)
+def _squares(curves: Curves, side: int) -> tuple[Array, Array, NDArray[np.bool_]]:
+    """Mean residuals in squares, their pixels, and which of them lie on a plateau."""
+    pixels = curves.fit.pixels
+    rows, columns = (n // side * side for n in pixels.shape)
 
-    def means(values: Array) -> Array:
-        kept = values.reshape(fit.pixels.shape)[:rows, :columns]
-        return np.asarray(kept.reshape(rows // side, side, columns // side, side).mean(axis=(1, 3)))
+    def sums(values: Array) -> Array:
+        kept = pixels.picture(values)[:rows, :columns]
+        return np.asarray(kept.reshape(rows // side, side, columns // side, side).sum(axis=(1, 3)))
 
+    counts = sums(np.ones_like(pixels.signal))
     away = edge_width(curves).value + side
-    return means(fit.linear.residual), np.abs(means(fit.pixels.distance)) > away
+    residual, distance = (
+        sums(values) / np.maximum(counts, 1) for values in (curves.fit.linear.residual, pixels.distance)
+    )
+    return residual, counts, (np.abs(distance) > away) & (counts > 0)
 
 
 def _check_alone(curves: Curves) -> None:

@@ -115,8 +115,8 @@ class Curves:
     def draws(self) -> Array:
         """Return draws of the shape from the posterior, draws × parts; always the same ones for the same fit."""
         scale = np.sqrt(np.diag(self.posterior))
-        root = np.linalg.cholesky(self.posterior / (scale[:, None] * scale) + 1e-9 * np.eye(scale.size))
-        return np.asarray(self.shape + (_normal(scale.size) @ root.T) * scale)
+        values, ways = np.linalg.eigh(self.posterior / (scale[:, None] * scale))
+        return np.asarray(self.shape + (_normal(scale.size) * np.sqrt(np.maximum(values, 0))) @ ways.T * scale)
 
 
 @lru_cache(maxsize=16)

@@ -17,13 +17,15 @@ from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
+from numpy.typing import NDArray
 from scipy import linalg
 
 from runner.errors import MeasurementRefused
 from runner.measure.numerics import edge_model as em
+from runner.measure.numerics.edge_correlation import Correlation, correlated_information, correlation
 from runner.measure.numerics.edge_geometry import find_edge
 from runner.measure.numerics.edge_model import Linear, Noise, Parts, Pixels, Residuals
-from runner.measure.numerics.edge_noise import correlation, defects, misfit, noise_of
+from runner.measure.numerics.edge_noise import defects, misfit, noise_of
 from runner.measure.numerics.line_spread import Array, Lattice, lattice_for
 
 PRIOR_SIZES = np.geomspace(0.1, 0.7, 8)
@@ -61,8 +63,10 @@ class EdgeFit:
     """The pixel's sides along the normal, px."""
     noise: Noise
     """Variance of a pixel at either level."""
+    response: Array
+    """How the fitted numbers follow Jᵀ W times a change of the signal: fixed columns, sliding columns, kernels."""
     covariance: Array
-    """Posterior covariance: fixed columns, sliding columns, kernels."""
+    """Posterior covariance."""
     sampling: Array
     """Covariance of the fitted numbers over repeated captures (the part of it that is noise)."""
     smoothing: Array
@@ -72,7 +76,9 @@ class EdgeFit:
     linear: Linear
     """The last linearisation, about the fit itself."""
     excess: float
-    """Factor by which misfit or correlation between pixels raised the noise variance."""
+    """Factor by which misfit or correlation between pixels raised the noise variance in the fit's weights."""
+    together: Correlation | None
+    """How the noise of neighbouring pixels goes together; None where it does not."""
     left_out: int
     """Defect pixels that were left out."""
     unshaded: Array
@@ -81,6 +87,11 @@ class EdgeFit:
     """Shading that a free fit would find, and its standard uncertainties."""
     shading: bool
     """Shading was fitted."""
+
+    @property
+    def of_means(self) -> float:
+        """Factor on the variance of means over many pixels, beside what single pixels' noise makes of them."""
+        return self.excess if self.together is None else max(self.excess, self.together.whole)
 
     @cached_property
     def shape_index(self) -> Array:
@@ -92,11 +103,17 @@ class EdgeFit:
 
     def change(self, signal: Array) -> Array:
         """Return by how much every fitted number moves when the region's signal changes by this much."""
-        return self.covariance @ em.response(self.pixels, self.linear, signal)
+        return self.response @ em.response(self.pixels, self.linear, signal)
 
 
 def fit_edge(
-    signal: Array, *, order: int = 1, shading: str = "none", noise_floor: float = 0.0, aperture: float = 1.0
+    signal: Array,
+    *,
+    order: int = 1,
+    shading: str = "none",
+    noise_floor: float = 0.0,
+    aperture: float = 1.0,
+    sites: NDArray[np.bool_] | None = None,
 ) -> EdgeFit:
     """Fit one edge of a region.
 
@@ -106,12 +123,13 @@ def fit_edge(
         shading: `fitted` fits a linear shading too; `none` does not (a known one is divided out beforehand).
         noise_floor: Least standard deviation of a pixel (quantisation), fraction of range.
         aperture: Side of the pixel's aperture, px: the square root of its fill.
+        sites: Pixels that may be used, rows × columns; None is all of them.
 
     Raises:
         MeasurementRefused: `no edge`; or `too noisy` when the fit finds no place to settle.
     """
-    line, low, high = find_edge(signal)
-    pixels = Pixels(signal, line)
+    line, low, high = find_edge(signal, sites)
+    pixels = Pixels(signal, line, sites)
     start = Parts(line, low, high - low, 1.5, 0.0, 0.0, 0.0, 1.0, np.zeros(0), np.zeros(2))
     reach = float(np.abs(pixels.distance).max())
     plain = _plain_fit(pixels, start, reach, aperture)
@@ -186,27 +204,34 @@ class _Solved:
     between: Array
     """Prior sizes × directions: deviation of each size's solution from the average, times the root of its weight."""
 
+    information: Array
+    """Jᵀ W J, the data's share of the normal equations, not scaled."""
+
+    @cached_property
+    def response(self) -> Array:
+        """How all parameters follow Jᵀ W times a change of the signal: their covariance for one prior size."""
+        return self._whole((self.lift * self.gain) @ self.lift.T, self.head)
+
     @cached_property
     def covariance(self) -> Array:
-        """Posterior covariance."""
+        """Posterior covariance, prior sizes averaged over."""
         aside = self.lift @ self.between.T
-        return self._whole((self.lift * self.gain) @ self.lift.T + aside @ aside.T)
+        return self.response + self._whole(aside @ aside.T, np.zeros_like(self.head))
+
+    def sampling(self, information: Array) -> Array:
+        """Return the covariance over repeated captures whose noise gives Jᵀ W r this covariance."""
+        return np.asarray(self.response @ information @ self.response)
 
     @cached_property
     def smoothing(self) -> Array:
         """Estimated bias of every parameter by the prior's pull, Tukey's twicing: what the fit of itself would lose."""
-        at = self.lift.shape[0] - self.lift.shape[1]
+        at = self.head.shape[0]
         directions = self.lift[at:].T @ (self.change[at:] * self.unit[at:])
         return np.asarray(self.lift @ ((self.gain * self.data - 1) * directions) / self.unit)
 
-    @cached_property
-    def sampling(self) -> Array:
-        """Covariance over repeated captures."""
-        return self._whole((self.lift * (self.gain**2 * self.data)) @ self.lift.T)
-
-    def _whole(self, inner: Array) -> Array:
-        size = self.head.shape[0]
-        inner[:size, :size] += self.head
+    def _whole(self, inner: Array, head: Array) -> Array:
+        size = head.shape[0]
+        inner[:size, :size] += head
         return np.asarray(inner / (self.unit[:, None] * self.unit[None, :]))
 
 
@@ -219,7 +244,7 @@ def _joint_fit(
     parts = replace(parts, kernels=np.zeros(lattice.centres.size), tail_width=max(1.0, spread_width(parts.sigma)))
     floor = max(noise_floor, MODEL_FLOOR * scale)
     noise = noise_of(em.residuals(pixels, parts, lattice, parts.line.sides(aperture)), floor)
-    excess, together, left_out = 1.0, 1.0, 0
+    excess, together, left_out = 1.0, None, 0
     for turn in range(8):
         linear = em.linearise(pixels, parts, lattice, parts.line.sides(aperture), noise.times(excess))
         solved = _solve(linear, parts, sizes, scale, shading=shading)
@@ -229,46 +254,55 @@ def _joint_fit(
             parts = replace(parts, line=parts.line.turned())
         pixels.place(parts.line)
         if turn == 1:
-            left_out = _fill_defects(pixels, em.residuals(pixels, parts, lattice, parts.line.sides(aperture)))
+            found = em.residuals(pixels, parts, lattice, parts.line.sides(aperture))
+            left_out = _fill_defects(pixels, found, floor)
         if turn == 2:
-            together = correlation(linear, pixels.shape)
+            together = correlation(linear, pixels)
         if turn > 1:
-            before, excess = excess, max(1.0, excess * misfit(linear, solved.freedom), together)
+            least = 1.0 if together is None else together.within_band(parts.line.normal)
+            before, excess = excess, max(least, excess * misfit(linear, solved.freedom))
             if float(np.abs(slide).max()) < 1e-3 and abs(excess / before - 1) < 0.05:
                 break
         noise = noise_of(linear, floor)
     sides = parts.line.sides(aperture)
     linear = em.linearise(pixels, parts, lattice, sides, noise.times(excess))
     free = solved if shading else _solve(linear, parts, sizes, scale, shading=True)
-    head = linear.head
-    shade_at = [em.SHADE, head - 1]
-    unshaded = np.zeros(parts.shape.size)
-    if not shading:
-        unshaded = np.concatenate(
-            [free.change[[em.STEP, em.WIDENING, em.SHIFT, em.TAIL]], free.change[head:] - parts.kernels]
-        )
-    shade = (parts.shade if shading else free.change[shade_at], np.sqrt(np.diag(free.covariance)[shade_at]))
+    covariance, sampling = solved.covariance, solved.sampling(solved.information)
+    if together is not None:
+        mixed = correlated_information(linear, pixels, lattice, together, parts.line.normal) / least
+        covariance, sampling = covariance - sampling + solved.sampling(mixed), solved.sampling(mixed)
     return EdgeFit(
         parts,
         lattice,
         sides,
         noise,
-        solved.covariance,
-        solved.sampling,
+        solved.response,
+        covariance,
+        sampling,
         solved.smoothing,
         pixels,
         linear,
         excess,
+        together,
         left_out,
-        unshaded,
-        shade,
+        *_unshaded(parts, solved if shading else free, linear.head, fitted=shading),
         shading,
     )
 
 
-def _fill_defects(pixels: Pixels, found: Residuals) -> int:
+def _unshaded(parts: Parts, free: _Solved, head: int, *, fitted: bool) -> tuple[Array, tuple[Array, Array]]:
+    """Return what a free shading would change in the shape, and that shading with its standard uncertainties."""
+    at = [em.SHADE, head - 1]
+    u = np.sqrt(np.diag(free.covariance)[at])
+    if fitted:
+        return np.zeros(parts.shape.size), (parts.shade, u)
+    moved = [free.change[[em.STEP, em.WIDENING, em.SHIFT, em.TAIL]], free.change[head:] - parts.kernels]
+    return np.concatenate(moved), (free.change[at], u)
+
+
+def _fill_defects(pixels: Pixels, found: Residuals, floor: float) -> int:
     """Give defect pixels the fitted value, so that they neither pull the fit nor count as noise."""
-    places = defects(found)
+    places = defects(found, floor)
     pixels.signal = pixels.signal.copy()
     pixels.signal[places] -= found.residual[places]
     return int(places.size)
@@ -317,7 +351,7 @@ def _solve(linear: Linear, parts: Parts, sizes: Array, scale: float, *, shading:
     change = np.concatenate([own @ right[:head] - pull @ kernels, kernels])
     freedom = head + float((mean_gain * values).sum())
     lift = np.vstack([-pull @ vectors, vectors])
-    return _Solved(change / unit, freedom, unit, own, lift, values, mean_gain, between)
+    return _Solved(change / unit, freedom, unit, own, lift, values, mean_gain, between, linear.matrix)
 
 
 def _moved(parts: Parts, solved: _Solved, linear: Linear, *, shading: bool) -> Parts:

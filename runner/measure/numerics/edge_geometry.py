@@ -85,7 +85,7 @@ def edge_length(shape: tuple[int, int], normal: float, offset: float = 0.0) -> f
     return float(max(0.0, high - low))
 
 
-def find_edge(signal: Array) -> tuple[EdgeLine, float, float]:
+def find_edge(signal: Array, sites: NDArray[np.bool_] | None = None) -> tuple[EdgeLine, float, float]:
     """Find the one edge of a region from nothing.
 
     The direction is that of the smoothed gradient's structure tensor (isotropic noise adds to it evenly and leaves the
@@ -93,6 +93,7 @@ def find_edge(signal: Array) -> tuple[EdgeLine, float, float]:
 
     Args:
         signal: Rows × columns.
+        sites: Pixels that may be used, at least one in every 2 × 2; None is all of them.
 
     Returns:
         (edge line of order 1, dark level, bright level), good to about a pixel and a degree.
@@ -100,13 +101,17 @@ def find_edge(signal: Array) -> tuple[EdgeLine, float, float]:
     Raises:
         MeasurementRefused: `no edge` when no direction or no step stands out.
     """
-    smooth = ndimage.uniform_filter(signal, 3, mode="nearest")
+    if sites is None:
+        smooth = ndimage.uniform_filter(signal, 3, mode="nearest")
+    else:
+        shares = ndimage.uniform_filter(sites.astype(np.float64), 3, mode="nearest")
+        smooth = ndimage.uniform_filter(np.where(sites, signal, 0.0), 3, mode="nearest") / shares
     gy, gx = (np.asarray(slope)[1:-1, 1:-1] for slope in np.gradient(smooth))
     power = gx * gx + gy * gy
     strong = power > 0.25 * float(np.quantile(power, 0.98))
     xx, yy, xy = (float(np.sum(p[strong])) for p in (gx * gx, gy * gy, gx * gy))
     normal = 0.5 * float(np.arctan2(2 * xy, xx - yy))
-    profile, places, counts = _profile(signal, normal)
+    profile, places, counts = _profile(signal, normal, sites)
     offset, low, high, contrast = _step(profile, places, counts)
     if not contrast > LEAST_CONTRAST:
         raise MeasurementRefused(
@@ -122,18 +127,19 @@ def find_edge(signal: Array) -> tuple[EdgeLine, float, float]:
     return EdgeLine(normal, half, np.array([offset, 0.0])), low, high
 
 
-def _profile(signal: Array, normal: float) -> tuple[Array, Array, Array]:
-    """Mean signal in bins of one px along the normal; bins of fewer pixels than a quarter of the fullest are cut."""
+def _profile(signal: Array, normal: float, sites: NDArray[np.bool_] | None) -> tuple[Array, Array, Array]:
+    """Mean signal in bins of one px along the normal (two in a mosaic); bins that hold few pixels are cut."""
     line = EdgeLine(normal, 1.0, np.zeros(1))
     u, _ = line.along((signal.shape[0], signal.shape[1]))
-    index = np.round(u).astype(np.intp)
+    used, pitch = (slice(None), 1) if sites is None else (np.flatnonzero(sites), 2)
+    index = np.round(u[used] / pitch).astype(np.intp)
     low = int(index.min())
     counts = np.bincount(index - low).astype(np.float64)
-    sums = np.bincount(index - low, signal.ravel())
+    sums = np.bincount(index - low, signal.ravel()[used])
     kept = counts >= 0.25 * counts.max()
     first, last = np.flatnonzero(kept)[[0, -1]]
     span = slice(int(first), int(last) + 1)
-    return sums[span] / np.maximum(counts[span], 1), low + np.arange(first, last + 1), counts[span]
+    return sums[span] / np.maximum(counts[span], 1), pitch * (low + np.arange(first, last + 1)), counts[span]
 
 
 def _step(profile: Array, places: Array, counts: Array) -> tuple[float, float, float, float]:

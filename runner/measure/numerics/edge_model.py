@@ -7,6 +7,7 @@ biases nothing.
 """
 
 from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.polynomial import legendre
@@ -23,6 +24,9 @@ from runner.measure.numerics.line_spread import (
     tail,
     tail_transfer,
 )
+
+if TYPE_CHECKING:
+    from scipy import sparse
 
 Complex = NDArray[np.complex128]
 
@@ -91,18 +95,32 @@ class Noise:
 class Pixels:
     """A region's pixels, flat, in the coordinates of the current edge line."""
 
-    def __init__(self, signal: Array, line: EdgeLine) -> None:
+    def __init__(self, signal: Array, line: EdgeLine, sites: NDArray[np.bool_] | None = None) -> None:
         self.shape = (int(signal.shape[0]), int(signal.shape[1]))
-        self.signal = np.ascontiguousarray(signal, dtype=np.float64).ravel()
+        self.kept = None if sites is None else np.flatnonzero(sites)
+        self.signal = self.taken(np.asarray(signal, dtype=np.float64))
         self.place(line)
 
     def place(self, line: EdgeLine) -> None:
         """Take the coordinates of this line's normal, and the distances from it."""
-        u, self.v = line.along(self.shape)
+        u, self.v = (self.taken(each) for each in line.along(self.shape))
         self.distance = line.distance(u, self.v)
         t = self.v / line.half
         order = line.coefficients.size - 1
         self.polynomials = [np.ones_like(t), t, *(legendre.legvander(t, order).T[2:] if order > 1 else ())]
+
+    def taken(self, values: Array) -> Array:
+        """Return the values of these pixels out of all of the region's (rows × columns, or flat)."""
+        flat = np.ravel(values)
+        return flat if self.kept is None else flat[self.kept]
+
+    def picture(self, values: Array) -> Array:
+        """Return these pixels' values in their places, rows × columns, 0 elsewhere."""
+        if self.kept is None:
+            return values.reshape(self.shape)
+        whole = np.zeros(self.shape)
+        whole.ravel()[self.kept] = values
+        return whole
 
 
 @dataclass(frozen=True)
@@ -240,14 +258,14 @@ def linearise(
     """Linearise the model about `parts` on all pixels; without noise every pixel has weight 1."""
     found = residuals(pixels, parts, lattice, sides)
     weights = 1 / noise.at(found.spread) if noise is not None else np.ones(lattice.nodes.size)
-    matrix = _matrix(pixels, found, weights)
+    matrix = information(pixels, found, weights)
     right = _right(pixels, found, found.residual, found.sums, weights)
     return Linear(**vars(found), matrix=matrix, right=right, weights=weights)
 
 
 def response(pixels: Pixels, linear: Linear, change: Array) -> Array:
     """Return Jᵀ W change for any change of the region's signal (rows × columns, or flat)."""
-    flat = np.ravel(change)
+    flat = pixels.taken(change)
     return _right(pixels, linear, flat, _summed(linear.index, flat, linear.counts.size), linear.weights)
 
 
@@ -265,13 +283,14 @@ def _right(pixels: Pixels, found: Residuals, values: Array, sums: Array, weights
     return np.concatenate([fixed[:FIXED], slid, fixed[FIXED:]])
 
 
-def _matrix(pixels: Pixels, found: Residuals, weights: Array) -> Array:
-    used = np.flatnonzero(found.counts)
-    w, sliding = weights[used], found.model.sliding
-    f = found.model.columns[used]
-    scaled = f * np.sqrt(w * found.counts[used])[:, None]
-    fixed = scaled.T @ scaled
-    moments: dict[tuple[int, int], Array] = {(0, 0): found.counts[used]}
+def information(pixels: Pixels, found: Residuals, weights: Array, mix: "sparse.csr_array | None" = None) -> Array:
+    """Return Jᵀ W J; with a mix (nodes × nodes) Jᵀ W½ mix W½ J, taken bin by bin."""
+    used, sliding = np.flatnonzero(found.counts), found.model.sliding
+    root, counts = np.sqrt(weights)[:, None], found.counts[used]
+    left, slid = found.model.columns * root, np.column_stack([profile for profile, _ in sliding]) * root
+    right, further = (left, slid) if mix is None else (mix @ left, mix @ slid)
+    left, slid, right, further = left[used], slid[used], right[used], further[used]
+    moments: dict[tuple[int, int], Array] = {(0, 0): counts}
 
     def moment(i: int, j: int) -> Array:
         key = (min(i, j), max(i, j))
@@ -280,14 +299,19 @@ def _matrix(pixels: Pixels, found: Residuals, weights: Array) -> Array:
             moments[key] = _summed(found.index, product, found.counts.size)[used]
         return moments[key]
 
-    slid = np.column_stack([(w * profile[used]) * moment(0, j) for profile, j in sliding])
-    cross = f.T @ slid
-    own = np.array([[(w * p[used] * q[used]) @ moment(i, j) for q, j in sliding] for p, i in sliding])
-    head, size = FIXED + len(sliding), f.shape[1] + len(sliding)
+    orders = [j for _, j in sliding]
+    first = np.column_stack([moment(0, j) for j in orders])
+    head, size = FIXED + len(sliding), left.shape[1] + len(sliding)
     matrix = np.empty((size, size))
-    fixed_at = np.concatenate([np.arange(FIXED), np.arange(head, size)])
-    matrix[np.ix_(fixed_at, fixed_at)] = fixed
-    matrix[fixed_at, FIXED:head] = cross
-    matrix[FIXED:head, fixed_at] = cross.T
-    matrix[FIXED:head, FIXED:head] = own
+    at = np.concatenate([np.arange(FIXED), np.arange(head, size)])
+    if mix is None:
+        scaled = left * np.sqrt(counts)[:, None]
+        matrix[np.ix_(at, at)] = scaled.T @ scaled
+    else:
+        matrix[np.ix_(at, at)] = (left * counts[:, None]).T @ right
+    matrix[at, FIXED:head] = left.T @ (further * first)
+    matrix[FIXED:head, at] = (slid * first).T @ right
+    matrix[FIXED:head, FIXED:head] = [
+        [(slid[:, a] * further[:, b]) @ moment(i, j) for b, j in enumerate(orders)] for a, i in enumerate(orders)
+    ]
     return matrix

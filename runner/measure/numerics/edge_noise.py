@@ -1,20 +1,15 @@
-"""Noise of a region, from what is left after its edge is fitted: by level, correlated or not, defect pixels apart."""
+"""Noise of a region, from what is left after its edge is fitted: by level, misfit and defect pixels apart."""
 
 import numpy as np
 from numpy.typing import NDArray
 
 from runner.errors import MeasurementRefused
 from runner.measure.numerics.edge_model import Linear, Noise, Residuals
-from runner.measure.numerics.line_spread import Array
 
 SIDES = (0.3, 0.7)
 """Edge spread below and above which a pixel counts for the dark and the bright level."""
 LEAST_DOF = 10
 """Degrees of freedom on either side."""
-NEAR, FAR = 2, 4
-"""px; correlation is looked for in lags up to the first, and summed up to the second where it is found."""
-LEAST_POWER = 0.5
-"""Mean squared residual over its expected variance: below, it is rounding and misfit under the noise floor."""
 CERTAIN = 3.0
 """Standard deviations from which correlation is no longer chance."""
 DEFECT = 6.0
@@ -64,42 +59,19 @@ def misfit(linear: Linear, freedom: float) -> float:
     return ratio if abs(ratio - 1) > CERTAIN * np.sqrt(2 / dof) else 1.0
 
 
-def correlation(linear: Linear, shape: tuple[int, int]) -> float:
-    """Return by how much correlation between pixels raises the variance of means over many, at least 1.
+def defects(found: Residuals, floor: float) -> NDArray[np.intp]:
+    """Return the places of defect pixels: few, and far outside the noise of their own side of the edge.
 
-    It is the sum of the noise's autocorrelation; interpolated colours and denoising raise it.
+    Args:
+        found: The model against all pixels.
+        floor: Least standard deviation of a pixel, fraction of range.
     """
-    scaled = (linear.residual * np.sqrt(linear.weights[linear.index])).reshape(shape)
-    scaled = scaled - scaled.mean()
-    power = float(np.mean(scaled * scaled))
-    if not power > LEAST_POWER:
-        return 1.0
-    near = _summed(scaled, NEAR) / power
-    lags = ((2 * NEAR + 1) ** 2 - 1) / 2
-    if near < CERTAIN * 2 * np.sqrt(lags / scaled.size):
-        return 1.0
-    return float(max(1.0, 1 + near, 1 + _summed(scaled, FAR) / power))
-
-
-def _summed(values: Array, reach: int) -> float:
-    """Twice the sum of the autocovariances over one half of all lags up to `reach`, the lag 0 left out."""
-    rows, columns = values.shape
-    total = 0.0
-    for dy in range(min(reach + 1, rows)):
-        for dx in range(-reach if dy else 1, min(reach + 1, columns)):
-            a = values[dy:, max(dx, 0) : columns + min(dx, 0)]
-            b = values[: rows - dy, max(-dx, 0) : columns - max(dx, 0)]
-            total += 2 * float(np.mean(a * b))
-    return total
-
-
-def defects(found: Residuals) -> NDArray[np.intp]:
-    """Return the places of defect pixels: few, and far outside the noise of their own side of the edge."""
     spread = found.spread[found.index]
     sd = np.empty(2)
     for k, side in enumerate((spread < SIDES[0], spread > SIDES[1])):
-        sd[k] = 1.4826 * float(np.median(np.abs(found.residual[side]))) if side.any() else 0.0
+        # of few whole codes the median may be none; nine tenths of a normal variable lie within 1.645 deviations
+        sd[k] = max(floor, float(np.quantile(np.abs(found.residual[side]), 0.9)) / 1.645 if side.any() else 0.0)
     limit = DEFECT * np.maximum(sd[0] + (sd[1] - sd[0]) * np.clip(spread, 0, 1), sd.max() / 4)
     # where the signal is steep, a residual may be the fit's
-    places = np.flatnonzero((np.abs(found.residual) > limit) & (limit > 0))
+    places = np.flatnonzero(np.abs(found.residual) > limit)
     return places if places.size <= MOST_DEFECTS * found.residual.size else np.zeros(0, dtype=np.intp)

@@ -240,4 +240,5 @@ def noise(curves: Curves) -> tuple[float, float]:
     """Return the rms noise of a pixel, mid between both levels, % of the step, and its u."""
     found = curves.fit.noise
     value = 100 * float(np.sqrt((found.low + found.high) / 2)) / curves.rise
-    return value, value / float(np.sqrt(2 * found.dof))
+    shared = 1.0 if curves.fit.together is None else curves.fit.together.squared
+    return value, value * float(np.sqrt(shared / (2 * found.dof)))

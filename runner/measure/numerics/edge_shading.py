@@ -8,6 +8,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.polynomial import legendre
+from numpy.typing import NDArray
 
 from runner.errors import MeasurementRefused
 from runner.measure.numerics.edge_fit import EdgeFit
@@ -46,17 +47,19 @@ class Flat:
         return np.asarray(moved @ self.covariance @ moved.T)
 
 
-def smooth_flat(crops: Sequence[Array]) -> Flat:
+def smooth_flat(crops: Sequence[Array], sites: NDArray[np.bool_] | None = None) -> Flat:
     """Fit the smooth shading of flat frames of one region.
 
     Args:
         crops: Light, rows × columns each, as fractions of range; repeats are averaged.
+        sites: Pixels that may be used, rows × columns; None is all of them.
 
     Raises:
         MeasurementRefused: `missing companion`, the flat is too dark or not smooth.
     """
     mean = np.mean(np.stack([np.asarray(c, dtype=np.float64) for c in crops]), axis=0)
-    level = float(mean.mean())
+    used = np.ones(mean.shape, dtype=bool) if sites is None else sites
+    level = float(mean[used].mean())
     if not level > LEAST_LEVEL:
         raise MeasurementRefused(
             "missing companion",
@@ -69,13 +72,13 @@ def smooth_flat(crops: Sequence[Array]) -> Flat:
     y, x = (legendre.legvander(np.linspace(-1, 1, n), DEGREE).T for n in (rows, columns))
     powers = [(i, j) for i in range(DEGREE + 1) for j in range(DEGREE + 1 - i)]
     terms = np.array([y[i][:, None] * x[j][None, :] for i, j in powers])
-    design = terms.reshape(len(powers), -1).T
+    design = terms[:, used].T
     gram = design.T @ design
-    coefficients = np.linalg.solve(gram, design.T @ relative.ravel())
-    field = (design @ coefficients).reshape(relative.shape)
-    residual = relative - field
-    variance = float((residual**2).sum()) / max(1, residual.size - len(powers))
-    rough = _roughness(residual, variance)
+    coefficients = np.linalg.solve(gram, design.T @ relative[used])
+    field = np.tensordot(coefficients, terms, 1)
+    residual = np.where(used, relative - field, 0.0)
+    variance = float((residual**2).sum()) / max(1, int(used.sum()) - len(powers))
+    rough = _roughness(residual, used, variance)
     if rough > MOST_ROUGH:
         raise MeasurementRefused(
             "missing companion",
@@ -86,9 +89,12 @@ def smooth_flat(crops: Sequence[Array]) -> Flat:
     return Flat(field / field.mean(), terms[1:], variance * np.linalg.inv(gram)[1:, 1:])
 
 
-def _roughness(residual: Array, variance: float) -> float:
+def _roughness(residual: Array, used: NDArray[np.bool_], variance: float) -> float:
     rows, columns = (n // BLOCK * BLOCK for n in residual.shape)
     if not rows or not columns:
         return 0.0
-    squares = residual[:rows, :columns].reshape(rows // BLOCK, BLOCK, columns // BLOCK, BLOCK).mean(axis=(1, 3))
-    return float(np.sqrt(max(0.0, float((squares**2).mean()) - variance / BLOCK**2)))
+    squares, counts = (
+        values[:rows, :columns].reshape(rows // BLOCK, BLOCK, columns // BLOCK, BLOCK).sum(axis=(1, 3))
+        for values in (residual, used)
+    )
+    return float(np.sqrt(max(0.0, float(((squares / counts) ** 2).mean()) - variance / float(counts.mean()))))

@@ -7,7 +7,7 @@ from typing import Any
 
 import numpy as np
 
-from runner.capture.frame import Box, Frame, Signal, crop
+from runner.capture.frame import Box, Frame, Signal, linearise
 from runner.errors import MeasurementRefused, UsageError
 from runner.measure.contract import Found, NotFound
 from runner.measure.numerics.edge_search import (
@@ -81,7 +81,7 @@ def read_options(asked: Mapping[str, Any]) -> Options:
 def locate(
     frames: Sequence[Frame], regions: Sequence[Region], camera: Camera, options: Options
 ) -> Sequence[Found | NotFound]:
-    """Find the edge of every region in the capture's first frame, in order.
+    """Find the edge of every region in the capture's first frame, in order; colours come as one grey picture.
 
     A region moves by whole pixels along the edge's normal, never further than the search distance, so that the edge
     passes through its centre.
@@ -120,7 +120,7 @@ def _locate_one(frame: Frame, name: str, box: Box, camera: Camera, search: int) 
     wide = Box(
         max(box.x0 - search, 0), max(box.y0 - search, 0), min(box.x1 + search, columns), min(box.y1 + search, rows)
     )
-    signal = without_specks(crop(frame, wide, camera).signal)
+    signal = without_specks(linearise(frame.codes[wide.y0 : wide.y1, wide.x0 : wide.x1], camera))
     inner = signal[box.y0 - wide.y0 : box.y1 - wide.y0, box.x0 - wide.x0 : box.x1 - wide.x0]
     _refuse_level(frame, inner)
     trace = trace_edge(signal, search)
