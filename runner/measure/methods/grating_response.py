@@ -16,8 +16,9 @@ from runner.capture.frame import Crop
 from runner.errors import MeasurementRefused, UsageError
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.numerics.grating_fit import GratingFit, GratingLost, Lattice, fit_grating
+from runner.measure.numerics.grating_search import picture
 from runner.measure.options import read_record
-from runner.measure.reading import Component, Curve, Reading, Refusal
+from runner.measure.reading import Component, Curve, Map, Reading, Refusal
 from runner.spec.units import parse_amount
 
 NAME = "grating response"
@@ -38,6 +39,10 @@ LEAST_APART = 3.0
 """Periods over the patch between a wave and its mirror image: nearer, their lines merge under the search's window."""
 MOST_STRANGE = 0.1
 """Power that neither the sine with its harmonics nor noise explains, over the sine's: above, it is another scene."""
+MAP_SIZE = 65
+"""Ordinates along each axis of the spectrum's picture."""
+DEEPEST = -90.0
+"""dB: what lies deeper is drawn as that."""
 BIAS = 2e-4
 """Bound on the relative bias of a modulation (shading and amplitude that change by 30 % over the patch)."""
 
@@ -127,7 +132,8 @@ def measure(sample: Sample, options: Options) -> Measurement:
     except GratingLost as lost:
         raise MeasurementRefused("another scene", f"the stripes have no single frequency: {lost}") from lost
     _refuse_strange(fit, lattices)
-    return Measurement(tuple(_readings(sample, fit, options)), (_profile(sample, fit, lattices),))
+    profile, area = _profile(sample, fit, lattices), _spectrum(sample, fit, lattices)
+    return Measurement(tuple(_readings(sample, fit, options)), (profile,), (area,))
 
 
 def lattices_of(crop: Crop) -> list[Lattice]:
@@ -274,4 +280,24 @@ def _profile(sample: Sample, fit: GratingFit, lattices: list[Lattice]) -> Curve:
         "period",
         "1",
         estimator=ESTIMATOR,
+    )
+
+
+def _spectrum(sample: Sample, fit: GratingFit, lattices: list[Lattice]) -> Map:
+    """Return the patch's spectrum in dB below the mean's line, with that line and the sine's two marked."""
+    one = lattices[0]
+    pitch = float(one.x[1] - one.x[0])
+    x, y, decibels = picture(one.values, pitch, MAP_SIZE)
+    fx, fy = fit.frequency
+    marks = [(0.0, 0.0, "DC"), (fx, fy, "+f"), (-fx, -fy, "-f")]
+    reach = 0.5 / pitch
+    return Map(
+        sample.found.region,
+        "spectrum",
+        tuple(round(float(v), 5) for v in x),
+        tuple(round(float(v), 5) for v in y),
+        tuple(tuple(round(float(v), 1) for v in row) for row in np.maximum(decibels, DEEPEST)),
+        "cy/px",
+        "dB",
+        tuple(mark for mark in marks if max(abs(mark[0]), abs(mark[1])) <= reach),
     )

@@ -64,11 +64,12 @@ def strongest_line(
     return Line((float(x), float(y)), contrast, float(np.hypot(x, y)) * reach)
 
 
-def spectrum(values: NDArray[np.floating]) -> Real:
+def spectrum(values: NDArray[np.floating], *, level: bool = False) -> Real:
     """Return the power spectrum of a patch without its mean and tilt, Hann window, over the half plane of x ≥ 0.
 
     Args:
         values: Rows × columns.
+        level: Keep the mean, whose line then stands at the origin with its square.
 
     Returns:
         Rows × (columns // 2 + 1), in the order of `scipy.fft.rfft2`; a line of amplitude a stands at a²/4.
@@ -78,7 +79,7 @@ def spectrum(values: NDArray[np.floating]) -> Real:
     flat = values - values.mean()
     slope_x = float(x @ flat.sum(axis=0)) / (rows * float(x @ x))
     slope_y = float(y @ flat.sum(axis=1)) / (columns * float(y @ y))
-    flat = flat - slope_x * x[None, :] - slope_y * y[:, None]
+    flat = flat - slope_x * x[None, :] - slope_y * y[:, None] + (values.mean() if level else 0.0)
     wx, wy = _hann(columns), _hann(rows)
     flat = flat * (wx / wx.mean())[None, :] * (wy / wy.mean())[:, None]
     transformed = fft.rfft2(flat.astype(np.float32)) / flat.size
@@ -108,3 +109,32 @@ def _shift(power: Real, row: int, column: int, axis: int) -> float:
     before, middle, after = around
     bend = before - 2 * middle + after
     return 0.0 if bend >= 0 else float(np.clip((before - after) / (2 * bend), -0.5, 0.5))
+
+
+def picture(values: NDArray[np.floating], pitch: float, most: int) -> tuple[Real, Real, Real]:
+    """Return a patch's whole spectrum for a picture: frequencies along x and y, and dB below the mean's line.
+
+    Args:
+        values: Rows × columns.
+        pitch: Distance of neighbouring pixels, px of the frame.
+        most: Ordinates along each axis at most; the highest of those that fall together is kept.
+
+    Returns:
+        x (cy/px), y (cy/px), rows × columns of dB, the origin in the middle.
+    """
+    rows, columns = values.shape
+    half = spectrum(values, level=True)
+    mirrored = np.roll(half[::-1], 1, axis=0)[:, 1 : (columns + 1) // 2][:, ::-1]
+    whole = np.concatenate([mirrored, half[:, : columns // 2 + 1]], axis=1)
+    whole = fft.fftshift(whole, axes=0)
+    x = np.concatenate([-fft.rfftfreq(columns)[1 : (columns + 1) // 2][::-1], fft.rfftfreq(columns)]) / pitch
+    y = fft.fftshift(fft.fftfreq(rows)) / pitch
+    decibels = 10 * np.log10(np.maximum(whole, 1e-30) / max(float(whole.max()), 1e-30))
+    for axis, size in ((0, rows), (1, x.size)):
+        step = -(-size // most)
+        starts = np.arange(0, size, step)
+        decibels = np.maximum.reduceat(decibels, starts, axis=axis)
+        places = (y, x)[axis]
+        means = np.add.reduceat(places, starts) / np.diff(np.append(starts, size))
+        y, x = (means, x) if axis == 0 else (y, means)
+    return x, y, decibels

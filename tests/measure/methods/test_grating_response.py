@@ -120,6 +120,25 @@ def test_a_mosaic_is_measured_on_its_own_pixels(channel: str) -> None:
     assert _value(read["grating_frequency"]) == pytest.approx(float(np.hypot(*u)), abs=1e-5)
 
 
+def test_the_spectrum_is_marked_at_its_peaks() -> None:
+    """The map's highest ordinates off the origin lie at the marks of +f and -f, within its own coarseness."""
+    scene = GratingScene((120, 100), (0.21, -0.13))
+    found = _located(_frame(scene), CAMERA)
+    assert isinstance(found, Found)
+    sample = Sample(found, crop(_frame(scene), found.box, CAMERA), CAMERA, Optics(), Chart(), wanted=())
+    (area,) = grating_response.measure(sample, grating_response.Options()).maps
+    values, x, y = np.array(area.values), np.array(area.x), np.array(area.y)
+    origin = np.hypot(x[None, :], y[:, None]) < 0.05
+    row, column = np.unravel_index(np.where(origin, -200, values).argmax(), values.shape)
+
+    assert max(values.shape) <= 65
+    assert values.max() == 0.0
+    assert values[row, column] == pytest.approx(20 * np.log10(0.6 / 2), abs=0.5)  # half the modulation, Hann's scallop
+    marks = {words: (mx, my) for mx, my, words in area.marks}
+    assert marks["DC"] == (0.0, 0.0)
+    assert min(np.hypot(x[column] - mx, y[row] - my) for mx, my in (marks["+f"], marks["-f"])) < 0.02
+
+
 def test_the_stated_uncertainty_covers() -> None:
     """Over 300 noisy patches ±2u holds modulation, frequency and direction in 93 % or more, and spread/u is near 1.
 
