@@ -9,6 +9,7 @@ noise does not average it out), `chart` (its calibration).
 import re
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
+from functools import cached_property
 from math import sqrt
 
 import numpy as np
@@ -111,6 +112,12 @@ class Edge:
     """Covariance of everything fitted that the flat's noise brings; None without a flat."""
     rounding: Array
     """Deviations of all fitted numbers that rounding to codes brings, deviations × numbers."""
+
+    @cached_property
+    def covariances(self) -> tuple[Array, Array]:
+        """Covariance of everything fitted, and its part over repeated captures, as if the shading were known."""
+        fit = self.curves.fit
+        return without_shading(fit.covariance, fit.linear.head), without_shading(fit.sampling, fit.linear.head)
 
 
 def read(edge: Edge, wanted: Wanted) -> Reading:
@@ -248,9 +255,9 @@ def _remarks(edge: Edge) -> tuple[str, ...]:
 
 def _components(edge: Edge, found: Gradient) -> tuple[Component, ...]:
     fit = edge.curves.fit
-    known = without_shading(fit.covariance, fit.linear.head)
+    known, over_repeats = edge.covariances
     whole = found.u(known)
-    scatter = min(found.u(without_shading(fit.sampling, fit.linear.head)), whole)
+    scatter = min(found.u(over_repeats), whole)
     shape = sqrt(max(0.0, whole**2 - scatter**2))
     parts = [Component("noise", scatter, "A", fit.noise.dof, averages=True)]
     if found.least_u > 1.001 * whole:  # from draws: which part is noise cannot be told, so none of it averages

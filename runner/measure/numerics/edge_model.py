@@ -139,21 +139,20 @@ class Model:
 
 def model_of(parts: Parts, lattice: Lattice, sides: tuple[float, float]) -> Model:
     """Evaluate the model at the lattice's nodes."""
-    spreads, densities = shape_columns(lattice.nodes, parts, lattice, sides, at_nodes=True)
-    value = parts.low + spreads @ parts.shape
-    slope = densities @ parts.shape
+    spreads, densities = _plain_columns(lattice.nodes, parts, sides)
+    plain = parts.shape[:4]
+    value = parts.low + spreads @ plain + lattice.spreads @ parts.kernels
+    slope = densities @ plain + lattice.densities @ parts.kernels
     columns = np.empty((value.size, FIXED + lattice.centres.size))
     columns[:, LEVEL] = 1.0
-    columns[:, STEP : TAIL + 1] = spreads[:, :4]
+    columns[:, STEP : TAIL + 1] = spreads
     columns[:, SHADE] = lattice.nodes / parts.line.half * value
-    columns[:, FIXED:] = spreads[:, 4:]
+    columns[:, FIXED:] = lattice.spreads
     sliding = [(-slope, j) for j in range(parts.line.coefficients.size)]
     return Model(value, slope, columns, (*sliding, (value, 1)))
 
 
-def shape_columns(
-    x: Array, parts: Parts, lattice: Lattice, sides: tuple[float, float], *, at_nodes: bool = False
-) -> tuple[Array, Array]:
+def shape_columns(x: Array, parts: Parts, lattice: Lattice, sides: tuple[float, float]) -> tuple[Array, Array]:
     """Return edge spreads and line spreads of the parts (step, widening, shift, tail, kernels), points × parts.
 
     Args:
@@ -161,16 +160,19 @@ def shape_columns(
         parts: Sigma and the tail's width.
         lattice: Kernels.
         sides: The pixel's sides along the normal, px.
-        at_nodes: `x` are the lattice's nodes, whose kernel values are kept.
     """
+    plain, kernels = _plain_columns(x, parts, sides), lattice.kernels(x)
+    return np.hstack([plain[0], kernels[0]]), np.hstack([plain[1], kernels[1]])
+
+
+def _plain_columns(x: Array, parts: Parts, sides: tuple[float, float]) -> tuple[Array, Array]:
+    """Edge spreads and line spreads of step, widening, shift and tail, points × 4."""
     sigma = parts.sigma
     # heat equation: the derivative of a Gaussian-blurred function to log sigma is sigma² times its second derivative
     spread, density, bend, further = pixel_gauss(x, sigma, sides)
     tail_spread, tail_density = tail(x, parts.tail_width)
-    kernel_spreads, kernel_densities = (lattice.spreads, lattice.densities) if at_nodes else lattice.kernels(x)
     first = np.column_stack([spread, sigma**2 * bend, -density, tail_spread])
-    second = np.column_stack([density, sigma**2 * further, -bend, tail_density])
-    return np.hstack([first, kernel_spreads]), np.hstack([second, kernel_densities])
+    return first, np.column_stack([density, sigma**2 * further, -bend, tail_density])
 
 
 def shape_transfers(frequency: Array | None, parts: Parts, lattice: Lattice, sides: tuple[float, float]) -> Complex:
@@ -286,10 +288,15 @@ def _right(pixels: Pixels, found: Residuals, values: Array, sums: Array, weights
 def information(pixels: Pixels, found: Residuals, weights: Array, mix: "sparse.csr_array | None" = None) -> Array:
     """Return Jᵀ W J; with a mix (nodes × nodes) Jᵀ W½ mix W½ J, taken bin by bin."""
     used, sliding = np.flatnonzero(found.counts), found.model.sliding
-    root, counts = np.sqrt(weights)[:, None], found.counts[used]
-    left, slid = found.model.columns * root, np.column_stack([profile for profile, _ in sliding]) * root
-    right, further = (left, slid) if mix is None else (mix @ left, mix @ slid)
-    left, slid, right, further = left[used], slid[used], right[used], further[used]
+    counts, columns, slid = found.counts[used], found.model.columns, np.column_stack([each for each, _ in sliding])
+    if mix is None:
+        root = np.sqrt(weights[used])[:, None]
+        left, slid = columns[used] * root, slid[used] * root
+        right, further = left, slid
+    else:
+        root = np.sqrt(weights)[:, None]
+        right, further = (mix @ (each * root) for each in (columns, slid))
+        left, slid, right, further = columns[used] * root[used], slid[used] * root[used], right[used], further[used]
     moments: dict[tuple[int, int], Array] = {(0, 0): counts}
 
     def moment(i: int, j: int) -> Array:
