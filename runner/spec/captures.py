@@ -8,7 +8,9 @@ from runner.errors import UsageError
 from runner.spec import units
 from runner.spec.device_leaves import Chosen
 from runner.spec.devices import build_camera, build_chart, build_optics, overridden
-from runner.spec.leaves import share
+from runner.spec.file_shapes import SidecarShape
+from runner.spec.files import FIELDS, Agreed, Sidecar
+from runner.spec.leaves import Inequality, share
 from runner.spec.model import Amount, Bound, Camera, Capture, FramePattern, Limit, Optics
 from runner.spec.regions import expand, names
 from runner.spec.shapes import PARAMETERS, CaptureShape, LimitShape, OpticsShape, RootShape
@@ -100,9 +102,23 @@ def _build(
         target_options=target_options,
         usable_if=tuple(_bounds(shape)),
         limits=tuple(limit for limit, _ in limits),
+        sidecar=_sidecar(shape.sidecar),
     )
     stated = any(one is not None and one.stated("fill") for one in (root.camera, shape.camera))
     return Draft(capture, shape, limits, camera.fill if stated else None)
+
+
+def _sidecar(shape: SidecarShape | None) -> Sidecar:
+    if shape is None:
+        return Sidecar()
+    agreed = []
+    for name in FIELDS:
+        one: Inequality | None = getattr(shape, name, None) if name != "counter" else None
+        if one is not None:
+            low, high = one.at_least, one.at_most
+            unit = (high or low or Amount(0, "1")).unit
+            agreed.append(Agreed(name, low.value if low else None, high.value if high else None, unit))
+    return Sidecar(shape.require or (), tuple(agreed), shape.counter is not None)
 
 
 def _bounds(shape: CaptureShape) -> Iterable[Bound]:
@@ -278,16 +294,17 @@ def _leads_to(start: str, goal: str, shapes: Mapping[str, CaptureShape]) -> bool
 
 
 def _check_numbers(drafts: tuple[Draft, ...], complaints: Complaints) -> None:
-    """A characteristic with its place and channel names one check."""
+    """A characteristic with its place and channel names one check; a limit without a channel holds in each."""
     seen: dict[tuple[str, str, str], str] = {}
     for draft in drafts:
         for limit, shape in draft.limits:
             places = (f"{limit.combine} of {limit.where_label}",) if limit.combine else limit.where or ("",)
-            for place in places:
-                key = limit.characteristic, place, limit.channel or ""
-                if key in seen:
-                    at = f" at '{place}'" if place else ""
-                    found = f"characteristic {limit.characteristic}{at} stands twice; first in {seen[key]}"
-                    complaints.error(shape.at("characteristic"), found, "", "give each requirement its own number")
-                    break
-                seen[key] = str(shape.at("characteristic"))
+            channels = (limit.channel,) if limit.channel else draft.capture.camera.channels
+            keys = [(limit.characteristic, place, channel) for place in places for channel in channels]
+            doubled = next((key for key in keys if key in seen), None)
+            if doubled is not None:
+                at = f" at '{doubled[1]}'" if doubled[1] else ""
+                at += f" in {doubled[2]}" if len(draft.capture.camera.channels) > 1 else ""
+                found = f"characteristic {limit.characteristic}{at} stands twice; first in {seen[doubled]}"
+                complaints.error(shape.at("characteristic"), found, "", "give each requirement its own number")
+            seen |= {key: str(shape.at("characteristic")) for key in keys if key not in seen}

@@ -2,6 +2,7 @@
 
 from runner.errors import UsageError
 from runner.spec import units
+from runner.spec.files import PACKINGS, Layout
 from runner.spec.leaves import share
 from runner.spec.model import Amount, Camera, Chart, Optics, Tone
 from runner.spec.shapes import CameraPart, ChartShape, OpticsShape
@@ -39,20 +40,13 @@ def build_camera(shape: CameraPart, complaints: Complaints, place_of: CameraPart
             f"the black level of {black:g} DN is not below the white level",
             f"below {white:g} DN",
         )
-    if shape.mosaic not in {None, "none"}:
-        complaints.error(
-            told.at("mosaic"),
-            f"mosaic {shape.mosaic} cannot be measured by this release",
-            "none",
-            "deliver mono frames",
-        )
-    if shape.colour not in {None, "mono"}:
-        complaints.error(
-            told.at("colour"),
-            f"colour {shape.colour} cannot be measured by this release",
-            "mono",
-            "deliver mono frames",
-        )
+    mosaic, colour = shape.mosaic or "none", shape.colour or "mono"
+    if mosaic != "none" and colour != "mono":
+        found = f"a mosaic {mosaic} has one number a pixel, colour {colour} three"
+        complaints.error(told.at("colour"), found, "", "keep mosaic for raw frames, or colour: rgb for processed ones")
+    if mosaic != "none" and shape.delivers == "jpeg":
+        complaints.error(told.at("mosaic"), "a JPEG holds no mosaic", "", "colour: rgb, or delivers: raw")
+    layout = build_layout(shape, told, complaints)
     fill = share(shape.fill) if shape.fill is not None else 1.0
     if fill > 1:
         complaints.error(told.at("fill"), "the fill lies above the whole pixel", "at most 100 %")
@@ -66,12 +60,52 @@ def build_camera(shape: CameraPart, complaints: Complaints, place_of: CameraPart
         shape.bit_depth,
         black,
         white,
+        mosaic,
+        colour,
         pixel_pitch_um=pitch,
         fill=fill,
         tone=shape.tone or Tone(),
         processing=shape.processing or (),
         delivers=shape.delivers or "raw",
+        layout=layout,
     )
+
+
+def build_layout(shape: CameraPart, told: CameraPart, complaints: Complaints) -> Layout:
+    """Return how files hold their pixels, with complaints about what cannot hold such frames.
+
+    Args:
+        shape: All data of the camera.
+        told: The shape whose lines are named.
+        complaints: Takes the complaints.
+    """
+    asked = shape.layout
+    if asked is None:
+        return Layout()
+    layout = Layout(
+        asked.packing or "",
+        asked.byte_order or "",
+        asked.row_padding or 0,
+        asked.header or 0,
+        asked.frames_per_file or 1,
+        asked.first_row or "",
+        asked.dataset or "",
+    )
+    packing = PACKINGS.get(layout.packing)
+    if packing is None or shape.frame_size is None or shape.bit_depth is None:
+        return layout
+    place = told.at("layout", "packing")
+    if packing.bits < shape.bit_depth:
+        found = f"the packing {layout.packing} does not hold {shape.bit_depth} bit"
+        fitting = ", ".join(name for name, one in PACKINGS.items() if one.bits >= shape.bit_depth)
+        complaints.error(place, found, fitting, "the bit depth is the sensor's")
+    if shape.frame_size[0] % packing.pixels:
+        found = f"rows of {shape.frame_size[0]} px do not fill whole groups of {packing.pixels} px"
+        complaints.error(place, found, f"a width that {packing.pixels} divides", "state the width that is stored")
+    if shape.colour == "rgb":
+        found = "headerless files hold one number a pixel, colour rgb three"
+        complaints.error(place, found, "", "export the frames as TIFF, PNG or NPY")
+    return layout
 
 
 def build_optics(base: OpticsShape, complaints: Complaints, part: OpticsShape | None = None) -> Optics:

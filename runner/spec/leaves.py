@@ -228,7 +228,8 @@ def read_inequality(node: Any) -> Inequality:
     return Inequality(low, high)
 
 
-def _write_inequality(value: Inequality) -> str:
+def write_inequality(value: Inequality) -> str:
+    """Write an inequality as it is read."""
     low = spell(value.at_least) if value.at_least else ""
     high = spell(value.at_most) if value.at_most else ""
     if low and high:
@@ -261,5 +262,5 @@ Tolerance = Annotated[
     tuple[Amount, Amount], *leaf(read_tolerance, _write_tolerance, {"type": ["string", "number", "array"]})
 ]
 InequalityLeaf = Annotated[
-    Inequality, *leaf(read_inequality, _write_inequality, {"type": "string", "pattern": "^(at least|at most|from) "})
+    Inequality, *leaf(read_inequality, write_inequality, {"type": "string", "pattern": "^(at least|at most|from) "})
 ]

@@ -57,6 +57,34 @@ NATURAL = {
     "phase_transfer": Range(-180, 180, "deg"),
     "edge_modulation": Range(0, 1, "1"),
     "clipped": Range(0, 1, "1"),
+    "temporal_noise": Range(0, inf, "DN"),
+    "temporal_row_noise": Range(0, inf, "DN"),
+    "temporal_column_noise": Range(0, inf, "DN"),
+    "fixed_pattern_noise": Range(0, inf, "DN"),
+    "row_noise": Range(0, inf, "DN"),
+    "column_noise": Range(0, inf, "DN"),
+    "total_noise": Range(0, inf, "DN"),
+    "level_drift": Range(0, inf, "DN"),
+    "luminance_shading": Range(0, 1, "1"),
+    "uniformity": Range(0, 1, "1"),
+    "darkest_corner": Range(0, inf, "1"),  # of the centre, which need not be the brightest
+    "centre_offset": Range(0, 1, "1"),  # of half the diagonal: a maximum lies in the frame
+    "colour_shading": Range(0, inf, "1"),
+    "row_banding": Range(0, inf, "DN"),
+    "column_banding": Range(0, inf, "DN"),
+    "row_banding_frequency": Range(0, 0.5, "cy/px"),
+    "column_banding_frequency": Range(0, 0.5, "cy/px"),
+    "hot_pixels": Range(0, inf, "1"),
+    "dead_pixels": Range(0, inf, "1"),
+    "dim_pixels": Range(0, inf, "1"),
+    "bright_pixels": Range(0, inf, "1"),
+    "stuck_pixels": Range(0, inf, "1"),
+    "blinking_pixels": Range(0, inf, "1"),
+    "blemishes": Range(0, inf, "1"),
+    "clusters": Range(0, inf, "1"),
+    "largest_cluster": Range(0, inf, "1"),
+    "defective_columns": Range(0, inf, "1"),
+    "defective_rows": Range(0, inf, "1"),
 }
 """Natural ranges; `mtf` is bounded by 1 where the product does not process."""
 
@@ -113,10 +141,10 @@ def _limit(
 ) -> None:
     before = len(found)
     frequency = _frequency(limit, shape, draft, found)
-    if limit.channel not in {None, "mono"}:
-        found.error(
-            shape.at("channel"), f"channel '{limit.channel}' is not in mono frames", "mono", "leave channel out"
-        )
+    channels = draft.capture.camera.channels
+    if limit.channel is not None and limit.channel not in channels:
+        note = f"channel '{limit.channel}' is not in {'mono' if channels == ('mono',) else 'colour'} frames"
+        found.error(shape.at("channel"), note, f"one of: {', '.join(channels)}", "leave channel out to mean each")
     if limit.part == "lens":
         _lens(shape, draft, found)
     if limit.combine == "range" and limit.at_least is not None and limit.at_least > 0:

@@ -4,6 +4,8 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
+from runner.spec.files import Layout, Sidecar
+
 SIMPLE_ACCEPTANCE = "simple acceptance"
 GUARDED_ACCEPTANCE = "guarded acceptance"
 GUARDED_REJECTION = "guarded rejection"
@@ -92,6 +94,8 @@ class Camera:
     """Processing that the product applies, e.g. `sharpened`; empty for none."""
     delivers: str = "raw"
     """`raw` or `jpeg`: JPEG frames are refused unless the product delivers them."""
+    layout: Layout = field(default_factory=Layout)
+    """How files hold their pixels, as far as they do not say so themselves."""
 
     @property
     def channels(self) -> tuple[str, ...]:
@@ -285,6 +289,8 @@ class Capture:
     """What makes the capture usable, judged before the limits."""
     limits: tuple[Limit, ...]
     """Requirements."""
+    sidecar: Sidecar = field(default_factory=Sidecar)
+    """What the sidecars of its frames must say."""
 
 
 @dataclass(frozen=True)

@@ -7,6 +7,7 @@ from typing import Annotated, Any, ClassVar
 from pydantic import ConfigDict, Field, PlainSerializer, PlainValidator, WithJsonSchema
 
 from runner.spec import device_leaves, leaves, position_leaves
+from runner.spec.file_shapes import FramesShape, LayoutShape, SidecarShape
 from runner.spec.leaves import choice
 from runner.spec.model import COMBINATIONS, RULES
 from runner.spec.shape import Found, Ordered, Shape
@@ -63,9 +64,9 @@ class CameraPart(Shape):
     white_level: leaves.Level | None = None
     """Code at which the signal clips, e.g. 4095 DN."""
     mosaic: Annotated[str, *choice("none", "RGGB", "GRBG", "GBRG", "BGGR")] | None = None
-    """Colour filter order; this release measures `none` only."""
+    """Colour filter order: the four pixels of the upper left corner, row by row; or none."""
     colour: Annotated[str, *choice("mono", "rgb")] | None = None
-    """Planes of a delivered frame; this release measures `mono` only."""
+    """Planes of a delivered frame: mono, or rgb for three numbers a pixel."""
     pixel_pitch: leaves.Length | None = None
     """Pixel pitch on the sensor, e.g. 3.0 um."""
     fill: leaves.Share | None = None
@@ -76,6 +77,8 @@ class CameraPart(Shape):
     """Processing that the product applies before it delivers: none, or words of the list."""
     delivers: Annotated[str, *choice("raw", "jpeg")] | None = None
     """`jpeg` where the product delivers JPEG; else JPEG frames are refused."""
+    layout: LayoutShape | None = None
+    """How files hold their pixels, as far as they do not say so themselves."""
 
 
 class CameraShape(CameraPart):
@@ -131,18 +134,6 @@ def day(key: str, text: str | None) -> Iterator[Found]:
         dt.date.fromisoformat(text)
     except ValueError:
         yield key, f"'{text}' is no day of the calendar", "year-month-day, for example 2027-03-31", ""
-
-
-class FramesShape(Shape):
-    """Which files are frames of a capture."""
-
-    WORDS: ClassVar[str] = "frames"
-    SHORT: ClassVar[str | None] = "names"
-    REQUIRED: ClassVar[tuple[str, ...]] = ("names",)
-    names: device_leaves.Names
-    """Pattern inside the unit's folder: * and named parts, e.g. 'chart-{repeat}.tif'."""
-    count: leaves.Count | None = None
-    """How many there must be; makes a lost frame visible."""
 
 
 class ChartShape(Shape):
@@ -335,6 +326,8 @@ class CaptureShape(Shape):
     """Kind of scene (see `probatum targets`), or {name: {its options}}."""
     frames: FramesShape | None = None
     """Pattern of the files, or {names: …, count: …}."""
+    sidecar: SidecarShape | None = None
+    """What the sidecars of its frames must say, e.g. {require: serial, exposure: 2 ms}."""
     same_frames_as: leaves.TextLeaf | None = None
     """Another capture whose frames are used."""
     uses: Uses | None = None

@@ -72,6 +72,7 @@ _LIST = (
     Unit("ms", "time", 1e3),
     Unit("µs", "time", aliases=("us", "μs")),
     Unit("K", "temperature difference"),
+    Unit("°C", "temperature", aliases=("degC",)),
     Unit("px", "length"),
     Unit("nm", "length", 1.0, "1/pitch"),
     Unit("µm", "length", 1e3, "1/pitch", ("um", "μm")),

@@ -5,7 +5,8 @@ from pathlib import Path
 import pytest
 
 from runner.errors import SpecError
-from runner.spec.build import read_spec
+from runner.spec.build import from_expanded, read_spec
+from runner.spec.files import Agreed, Sidecar
 from runner.spec.model import SIMPLE_ACCEPTANCE, Bound, Limit
 from tests.scenes.spec_text import TEXT, write
 
@@ -129,3 +130,35 @@ def test_names_are_checked_even_where_the_camera_is_broken(tmp_path: Path) -> No
         "there is no capture 'drk'",
         "there is no region 'center'",
     ]
+
+
+RGB = ("  processing: none", "  processing: sharpened\n  colour: rgb")
+
+
+def test_a_limit_without_a_channel_holds_in_each(tmp_path: Path) -> None:
+    """In colour frames a limit may name a channel; one without stands for all."""
+    text = TEXT.replace(*RGB)
+    line = "characteristic: 1, quantity: mtf, frequency: 0.25 cy/px, where: centre, at_least: 0.3"
+    more = f"{text}      - {{{line.replace('centre', 'corners')}, channel: red}}\n"
+
+    assert read_spec(write(tmp_path, more)).capture("chart").limits[3].channel == "red"
+    both = more + f"      - {{{line.replace('centre', 'corners')}, channel: blue}}\n"
+    assert len(read_spec(write(tmp_path, both)).capture("chart").limits) == 5
+    with pytest.raises(SpecError, match="channel 'gren' is not in colour frames; one of: red, green, blue; leave"):
+        read_spec(write(tmp_path, more.replace("channel: red", "channel: gren")))
+    with pytest.raises(SpecError, match="characteristic 1 at 'corners upper left' in red stands twice"):
+        read_spec(write(tmp_path, more + f"      - {{{line.replace('centre', 'corners')}}}\n"))
+
+
+def test_what_sidecars_must_say(tmp_path: Path) -> None:
+    """Equal ends stand for one value; fields come in a fixed order; nothing is asked where nothing is written."""
+    line = "sidecar: {temperature: from 20 to 30 degC, require: [time, serial], exposure: 2 ms, counter: consecutive}"
+    spec = read_spec(write(tmp_path, TEXT.replace("count: 4}", f"count: 4}}, {line}")))
+
+    assert spec.capture("dark").sidecar == Sidecar(
+        ("serial", "time"),
+        (Agreed("exposure", 2.0, 2.0, "ms"), Agreed("temperature", 20.0, 30.0, "°C")),
+        consecutive=True,
+    )
+    assert spec.capture("chart").sidecar == Sidecar()
+    assert from_expanded(spec.expanded).capture("dark").sidecar == spec.capture("dark").sidecar

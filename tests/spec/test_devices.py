@@ -1,12 +1,14 @@
 """Camera, optics and chart from their shapes."""
 
+import re
 from dataclasses import replace
 from pathlib import Path
 
 import pytest
 
 from runner.errors import SpecError
-from runner.spec.build import read_spec
+from runner.spec.build import from_expanded, read_spec
+from runner.spec.files import Layout
 from runner.spec.model import Camera, Tone
 from tests.scenes.spec_text import TEXT, write
 
@@ -60,3 +62,53 @@ def test_a_table_that_cannot_be_converted_is_told(tmp_path: Path) -> None:
 
     with pytest.raises(SpecError, match="lp/mm object cannot be converted without optics, magnification"):
         read_spec(write(tmp_path, text))
+
+
+@pytest.mark.parametrize(
+    ("layout", "told"),
+    [
+        ("{packing: 12 bit low bits first, row_padding: 8 bytes, header: 0}", ""),
+        ("{packing: 16 bit, byte_order: big, frames_per_file: 3}", ""),
+        ("{packing: MIPI RAW10}", "the packing MIPI RAW10 does not hold 12 bit; 16 bit, 12 bit low bits first"),
+        ("{packing: 12 bit, byte_order: big}", "'12 bit' is not allowed here"),
+    ],
+)
+def test_a_layout_must_hold_the_cameras_frames(layout: str, told: str, tmp_path: Path) -> None:
+    """The depth fits into the packing and the width into its groups; colour frames are never headerless."""
+    text = TEXT.replace("processing: none", f"processing: none\n  layout: {layout}")
+    if told:
+        with pytest.raises(SpecError, match=re.escape(told)):
+            read_spec(write(tmp_path, text))
+        return
+    camera = read_spec(write(tmp_path, text)).camera
+    assert camera.layout.file_bytes(1600, 1200) == (3 * 1600 * 1200 * 2 if "16" in layout else (2400 + 8) * 1200)
+    assert from_expanded(read_spec(write(tmp_path, text)).expanded).camera == camera
+    with pytest.raises(SpecError, match="headerless files hold one number a pixel, colour rgb three"):
+        read_spec(write(tmp_path, text.replace("processing: none", "processing: none\n  colour: rgb")))
+    odd = text.replace("1600 x 1200 px", "1601 x 1200 px")
+    if "16 bit" not in layout:
+        with pytest.raises(SpecError, match="rows of 1601 px do not fill whole groups of 2 px"):
+            read_spec(write(tmp_path, odd))
+
+
+def test_a_jpeg_holds_no_mosaic(tmp_path: Path) -> None:
+    """A product that delivers JPEG delivers finished pixels."""
+    text = TEXT.replace("12 bit", "8 bit").replace("4095 DN", "255 DN")
+    text = text.replace("processing: none", "processing: sharpened\n  delivers: jpeg\n  mosaic: RGGB")
+
+    with pytest.raises(SpecError, match="a JPEG holds no mosaic; colour: rgb, or delivers: raw"):
+        read_spec(write(tmp_path, text))
+
+
+def test_a_capture_may_have_a_layout_of_its_own(tmp_path: Path) -> None:
+    """A layout in a capture takes the place of the camera's, whole; mosaic and colour are the camera's."""
+    own = "camera: {layout: {packing: 16 bit, byte_order: little}}, "
+    text = TEXT.replace(
+        "processing: none", "processing: none\n  mosaic: GRBG\n  layout: {packing: 12 bit high bits first}"
+    )
+
+    dark, chart = read_spec(write(tmp_path, text.replace(DARK, DARK + own))).captures
+
+    assert (dark.camera.layout, dark.camera.mosaic) == (Layout("16 bit", "little"), "GRBG")
+    assert chart.camera.layout == Layout("12 bit high bits first")
+    assert chart.camera.channels == ("red", "green", "blue")

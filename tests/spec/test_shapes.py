@@ -5,6 +5,7 @@ from typing import Any
 import pytest
 
 from runner.spec import shapes
+from runner.spec.file_shapes import FramesShape
 from runner.spec.model import COMBINATIONS, RULES
 from runner.spec.shape import Shape
 from runner.spec.tree import Complaints, parse
@@ -29,7 +30,7 @@ def _told(kind: type[Shape], text: str) -> list[str]:
         (shapes.LimitShape, f"{LIMIT} nominal: 3 px, tolerance: [1 px, 2 px]"),
         (shapes.LimitShape, f"{LIMIT} at_most: 3, bound: poisson, beyond_nyquist: true, part: lens, modulation: 50 %"),
         (shapes.DecisionShape, "rule: simple acceptance, conformance_probability: 0.99"),
-        (shapes.FramesShape, "names: 'a-{repeat}-{z}.tif', count: 10"),
+        (FramesShape, "names: 'a-{repeat}-{z}.tif', count: 10"),
         (shapes.ChartShape, "name: a, serial: 007, due: 2027-03-31, transfer: [[0 cy/px, 1], [0.5 cy/px, 0.9]]"),
         (shapes.RegionShape, "on: field, position: {field: 1, azimuth: 0 deg}, size: [10 %, 10 %]"),
         (shapes.ComponentShape, "name: a, of: [b, c], absolute: 3 px, shared: d"),
