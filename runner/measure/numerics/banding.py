@@ -12,7 +12,8 @@ again in noise, and the joint fit takes care of what one line spills over anothe
 Detection. An ordinate of white noise is exponential, so that of m independent ones the highest passes z times their
 mean with probability 1 - (1 - e^-z)^m. Here the mean is not known but taken from the ordinates' median over ln 2; that
 has the scatter of a mean of some d ordinates, which turns e^-z into (1 + z/d)^-d, the law of a ratio of chi-squares.
-For noise that is not white, and shading that is left, the median is no less than those of nearer ordinates. m counts
+For noise that is not white the median is no less than those of nearer ordinates; and for shading that is left no less
+than what is found below the lowest frequency, falling as f⁻⁴, as the power of light with a bend does at least. m counts
 every ordinate looked at; being nearer than a bin they are not independent, so the probability is below what is stated.
 At half the sampling frequency there is one phase only, and the law is that of a chi-square of one degree of freedom.
 
@@ -48,7 +49,7 @@ APART = 1.5
 WIDE = 1 / 16
 """Share of the spectrum, to both sides, that tells the noise at an ordinate."""
 NEAR = 6
-"""Bins to both sides that a line must stand out of: shading that is left does not, it falls off steadily."""
+"""Bins to both sides that a line must stand out of: shading that is left seldom does."""
 
 
 @dataclass(frozen=True)
@@ -192,6 +193,9 @@ def _highest(grid: Real, model: "_Model", passed: list[float]) -> tuple[float, f
     count = model.residual.size
     ordinates, level = _spectrum(grid, model.residual)
     level = np.maximum(level, _medians(ordinates, PADDING * NEAR) / log(2))
+    below = np.arange(PADDING / 2, grid[0] * PADDING * count) / (PADDING * count)
+    if below.size:
+        level = np.maximum(level, np.max(_spectrum(below, model.residual)[0] * below**4) / grid**4)
     z = ordinates / np.maximum(level, np.finfo(float).tiny)
     d = log(2) ** 2 * count / 2  # a median's variance, 1/n, over ln 2 squared: that of the mean of so many
     chances = (1 + z / d) ** -d

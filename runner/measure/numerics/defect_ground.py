@@ -36,6 +36,8 @@ CELL = 16
 """Width of a cell, px."""
 SIDE = 13
 """Width of a pixel's neighbourhood: its median is uncertain by 0.1 of the noise, clusters up to 9 × 9 leave it."""
+COMMON = 0.001
+"""Share of the sampled pixels that must have a value for it to be a code and not a defect."""
 TAIL = 3.5
 """The tail counts what lies so many times the noise away; of normal noise 4.65e-4 do."""
 NORMAL_TAIL = 4.653e-4
@@ -69,13 +71,14 @@ class Ground:
         return points(self.noise, self.y, self.x, y, x)
 
 
-def ground(frame: NDArray[Any], less: NDArray[Any] | None = None, *, block: int = BLOCK) -> Ground:
+def ground(frame: NDArray[Any], less: NDArray[Any] | None = None, *, block: int = BLOCK, step: float = 0.0) -> Ground:
     """Return the local level and noise of a frame.
 
     Args:
         frame: Rows × columns.
         less: Another frame, subtracted; None is nothing.
         block: Width of the blocks, px.
+        step: Step of the codes in the frame's unit, where known; whole numbers have at least 1.
     """
     edges = [_edges(size, block) for size in frame.shape]
     rows, columns = (_sampled(e) for e in edges)
@@ -87,7 +90,8 @@ def ground(frame: NDArray[Any], less: NDArray[Any] | None = None, *, block: int 
     y, x = (e[:-1] / 2 + e[1:] / 2 for e in edges)
     sample -= surface(level, y, x, rows.ravel(), columns.ravel())
     away = _by_blocks(sample.astype(np.float32), rows.shape, columns.shape)
-    step = smallest_step(blocks, float(np.median(np.abs(away[:: max(1, len(away) // 8)]))))
+    known = max(step, 1.0) if frame.dtype.kind in "iu" else step
+    step = smallest_step(blocks, float(np.median(np.abs(away[:: max(1, len(away) // 8)]))), known)
     away += (step * _spread_evenly(away.shape[2])).astype(np.float32)
     np.abs(away, out=away)
     noise = 1.4826 * _smoothed(_median(away))
@@ -190,21 +194,27 @@ def local_medians(frame: NDArray[Any], rows: Places, columns: Places) -> Real:
     return out
 
 
-def smallest_step(values: Real, noise: float) -> float:
-    """Return the smallest distance between two values that is more than rounding, 0 if all are the same.
+def smallest_step(values: Real, noise: float, known: float = 0.0) -> float:
+    """Return the smallest distance between two values that is more than rounding.
+
+    Values that few pixels have may be defects: they only count where there are no others and nothing is known.
 
     Args:
         values: Sampled values.
         noise: Median size of their noise; a hundred-thousandth of it, and of a value 1e-9, is rounding.
+        known: The least that it can be; 0 if not known, and also what is returned if all values are the same.
     """
     few = values.ravel()[:: max(1, values.size // 50_000)]
-    for some in (few, values.ravel()):
-        distinct = np.unique(some)
+    for some, share in ((few, COMMON), (values.ravel(), 0.0)):
+        distinct, counts = np.unique(some, return_counts=True)
+        distinct = distinct[counts >= share * some.size]
         gaps = np.diff(distinct)
-        gaps = gaps[gaps > max(1e-5 * noise, 1e-9 * float(np.abs(distinct).max()))]
+        gaps = gaps[gaps > max(1e-5 * noise, 1e-9 * float(np.abs(some).max()))]
         if gaps.size:
-            return float(gaps.min())
-    return 0.0
+            return max(known, float(gaps.min()))
+        if known > 0 or counts.max() == 1:  # codes are seen more than once
+            break
+    return known
 
 
 def _edges(size: int, width: int) -> Places:

@@ -5,8 +5,8 @@ times the median absolute deviation of the pixels around. For normal noise of P 
 each side, Q the normal's upper tail: at k = 5.6 one in 47 MP on both sides together (one in 94 MP where only high
 ones count). The median of 169 neighbours and the local noise are uncertain themselves, which makes that two to three
 times as many: still fewer than one in 10 MP. What departs by 6 times the noise is found, for the 0.4 times the noise
-between are three standard deviations of the neighbours' median and of the noise together. A pixel planted with 6 times the noise has its
-own noise on top: it is found if the sum departs so far.
+between are three standard deviations of the neighbours' median and of the noise together. A pixel planted with 6 times
+the noise has its own noise on top: it is found if the sum departs so far.
 
 Noise that is not normal: whole codes are spread before their noise is taken (see defect_ground), so a dark frame of a
 noise below one step gets no hot pixels from single steps. Tails heavier than the normal's, such as dark current's or
@@ -40,8 +40,6 @@ MARGIN = 1.0
 """So much less than k, in times the noise, suffices for a pixel to be compared with its own neighbours."""
 DEAD = 0.5
 """A pixel below this share of its neighbours' light is dead (trade: 50 to 80 %)."""
-WHOLE_STEPS = 0.37
-"""Noise, in steps, that spread-out equal codes show: 1.4826/4."""
 PHASES = 16
 """Places between two codes over which the chance of equal codes is averaged."""
 
@@ -115,31 +113,34 @@ def expected_false(k: float, pixels: int, sides: int = 2) -> float:
     return float(sides * pixels * special.ndtr(-k))
 
 
-def hot_pixels(dark: NDArray[Any], k: float = K) -> Pixels:
+def hot_pixels(dark: NDArray[Any], k: float = K, *, step: float = 0.0) -> Pixels:
     """Find pixels of a dark above their neighbours.
 
     Args:
         dark: Mean of dark frames (or one), rows × columns, light or DN; one colour of a mosaic at a time.
         k: Times the local noise, above 2.
+        step: Step of the codes in the frame's unit (1 DN over n for a mean of n frames), where known; whole numbers
+            have at least 1. It only matters where the noise is so low that no step is seen among the sampled pixels.
 
     Raises:
         ValueError: k out of range, or values that are not finite.
     """
-    return _pixels(dark, ground(_checked(dark, k)), None, k, dead=None)
+    return _pixels(dark, ground(_checked(dark, k), step=step), None, k, dead=None)
 
 
-def flat_pixels(flat: NDArray[Any], k: float = K, *, dead: float = DEAD) -> Pixels:
+def flat_pixels(flat: NDArray[Any], k: float = K, *, dead: float = DEAD, step: float = 0.0) -> Pixels:
     """Find dead, dim and bright pixels of a flat field against their neighbours.
 
     Args:
         flat: Mean of flat frames (or one), rows × columns, light or DN over black; one colour at a time.
         k: Times the local noise, above 2.
         dead: Share of the neighbours' light below which a pixel is dead and not only dim.
+        step: As of `hot_pixels`.
 
     Raises:
         ValueError: k out of range, no light, or values that are not finite.
     """
-    of = ground(_checked(flat, k))
+    of = ground(_checked(flat, k), step=step)
     if float(np.median(of.level)) <= 0:
         raise ValueError(f"the flat's median light is {np.median(of.level):g}; light over black is needed")
     return _pixels(flat, of, k, k, dead=dead)
@@ -263,16 +264,8 @@ def _pixels(frame: NDArray[Any], of: Ground, low: float | None, high: float, *, 
 
 
 def _positive(noise: Real, away: Real) -> Real:
-    """Return the noise, at least a millionth of the departure; where there is none, that of the smallest one's step.
-
-    A frame that is the same all over but for a few codes has no noise to be seen; the smallest departure is then one
-    step of its codes as far as can be told.
-    """
-    size = np.abs(away)
-    none = noise <= 0
-    if np.any(none) and np.any(size[none] > 0):
-        noise = np.where(none, WHOLE_STEPS * size[none][size[none] > 0].min(), noise)
-    return np.asarray(np.maximum(noise, np.maximum(1e-6 * size, np.finfo(float).tiny)))
+    """Return the noise, at least a millionth of the departure, so that significance stays finite."""
+    return np.asarray(np.maximum(noise, np.maximum(1e-6 * np.abs(away), np.finfo(float).tiny)))
 
 
 def _defects(

@@ -275,9 +275,10 @@ def _blemish(spot: _Spot, window: float, cell: int, joined: int) -> Blemish:
     pull = contrast * (spot.area / window**2) ** 2  # so much of the window pulls its median
     noise = float(spot.noise[middle].mean()) / max(1.0, sqrt(count) / joined)  # joined cells share their noise
     u = hypot(noise, float(spot.doubt[middle].mean()), pull)
+    corner = 0.5 if joined % 2 else 0.0  # an even number of cells joined has its middle at a cell's corner
     return Blemish(
-        x=cell * (spot.first[1] + x + 0.5),
-        y=cell * (spot.first[0] + y + 0.5),
+        x=cell * (spot.first[1] + x + corner),
+        y=cell * (spot.first[0] + y + corner),
         contrast=spot.sign * contrast,
         contrast_u=u,
         size=cell * size,
