@@ -128,7 +128,7 @@ def to_document(
         "readings": [_reading(reading) for reading in evidence.readings],
         "checks": [_check(check) for check in judgement.checks],
         "curves": [_curve(curve) for curve in evidence.curves],
-        "maps": [asdict(one) for one in evidence.maps],
+        "maps": [_map(one) for one in evidence.maps],
         "spots": [asdict(one) for one in evidence.spots],
         "pictures": [dict(picture) for picture in pictures],
         "methods": methods(plan),
@@ -387,6 +387,11 @@ def _curve_back(data: Mapping[str, Any]) -> Curve:
         data["channel"],
         data["estimator"],
     )
+
+
+def _map(area: Map) -> dict[str, Any]:
+    plain = {"x": list(area.x), "y": list(area.y), "values": [list(row) for row in area.values]}
+    return asdict(area) | plain | {"marks": [list(mark) for mark in area.marks]}
 
 
 def _map_back(data: Mapping[str, Any]) -> Map:

@@ -173,6 +173,27 @@ def edge_picture(fit: Mapping[str, Any], residual: Mapping[str, Any] | None, tit
     return _svg(parts, _WIDE, _HIGH, title)
 
 
+def plain_picture(curve: Mapping[str, Any], title: str) -> str:
+    """Return any curve as it is: a profile, a spectrum of bands.
+
+    Args:
+        curve: A curve of the results.
+        title: Alternative text.
+    """
+    xs, ys = curve["x"], curve["y"]
+    low, high = min(0.0, *ys), max(ys)
+    frame = Frame(
+        (min(xs), max(xs) if max(xs) > min(xs) else min(xs) + 1),
+        (low, high + 0.05 * ((high - low) or 1.0)),
+        (_LEFT + 8, _TOP, _WIDE - _RIGHT, _HIGH - _BOTTOM),
+    )
+    unit = "" if curve["y_in"] in {"1", ""} else f", {curve['y_in']}"
+    parts = _axes(frame, _ticks(*frame.x, 5), _ticks(*frame.y, 4), curve["x_in"], f"{curve['name']}{unit}")
+    points = [frame.at(*p) for p in zip(xs, ys, strict=True)]
+    parts.append(f'<path d="{_path(points)}" {_stroke(LINE, 1.4)} class="curve"/>')
+    return _svg(parts, _WIDE, _HIGH, title)
+
+
 def margin_picture(check: Mapping[str, Any], title: str) -> str:
     """Return value ± U of a check on a scale with its limit and acceptance limit."""
     value, u = float(check["value"]), float(check["u"] or 0.0)

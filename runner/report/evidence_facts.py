@@ -9,6 +9,9 @@ from runner.report import drawing
 MOST_REGIONS = 12
 """Regions whose curves a page shows; those of all others stand in results.json."""
 
+MOST_SPOTS = 40
+"""Defects and the like that a page lists."""
+
 
 @dataclass(frozen=True)
 class PictureFact:
@@ -34,6 +37,58 @@ class CurveFact:
     """Transfer curve as SVG."""
     edge: str
     """Edge fit with its residual as SVG, or empty."""
+
+
+@dataclass(frozen=True)
+class MapFact:
+    """One map."""
+
+    name: str
+    """File name within the page."""
+    title: str
+    """Title."""
+    alt: str
+    """What it shows, for those who do not see it."""
+    png: bytes
+    """The picture."""
+
+
+def map_facts(document: Mapping[str, Any]) -> tuple[tuple[MapFact, ...], int]:
+    """Return the drawn maps, and how many are left out."""
+    from runner.report.map_picture import map_picture  # noqa: PLC0415 - heavy, and most documents have no map
+
+    maps = document.get("maps", [])
+    facts = []
+    for number, area in enumerate(maps[:MOST_REGIONS], 1):
+        title = f"{area['name']}: {_where(area)}"
+        marks = ", ".join(words for _, _, words in area["marks"])
+        alt = f"Map of the {title}" + (f", marked: {marks}" if marks else "")
+        facts.append(MapFact(f"map-{number}.png", title, alt, map_picture(area)))
+    return tuple(facts), len(maps) - len(facts)
+
+
+def plain_curve_facts(document: Mapping[str, Any]) -> tuple[tuple[CurveFact, ...], int]:
+    """Return curves that are no transfer curves and belong to none, and how many are left out."""
+    known = {"mtf", "edge spread", "residual", "line spread"}
+    curves = [c for c in document["curves"] if c["name"] not in known and len(c["x"]) > 1]
+    facts = []
+    for curve in curves[:MOST_REGIONS]:
+        title = f"{curve['name']}: {_where(curve)}"
+        facts.append(CurveFact(title, drawing.plain_picture(curve, title), ""))
+    return tuple(facts), len(curves) - len(facts)
+
+
+def spot_facts(document: Mapping[str, Any]) -> tuple[tuple[tuple[str, str, str, str], ...], int]:
+    """Return spots as rows of kind, place in px, where and words, and how many are left out."""
+    spots = document.get("spots", [])
+    rows = tuple((s["kind"], f"{s['x']:g}, {s['y']:g}", _where(s), s["words"]) for s in spots[:MOST_SPOTS])
+    return rows, len(spots) - len(rows)
+
+
+def _where(one: Mapping[str, Any]) -> str:
+    channel = "" if one["channel"] == "mono" else f" {one['channel']}"
+    attempt = "" if one["attempt"] == 1 else f", attempt {one['attempt']}"
+    return f"{one['region'] or 'whole frame'}{channel} ({one['capture']}{attempt})"
 
 
 def picture_facts(document: Mapping[str, Any]) -> tuple[PictureFact, ...]:

@@ -10,6 +10,7 @@ from hashlib import sha256
 from typing import Any
 
 from runner.judge.lot import margin
+from runner.judge.sentences import joined
 from runner.judge.verdict import CANNOT_DECIDE, CONFORMS, DOES_NOT_CONFORM, NOT_MEASURED, REPORT_ONLY
 from runner.report import drawing
 from runner.report.check_facts import (
@@ -43,7 +44,16 @@ from runner.report.circumstance_facts import (
     uncertainty_fact,
 )
 from runner.report.document import canonical
-from runner.report.evidence_facts import CurveFact, PictureFact, curve_facts, picture_facts
+from runner.report.evidence_facts import (
+    CurveFact,
+    MapFact,
+    PictureFact,
+    curve_facts,
+    map_facts,
+    picture_facts,
+    plain_curve_facts,
+    spot_facts,
+)
 from runner.spec.model import SIMPLE_ACCEPTANCE
 
 WORST = 3
@@ -128,6 +138,16 @@ class Report:
     """Curves per region."""
     curves_left_out: str
     """How many curves are left to results.json, or empty."""
+    more_evidence: str
+    """Title of the section with maps, profiles and spots; empty if there are none."""
+    plain_curves: tuple[CurveFact, ...]
+    """Other curves: profiles, spectra of bands."""
+    maps: tuple[MapFact, ...]
+    """Maps."""
+    spots: tuple[tuple[str, str, str, str], ...]
+    """Kind, place, where, words of each spot."""
+    evidence_left_out: tuple[str, ...]
+    """How many of these are left to results.json, a sentence each."""
     conditions: tuple[TableFact, ...]
     """Conditions per capture."""
     station: tuple[Pair, ...]
@@ -158,6 +178,9 @@ def report_facts(document: Document) -> Report:
     kept, left_out = _kept(checks)
     reasons = reason_texts(document["reasons"])
     curves, more_curves = curve_facts(document)
+    (plain, more_plain), (maps, more_maps) = plain_curve_facts(document), map_facts(document)
+    spots, more_spots = spot_facts(document)
+    left = ((more_plain, "profiles"), (more_maps, "maps"), (more_spots, "spots"))
     return Report(
         title=f"Test report {unit['serial']}",
         identity=f"{asked['number']}-{asked['revision']} / {unit['serial']} / {digest[:12]}",
@@ -184,6 +207,11 @@ def report_facts(document: Document) -> Report:
         pictures=picture_facts(document),
         curves=curves,
         curves_left_out=_more(more_curves, "curves", "results.json"),
+        more_evidence="Evidence: " + joined(shown) if (shown := _named(maps, plain, spots)) else "",
+        plain_curves=plain,
+        maps=maps,
+        spots=spots,
+        evidence_left_out=tuple(_more(number, what, "results.json") for number, what in left if number),
         conditions=_conditions(document),
         station=station_fact(document),
         captures=tuple(capture_fact(c) for c in document["captures"]),
@@ -219,6 +247,11 @@ def _margins(checks: Sequence[Mapping[str, Any]]) -> tuple[MarginFact, ...]:
         text = f"{value_text(check)}; limit {limit_text(check)}"
         rows.append(MarginFact(title, text, drawing.margin_picture(check, f"{title}: {text}")))
     return tuple(rows)
+
+
+def _named(maps: Sequence[object], profiles: Sequence[object], spots: Sequence[object]) -> list[str]:
+    kinds = (("maps", maps), ("profiles", profiles), ("spots", spots))
+    return [words for words, there in kinds if there]
 
 
 def _more(number: int, what: str, where: str) -> str:

@@ -8,7 +8,7 @@ from typing import Any
 
 from markupsafe import Markup
 
-from runner.report.facts import report_facts
+from runner.report.facts import Report, report_facts
 from runner.report.paper_drawing import from_the_left
 from runner.resources import folder
 
@@ -23,15 +23,17 @@ def html_page(document: Mapping[str, Any], pictures: Mapping[str, bytes]) -> str
         document: The results.
         pictures: PNG by name.
     """
+    facts = report_facts(document)
+    shown = dict(pictures) | {area.name: area.png for area in facts.maps}
 
     def place(name: str) -> str:
-        return "data:image/png;base64," + base64.b64encode(pictures[name]).decode()
+        return "data:image/png;base64," + base64.b64encode(shown[name]).decode()
 
-    return _render("screen", document, place=place, drawing=inline)
+    return _render("screen", facts, document, place=place, drawing=inline)
 
 
 def paper_page(document: Mapping[str, Any]) -> tuple[str, dict[str, bytes]]:
-    """Return the page that is printed, and its drawings by address; pictures and fonts are named, not contained.
+    """Return the page that is printed, and its drawings and maps by address; pictures and fonts are only named.
 
     Drawings stand in files of their own on paper: as part of the page their every stroke would be styled like text,
     which takes a third of the printing time.
@@ -39,7 +41,8 @@ def paper_page(document: Mapping[str, Any]) -> tuple[str, dict[str, bytes]]:
     Args:
         document: The results.
     """
-    drawings: dict[str, bytes] = {}
+    facts = report_facts(document)
+    drawings = {f"report:/pictures/{area.name}": area.png for area in facts.maps}
 
     def drawing(svg: str) -> str:
         data = from_the_left(svg).encode()
@@ -50,7 +53,7 @@ def paper_page(document: Mapping[str, Any]) -> tuple[str, dict[str, bytes]]:
         words = re.search(r'aria-label="([^"]*)"', svg)
         return Markup(f'<img src="{address}" alt="{words[1] if words else ""}">')  # noqa: S704 - words are escaped
 
-    return _render("paper", document, place=lambda name: f"report:/pictures/{name}", drawing=drawing), drawings
+    return _render("paper", facts, document, place=lambda name: f"report:/pictures/{name}", drawing=drawing), drawings
 
 
 def inline(svg: str) -> str:
@@ -87,7 +90,7 @@ def environment() -> Any:
     return templates
 
 
-def _render(kind: str, document: Mapping[str, Any], **more: Any) -> str:
+def _render(kind: str, facts: Report, document: Mapping[str, Any], **more: Any) -> str:
     style = (folder("templates") / EDITION / f"{kind}.css").read_text(encoding="utf-8")
     template = environment().get_template(f"{kind}.html")
-    return str(template.render(r=report_facts(document), style=style, created=document["time"], **more))
+    return str(template.render(r=facts, style=style, created=document["time"], **more))

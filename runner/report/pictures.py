@@ -47,7 +47,7 @@ def overview(codes: Codes, camera: Camera, regions: Sequence[Mapping[str, Any]])
     draw = ImageDraw.Draw(picture)
     for number, region in enumerate(regions, 1):
         _draw_region(draw, region, number, larger / block, picture.size)
-    return _png(picture)
+    return png(picture)
 
 
 def _averaged(codes: Codes, block: int) -> Codes:
@@ -101,7 +101,8 @@ def _balloon(draw: "ImageDraw.ImageDraw", x: float, y: float, number: int) -> No
     draw.text((x, y), str(number), fill=SHADOW, font=font, anchor="mm")
 
 
-def _png(picture: "Image.Image") -> bytes:
+def png(picture: "Image.Image") -> bytes:
+    """Return an RGB picture as PNG with a palette of its own; the same picture gives the same bytes."""
     from PIL import Image  # noqa: PLC0415 - heavy
 
     small = picture.quantize(160, method=Image.Quantize.MEDIANCUT, dither=Image.Dither.NONE)

@@ -2,7 +2,14 @@
 
 from typing import Any
 
-from runner.report.evidence_facts import MOST_REGIONS, curve_facts, picture_facts
+from runner.report.evidence_facts import (
+    MOST_REGIONS,
+    curve_facts,
+    map_facts,
+    picture_facts,
+    plain_curve_facts,
+    spot_facts,
+)
 from tests.report import printed_world as world
 
 
@@ -100,3 +107,40 @@ def test_a_curve_without_edge_fit_stands_alone() -> None:
     facts, _ = curve_facts(_with_curves(world.curves_of("centre")[:1]))
 
     assert [fact.edge for fact in facts] == [""]
+
+
+def _area(**more: Any) -> dict[str, Any]:
+    known = {"region": "patch", "channel": "green", "capture": "stripes", "attempt": 1, "name": "spectrum"}
+    drawn = {"x": [-0.5, 0.5], "y": [-0.5, 0.5], "values": [[0, 1], [2, 3]], "axes_in": "cy/px", "values_in": "dB"}
+    return known | drawn | {"marks": [[0.0, 0.0, "DC"]]} | more
+
+
+def test_maps_are_drawn_and_the_rest_is_counted() -> None:
+    """Twelve maps are drawn, named by region, channel and capture, with their marks in words; others are counted."""
+    facts, left = map_facts({"maps": [_area()] * 14})
+
+    assert (len(facts), left) == (12, 2)
+    assert facts[0].title == "spectrum: patch green (stripes)"
+    assert facts[0].alt == "Map of the spectrum: patch green (stripes), marked: DC"
+    assert facts[0].png.startswith(b"\x89PNG")
+    assert map_facts({}) == ((), 0)
+
+
+def test_other_curves_are_drawn_as_they_are() -> None:
+    """A profile belongs to no transfer curve and is drawn alone; edge spreads and residuals are not repeated."""
+    curve = {"region": "", "channel": "mono", "capture": "flat", "attempt": 2, "x": [0, 1], "y": [1, 3], "u": []}
+    curves = [curve | {"name": name, "x_in": "period", "y_in": "DN"} for name in ("stripe profile", "residual", "mtf")]
+    facts, left = plain_curve_facts({"curves": curves})
+
+    assert [f.title for f in facts] == ["stripe profile: whole frame (flat, attempt 2)"]
+    assert "stripe profile, DN" in facts[0].transfer
+    assert left == 0
+
+
+def test_spots_are_rows() -> None:
+    """Each spot says what it is, where in px, in which capture, and how far it departs; forty are listed."""
+    spot = {"kind": "hot pixel", "x": 12.0, "y": 3.5, "words": "9 times the noise"} | {"region": "", "channel": "mono"}
+    rows, left = spot_facts({"spots": [spot | {"capture": "dark", "attempt": 1}] * 41})
+
+    assert rows[0] == ("hot pixel", "12, 3.5", "whole frame (dark)", "9 times the noise")
+    assert (len(rows), left) == (40, 1)
