@@ -48,6 +48,7 @@ BY_CAUSE: Mapping[str, Blame] = {
     "uneven": Blame(AT_FAULT_CANNOT_TELL, f"uneven light and a shading unit look alike; {SETTLE}"),
     "too noisy": Blame(AT_FAULT_CANNOT_TELL, f"too little light and a noisy unit look alike; {SETTLE}"),
     "missing companion": Blame(AT_FAULT_CAPTURE, "a companion capture that it needs cannot be used"),
+    "too few frames": Blame(AT_FAULT_CAPTURE, "the quantity needs more frames of the same scene than were captured"),
     "another scene": Blame(AT_FAULT_CAPTURE, "the region holds something else: chart or region is misplaced"),
     "not defined": Blame(AT_FAULT_CANNOT_TELL, f"the curve does not have this property; {SETTLE}"),
     "fault": Blame(AT_FAULT_PROGRAM, "the program failed; keep the frames and tell whoever maintains it"),

@@ -22,6 +22,7 @@ CAUSES: Mapping[str, str] = {
     "uneven": "illumination varies too much over the region",
     "too noisy": "the noise is too large against the step",
     "missing companion": "a companion capture is missing or unusable",
+    "too few frames": "the capture holds fewer frames than the quantity needs",
     "another scene": "the region holds something else than the target",
     "not defined": "the quantity does not exist for this region's curve",
     "fault": "the program failed",

@@ -19,7 +19,8 @@ def locate_uniform(frame: Frame, regions: Sequence[Region], camera: Camera, *, l
         frame: Rows × columns.
         regions: Wished regions.
         camera: Black and white level.
-        lit: The field must carry light.
+        lit: The field must carry light. Methods are told so by `geometry`, `lit` 1 or 0: what drifts from frame to
+            frame is then a lamp, a factor, or else the dark level, an offset.
     """
     rows, columns = frame.shape
     level = (float(frame.codes.mean()) - camera.black_level) / (camera.white_level - camera.black_level)
@@ -45,4 +46,5 @@ def _offer(name: str, box: Box, level: float, *, lit: bool) -> Found | NotFound:
         )
         return NotFound(name, box, "too dark", sentence)
     corners = ((box.x0, box.y0), (box.x1, box.y0), (box.x1, box.y1), (box.x0, box.y1))
-    return Found(name, box, frozenset({"uniform"}), outline=tuple((float(x), float(y)) for x, y in corners))
+    outline = tuple((float(x), float(y)) for x, y in corners)
+    return Found(name, box, frozenset({"uniform"}), {"lit": 1.0 if lit else 0.0}, outline)

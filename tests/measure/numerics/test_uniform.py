@@ -49,3 +49,11 @@ def test_a_flat_without_light_is_too_dark() -> None:
     assert isinstance(flat, NotFound)
     assert flat.cause == "too dark"
     assert isinstance(dark, Found)
+
+
+def test_methods_are_told_whether_the_field_is_lit() -> None:
+    """What drifts in a flat is a factor on its light, in a dark an offset: the target says which it is."""
+    for lit in (True, False):
+        (found,) = locate_uniform(_frame(2000), (), CAMERA, lit=lit)
+        assert isinstance(found, Found)
+        assert found.geometry == {"lit": float(lit)}
