@@ -3,6 +3,9 @@
 import numpy as np
 import pytest
 
+from runner.measure.numerics.edge_curves import Curves
+from runner.measure.numerics.edge_fit import fit_edge
+from runner.measure.numerics.edge_readouts import crossing
 from runner.measure.numerics.iso12233 import derivative_correction, estimate
 from runner.measure.numerics.pupils import pixel_mtf
 from tests.scenes.edges import EdgeScene
@@ -65,6 +68,26 @@ def test_noiseless_chain(direction: float, sigma: float, most: float) -> None:
     one = estimate(scene.signal())
     low = one.frequency <= 0.5
     assert np.abs(one.modulation - scene.mtf(one.frequency))[low].max() < most
+
+
+@pytest.mark.parametrize(
+    ("sigma", "mtf50", "mtf10", "at_nyquist"),
+    [(0.5, 0.32309, 0.58128, 0.18539), (0.7, 0.24711, 0.44859, 0.05672), (1.0, 0.17996, 0.32766, 0.00458)],
+)
+def test_gaussian_with_a_square_pixel(sigma: float, mtf50: float, mtf10: float, at_nyquist: float) -> None:
+    """CV-15: exp(-2π²σ²f²) sinc f, read back from rendered edges by the program's own estimator (closed form).
+
+    The table is for an upright edge; at 2° from it the pixel's sides differ by 6e-4, far below 0.2 % and 1e-3.
+    """
+    scene = EdgeScene(Gaussian(sigma), (80, 120), 2.0)
+    curves = Curves(fit_edge(scene.signal() / 65535))
+    read = [crossing(curves, share, 1.0) for share in (0.5, 0.1)]
+
+    assert read[0] is not None
+    assert read[0].value == pytest.approx(mtf50, rel=2e-3)
+    assert read[1] is not None
+    assert read[1].value == pytest.approx(mtf10, rel=5e-3)
+    assert curves.modulus_at(0.5).value == pytest.approx(at_nyquist, abs=1e-3)
 
 
 def test_leaving_out_the_angle() -> None:
