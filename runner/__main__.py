@@ -2,11 +2,13 @@
 
 import sys
 
+from runner import threads
 from runner.exits import Exit
 
 
 def main() -> None:
     """Run the command line and end with one of the exit codes of `runner.exits`."""
+    threads.one_each()
     try:
         from runner import cli  # noqa: PLC0415 - a broken installation must exit 70 as well
 

@@ -4,18 +4,16 @@
 written into its own report.
 """
 
-import os
 import traceback
 from collections.abc import Callable, Iterator, Mapping, Sequence
-from concurrent.futures import ProcessPoolExecutor
 from dataclasses import dataclass, field, replace
 from datetime import UTC, datetime
 from hashlib import sha256
-from multiprocessing import get_context
 from pathlib import Path
 from typing import Any
 
 import runner
+from runner import threads
 from runner.capture import integrity
 from runner.capture.frame import Frame
 from runner.capture.lot import AttemptFolder, Lot, UnitFolder, find_lot
@@ -31,10 +29,6 @@ from runner.report.document import RunFacts, to_document
 from runner.spec.build import read_spec
 from runner.spec.model import Spec, Station
 from runner.spec.station import read_station
-
-ONE_THREAD = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "NUMEXPR_NUM_THREADS")
-"""Set to 1 before numpy is imported: results must not depend on how many cores a machine has."""
-
 
 RUN_AGAIN = "make room, or bring the folder back, and run again; finished units are kept"
 """What to do when results cannot be written."""
@@ -133,6 +127,8 @@ def run(order: Order, announce: Announce = lambda _result, _done, _all: None) ->
         UsageError: Spec, station, folders or key cannot be used; nothing is judged then.
         ShelfError: A target or method module cannot be used.
     """
+    if order.jobs > 1:
+        processes.warm_up()
     plan, facts = read(order)
     lot, survey = gather(order, plan)
     job = Job(replace(order, time=facts.time), plan, facts, survey)
@@ -174,7 +170,7 @@ def accept_units(job: Job, units: Sequence[UnitFolder], announce: Announce) -> I
         results: Iterator[UnitResult] = (accept_unit(job, unit) for unit in units)
         yield from _announced(results, len(units), announce)
         return
-    _one_thread_each()
+    threads.one_each()
     with ProcessPoolExecutor(
         job.order.jobs, get_context("spawn"), _start_worker, (job.order, job.plan.spec, job.facts, job.survey)
     ) as pool:
@@ -264,11 +260,6 @@ def _stamp(time: str | None) -> str:
     if moment.tzinfo is None:
         raise UsageError(f"'{time}' says no time zone", where="--time", allowed="ISO 8601 with Z or an offset")
     return moment.astimezone(UTC).replace(microsecond=0).isoformat().replace("+00:00", "Z")
-
-
-def _one_thread_each() -> None:
-    for name in ONE_THREAD:
-        os.environ[name] = "1"
 
 
 _worker: list[Job] = []
