@@ -50,7 +50,9 @@ class Shading:
     def frame(self) -> Values:
         """Return the light at pixel centres, rows × columns."""
         w, h = self.size
-        return self.at(np.arange(w)[None, :] + 0.5, np.arange(h)[:, None] + 0.5)
+        x: Values = np.arange(w, dtype=np.float64) + 0.5
+        y: Values = np.arange(h, dtype=np.float64) + 0.5
+        return self.at(x[None, :], y[:, None])
 
     def mean(self, x0: float, x1: float, y0: float, y1: float) -> float:
         """Return the mean over a rectangle by Gauss-Legendre quadrature of the closed form, 16 × 16 points."""

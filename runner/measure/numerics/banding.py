@@ -209,9 +209,14 @@ def _highest(grid: Real, model: "_Model", passed: list[float]) -> tuple[float, f
 
 @dataclass(frozen=True)
 class _Model:
+    """Shading and lines fitted together."""
+
     frequencies: list[float]
+    """Of the lines, cy/px."""
     amplitudes: list[float]
+    """Of the lines."""
     residual: Real
+    """What is left of the profile."""
 
 
 def _fit(values: Real, order: int, start: list[float]) -> _Model:

@@ -163,11 +163,13 @@ def unsteady_pixels(frames: Frames, k: float = K, *, gain_drift: bool = False) -
     """
     if len(frames) < 2 or len({f.shape for f in frames}) > 1:
         raise ValueError(f"{len(frames)} frames of sizes {sorted({f.shape for f in frames})}; 2 of one size are needed")
-    _checked(frames[-1], k)
+    _checked(frames[0][:1], k)
     levels = np.array([np.mean(f, dtype=np.float64) for f in frames])
+    if not np.all(np.isfinite(levels)):
+        raise ValueError("the frames hold values that are not finite numbers")
     factors = levels.mean() / levels if gain_drift else np.ones(levels.size)
     variance, n = _variances(frames, factors, levels * factors), len(frames)
-    one = ground(_checked(frames[0], k), frames[1])
+    one = ground(frames[0], frames[1])
     spread = Ground(one.y, one.x, np.zeros_like(one.level), one.noise**2 / 2, one.tail, one.step)
     limit = float(special.chdtri(n - 1, 2 * special.ndtr(-k))) / (n - 1)
     rows, columns = outstanding(variance, spread, None, limit)
@@ -239,7 +241,7 @@ def _checked(frame: NDArray[Any], k: float) -> NDArray[Any]:
         raise ValueError(f"k is {k:g}; above 2 is allowed, else noise alone makes most of the defects")
     if frame.ndim != 2 or frame.size == 0:
         raise ValueError(f"the frame has the shape {frame.shape}; rows × columns are needed")
-    if not np.isfinite(np.sum(frame, dtype=np.float64)):
+    if not np.isfinite(frame.sum()):
         raise ValueError("the frame holds values that are not finite numbers")
     return frame
 

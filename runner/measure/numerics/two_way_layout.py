@@ -104,7 +104,9 @@ class Layout:
         return (self.rows, 1 / n), (self.columns, 1 / m), (self.rest, 1 - 1 / m - 1 / n)
 
 
-def add_up(frames: Frames, factors: Real, offsets: Real, order: int) -> Sums:
+def add_up(
+    frames: Frames, factors: Real, offsets: Real, order: int, *, keep: NDArray[np.float32] | None = None
+) -> Sums:
     """Walk over factor · frame - offset.
 
     Args:
@@ -112,6 +114,7 @@ def add_up(frames: Frames, factors: Real, offsets: Real, order: int) -> Sums:
         factors: One for each frame.
         offsets: One for each frame, such that each frame's mean comes out as zero.
         order: Highest power of y and of x among the polynomials; less than the rows and columns.
+        keep: Rows × columns to be filled with the mean frame; None keeps none.
     """
     count, (m, n) = len(frames), frames[0].shape
     along_y, along_x, ones = _polynomials(m, order), _polynomials(n, order), np.ones(n)
@@ -131,6 +134,8 @@ def add_up(frames: Frames, factors: Real, offsets: Real, order: int) -> Sums:
             mean += pieces[k, :high]
         mean /= count
         power += float(np.vdot(mean, mean))
+        if keep is not None:
+            keep[strip] = mean
         shading += along_y[strip].T @ mean
         mean_rows[strip] = mean @ ones / n
         for k in range(apart):

@@ -52,7 +52,7 @@ def test_false_alarms_are_fewer_than_allowed(count: int, allowed: float) -> None
     The law is a bound, for ordinates a quarter of a bin apart are not independent: at least a tenth must remain.
     """
     rng = np.random.default_rng(count)
-    draws = 400
+    draws = 300
     alarms = np.mean([bool(banding(rng.normal(0, 1, count), most=1, false_alarms=allowed).lines) for _ in range(draws)])
 
     assert alarms <= allowed + 3 * np.sqrt(allowed * (1 - allowed) / draws)
@@ -61,13 +61,13 @@ def test_false_alarms_are_fewer_than_allowed(count: int, allowed: float) -> None
 
 @pytest.mark.parametrize("amplitude", [0.0, 0.25, 0.35, 0.5, 2.0])
 def test_the_uncertainty_holds(amplitude: float) -> None:
-    """±2 u, or the bound where no line is told, holds amplitude and frequency in 93 to 97 % of 400 draws (± 2.2 %).
+    """±2 u, or the bound where no line is told, holds amplitude and frequency in 93 to 97 % of 300 draws (± 2.5 %).
 
     Noise 1 in 240 values: u is 0.091, lines are told from some 0.4 on. Where bounds take part only 93 % is asked.
     """
     rng = np.random.default_rng(int(100 * amplitude))
     held, placed, scores = [], [], []
-    for _ in range(400):
+    for _ in range(300):
         frequency = rng.uniform(0.04, 0.47)
         profile = wave(240, frequency, amplitude, rng.uniform(0, 6)) + rng.normal(0, 1, 240)
         found = banding(profile + 5 + 3 * np.linspace(-1, 1, 240) ** 3)
@@ -79,10 +79,10 @@ def test_the_uncertainty_holds(amplitude: float) -> None:
         held.append(abs(scores[-1]) <= 2)
         placed.append(abs(line.frequency - frequency) <= 2 * line.frequency_u)
 
-    assert np.mean(held) >= 0.93 - 0.022
-    if len(scores) == 400:
-        assert np.mean(held) <= 0.97 + 0.022
-        assert 0.93 - 0.022 <= np.mean(placed) <= 0.97 + 0.022
+    assert np.mean(held) >= 0.93 - 0.025
+    if len(scores) == 300:
+        assert np.mean(held) <= 0.97 + 0.025
+        assert 0.93 - 0.025 <= np.mean(placed) <= 0.97 + 0.025
         assert 0.8 < np.std(scores) < 1.25
 
 

@@ -71,7 +71,7 @@ def _edge(contrast: float, least: float, radius: float) -> float:
     [(10.0, -0.05, 0.02, 12.0), (8.0, 0.06, 0.02, 10.0), (16.0, -0.03, 0.01, 12.0)],
 )
 def test_blemishes_and_their_uncertainty(radius: float, contrast: float, least: float, size: float) -> None:
-    """Planted round spots are found alone, anywhere; ±2 u holds contrast and size in 93 % or more of 40 draws (- 8 %).
+    """Planted round spots are found alone, anywhere; ±2 u holds contrast and size in 93 % or more of 25 draws (- 10 %).
 
     Size: side of the square of the area in which the closed form departs by the least contrast.
     """
@@ -79,7 +79,7 @@ def test_blemishes_and_their_uncertainty(radius: float, contrast: float, least: 
     light = LENS.frame()
     true_size = np.sqrt(np.pi) * _edge(contrast, least, radius)
     held = []
-    for _ in range(40):
+    for _ in range(25):
         at = (rng.uniform(40, 600), rng.uniform(40, 440))
         found = blemishes(light * spot(SIZE, at, radius, contrast) + rng.normal(0, 0.006, light.shape), least, size)
         assert len(found.spots) == 1
@@ -87,7 +87,7 @@ def test_blemishes_and_their_uncertainty(radius: float, contrast: float, least: 
         assert np.hypot(one.x - at[0], one.y - at[1]) < 1.5
         held.append([abs(one.contrast - contrast) <= 2 * one.contrast_u, abs(one.size - true_size) <= 2 * one.size_u])
 
-    assert np.all(np.mean(held, axis=0) >= 0.93 - 0.08)
+    assert np.all(np.mean(held, axis=0) >= 0.93 - 0.1)
 
 
 def test_what_is_below_contrast_or_size_is_none() -> None:

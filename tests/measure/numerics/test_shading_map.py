@@ -89,7 +89,7 @@ def test_the_largest_of_many_equal_blocks_is_not_too_large() -> None:
     ids=["pair, shot noise", "single", "four"],
 )
 def test_the_uncertainty_holds(scene: Shading, count: int, shot: bool) -> None:
-    """±2 u holds the closed form for map, corners, centre, extremes and ratios: 93 to 97 % of 300 draws (± 2.5 %).
+    """±2 u holds the closed form for map, corners, centre, extremes and ratios: 93 to 97 % of 200 draws (± 3 %).
 
     Extremes of blocks nearly alike only need 93 %: what their bias may be is counted in full.
     """
@@ -99,7 +99,7 @@ def test_the_uncertainty_holds(scene: Shading, count: int, shot: bool) -> None:
     held: dict[str, list[float]] = {}
     truth = 0.5 * _blocks(scene, shading_map([light], (9, 11)))
     top, low, middle = truth.max(), truth.min(), truth[4, 5]
-    for _ in range(300):
+    for _ in range(200):
         found = shading_map([light + noise * rng.standard_normal(light.shape) for _ in range(count)], (9, 11))
         relative, u = found.to_centre
         others = u > 0  # the centre itself is 1, exactly
@@ -116,9 +116,9 @@ def test_the_uncertainty_holds(scene: Shading, count: int, shot: bool) -> None:
             held.setdefault(name, []).append(float(abs(figure.value - value) <= 2 * figure.u))
 
     for name, inside in held.items():
-        assert np.mean(inside) >= 0.93 - 0.025, name
+        assert np.mean(inside) >= 0.93 - 0.03, name
     for name in ("map", "centre", "corner"):
-        assert np.mean(held[name]) <= 0.97 + 0.025, name
+        assert np.mean(held[name]) <= 0.97 + 0.03, name
 
 
 def test_rows_that_move_together_raise_u() -> None:

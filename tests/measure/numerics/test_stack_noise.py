@@ -171,6 +171,10 @@ def test_codes_and_light_alike() -> None:
     np.testing.assert_array_equal(codes, kept)
     np.testing.assert_allclose(one.row_means.mean(axis=0), np.mean(codes, axis=(0, 2)) - 64, atol=1e-9)
     np.testing.assert_allclose(mean_frame(codes), np.mean(codes, axis=0), rtol=1e-6)
+    kept_mean = stack_noise(codes, black=64, keep_mean=True).mean
+    assert kept_mean is not None
+    np.testing.assert_allclose(kept_mean, np.mean(codes, axis=0) - 64, rtol=1e-6)
+    assert one.mean is None
 
 
 @pytest.mark.parametrize(
