@@ -6,7 +6,7 @@ on each side of the edge; so none of them is mistaken for an edge.
 """
 
 from dataclasses import dataclass
-from math import cos, hypot, pi, sin
+from math import cos, hypot, pi, sin, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
@@ -18,6 +18,10 @@ Array = NDArray[np.float64]
 
 MEAN = 5
 """Side of the square over which gradients are smoothed, px."""
+LARGE = 48
+"""Shorter side, px, from which on every third mean is enough."""
+LEAST_MEANS = 12
+"""Means on either side that a plane is fitted to."""
 STRONG = 0.25
 """Gradients of this share of the strong ones' power vote for the direction."""
 LEAST_MODULATION = 0.02
@@ -277,8 +281,10 @@ def confirm_edge(signal: Array, trace: EdgeTrace) -> EdgeLevels:
     Raises:
         MeasurementRefused: `no edge`, `no modulation` or `two edges`, with the figures.
     """
-    means = ndimage.uniform_filter(signal, MEAN, mode="nearest")[2:-2:3, 2:-2:3]
-    distance = trace.distance((signal.shape[0], signal.shape[1]))[2:-2:3, 2:-2:3]
+    pace = 3 if min(signal.shape) >= LARGE else 2  # small regions are short of means to tell a plateau by
+    taken = slice(2, -2, pace)
+    means = ndimage.uniform_filter(signal, MEAN, mode="nearest")[taken, taken]
+    distance = trace.distance((signal.shape[0], signal.shape[1]))[taken, taken]
     y, x = np.meshgrid(*(np.linspace(-1, 1, n) for n in means.shape), indexing="ij")
     plane = np.stack([np.ones(means.size), x.ravel(), y.ravel()], axis=1)
     values, where = means.ravel(), distance.ravel()
@@ -286,7 +292,14 @@ def confirm_edge(signal: Array, trace: EdgeTrace) -> EdgeLevels:
     extent = 2 * float(np.quantile(np.abs(where), 0.9))
     guard = min(1.2 * trace.width + 3, LEAST_REACH * extent)
     sides = [where < -guard, where > guard]
-    if guard < LEAST_GUARD * trace.width or min(np.count_nonzero(side) for side in sides) < 12:
+    fewest = min(np.count_nonzero(side) for side in sides)
+    if guard >= LEAST_GUARD * trace.width and fewest < LEAST_MEANS:
+        raise MeasurementRefused(
+            "no edge",
+            f"the region reaches {extent / 2:.0f} px to either side of its middle, and the edge, {trace.width:.0f} px "
+            f"wide, lies {abs(trace.offset):.0f} px off it: one side is left too small to tell its level",
+        )
+    if guard < LEAST_GUARD * trace.width:
         raise MeasurementRefused(
             "no edge",
             f"the strongest transition takes {trace.width:.0f} px of the region's {extent:.0f} px across it; "
@@ -297,8 +310,11 @@ def confirm_edge(signal: Array, trace: EdgeTrace) -> EdgeLevels:
     low, high = (float(np.mean(plane[foot] @ terms)) for terms in fits)
     residual = np.concatenate([values[side] - plane[side] @ terms for side, terms in zip(sides, fits, strict=True)])
     # mixed differences of means that share no pixel: edges and planes cancel, noise stays
-    mixed = means[2:, 2:] - means[2:, :-2] - means[:-2, 2:] + means[:-2, :-2]
+    lag = -(-MEAN // pace)
+    mixed = means[lag:, lag:] - means[lag:, :-lag] - means[:-lag, lag:] + means[:-lag, :-lag]
     scatter = 1.4826 / 2 * float(np.median(np.abs(mixed)))
+    # in a small region most of these straddle the edge; what the planes leave beside it is noise and more
+    scatter = min(scatter, 1.4826 * float(np.median(np.abs(residual))) * sqrt(residual.size / (residual.size - 6)))
     levels = EdgeLevels(low, high, scatter)
     _refuse_weak(levels, spread, trace, signal)
     strange = float(np.mean(np.abs(residual) > max(STRANGE_LEVEL * (high - low), 4 * scatter)))
