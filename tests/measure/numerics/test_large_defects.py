@@ -106,16 +106,16 @@ def test_what_is_below_contrast_or_size_is_none() -> None:
 
 @pytest.mark.parametrize(
     "scene",
-    [Shading((1000, 750), angle=38, axis=(30.0, 15.0)), Shading((1000, 750), angle=20, vignette=0.6)],
-    ids=["cos⁴ to 0.3", "rim"],
+    [Shading((1000, 750), angle=40, axis=(33.0, 12.0)), Shading((1000, 750), angle=25, vignette=0.9)],
+    ids=["cos⁴ to 0.3", "rim to 0.4"],
 )
 def test_a_lens_makes_no_blemish(scene: Shading) -> None:
     """The fall-off of a lens, steep or with a rim, is background down to 0.5 % of it, in the corners too."""
     rng = np.random.default_rng(5)
     light = scene.frame()
-    frame = light + 0.003 * np.sqrt(light) * rng.standard_normal(light.shape)
+    frame = light + 0.002 * np.sqrt(light) * rng.standard_normal(light.shape)
 
-    for contrast, size in ((0.015, 6), (0.005, 20), (0.005, 40)):
+    for contrast, size in ((0.005, 6), (0.005, 10), (0.005, 40)):
         assert blemishes(frame, contrast, size).spots == ()
 
 

@@ -69,11 +69,11 @@ def test_the_forms_of_offset_and_centring() -> None:
     ids=["even", "slope", "ridge", "bowl", "in the corner"],
 )
 def test_where_there_is_no_top_none_is_given(scene: Shading) -> None:
-    """No top inside the frame, or none that noise lets be told: None and no number."""
+    """No top inside the frame, or none that noise lets be told: None and no number, in 60 draws of noise."""
     rng = np.random.default_rng(1)
-    light = _light(scene) + rng.normal(0, 1e-3, (11, 11))
+    found = [_peak(_light(scene) + rng.normal(0, 1e-3, (11, 11)), 1e-3) for _ in range(60)]
 
-    assert _peak(light, 1e-3) is None
+    assert found == [None] * 60
 
 
 def test_a_skewed_field_says_so() -> None:
