@@ -13,7 +13,7 @@ from pathlib import Path
 from typing import Any
 
 import runner
-from runner import threads
+from runner import processes
 from runner.capture import integrity
 from runner.capture.frame import Frame
 from runner.capture.lot import AttemptFolder, Lot, UnitFolder, find_lot
@@ -170,10 +170,8 @@ def accept_units(job: Job, units: Sequence[UnitFolder], announce: Announce) -> I
         results: Iterator[UnitResult] = (accept_unit(job, unit) for unit in units)
         yield from _announced(results, len(units), announce)
         return
-    threads.one_each()
-    with ProcessPoolExecutor(
-        job.order.jobs, get_context("spawn"), _start_worker, (job.order, job.plan.spec, job.facts, job.survey)
-    ) as pool:
+    arguments = (job.order, job.plan.spec, job.facts, job.survey)
+    with processes.pool(min(job.order.jobs, len(units)), _start_worker, *arguments) as pool:
         yield from _announced(pool.map(_accept_in_worker, units), len(units), announce)
 
 
