@@ -9,7 +9,15 @@ import importlib
 from runner.errors import ProbatumError
 from runner.measure import shelf
 
-NEEDED = ("runner.acceptance", "runner.report.unit_files", "weasyprint", "pyhanko.sign.signers", "PIL.ImageFont")
+NEEDED = (
+    "runner.acceptance",
+    "runner.report.pictures",
+    "runner.report.unit_files",
+    "weasyprint",
+    "pyhanko.sign.signers",
+    "jinja2",
+    "PIL.ImageFont",
+)
 """Modules that a unit's measurement and report load in the end."""
 
 for _name in NEEDED:
