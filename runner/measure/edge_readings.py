@@ -27,6 +27,8 @@ ESTIMATOR = "joint fit"
 METHOD = "joint fit of edge and line spread; frequencies along the edge's normal as in ISO 12233:2014"
 LEAST_DIVISOR = 0.1
 """Below, dividing by pixel and chart would multiply every error by ten."""
+TOLD_MISFIT = 1.2
+"""Factor on the noise variance from which a reader is told; u holds smaller ones just as well."""
 CURVE_POINTS = 65
 """Points of the stored transfer function."""
 
@@ -248,7 +250,7 @@ def _remarks(edge: Edge) -> tuple[str, ...]:
         remarks.append(f"defect pixels left out: {fit.left_out}")
     if fit.together is not None:
         remarks.append(f"noise goes together between pixels: {fit.together.whole:.2g} times the variance in means")
-    elif fit.excess > 1:
+    elif fit.excess > TOLD_MISFIT:
         remarks.append(f"noise variance raised {fit.excess:.2g} times for misfit")
     return tuple(remarks)
 

@@ -35,7 +35,7 @@ LEAST_REACH = 1.2
 MOST_EXTRAPOLATED = 0.08
 """Share of the fitted step that may lie outside the levels seen; the widest tails reach 2 % in small regions."""
 MOST_UNEVEN = 0.01
-"""Rms of 8 × 8 px means beside the edge as a share of the step: 1 % left in costs about 1 % of MTF50."""
+"""Rms of a structure beside the edge as a share of the step: 1 % left in costs about 1 % of MTF50."""
 MOST_SHADED = 0.01
 """Relative change of MTF50 that a free shading would bring, if light certainly changes along the edge: more is to be
 measured, not guessed."""
@@ -118,9 +118,9 @@ def check(curves: Curves, *, shading_known: bool) -> tuple[float, Straightness]:
             next_step="turn the chart by a few degrees",
         )
     most = band(fit)
+    _check_alone(curves)
     _check_noise(curves)
     _check_levels(curves)
-    _check_alone(curves)
     straight = straightness(fit)
     _check_plateaus(curves)
     half = crossing(curves, 0.5, most)
@@ -174,16 +174,19 @@ def strange_share(curves: Curves) -> float:
 
 
 def unevenness(curves: Curves) -> tuple[float, bool]:
-    """Return the rms of 8 × 8 px means on the plateaus about the fit, noise taken off, and whether it is certain."""
-    squares, counts, seen = _squares(curves, 8)
-    number = int(seen.sum())
-    if number < 4:
+    """Return the rms of a smooth structure beside the edge, and whether it is certain.
+
+    Neighbouring 8 × 8 px means share a structure, not their noise; so the mean product of neighbours is the
+    structure's mean square, however the noise goes together within a few pixels.
+    """
+    squares, _, seen = _squares(curves, 8)
+    squares = np.where(seen, squares, 0.0)
+    pairs = int(np.sum(seen[1:] & seen[:-1])) + int(np.sum(seen[:, 1:] & seen[:, :-1]))
+    if pairs < 4:
         return 0.0, False
-    # neighbouring squares share what correlates their pixels
-    noise = (curves.fit.noise.low + curves.fit.noise.high) / 2 * curves.fit.of_means / float(counts[seen].mean())
-    mean = float(np.mean(squares[seen] ** 2))
-    freedom = number / max(1.0, curves.fit.of_means / 4)
-    return float(np.sqrt(max(0.0, mean - noise))), mean > noise * (1 + CERTAIN * float(np.sqrt(2 / freedom)))
+    together = float(np.sum(squares[1:] * squares[:-1]) + np.sum(squares[:, 1:] * squares[:, :-1])) / pairs
+    chance = float(np.sum(squares**2)) / int(seen.sum()) / np.sqrt(pairs)
+    return float(np.sqrt(max(0.0, together))), together > CERTAIN * chance
 
 
 def _squares(curves: Curves, side: int) -> tuple[Array, Array, NDArray[np.bool_]]:
@@ -219,7 +222,7 @@ def _check_plateaus(curves: Curves) -> None:
     if certain and rms > MOST_UNEVEN * curves.rise:
         raise MeasurementRefused(
             "uneven",
-            f"the levels beside the edge vary by {100 * rms / curves.rise:.1f} % of the step (rms of 8 × 8 px means)",
+            f"the levels beside the edge vary by {100 * rms / curves.rise:.1f} % of the step (rms)",
             allowed=f"at most {100 * MOST_UNEVEN:g} %",
             next_step="set 'shading: {from: ROLE}' with a flat frame, or 'shading: fitted', or clean the chart",
         )

@@ -56,14 +56,15 @@ class Correlation:
         return np.asarray(self.lags @ np.array([np.sin(normal), np.cos(normal)]))
 
 
-def correlation(linear: Linear, pixels: Pixels) -> Correlation | None:
+def correlation(linear: Linear, pixels: Pixels, raised: float) -> Correlation | None:
     """Return how pixels' noise goes together, or None where chance explains it.
 
     Args:
-        linear: A linearisation about the fit; its weights may be off by a common factor.
+        linear: A linearisation about the fit.
         pixels: The region.
+        raised: Factor by which the variances behind its weights exceed the noise of single pixels.
     """
-    scaled = linear.residual * np.sqrt(linear.weights[linear.index])
+    scaled = linear.residual * np.sqrt(raised * linear.weights[linear.index])
     scaled = scaled - scaled.mean()
     power = float(np.mean(scaled * scaled))
     if not power > LEAST_POWER:

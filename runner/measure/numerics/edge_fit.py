@@ -24,7 +24,7 @@ from runner.errors import MeasurementRefused
 from runner.measure.numerics import edge_model as em
 from runner.measure.numerics.edge_correlation import Correlation, correlated_information, correlation
 from runner.measure.numerics.edge_geometry import find_edge
-from runner.measure.numerics.edge_model import Linear, Noise, Parts, Pixels, Residuals
+from runner.measure.numerics.edge_model import Linear, Noise, Parts, Pixels
 from runner.measure.numerics.edge_noise import defects, misfit, noise_of
 from runner.measure.numerics.line_spread import Array, Lattice, lattice_for
 
@@ -254,11 +254,14 @@ def _joint_fit(
             parts = replace(parts, line=parts.line.turned())
         pixels.place(parts.line)
         if turn == 1:
-            found = em.residuals(pixels, parts, lattice, parts.line.sides(aperture))
-            left_out = _fill_defects(pixels, found, floor)
-        if turn == 2:
-            together = correlation(linear, pixels)
+            lost = defects(em.residuals(pixels, parts, lattice, parts.line.sides(aperture)), pixels, floor)
+            left_out = int(lost.sum())
+            if left_out:
+                pixels.drop(lost, parts.line)
+                noise = noise_of(em.residuals(pixels, parts, lattice, parts.line.sides(aperture)), floor)
+                continue
         if turn > 1:
+            together = correlation(linear, pixels, excess)
             least = 1.0 if together is None else together.within_band(parts.line.normal)
             before, excess = excess, max(least, excess * misfit(linear, solved.freedom))
             if float(np.abs(slide).max()) < 1e-3 and abs(excess / before - 1) < 0.05:
@@ -298,14 +301,6 @@ def _unshaded(parts: Parts, free: _Solved, head: int, *, fitted: bool) -> tuple[
         return np.zeros(parts.shape.size), (parts.shade, u)
     moved = [free.change[[em.STEP, em.WIDENING, em.SHIFT, em.TAIL]], free.change[head:] - parts.kernels]
     return np.concatenate(moved), (free.change[at], u)
-
-
-def _fill_defects(pixels: Pixels, found: Residuals, floor: float) -> int:
-    """Give defect pixels the fitted value, so that they neither pull the fit nor count as noise."""
-    places = defects(found, floor)
-    pixels.signal = pixels.signal.copy()
-    pixels.signal[places] -= found.residual[places]
-    return int(places.size)
 
 
 def _kernel_sizes(lattice: Lattice, width: float, rise: float) -> Array:

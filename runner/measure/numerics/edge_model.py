@@ -7,7 +7,7 @@ biases nothing.
 """
 
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.polynomial import legendre
@@ -109,10 +109,16 @@ class Pixels:
         order = line.coefficients.size - 1
         self.polynomials = [np.ones_like(t), t, *(legendre.legvander(t, order).T[2:] if order > 1 else ())]
 
-    def taken(self, values: Array) -> Array:
+    def drop(self, lost: NDArray[np.bool_], line: EdgeLine) -> None:
+        """Leave some of these pixels out from now on."""
+        kept = np.arange(self.shape[0] * self.shape[1]) if self.kept is None else self.kept
+        self.kept, self.signal = kept[~lost], self.signal[~lost]
+        self.place(line)
+
+    def taken(self, values: NDArray[Any]) -> NDArray[Any]:
         """Return the values of these pixels out of all of the region's (rows × columns, or flat)."""
         flat = np.ravel(values)
-        return flat if self.kept is None else flat[self.kept]
+        return flat if self.kept is None else np.asarray(flat[self.kept])
 
     def picture(self, values: Array) -> Array:
         """Return these pixels' values in their places, rows × columns, 0 elsewhere."""

@@ -4,7 +4,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from runner.errors import MeasurementRefused
-from runner.measure.numerics.edge_model import Linear, Noise, Residuals
+from runner.measure.numerics.edge_model import Linear, Noise, Pixels, Residuals
 
 SIDES = (0.3, 0.7)
 """Edge spread below and above which a pixel counts for the dark and the bright level."""
@@ -14,6 +14,8 @@ CERTAIN = 3.0
 """Standard deviations from which correlation is no longer chance."""
 DEFECT = 6.0
 """Robust standard deviations from which a pixel is a defect: chance makes one in 10^9."""
+MOST_OF_A_LINE, MOST_LINES = 0.5, 2
+"""Share of a row's or column's pixels that make it a defect line, and how many of them a region may have."""
 MOST_DEFECTS = 0.005
 """Share of defects from which they are structure and stay in."""
 
@@ -59,11 +61,14 @@ def misfit(linear: Linear, freedom: float) -> float:
     return ratio if abs(ratio - 1) > CERTAIN * np.sqrt(2 / dof) else 1.0
 
 
-def defects(found: Residuals, floor: float) -> NDArray[np.intp]:
-    """Return the places of defect pixels: few, and far outside the noise of their own side of the edge.
+def defects(found: Residuals, pixels: Pixels, floor: float) -> NDArray[np.bool_]:
+    """Tell which pixels are defects: few, and far outside the noise of their own side of the edge.
+
+    A row or column most of whose pixels are defects is one as a whole: where the edge crosses it, its value fits.
 
     Args:
         found: The model against all pixels.
+        pixels: The region.
         floor: Least standard deviation of a pixel, fraction of range.
     """
     spread = found.spread[found.index]
@@ -73,5 +78,16 @@ def defects(found: Residuals, floor: float) -> NDArray[np.intp]:
         sd[k] = max(floor, float(np.quantile(np.abs(found.residual[side]), 0.9)) / 1.645 if side.any() else 0.0)
     limit = DEFECT * np.maximum(sd[0] + (sd[1] - sd[0]) * np.clip(spread, 0, 1), sd.max() / 4)
     # where the signal is steep, a residual may be the fit's
-    places = np.flatnonzero(np.abs(found.residual) > limit)
-    return places if places.size <= MOST_DEFECTS * found.residual.size else np.zeros(0, dtype=np.intp)
+    bad = np.asarray(np.abs(found.residual) > limit)
+    if not bad.any():
+        return bad
+    where = pixels.picture(bad.astype(np.float64))
+    counts = pixels.picture(np.ones(bad.size))
+    lines = np.zeros(pixels.shape, dtype=bool)
+    for axis in (0, 1):
+        whole = where.sum(axis=axis) > MOST_OF_A_LINE * counts.sum(axis=axis)
+        if 0 < np.count_nonzero(whole) <= MOST_LINES:
+            lines |= np.expand_dims(whole, axis)
+    lost = pixels.taken(lines)
+    few = np.count_nonzero(bad & ~lost) <= MOST_DEFECTS * bad.size
+    return np.asarray(bad | lost if few else np.zeros_like(bad))
