@@ -159,8 +159,10 @@ def _plain_fit(pixels: Pixels, parts: Parts, reach: float, aperture: float) -> P
         matrix = linear.matrix[np.ix_(use, use)]
         matrix = matrix + np.diag(1e-9 * np.diag(matrix) + 1e-12)
         solved = linalg.solve(matrix, linear.right[use], assume_a="pos")
-        move = {k: float(v) for k, v in zip(use, solved, strict=True)}
+        # half steps end a swing between two places that samples far apart leave open
+        move = {k: float(v) / (1 + (turn > ROUNDS // 3)) for k, v in zip(use, solved, strict=True)}
         wider = float(np.clip(move[em.WIDENING] / parts.step, -0.5, 0.5))
+        wider = max(wider, float(np.log(LEAST_SIGMA / parts.sigma)))
         slide = np.array([move[k] for k in place])
         slide *= min(1.0, 3 * parts.sigma / max(float(np.abs(slide).sum()), 1e-9))
         line = replace(parts.line, coefficients=parts.line.coefficients + slide)
@@ -169,7 +171,7 @@ def _plain_fit(pixels: Pixels, parts: Parts, reach: float, aperture: float) -> P
             line=line.turned() if order == 1 else line,
             low=parts.low + move[em.LEVEL],
             step=parts.step + move[em.STEP],
-            sigma=max(LEAST_SIGMA, parts.sigma * float(np.exp(wider))),
+            sigma=parts.sigma * float(np.exp(wider)),
             tail=parts.tail + move.get(em.TAIL, 0.0),
         )
         lost = abs(float(line.coefficients[0])) > reach or float(np.abs(line.coefficients[1:]).sum()) > reach
