@@ -55,7 +55,7 @@ def test_a_known_flat_leaves_the_edge_as_it_was() -> None:
 
 
 def test_coefficients_scatter_as_stated() -> None:
-    """Over 200 noisy flats every term scatters by its stated deviation (known to 5 %: five times that), four repeats halve it."""
+    """Over 200 noisy flats every term scatters as stated (known to 5 %: five times that), four repeats halve it."""
     rng = np.random.default_rng(4)
     truth = SCENE.field() / SCENE.field().mean()
     terms = smooth_flat([flat()]).terms
