@@ -1,0 +1,148 @@
+"""Readings of a fitted edge: a value with the parts of its u, a bound, or the reason why there is none."""
+
+from dataclasses import replace
+from math import sqrt
+
+import numpy as np
+import pytest
+
+from runner.capture.frame import Box
+from runner.measure import edge_readings
+from runner.measure.contract import Found, Sample, Wanted
+from runner.measure.edge_readings import Edge
+from runner.measure.numerics.edge_checks import check
+from runner.measure.numerics.edge_curves import Curves
+from runner.measure.numerics.edge_fit import fit_edge
+from runner.measure.reading import CAUSES, Reading
+from runner.spec.model import Chart, Optics
+from tests.measure.edge_samples import at, camera_of, cropped
+from tests.scenes.edges import EdgeScene
+from tests.scenes.line_spreads import Gaussian, Pupil
+
+SCENE = EdgeScene(Gaussian(0.6), (60, 80), 5.0, read_noise=300)
+CHART = Chart("walnut bench chart", transfer=((0.0, 1.0), (0.1, 0.99), (0.3, 0.91), (0.5, 0.80)), transfer_u=0.01)
+
+
+def edge_of(scene: EdgeScene, chart: Chart | None = None, *, shading: str = "none", seed: int | None = 5) -> Edge:
+    """Return the fitted edge of one capture of a scene, without flat and rounding."""
+    camera = camera_of(scene)
+    crop = cropped(scene.render(None if seed is None else np.random.default_rng(seed)), camera)
+    box = Box(0, 0, *scene.size)
+    sample = Sample(Found("left", box, frozenset({"edge"})), crop, camera, Optics(), chart or Chart(), ())
+    fit = fit_edge(crop.signal, shading=shading, aperture=sqrt(scene.fill))
+    curves = Curves(fit)
+    band, straight = check(curves, shading_known=fit.shading)
+    return Edge(sample, curves, band, straight, None, np.zeros((0, fit.covariance.shape[0])))
+
+
+def wanted(name: str, frequency: float = 0.2, part: str = "system") -> Wanted:
+    """Return a wish, at a frequency where the quantity needs one."""
+    info = edge_readings.quantity(name)
+    assert info is not None
+    return replace(at(name, frequency) if info.parameters else Wanted(name, {}, {}), part=part)
+
+
+def refused(reading: Reading, cause: str) -> str:
+    """Return the reason of a reading without value, and see that nothing else stands in it."""
+    assert reading.refusal is not None
+    assert (reading.value, reading.u, reading.bound, reading.components) == (None, None, None, ())
+    assert reading.refusal.cause == cause
+    assert cause in CAUSES
+    return reading.refusal.because
+
+
+@pytest.mark.parametrize("shading", ["none", "fitted"])
+def test_every_listed_quantity_is_read(shading: str) -> None:
+    """Each listed quantity has a value in its unit with a u made of its named parts, some of it noise that averages."""
+    edge = edge_of(SCENE, shading=shading)
+    names = set()
+    for name in edge_readings.quantities():
+        reading = edge_readings.read(edge, wanted(name))
+        info = edge_readings.quantity(name)
+        assert info is not None
+        assert (reading.measured_in, reading.quantity, reading.region) == (info.unit, name, "left")
+        assert info.sentence.endswith(".")
+        assert reading.value is not None, name
+        assert reading.u is not None
+        assert reading.u == pytest.approx(sqrt(sum(part.u**2 for part in reading.components)), rel=1e-12)
+        assert reading.u > 0
+        assert "noise" in {part.name for part in reading.components}
+        names |= {part.name for part in reading.components}
+    assert {"noise", "method bias"} <= names <= {"noise", "method bias", "shading"}
+    assert ("shading" in names) or shading == "none"
+
+
+def test_names_that_are_none() -> None:
+    """Levels run from mtf1 to mtf99; anything else is no quantity, and each listed one has unit and sentence."""
+    for name in ("mtf0", "mtf05", "mtf100", "mtf-5", "mtf5.5", "MTF50", "mtf50 ", "lsf", ""):
+        assert edge_readings.quantity(name) is None, name
+    for level in (1, 9, 10, 99):
+        info = edge_readings.quantity(f"mtf{level}")
+        assert info is not None
+        assert info.unit == "cy/px"
+        assert f" {level} %" in info.sentence
+    assert set(edge_readings.STANDARD) <= set(edge_readings.quantities())
+
+
+def test_a_crossing_beyond_the_band_is_a_bound() -> None:
+    """Where |H| stays above 10 % up to the band's end, mtf10 is `above` that end; mtf50 of that edge is a value.
+
+    Half a pixel's side and a Gaussian of 0.15 px pass sinc(1/2) · exp(-2π² 0.15²) = 0.41 at 1 cy/px.
+    """
+    scene = EdgeScene(Gaussian(0.15), (80, 120), 7.0, fill=0.25)
+    edge = edge_of(scene, seed=None)
+    reading = edge_readings.read(edge, wanted("mtf10"))
+    assert reading.bound == ("above", edge.band)
+    assert (reading.value, reading.u, reading.refusal) == (None, None, None)
+    assert reading.flags == (f"no crossing up to {edge.band:.3f} cy/px",)
+    assert edge_readings.read(edge, wanted("mtf50")).value == pytest.approx(scene.mtf50(), rel=0.01)
+
+
+def test_no_value_without_a_reason() -> None:
+    """Frequencies outside band, chart or what can be divided, phases of nothing and lens widths are refused."""
+    edge = edge_of(SCENE, CHART)
+    outside = (edge_readings.read(edge, wanted("mtf", f)) for f in (-0.1, edge.band + 0.01))
+    for reading in outside:
+        assert "beyond" in refused(reading, "undersampled")
+    beyond_chart = edge_readings.read(edge, wanted("mtf", 0.6, "lens"))
+    assert "up to 0.5 cy/px only, not at 0.600" in refused(beyond_chart, "not defined")
+    assert edge_readings.read(edge, wanted("mtf", 0.5, "lens")).value is not None
+    blind = edge_readings.read(edge_of(SCENE), wanted("mtf", 0.97, "lens"))
+    assert "pixel and chart together pass 0.0" in refused(blind, "not defined")
+    assert "for the lens alone" in refused(edge_readings.read(edge, wanted("edge_width", part="lens")), "not defined")
+    phase = edge_readings.read(edge_of(EdgeScene(Pupil(0.3))), wanted("phase_transfer", 0.45))
+    assert "is not told from chance" in refused(phase, "not defined")
+
+
+def test_a_chart_error_moves_the_lens_as_its_component_states() -> None:
+    """A chart stated 0.01 (its u) higher moves mtf and mtf50 of the lens by their chart component, within a tenth."""
+    high = replace(CHART, transfer=((0.0, 1.0), *((f, m + 0.01) for f, m in CHART.transfer[1:])))
+    one = edge_of(SCENE, CHART)
+    other = replace(one, sample=replace(one.sample, chart=high))
+    for wish in (wanted("mtf50", part="lens"), wanted("mtf", 0.3, "lens")):
+        first, second = (edge_readings.read(edge, wish) for edge in (one, other))
+        (chart,) = (part for part in first.components if part.name == "chart")
+        assert first.value is not None
+        assert second.value is not None
+        assert chart.u == pytest.approx(first.value - second.value, rel=0.1)
+        assert (chart.type, chart.shared, chart.averages) == ("B", "chart", False)
+
+
+def test_curves_agree_with_the_readings() -> None:
+    """The stored transfer function passes through the readings, its u within theirs; data scatter as noise does."""
+    edge = edge_of(SCENE)
+    curves = {curve.name: curve for curve in edge_readings.curves_of(edge)}
+    assert set(curves) == {"mtf", "edge spread", "edge spread data", "residual", "line spread"}
+    mtf = curves["mtf"]
+    assert (mtf.x[0], mtf.x[-1]) == (0.0, edge.band)
+    assert mtf.y[0] == pytest.approx(1, abs=1e-9)
+    for k in (10, 20, 30):
+        reading = edge_readings.read(edge, wanted("mtf", mtf.x[k]))
+        assert reading.value == pytest.approx(mtf.y[k], abs=1e-9)
+        assert reading.u is not None
+        assert 0 < mtf.u[k] <= 1.001 * reading.u
+    data, spread = curves["edge spread data"], curves["edge spread"]
+    noise = 300 / 32000 / sqrt(10)  # 80 rows meet a bin of an eighth of a pixel ten times
+    assert np.abs(np.interp(data.x, spread.x, spread.y) - data.y).max() < 0.02
+    assert 0.5 * noise < np.std(curves["residual"].y) / 100 < 2 * noise
+    assert all(curve.region == "left" and curve.estimator == "joint fit" for curve in curves.values())
