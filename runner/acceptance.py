@@ -243,7 +243,7 @@ def conclude(job: Job, lot: Lot, results: tuple[UnitResult, ...]) -> Outcome:
     serials = {r.serial for r in results}
 
     def documents() -> Iterator[dict[str, Any]]:
-        return (d for d in store.all_results(job.order.out, job.plan.spec.digest) if d["unit"]["serial"] in serials)
+        return (d for d in store.each_result(job.order.out, job.plan.spec.digest) if d["unit"]["serial"] in serials)
 
     return Outcome(results, lot_data, documents, lot.unused, most_serious([r.exit for r in results]))
 

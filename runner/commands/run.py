@@ -158,13 +158,17 @@ def _print_json(result: "UnitResult", done: int, total: int) -> None:
 
 
 def _write_tables(outcome: "Outcome", junit: Path | None, summary: Path | None, undecided: str) -> None:
+    if junit is None and summary is None:
+        return
     from runner.report import store, tables  # noqa: PLC0415 - heavy
 
+    told = ("document", "unit", "time", "verdict", "at_fault", "because", "reasons", "next", "checks")
+    documents = [{key: document[key] for key in told} for document in outcome.documents()]
     try:
         if junit is not None:
-            store.write_whole(junit, tables.junit_xml(list(outcome.documents()), undecided=undecided))
+            store.write_whole(junit, tables.junit_xml(documents, undecided=undecided))
         if summary is not None:
-            store.write_whole(summary, tables.markdown_summary(outcome.lot, list(outcome.documents())).encode())
+            store.write_whole(summary, tables.markdown_summary(outcome.lot, documents).encode())
     except OSError as error:
         where = str(error.filename or junit or summary)
         raise UsageError(f"it cannot be written: {error.strerror}", where=where) from error

@@ -26,7 +26,9 @@ def write_lot_files(out: Path, spec: Spec, facts: RunFacts, unused: tuple[str, .
         facts: What the run states.
         unused: Files and folders that no pattern used.
     """
-    documents = store.all_results(out, spec.digest)
+    known: dict[str, str] = {}
+    parts = (_needed(document, known) for document in store.each_result(out, spec.digest))
+    documents = sorted(parts, key=lambda d: str(d["unit"]["serial"]))
     document = {"number": spec.document.number, "revision": spec.document.revision, "digest": spec.digest}
     lot: dict[str, Any] = dict(judge_lot(documents)) | {
         "format": "probatum-lot/1",
@@ -52,8 +54,28 @@ def _json(data: Mapping[str, Any]) -> bytes:
 
 
 _COLUMNS = ("capture", "attempt", "region", "channel", "quantity", "parameters", "part", "estimator", "value", "u")
+_OF_UNIT = ("document", "unit", "time", "simulated", "verdict", "at_fault", "because", "reasons", "next")
+_LEFT_OUT = ("steps", "parameters")
+"""What of a check no file of the lot tells."""
+
+
+def _needed(document: Mapping[str, Any], known: dict[str, str]) -> dict[str, Any]:
+    """Return what the lot's files tell of a unit, without the rest: a large lot must fit into memory.
+
+    Args:
+        document: The unit's results.
+        known: Texts of units before; units say mostly the same, and each text is kept once.
+    """
+
+    def kept(value: Any) -> Any:
+        return known.setdefault(value, value) if isinstance(value, str) else value
+
+    needed = {key: document[key] for key in _OF_UNIT}
+    needed["checks"] = [{k: kept(v) for k, v in c.items() if k not in _LEFT_OUT} for c in document["checks"]]
+    needed["values"] = [[kept(reading[column]) for column in _COLUMNS] for reading in document["readings"]]
+    return needed
 
 
 def _values(document: Mapping[str, Any], documents: list[dict[str, Any]]) -> dict[str, Any]:
-    units = {d["unit"]["serial"]: [[reading[c] for c in _COLUMNS] for reading in d["readings"]] for d in documents}
+    units = {d["unit"]["serial"]: d["values"] for d in documents}
     return {"format": "probatum-values/1", "document": document, "columns": list(_COLUMNS), "units": units}

@@ -135,14 +135,12 @@ def is_complete(folder: Path, document: Mapping[str, Any]) -> bool:
     return all((folder / name).is_file() for name in names)
 
 
-def all_results(out: Path, digest: str) -> list[dict[str, Any]]:
-    """Return the results of every unit of one spec in a run's folder, by serial."""
-    found = []
+def each_result(out: Path, digest: str) -> Iterator[dict[str, Any]]:
+    """Yield the results of every unit of one spec in a run's folder, in the order of its folders, one at a time."""
     for folder in sorted(p for p in out.iterdir() if p.is_dir() and not p.name.startswith(".")):
         document = read_results(folder)
         if document is not None and document.get("document", {}).get("digest") == digest:
-            found.append(document)
-    return sorted(found, key=lambda d: str(d["unit"]["serial"]))
+            yield document
 
 
 @contextlib.contextmanager

@@ -128,5 +128,5 @@ def test_results_of_another_spec_do_not_enter_the_lot(tmp_path: Path) -> None:
     """A lot is rebuilt from all results of one spec and of no other."""
     store.write_unit(tmp_path, "S1", _unit("2026-12-01T09:01:00Z"))
 
-    assert [d["unit"]["serial"] for d in store.all_results(tmp_path, "sha256:1")] == ["S1"]
-    assert store.all_results(tmp_path, "sha256:2") == []
+    assert [d["unit"]["serial"] for d in store.each_result(tmp_path, "sha256:1")] == ["S1"]
+    assert list(store.each_result(tmp_path, "sha256:2")) == []
