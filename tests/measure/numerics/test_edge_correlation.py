@@ -80,6 +80,9 @@ def test_power_in_the_band_is_the_spectrums_mean(degrees: float) -> None:
     normal, f = float(np.radians(degrees)), (np.arange(2000) + 0.5) / 4000
 
     assert exact.whole == pytest.approx(9)
+    row = Correlation(np.array([(0, i) for i in (-2, -1, 1, 2)]), np.array([1, 2, 2, 1]) / 3)
+    power = (1 + 2 * np.cos(2 * np.pi * f * np.cos(normal))) ** 2 / 3  # a box of three pixels side by side in a row
+    assert row.within_band(normal) == pytest.approx(float(power.mean()), rel=1e-6)
     assert exact.within_band(normal) == pytest.approx(float(_box_power(f, normal).mean()), rel=1e-6)
 
 

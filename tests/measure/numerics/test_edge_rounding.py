@@ -83,12 +83,12 @@ def test_deviations_are_the_scatter_over_phases() -> None:
         fit = _fit(100, 0.1, (float(dark), float(bright)), seed=k)
         at = fit.shape_index
         levels = np.array([fit.parts.low, fit.parts.low + fit.parts.rise]) * CODES
-        missed.append(levels - np.array([200 + dark, 300 + bright]))
+        missed.append([*(levels - [200 + dark, 300 + bright]), fit.parts.rise * CODES - (100 + bright - dark)])
         moved = rounding(fit, (1 / CODES, 1 / CODES)) * CODES
         low, rise = moved[:, em.LEVEL], moved[:, at] @ np.concatenate([em.AREAS, np.ones(at.size - 4)])
-        stated.append([np.sum(low**2), np.sum((low + rise) ** 2)])
+        stated.append([np.sum(low**2), np.sum((low + rise) ** 2), np.sum(rise**2)])
 
     scatter, u = np.sqrt(np.mean(np.square(missed), axis=0)), np.sqrt(np.mean(stated, axis=0))
-    assert scatter == pytest.approx(np.full(2, level_error(0.1)), rel=0.1)
+    assert scatter == pytest.approx(level_error(0.1) * np.sqrt([1, 1, 2]), rel=0.1)
     assert np.all(u > 0.9 * scatter)
-    assert np.all(u < 1.1 * 0.29)
+    assert np.all(u < 1.1 * 0.29 * np.sqrt([1, 1, 2]))
