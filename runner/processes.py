@@ -5,12 +5,14 @@ is then there at once and shares the loaded libraries' memory.
 """
 
 import os
+import threading
 from collections.abc import Callable
 from concurrent.futures import ProcessPoolExecutor
-from multiprocessing import forkserver, get_all_start_methods, get_context
+from multiprocessing import connection, forkserver, get_all_start_methods, get_context, parent_process
 from typing import Any
 
 from runner import threads
+from runner.exits import Exit
 
 _HOW = "forkserver" if "forkserver" in get_all_start_methods() else "spawn"
 _LOADED = "runner.worker"
@@ -49,6 +51,15 @@ def pool(jobs: int, prepare: Callable[..., None], *arguments: Any) -> ProcessPoo
 
 
 def _begin(environment: dict[str, str], prepare: Callable[..., None], *arguments: Any) -> None:
+    threading.Thread(target=_end_with_the_run, daemon=True).start()
     os.environ.clear()  # that of the process which loaded the program may be older than this run
     os.environ.update(environment)
     prepare(*arguments)
+
+
+def _end_with_the_run() -> None:
+    """Wait until the process that gives the work is gone, then end: else a killed run leaves its workers for ever."""
+    run = parent_process()
+    if run is not None:
+        connection.wait([run.sentinel])
+        os._exit(int(Exit.INTERRUPTED))

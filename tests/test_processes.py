@@ -1,8 +1,11 @@
 """Worker processes: loaded once, in the present environment, with one numeric thread, and from the right folder."""
 
+import contextlib
 import os
 import subprocess
 import sys
+import time
+from collections.abc import Callable
 from pathlib import Path
 
 import pytest
@@ -77,3 +80,45 @@ def test_what_goes_wrong_while_a_worker_is_prepared_is_told() -> None:
     """A worker that cannot be prepared breaks the pool at once; nobody waits for it."""
     with processes.pool(1, _raise, "no such thing") as pool, pytest.raises(Exception, match="terminated abruptly"):
         pool.submit(os.getpid).result(timeout=120)
+
+
+def test_workers_end_with_a_run_that_is_killed(tmp_path: Path) -> None:
+    """Whoever kills the run's own process alone leaves no worker behind."""
+    script = tmp_path / "script.py"
+    script.write_text(
+        "import os, time\n"
+        "from runner import processes\n"
+        "if __name__ == '__main__':\n"
+        "    with processes.pool(2, os.getpid) as pool:\n"
+        "        waits = [pool.submit(time.sleep, 600) for _ in range(3)]\n"
+        "        print('at work', flush=True)\n"
+        "        time.sleep(600)\n"
+    )
+    environment = os.environ | {"PYTHONPATH": str(ROOT)}
+    with subprocess.Popen(
+        [sys.executable, str(script)], env=environment, stdout=subprocess.PIPE, start_new_session=True
+    ) as run:
+        assert run.stdout is not None
+        run.stdout.readline()
+        _until(lambda: len(_of_session(run.pid)) >= 4)  # the run, the process that loads, two workers
+        run.kill()
+        run.wait()
+        _until(lambda: not _of_session(run.pid))
+
+
+def _until(reached: Callable[[], bool]) -> None:
+    end = time.monotonic() + 60
+    while not reached():
+        assert time.monotonic() < end, "it takes too long"
+        time.sleep(0.1)
+
+
+def _of_session(leader: int) -> list[int]:
+    """Return the processes of a session that are still at work (Linux)."""
+    found = []
+    for stat in Path("/proc").glob("[0-9]*/stat"):
+        with contextlib.suppress(OSError):
+            fields = stat.read_text().rpartition(")")[2].split()
+            if int(fields[3]) == leader and fields[0] != "Z":
+                found.append(int(stat.parent.name))
+    return found
