@@ -9,7 +9,6 @@ import platform
 import time
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
-from pathlib import Path
 
 
 @dataclass(frozen=True)
@@ -62,16 +61,6 @@ def machine() -> str:
         f"{platform.system()} {platform.machine()}, Python {platform.python_version()}, {cores} cores; "
         f"load of the last minute {load:.1f}; 10⁶ steps of a plain loop: {1000 * pace:.0f} ms"
     )
-
-
-def peak_mb(pid: int) -> float | None:
-    """Return the most memory a living process has held so far, MB, or None if it is gone (Linux)."""
-    try:
-        text = Path(f"/proc/{pid}/status").read_text(encoding="ascii")
-    except OSError:
-        return None
-    found = [line.split()[1] for line in text.splitlines() if line.startswith("VmHWM:")]
-    return int(found[0]) / 1024 if found else None
 
 
 def _figure(value: float, unit: str) -> str:

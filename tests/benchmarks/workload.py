@@ -1,4 +1,4 @@
-"""What the benchmarks measure on: one large frame with many slanted edges, and a spec that asks for all of them."""
+"""What the benchmarks measure on: large frames with many slanted edges, lots of small ones, and their specs."""
 
 from pathlib import Path
 
@@ -88,3 +88,50 @@ def lay_out_pictures(folder: Path) -> Path:
         scene = EdgeScene(Gaussian(0.5 + 0.02 * n), size=(1000, 750), direction=5, read_noise=150)
         tifffile.imwrite(unit / f"chart{n}-1.tif", scene.render(rng))
     return spec
+
+
+LOT = """\
+probatum-spec: 1
+document: {number: BENCH-L, revision: A, title: "Benchmark of a lot"}
+unit: {product: BENCH, serial: 'L-[0-9]{4}'}
+camera: {frame_size: 640 x 480 px, bit_depth: 12 bit, black_level: 64 DN, white_level: 4095 DN}
+captures:
+  dark: {target: dark frame, frames: {names: 'dark-{repeat}.tif', count: 2}}
+  chart:
+    target: slanted edge
+    frames: {names: 'chart-{repeat}.tif', count: 2}
+    uses: {dark: dark}
+    regions:
+      edges: {grid: {columns: 2, rows: 2, from: [25 %, 25 %], to: [75 %, 75 %]}, size: [80 px, 120 px]}
+    limits:
+      - {characteristic: 1, quantity: mtf50, where: edges, at_least: 0.15 cy/px}
+      - {characteristic: 2, quantity: mtf, frequency: 0.25 cy/px, where: edges, at_least: 0.2}
+      - {characteristic: 3, quantity: overshoot, where: edges, at_most: 10 %}
+"""
+
+
+def lay_out_lot(folder: Path, units: int) -> None:
+    """Write `spec.yaml` and, below `frames`, units of two dark frames and two charts of four edges each, 0.3 MP."""
+    (folder / "spec.yaml").write_text(LOT)
+    for number in range(units):
+        rng = np.random.default_rng(number)
+        unit = folder / "frames" / f"L-{number:04d}"
+        unit.mkdir(parents=True)
+        blur = Gaussian(0.5 + 0.2 * rng.random())
+        scene = EdgeScene(blur, (140, 180), low=436, high=2936, black=64, white=4095, bits=12, read_noise=10)
+        for repeat in (1, 2):
+            chart = rng.normal(2000, 12, (480, 640))
+            for x, y in ((160, 120), (480, 120), (160, 360), (480, 360)):
+                chart[y - 90 : y + 90, x - 70 : x + 70] = scene.render(rng)
+            tifffile.imwrite(unit / f"chart-{repeat}.tif", np.round(chart).astype(np.uint16))
+            dark = np.round(rng.normal(64, 3, (480, 640))).astype(np.uint16)
+            tifffile.imwrite(unit / f"dark-{repeat}.tif", dark)
+
+
+def lay_out_large(folder: Path, units: int) -> None:
+    """Write `spec.yaml` and units of one 12 MP frame each below `frames`."""
+    (folder / "spec.yaml").write_text(SPEC)
+    for number in range(units):
+        unit = folder / "frames" / f"B-{number:04d}"
+        unit.mkdir(parents=True)
+        tifffile.imwrite(unit / "chart-1.tif", frame(number))
