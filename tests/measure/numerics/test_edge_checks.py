@@ -31,7 +31,7 @@ def curves_of(region: Array, sites: NDArray[np.bool_] | None = None) -> Curves:
 @pytest.mark.parametrize("optics", [Gaussian(0.35), Pupil(0.5), Pupil(0.7, coma=0.8), Exponential(0.8)])
 def test_good_scenes_pass(optics: Gaussian | Pupil | Exponential) -> None:
     """Straight, even and lonely edges of any blur pass, with the full band and no certain departure from straight."""
-    for direction in (2.5, 9.0, 30.0, 43.0):
+    for direction in (2.5, 17.0, 43.0):
         curves = curves_of(noisy(replace(GOOD, optics=optics, direction=direction), seed=int(direction)))
         most, straight = check(curves, shading_known=False)
         assert most > 0.65
