@@ -220,7 +220,8 @@ def measure_unit(
         known = {c.capture.name: survey.faults(unit.serial, attempt.number, c.capture.name) for c in plan.captures}
         load = _loader(plan, unit, attempt, survey)
         parts.append(session.measure_attempt(plan, attempt.number, load, known, painter=paint, faults=faults))
-    return session.unit_evidence(unit.serial, parts), pictures, faults.tracebacks
+    evidence = replace(session.unit_evidence(unit.serial, parts), remarks=survey.remarks(unit.serial))
+    return evidence, pictures, faults.tracebacks
 
 
 def picture_name(capture: str, attempt: int) -> str:
@@ -323,7 +324,8 @@ def _kept(job: Job, unit: UnitFolder) -> UnitResult | None:
         for a in unit.attempts
         for file, pair in job.survey.digests(unit.serial, a.number).items()
     }
-    if then != now or any(c["file_faults"] for c in document["captures"]):
+    faulty = any(place[0] == unit.serial for place in job.survey.sentences)  # a manifest or sidecar may have changed
+    if then != now or faulty or any(c["file_faults"] for c in document["captures"]):
         return None
     return replace(_result(document, folder, fault=False), kept=True)
 

@@ -7,16 +7,18 @@ choice of units change nothing. Only digests and small facts are kept, one file 
 import re
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from concurrent.futures import ProcessPoolExecutor
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from multiprocessing import get_context
 from pathlib import Path
 
 import numpy as np
 
 from runner.capture.frame import Frame
-from runner.capture.lot import FrameRef, Lot, UnitFolder, count_fault, fold, some
+from runner.capture.lot import AttemptFolder, FrameRef, Lot, UnitFolder, count_fault, fold, some
+from runner.capture.manifest import manifest_faults
 from runner.capture.readers import read_frames
-from runner.errors import FrameRefused
+from runner.capture.sidecar import SidecarRef, faults, read_sidecar, remarks, say
+from runner.errors import FrameRefused, UsageError
 from runner.spec.model import Camera, Spec
 
 DARK = "dark frame"
@@ -80,6 +82,8 @@ class Survey:
     """Flags by serial, attempt and capture."""
     unused: Mapping[str, tuple[str, ...]]
     """By serial: files that no pattern used."""
+    inferred: Mapping[str, tuple[int, ...]] = field(default_factory=dict)
+    """By serial: attempts without a manifest, whose completeness is inferred."""
 
     def faults(self, serial: str, attempt: int, capture: str) -> tuple[str, ...]:
         """Return everything that makes a capture unusable, also what the lot's folders alone show."""
@@ -96,6 +100,14 @@ class Survey:
             for f in self.files
             if (f.serial, f.attempt) == (serial, attempt) and not f.refusal
         }
+
+    def remarks(self, serial: str) -> tuple[str, ...]:
+        """Return what a report says about a unit's files beside faults: every flag, and what was only inferred."""
+        places = sorted(place for place in self.marks if place[0] == serial)
+        flags = dict.fromkeys(flag for place in places for flag in self.marks[place])
+        attempts = ", ".join(map(str, self.inferred.get(serial, ())))
+        inferred = f"Without a manifest of attempt {attempts} its completeness is inferred from the files themselves"
+        return (*((f"{inferred}.",) if attempts else ()), *(f"{flag}." for flag in flags))
 
     def simulated(self, serial: str) -> bool:
         """Tell whether one of a unit's frames is marked as rehearsed."""
@@ -121,8 +133,12 @@ def survey(lot: Lot, spec: Spec, jobs: int = 1, progress: Progress | None = None
         if facts.refusal:
             sentences.add(facts, facts.refusal)
     _foreign(files, spec, sentences)
+    for unit in units:
+        _station_says(unit, spec, files, sentences, marks)
     _twice(files, spec, sentences, marks)
-    return Survey(files, sentences.frozen(), marks.frozen(), {unit.serial: unit.unused for unit in units})
+    inferred = {u.serial: tuple(a.number for a in u.attempts if not a.manifests) for u in units}
+    unused = {unit.serial: unit.unused for unit in units}
+    return Survey(files, sentences.frozen(), marks.frozen(), unused, {s: n for s, n in inferred.items() if n})
 
 
 def load(refs: Sequence[FrameRef], camera: Camera, expected: Mapping[str, str]) -> tuple[Frame, ...]:
@@ -201,7 +217,8 @@ def _facts(task: _Task) -> FileFacts:
 
 def _page_facts(frame: Frame) -> PageFacts:
     codes = frame.codes
-    constant = float(codes[0, 0]) if codes[0, 0] == codes[-1, -1] and bool((codes == codes[0, 0]).all()) else None
+    first = codes.flat[0]
+    constant = float(first) if first == codes.flat[-1] and bool((codes == first).all()) else None
     return PageFacts(frame.pixels_sha256, constant, int(np.count_nonzero(codes)) <= CLAMPED * codes.size)
 
 
@@ -238,6 +255,44 @@ def _folder_faults(unit: UnitFolder, spec: Spec, files: Sequence[FileFacts], sen
             lost = count_fault(capture, attempt.frames[capture.name], frames)
             if lost:
                 sentences.put(place, lost)
+
+
+def _station_says(
+    unit: UnitFolder, spec: Spec, files: Sequence[FileFacts], sentences: _Collector, marks: _Collector
+) -> None:
+    """Note where manifests and sidecars speak against the files, or against what the spec asks for."""
+    for attempt in unit.attempts:
+        digests = {
+            f.file: f.sha256 for f in files if (f.serial, f.attempt) == (unit.serial, attempt.number) and f.sha256
+        }
+        refs = [ref for capture in spec.captures for ref in attempt.frames[capture.name]]
+        used = dict.fromkeys([*(r.file for r in refs), *(s.file for r in refs for s in r.sidecars)])
+        inside = [file for file in used if not file.startswith("../")]
+        listed = [sentence for ref in attempt.manifests for sentence in manifest_faults(ref, inside, digests)]
+        for capture in spec.captures:
+            for sentence in listed:
+                sentences.put((unit.serial, attempt.number, capture.name), sentence)
+        _sidecars_say(unit.serial, attempt, spec, sentences, marks)
+
+
+def _sidecars_say(serial: str, attempt: AttemptFolder, spec: Spec, sentences: _Collector, marks: _Collector) -> None:
+    read: dict[SidecarRef, Mapping[str, object]] = {}
+    broken: dict[SidecarRef, str] = {}
+    for capture in spec.captures:
+        place = (serial, attempt.number, capture.name)
+        refs = attempt.frames[capture.name]
+        for ref in dict.fromkeys(one for frame in refs for one in frame.sidecars):
+            try:
+                read[ref] = read.get(ref) or ({} if ref in broken else read_sidecar(ref))
+            except UsageError as error:
+                broken[ref] = str(error)
+            if ref in broken:
+                sentences.put(place, broken[ref])
+        said = [say(frame.file, frame.sidecars, read) for frame in refs]
+        for sentence in faults(said, capture, serial, spec.unit.serial):
+            sentences.put(place, sentence)
+        for sentence in remarks(said, capture):
+            marks.put(place, sentence)
 
 
 def _foreign(files: Sequence[FileFacts], spec: Spec, sentences: _Collector) -> None:

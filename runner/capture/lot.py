@@ -8,7 +8,10 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import NoReturn
 
+from runner.capture import manifest, sidecar
+from runner.capture.manifest import ManifestRef
 from runner.capture.patterns import FilePattern, natural, read_pattern
+from runner.capture.sidecar import SidecarRef
 from runner.errors import UsageError
 from runner.spec.model import Capture, Spec
 
@@ -27,6 +30,8 @@ class FrameRef:
     """Path relative to the attempt's folder, with `/`."""
     axes: Mapping[str, str] = field(default_factory=dict)
     """Named parts of the file pattern."""
+    sidecars: tuple[SidecarRef, ...] = ()
+    """What says how it was taken, the nearest first."""
 
 
 @dataclass(frozen=True)
@@ -41,6 +46,8 @@ class AttemptFolder:
     """Every capture of the spec by its name, its files sorted by their axes."""
     faults: Mapping[str, tuple[str, ...]]
     """Sentences by capture; a capture with any of them is not measured."""
+    manifests: tuple[ManifestRef, ...] = ()
+    """What the station says is complete; empty where completeness is inferred."""
 
 
 @dataclass(frozen=True)
@@ -157,10 +164,11 @@ def _unit(serial: str, folder: Path, spec: Spec, folders: Mapping[str, Path]) ->
         faults.append(f"the folders {names} both claim to be attempt {number}; number the attempts anew")
     gaps = [n for n in range(1, max(numbers)) if n not in numbers]
     remarks = [f"attempt {', '.join(map(str, gaps))} of {serial} is not there"] if gaps else []
-    unused = [] if attempts == [(1, folder)] else loose + skipped
+    shared = _Shared() if attempts == [(1, folder)] else _shared(folder, loose)
+    unused = [] if attempts == [(1, folder)] else [f for f in loose if f not in shared.names] + skipped
     found = []
     for number, place in attempts:
-        attempt, left = _attempt(number, place, spec)
+        attempt, left = _attempt(number, place, spec, shared)
         found.append(attempt)
         unused += left if place == folder else [f"{place.name}/{file}" for file in left]
     return UnitFolder(serial, folder, tuple(found), tuple(faults), tuple(remarks), tuple(unused))
@@ -197,22 +205,54 @@ def _attempt_folders(folder: Path) -> tuple[list[tuple[int, Path]], list[str], l
     return sorted(attempts), files, skipped
 
 
-def _attempt(number: int, folder: Path, spec: Spec) -> tuple[AttemptFolder, list[str]]:
-    files, left = _files(folder)
+@dataclass(frozen=True)
+class _Shared:
+    names: tuple[str, ...] = ()
+    """Files beside the attempt folders that speak of all of them."""
+    sidecars: tuple[SidecarRef, ...] = ()
+    """The unit's sidecar."""
+    manifests: tuple[Path, ...] = ()
+    """The unit's manifests."""
+
+
+def _shared(folder: Path, loose: Sequence[str]) -> _Shared:
+    said = sidecar.shared(loose)
+    listed = [name for name in loose if name in manifest.NAMES]
+    refs = tuple(SidecarRef(folder / name, f"../{name}") for name in said)
+    return _Shared((*said, *listed), refs, tuple(folder / name for name in listed))
+
+
+def _attempt(number: int, folder: Path, spec: Spec, shared: _Shared) -> tuple[AttemptFolder, list[str]]:
+    everything, left = _files(folder)
+    texts = [file for file in everything if sidecar.is_sidecar(file) or file in manifest.NAMES]
+    files = [file for file in everything if file not in texts]
+    said: set[str] = {file for file in texts if file in manifest.NAMES}
     frames: dict[str, tuple[FrameRef, ...]] = {}
     users: dict[str, list[str]] = {}
     for name, pattern in _patterns(spec).items():
         axes = {file: found for file in files if (found := pattern.match(file)) is not None}
-        refs = [FrameRef(folder / file, file, found) for file, found in axes.items()]
+        beside = {file: sidecar.beside(file, (t for t in texts if t not in manifest.NAMES)) for file in axes}
+        said.update(*beside.values())
+        refs = [
+            FrameRef(
+                folder / file,
+                file,
+                found,
+                (*(SidecarRef(folder / name, name) for name in beside[file]), *shared.sidecars),
+            )
+            for file, found in axes.items()
+        ]
         frames[name] = tuple(sorted(refs, key=lambda ref: [natural(v) for v in (*ref.axes.values(), ref.file)]))
         for file in axes:
             users.setdefault(file, []).append(name)
     for capture in spec.captures:
         frames.setdefault(capture.name, frames.get(source_of(capture, spec), ()))
     faults = {c.name: tuple(_faults(c, spec, frames[c.name], users)) for c in spec.captures}
-    left += [file for file in files if file not in users]
+    left += [file for file in everything if file not in users and file not in said]
     in_order = {capture.name: frames[capture.name] for capture in spec.captures}
-    return AttemptFolder(number, folder, in_order, faults), sorted(left, key=natural)
+    own = tuple(ManifestRef(folder / name) for name in manifest.NAMES if name in texts)
+    above = tuple(ManifestRef(path, f"{folder.name}/") for path in shared.manifests)
+    return AttemptFolder(number, folder, in_order, faults, own or above), sorted(left, key=natural)
 
 
 def _faults(capture: Capture, spec: Spec, refs: Iterable[FrameRef], users: Mapping[str, list[str]]) -> Iterable[str]:

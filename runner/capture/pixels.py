@@ -19,7 +19,7 @@ def check_codes(codes: Codes, where: str, camera: Camera) -> None:
     """Refuse codes that are no numbers of the camera's depth.
 
     Args:
-        codes: Rows × columns.
+        codes: Rows × columns (× 3).
         where: File, and page where there are several.
         camera: The camera.
 
@@ -117,7 +117,7 @@ def check_tail(decoded: Decoded, data: bytes, where: str, camera: Camera) -> Non
             next_step=COPY_AGAIN,
         )
     stored = decoded.stored or tuple(page.ravel() for page in decoded.pages)
-    run, before = _zero_run(stored, decoded.line or decoded.pages[0].shape[1])
+    run, before = _zero_run(stored, decoded.line or decoded.pages[0][0].size)
     size, total = stored[0].dtype.itemsize, sum(piece.size for piece in stored)
     padded = camera.black_level > 0 and data.endswith(bytes(ZERO_TAIL)) and run >= MOST_DARK_RUN
     if run * size < min(ZERO_TAIL, total * size) and not padded:
@@ -126,7 +126,7 @@ def check_tail(decoded: Decoded, data: bytes, where: str, camera: Camera) -> Non
         lit = camera.black_level + 0.1 * (camera.white_level - camera.black_level)
         if np.count_nonzero(before > lit) < max(3, 0.01 * before.size):
             return
-    found = f"the last {run} of {total} pixels are zero"
+    found = f"the last {run} of {total} {'pixels' if decoded.pages[0].ndim == 2 else 'values'} are zero"
     if run == total:
         found = f"every pixel is zero, below the black level of {camera.black_level:g} DN"
     raise FrameRefused(

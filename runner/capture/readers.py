@@ -9,10 +9,12 @@ from typing import cast
 
 import numpy as np
 
-from runner.capture.formats.contract import COPY_AGAIN, MAX_BYTES, Format, check_size, read_notes
+from runner.capture.formats import packed
+from runner.capture.formats.contract import COPY_AGAIN, MAX_BYTES, Format, check_size, read_notes, samples
 from runner.capture.frame import Codes, Frame
 from runner.capture.pixels import ZERO_TAIL, check_codes, check_tail
-from runner.errors import FrameRefused
+from runner.capture.plausible import check_layout, check_mosaic
+from runner.errors import FrameRefused, UsageError
 from runner.spec.model import Camera
 
 _FORMATS = (
@@ -23,15 +25,19 @@ _FORMATS = (
     (b"\x89PNG\r\n\x1a\n", "png"),
     (b"\xff\xd8\xff", "jpeg"),
     (b"\x93NUMPY", "npy"),
+    (b"SIMPLE  =", "fits"),
+    (b"\x89HDF\r\n\x1a\n", "hdf5"),
 )
 """First bytes of the formats that are read; each name is a module of `runner.capture.formats`."""
+_ENDINGS = frozenset(
+    {".tif", ".tiff", ".btf", ".tf8", ".png", ".jpg", ".jpeg", ".npy", ".fits", ".fit", ".fts", ".h5", ".hdf5"}
+)
+"""Endings that belong to a format (a test holds them against the modules' own)."""
 _STRANGERS = (
     (b"BM", "a BMP picture"),
     (b"GIF8", "a GIF picture"),
     (b"PK\x03\x04", "a ZIP archive (or NPZ)"),
     (b"\x1f\x8b", "a gzip archive"),
-    (b"\x89HDF", "an HDF5 file"),
-    (b"SIMPLE  =", "a FITS file"),
     (b"%PDF", "a PDF document"),
     (b"\x80\x04", "a Python pickle"),
     (b"\x80\x05", "a Python pickle"),
@@ -39,7 +45,12 @@ _STRANGERS = (
     (b"RIFF", "a RIFF file (WebP, AVI)"),
     (b"<", "a text with markup (HTML, XML)"),
 )
-READ = "TIFF, PNG, NPY, and JPEG where the product delivers it"
+_HEADERLESS = cast("Format", packed)
+READ = (
+    "TIFF, PNG, NPY, FITS, HDF5, and JPEG where the product delivers it; headerless files where the spec has a layout"
+)
+_EXTRAS = {"fits": "astropy", "hdf5": "h5py"}
+"""Formats whose package is installed only where it is asked for."""
 
 
 def read_frames(path: Path, camera: Camera, *, name: str | None = None, compare: bool = True) -> tuple[Frame, ...]:
@@ -56,14 +67,17 @@ def read_frames(path: Path, camera: Camera, *, name: str | None = None, compare:
 
     Raises:
         FrameRefused: The file cannot be evidence; says where, what was found, what is allowed and what to do.
+        UsageError: The package that reads this format is not installed.
     """
     where = name or path.name
     data = _bytes(path, where)
-    module = _format(data, where, path.suffix.lower())
+    module = _format(data, where, path.suffix.lower(), camera)
     try:
         with warnings.catch_warnings():
             warnings.simplefilter("error", UserWarning)  # what a decoder warns of is a file that is not whole
             decoded = module.decode(data, where, camera)
+    except UsageError:
+        raise
     except FrameRefused as error:
         raise _unfinished(data, where) or error from error
     except Exception as error:
@@ -73,10 +87,14 @@ def read_frames(path: Path, camera: Camera, *, name: str | None = None, compare:
         raise _unfinished(data, where) or plain from error
     many = len(decoded.pages) > 1
     for number, codes in enumerate(decoded.pages):
-        if codes.ndim != 2:
+        if codes.shape[2:] != ((3,) if samples(camera) == 3 else ()):
             raise FrameRefused("a page is no plain picture", where=where, next_step=COPY_AGAIN)
         check_size(codes.shape[1], codes.shape[0], camera, where)
-        check_codes(codes, f"{where}, page {number + 1}" if many else where, camera)
+        page = f"{where}, page {number + 1}" if many else where
+        if module is _HEADERLESS:
+            check_layout(data, number, codes, page, camera)
+        check_codes(codes, page, camera)
+        check_mosaic(codes, page, camera)
     check_tail(decoded, data, where, camera)
     digest, notes = hashlib.sha256(data).hexdigest(), read_notes(decoded.texts)
     return tuple(
@@ -128,8 +146,16 @@ def _bytes(path: Path, where: str) -> bytes:
     return data
 
 
-def _format(data: bytes, where: str, ending: str) -> Format:
-    """Return the module for what the file holds; its ending must say the same."""
+def _format(data: bytes, where: str, ending: str, camera: Camera) -> Format:
+    """Return the module for what the file holds; its ending must say the same.
+
+    Where the spec states a packing, a file whose ending no format claims is headerless, whatever its first bytes are,
+    if its size fits.
+    """
+    if camera.layout.packing and ending not in _ENDINGS:
+        begins = any(data.startswith(start) for start, _ in _FORMATS)
+        if not begins or len(data) == camera.layout.file_bytes(camera.width, camera.height):
+            return _HEADERLESS
     kind = next((kind for start, kind in _FORMATS if data.startswith(start)), None)
     if kind is None:
         zeros = not data.strip(b"\0")
@@ -140,7 +166,16 @@ def _format(data: bytes, where: str, ending: str) -> Format:
             allowed=READ,
             next_step=COPY_AGAIN,
         )
-    module = cast("Format", import_module(f"runner.capture.formats.{kind}"))
+    try:
+        module = cast("Format", import_module(f"runner.capture.formats.{kind}"))
+    except ModuleNotFoundError as error:
+        if error.name != _EXTRAS.get(kind):
+            raise
+        raise UsageError(
+            f"the file holds {kind.upper()}, and the package {error.name}, which reads it, is not installed",
+            where=where,
+            next_step=f"install it: pip install 'probatum[{kind}]'",
+        ) from error
     if ending not in module.ENDINGS:
         raise FrameRefused(
             f"the file holds {kind.upper()}, its name ends in '{ending}'",

@@ -71,6 +71,8 @@ class UnitEvidence:
     """Sorted like readings."""
     spots: tuple[Spot, ...] = ()
     """Sorted like readings, then by kind and place."""
+    remarks: tuple[str, ...] = ()
+    """What was found out about its files that changes no verdict, e.g. that completeness is only inferred."""
 
     @property
     def simulated(self) -> bool:

@@ -6,6 +6,7 @@ from runner.measure.contract import Method, Target
 from runner.measure.evidence import UnitEvidence
 from runner.measure.options import describe
 from runner.measure.plan import CapturePlan, Plan
+from runner.spec.files import Layout
 from runner.spec.model import Camera, Chart, Optics
 
 
@@ -15,6 +16,9 @@ def conditions(camera: Camera, optics: Optics, chart: Chart) -> list[list[str]]:
     rows: list[tuple[str, Any]] = [
         ("frame size", f"{camera.width} × {camera.height} px"),
         ("bit depth", f"{camera.bit_depth} bit"),
+        ("mosaic", "" if camera.mosaic == "none" else camera.mosaic),
+        ("colour", "" if camera.colour == "mono" else "red, green and blue planes"),
+        ("file layout", _layout(camera.layout)),
         ("black level", f"{camera.black_level:g} DN"),
         ("white level", f"{camera.white_level:g} DN"),
         ("tone", tone or f"gamma {camera.tone.gamma:g}"),
@@ -31,6 +35,16 @@ def conditions(camera: Camera, optics: Optics, chart: Chart) -> list[list[str]]:
         ("chart calibration due", chart.due),
     ]
     return [[label, text] for label, text in rows if text]
+
+
+def _layout(layout: Layout) -> str:
+    words = [layout.packing, f"{layout.byte_order} byte order" if layout.byte_order else ""]
+    words += [f"header {layout.header} bytes" if layout.header else ""]
+    words += [f"row padding {layout.row_padding} bytes" if layout.row_padding else ""]
+    words += [f"{layout.frames_per_file} frames a file" if layout.frames_per_file > 1 else ""]
+    words += [f"first row at the {layout.first_row}" if layout.first_row else ""]
+    words += [f"dataset {layout.dataset}" if layout.dataset else ""]
+    return ", ".join(word for word in words if word)
 
 
 def _stated(value: float | None, unit: str = "") -> str:
@@ -71,4 +85,4 @@ def deviations(plan: Plan, evidence: UnitEvidence) -> list[str]:
         rows.append(
             "At least one frame is marked as simulated: this report shows a rehearsal and is no evidence of a unit."
         )
-    return rows
+    return [*rows, *evidence.remarks]

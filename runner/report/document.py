@@ -134,6 +134,7 @@ def to_document(
         "methods": methods(plan),
         "deviations": deviations(plan, evidence),
         "warnings": [str(warning) for warning in spec.warnings],
+        "remarks": list(evidence.remarks),
         "unused": list(unused),
         "earlier": earlier,
     }
@@ -177,6 +178,7 @@ def from_document(document: Mapping[str, Any]) -> tuple[Spec, UnitEvidence]:
             tuple(_curve_back(c) for c in document["curves"]),
             tuple(_map_back(m) for m in document.get("maps", ())),
             tuple(Spot(**s) for s in document.get("spots", ())),
+            tuple(str(remark) for remark in document.get("remarks", ())),
         )
     except (KeyError, TypeError, ValueError, AttributeError) as error:
         raise VerificationRefused(f"it cannot be read back: {type(error).__name__}: {error}") from error

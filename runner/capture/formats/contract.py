@@ -26,13 +26,13 @@ class Decoded:
     """Everything that one file holds."""
 
     pages: tuple[Codes, ...]
-    """Stored codes of each page, rows × columns, native byte order."""
+    """Stored codes of each page, rows × columns (× 3 for colour), native byte order."""
     texts: Mapping[str, str]
     """Texts that the file carries, by the format's own names, uncut."""
     stored: tuple[Codes, ...] = ()
     """The codes in file order, one-dimensional pieces; empty where that is page by page, row by row."""
     line: int = 0
-    """Length of one stored line in px (a row, a column or a tile's row); 0 for a row."""
+    """Length of one stored line in numbers (a row, a column or a tile's row); 0 for a row."""
 
 
 class Format(Protocol):
@@ -45,7 +45,7 @@ class Format(Protocol):
         """Decode the bytes of a whole file.
 
         Raises:
-            FrameRefused: The file is not whole, or holds something else than mono frames of that camera's size.
+            FrameRefused: The file is not whole, or holds something else than frames of that camera.
         """
 
 
@@ -130,24 +130,38 @@ def check_size(width: int, height: int, camera: Camera, where: str) -> None:
     )
 
 
-def check_mono(channels: str, where: str, *, mono: bool) -> None:
-    """Refuse colour and transparency.
+def samples(camera: Camera) -> int:
+    """Return how many numbers a pixel of the camera's frames has."""
+    return 3 if camera.colour == "rgb" else 1
+
+
+def check_channels(found: str, where: str, camera: Camera, *, channels: int) -> None:
+    """Refuse what does not hold as many plain channels as the camera delivers.
 
     Args:
-        channels: What the file holds, as words.
+        found: What the file holds, as words.
         where: The file.
-        mono: It is a single grey channel.
+        camera: The camera.
+        channels: Plain channels of it, 1 or 3; 0 where there is transparency, a palette or the like.
 
     Raises:
-        FrameRefused: It is not.
+        FrameRefused: One channel for three, three for one, or something else.
     """
-    if not mono:
+    if channels == samples(camera):
+        return
+    if camera.colour == "rgb":
         raise FrameRefused(
-            f"the file holds {channels}",
+            f"the file holds {found}",
             where=where,
-            allowed="this release measures mono frames: one grey channel, no transparency",
-            next_step="export the raw or grey frame",
+            allowed="three colour channels without transparency, for the spec says colour: rgb",
+            next_step="export the frame in colour, or correct camera: colour in the spec",
         )
+    raise FrameRefused(
+        f"the file holds {found}",
+        where=where,
+        allowed="one grey channel without transparency, for the spec's camera is mono",
+        next_step="export the raw or grey frame, or state camera: colour: rgb in the spec",
+    )
 
 
 def check_upright(orientation: int, where: str) -> None:

@@ -1,4 +1,4 @@
-"""JPEG, 8 bit grey, for products that deliver it: any other frame has been through JPEG only by mistake.
+"""JPEG, 8 bit grey or colour, for products that deliver it: any other frame has been through JPEG only by mistake.
 
 References:
     ITU-T T.81 | ISO/IEC 10918-1: markers SOI and EOI.
@@ -9,7 +9,7 @@ from io import BytesIO
 import numpy as np
 from PIL.JpegImagePlugin import JpegImageFile
 
-from runner.capture.formats.contract import Decoded, check_mono, check_size, check_upright, native, truncated
+from runner.capture.formats.contract import Decoded, check_channels, check_size, check_upright, native, truncated
 from runner.errors import FrameRefused
 from runner.spec.model import Camera
 
@@ -40,8 +40,9 @@ def decode(data: bytes, where: str, camera: Camera) -> Decoded:
         comment = picture.info.get("comment", b"")
         texts |= {"Comment": comment.decode("utf-8", "replace")} if comment else {}
         codes = np.asarray(picture)
-    if codes.ndim == 3:  # a mono picture is often written with three equal channels
-        equal = codes.shape[2] == 3 and bool((codes[..., :1] == codes).all())
-        check_mono(f"{codes.shape[2]} colour channels", where, mono=equal)
-        codes = codes[..., 0]
+        mode = picture.mode
+    if camera.colour == "mono" and mode == "RGB" and bool((codes[..., :1] == codes).all()):
+        codes, mode = codes[..., 0], "L"  # a mono picture is often written with three equal channels
+    words = "one grey channel" if mode == "L" else f"{codes.shape[-1]} colour channels"
+    check_channels(words, where, camera, channels={"L": 1, "RGB": 3}.get(mode, 0))
     return Decoded((native(codes),), texts)

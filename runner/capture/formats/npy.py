@@ -1,4 +1,4 @@
-"""NPY arrays of one frame (rows × columns) or a stack of them, either byte order, either storage order; never pickles.
+"""NPY arrays of one frame (rows × columns, × 3 for colour) or a stack; any byte and storage order; never pickles.
 
 References:
     NumPy Enhancement Proposal 1, "A simple file format for NumPy arrays".
@@ -11,7 +11,16 @@ from tokenize import TokenError
 import numpy as np
 from numpy.lib import format as npy
 
-from runner.capture.formats.contract import COPY_AGAIN, Decoded, check_mono, check_pages, check_size, native, truncated
+from runner.capture.formats.contract import (
+    COPY_AGAIN,
+    Decoded,
+    check_channels,
+    check_pages,
+    check_size,
+    native,
+    samples,
+    truncated,
+)
 from runner.errors import FrameRefused
 from runner.spec.model import Camera
 
@@ -31,15 +40,9 @@ def decode(data: bytes, where: str, camera: Camera) -> Decoded:
         )
     if min(shape, default=0) < 0:
         raise FrameRefused(f"the array claims the shape {shape}", where=where, next_step=COPY_AGAIN)
-    if len(shape) not in {2, 3}:
-        raise FrameRefused(
-            f"the array has {len(shape)} axes", where=where, allowed="rows x columns, or frames x rows x columns"
-        )
-    check_mono(
-        f"{shape[-1]} values per pixel", where, mono=len(shape) == 2 or shape[:2] != (camera.height, camera.width)
-    )
-    check_size(shape[-1], shape[-2], camera, where)
-    check_pages(prod(shape[:-2]), where)
+    rank = _rank(shape, where, camera)
+    check_size(shape[-rank + 1], shape[-rank], camera, where)
+    check_pages(prod(shape[:-rank]), where)
     announced, there = prod(shape) * dtype.itemsize, len(data) - start
     if there < announced:
         raise truncated(where, f"{announced} bytes of pixels are announced, {there} are there")
@@ -47,10 +50,34 @@ def decode(data: bytes, where: str, camera: Camera) -> Decoded:
         raise FrameRefused(f"{there - announced} bytes follow the end of the array", where=where, next_step=COPY_AGAIN)
     stored = np.frombuffer(data, dtype, offset=start)
     codes = stored.reshape(shape, order="F" if columns_first else "C")
-    pages = (codes,) if codes.ndim == 2 else tuple(codes)
+    pages = (codes,) if codes.ndim == rank else tuple(codes)
     if not pages:
         raise FrameRefused("the stack holds no frame", where=where, next_step=COPY_AGAIN)
     return Decoded(tuple(native(page) for page in pages), {}, (stored,), shape[0] if columns_first else 0)
+
+
+def _rank(shape: tuple[int, ...], where: str, camera: Camera) -> int:
+    """Return the number of axes of one frame: 2, or 3 with the colours as the last."""
+    rank = 2 if samples(camera) == 1 else 3
+    grey = len(shape) == 2 or (len(shape) == 3 and shape[:2] != (camera.height, camera.width))
+    if rank == 3 and len(shape) >= 3 and shape[-3:] == (3, camera.height, camera.width) and shape[-1] != 3:
+        raise FrameRefused(
+            "the array holds its three colours as planes, one behind the other",
+            where=where,
+            allowed="rows x columns x 3",
+            next_step="save the frame with the colours as the last axis",
+        )
+    if len(shape) in {2, 3} and grey != (rank == 2):
+        words = "one value per pixel" if grey else f"{shape[-1]} values per pixel"
+        check_channels(words, where, camera, channels=1 if grey else 0)
+    elif len(shape) not in {rank, rank + 1} or (rank == 3 and shape[-1] != 3):
+        colours = " x 3" if rank == 3 else ""
+        raise FrameRefused(
+            f"the array has {len(shape)} axes" if rank == 2 else f"the array has the shape {shape}",
+            where=where,
+            allowed=f"rows x columns{colours}, or frames x rows x columns{colours}",
+        )
+    return rank
 
 
 def _header(data: bytes, where: str) -> tuple[tuple[int, ...], bool, np.dtype[np.generic], int]:

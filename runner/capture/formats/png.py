@@ -1,4 +1,4 @@
-"""PNG, 8 and true 16 bit grey; every chunk's check sum is verified before anything is decoded.
+"""PNG, 8 and true 16 bit, grey or colour; every chunk's check sum is verified before anything is decoded.
 
 References:
     Portable Network Graphics (PNG) Specification, W3C / ISO/IEC 15948:2004, 5 and 11.
@@ -11,14 +11,20 @@ import numpy as np
 from imagecodecs import png_decode
 from PIL.PngImagePlugin import PngImageFile
 
-from runner.capture.formats.contract import Decoded, check_mono, check_size, check_upright, native, truncated
+from runner.capture.formats.contract import Decoded, check_channels, check_size, check_upright, native, truncated
 from runner.errors import FrameRefused
 from runner.spec.model import Camera
 
 ENDINGS = (".png",)
 SIGNATURE = b"\x89PNG\r\n\x1a\n"
 _LAST_CHUNK = b"\x00\x00\x00\x00IEND\xaeB`\x82"
-_COLOURS = {2: "3 colour channels", 3: "a colour palette", 4: "transparency", 6: "colour and transparency"}
+_COLOURS = {
+    0: "one grey channel",
+    2: "3 colour channels",
+    3: "a colour palette",
+    4: "transparency",
+    6: "colour and transparency",
+}
 
 
 def decode(data: bytes, where: str, camera: Camera) -> Decoded:
@@ -26,7 +32,8 @@ def decode(data: bytes, where: str, camera: Camera) -> Decoded:
     if len(data) < 33 or data[12:16] != b"IHDR":
         raise truncated(where, f"it ends at byte {len(data)}, inside its header")
     width, height, bits, colour = struct.unpack_from(">IIBB", data, 16)
-    check_mono(_COLOURS.get(colour, f"pixels of the unknown kind {colour}"), where, mono=colour == 0)
+    words = _COLOURS.get(colour, f"pixels of the unknown kind {colour}")
+    check_channels(words, where, camera, channels={0: 1, 2: 3}.get(colour, 0))
     check_size(width, height, camera, where)
     if bits not in {8, 16}:
         raise FrameRefused(f"the file holds {bits} bit per pixel", where=where, allowed="8 or 16 bit per pixel")
@@ -43,7 +50,8 @@ def decode(data: bytes, where: str, camera: Camera) -> Decoded:
                 allowed="one frame in a PNG",
                 next_step="export each frame as a file of its own",
             )
-        check_mono("transparency", where, mono="transparency" not in picture.info)
+        if "transparency" in picture.info:
+            check_channels("transparency", where, camera, channels=0)
         picture.load()
         check_upright(int(picture.getexif().get(274, 1)), where)
         texts = {str(name): str(text) for name, text in picture.text.items()}

@@ -1,6 +1,6 @@
-"""TIFF: 8, 12 (packed or in 16), 16 bit, float; strips or tiles; lossless compression; pages; BigTIFF; OME.
+"""TIFF: 8, 12 (packed or in 16), 16 bit, float; grey, colour interleaved or in planes; strips, tiles; pages; BigTIFF.
 
-Bare pages are views of the file's bytes; everything else is decoded by tifffile.
+Bare pages are views of the file's bytes; lossless compression, OME and everything else is decoded by tifffile.
 
 References:
     TIFF Revision 6.0 (Adobe, 1992).
@@ -19,11 +19,12 @@ import tifffile
 
 from runner.capture.formats.contract import (
     Decoded,
-    check_mono,
+    check_channels,
     check_pages,
     check_size,
     check_upright,
     native,
+    samples,
     truncated,
 )
 from runner.capture.formats.ifd import Directory, read_directories
@@ -35,7 +36,9 @@ ENDINGS = (".tif", ".tiff", ".btf", ".tf8")
 
 WIDTH, LENGTH, BITS, COMPRESSION, PHOTOMETRIC, FILL_ORDER = 256, 257, 258, 259, 262, 266
 ORIENTATION, SAMPLES, STRIP_ROWS, PREDICTOR, TILE_WIDTH, TILE_LENGTH = 274, 277, 278, 317, 322, 323
-EXTRA_SAMPLES, SAMPLE_FORMAT = 338, 339
+PLANAR, EXTRA_SAMPLES, SAMPLE_FORMAT = 284, 338, 339
+RGB = 2
+"""Photometric interpretation of red, green and blue."""
 MOST_TILE = 4096
 """Side of a tile in px that no writer of small frames exceeds."""
 CFA = 32803
@@ -53,7 +56,9 @@ def decode(data: bytes, where: str, camera: Camera) -> Decoded:
     directories = read_directories(data, where)
     for page in directories:
         _check(page, where, camera)
-    check_pages(len(directories), where, camera.width * camera.height * -(-directories[0].first(BITS, 1) // 8))
+    check_pages(
+        len(directories), where, camera.width * camera.height * samples(camera) * -(-directories[0].first(BITS, 1) // 8)
+    )
     order = "<" if data[:2] == b"II" else ">"
     pieces = [_pieces(data, page, order) for page in directories]
     tiled = any(TILE_WIDTH in page.integers for page in directories)
@@ -63,11 +68,29 @@ def decode(data: bytes, where: str, camera: Camera) -> Decoded:
             raise truncated(where, f"{len(directories)} pages are listed, {len(file.pages)} can be read")
         _check_promised(texts, len(directories), where, camera)
         pages = tuple(
-            _plain(views, camera, where) if views and not tiled else native(file.pages[number].asarray(maxworkers=1))
-            for number, views in enumerate(pieces)
+            _plain(views, camera, where, planes=_planes(page))
+            if views and not tiled
+            else native(_colours_last(file.pages[number].asarray(maxworkers=1), page))
+            for number, (page, views) in enumerate(zip(directories, pieces, strict=True))
         )
     stored = tuple(piece for _, piece in sorted(chain(*pieces), key=itemgetter(0))) if all(pieces) else ()
-    return Decoded(pages, texts, stored, directories[0].first(TILE_WIDTH, 0))
+    return Decoded(pages, texts, stored, _line(directories[0]))
+
+
+def _line(page: Directory) -> int:
+    """Return how many numbers one stored line holds; see `Decoded.line`."""
+    if _planes(page):
+        return page.first(TILE_WIDTH, page.first(WIDTH, 0))
+    return page.first(TILE_WIDTH, 0) * page.first(SAMPLES, 1)
+
+
+def _planes(page: Directory) -> bool:
+    """Tell whether the colours lie in planes one behind the other."""
+    return page.first(SAMPLES, 1) > 1 and page.first(PLANAR, 1) == 2
+
+
+def _colours_last(codes: Codes, page: Directory) -> Codes:
+    return np.moveaxis(codes, 0, -1) if _planes(page) else codes
 
 
 def _texts(page: tifffile.TiffPage) -> dict[str, str]:
@@ -80,10 +103,12 @@ def _texts(page: tifffile.TiffPage) -> dict[str, str]:
 
 
 def _check(page: Directory, where: str, camera: Camera) -> None:
-    samples, extra = page.first(SAMPLES, 1), page.integers.get(EXTRA_SAMPLES, ())
+    channels, extra = page.first(SAMPLES, 1), page.integers.get(EXTRA_SAMPLES, ())
     photometric, compression, bits = page.first(PHOTOMETRIC, 1), page.first(COMPRESSION, 1), page.first(BITS, 1)
-    words = "transparency" if extra else f"{samples} colour channels" if samples != 1 else "coded colours"
-    check_mono(words, where, mono=samples == 1 and not extra and photometric in {0, 1, CFA})
+    grey = channels == 1 and photometric in {0, 1, CFA}
+    plain = not extra and (grey or photometric == RGB) and len(set(page.integers.get(BITS, (1,)))) == 1
+    words = "transparency" if extra else f"{channels} colour channels" if channels != 1 else "coded colours"
+    check_channels("one grey channel" if grey and plain else words, where, camera, channels=channels if plain else 0)
     if photometric == 0:
         raise FrameRefused(
             "the file stores white as zero (min-is-white)",
@@ -124,7 +149,9 @@ def _check_pieces(page: Directory, where: str, bits: int, *, packed: bool) -> No
             next_step="export the file again",
         )
     rows = -(-width // wide) * -(-height // high) * (high if tiled else min(high, height))
-    wanted, there = rows * -(-wide * bits // 8), sum(count for _, count in page.segments)
+    channels = page.first(SAMPLES, 1)
+    wanted = channels * rows * -(-wide * bits // 8) if _planes(page) else rows * -(-wide * channels * bits // 8)
+    there = sum(count for _, count in page.segments)
     if packed and there > 1.125 * wanted:
         raise FrameRefused(
             f"{width} x {height} px of {bits} bit fill {wanted} bytes, the file holds {there}",
@@ -166,33 +193,40 @@ def _tiles(data: bytes, page: Directory, dtype: np.dtype[np.generic]) -> list[tu
     """Return (offset, codes of one tile) without the padding of the tiles at the right and lower border."""
     wide, high = page.first(TILE_WIDTH, 0), page.first(TILE_LENGTH, 0)
     width, height = page.first(WIDTH, 0), page.first(LENGTH, 0)
+    across, down = -(-width // wide), -(-height // high)
+    each = 1 if _planes(page) else page.first(SAMPLES, 1)
     found = []
     for number, (offset, count) in enumerate(page.segments):
-        row, column = divmod(number, -(-width // wide))
-        tile = np.frombuffer(data, dtype, count // dtype.itemsize, offset)[: wide * high].reshape(high, wide)
+        row, column = divmod(number % (across * down), across)
+        numbers = np.frombuffer(data, dtype, count // dtype.itemsize, offset)[: wide * high * each]
+        tile = numbers.reshape(high, wide, each)
         found.append((offset, tile[: height - row * high, : width - column * wide].ravel()))
     return found
 
 
-def _plain(pieces: list[tuple[int, Codes]], camera: Camera, where: str) -> Codes:
+def _plain(pieces: list[tuple[int, Codes]], camera: Camera, where: str, *, planes: bool) -> Codes:
     """Return the page out of its plain strips without decoding: a view of the file's bytes, if they adjoin."""
     flat = pieces[0][1] if len(pieces) == 1 else np.concatenate([piece for _, piece in pieces])
-    wanted = camera.width * camera.height
+    size, each = (camera.height, camera.width), samples(camera)
+    wanted = camera.width * camera.height * each
     if flat.size < wanted:
         raise truncated(where, f"{wanted} px are announced, {flat.size} are there")
-    return native(flat[:wanted].reshape(camera.height, camera.width))
+    if each == 1:
+        return native(flat[:wanted].reshape(size))
+    codes = flat[:wanted].reshape((each, *size) if planes else (*size, each))
+    return native(np.moveaxis(codes, 0, -1) if planes else codes)
 
 
 def _check_promised(texts: Mapping[str, str], pages: int, where: str, camera: Camera) -> None:
     """Refuse a stack whose own description speaks of more frames than its chain of pages holds."""
-    promised = 1
+    promised, frame = 1, camera.width * camera.height * samples(camera)
     for text in texts.values():
         images = re.search(r"^images=(\d{1,9})\s*$", text, re.MULTILINE) if text.startswith("ImageJ=") else None
         shape = re.match(r'\{"shape": \[(\d{1,9}(?:, \d{1,9}){1,7})\]', text)
         if images:
             promised = max(promised, int(images[1]))
         if shape:
-            promised = max(promised, prod(int(n) for n in shape[1].split(",")) // (camera.width * camera.height))
+            promised = max(promised, prod(int(n) for n in shape[1].split(",")) // frame)
     if promised > pages:
         raise FrameRefused(
             f"the file describes {promised} frames, {pages} can be found as pages",

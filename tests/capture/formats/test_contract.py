@@ -1,6 +1,7 @@
 """What all formats share: sizes told before pixels, texts sorted out, byte order undone."""
 
 import json
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -9,7 +10,7 @@ from hypothesis import strategies as st
 
 from runner.capture.formats.contract import (
     MAX_TEXT,
-    check_mono,
+    check_channels,
     check_pages,
     check_size,
     check_upright,
@@ -50,14 +51,26 @@ def test_bounds_of_pages_include_their_ends() -> None:
 
 def test_mono_and_upright_say_what_was_found() -> None:
     """Colour and turning are refused by name, nothing else is."""
-    check_mono("", "a.tif", mono=True)
+    check_channels("", "a.tif", CAMERA, channels=1)
     for upright in (0, 1):
         check_upright(upright, "a.tif")
     with pytest.raises(FrameRefused, match=r"^a\.tif: the file holds two channels; .*mono"):
-        check_mono("two channels", "a.tif", mono=False)
+        check_channels("two channels", "a.tif", CAMERA, channels=0)
     for turned in (2, 8, 9):
         with pytest.raises(FrameRefused, match=rf"\(orientation {turned}\)"):
             check_upright(turned, "a.tif")
+
+
+def test_one_channel_is_not_three() -> None:
+    """A mono file for a colour camera and a colour file for a mono camera are refused, each with its own way out."""
+    colour = replace(CAMERA, colour="rgb")
+    check_channels("", "a.tif", colour, channels=3)
+    with pytest.raises(
+        FrameRefused, match=r"one grey channel; three colour channels .* the spec says colour: rgb; exp"
+    ):
+        check_channels("one grey channel", "a.tif", colour, channels=1)
+    with pytest.raises(FrameRefused, match=r"3 colour channels; one grey channel .* state camera: colour: rgb"):
+        check_channels("3 colour channels", "a.tif", CAMERA, channels=3)
 
 
 def test_native_keeps_every_value_and_copies_only_if_it_must() -> None:
