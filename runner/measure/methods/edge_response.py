@@ -81,7 +81,7 @@ class Options:
             role = self.shading.get(FROM)
             good = set(self.shading) == {FROM} and isinstance(role, str) and bool(role)
         else:
-            good = self.shading in {"none", "fitted"}
+            good = self.shading in ("none", "fitted")  # no set: a list may stand here
         if not good:
             raise ValueError(f"shading is {self.shading!r}; allowed are: none, fitted, {{from: ROLE}}")
 

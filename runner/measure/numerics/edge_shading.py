@@ -76,6 +76,14 @@ def smooth_flat(crops: Sequence[Array], sites: NDArray[np.bool_] | None = None) 
     gram = design.T @ design
     coefficients = np.linalg.solve(gram, design.T @ relative[used])
     field = np.tensordot(coefficients, terms, 1)
+    least = float(field[used].min()) * level
+    if not least > LEAST_LEVEL:
+        raise MeasurementRefused(
+            "missing companion",
+            f"the flat falls to {100 * least:.1f} % of the range within the region",
+            allowed=f"at least {100 * LEAST_LEVEL:g} %",
+            next_step="light the flat more evenly, or with more light",
+        )
     residual = np.where(used, relative - field, 0.0)
     variance = float((residual**2).sum()) / max(1, int(used.sum()) - len(powers))
     rough = _roughness(residual, used, variance)

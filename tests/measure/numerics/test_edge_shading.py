@@ -116,3 +116,11 @@ def test_sites_outside_a_channel_do_not_count() -> None:
     assert np.array_equal(one.covariance, two.covariance)
     noise = 0.01 * np.sqrt(10 / sites.sum()) / crop.mean()  # rms over the region of ten fitted terms
     assert one.field == pytest.approx(SCENE.field() / SCENE.field().mean(), abs=8 * noise)
+
+
+def test_a_flat_that_falls_to_nothing_is_refused() -> None:
+    """A mean of 15 % says nothing of a side that is dark: there would be no light to divide by."""
+    flat = np.tile(np.linspace(0.0, 0.3, 60), (40, 1))
+
+    with pytest.raises(MeasurementRefused, match=r"the flat falls to .* within the region"):
+        smooth_flat([flat])
