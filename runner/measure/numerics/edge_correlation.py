@@ -81,7 +81,22 @@ def correlation(linear: Linear, pixels: Pixels, raised: float) -> Correlation | 
         return None
     kept = near | (np.abs(deviations) > SINGLE)
     half = np.array(lags)[kept]
-    return Correlation(np.concatenate([half, -half]), np.tile(shares[kept], 2))
+    return _possible(np.concatenate([half, -half]), np.tile(shares[kept], 2))
+
+
+def _possible(lags: NDArray[np.intp], shares: Array) -> Correlation:
+    """Return the nearest correlation whose noise power falls below `LEAST_SUM` of white noise's at no frequency.
+
+    Single lags, each with its chance, need not make a possible one.
+    """
+    grid = np.zeros((4 * FAR, 4 * FAR))
+    grid[0, 0] = 1.0
+    grid[lags[:, 0], lags[:, 1]] = shares
+    power = np.maximum(np.fft.fft2(grid).real, LEAST_SUM)
+    grid = np.fft.ifft2(power / power.mean()).real
+    reach = np.arange(-FAR, FAR + 1)
+    whole = np.array([(dy, dx) for dy in reach for dx in reach if dy or dx])
+    return Correlation(whole, grid[whole[:, 0], whole[:, 1]])
 
 
 def _shared(picture: Array, used: Array | None, lag: tuple[int, int]) -> tuple[float, float]:
@@ -104,8 +119,6 @@ def correlated_information(
     """Return Jᵀ W½ R W½ J, R the noise's correlation, which is Jᵀ W J where the noise is white.
 
     Pixels at a lag lie a fixed distance further along the normal, so R mixes the columns of the design node by node.
-    A few lags, each with its chance, need not make a possible correlation: where the noise power comes out as less
-    than `LEAST_SUM` of white noise's, that is put in its place.
     """
     size = lattice.nodes.size
     rows = np.tile(np.arange(size), found.shares.size + 1)
@@ -116,10 +129,4 @@ def correlated_information(
     entries = np.concatenate([share * (1 - at + left), share * (at - left)])
     mix = sparse.csr_array((entries, (np.tile(rows, 2), np.concatenate([left, left + 1]))), shape=(size, size))
     mixed = information(pixels, linear, linear.weights, mix)
-    unit = np.sqrt(np.diag(linear.matrix)) + 1e-300
-    scale = unit[:, None] * unit[None, :]
-    root = np.linalg.cholesky(linear.matrix / scale + 1e-9 * np.eye(unit.size))
-    half = np.linalg.solve(root, (mixed + mixed.T) / 2 / scale)
-    power, ways = np.linalg.eigh(np.linalg.solve(root, half.T))
-    ways = root @ ways
-    return np.asarray((ways * np.maximum(power, LEAST_SUM)) @ ways.T * scale)
+    return np.asarray((mixed + mixed.T) / 2)
