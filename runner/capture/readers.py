@@ -86,6 +86,8 @@ def read_frames(path: Path, camera: Camera, *, name: str | None = None, compare:
         plain = FrameRefused(f"the file cannot be decoded ({reason})", where=where, next_step=COPY_AGAIN)
         raise _unfinished(data, where) or plain from error
     many = len(decoded.pages) > 1
+    if module is _HEADERLESS:
+        check_tail(decoded, data, where, camera)  # first, for zeros would look like a wrong layout
     for number, codes in enumerate(decoded.pages):
         if codes.shape[2:] != ((3,) if samples(camera) == 3 else ()):
             raise FrameRefused("a page is no plain picture", where=where, next_step=COPY_AGAIN)

@@ -190,14 +190,12 @@ def _no_doubles(pairs: list[tuple[str, Any]]) -> dict[str, Any]:
     if len(keys) != len(pairs):
         names = [k for k, _ in pairs]
         doubled = next(name for name in names if names.count(name) > 1)
-        msg = f"the key {doubled!r} stands twice"
-        raise ValueError(msg)
+        raise ValueError(f"the key {doubled!r} stands twice")
     return keys
 
 
 def _no_constants(word: str) -> Any:
-    msg = f"{word} is not allowed"
-    raise ValueError(msg)
+    raise ValueError(f"{word} is not allowed")
 
 
 def _amounts(parameters: Mapping[str, Amount]) -> dict[str, list[Any]]:

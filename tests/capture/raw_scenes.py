@@ -24,7 +24,7 @@ GAINS = {"grey": (1.0, 1.0, 1.0), "tungsten": (0.95, 0.8, 0.3), "daylight": (0.5
 
 def _grid() -> tuple[Light, Light]:
     y, x = np.mgrid[0.5:HEIGHT, 0.5:WIDTH]
-    return x, y
+    return np.asarray(x, np.float64), np.asarray(y, np.float64)
 
 
 def _across(angle: float) -> Light:
