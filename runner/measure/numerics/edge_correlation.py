@@ -18,6 +18,8 @@ from runner.measure.numerics.line_spread import Array, Lattice
 
 NEAR, FAR = 2, 4
 """px; correlation is looked for in lags up to the first, and summed up to the second where it is found."""
+HALF = tuple((dy, dx) for dy in range(FAR + 1) for dx in range(-FAR if dy else 1, FAR + 1))
+"""Lags (rows, columns) up to the far ones, one of each pair that differ in sign only."""
 LEAST_POWER = 0.5
 """Mean squared residual over its expected variance: below, it is rounding and misfit under the noise floor."""
 CERTAIN = 4.0
@@ -71,16 +73,15 @@ def correlation(linear: Linear, pixels: Pixels, raised: float) -> Correlation | 
         return None
     picture = pixels.picture(scaled / np.sqrt(power))
     used = None if pixels.kept is None else pixels.picture(np.ones_like(scaled))
-    lags = [(dy, dx) for dy in range(FAR + 1) for dx in range(-FAR if dy else 1, FAR + 1)]
-    shares, pairs = np.array([_shared(picture, used, lag) for lag in lags]).T
-    near = np.array([max(abs(dy), abs(dx)) <= NEAR for dy, dx in lags])
+    shares, pairs = np.array([_shared(picture, used, lag) for lag in HALF]).T
+    near = np.array([max(abs(dy), abs(dx)) <= NEAR for dy, dx in HALF])
     deviations = shares * np.sqrt(pairs)
     count = int(np.count_nonzero(near & (pairs > 0)))
     squares, total = float((deviations[near] ** 2).sum()), abs(float(deviations[near].sum()))
     if squares < count + CERTAIN * np.sqrt(2 * count) and total < CERTAIN * np.sqrt(count):
         return None
     kept = near | (np.abs(deviations) > SINGLE)
-    half = np.array(lags)[kept]
+    half = np.array(HALF)[kept]
     return _possible(np.concatenate([half, -half]), np.tile(shares[kept], 2))
 
 
@@ -89,14 +90,13 @@ def _possible(lags: NDArray[np.intp], shares: Array) -> Correlation:
 
     Single lags, each with its chance, need not make a possible one.
     """
-    grid = np.zeros((4 * FAR, 4 * FAR))
+    grid = np.zeros((2 * FAR + 1, 2 * FAR + 1))
     grid[0, 0] = 1.0
     grid[lags[:, 0], lags[:, 1]] = shares
     power = np.maximum(np.fft.fft2(grid).real, LEAST_SUM)
     grid = np.fft.ifft2(power / power.mean()).real
-    reach = np.arange(-FAR, FAR + 1)
-    whole = np.array([(dy, dx) for dy in reach for dx in reach if dy or dx])
-    return Correlation(whole, grid[whole[:, 0], whole[:, 1]])
+    half = np.array(HALF)
+    return Correlation(np.concatenate([half, -half]), np.tile(grid[half[:, 0], half[:, 1]], 2))
 
 
 def _shared(picture: Array, used: Array | None, lag: tuple[int, int]) -> tuple[float, float]:

@@ -1,106 +1,160 @@
-"""Noise from what a fit leaves over: by level, misfit told from chance, defects told from structure."""
+"""Noise and defect pixels planted on an edge that the model draws exactly come back, and nothing else."""
+
+from dataclasses import replace
 
 import numpy as np
 import pytest
-from numpy.typing import NDArray
 
 from runner.errors import MeasurementRefused
 from runner.measure.numerics import edge_model as em
 from runner.measure.numerics.edge_geometry import EdgeLine
-from runner.measure.numerics.edge_model import Linear, Noise, Parts, Pixels
 from runner.measure.numerics.edge_noise import defects, misfit, noise_of
-from runner.measure.numerics.line_spread import lattice_for
+from runner.measure.numerics.line_spread import Array, lattice_for
 from tests.scenes.edges import EdgeScene
 from tests.scenes.line_spreads import Gaussian
 
-SCENE = EdgeScene(Gaussian(0.6), (80, 120), 6.0, low=0.2, high=0.8)
-LATTICE = lattice_for(75, 0.7)
-LOW, HIGH = 0.004, 0.012
+SCENE = EdgeScene(Gaussian(0.6), size=(80, 120), direction=5.0, low=0.2, high=0.7)
+IDEAL = SCENE.signal()
+BRIGHT = (IDEAL - 0.2) / 0.5
+LATTICE = lattice_for(50, 0.7).without_kernels()
+FLOOR = 5e-4
 
 
-def _parts(sigma: float = 0.6) -> Parts:
-    line = EdgeLine(np.radians(6), SCENE.half_length, np.zeros(2))
-    return Parts(line, 0.2, 0.6, sigma, 0, 0, 0, 1.0, np.zeros(LATTICE.centres.size), np.zeros(2))
+def _parts(scene: EdgeScene = SCENE, sigma: float = 0.6) -> em.Parts:
+    line = EdgeLine(float(np.radians(scene.direction)), scene.half_length, np.array([scene.offset, 0.0]))
+    return em.Parts(line, 0.2, 0.5, sigma, 0.0, 0.0, 0.0, 1.0, np.zeros(0), np.zeros(2))
 
 
-def _noisy(seed: int) -> NDArray[np.float64]:
-    """Return the scene with noise whose variance grows linearly from the dark to the bright level."""
-    clean = SCENE.signal()
-    bright = (clean - 0.2) / 0.6
-    sd = np.sqrt(LOW**2 + (HIGH**2 - LOW**2) * bright)
-    return np.asarray(clean + sd * np.random.default_rng(seed).standard_normal(clean.shape))
+def _found(signal: Array, parts: em.Parts | None = None) -> tuple[em.Residuals, em.Pixels]:
+    parts = parts or _parts()
+    pixels = em.Pixels(signal, parts.line)
+    return em.residuals(pixels, parts, LATTICE, SCENE.sides), pixels
 
 
-def _linear(signal: NDArray[np.float64], parts: Parts | None = None) -> tuple[Linear, Pixels]:
-    parts = parts if parts is not None else _parts()
-    pixels = Pixels(signal, parts.line)
-    noise = Noise(LOW**2, HIGH**2, 9000)
-    return em.linearise(pixels, parts, LATTICE, parts.line.sides(), noise), pixels
+def _noisy(seed: int, low: float = 0.004, high: float = 0.010) -> Array:
+    """The ideal edge with noise whose variance is linear in level, as that of light is."""
+    draw = np.random.default_rng(seed).standard_normal(IDEAL.shape)
+    return np.asarray(IDEAL + np.sqrt(low**2 + (high**2 - low**2) * BRIGHT) * draw)
 
 
-def test_noise_of_both_levels() -> None:
-    """Each level's own noise is found within 4 % (4 000 pixels a side know it to 1.1 %), whatever the model's shape."""
-    for parts in (_parts(), _parts(2.0)):
-        found = noise_of(_linear(_noisy(1), parts)[0], 0.0)
-        # pixels between 0 and 0.3 and between 0.7 and 1 of the step count for their sides
-        assert np.sqrt([found.low, found.high]) == pytest.approx([LOW, HIGH], rel=0.04)
-        assert 8000 < found.dof < 9600
+@pytest.mark.parametrize("sigma", [0.6, 1.0])
+def test_planted_noise_comes_back_at_either_level(sigma: float) -> None:
+    """Both variances within 4 deviations of a χ² variable's mean, √(2/dof); also with a line spread that is wrong.
+
+    A Gaussian of 1.0 px for one of 0.6 px leaves a tenth of the step, five to twelve times the noise. 2 % are added
+    for what that leaves within bins of 0.05 px, and for the other level's noise in the one pixel of 40 on the flank.
+    """
+    runs = [noise_of(_found(_noisy(seed), _parts(sigma=sigma))[0], FLOOR) for seed in range(5)]
+    dof = sum(noise.dof for noise in runs)
+    allowed = 4 * np.sqrt(2 / (dof / 2)) + 0.02
+
+    assert np.mean([noise.low for noise in runs]) == pytest.approx(0.004**2, rel=allowed)
+    assert np.mean([noise.high for noise in runs]) == pytest.approx(0.010**2, rel=allowed)
+    assert runs[0].dof == pytest.approx(IDEAL.size, rel=0.2)
 
 
-def test_noise_never_falls_below_its_floor() -> None:
-    """A noiseless region has the noise of rounding that is told."""
-    found = noise_of(_linear(SCENE.signal())[0], 2e-4)
-    assert (found.low, found.high) == pytest.approx((4e-8, 4e-8))
+def test_few_pixels_to_a_bin_do_not_hide_their_noise() -> None:
+    """Where a bin holds two pixels only, each bin's mean takes one degree of freedom: else a third would be missing.
+
+    60 regions of 40 × 24 px: 4 deviations of a χ² mean, and 4 % for the flank, twice as much of such a region.
+    """
+    scene = replace(SCENE, size=(40, 24))
+    parts, rng = _parts(scene), np.random.default_rng(8)
+    runs = [noise_of(_found(scene.signal() + rng.normal(0, 0.01, (24, 40)), parts)[0], FLOOR) for _ in range(60)]
+
+    assert runs[0].dof < 0.8 * 40 * 24
+    allowed = 4 * np.sqrt(2 / sum(noise.dof / 2 for noise in runs)) + 0.04
+    assert np.mean([(noise.low, noise.high) for noise in runs], axis=0) == pytest.approx([1e-4, 1e-4], rel=allowed)
 
 
-def test_one_side_only() -> None:
-    """With hardly a pixel on one side there is no noise to be had, and the sentence says what to do."""
-    scene = EdgeScene(Gaussian(0.6), (20, 30), 6.0, offset=10.3, low=0.2, high=0.8)
-    line = EdgeLine(np.radians(6), scene.half_length, np.array([10.3, 0.0]))
-    parts = Parts(line, 0.2, 0.6, 0.6, 0, 0, 0, 1.0, np.zeros(LATTICE.centres.size), np.zeros(2))
-    pixels = Pixels(scene.signal(), line)
-    with pytest.raises(MeasurementRefused, match=r"too few pixels lie on one side of the edge; .*centre it") as refused:
-        noise_of(em.residuals(pixels, parts, LATTICE, line.sides()), 0.0)
+def test_no_noise_is_taken_for_less_than_the_floor() -> None:
+    """Without noise the floor's variance stands at both levels."""
+    noise = noise_of(_found(IDEAL)[0], FLOOR)
+
+    assert (noise.low, noise.high) == pytest.approx((FLOOR**2, FLOOR**2))
+
+
+def test_an_edge_at_the_border_is_refused() -> None:
+    """Fewer than eleven pixels on a side tell nothing of its noise."""
+    scene = replace(SCENE, offset=44.0)
+    found, _ = _found(scene.signal(), _parts(scene))
+
+    with pytest.raises(MeasurementRefused, match="too few pixels lie on one side of the edge") as refused:
+        noise_of(found, FLOOR)
     assert refused.value.cause == "outside the estimator's limits"
 
 
-def test_misfit_is_one_by_chance_and_grows_with_a_wrong_shape() -> None:
-    """The true model leaves chance only in 10 of 10 captures; a Gaussian wider by a third leaves many times more."""
+def test_misfit_is_one_by_chance_and_grows_with_the_wrong_model() -> None:
+    """χ² of bins is 1 in 29 of 30 runs or more (3 deviations miss 0.3 to 1 %), and tells a Gaussian 7 % too wide.
+
+    The wrong model's χ² is that of the difference of two scenes over the noise, bin by bin, plus 1.
+    """
+    level = em.Noise(0.006**2, 0.006**2, 1e4)
+    calm = [_noisy(seed, 0.006, 0.006) for seed in range(30)]
+
+    def of(signal: Array, sigma: float) -> float:
+        parts = _parts(sigma=sigma)
+        return misfit(em.linearise(em.Pixels(signal, parts.line), parts, LATTICE, SCENE.sides, level), 0.0)
+
+    assert sum(of(signal, 0.6) != 1.0 for signal in calm) <= 1
+    found, _ = _found(calm[0])
+    for sigma, least in ((0.64, 1.3), (0.7, 2.0)):  # 3 deviations are 0.2 with 500 bins
+        wide = replace(SCENE, optics=Gaussian(sigma)).signal() - IDEAL
+        truth = 1 + float((wide**2).sum()) / 0.006**2 / np.count_nonzero(found.counts)
+        assert truth > least
+        assert of(calm[0], sigma) == pytest.approx(truth, rel=0.2)
+
+
+def test_no_defects_in_noise_alone() -> None:
+    """Six deviations are passed by 2 pixels in 10^9: none in 20 regions of 9600, nor where the fit is slightly off."""
+    for seed in range(20):
+        found, pixels = _found(_noisy(seed), _parts(sigma=0.6 if seed % 2 else 0.62))
+        assert not defects(found, pixels, FLOOR).any()
+
+
+@pytest.mark.parametrize("seed", range(5))
+def test_planted_defects_are_found_and_no_others(seed: int) -> None:
+    """Twenty pixels off by 12 deviations of their own level are the defects, wherever they lie, dark or bright."""
+    rng = np.random.default_rng(100 + seed)
+    signal = _noisy(seed)
+    planted = np.zeros(IDEAL.size, dtype=bool)
+    plateaus = np.flatnonzero(np.abs(SCENE.distance().ravel()) > 3)
+    planted[rng.choice(plateaus, 20, replace=False)] = True
+    away = 12 * np.where(BRIGHT.ravel() > 0.5, 0.010, 0.004) * rng.choice([-1, 1], IDEAL.size)
+    signal.ravel()[planted] = (IDEAL.ravel() + away)[planted]
+    found, pixels = _found(signal)
+
+    assert np.flatnonzero(defects(found, pixels, FLOOR)).tolist() == np.flatnonzero(planted).tolist()
+
+
+@pytest.mark.parametrize("axis", [0, 1])
+def test_a_dead_line_goes_as_a_whole(axis: int) -> None:
+    """A row or column at one level between both is left out whole, its crossing with the edge included; two as well."""
+    for lost in ([31], [31, 50]):
+        signal = _noisy(9)
+        planted = np.zeros(IDEAL.shape, dtype=bool)
+        planted[(lost, slice(None)) if axis == 0 else (slice(None), lost)] = True
+        signal[planted] = 0.45
+        found, pixels = _found(signal)
+
+        assert (defects(found, pixels, FLOOR) == planted.ravel()).all()
+
+
+def test_many_outliers_are_structure() -> None:
+    """Above 0.5 % of the pixels nothing is left out: a pattern on the chart is no defect of the sensor."""
+    signal = _noisy(4)
+    signal[10:20, 5:13] += 0.2  # 80 of 9600 pixels
+    found, pixels = _found(signal)
+
+    assert not defects(found, pixels, FLOOR).any()
+
+
+@pytest.mark.parametrize("noise", [0.2, 0.5])
+def test_few_codes_are_no_defects(noise: float) -> None:
+    """A step of 20 codes under noise of less than one leaves whole codes, of which none is out of the ordinary."""
+    code = 0.5 / 20
     for seed in range(10):
-        assert misfit(_linear(_noisy(seed))[0], 10) == pytest.approx(1, abs=0.2)
-    assert misfit(_linear(_noisy(1), _parts(0.8))[0], 10) > 3
+        draw = np.random.default_rng(seed).standard_normal(IDEAL.shape)
+        found, pixels = _found(np.asarray(code * np.rint(IDEAL / code + noise * draw)))
 
-
-def test_defects_are_found_and_nothing_else() -> None:
-    """Dead and hot pixels are found one and all; without them none is, in 10 of 10 captures."""
-    for seed in range(10):
-        linear, pixels = _linear(_noisy(seed))
-        assert not defects(linear, pixels, 1e-4).any()
-    spoilt = _noisy(3)
-    spoilt[[10, 60, 100], [70, 5, 33]] = [0.0, 1.0, 0.5]
-    found = defects(*_linear(spoilt), 1e-4)
-    assert np.flatnonzero(found).tolist() == [10 * 80 + 70, 60 * 80 + 5, 100 * 80 + 33]
-
-
-def test_a_dead_column_is_one_defect() -> None:
-    """A stuck column is left out as a whole, also where its value equals the edge's; a stuck row likewise."""
-    for spoil in (np.s_[:, 30], np.s_[77, :]):
-        spoilt = _noisy(4)
-        spoilt[spoil] = 0.5
-        true = np.zeros((120, 80), dtype=bool)
-        true[spoil] = True
-        assert np.array_equal(defects(*_linear(spoilt), 1e-4), true.ravel())
-
-
-def test_structure_is_no_defect() -> None:
-    """A patch of a hundred pixels of another level is something on the chart: nothing is left out."""
-    spoilt = _noisy(5)
-    spoilt[20:30, 60:70] = 0.3
-    assert not defects(*_linear(spoilt), 1e-4).any()
-
-
-def test_few_codes_are_no_defects() -> None:
-    """Noise of half a code makes whole codes of residuals, no defects."""
-    code = 0.02
-    signal = np.rint((SCENE.signal() + 0.5 * code * np.random.default_rng(6).standard_normal((120, 80))) / code) * code
-    assert not defects(*_linear(signal), code / np.sqrt(12)).any()
+        assert not defects(found, pixels, code / float(np.sqrt(12))).any()
