@@ -28,6 +28,8 @@ CERTAIN = 4.0
 """Standard deviations from which chance is no longer the explanation."""
 STRANGE = 0.15
 """Departure from the plateau, as a share of the step, of 4 × 4 px means that belong to something else."""
+MOST_STRANGE = 0.4
+"""The same where such squares usually depart by that much: a bar of any width departs by more."""
 STRANGE_SHARE = 0.02
 """That share of strange squares is a second edge; dust stays below."""
 LEAST_REACH = 1.2
@@ -167,9 +169,12 @@ def _check_levels(curves: Curves) -> None:
 
 def strange_share(curves: Curves) -> float:
     """Return the share of 4 × 4 px squares, away from the edge, that lie off their plateau."""
-    squares, counts, seen = _squares(curves, 4)
-    noise = float(np.sqrt(max(curves.fit.noise.low, curves.fit.noise.high) * curves.fit.of_means / counts.max()))
-    limit = max(STRANGE * curves.rise, CERTAIN * min(noise, 0.25 * curves.rise))
+    squares, _, seen = _squares(curves, 4)
+    if not seen.any():
+        return 0.0
+    # noise passes 8 medians (5.4 of its deviations) never, a smooth shading hardly: what does is something else
+    usual = 8 * float(np.median(np.abs(squares[seen]))) / curves.rise
+    limit = curves.rise * float(np.clip(usual, STRANGE, MOST_STRANGE))
     return float(np.mean((np.abs(squares) > limit) & seen))
 
 

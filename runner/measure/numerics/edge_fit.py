@@ -18,7 +18,6 @@ from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy import linalg
 
 from runner.errors import MeasurementRefused
 from runner.measure.numerics import edge_model as em
@@ -157,8 +156,9 @@ def _plain_fit(pixels: Pixels, parts: Parts, reach: float, aperture: float) -> P
         linear = em.linearise(pixels, parts, lattice, parts.line.sides(aperture), None)
         use = [em.LEVEL, em.STEP, em.WIDENING, *([em.TAIL] if settled else []), *place]
         matrix = linear.matrix[np.ix_(use, use)]
-        matrix = matrix + np.diag(1e-9 * np.diag(matrix) + 1e-12)
-        solved = linalg.solve(matrix, linear.right[use], assume_a="pos")
+        unit = np.sqrt(np.diag(matrix)) + 1e-9  # a column may vanish on the way to no edge at all
+        matrix = matrix / (unit[:, None] * unit[None, :]) + 1e-9 * np.eye(unit.size)
+        solved = np.linalg.solve(matrix, linear.right[use] / unit) / unit
         # half steps end a swing between two places that samples far apart leave open
         move = {k: float(v) / (1 + (turn > ROUNDS // 3)) for k, v in zip(use, solved, strict=True)}
         wider = float(np.clip(move[em.WIDENING] / parts.step, -0.5, 0.5))
@@ -247,7 +247,7 @@ def _joint_fit(
     floor = max(noise_floor, MODEL_FLOOR * scale)
     noise = noise_of(em.residuals(pixels, parts, lattice, parts.line.sides(aperture)), floor)
     excess, together, left_out = 1.0, None, 0
-    for turn in range(8):
+    for turn in range(10):
         linear = em.linearise(pixels, parts, lattice, parts.line.sides(aperture), noise.times(excess))
         solved = _solve(linear, parts, sizes, scale, shading=shading)
         parts = _moved(parts, solved, linear, shading=shading)
@@ -255,10 +255,10 @@ def _joint_fit(
         if parts.line.coefficients.size == 2:
             parts = replace(parts, line=parts.line.turned())
         pixels.place(parts.line)
-        if turn == 1:
+        if turn == 1 or (left_out and turn < 4):  # what a defect line has bent shows others when it is gone
             lost = defects(em.residuals(pixels, parts, lattice, parts.line.sides(aperture)), pixels, floor)
-            left_out = int(lost.sum())
-            if left_out:
+            left_out += int(lost.sum())
+            if lost.any():
                 pixels.drop(lost, parts.line)
                 noise = noise_of(em.residuals(pixels, parts, lattice, parts.line.sides(aperture)), floor)
                 continue
@@ -332,7 +332,7 @@ def _solve(linear: Linear, parts: Parts, sizes: Array, scale: float, *, shading:
     unit[head:] = 1 / sizes
     matrix /= unit[:, None] * unit[None, :]
     right /= unit
-    own = linalg.inv(matrix[:head, :head] + 1e-12 * np.eye(head))
+    own = np.asarray(np.linalg.inv(matrix[:head, :head] + 1e-12 * np.eye(head)), dtype=np.float64)
     pull = own @ matrix[:head, head:]
     values, vectors = np.linalg.eigh(matrix[head:, head:] - matrix[head:, :head] @ pull)
     values = np.maximum(values, 0)

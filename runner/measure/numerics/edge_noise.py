@@ -78,7 +78,8 @@ def defects(found: Residuals, pixels: Pixels, floor: float) -> NDArray[np.bool_]
         sd[k] = max(floor, float(np.quantile(np.abs(found.residual[side]), 0.9)) / 1.645 if side.any() else 0.0)
     limit = DEFECT * np.maximum(sd[0] + (sd[1] - sd[0]) * np.clip(spread, 0, 1), sd.max() / 4)
     # where the signal is steep, a residual may be the fit's
-    bad = np.asarray(np.abs(found.residual) > limit)
+    size = np.abs(found.residual) / limit
+    bad = np.asarray(size > 1)
     if not bad.any():
         return bad
     where = pixels.picture(bad.astype(np.float64))
@@ -89,5 +90,8 @@ def defects(found: Residuals, pixels: Pixels, floor: float) -> NDArray[np.bool_]
         if 0 < np.count_nonzero(whole) <= MOST_LINES:
             lines |= np.expand_dims(whole, axis)
     lost = pixels.taken(lines)
-    few = np.count_nonzero(bad & ~lost) <= MOST_DEFECTS * bad.size
-    return np.asarray(bad | lost if few else np.zeros_like(bad))
+    # a few strong ones may have bent the fit so far that it leaves others out: the strong ones first
+    for some in (bad, bad & (size > size.max() / 2)):
+        if np.count_nonzero(some & ~lost) <= MOST_DEFECTS * bad.size:
+            return np.asarray(some | lost)
+    return np.asarray(lost)

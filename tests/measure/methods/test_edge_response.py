@@ -107,6 +107,54 @@ def test_exposure_is_refused_before_the_fit(cause: str, sentence: str, codes: ND
     measured(sample(codes=dim(1)))
 
 
+def test_black_clamped_at_code_zero_is_refused() -> None:
+    """A camera without a black level cuts the noise of a level near zero off: 8 % at code 0 are refused, 0.1 % not."""
+    scene = EdgeScene(Gaussian(0.5), (60, 80), 5.0, low=100, high=20000, read_noise=100)
+    with pytest.raises(MeasurementRefused, match=r"8\.\d\d % .* at the black end; at most 1 %; raise") as refused:
+        measured(sample(scene=scene))
+    assert refused.value.cause == "clipped"
+    measured(sample(scene=replace(scene, low=330)))
+
+
+def test_own_pixels_of_a_mosaic() -> None:
+    """A channel is measured where its pixels lie, whatever the others hold; the standard's estimator is refused there.
+
+    Red with a quarter of the pixels knows mtf50 half as well as all of them do, within a third.
+    """
+    scene = replace(SCENE, size=(80, 120))
+    codes = scene.render(np.random.default_rng(12))
+    camera = replace(camera_of(scene), mosaic="GRBG")
+    whole = by_label(measured(sample(MTF50, scene=scene, codes=codes)))["mtf50"]
+    for other in (64, 3000):
+        spoilt = np.full_like(codes, other)
+        spoilt[::2, 1::2] = codes[::2, 1::2]
+        red = replace(sample(scene=scene), crop=cropped(spoilt, camera, "red"), camera=camera)
+        asked = measured(replace(red, wanted=(MTF50, replace(MTF50, estimator=edge_response.ISO))))
+        reading = by_label(asked)["mtf50"]
+        assert reading.value == pytest.approx(scene.mtf50(), abs=3 * (reading.u or 0))
+        assert reading.u == pytest.approx(2 * (whole.u or 0), rel=1 / 3)
+        refusal = by_label(asked, edge_response.ISO)["mtf50"].refusal
+        assert refusal is not None
+        assert "takes whole rows" in refusal.because
+
+
+@pytest.mark.parametrize("spoil", ["column", "row", "dirt"])
+def test_defects_and_dirt_cost_little(spoil: str) -> None:
+    """A stuck column or row or a speck of dirt across the edge leaves mtf50 within 3 u, and the reading says so."""
+    scene = replace(SCENE, size=(80, 120))
+    codes = scene.render(np.random.default_rng(13))
+    if spoil == "column":
+        codes[:, 43] = 1700
+    elif spoil == "row":
+        codes[70] = 1700
+    else:
+        codes[50:53, 41:44] = 500
+    reading = by_label(measured(sample(MTF50, scene=scene, codes=codes)))["mtf50"]
+    assert reading.value == pytest.approx(scene.mtf50(), abs=3 * (reading.u or 0))
+    assert (reading.u or 1) < 0.01 * scene.mtf50()
+    assert any(flag.startswith("defect pixels left out: ") for flag in reading.flags)
+
+
 def test_the_standards_estimator_is_named() -> None:
     """By option or by wish, the standard's readings carry its name and edition; what it lacks is refused, not faked."""
     iso = replace(MTF50, estimator=edge_response.ISO)
