@@ -228,3 +228,36 @@ def _dictionaries(pdf: pikepdf.Pdf) -> Iterator[Any]:
 
 def _streams(pdf: bytes) -> list[Any]:
     return [one for one in pikepdf.open(BytesIO(pdf)).objects if isinstance(one, pikepdf.Stream)]
+
+
+def test_what_was_printed_before_changes_nothing() -> None:
+    """One process prints many reports with the same fonts: each has the bytes that it has alone."""
+    first = _print(world.document())
+    _print(world.failing())
+
+    assert _print(world.document()) == first
+
+
+def test_printing_leaves_no_file_behind(tmp_path: Path) -> None:
+    """The renderer's folder of fonts goes with the process, also with one that another has forked."""
+    (tmp_path / "script.py").write_text(
+        "import sys\n"
+        "from multiprocessing import get_context\n"
+        "from runner.report.document import canonical\n"
+        "from runner.report.pdf import render_pdf\n"
+        "from tests.report import printed_world as world\n"
+        "def work():\n"
+        "    render_pdf(world.document(), world.pictures(), canonical(world.document()))\n"
+        "if __name__ == '__main__':\n"
+        "    worker = get_context('forkserver').Process(target=work)\n"
+        "    worker.start()\n"
+        "    worker.join()\n"
+        "    work()\n"
+        "    sys.exit(worker.exitcode)\n"
+    )
+    (tmp_path / "scratch").mkdir()
+    root = str(Path(__file__).resolve().parents[2])
+    environment = os.environ | {"PYTHONPATH": root, "TMPDIR": str(tmp_path / "scratch")}
+    subprocess.run([sys.executable, "script.py"], cwd=tmp_path, env=environment, check=True, timeout=120)
+
+    assert list((tmp_path / "scratch").iterdir()) == []
