@@ -49,7 +49,7 @@ class GratingScene:
     def axes(self) -> tuple[Values, Values]:
         """Return the positions of columns and rows."""
         w, h = self.size
-        return np.arange(w) - (w - 1) / 2, np.arange(h) - (h - 1) / 2
+        return np.arange(w, dtype=np.float64) - (w - 1) / 2, np.arange(h, dtype=np.float64) - (h - 1) / 2
 
     def light(self, rng: np.random.Generator | None = None) -> Values:
         """Return the patch, rows × columns."""
