@@ -58,14 +58,14 @@ class Listed:
         return Spot(self.region, kind, float(place[0]), float(place[1]), words)
 
     def _pixel(self, one: Defect) -> Spot:
-        departs = f"{100 * abs(one.contrast):.3g} % {'above' if one.contrast > 0 else 'below'} its neighbours"
+        departs = f"{_figure(100 * abs(one.contrast))} % {'above' if one.contrast > 0 else 'below'} its neighbours"
         words = {
-            "hot": f"{one.contrast:.3g} DN above its neighbours",
+            "hot": f"{_figure(one.contrast)} DN above its neighbours",
             "stuck": f"the same code in all {len(self.frames.frames)} frames",
-            "blinking": f"{one.contrast:.3g} times its neighbours' scatter from frame to frame",
+            "blinking": f"{_figure(one.contrast)} times its neighbours' scatter from frame to frame",
         }.get(one.kind, departs)
         if one.kind in {"hot", "dead", "dim", "bright"}:
-            words += f", {abs(one.significance):.3g} times the noise"
+            words += f", {_figure(abs(one.significance))} times the noise"
         return self._spot(f"{one.kind} pixel", self.frames.grid.pixel(one.y, one.x), words)
 
     def _cluster(self, group: Cluster) -> Spot:
@@ -80,7 +80,8 @@ class Listed:
         else:
             place = float(grid.pixel(self._first(line.at), line.at)[0]), middle[1]
         way = "above" if line.contrast > 0 else "below"
-        words = f"{abs(line.contrast):.3g} DN {way} its neighbours, {abs(line.significance):.3g} times their noise"
+        words = f"{_figure(abs(line.contrast))} DN {way} its neighbours"
+        words += f", {_figure(abs(line.significance))} times their noise"
         return self._spot(f"defective {line.direction}", place, words)
 
     def _first(self, at: int) -> int:
@@ -98,3 +99,8 @@ class Listed:
         way = "brighter" if one.contrast > 0 else "darker"
         words = f"{100 * abs(one.contrast):.2g} % {way} than around it, {grid.across * one.size:.0f} px wide"
         return self._spot("blemish", (x - 0.5, y - 0.5), words)
+
+
+def _figure(value: float) -> str:
+    """Return a number in three digits, or all before the point of a larger one."""
+    return f"{value:.0f}" if value >= 100 else f"{value:.3g}"

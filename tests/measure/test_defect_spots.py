@@ -28,6 +28,7 @@ def _pixel(kind: str, contrast: float, significance: float = 9.0) -> Defect:
     ("defect", "words"),
     [
         (_pixel("hot", 312.4), "312 DN above its neighbours, 9 times the noise"),
+        (_pixel("hot", 2512.4, 626.3), "2512 DN above its neighbours, 626 times the noise"),
         (_pixel("dead", -0.97), "97 % below its neighbours, 9 times the noise"),
         (_pixel("dim", -0.123, -6.25), "12.3 % below its neighbours, 6.25 times the noise"),
         (_pixel("bright", 0.08), "8 % above its neighbours, 9 times the noise"),
