@@ -136,7 +136,7 @@ def decide_count(count: float, trials: int | None, bound: str | None, limits: Li
 
 
 def _count_probability(count: int, trials: int | None, bound: str, limits: Limits) -> float:
-    from scipy import stats  # noqa: PLC0415 - heavy
+    from scipy import special  # noqa: PLC0415 - heavy
 
     low, high = limits.interval
 
@@ -148,10 +148,9 @@ def _count_probability(count: int, trials: int | None, bound: str, limits: Limit
             return 0.0
         k = count + 1 if proving_high else count
         if bound == "binomial" and trials:
-            return (
-                float(stats.beta.cdf(min(rate / trials, 1.0), k, trials - k + 1)) if 0 < k <= trials else float(k == 0)
-            )
-        return float(stats.gamma.cdf(rate, k)) if k > 0 else 1.0
+            share = min(rate / trials, 1.0)
+            return float(special.betainc(k, trials - k + 1, share)) if 0 < k <= trials else float(k == 0)
+        return float(special.gammainc(k, rate)) if k > 0 else 1.0
 
     return max(0.0, below(high, proving_high=True) - below(low, proving_high=False))
 

@@ -9,7 +9,6 @@ from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from hashlib import sha256
 from math import ceil, inf, isfinite, sqrt
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -66,10 +65,10 @@ def coverage_factor(probability: float, dof: float = inf) -> float:
         probability: Coverage probability, in (0, 1).
         dof: Effective degrees of freedom.
     """
-    from scipy.stats import norm, t  # noqa: PLC0415 - heavy
+    from scipy import special  # noqa: PLC0415 - heavy
 
     upper = (1 + probability) / 2
-    return float(norm.ppf(upper) if dof > 1e6 else t.ppf(upper, int(dof)))
+    return float(special.ndtri(upper) if dof > 1e6 else special.stdtrit(int(dof), upper))
 
 
 @dataclass(frozen=True)
@@ -294,12 +293,12 @@ def _mean_component(parts: Sequence[Component], n: int) -> Component:
 
 def _scatters(values: Array, readings: Sequence[Reading]) -> bool:
     """Tell whether repeats scatter beyond their stated noise (chi-square test)."""
-    from scipy.stats import chi2  # noqa: PLC0415 - heavy
+    from scipy import special  # noqa: PLC0415 - heavy
 
     noise = np.array([sqrt(sum(c.u**2 for c in _parts(r) if c.averages)) for r in readings])
     if np.any(noise == 0):
         return bool(np.ptp(values) > 0 and np.all(noise == 0) and any(c.averages for c in _parts(readings[0])))
     weights = noise**-2
     mean = np.average(values, weights=weights)
-    excess: Any = chi2.sf(float(np.sum(weights * (values - mean) ** 2)), len(values) - 1)
+    excess = special.chdtrc(len(values) - 1, float(np.sum(weights * (values - mean) ** 2)))
     return bool(excess < TOO_MUCH_SCATTER)
