@@ -221,7 +221,9 @@ def _check_row_length(data: bytes, number: int, where: str, camera: Camera) -> N
     raw = np.frombuffer(data, np.uint8, count * pitch_bytes, start).reshape(count, pitch_bytes)
     stream = packed.unpack(raw, layout).ravel().astype(np.float64)
     lengths = [_between_zeros(stream, count)] if camera.black_level > 0 else []
-    lengths += [length for length in _row_lengths(stream, pitch) if _has_seam(stream, length, pitch)]
+    seams = 1 if camera.mosaic == "none" else 2
+    stream = stream[::seams]  # of a mosaic every second pixel; two rows of them, one of each colour, have the pitch
+    lengths += [length for length in _row_lengths(stream, pitch) if _has_seam(stream, length, pitch, seams)]
     for likely in lengths:
         if likely not in {0, pitch}:
             raise _refused(
@@ -259,7 +261,7 @@ def _row_lengths(stream: NDArray[np.float64], declared: int) -> list[int]:
     return sorted(lengths.tolist(), key=lambda length: -float(along[length]))[:8]
 
 
-def _has_seam(stream: NDArray[np.float64], length: int, declared: int) -> bool:
+def _has_seam(stream: NDArray[np.float64], length: int, declared: int, seams: int) -> bool:
     """Tell whether one sharp step comes back after exactly that length, in nearly every row, and none where declared.
 
     A sharp edge of the scene is spread over more than one step by any optics, has its counterpart elsewhere in the row,
@@ -275,13 +277,16 @@ def _has_seam(stream: NDArray[np.float64], length: int, declared: int) -> bool:
     seam = int(np.argmax(columns))
     height = float(columns[seam]) - usual
     near = np.array([(seam + n) % length for n in (-2, -1, 1, 2)])
-    others = np.delete(columns, [seam, *near]) - usual
-    wraps = np.arange(declared - 1, steps.size, declared)
-    wraps = wraps[(wraps - seam) % length != 0]
+    twin = [(seam + length // seams + n) % length for n in range(-2, 3)]
+    others = np.delete(columns, [seam, *near, *twin]) - usual
+    wraps = np.arange(declared // seams - 1, steps.size, declared // seams)
+    wraps = wraps[(wraps - seam) % (length // seams) != 0]
     if wraps.size == 0 or height <= _SEAM * max(float(others.std()), 1e-9):
         return False
-    alone = columns[near].max() - usual < 0.15 * height and others.max() < 0.7 * height
-    always = np.count_nonzero(folded[:, seam] > usual + 0.25 * height) >= 0.9 * rows
+    beside = (columns[near[1:3]] - usual) / height  # optics spread an edge to both sides, the picture ends on either
+    second = columns[twin[2]] - usual > 0.5 * height
+    alone = beside.min() < 0.1 and beside.max() < 0.35 and others.max() < 0.7 * height and second
+    always = np.count_nonzero(folded[:, seam] > usual + 0.25 * height) >= (0.9 if seams == 1 else 0.6) * rows
     return bool(alone and always and steps[wraps].mean() < usual + height / 3)
 
 

@@ -2,6 +2,7 @@
 
 from dataclasses import replace
 from io import BytesIO
+from typing import Any
 
 import h5py
 import numpy as np
@@ -34,7 +35,7 @@ def as_fits(codes: NDArray[np.generic]) -> bytes:
     return file.getvalue()
 
 
-def as_hdf5(codes: NDArray[np.generic], path: str = "entry/frames", **options: object) -> bytes:
+def as_hdf5(codes: NDArray[np.generic], path: str = "entry/frames", **options: Any) -> bytes:
     """Return an HDF5 file with one dataset."""
     file = BytesIO()
     with h5py.File(file, "w") as written:
@@ -84,7 +85,7 @@ BAD_COLOUR = (
     Staged("FITS with a zero tail", "its last 8000 bytes are zero", GREY,
            second(lambda c: zero_tail(as_fits(c), 8000), "fits")),
     Staged("FITS scaled", r"the file scales its numbers \(BSCALE 0.5", GREY,
-           second(lambda c: as_fits(c).replace(b"BSCALE  =" + b"1".rjust(21), b"BSCALE  =" + b"0.5".rjust(21)), "fits")),
+           second(lambda c: as_fits(c).replace(b"BSCALE  =" + b"1".rjust(21), b"BSCALE  = 0.5".ljust(30)), "fits")),
     Staged("HDF5 of two datasets", "the file holds 2 datasets", GREY,
            second(_two_datasets, "h5")),
     Staged("HDF5 cut", "cannot be decoded|truncated", GREY, second(lambda c: as_hdf5(c)[:30000], "h5")),

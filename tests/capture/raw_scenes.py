@@ -64,8 +64,9 @@ def scenes() -> Iterator[tuple[str, Light]]:
     yield "chequered board", 0.2 + 0.6 * squares
     turned = (np.floor(_across(7) / 24) + np.floor(_across(97) / 24)) % 2
     yield "turned board", 0.2 + 0.6 * turned
-    yield "star", 0.5 + 0.4 * np.sin(36 * np.arctan2(y - HEIGHT / 2, x - WIDTH / 2))
-    yield "bar", 0.2 + 0.6 * (np.abs(_across(45)) < 6)
+    star: Light = 0.5 + 0.4 * np.sin(36 * np.arctan2(y - HEIGHT / 2, x - WIDTH / 2))
+    yield "star", star
+    yield "bar", np.asarray(0.2 + 0.6 * (np.abs(_across(45)) < 6), np.float64)
     yield "thin line", 0.2 + 0.7 * np.exp(-(_across(20) ** 2) / 2)
     points = np.zeros((HEIGHT, WIDTH))
     points[rng.integers(4, HEIGHT - 4, 30), rng.integers(4, WIDTH - 4, 30)] = 1
