@@ -1,17 +1,19 @@
 """Study: does the stated uncertainty of the edge method hold? Synthetic captures of known truth, pooled.
 
 Run with `tests/run studies` (or `pytest -m study -s tests/measure/test_edge_coverage.py`); it takes some minutes and
-prints the table that stands in DEVELOPERS.md. The promise: |value - truth| ≤ 2u happens 93-97 % of the time and
-spread/u lies in 0.8-1.25; where a limit at zero or a bias bound dominates, at least 93 %.
+prints the tables that stand in DEVELOPERS.md; one small sample runs always. The promise: |value - truth| ≤ 2u happens
+93-97 % of the time and spread/u lies in 0.8-1.25; where a limit at zero or a bias bound dominates, at least 93 %.
 """
 
 from collections import defaultdict
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
 import pytest
+from numpy.typing import NDArray
+from scipy import ndimage
 
 from runner.errors import MeasurementRefused
 from runner.measure.reading import Reading
@@ -39,6 +41,8 @@ FRAMES = (((40, 60), 100), ((80, 120), 100), ((80, 120), 30), ((60, 90), 30))
 """Width × height, step over noise."""
 BOUNDED = {"overshoot", "undershoot"}
 """Quantities that a limit at zero dominates when nothing is there."""
+BIASED = {"lsf fwhm"}
+"""Quantities that a bound on bias dominates: 1.5 % for line spreads with kinks, which most have not."""
 
 
 @dataclass(frozen=True)
@@ -139,9 +143,34 @@ def _hold(scores: Scores) -> list[str]:
         slack = 3 * (0.05 * 0.95 / len(some)) ** 0.5
         if coverage < 0.93 - slack:
             broken.append(f"{label}: ±2u holds {100 * coverage:.1f} %")
-        if not label.endswith("at zero") and (coverage > 0.97 + slack or not 0.8 - slack <= spread <= 1.25 + slack):
+        if (
+            label not in BIASED
+            and not label.endswith("at zero")
+            and (coverage > 0.97 + slack or not 0.8 - slack <= spread <= 1.25 + slack)
+        ):
             broken.append(f"{label}: ±2u holds {100 * coverage:.1f} %, spread/u {spread:.2f}")
     return broken
+
+
+def test_a_small_sample() -> None:
+    """Of 60 captures of 40 × 60 px, ± 2u holds the truth in 90 % or more, and spread/u lies in 0.7-1.2.
+
+    Four quantities of one capture go together; 60 captures alone would leave ± 3 % and ± 9 %.
+    """
+    rng = np.random.default_rng(SEED + 3)
+    scores: Scores = defaultdict(list)
+    for k in range(60):
+        spread = list(SPREADS.values())[k % len(SPREADS)]
+        scene = EdgeScene(
+            spread, (40, 60), rng.uniform(2.7, 43), offset=rng.uniform(-0.5, 0.5), read_noise=STEP / (100, 30)[k % 2]
+        )
+        true = truths(scene)
+        few = {label: true[label] for label in ("mtf50", "mtf at 0.1 cy/px", "mtf at 0.25 cy/px", "edge width")}
+        _note(scores, "small", measure(scene, scene.render(rng)), few)
+    z = np.array([s.error / s.u for some in scores.values() for s in some])
+    assert z.size == 240
+    assert np.mean(np.abs(z) <= 2) >= 0.9
+    assert 0.7 <= z.std() <= 1.2
 
 
 @pytest.mark.study
@@ -190,6 +219,70 @@ def test_shading_and_shot_noise() -> None:
         _note(scores, kind, measure(scene, scene.render(rng), flats=flats, **options), true)
     _print("light", scores, ["mtf50", "mtf at 0.1 cy/px", "mtf at 0.25 cy/px"])
     assert _hold(scores) == []
+
+
+def _filtered(kernel: NDArray[np.float64]) -> Callable[[EdgeScene, np.random.Generator], Codes]:
+    """Return a rendering whose noise a filter has gone over, as colour interpolation or denoising would."""
+
+    def render(scene: EdgeScene, rng: np.random.Generator) -> Codes:
+        width, height = scene.size
+        white = ndimage.convolve(rng.standard_normal((height, width)), kernel, mode="wrap")
+        noise = scene.read_noise * white / np.sqrt((kernel**2).sum())
+        return replace(scene, read_noise=0.0).render(rng, scene.signal() + noise)
+
+    return render
+
+
+def _plain(scene: EdgeScene, rng: np.random.Generator) -> Codes:
+    return scene.render(rng)
+
+
+BOX, BELL = np.ones((3, 3)), np.outer([1.0, 2.0, 1.0], [1.0, 2.0, 1.0])
+UNUSUAL: Mapping[str, tuple[dict[str, Any], Callable[[EdgeScene, np.random.Generator], Codes]]] = {
+    "noise through a 3 × 3 mean, 30": ({"read_noise": STEP / 30}, _filtered(BOX)),
+    "noise through a 3 × 3 mean, 100": ({"read_noise": STEP / 100}, _filtered(BOX)),
+    "noise through [1 2 1], 40 × 60": ({"read_noise": STEP / 50, "size": (40, 60)}, _filtered(BELL)),
+    "step/noise 10": ({"read_noise": STEP / 10, "low": 16000, "high": 48000}, _plain),
+    "30 × 40 px, step/noise 50": ({"read_noise": STEP / 50, "size": (30, 40)}, _plain),
+    "10 px off centre, 40 × 60": ({"read_noise": STEP / 100, "size": (40, 60), "offset": 10.0}, _plain),
+    "5 % modulation": ({"read_noise": 60.0, "low": 20000, "high": 22000}, _plain),
+    "8 bits, 120 codes, noise 0.3": ({"read_noise": 0.3, "bits": 8, "white": 255, "low": 40, "high": 160}, _plain),
+    "8 bits, 120 codes, noise 0.1": ({"read_noise": 0.1, "bits": 8, "white": 255, "low": 40, "high": 160}, _plain),
+    "20 to 400 electrons": (
+        {"read_noise": 1.5, "electrons_per_dn": 2, "bits": 12, "white": 4095, "black": 64, "low": 74, "high": 264},
+        _plain,
+    ),
+    "red of a mosaic, step/noise 50": ({"read_noise": STEP / 50}, _plain),
+}
+"""Scenes beside the usual ones: what differs, and how they become codes."""
+
+
+@pytest.mark.study
+def test_unusual_captures() -> None:
+    """Uncertainties hold where noise is not white, large, small or few electrons, and where regions are small."""
+    rng = np.random.default_rng(SEED + 4)
+    scores: Scores = defaultdict(list)
+    refused: dict[str, int] = defaultdict(int)
+    spreads = (Gaussian(0.5), Gaussian(0.9), Pupil(0.6), Pupil(0.7, coma=0.6), Pupil(0.8, defocus=0.7), triangle(2.5))
+    for condition, (changes, render) in UNUSUAL.items():
+        for k in range(102):
+            place = {"offset": rng.uniform(-0.5, 0.5)} | changes
+            place["offset"] *= 1 if k % 2 else -1
+            scene = EdgeScene(spreads[k % 6], direction=rng.uniform(3, 42) + 180 * (k % 4 > 1), **place)
+            if scene.bits == 8:
+                scene = replace(scene, low=scene.low + rng.uniform(), high=scene.high + rng.uniform())
+            mosaic, channel = ("RGGB", "red") if "mosaic" in condition else ("none", "mono")
+            try:
+                true = {k: v for k, v in truths(scene).items() if not k.startswith(("phase", "overshoot"))}
+                found = measure(scene, render(scene, rng), mosaic=mosaic, channel=channel)
+                _note(scores, condition, found, true)
+            except MeasurementRefused as error:
+                refused[f"{condition}: {error.cause}"] += 1
+    _print("unusual captures", scores, ["mtf50", "mtf at 0.1 cy/px", "mtf at 0.25 cy/px", "edge width", "lsf fwhm"])
+    broken = _hold(scores)
+    print("refused:", dict(refused) or "none")
+    assert sum(refused.values()) <= 0.03 * 102 * len(UNUSUAL)
+    assert broken == []
 
 
 @pytest.mark.study
