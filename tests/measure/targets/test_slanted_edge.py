@@ -1,11 +1,13 @@
 """The slanted-edge target: regions move onto their edges or say with figures why not."""
 
 import time
+from dataclasses import replace
 
 import numpy as np
 import pytest
 
 from runner.capture.frame import Box, Frame
+from runner.capture.mosaic import grey, sites
 from runner.errors import UsageError
 from runner.measure.contract import Found, NotFound
 from runner.measure.reading import CAUSES
@@ -92,6 +94,23 @@ def test_tone_is_undone_first() -> None:
     assert isinstance(linear, Found)
     assert isinstance(toned, Found)
     assert toned.geometry["edge_offset"] == pytest.approx(linear.geometry["edge_offset"], abs=0.02)
+
+
+@pytest.mark.parametrize("mosaic", ["RGGB", "GBRG"])
+def test_colour_is_searched_in_grey(mosaic: str) -> None:
+    """In the grey picture of a mosaic whose colours differ threefold the edge lies where it is, within 0.1 px."""
+    scene = _scene(direction=7, offset=3.3)
+    codes = scene.render(np.random.default_rng(1))
+    camera = Camera(WIDTH, HEIGHT, 16, 0, 65535, mosaic=mosaic)
+    for channel, gain in (("red", 0.4), ("blue", 0.3)):
+        own = sites(channel, camera, (0, 0), codes.shape)
+        codes[own] = codes[own] * gain
+    seen = replace(_frame(codes), codes=grey(codes, camera))
+    (found,) = slanted_edge.locate([seen], [_region()], camera, slanted_edge.Options())
+    assert isinstance(found, Found)
+    dx, dy = (found.box.x0 + found.box.x1) / 2 - 100, (found.box.y0 + found.box.y1) / 2 - 130
+    rest = 3.3 - dx * np.cos(np.radians(7)) - dy * np.sin(np.radians(7))
+    assert found.geometry["edge_offset"] == pytest.approx(rest, abs=0.1)
 
 
 def test_angle_from_the_axis() -> None:
