@@ -22,23 +22,33 @@ def _python(code: str) -> str:
     return done.stdout
 
 
-def test_help_loads_no_heavy_library() -> None:
-    """`--help` needs neither numpy nor any other library of measuring or drawing (it answers in under 0.3 s)."""
-    code = "import sys\nfrom runner import cli\ncli.run(['--help'])\nprint('LOADED', *sorted(sys.modules))"
-    heavy = {
-        "numpy",
-        "scipy",
-        "weasyprint",
-        "pyhanko",
-        "matplotlib",
-        "pydantic",
-        "yaml",
-        "jinja2",
-        "cryptography",
-        "PIL",
-    }
+HEAVY = {
+    "numpy",
+    "scipy",
+    "weasyprint",
+    "pyhanko",
+    "matplotlib",
+    "pydantic",
+    "yaml",
+    "jinja2",
+    "cryptography",
+    "PIL",
+    "asyncio",
+    "multiprocessing",
+}
+"""Libraries that take long to load: for measuring, drawing, signing, other processes."""
 
-    assert heavy & set(_python(code).split("LOADED")[1].split()) == set()
+
+def test_help_loads_no_heavy_library() -> None:
+    """`--help` and the help of every verb need none of the libraries of the work itself, so that they come at once."""
+    code = (
+        "import sys\nfrom runner import cli\n"
+        "for words in (['--help'], ['--version'], *([verb, '--help'] for verb in cli.COMMANDS)):\n"
+        "    assert cli.run(words) == 0\n"
+        "print('LOADED', *sorted(sys.modules))"
+    )
+
+    assert HEAVY & set(_python(code).split("LOADED")[1].split()) == set()
 
 
 @pytest.mark.parametrize("verb", cli.COMMANDS)

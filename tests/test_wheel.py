@@ -111,8 +111,8 @@ def test_it_judges_a_unit_and_verifies_its_report(installed: Path, tmp_path: Pat
     assert f"{UNIT}  CONFORMS" in told
     report = tmp_path / "reports" / UNIT / "report.pdf"
     (tmp_path / "changed.pdf").write_bytes(report.read_bytes().replace(b"/CreationDate", b"/CreationDatE", 1))
-    words = ["verify", report, "changed.pdf", "--frames", "frames"]
-    first, second = _call(installed, tmp_path, *words, code=1).split("changed.pdf: ")
+    told = _call(installed, tmp_path, "verify", report, "changed.pdf", "--frames", "frames", code=1)
+    first, second = told.split("changed.pdf: ")
 
     assert "report.pdf: sound, but not all of it is vouched for" in first
     assert "holds    PDF page: the page printed again from the data is the same byte for byte" in first
