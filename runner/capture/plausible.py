@@ -197,6 +197,8 @@ def _check_padding(codes: Codes, where: str, camera: Camera) -> None:
     )
 
 
+_SHORTEST = 32
+"""px of a row that is looked for; no frame is narrower."""
 _STREAM = 1 << 17
 """Pixels of a frame in which another row length is looked for."""
 _SEAM = 8.0
@@ -236,14 +238,14 @@ def _check_row_length(data: bytes, number: int, where: str, camera: Camera) -> N
 def _between_zeros(stream: NDArray[np.float64], rows: int) -> int:
     """Return the distance at which groups of zeros, padding, come back in the picture; 0 where there are none."""
     zeros = np.flatnonzero(stream == 0)
-    if zeros.size < 0.9 * rows:
+    if not 0.9 * rows <= zeros.size <= 0.5 * stream.size:
         return 0
     starts = zeros[np.flatnonzero(np.diff(zeros, prepend=-2) > 1)]
     gaps = np.diff(starts)
     if gaps.size < 0.9 * rows - 2:
         return 0
     usual = int(np.median(gaps))
-    return usual if np.count_nonzero(gaps == usual) >= 0.95 * gaps.size else 0
+    return usual if usual >= _SHORTEST and np.count_nonzero(gaps == usual) >= 0.95 * gaps.size else 0
 
 
 def _row_lengths(stream: NDArray[np.float64], declared: int) -> list[int]:
@@ -254,7 +256,7 @@ def _row_lengths(stream: NDArray[np.float64], declared: int) -> list[int]:
     if along[0] <= 0 or declared >= along.size - 1:
         return []
     along = along / along[0] * size / (size - np.arange(along.size))
-    lengths = np.arange(max(32, declared // 4), min(4 * declared, along.size - 1))
+    lengths = np.arange(max(_SHORTEST, declared // 4), min(4 * declared, along.size - 1))
     peak = (along[lengths] >= along[lengths - 1]) & (along[lengths] >= along[lengths + 1])
     like = along[lengths] > np.where(declared % lengths == 0, along[declared] - 0.02, along[declared])
     lengths = lengths[peak & like & (lengths % declared != 0)]

@@ -30,7 +30,7 @@ _FORMATS = (
 )
 """First bytes of the formats that are read; each name is a module of `runner.capture.formats`."""
 _ENDINGS = frozenset(
-    {".tif", ".tiff", ".btf", ".tf8", ".png", ".jpg", ".jpeg", ".npy", ".fits", ".fit", ".fts", ".h5", ".hdf5"}
+    {".tif", ".tiff", ".btf", ".tf8", ".png", ".jpg", ".jpeg", ".npy", ".fits", ".fit", ".fts", ".h5", ".hdf5", ".hdf"}
 )
 """Endings that belong to a format (a test holds them against the modules' own)."""
 _STRANGERS = (
@@ -171,10 +171,11 @@ def _format(data: bytes, where: str, ending: str, camera: Camera) -> Format:
     try:
         module = cast("Format", import_module(f"runner.capture.formats.{kind}"))
     except ModuleNotFoundError as error:
-        if error.name != _EXTRAS.get(kind):
+        missing = str(error.name).split(".")[0]
+        if missing != _EXTRAS.get(kind):
             raise
         raise UsageError(
-            f"the file holds {kind.upper()}, and the package {error.name}, which reads it, is not installed",
+            f"the file holds {kind.upper()}, and the package {missing}, which reads it, is not installed",
             where=where,
             next_step=f"install it: pip install 'probatum[{kind}]'",
         ) from error

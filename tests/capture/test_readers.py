@@ -1,9 +1,11 @@
 """A file is read once and exactly, or refused with a sentence that says what to do."""
 
 import hashlib
+import importlib
 import io
 import os
 import re
+import sys
 from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
@@ -13,20 +15,35 @@ import pytest
 import tifffile
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
+from imagecodecs import png_encode
 from numpy.typing import NDArray
 from PIL import Image
 from PIL.PngImagePlugin import PngInfo
 
+from runner.capture import readers
 from runner.capture.readers import read_frames
-from runner.errors import FrameRefused
+from runner.errors import FrameRefused, UsageError
+from runner.spec.files import PACKINGS, Layout
 from runner.spec.model import Camera
 from tests.capture.bad_frames import BAD_FILES, BadCapture, chart_codes, npy, picture, png, tiff, zero_tail
+from tests.capture.bad_frames_colour import as_fits, as_hdf5
+from tests.capture.raw_scenes import write
 
 CAMERA = Camera(160, 120, 12, 64, 4095)
 CODES = chart_codes(1)
 GREY = (CODES // 16).astype(np.uint8)
 EIGHT = Camera(160, 120, 8, 0, 255, delivers="jpeg")
 STACK = np.stack([chart_codes(seed) for seed in (1, 2, 3)])
+RGB = np.stack([chart_codes(4), chart_codes(5) // 2 + 40, chart_codes(6) // 4 + 60], axis=-1).astype(np.uint16)
+PLANES = np.ascontiguousarray(np.moveaxis(RGB, -1, 0))
+COLOUR = replace(CAMERA, colour="rgb")
+EIGHT_RGB = replace(EIGHT, colour="rgb")
+LAYOUTS = [
+    Layout(name, "little" if name == "16 bit" else "", row_padding=16, header=64)
+    for name, one in PACKINGS.items()
+    if one.bits >= 12
+]
+BIG = Layout("16 bit", "big", frames_per_file=1)
 
 
 def _read(folder: Path, name: str, data: bytes, camera: Camera = CAMERA) -> NDArray[np.generic]:
@@ -68,6 +85,43 @@ FORMATS: dict[str, tuple[bytes, NDArray[np.generic], Camera]] = {
     "float.npy": (npy(CODES.astype(">f4")), CODES.astype(np.float32), CAMERA),
     "stack.npy": (npy(STACK), STACK, CAMERA),
     "columns stack.npy": (npy(np.asfortranarray(STACK)), STACK, CAMERA),
+    "rgb.tif": (tiff(RGB, photometric="rgb"), RGB, COLOUR),
+    "rgb planes.tif": (tiff(PLANES, photometric="rgb", planarconfig="separate"), RGB, COLOUR),
+    "rgb tiles.tif": (tiff(RGB, photometric="rgb", tile=(64, 64)), RGB, COLOUR),
+    "rgb tiled planes.tif": (
+        tiff(PLANES, photometric="rgb", planarconfig="separate", tile=(64, 64)),
+        RGB,
+        COLOUR,
+    ),
+    "rgb deflate.tif": (tiff(RGB, photometric="rgb", compression="zlib", predictor=True), RGB, COLOUR),
+    "rgb planes deflate.tif": (
+        tiff(PLANES, photometric="rgb", planarconfig="separate", compression="zlib"),
+        RGB,
+        COLOUR,
+    ),
+    "rgb pages.tif": (tiff(np.stack([RGB, RGB + 1]), photometric="rgb"), np.stack([RGB, RGB + 1]), COLOUR),
+    "rgb shaped.tif": (tiff(RGB, photometric="rgb", metadata={"axes": "YXS"}), RGB, COLOUR),
+    "rgb big endian.tif": (tiff(RGB, photometric="rgb", byteorder=">"), RGB, COLOUR),
+    "rgb float.tif": (tiff(RGB.astype(np.float32), photometric="rgb"), RGB.astype(np.float32), COLOUR),
+    "rgb 8 bit.png": (png((RGB // 16).astype(np.uint8)), (RGB // 16).astype(np.uint8), EIGHT_RGB),
+    "rgb 16 bit.png": (bytes(png_encode(RGB)), RGB, COLOUR),
+    "rgb.npy": (npy(RGB), RGB, COLOUR),
+    "rgb columns.npy": (npy(np.asfortranarray(RGB)), RGB, COLOUR),
+    "rgb stack.npy": (npy(np.stack([RGB, RGB + 1])), np.stack([RGB, RGB + 1]), COLOUR),
+    "plain.fits": (as_fits(CODES), CODES, CAMERA),
+    "stack.fit": (as_fits(STACK), STACK, CAMERA),
+    "rgb.fts": (as_fits(PLANES), RGB, COLOUR),
+    "plain.h5": (as_hdf5(CODES), CODES, CAMERA),
+    "chunks.hdf5": (as_hdf5(STACK, chunks=(1, 120, 160)), STACK, CAMERA),
+    "gzip.h5": (as_hdf5(CODES, compression="gzip", shuffle=True), CODES, CAMERA),
+    "rgb.h5": (as_hdf5(RGB), RGB, COLOUR),
+    **{f"{layout.packing}.raw": (write(CODES, layout), CODES, replace(CAMERA, layout=layout)) for layout in LAYOUTS},
+    "big endian.bin": (write(CODES, BIG), CODES, replace(CAMERA, layout=BIG)),
+    "8 bit.raw": (
+        write(GREY, Layout("8 bit")),
+        GREY,
+        replace(EIGHT, delivers="raw", black_level=4, layout=Layout("8 bit")),
+    ),
 }
 """Files by their names: bytes, the codes that must come out, and the camera."""
 
@@ -92,6 +146,39 @@ def test_png_keeps_all_sixteen_bits(tmp_path: Path) -> None:
     assert np.array_equal(_read(tmp_path, "a.png", png(codes), replace(CAMERA, bit_depth=16)), codes)
 
 
+def test_jpeg_in_colour_has_three_channels(tmp_path: Path) -> None:
+    """A colour JPEG is read as its own decoder reads it; a grey one is refused for a colour camera."""
+    data = picture(Image.fromarray((RGB // 16).astype(np.uint8)), "JPEG")
+
+    assert np.array_equal(_read(tmp_path, "a.jpg", data, EIGHT_RGB), np.asarray(Image.open(io.BytesIO(data))))
+    with pytest.raises(FrameRefused, match="one grey channel; three colour channels"):
+        _read(tmp_path, "b.jpg", picture(Image.fromarray(GREY), "JPEG"), EIGHT_RGB)
+
+
+def test_endings_are_those_of_the_formats() -> None:
+    """What no format claims is headerless where a layout is stated: the reader knows every format's endings."""
+    modules = [importlib.import_module(f"runner.capture.formats.{kind}") for _, kind in readers._FORMATS]
+
+    assert {ending for module in modules for ending in module.ENDINGS} == readers._ENDINGS
+
+
+def test_a_missing_package_is_told_with_what_to_install(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Without the extra nobody's file is blamed: the run stops and says what to install."""
+    for name, data, package in (
+        ("a.fits", FORMATS["plain.fits"][0], "astropy"),
+        ("a.h5", FORMATS["plain.h5"][0], "h5py"),
+    ):
+        kind = "fits" if package == "astropy" else "hdf5"
+        for module in (package, "astropy.io") if package == "astropy" else (package,):
+            monkeypatch.setitem(sys.modules, module, None)
+        monkeypatch.delitem(sys.modules, f"runner.capture.formats.{kind}", raising=False)
+        with pytest.raises(
+            UsageError,
+            match=rf"a\.\w+: .*the package {package}.* is not installed; install it: pip install 'probatum\[{kind}\]'",
+        ):
+            _read(tmp_path, name, data)
+
+
 def test_jpeg_of_a_product_that_delivers_it(tmp_path: Path) -> None:
     """A grey JPEG is read as its own decoder reads it, also with three equal channels; colours are refused."""
     grey = picture(Image.fromarray(GREY), "JPEG")
@@ -105,6 +192,7 @@ def test_jpeg_of_a_product_that_delivers_it(tmp_path: Path) -> None:
 
 CUT = {name: FORMATS[name] for name in FORMATS} | {
     "a.jpg": (picture(Image.fromarray(GREY), "JPEG"), GREY, EIGHT),
+    "rgb.jpg": (picture(Image.fromarray((RGB // 16).astype(np.uint8)), "JPEG"), GREY, EIGHT_RGB),
 }
 
 

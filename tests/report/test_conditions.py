@@ -7,6 +7,7 @@ from runner.measure.plan import bind
 from runner.report.conditions import conditions, deviations, methods
 from runner.resources import folder
 from runner.spec.build import read_spec
+from runner.spec.files import Layout
 from runner.spec.model import Camera, Chart, Optics, Tone
 
 CAMERA = Camera(width=1600, height=1200, bit_depth=12, black_level=64, white_level=4095)
@@ -19,6 +20,18 @@ def test_what_was_not_stated_is_left_out() -> None:
     assert rows["frame size"] == "1600 × 1200 px"
     assert (rows["f-number"], rows["tone"]) == ("2.8", "linear")
     assert not {"wavelength", "chart", "pixel pitch"} & set(rows)
+
+
+def test_colour_mosaic_and_layout_are_told() -> None:
+    """What the files hold stands among the conditions; a plain mono camera has no such rows."""
+    layout = Layout("16 bit", "little", 8, 512, 3, "bottom", "")
+    rows = dict(conditions(replace(CAMERA, mosaic="GRBG", layout=layout), Optics(), Chart()))
+
+    assert rows["mosaic"] == "GRBG"
+    told = "16 bit, little byte order, header 512 bytes, row padding 8 bytes, 3 frames a file, first row at the bottom"
+    assert rows["file layout"] == told
+    assert dict(conditions(replace(CAMERA, colour="rgb"), Optics(), Chart()))["colour"] == "red, green and blue planes"
+    assert not {"mosaic", "colour", "file layout"} & set(dict(conditions(CAMERA, Optics(), Chart())))
 
 
 def test_a_tone_curve_is_named() -> None:
@@ -45,5 +58,6 @@ def test_departures_are_told() -> None:
     jpeg = replace(plan, spec=replace(plan.spec, camera=replace(CAMERA, delivers="jpeg", processing=("sharpened",))))
 
     assert deviations(plan, plain) == []
+    assert deviations(plan, replace(plain, remarks=("It was only inferred.",))) == ["It was only inferred."]
     assert len(deviations(plan, rehearsed)) == 1
     assert len(deviations(jpeg, plain)) == 2

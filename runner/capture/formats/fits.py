@@ -26,7 +26,7 @@ from runner.capture.formats.contract import (
     truncated,
 )
 from runner.capture.frame import Codes
-from runner.capture.pixels import ZERO_TAIL
+from runner.capture.pixels import MOST_DARK_RUN, ZERO_TAIL
 from runner.errors import FrameRefused
 from runner.spec.model import Camera
 
@@ -63,7 +63,7 @@ def decode(data: bytes, where: str, camera: Camera) -> Decoded:
         )
     stored = np.frombuffer(data, kind, prod(shape), start)
     if shift:
-        _check_end(stored, shift, where)
+        _check_end(stored, data, shift, where)
     first_row = camera.layout.first_row or ("top" if order == "TOP-DOWN" else "bottom")
     codes = _shifted(native(stored), shift).reshape(frames, *shape[-2:] if samples(camera) == 1 else shape[-3:])
     pages = tuple(_upright(page, first_row, camera) for page in codes)
@@ -104,11 +104,12 @@ def _frames(shape: tuple[int, ...], where: str, camera: Camera) -> int:
     return frames
 
 
-def _check_end(stored: Codes, shift: int, where: str) -> None:
+def _check_end(stored: Codes, data: bytes, shift: int, where: str) -> None:
     """Refuse stored zeros at the end: with a BZERO they would be codes in the middle of the range."""
     lit = np.flatnonzero(stored[-ZERO_TAIL:])
     run = min(stored.size, ZERO_TAIL) - 1 - (int(lit[-1]) if lit.size else -1)
-    if run * stored.itemsize >= ZERO_TAIL:
+    padded = run >= MOST_DARK_RUN and data.endswith(bytes(ZERO_TAIL))  # the last block is filled up with zeros
+    if run * stored.itemsize >= ZERO_TAIL or padded:
         raise FrameRefused(
             f"the last {run} stored numbers or more are zero, {shift} DN by BZERO: a copy still under way",
             where=where,
