@@ -249,7 +249,7 @@ def _remarks(edge: Edge) -> tuple[str, ...]:
     if fit.left_out:
         remarks.append(f"defect pixels left out: {fit.left_out}")
     if fit.together is not None:
-        remarks.append(f"noise goes together between pixels: {fit.together.whole:.2g} times the variance in means")
+        remarks.append(f"neighbouring pixels share noise: means vary {fit.together.whole:.2g} times as much (variance)")
     elif fit.excess > TOLD_MISFIT:
         remarks.append(f"noise variance raised {fit.excess:.2g} times for misfit")
     return tuple(remarks)
