@@ -89,7 +89,7 @@ def read_frames(path: Path, camera: Camera, *, name: str | None = None, compare:
     if module is _HEADERLESS:
         check_tail(decoded, data, where, camera)  # first, for zeros would look like a wrong layout
     for number, codes in enumerate(decoded.pages):
-        if codes.shape[2:] != ((3,) if samples(camera) == 3 else ()):
+        if codes.ndim < 2 or codes.shape[2:] != ((3,) if samples(camera) == 3 else ()):
             raise FrameRefused("a page is no plain picture", where=where, next_step=COPY_AGAIN)
         check_size(codes.shape[1], codes.shape[0], camera, where)
         page = f"{where}, page {number + 1}" if many else where

@@ -16,7 +16,7 @@ from tests.capture.raw_scenes import HEIGHT, WIDTH, Codes, scenes, take
 
 UNIT, NEIGHBOUR = "WS8-000101", "WS8-000102"
 CAMERA = Camera(WIDTH, HEIGHT, 12, 64, 4095)
-SHADED = dict(scenes())["shaded flat"]
+SHADED = next(light for name, light in scenes() if name == "shaded flat")
 TUNGSTEN = "tungsten"
 
 
