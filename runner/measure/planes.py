@@ -110,6 +110,17 @@ def stack(crops: Sequence[Crop]) -> Stack:
     return Stack(frames, codes, tuple(crop.file for crop in crops), grid, crops[0].camera)
 
 
+def sums(values: Values, axis: int) -> Values:
+    """Return the sums of an array along an axis; short codes are added up as such, which is twice as fast and exact.
+
+    Args:
+        values: Rows × columns.
+        axis: 0 adds rows up, 1 columns.
+    """
+    short = values.dtype.kind == "u" and values.dtype.itemsize <= 2 and values.shape[axis] <= 65_536
+    return np.asarray(values.sum(axis=axis, dtype=np.uint32 if short else np.float64))
+
+
 def step(of: Stack) -> float:
     """Return the width of one code at the mean level, linear DN; 0 where the codes are not whole numbers."""
     if of.codes[0].dtype.kind not in "ui":

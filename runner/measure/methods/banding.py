@@ -113,16 +113,16 @@ def measure(sample: Sample, options: Options) -> Measurement:
 def _profiles(frame: planes.Stack) -> tuple[tuple[Real, int], tuple[Real, int]]:
     """Return the means of rows and of columns, each with its pitch in px of the frame."""
     values, grid = frame.frames[0], frame.grid
-    rows = values.mean(axis=1, dtype=np.float64)
+    rows = planes.sums(values, 1) / values.shape[1]
     if not grid.shift:
-        return (rows, grid.down), (values.mean(axis=0, dtype=np.float64), grid.across)
+        return (rows, grid.down), (planes.sums(values, 0) / values.shape[0], grid.across)
     pairs = values.shape[0] // 2
     apart = planes.green_balance(values[: 2 * pairs], grid)
     rows[1::2] -= apart
     columns = np.empty(2 * values.shape[1])
     for first in (0, 1):  # even rows lie left of odd ones, or right of them
         right = first if grid.shift > 0 else 1 - first
-        columns[right::2] = values[first : 2 * pairs : 2].mean(axis=0, dtype=np.float64) - first * apart
+        columns[right::2] = planes.sums(values[first : 2 * pairs : 2], 0) / pairs - first * apart
     return (rows, 1), (columns, 1)
 
 

@@ -181,7 +181,7 @@ def _edges(size: int, blocks: int) -> NDArray[np.intp]:
 def _cells(values: planes.Values, edges: tuple[NDArray[np.intp], NDArray[np.intp]]) -> NDArray[np.float32]:
     """Return the means of an array's cells, between borders along y and x."""
     y, x = edges
-    sums = np.array([values[a:b].sum(axis=0, dtype=np.float64) for a, b in pairwise(y)])
+    sums = np.array([planes.sums(values[a:b], 0) for a, b in pairwise(y)], dtype=np.float64)
     return np.asarray(np.add.reduceat(sums, x[:-1], axis=1) / np.outer(np.diff(y), np.diff(x)), dtype=np.float32)
 
 

@@ -15,6 +15,7 @@ References:
     EMVA Standard 1288 Release 4.0 Linear (2021), defect pixels of the mean frame.
 """
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from itertools import pairwise
 from typing import Any
@@ -82,9 +83,9 @@ def ground(frame: NDArray[Any], less: NDArray[Any] | None = None, *, block: int 
     """
     edges = [_edges(size, block) for size in frame.shape]
     rows, columns = (_sampled(e) for e in edges)
-    sample = frame[np.ix_(rows.ravel(), columns.ravel())].astype(np.float64)
+    sample = frame.take(rows.ravel(), axis=0).take(columns.ravel(), axis=1).astype(np.float64)
     if less is not None:
-        sample -= less[np.ix_(rows.ravel(), columns.ravel())]
+        sample -= less.take(rows.ravel(), axis=0).take(columns.ravel(), axis=1)
     blocks = _by_blocks(sample, rows.shape, columns.shape)
     level = _median(blocks)
     y, x = (e[:-1] / 2 + e[1:] / 2 for e in edges)
@@ -109,14 +110,27 @@ def surface(level: Real, y: Real, x: Real, rows: Places | Real, columns: Places 
         rows: Rows of pixels.
         columns: Columns of pixels.
     """
-    (i, f), (j, g) = _between(y, rows), _between(x, columns)
-    down = level[i] + f[:, None] * (level[np.minimum(i + 1, y.size - 1)] - level[i])
-    right = down[:, np.minimum(j + 1, x.size - 1)]
-    out: Real = down[:, j]
-    right -= out
-    right *= g
-    out += right
+    ((_, out),) = surface_strips(level, y, x, rows, columns, max(1, rows.size))
     return out
+
+
+def surface_strips(
+    level: Real, y: Real, x: Real, rows: Places | Real, columns: Places | Real, height: int
+) -> Iterator[tuple[int, Real]]:
+    """Yield the surface in strips of so many rows, each with the number of its first; arguments as of `surface`.
+
+    Columns come first, on the few rows of the map; then whole rows are copied, the cheapest way to spread them.
+    """
+    (i, f), (j, g) = _between(y, rows), _between(x, columns)
+    wide = level.take(j, axis=1)
+    wide += g * np.diff(level, axis=1, append=level[:, -1:]).take(j, axis=1)
+    steps = np.diff(wide, axis=0, append=wide[-1:])
+    for first in range(0, rows.size, height):
+        part = slice(first, first + height)
+        out: Real = steps.take(i[part], axis=0)
+        out *= f[part, None]
+        out += wide.take(i[part], axis=0)
+        yield first, out
 
 
 def points(level: Real, y: Real, x: Real, rows: Places | Real, columns: Places | Real) -> Real:
@@ -140,13 +154,16 @@ def outstanding(frame: NDArray[Any], of: Ground, low: float | None, high: float 
     level, noise = (surface(v, of.y, of.x, down.clip(0, m - 1), right.clip(0, n - 1)) for v in (of.level, of.noise))
     least_noise = _least(noise)
     found = np.zeros((down.size - 1, right.size - 1), dtype=bool)
-    strips = [frame[a:b] for a, b in pairwise(down)]
+    tops, bottoms = [], []
+    for strip in (frame[a:b] for a, b in pairwise(down)):  # both at once, while the strip is in the cache
+        if high is not None:
+            tops.append(strip.max(axis=0))
+        if low is not None:
+            bottoms.append(strip.min(axis=0))
     if high is not None:
-        tops = np.maximum.reduceat([s.max(axis=0) for s in strips], right[:-1], axis=1)
-        found |= tops > _least(level) + high * least_noise
+        found |= np.maximum.reduceat(tops, right[:-1], axis=1) > _least(level) + high * least_noise
     if low is not None:
-        bottoms = np.minimum.reduceat([s.min(axis=0) for s in strips], right[:-1], axis=1)
-        found |= bottoms < -_least(-level) - low * least_noise
+        found |= np.minimum.reduceat(bottoms, right[:-1], axis=1) < -_least(-level) - low * least_noise
     return _look_closer(frame, of, found, (down, right), (low, high))
 
 
@@ -204,7 +221,7 @@ def smallest_step(values: Real, noise: float, known: float = 0.0) -> float:
         noise: Median size of their noise; a hundred-thousandth of it, and of a value 1e-9, is rounding.
         known: The least that it can be; 0 if not known, and also what is returned if all values are the same.
     """
-    few = values.ravel()[:: max(1, values.size // 50_000)]
+    few = values.ravel()[:: max(1, values.size // 20_000)]
     rounding = max(1e-5 * noise, 1e-9 * float(np.abs(few).max()))
     distinct, counts = np.unique(few, return_counts=True)
     gaps = np.diff(distinct[counts >= COMMON * few.size])

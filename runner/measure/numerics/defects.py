@@ -23,6 +23,7 @@ References:
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from math import sqrt
 from typing import Any
 
 import numpy as np
@@ -30,7 +31,7 @@ from numpy.typing import NDArray
 from scipy import special
 
 from runner.measure.numerics.defect_ground import Ground, Places, ground, local_medians, outstanding
-from runner.measure.numerics.two_way_layout import STRIP, Frames
+from runner.measure.numerics.two_way_layout import STRIP, Frames, level_of, short_codes
 
 Real = NDArray[np.float64]
 
@@ -164,7 +165,7 @@ def unsteady_pixels(frames: Frames, k: float = K, *, gain_drift: bool = False) -
     if len(frames) < 2 or len({f.shape for f in frames}) > 1:
         raise ValueError(f"{len(frames)} frames of sizes {sorted({f.shape for f in frames})}; 2 of one size are needed")
     _checked(frames[0][:1], k)
-    levels = np.array([np.mean(f, dtype=np.float64) for f in frames])
+    levels = np.array([level_of(f) for f in frames])
     if not np.all(np.isfinite(levels)):
         raise ValueError("the frames hold values that are not finite numbers")
     factors = levels.mean() / levels if gain_drift else np.ones(levels.size)
@@ -288,17 +289,19 @@ def _variances(frames: Frames, factors: Real, offsets: Real) -> NDArray[np.float
     count, (m, n) = len(frames), frames[0].shape
     out = np.empty((m, n), dtype=np.float32)
     height = max(1, STRIP // n)
-    pieces = np.empty((count, height, n))
+    short = all(short_codes(frame) for frame in frames)  # then float32 is off by less than a hundredth of a code
+    pieces = np.empty((count, height, n), dtype=np.float32 if short else np.float64)
     for y in range(0, m, height):
         high = min(height, m - y)
         for k, frame in enumerate(frames):
-            np.subtract(frame[y : y + high], offsets[k] / factors[k], out=pieces[k, :high], dtype=np.float64)
+            np.copyto(pieces[k, :high], frame[y : y + high])
+            pieces[k, :high] -= float(offsets[k] / factors[k])
             if factors[k] != 1:
-                pieces[k, :high] *= factors[k]
+                pieces[k, :high] *= float(factors[k])
         if count == 2:
             apart = np.subtract(pieces[0, :high], pieces[1, :high], out=pieces[0, :high])
-            np.multiply(apart, apart, out=pieces[1, :high])
-            np.multiply(pieces[1, :high], 0.5, out=out[y : y + high], casting="same_kind")
+            apart *= sqrt(0.5)
+            np.multiply(apart, apart, out=out[y : y + high], casting="same_kind")
         else:
             out[y : y + high] = pieces[:, :high].var(axis=0, ddof=1)
     return out

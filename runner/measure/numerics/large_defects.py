@@ -25,8 +25,9 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import ndimage
 
-from runner.measure.numerics.defect_ground import Ground, ground, local_medians, surface
+from runner.measure.numerics.defect_ground import Ground, ground, local_medians, surface_strips
 from runner.measure.numerics.defects import Defect, K
+from runner.measure.numerics.two_way_layout import STRIP
 
 Real = NDArray[np.float64]
 
@@ -145,12 +146,10 @@ def blemishes(flat: NDArray[Any], contrast: float, size: float, *, k: float = K,
         )
     cell = max(2, int(size / 4))
     block, wide = max(1, round(short / COARSE / cell)), window * short / cell
-    away, doubt = _against_background(_cell_means(flat, cell), block, wide)
+    away, doubt, noise = _against_background(_cell_means(flat, cell), block, wide)
+    joined = min(ceil(k * noise / contrast), int(size / cell))
+    away = _joined(away, joined)
     of = ground(away)
-    joined = min(ceil(k * float(np.median(of.noise)) / contrast), int(size / cell))
-    if joined > 1:
-        away = ndimage.uniform_filter(away, joined, mode="reflect")
-        of = ground(away)
     doubt = replace(doubt, noise=np.hypot(doubt.noise, 1.4826 * np.median(np.abs(of.level - np.median(of.level)))))
     spots = [one for sign in (1, -1) for one in _spots(away, sign, contrast, k, of, doubt)]
     found = [_blemish(one, wide, cell, max(1, joined)) for one in spots]
@@ -198,20 +197,25 @@ def _from_neighbours(means: Real) -> Real:
     return out
 
 
-def _cell_means(frame: NDArray[Any], width: int) -> Real:
+def _cell_means(frame: NDArray[Any], width: int) -> NDArray[np.float32]:
     """Return the means of square cells; a rest narrower than a cell at the right and lower border is left out."""
     down, across = frame.shape[0] // width, frame.shape[1] // width
-    rows = np.empty((down, across * width))
-    for y in range(down):
-        rows[y] = frame[y * width : (y + 1) * width, : across * width].sum(axis=0)
-    sums: Real = rows[:, ::width].copy()
-    for i in range(1, width):
-        sums += rows[:, i::width]
-    return sums / width**2
+    out = np.empty((down, across), dtype=np.float32)
+    high = max(1, STRIP // frame.shape[1] // width)
+    for y in range(0, down, high):
+        strip = frame[y * width : min(y + high, down) * width, : across * width]
+        rows = strip.reshape(-1, width, across * width).sum(axis=1)
+        sums = rows[:, ::width].copy()
+        for i in range(1, width):
+            sums += rows[:, i::width]
+        np.multiply(sums, 1 / width**2, out=out[y : y + high], casting="same_kind")
+    return out
 
 
-def _against_background(cells: Real, block: int, window: float) -> tuple[Real, Ground]:
-    """Return cells over their background, less 1, and as the noise of a ground how far the background may be off."""
+def _against_background(
+    cells: NDArray[np.float32], block: int, window: float
+) -> tuple[NDArray[np.float32], Ground, float]:
+    """Return cells over their background, less 1, as the noise of a ground how far that may be off, and their noise."""
     coarse = ground(cells, block=block)
     y, x = (2 * v / n - 1 for v, n in zip((coarse.y, coarse.x), cells.shape, strict=True))
     powers = [(a, b) for a in range(ORDER + 1) for b in range(ORDER + 1 - a)]
@@ -226,10 +230,29 @@ def _against_background(cells: Real, block: int, window: float) -> tuple[Real, G
     level = smooth + local
     if level.min() <= 0:
         raise ValueError(f"the flat's light falls to {level.min():g}; light over black is needed everywhere")
-    away = surface(level, coarse.y, coarse.x, np.arange(cells.shape[0]), np.arange(cells.shape[1]))
-    np.divide(cells, away, out=away)
-    away -= 1
-    return away, replace(coarse, level=level, noise=TRUST * np.abs(local) / level)
+    away = np.empty_like(cells)
+    (down, across), height = (np.arange(n) for n in cells.shape), max(1, STRIP // cells.shape[1])
+    for first, under in surface_strips(level, coarse.y, coarse.x, down, across, height):
+        strip = slice(first, first + height)
+        np.subtract(np.divide(cells[strip], under, out=under), 1, out=away[strip], casting="same_kind")
+    doubt = replace(coarse, level=level, noise=TRUST * np.abs(local) / level)
+    return away, doubt, float(np.median(coarse.noise / level))
+
+
+def _joined(cells: NDArray[np.float32], count: int) -> NDArray[np.float32]:
+    """Return the means of so many cells each way about each cell; past the border cells count as mirrored."""
+    if count <= 1:
+        return cells
+    down, across = cells.shape
+    around = np.pad(cells, (count // 2, count - 1 - count // 2), mode="symmetric")
+    rows = around[:down].copy()
+    for i in range(1, count):
+        rows += around[i : i + down]
+    out = rows[:, :across].copy()
+    for i in range(1, count):
+        out += rows[:, i : i + across]
+    out *= 1 / count**2
+    return out
 
 
 @dataclass(frozen=True)
@@ -254,12 +277,12 @@ class _Spot:
     """-1 for a dark one."""
 
 
-def _spots(cells: Real, sign: int, contrast: float, k: float, of: Ground, doubt: Ground) -> list[_Spot]:
+def _spots(cells: NDArray[np.float32], sign: int, contrast: float, k: float, of: Ground, doubt: Ground) -> list[_Spot]:
     """Return the groups of cells above the contrast.
 
     Cells that are joined by others above half the contrast are one group: noise tears a spot at its border.
     """
-    away = sign * cells
+    away = cells if sign > 0 else -cells
     rows, columns = np.nonzero(away > contrast)
     noise, off = of.noise_at(rows, columns), doubt.noise_at(rows, columns)
     keep = away[rows, columns] > np.maximum(k * noise, off)

@@ -31,7 +31,18 @@ from math import log10, sqrt
 import numpy as np
 from numpy.typing import NDArray
 
-from runner.measure.numerics.two_way_layout import STRIP, Frames, Layout, Stratum, Sums, add_up, layout, split_variances
+from runner.measure.numerics.two_way_layout import (
+    STRIP,
+    Frames,
+    Layout,
+    Stratum,
+    Sums,
+    add_up,
+    layout,
+    level_of,
+    short_codes,
+    split_variances,
+)
 
 Real = NDArray[np.float64]
 TOLD = 2.0
@@ -149,7 +160,7 @@ def stack_noise(
             that are not finite, or drift as a gain without light.
     """
     _check(frames, shading_order)
-    raw = np.array([np.mean(frame, dtype=np.float64) for frame in frames]) - black
+    raw = np.array([level_of(frame) for frame in frames]) - black
     if not np.all(np.isfinite(raw)):
         raise ValueError("the frames hold values that are not finite numbers")
     level = float(raw.mean())
@@ -197,7 +208,8 @@ def mean_frame(frames: Frames) -> NDArray[np.float32]:
     m, n = frames[0].shape
     mean = np.empty((m, n), dtype=np.float32)
     height = max(1, STRIP // n)
-    whole = np.empty((height, n))
+    exact = len(frames) <= 256 and all(short_codes(frame) for frame in frames)
+    whole = np.empty((height, n), dtype=np.float32 if exact else np.float64)
     for y in range(0, m, height):
         piece = whole[: min(height, m - y)]
         np.copyto(piece, frames[0][y : y + height])

@@ -104,6 +104,19 @@ class Layout:
         return (self.rows, 1 / n), (self.columns, 1 / m), (self.rest, 1 - 1 / m - 1 / n)
 
 
+def short_codes(frame: NDArray[Any]) -> bool:
+    """Tell whether a frame holds codes of 8 or 16 bits, which float32 holds exactly, and sums of 256 of them too."""
+    return bool(frame.dtype.kind == "u" and frame.dtype.itemsize <= 2)
+
+
+def level_of(frame: NDArray[Any]) -> float:
+    """Return the mean of a frame; short codes are added up as such, which is twice as fast and exact."""
+    if short_codes(frame) and frame.shape[1] <= 65_536:
+        rows = frame.sum(axis=1, dtype=np.uint32)
+        return float(rows.mean(dtype=np.float64)) / int(frame.shape[1])
+    return float(np.mean(frame, dtype=np.float64))
+
+
 def add_up(
     frames: Frames, factors: Real, offsets: Real, order: int, *, keep: NDArray[np.float32] | None = None
 ) -> Sums:
