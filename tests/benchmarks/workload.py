@@ -135,3 +135,18 @@ def lay_out_large(folder: Path, units: int) -> None:
         unit = folder / "frames" / f"B-{number:04d}"
         unit.mkdir(parents=True)
         tifffile.imwrite(unit / "chart-1.tif", frame(number))
+
+
+def lay_out_stacks(folder: Path, units: int) -> None:
+    """Write `spec.yaml` and units of four 12 MP charts with four 12 MP dark frames that go with them."""
+    dark = "captures:\n  dark: {target: dark frame, frames: {names: 'dark-{repeat}.tif', count: 4}}\n"
+    spec = SPEC.replace("captures:\n", dark).replace("count: 1}\n", "count: 4}\n    uses: {dark: dark}\n")
+    (folder / "spec.yaml").write_text(spec.replace("black_level: 0 DN", "black_level: 500 DN"))
+    for number in range(units):
+        rng = np.random.default_rng(number)
+        unit = folder / "frames" / f"B-{number:04d}"
+        unit.mkdir(parents=True)
+        for repeat in range(1, 5):
+            codes = np.round(rng.normal(500, 40, (HEIGHT, WIDTH))).astype(np.uint16)
+            tifffile.imwrite(unit / f"dark-{repeat}.tif", codes)
+            tifffile.imwrite(unit / f"chart-{repeat}.tif", frame(100 * number + repeat))

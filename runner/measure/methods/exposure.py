@@ -57,7 +57,7 @@ def measure(sample: Sample, options: Options) -> Measurement:  # noqa: ARG001 - 
     """
     codes, signal = _own(sample.crop.codes, sample.crop.sites), _own(sample.crop.signal, sample.crop.sites)
     step = _steps(sample.crop)
-    noise = 1.4826 * float(np.median(np.abs(step - np.median(step)))) / sqrt(2) if step.size else 0.0
+    noise = 1.4826 * _median_deviation(step) / sqrt(2) if step.size else 0.0
     u_level = 100 * noise / sqrt(signal.size)
     at_end = int(np.count_nonzero((codes >= sample.camera.white_level) | (codes <= 0)))
     if sample.camera.black_level <= 0:  # code 0 is then an ordinary dark value, not an end of the range
@@ -103,6 +103,13 @@ def _steps(crop: Crop) -> NDArray[np.float64]:
     if crop.sites is None:
         return np.diff(crop.signal, axis=1)
     return (crop.signal[:, 2:] - crop.signal[:, :-2])[crop.sites[:, 2:]]
+
+
+def _median_deviation(values: NDArray[np.float64]) -> float:
+    """Return the median absolute deviation, within the memory of the values: they are overwritten."""
+    values -= np.median(values, overwrite_input=True)
+    np.abs(values, out=values)
+    return float(np.median(values, overwrite_input=True))
 
 
 def _noise(u: float) -> tuple[Component, ...]:
