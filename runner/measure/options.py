@@ -6,6 +6,7 @@ from dataclasses import fields
 from typing import Any, TypeVar
 
 from runner.errors import UsageError
+from runner.spec.units import parse_amount
 
 Record = TypeVar("Record")
 
@@ -30,6 +31,33 @@ def read_record(record: type[Record], asked: Mapping[str, Any]) -> Record:
         return record(**asked)
     except (TypeError, ValueError) as error:
         raise UsageError(str(error)) from error
+
+
+def number(name: str, asked: object, unit: str, low: float, high: float) -> float:
+    """Turn an option that is a plain number or an amount with its unit into a number.
+
+    Args:
+        name: The option, for the message.
+        asked: As written.
+        unit: Unit that may stand behind it; `%` is turned into a share.
+        low: Least that is allowed.
+        high: Most that is allowed.
+
+    Raises:
+        ValueError: It is neither, has another unit, or lies outside.
+    """
+    value = asked
+    if isinstance(asked, str):
+        try:
+            amount = parse_amount(asked)
+        except UsageError as error:
+            raise ValueError(f"{name} is {asked!r}: {error.found}") from error
+        if amount.unit in {unit, "1"}:
+            value = amount.value / 100 if amount.unit == "%" else amount.value
+    if isinstance(value, bool) or not isinstance(value, (int, float)) or not low <= value <= high:
+        ends = [f"{100 * end:g} %" if unit == "%" else f"{end:g} {unit}".strip() for end in (low, high)]
+        raise ValueError(f"{name} is {asked!r}; allowed is {ends[0]} to {ends[1]}")
+    return float(value)
 
 
 def describe(options: Any) -> dict[str, Any]:

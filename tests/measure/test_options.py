@@ -5,7 +5,7 @@ from dataclasses import dataclass
 import pytest
 
 from runner.errors import UsageError
-from runner.measure.options import describe, read_record
+from runner.measure.options import describe, number, read_record
 
 
 @dataclass(frozen=True)
@@ -40,3 +40,16 @@ def test_a_refused_value_keeps_the_records_sentence() -> None:
 def test_options_are_told_as_plain_data() -> None:
     """The plan in the results holds every option with its value."""
     assert describe(_Options(order=2)) == {"order": 2, "shading": "none"}
+
+
+@pytest.mark.parametrize(("asked", "value"), [("80 %", 0.8), (0.25, 0.25), ("0.5", 0.5)])
+def test_a_share_may_be_written_in_percent_or_plainly(asked: object, value: float) -> None:
+    """80 % and 0.8 are the same share."""
+    assert number("dead_below", asked, "%", 0.0, 1.0) == pytest.approx(value)
+
+
+@pytest.mark.parametrize("asked", ["120 %", "3 px", True, None, "much"])
+def test_what_is_no_share_is_told_with_what_is(asked: object) -> None:
+    """Another unit, a value outside, a truth value and a word are refused by the option's name."""
+    with pytest.raises(ValueError, match="dead_below is"):
+        number("dead_below", asked, "%", 0.0, 1.0)

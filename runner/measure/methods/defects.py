@@ -17,7 +17,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from runner.errors import MeasurementRefused, UsageError
+from runner.errors import MeasurementRefused
 from runner.measure import planes
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.defect_overlaps import area_of, outside, whole
@@ -42,9 +42,8 @@ from runner.measure.numerics.large_defects import (
     off_lines,
 )
 from runner.measure.numerics.stack_noise import mean_frame
-from runner.measure.options import read_record
+from runner.measure.options import number, read_record
 from runner.measure.reading import Reading, Refusal, Spot
-from runner.spec.units import parse_amount
 
 NAME = "defects"
 TITLE = "Defective pixels, lines and blemishes"
@@ -129,22 +128,7 @@ class Options:
             ("blemish_contrast", "%", 0.001, 0.9),
             ("blemish_size", "px", 2.0, 1000.0),
         ):
-            object.__setattr__(self, name, _number(name, getattr(self, name), unit, low, high))
-
-
-def _number(name: str, asked: object, unit: str, low: float, high: float) -> float:
-    value = asked
-    if isinstance(asked, str):
-        try:
-            amount = parse_amount(asked)
-        except UsageError as error:
-            raise ValueError(f"{name} is {asked!r}: {error.found}") from error
-        if amount.unit in {unit, "1"}:
-            value = amount.value / 100 if amount.unit == "%" else amount.value
-    if isinstance(value, bool) or not isinstance(value, (int, float)) or not low <= value <= high:
-        ends = [f"{100 * end:g} %" if unit == "%" else f"{end:g} {unit}".strip() for end in (low, high)]
-        raise ValueError(f"{name} is {asked!r}; allowed is {ends[0]} to {ends[1]}")
-    return float(value)
+            object.__setattr__(self, name, number(name, getattr(self, name), unit, low, high))
 
 
 def read_options(asked: Mapping[str, Any]) -> Options:

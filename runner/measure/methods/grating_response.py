@@ -13,13 +13,12 @@ from typing import Any
 import numpy as np
 
 from runner.capture.frame import Crop
-from runner.errors import MeasurementRefused, UsageError
+from runner.errors import MeasurementRefused
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.numerics.grating_fit import GratingFit, GratingLost, Lattice, fit_grating
 from runner.measure.numerics.grating_search import picture
-from runner.measure.options import read_record
+from runner.measure.options import number, read_record
 from runner.measure.reading import Component, Curve, Map, Reading, Refusal
-from runner.spec.units import parse_amount
 
 NAME = "grating response"
 TITLE = "Grating response"
@@ -78,24 +77,12 @@ class Options:
     def __post_init__(self) -> None:
         """Turn shares into numbers and keep each option inside its meaning."""
         if self.target_modulation is not None:
-            object.__setattr__(self, "target_modulation", _share("target_modulation", self.target_modulation, 0.001))
-        own = _share("target_modulation_uncertainty", self.target_modulation_uncertainty, 0.0)
-        object.__setattr__(self, "target_modulation_uncertainty", own)
+            own = number("target_modulation", self.target_modulation, "%", 0.001, 1.0)
+            object.__setattr__(self, "target_modulation", own)
+        doubt = number("target_modulation_uncertainty", self.target_modulation_uncertainty, "%", 0.0, 1.0)
+        object.__setattr__(self, "target_modulation_uncertainty", doubt)
         if isinstance(self.background, bool) or self.background not in {0, 1, 2}:
             raise ValueError(f"background is {self.background!r}; allowed are 0, 1 and 2")
-
-
-def _share(name: str, asked: object, least: float) -> float:
-    value = asked
-    if isinstance(asked, str):
-        try:
-            amount = parse_amount(asked)
-        except UsageError as error:
-            raise ValueError(f"{name} is {asked!r}: {error.found}; allowed is a share, for example 80 %") from error
-        value = {"%": amount.value / 100, "1": amount.value, "": amount.value}.get(amount.unit)
-    if isinstance(value, bool) or not isinstance(value, (int, float)) or not least <= value <= 1:
-        raise ValueError(f"{name} is {asked!r}; allowed is a share from {100 * least:g} % to 100 %")
-    return float(value)
 
 
 def read_options(asked: Mapping[str, Any]) -> Options:

@@ -204,7 +204,7 @@ def test_patches_that_cannot_be_measured(light: np.ndarray, cause: str, words: s
     ("options", "words"),
     [
         ({"target_modulation": "120 %"}, "target_modulation is '120 %'"),
-        ({"target_modulation": "3 px"}, "a share from 0.1 % to 100 %"),
+        ({"target_modulation": "3 px"}, "allowed is 0.1 % to 100 %"),
         ({"background": 5}, "background is 5"),
         ({"bakground": 1}, "unknown option 'bakground'"),
     ],
