@@ -282,7 +282,7 @@ def _linear(codes: Codes, camera: Camera) -> Values:
         return codes
     if codes.dtype.kind == "u" and codes.dtype.itemsize <= 2:
         table = _scaled(np.arange(int(codes.max()) + 1), camera)
-        return np.asarray(table[codes])
+        return np.asarray(table.take(codes, mode="clip"))
     out = np.empty(codes.shape, dtype=np.float32)
     height = max(1, PIECE // codes.shape[1])
     for y in range(0, codes.shape[0], height):

@@ -201,7 +201,9 @@ def measure(sample: Sample, options: Options) -> Measurement:
 
 def _find(frames: planes.Stack, mean: NDArray[np.float32], options: Options, *, lit: bool) -> _Found:
     k = float(options.threshold)
-    pixels = flat_pixels(mean, k, dead=float(options.dead_below)) if lit else hot_pixels(mean, k)
+    code = planes.step(frames) / len(frames.frames)
+    dead = float(options.dead_below)
+    pixels = flat_pixels(mean, k, dead=dead, step=code) if lit else hot_pixels(mean, k, step=code)
     unsteady = unsteady_pixels(frames.frames, k, gain_drift=lit) if len(frames.frames) > 1 else None
     spots = _blemishes(frames, mean, options) if lit else None
     met = [] if not isinstance(spots, Blemishes) else [area_of(one, frames.grid) for one in spots.spots]

@@ -1,4 +1,8 @@
-"""A frame without light: companion of other captures; the whole frame is its region."""
+"""Frames without light: companion of other captures, or measured for themselves; the whole frame is their region.
+
+Nothing is measured but their exposure unless `measure` names it, so that a companion costs little: frame noise, banding
+and defects take an even field.
+"""
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass

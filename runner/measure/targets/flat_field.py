@@ -1,4 +1,8 @@
-"""A frame of an evenly lit field: companion for shading; the whole frame is its region."""
+"""Frames of an evenly lit field: companion of other captures, or measured for itself; the whole frame is its region.
+
+Nothing is measured but its exposure unless `measure` names it, so that a companion costs little: shading, frame noise,
+banding and defects take an even field.
+"""
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass

@@ -217,6 +217,17 @@ def test_a_dark_and_a_flat_each_tell_their_own() -> None:
     assert (refusal.cause, refusal.because) == ("not defined", "blemishes are counted in an evenly lit field")
 
 
+def test_single_steps_of_a_quiet_dark_are_no_hot_pixels() -> None:
+    """Where nearly all pixels have one code, those of the next are noise; one that is 12 codes high is hot."""
+    rng = np.random.default_rng(16)
+    dark = np.full((240, 320), 30.0)
+    dark[40, 70] += 12
+    found, spots = _measure([codes(dark + rng.normal(0, 0.17, dark.shape)) for _ in range(4)], lit=False)
+
+    assert value(found["hot_pixels"]) == 1
+    assert _places(spots, "hot pixel") == {(70.0, 40.0)}
+
+
 def test_a_region_counts_its_own_pixels() -> None:
     """Places of a region are px of the frame, and defects outside it are not counted."""
     rng = np.random.default_rng(8)
