@@ -16,6 +16,8 @@ from runner.report.verify_pdf import quiet
 _RUNNING = re.compile(r"^.*\bpage \d+ of \d+$", re.MULTILINE)
 _DECIMAL = re.compile(r"[-−]?\d+\.\d+")
 _VERDICT_WORDS = frozenset(" ".join(VERDICTS).split())
+_BULLET = "•"
+"""Marks of lists stand beside whatever word their line happens to follow."""
 _SHOWN = 6
 """Words shown of a difference."""
 
@@ -49,7 +51,7 @@ def compare_pdf(stated: str, again: str) -> Order | str:
     """
     if _joined(stated) == _joined(again):
         return Order.SAME
-    stated, again = (_RUNNING.sub("", text) for text in (stated, again))
+    stated, again = (_RUNNING.sub("", text).replace(_BULLET, " ") for text in (stated, again))
     more, less = _foreign(stated, again), _foreign(again, stated)
     if more or less:
         return _difference(more, less)
