@@ -26,7 +26,7 @@ SMALLEST = 12.0
 """DN of roughness below which no two nibbles or bytes can have changed places: the least such step is 16 DN."""
 FEW = 8
 """Distinct codes up to which a frame counts as drawn, not as taken: it need not have noise."""
-_BANDS, _ROWS, _COLUMNS = 3, 24, 1024
+_BANDS, _ROWS, _COLUMNS = 3, 24, 512
 _LAGS = (1, 2, 3, 5)
 """Distances, in steps of two px or of a packing's group, over which stripes of 2 to 10 px come back to themselves."""
 _QUIET = 0.70
