@@ -18,6 +18,11 @@ from runner.measure.numerics.line_spread import GRID, Array
 
 LEVELS = (0.1, 0.5, 0.9)
 """Shares of the step whose places widths and symmetry are made of."""
+SPIKE_FOOT, SPIKE_HEAD = 0.35, 0.65
+"""Shares of the line spread's height between which its half width lies."""
+MOST_SPIKE = 2.4
+"""Width at the foot over that at the head; 1.56 for a Gaussian, 1.86 for a Lorentzian, 2.44 for an exponential spread
+before the pixel rounds its tip."""
 KINK = 0.015
 """Kernels round off a kink: noiseless boxes, triangles and exponentials have their half width within 1.5 %."""
 CLEAR = 3.0
@@ -92,12 +97,28 @@ def full_width(curves: Curves) -> Gradient:
         pair = [outer, outer - way]
         ends[k] = np.interp(half, density[pair], nodes[pair])
         slopes[k] = (density[pair[1]] - density[pair[0]]) / (nodes[pair[1]] - nodes[pair[0]])
+    _refuse_spike(density / density[top], nodes, top)
     ends += np.clip((half - curves.at(ends)[2]) / slopes, -0.05, 0.05)
     by = curves.at(np.append(ends, nodes[top]))[3]
     moved = -(by[:2] - by[2] / 2) / slopes[:, None]
     gradient = curves.full(moved[1] - moved[0])
     value, smoothing = float(ends[1] - ends[0]), float(gradient @ curves.fit.smoothing)
     return Gradient(value - smoothing, gradient, bias=float(np.hypot(smoothing, KINK * value / np.sqrt(3))))
+
+
+def _refuse_spike(density: Array, nodes: Array, top: int) -> None:
+    """Refuse the half width of a peak on a plateau near half its height: a little noise would widen it."""
+    wide = nodes[density >= SPIKE_FOOT]
+    narrow = [np.flatnonzero(density[top::way] < SPIKE_HEAD) for way in (-1, 1)]
+    if not all(each.size for each in narrow):
+        return
+    head = float(nodes[top + narrow[1][0]] - nodes[top - narrow[0][0]])
+    if float(wide[-1] - wide[0]) > MOST_SPIKE * head:
+        raise MeasurementRefused(
+            "not defined",
+            f"the line spread is {wide[-1] - wide[0]:.1f} px wide at {100 * SPIKE_FOOT:.0f} % of its height and "
+            f"{head:.1f} px at {100 * SPIKE_HEAD:.0f} %: its half width hangs on a narrow tip",
+        )
 
 
 def beyond(curves: Curves, *, bright: bool) -> Gradient:

@@ -147,3 +147,16 @@ def test_what_is_not_defined_is_refused() -> None:
         readouts.level(curves, 1.3)
     with pytest.raises(MeasurementRefused, match=r"add up to less than nothing: check the black level"):
         readouts.modulation(Curves(fit_edge(light(EdgeScene()) - 0.5)))
+
+
+def test_a_narrow_tip_on_a_plateau_has_no_half_width() -> None:
+    """Where 35 % of the height is more than 2.4 times as wide as 65 %, half of it says nothing of the spread."""
+    nodes = np.linspace(-5, 5, 501)
+    tip, plateau = np.exp(-0.5 * (nodes / 0.2) ** 2), np.exp(-((nodes / 1.8) ** 8))
+    spiked = 0.57 * tip + 0.43 * plateau
+    gauss, lorentz = np.exp(-0.5 * nodes**2), 1 / (1 + nodes**2)
+
+    with pytest.raises(MeasurementRefused, match="hangs on a narrow tip"):
+        readouts._refuse_spike(spiked / spiked.max(), nodes, int(spiked.argmax()))
+    for plain in (gauss, lorentz):
+        readouts._refuse_spike(plain, nodes, int(plain.argmax()))
