@@ -4,6 +4,7 @@ A mosaic is never demosaiced: a channel is measured on its own pixels at their t
 and frequencies stay in cycles per pixel of the whole grid.
 """
 
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
@@ -15,6 +16,7 @@ Mask = NDArray[np.bool_]
 _LETTERS = {"red": "R", "green": "G", "blue": "B"}
 
 
+@lru_cache(maxsize=8)
 def sites(channel: str, camera: Camera, origin: tuple[int, int], shape: tuple[int, int]) -> Mask | None:
     """Return where a channel's pixels lie in a part of a frame.
 
@@ -31,7 +33,9 @@ def sites(channel: str, camera: Camera, origin: tuple[int, int], shape: tuple[in
         return None
     cell = np.array([letter == _LETTERS[channel] for letter in camera.mosaic]).reshape(2, 2)
     rows, columns = (np.arange(first, first + count) % 2 for first, count in zip(origin, shape, strict=True))
-    return np.asarray(cell[np.ix_(rows, columns)])
+    mask = np.asarray(cell[np.ix_(rows, columns)])
+    mask.flags.writeable = False  # the same mask serves every frame of that size
+    return mask
 
 
 def plane(codes: NDArray[Any], channel: str, camera: Camera) -> NDArray[Any]:

@@ -212,7 +212,8 @@ def _measure_region(
     capture = one.capture
     crops = tuple(crop(frame, found.box, capture.camera, channel) for frame in frames)
     together = getattr(plan.method, "TOGETHER", False)
-    others = {name: tuple(crop(f, found.box, capture.camera, name) for f in frames) for name in capture.camera.channels}
+    beside = capture.camera.channels if together else ()
+    others = {name: tuple(crop(frame, found.box, capture.camera, name) for frame in frames) for name in beside}
     sample = Sample(
         found,
         crops[0],
@@ -222,7 +223,7 @@ def _measure_region(
         wanted,
         companions.crops(capture.uses, found.box, channel),
         crops if together else (),
-        others if together else {},
+        others,
     )
     try:
         measured = plan.method.measure(sample, plan.options)
