@@ -5,6 +5,7 @@ import os
 import shutil
 import subprocess
 import sys
+import tempfile
 from collections.abc import Iterator
 from io import BytesIO
 from pathlib import Path
@@ -255,9 +256,9 @@ def test_printing_leaves_no_file_behind(tmp_path: Path) -> None:
         "    work()\n"
         "    sys.exit(worker.exitcode)\n"
     )
-    (tmp_path / "scratch").mkdir()
     root = str(Path(__file__).resolve().parents[2])
-    environment = os.environ | {"PYTHONPATH": root, "TMPDIR": str(tmp_path / "scratch")}
-    subprocess.run([sys.executable, "script.py"], cwd=tmp_path, env=environment, check=True, timeout=120)
+    with tempfile.TemporaryDirectory() as scratch:  # not below tmp_path: sockets of workers need a short path
+        environment = os.environ | {"PYTHONPATH": root, "TMPDIR": scratch}
+        subprocess.run([sys.executable, "script.py"], cwd=tmp_path, env=environment, check=True, timeout=120)
 
-    assert list((tmp_path / "scratch").iterdir()) == []
+        assert list(Path(scratch).iterdir()) == []
