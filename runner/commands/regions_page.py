@@ -3,6 +3,7 @@
 import base64
 import io
 from collections.abc import Sequence
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -12,6 +13,7 @@ from PIL import Image
 
 from runner.capture.frame import Frame, linearise
 from runner.capture.lot import find_lot
+from runner.capture.mosaic import grey
 from runner.capture.patterns import natural, read_pattern
 from runner.capture.readers import read_frames
 from runner.errors import FrameRefused, UsageError
@@ -76,6 +78,7 @@ def _capture(one: CapturePlan, files: Sequence[Path]) -> dict[str, Any]:
         frame = read_frames(files[0], capture.camera)[0]
     except FrameRefused as refused:
         return page | {"sentences": [f"The file was refused. {refused}"]}
+    frame = replace(frame, codes=grey(frame.codes, capture.camera))  # as the session lets targets see it
     located = one.target.locate([frame], capture.regions, capture.camera, one.target_options)
     rows, columns = frame.shape
     asked = {region.name: region for region in capture.regions}
