@@ -6,6 +6,7 @@ from itertools import pairwise
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from runner.capture.frame import Codes, linearise
 from runner.resources import folder
@@ -21,6 +22,8 @@ NARROWEST = 500
 GREYS = 64
 """Steps of grey kept, so that sensor noise does not fill the file."""
 OUTLINE, SHADOW = (255, 196, 0), (20, 20, 20)
+_COLOURED = 0.2
+"""Share of coloured pixels up to which a picture counts as grey."""
 _DISPLAY_GAMMA = 2.2
 _BALLOON = 16.0
 """px: half of a balloon with its surroundings."""
@@ -102,10 +105,38 @@ def _balloon(draw: "ImageDraw.ImageDraw", x: float, y: float, number: int) -> No
 
 
 def png(picture: "Image.Image") -> bytes:
-    """Return an RGB picture as PNG with a palette of its own; the same picture gives the same bytes."""
+    """Return an RGB picture as PNG with a palette of its own; the same picture gives the same bytes.
+
+    A grey picture with a few colours on it keeps each of them; any other has its colours brought down to 160.
+    """
     from PIL import Image  # noqa: PLC0415 - heavy
 
-    small = picture.quantize(160, method=Image.Quantize.MEDIANCUT, dither=Image.Dither.NONE)
+    small = _mostly_grey(np.asarray(picture))
+    if small is None:
+        small = picture.quantize(160, method=Image.Quantize.MEDIANCUT, dither=Image.Dither.NONE)
     out = io.BytesIO()
     small.save(out, "PNG", optimize=False, compress_level=6)
     return out.getvalue()
+
+
+def _mostly_grey(pixels: NDArray[np.uint8]) -> "Image.Image | None":
+    """Return a picture with exactly its own colours as palette, or None where they are many; rows × columns × 3."""
+    from PIL import Image  # noqa: PLC0415 - heavy
+
+    red, green, blue = (pixels[..., k] for k in range(3))
+    coloured = (red != green) | (green != blue)
+    if np.count_nonzero(coloured) > _COLOURED * coloured.size:
+        return None
+    greys = np.flatnonzero(np.bincount(red[~coloured], minlength=256))
+    numbers = pixels[coloured].astype(np.int32) @ (1 << 16, 1 << 8, 1)
+    colours, places = np.unique(numbers, return_inverse=True)
+    if len(greys) + len(colours) > 256:
+        return None
+    index = np.zeros(256, dtype=np.uint8)
+    index[greys] = np.arange(len(greys))
+    indices = index[red]
+    indices[coloured] = len(greys) + places
+    small = Image.fromarray(indices, mode="P")
+    palette = [part for grey in greys.tolist() for part in 3 * (grey,)]
+    small.putpalette(palette + [part for number in colours.tolist() for part in number.to_bytes(3, "big")])
+    return small

@@ -36,6 +36,8 @@ class Watched:
     """The most that any process had held when so many units were done, MB."""
     code: int = -1
     """Exit code."""
+    others: float = 0.0
+    """Cores that other programs of the machine took meanwhile, on average."""
 
     @property
     def total(self) -> float:
@@ -66,7 +68,7 @@ def run(folder: Path, arguments: Sequence[str], settings: Mapping[str, str], sta
     seen = Watched()
     environment = {**os.environ, "PYTHONPATH": str(ROOT), "XDG_CONFIG_HOME": str(folder / "config"), **settings}
     command = [sys.executable, "-m", "runner", "run", *arguments, "--json-lines"]
-    begin = time.monotonic()
+    begin, busy = time.monotonic(), _busy()
     with subprocess.Popen(
         command, cwd=folder, env=environment, stdout=subprocess.PIPE, text=True, start_new_session=True
     ) as process:
@@ -84,7 +86,14 @@ def run(folder: Path, arguments: Sequence[str], settings: Mapping[str, str], sta
         seen.wall = time.monotonic() - begin
         over.set()
         watcher.join()
+    seen.others = max(0.0, (_busy() - busy - seen.total) / seen.wall)
     return seen
+
+
+def _busy() -> float:
+    """Return the CPU time that all programs have taken since the machine started, s."""
+    user, nice, system, _, _, irq, soft, *_ = Path("/proc/stat").read_text().splitlines()[0].split()[1:]
+    return sum(int(part) for part in (user, nice, system, irq, soft)) / _TICKS
 
 
 def _watch(seen: Watched, over: threading.Event) -> None:

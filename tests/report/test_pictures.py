@@ -9,7 +9,7 @@ import pytest
 from numpy.typing import NDArray
 from PIL import Image
 
-from runner.report.pictures import GREYS, OUTLINE, WIDEST, overview
+from runner.report.pictures import GREYS, OUTLINE, WIDEST, overview, png
 from runner.spec.model import Camera, Tone
 
 CAMERA = Camera(width=640, height=480, bit_depth=12, black_level=64, white_level=4095)
@@ -23,13 +23,13 @@ def _region(box: tuple[int, int, int, int] | None, **more: Any) -> dict[str, Any
     return {"region": "centre", "found": True, "box": box, "outline": ()} | more
 
 
-def _pixels(png: bytes) -> NDArray[np.uint8]:
-    return np.asarray(Image.open(io.BytesIO(png)).convert("RGB"))
+def _pixels(data: bytes) -> NDArray[np.uint8]:
+    return np.asarray(Image.open(io.BytesIO(data)).convert("RGB"))
 
 
-def _bright(png: bytes) -> NDArray[np.bool_]:
+def _bright(data: bytes) -> NDArray[np.bool_]:
     """Return where a picture has the colour of outlines, as near as its palette comes to it."""
-    near: NDArray[np.bool_] = np.abs(_pixels(png).astype(int) - OUTLINE).max(axis=2) < 24
+    near: NDArray[np.bool_] = np.abs(_pixels(data).astype(int) - OUTLINE).max(axis=2) < 24
     return near
 
 
@@ -128,3 +128,30 @@ def test_numbers_differ_and_bytes_repeat() -> None:
     assert (one != two).any()
     assert overview(_frame(), CAMERA, boxes) == png
     assert len(png) < 20_000
+
+
+def test_a_grey_picture_keeps_every_colour() -> None:
+    """Greys and the few colours drawn on them come back exactly."""
+    pixels = np.arange(40 * 30, dtype=np.uint32).reshape(30, 40, 1).repeat(3, axis=2) % 200
+    pixels[5, 3:20] = (255, 196, 0)
+    pixels[6, 3:20] = np.arange(17)[:, None] * (1, 2, 3) + (90, 7, 11)
+    picture = Image.fromarray(pixels.astype(np.uint8))
+
+    read = Image.open(io.BytesIO(png(picture)))
+
+    assert read.mode == "P"
+    assert np.array_equal(np.asarray(read.convert("RGB")), np.asarray(picture))
+    assert png(picture) == png(picture.copy())
+
+
+def test_a_picture_of_many_colours_keeps_nearly_every_one() -> None:
+    """Above 256 colours, or where colour is everywhere, 160 stand for all, each near to its own."""
+    y, x = np.mgrid[0:60, 0:60]
+    everywhere = np.stack([4 * x, 4 * y, 255 - 4 * x], axis=2).astype(np.uint8)
+    few = np.full((60, 60, 3), 128, dtype=np.uint8)
+    few[:10] = everywhere[25:35]
+
+    for pixels in (everywhere, few):
+        read = Image.open(io.BytesIO(png(Image.fromarray(pixels))))
+        assert len(read.getcolors(256) or ()) <= 160
+        assert np.abs(np.asarray(read.convert("RGB"), dtype=int) - pixels).mean() < 12
