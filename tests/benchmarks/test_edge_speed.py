@@ -25,7 +25,7 @@ from tests.benchmarks.workload import REGION, SIGMAS, centres, lay_out
 if TYPE_CHECKING:
     from collections.abc import Callable
 
-ROUNDS = 7
+ROUNDS = 15
 
 
 def _read(path: Path) -> np.ndarray:
