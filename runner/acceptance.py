@@ -8,6 +8,7 @@ import traceback
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from datetime import UTC, datetime
+from functools import lru_cache
 from hashlib import sha256
 from pathlib import Path
 from typing import Any
@@ -124,7 +125,8 @@ def run(order: Order, announce: Announce = lambda _result, _done, _all: None) ->
     """Judge every unit found under the frames' folder and write its reports.
 
     Raises:
-        UsageError: Spec, station, folders or key cannot be used; nothing is judged then.
+        UsageError: Spec, station or folders cannot be used; nothing is judged then.
+        SigningError: The key cannot be used; nothing is judged then.
         ShelfError: A target or method module cannot be used.
     """
     if order.jobs > 1:
@@ -137,12 +139,13 @@ def run(order: Order, announce: Announce = lambda _result, _done, _all: None) ->
 
 
 def read(order: Order) -> tuple[Plan, RunFacts]:
-    """Read spec and station, bind them, and fix the run's facts in its folder."""
+    """Read spec and station, bind them, see that the key serves, and fix the run's facts in its folder."""
     spec = read_spec(order.spec)
     station = read_station(order.station) if order.station else Station()
     plan = bind(spec, station)
     stated = {"--operator": order.operator, "--lot": order.lot, str(order.spec): spec.expanded}
     glyphs.check(stated | {str(order.station): station.raw})
+    _signer(order)
     kept = store.start_run(
         order.out,
         {
@@ -194,7 +197,7 @@ def _accept(job: Job, unit: UnitFolder) -> UnitResult:
         document = _document(job, unit, evidence, judgement, pictures)
         from runner.report.unit_files import unit_files  # noqa: PLC0415 - heavy: drawing, PDF, signing
 
-        files = unit_files(document, pictures, _signer(job), tracebacks, job.order.timestamp_url)
+        files = unit_files(document, pictures, _signer(job.order), tracebacks, job.order.timestamp_url)
     except Exception as error:  # noqa: BLE001 - as above
         _note_fault(job, unit.serial, [*tracebacks, traceback.format_exc()])
         return _fault_result(job, unit, error)
@@ -376,9 +379,17 @@ def _fault_result(job: Job, unit: UnitFolder, error: Exception) -> UnitResult:
     return UnitResult(unit.serial, verdict.NOT_MEASURED, verdict.AT_FAULT_PROGRAM, because, what, Exit.FAULT, where)
 
 
-def _signer(job: Job) -> Any:
-    from runner.report.keys import load_key, local_station_key  # noqa: PLC0415 - heavy
+def _signer(order: Order) -> Any:
+    from runner.report.keys import local_station_key  # noqa: PLC0415 - heavy
 
-    if job.order.key is not None:
-        return load_key(job.order.key, job.order.passphrase)
-    return local_station_key()
+    if order.key is None:
+        return local_station_key()
+    return _opened(order.key, order.passphrase, order.key.stat().st_mtime_ns if order.key.exists() else 0)
+
+
+@lru_cache(maxsize=1)
+def _opened(key: Path, passphrase: bytes | None, _changed: int) -> Any:
+    """Open a key once, not for every unit: a pass phrase is slow to try on purpose."""
+    from runner.report.keys import load_key  # noqa: PLC0415 - heavy
+
+    return load_key(key, passphrase)

@@ -10,12 +10,12 @@ from runner import acceptance
 from runner.acceptance import Order
 from runner.capture import integrity
 from runner.capture.lot import find_lot
-from runner.errors import SpecError, StorageError, UsageError
+from runner.errors import SigningError, SpecError, StorageError, UsageError
 from runner.exits import Exit
 from runner.judge.unit import judge_unit
 from runner.measure.methods import edge_response
 from runner.measure.plan import bind
-from runner.report import store
+from runner.report import keys, store
 from runner.spec.build import read_spec
 from tests.capture.bad_frames import BAD_CAPTURES, NEIGHBOUR, SPEC_TEXT, UNIT, BadCapture, chart_codes, good_lot
 
@@ -87,6 +87,21 @@ def test_one_bad_unit_leaves_the_others_report_and_exits_4(tmp_path: Path) -> No
     assert [(u.verdict, u.at_fault) for u in outcome.units] == [("not measured", "capture"), ("conforms", None)]
     results = json.loads((tmp_path / "out" / UNIT / "results.json").read_bytes())
     assert "chart-1.tif" in results["captures"][1]["faults"][0]
+
+
+def test_a_key_that_does_not_serve_stops_before_the_first_frame(tmp_path: Path) -> None:
+    """A wrong pass phrase is nobody's fault but the caller's: no unit is judged, no folder is made, the exit is 2."""
+    authority, word = tmp_path / "authority", b"walnut hazel"
+    keys.make_authority(authority, "Demo authority", b"apple pear plum")
+    station = keys.make_station(tmp_path / "station", "Bench 2", authority, b"apple pear plum", word)
+
+    for wrong, said in ((b"walnut pecan", "the pass phrase does not open it"), (None, "pass phrase")):
+        with pytest.raises(SigningError, match=said):
+            acceptance.run(_order(tmp_path, key=station, passphrase=wrong))
+    with pytest.raises(UsageError, match="it cannot be read"):
+        acceptance.run(_order(tmp_path, key=tmp_path / "nothing.p12", passphrase=word))
+    assert not (tmp_path / "out").exists()
+    assert acceptance.run(_order(tmp_path, key=station, passphrase=word)).exit is Exit.CONFORMS
 
 
 def test_a_rerun_keeps_what_is_done_and_does_anew_what_changed(tmp_path: Path) -> None:

@@ -34,7 +34,7 @@ def test_the_report_of_30_checks_and_6_pictures(tmp_path: Path, monkeypatch: pyt
     job, unit = Job(replace(order, time=facts.time), plan, facts, seen), lot.units[0]
     evidence, pictures, _ = acceptance.measure_unit(plan, unit, seen)
     judgement = judge_unit(plan.spec, evidence)
-    key = acceptance._signer(job)
+    key = acceptance._signer(job.order)
 
     def document() -> dict[str, Any]:
         return acceptance._document(job, unit, evidence, judgement, pictures)
