@@ -128,8 +128,14 @@ def _fonts() -> Any:
     from weasyprint.text.fonts import FontConfiguration  # noqa: PLC0415 - heavy
 
     fonts = FontConfiguration()
-    Finalize(None, fonts.__del__, exitpriority=0)
+    Finalize(None, _tidy, (fonts,), exitpriority=0)
     return fonts
+
+
+def _tidy(fonts: Any) -> None:
+    """Remove the renderer's folder of fonts while the libraries are still there that do it, and not a second time."""
+    fonts.__del__()
+    fonts._folder = None  # noqa: SLF001 - else the renderer tries again when nothing is there any more, and complains
 
 
 def _font(name: str) -> bytes:
