@@ -164,7 +164,7 @@ def read(order: Order) -> tuple[Plan, RunFacts]:
 def gather(order: Order, plan: Plan) -> tuple[Lot, integrity.Survey]:
     """Find the units and look through every file, before anything is measured."""
     lot = find_lot(order.frames, plan.spec, order.units)
-    return lot, integrity.survey(lot, plan.spec, order.jobs)
+    return lot, integrity.survey(lot, plan.spec, order.jobs, workers=processes.pool)
 
 
 def accept_units(job: Job, units: Sequence[UnitFolder], announce: Announce) -> Iterator[UnitResult]:

@@ -38,8 +38,8 @@ def warm_up() -> None:
             os.environ[_SAFE_PATH] = before
 
 
-def pool(jobs: int, prepare: Callable[..., None], *arguments: Any) -> ProcessPoolExecutor:
-    """Return worker processes, each prepared by a function of a module with these arguments.
+def pool(jobs: int, prepare: Callable[..., None] | None = None, *arguments: Any) -> ProcessPoolExecutor:
+    """Return worker processes, each prepared by a function of a module with these arguments, if one is given.
 
     Args:
         jobs: How many.
@@ -50,11 +50,12 @@ def pool(jobs: int, prepare: Callable[..., None], *arguments: Any) -> ProcessPoo
     return ProcessPoolExecutor(jobs, get_context(_HOW), _begin, (dict(os.environ), prepare, *arguments))
 
 
-def _begin(environment: dict[str, str], prepare: Callable[..., None], *arguments: Any) -> None:
+def _begin(environment: dict[str, str], prepare: Callable[..., None] | None, *arguments: Any) -> None:
     threading.Thread(target=_end_with_the_run, daemon=True).start()
     os.environ.clear()  # that of the process which loaded the program may be older than this run
     os.environ.update(environment)
-    prepare(*arguments)
+    if prepare is not None:
+        prepare(*arguments)
 
 
 def _end_with_the_run() -> None:

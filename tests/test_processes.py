@@ -15,10 +15,6 @@ from runner import processes, threads
 ROOT = Path(__file__).resolve().parent.parent
 
 
-def _nothing() -> None:
-    """Prepare nothing."""
-
-
 def _raise(words: str) -> None:
     raise ValueError(words)
 
@@ -33,7 +29,7 @@ def test_each_pool_works_in_the_environment_of_its_own_start(monkeypatch: pytest
     """Variables set between two pools count for the second, though both are forked from one process."""
     for word in ("first", "second"):
         monkeypatch.setenv("PROBATUM_TEST", word)
-        with processes.pool(1, _nothing) as pool:
+        with processes.pool(1) as pool:
             found, counts, loaded = pool.submit(_state, "PROBATUM_TEST").result()
         assert found == word
         assert set(counts) == {"1"}
@@ -57,7 +53,7 @@ def test_a_strangers_module_in_the_present_folder_is_not_loaded(tmp_path: Path) 
         "import sys; from runner import processes\n"
         "import os\n"
         "if __name__ == '__main__':\n"
-        "    with processes.pool(1, os.getpid) as pool:\n"
+        "    with processes.pool(1) as pool:\n"
         "        print(pool.submit(eval, \"__import__('runner').__file__\").result())\n"
     )
     (tmp_path / "elsewhere").mkdir()
@@ -89,7 +85,7 @@ def test_workers_end_with_a_run_that_is_killed(tmp_path: Path) -> None:
         "import os, time\n"
         "from runner import processes\n"
         "if __name__ == '__main__':\n"
-        "    with processes.pool(2, os.getpid) as pool:\n"
+        "    with processes.pool(2) as pool:\n"
         "        waits = [pool.submit(time.sleep, 600) for _ in range(3)]\n"
         "        print('at work', flush=True)\n"
         "        time.sleep(600)\n"

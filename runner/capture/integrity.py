@@ -6,7 +6,7 @@ choice of units change nothing. Only digests and small facts are kept, one file 
 
 import re
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
-from concurrent.futures import ProcessPoolExecutor
+from concurrent.futures import Executor, ProcessPoolExecutor
 from dataclasses import dataclass, field, replace
 from multiprocessing import get_context
 from pathlib import Path
@@ -28,6 +28,8 @@ CLAMPED = 1e-4
 
 Progress = Callable[[int, int], None]
 """Is told how many files of how many have been read."""
+Workers = Callable[[int], Executor]
+"""Gives so many worker processes."""
 
 
 @dataclass(frozen=True)
@@ -114,7 +116,9 @@ class Survey:
         return any(f.simulated for f in self.files if f.serial == serial)
 
 
-def survey(lot: Lot, spec: Spec, jobs: int = 1, progress: Progress | None = None) -> Survey:
+def survey(
+    lot: Lot, spec: Spec, jobs: int = 1, progress: Progress | None = None, workers: Workers | None = None
+) -> Survey:
     """Read every frame of every unit once and find what cannot be evidence.
 
     Args:
@@ -122,10 +126,11 @@ def survey(lot: Lot, spec: Spec, jobs: int = 1, progress: Progress | None = None
         spec: Captures with their cameras.
         jobs: Processes; the result does not depend on it.
         progress: Is told after each file.
+        workers: Gives the processes; None starts new ones.
     """
     units = sorted((*lot.units, *lot.others), key=lambda unit: unit.serial)
     tasks = list(_tasks(units, spec))
-    files = tuple(_all_facts(tasks, jobs, progress))
+    files = tuple(_all_facts(tasks, jobs, progress, workers or _new_ones))
     sentences, marks = _Collector(), _Collector()
     for unit in units:
         _folder_faults(unit, spec, files, sentences)
@@ -183,13 +188,17 @@ def _tasks(units: Iterable[UnitFolder], spec: Spec) -> Iterator[_Task]:
                 yield path, camera, FileFacts(unit.serial, attempt.number, file, tuple(captures))
 
 
-def _all_facts(tasks: Sequence[_Task], jobs: int, progress: Progress | None) -> Iterator[FileFacts]:
+def _new_ones(number: int) -> Executor:
+    return ProcessPoolExecutor(number, get_context("spawn"))
+
+
+def _all_facts(tasks: Sequence[_Task], jobs: int, progress: Progress | None, workers: Workers) -> Iterator[FileFacts]:
     if jobs == 1 or len(tasks) < 2:
         yield from _counted(map(_facts, tasks), len(tasks), progress)
         return
-    workers = min(jobs, len(tasks))
-    with ProcessPoolExecutor(workers, get_context("spawn")) as pool:
-        chunk = max(1, min(8, len(tasks) // (4 * workers)))
+    number = min(jobs, len(tasks))
+    with workers(number) as pool:
+        chunk = max(1, min(8, len(tasks) // (4 * number)))
         yield from _counted(pool.map(_facts, tasks, chunksize=chunk), len(tasks), progress)
 
 
