@@ -53,8 +53,8 @@ def strongest_line(
     away = np.hypot(fx[None, :] * columns, fy[:, None] * rows)
     searched = np.where(away > guard, power, 0.0)
     row, column = np.unravel_index(int(np.argmax(searched)), power.shape)
-    x = (fx[column] + _shift(power, int(row), int(column), 1) / columns) / pitch[0]
-    y = (fy[row] + _shift(power, int(row), int(column), 0) / rows) / pitch[1]
+    x = (fx[column] + _shift(power, columns, int(row), int(column), 1) / columns) / pitch[0]
+    y = (fy[row] + _shift(power, columns, int(row), int(column), 0) / rows) / pitch[1]
     if y < 0 or (y == 0 and x < 0):
         x, y = -x, -y
     median = float(np.median(power.ravel()[:: max(1, power.size // 20000)]))
@@ -94,17 +94,19 @@ def _hann(n: int) -> Real:
     return 0.5 - 0.5 * np.cos(2 * np.pi * (np.arange(n) + 0.5) / n)
 
 
-def _shift(power: Real, row: int, column: int, axis: int) -> float:
-    """Return where the peak of a parabola through three log ordinates lies, bins from the middle one."""
+def _shift(power: Real, columns: int, row: int, column: int, axis: int) -> float:
+    """Return where the peak of a parabola through three log ordinates lies, bins from the middle one.
+
+    Of the patch's so many columns the half plane x ≥ 0 is kept: beyond its ends the spectrum is its own mirror image.
+    """
     index = [row, column]
     around = []
     for step in (-1, 0, 1):
         at = list(index)
         at[axis] += step
-        if axis == 0:
-            at[0] %= power.shape[0]
         if not 0 <= at[1] < power.shape[1]:
-            return 0.0
+            at = [-at[0], -at[1] % columns]
+        at[0] %= power.shape[0]
         around.append(float(np.log(power[at[0], at[1]] + 1e-300)))
     before, middle, after = around
     bend = before - 2 * middle + after
