@@ -33,7 +33,11 @@ class Line:
 
 
 def strongest_line(
-    values: NDArray[np.floating], pitch: tuple[float, float] = (1.0, 1.0), *, guard: float = GUARD
+    values: NDArray[np.floating],
+    pitch: tuple[float, float] = (1.0, 1.0),
+    *,
+    guard: float = GUARD,
+    smoothed: bool = False,
 ) -> Line | None:
     """Find the strongest line.
 
@@ -41,6 +45,8 @@ def strongest_line(
         values: Patch, rows × columns, light.
         pitch: Distance of neighbouring columns and rows, px of the frame.
         guard: Bins around the origin to leave out.
+        smoothed: The patch went through [1 2 1]/4 along both axes, as a mosaic's grey picture: undone, for it weakens
+            fine stripes below what the colours' different levels make of them, their mirror image at 0.5 cy/px less.
 
     Returns:
         The line, or None for a patch that is constant or smaller than 8 × 8.
@@ -51,6 +57,8 @@ def strongest_line(
     power = spectrum(values)
     fx, fy = fft.rfftfreq(columns), fft.fftfreq(rows)
     away = np.hypot(fx[None, :] * columns, fy[:, None] * rows)
+    if smoothed:
+        power = power / np.outer(_passed(fy, rows), _passed(fx, columns)) ** 2
     searched = np.where(away > guard, power, 0.0)
     row, column = np.unravel_index(int(np.argmax(searched)), power.shape)
     x = (fx[column] + _shift(power, columns, int(row), int(column), 1) / columns) / pitch[0]
@@ -84,6 +92,11 @@ def spectrum(values: NDArray[np.floating], *, level: bool = False) -> Real:
     flat = flat * (wx / wx.mean())[None, :] * (wy / wy.mean())[:, None]
     transformed = fft.rfft2(flat.astype(np.float32)) / flat.size
     return np.asarray(transformed.real**2 + transformed.imag**2, dtype=np.float64)
+
+
+def _passed(f: Real, n: int) -> Real:
+    """Return what [1 2 1]/4 leaves of frequencies; two bins from 0.5 cy/px, where nothing is left, it is not undone."""
+    return np.asarray(np.where(np.abs(f) < 0.5 - GUARD / n, np.cos(np.pi * f) ** 2, 1.0))
 
 
 def _centred(n: int) -> Real:

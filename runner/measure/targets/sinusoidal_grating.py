@@ -55,7 +55,7 @@ def _locate_one(frame: Frame, region: Region, camera: Camera) -> Found | NotFoun
     if level < DARKEST:
         sentence = f"the patch lies at {100 * level:.2f} % of the range over the black level"
         return NotFound(region.name, box, "too dark", sentence)
-    line = strongest_line(light)
+    line = strongest_line(light, smoothed=camera.mosaic != "none")
     if line is None:
         return NotFound(region.name, box, "no picture", "every pixel of the patch has the same value")
     if line.contrast < LEAST_CONTRAST:
