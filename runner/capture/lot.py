@@ -14,6 +14,7 @@ from runner.capture.patterns import FilePattern, natural, read_pattern
 from runner.capture.sidecar import SidecarRef
 from runner.errors import UsageError
 from runner.spec.model import Capture, Spec
+from runner.spec.serials import is_serial
 
 _ATTEMPT = re.compile(r"attempt-0*([1-9][0-9]{0,3})")
 _NEVER_FRAMES = re.compile(r"\..*|.*\.(part|partial|tmp|crdownload)|.*~|thumbs\.db|desktop\.ini", re.IGNORECASE)
@@ -102,7 +103,7 @@ def find_lot(frames_dir: Path, spec: Spec, units: Sequence[str] = ()) -> Lot:
     folders, unused, strangers = _sort_entries(frames_dir, spec)
     wanted = sorted(set(units), key=natural)
     for serial in wanted:
-        if not re.fullmatch(spec.unit.serial, serial):
+        if not is_serial(spec.unit.serial, serial):
             raise UsageError(f"'{serial}' is not a serial of this spec", allowed=f"serials like {spec.unit.serial}")
     missing = [serial for serial in wanted if serial not in folders]
     if len(wanted) == 1 and missing and not folders:
@@ -116,7 +117,7 @@ def find_lot(frames_dir: Path, spec: Spec, units: Sequence[str] = ()) -> Lot:
             allowed=f"there are {some(sorted(folders, key=natural))}" if folders else "there are no units at all",
             next_step="check the serial and the folder",
         )
-    if not folders and re.fullmatch(spec.unit.serial, frames_dir.resolve().name):
+    if not folders and is_serial(spec.unit.serial, frames_dir.resolve().name):
         strangers.append(
             f"{frames_dir.name} is itself the folder of a unit: give the folder above, or --unit {frames_dir.name}"
         )
@@ -136,7 +137,7 @@ def _sort_entries(root: Path, spec: Spec) -> tuple[dict[str, Path], list[str], l
             unused.append(entry.name)
         elif entry.name.startswith("."):
             unused.append(f"{entry.name}/")
-        elif re.fullmatch(spec.unit.serial, entry.name):
+        elif is_serial(spec.unit.serial, entry.name):
             folders[entry.name] = entry
         else:
             strangers.append(f"{entry.name}/ is not a unit: its name is no serial like {spec.unit.serial}")

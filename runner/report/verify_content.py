@@ -1,7 +1,6 @@
 """What a signed report says: whole data, a page that shows them and nothing else, verdicts that follow from them."""
 
 import math
-import re
 from collections.abc import Iterator, Mapping
 from hashlib import sha256
 from typing import Any
@@ -12,6 +11,7 @@ from runner.report.cms_form import refusing
 from runner.report.verify_pdf import SignedPdf
 from runner.report.verify_record import Check, Terms
 from runner.spec.revision import digest
+from runner.spec.serials import is_serial, pattern_fault
 
 RESULTS = "results.json"
 NOT_REWRITTEN = frozenset({"program", "warnings"})
@@ -74,9 +74,12 @@ def check_serial(document: Mapping[str, Any], folder: str, *, lot: bool) -> Iter
             not itself the serial of another unit.
     """
     serial, pattern = str(document["unit"]["serial"]), str(document["spec"]["unit"]["serial"])
-    if re.fullmatch(pattern, serial) is None:
+    fault, _ = pattern_fault(pattern)
+    if fault:
+        yield Check("unit", False, fault)
+    elif not is_serial(pattern, serial):
         yield Check("unit", False, f"'{serial}' is no serial of its spec, which asks for {pattern}")
-    elif folder != serial and (lot or re.fullmatch(pattern, folder)):
+    elif folder != serial and (lot or is_serial(pattern, folder)):
         yield Check("unit", False, f"the folder {folder} holds the report of another unit, {serial}")
 
 

@@ -19,6 +19,7 @@ from runner.spec.leaves import (
     write_amount,
 )
 from runner.spec.model import Amount, Tone
+from runner.spec.serials import pattern_fault
 from runner.spec.tree import Mapped, Text, nearest, number, plain_data
 from runner.spec.units import UNITS, spell
 
@@ -118,16 +119,9 @@ def read_transfer(node: Any) -> tuple[tuple[Amount, Amount], ...]:
 def read_serial(node: Any) -> str:
     """Read the regular expression of a serial."""
     text = read_text(node)
-    try:
-        pattern = re.compile(text)
-    except re.error as error:
-        refuse(f"'{text}' is no regular expression: {error}", "", "put single quotes around it")
-    if pattern.fullmatch(""):
-        refuse(
-            "the serial's pattern matches an empty serial",
-            "",
-            "write what a serial looks like, for example 'WS8-[0-9]{6}'",
-        )
+    fault, step = pattern_fault(text)
+    if fault:
+        refuse(fault, "", step)
     return text
 
 

@@ -297,3 +297,13 @@ def test_data_that_cannot_be_judged_are_refused() -> None:
 def test_differences_are_told_by_place(stated: Any, again: Any, rows: list[str]) -> None:
     """Numbers agree to a relative 1e-9 and nothing else agrees by half; each difference says where."""
     assert verify_content.differing(stated, again) == rows
+
+
+def test_a_strangers_slow_pattern_is_never_used() -> None:
+    """A report whose spec has a pattern that would try for years is refused at once, with the reason."""
+    document = {"unit": {"serial": "a" * 40 + "!"}, "spec": {"unit": {"serial": "(a+)+b"}}}
+
+    (check,) = verify_content.check_serial(document, "unit", lot=False)
+
+    assert check.held is False
+    assert "can take forever" in check.sentence
