@@ -107,9 +107,34 @@ def _rolled_up(checks: tuple[Check, ...], states: tuple[CaptureState, ...]) -> J
     return Judgement(verdict, at_fault, because, reasons, _next(verdict, at_fault, deciding), checks, states)
 
 
-def _weight(check: Check) -> tuple[int, float, str]:
+def _weight(check: Check) -> tuple[object, ...]:
+    """Return a key that sorts the gravest check first.
+
+    What does not conform comes first, then what was not measured, then what cannot be decided; among the first and the
+    last what lies furthest beyond its limit in units of U, among the second what the unit's own blame is taken from.
+    """
     order = (DOES_NOT_CONFORM, NOT_MEASURED, CANNOT_DECIDE, CONFORMS, REPORT_ONLY)
-    return order.index(check.verdict), (1.0 if check.probability is None else check.probability), check.characteristic
+    blamed = _BLAME_ORDER.index(check.at_fault) if check.at_fault in _BLAME_ORDER else len(_BLAME_ORDER)
+    beyond = (float(blamed), 0.0) if check.verdict == NOT_MEASURED else _beyond(check)
+    return order.index(check.verdict), beyond, _natural(check.characteristic), check.characteristic
+
+
+def _beyond(check: Check) -> tuple[float, float]:
+    """Return the distance inside the nearest limit, in U and in the limit's own unit; negative beyond it.
+
+    A value without uncertainty beyond its limit is beyond by any number of U; one known by a bound alone has no U, and
+    comes after all others.
+    """
+    value = check.value if check.bound is None else check.bound[1]
+    ends = [] if value is None or check.at_least is None else [value - check.at_least]
+    ends += [] if value is None or check.at_most is None else [check.at_most - value]
+    inside = min(ends, default=0.0)
+    if check.bound is not None or not ends:
+        return float("inf"), inside
+    wide = check.k * (check.u or 0.0)
+    if wide:
+        return inside / wide, inside
+    return (0.0 if inside == 0 else inside * float("inf")), inside
 
 
 def _blame(verdict: str, deciding: Sequence[Check]) -> tuple[str | None, str]:

@@ -135,3 +135,46 @@ def test_judging_again_gives_the_same() -> None:
     )
 
     assert judge_unit(asked, found) == judge_unit(asked, found)
+
+
+def test_the_gravest_reason_comes_first() -> None:
+    """A failure comes before what was not measured, and of failures the one most U beyond its limit, in any order."""
+    limits = (
+        limit("1", where=("left",), where_label="left"),
+        limit("2"),
+        limit("3", where=("right",), where_label="right"),
+        limit("4", quantity="edge_width", unit="px", at_least=None, at_most=2.0),
+    )
+    wide = reading(3.0, 0.3, quantity="edge_width", measured_in="px")  # 1.0 over its limit is 1.7 U, and does not count
+    found = (refused("no edge", "left"), reading(0.195, 0.004), reading(0.15, 0.002, "right"), wide)
+
+    judged = judge_unit(spec(*limits), evidence(*found))
+    turned = judge_unit(spec(*reversed(limits)), evidence(*reversed(found)))
+
+    places = ["right: mtf50 0.1500", "centre: edge width 3", "left: mtf50 not measured", "centre: mtf50 0.195"]
+    assert [reason[: len(place)] for reason, place in zip(judged.reasons, places, strict=True)] == places
+    assert judged.reasons == turned.reasons
+    assert judged.because.startswith("the unit is soft (right")
+
+
+def test_of_what_was_not_measured_the_blamed_comes_first() -> None:
+    """The first reason is the one that the unit's blame is taken from, then by number: 2 comes before 10."""
+    limits = [limit(n, where=(place,), where_label=place) for n, place in (("10", "left"), ("2", "right"), ("1", "x"))]
+    found = (refused("too dark", "left"), refused("too dark", "right"), refused("no edge", "x"))
+
+    judged = judge_unit(spec(*limits), evidence(*found))
+
+    assert judged.at_fault == "capture"
+    assert [reason.partition(":")[0] for reason in judged.reasons] == ["right", "left", "x"]
+
+
+def test_a_value_without_uncertainty_is_beyond_by_any_number_of_u() -> None:
+    """A count beyond its limit outweighs a value that lies some U beyond its own; among such, the larger excess."""
+    at_most = {"at_least": None, "at_most": 3.0, "rule": "simple acceptance", "unit": "1"}
+    limits = (limit("1"), limit("2", quantity="clusters", **at_most), limit("3", quantity="hot_pixels", **at_most))
+    counts = {"clusters": 5.0, "hot_pixels": 9.0}
+    found = [reading(n, 0.0, quantity=q, measured_in="1", count=True) for q, n in counts.items()]
+
+    judged = judge_unit(spec(*limits), evidence(reading(0.1), *found))
+
+    assert [r.split()[1] for r in judged.reasons] == ["hot", "clusters", "mtf50"]
