@@ -24,6 +24,7 @@ from runner.spec.model import (
     Optics,
     UncertaintyComponent,
 )
+from runner.spec.serials import is_serial
 from runner.spec.shapes import LimitShape, RootShape
 from runner.spec.tree import Complaints, Place
 
@@ -129,9 +130,7 @@ class _Ends:
 
 
 def _serial(root: RootShape, found: Complaints) -> None:
-    if root.unit is not None and all(
-        re.fullmatch(root.unit.serial, text) for text in ("x", "0", "any (folder) at all")
-    ):
+    if root.unit is not None and all(is_serial(root.unit.serial, text) for text in ("x", "0", "any (folder) at all")):
         note = "the serial's pattern matches any text: every folder would count as a unit"
         found.warn(root.unit.at("serial"), note, "", "write what a serial looks like, for example 'WS8-[0-9]{6}'")
 
@@ -145,6 +144,8 @@ def _limit(
     if limit.channel is not None and limit.channel not in channels:
         note = f"channel '{limit.channel}' is not in {'mono' if channels == ('mono',) else 'colour'} frames"
         found.error(shape.at("channel"), note, f"one of: {', '.join(channels)}", "leave channel out to mean each")
+    elif limit.quantity == "colour_shading":
+        _colour_shading(limit, shape, channels, found)
     if limit.part == "lens":
         _lens(shape, draft, found)
     if limit.combine == "range" and limit.at_least is not None and limit.at_least > 0:
@@ -155,6 +156,17 @@ def _limit(
         _ceiling(limit, shape, draft, frequency, found)
     if limit.combine in {None, "worst"}:
         _tolerance(limit, shape, draft, components, found)
+
+
+def _colour_shading(limit: Limit, shape: LimitShape, channels: tuple[str, ...], found: Complaints) -> None:
+    """Warn of a limit that some channel can never meet: it would leave every unit not measured."""
+    note, step = "", "write channel: red, and a second limit for blue"
+    if "green" not in channels:
+        note, step = "frames without colour have no colour shading: no unit can conform", "drop the limit"
+    elif limit.channel in {None, "green"}:
+        note = "colour shading of red and blue is held against green, which has none itself: no unit can conform"
+    if note:
+        found.warn(shape.at("channel" if limit.channel else "quantity"), note, "", step)
 
 
 def _key(limit: Limit, key: str) -> str:

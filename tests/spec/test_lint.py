@@ -143,3 +143,20 @@ def test_jpeg_is_processed(tmp_path: Path) -> None:
     told = _told(tmp_path, f"{MTF}, at_least: 0.45", jpeg, ("4095 DN", "255 DN"), ("64 DN", "0 DN"))
 
     assert told == ["warning: JPEG frames are processed, yet processing says none"]
+
+
+def test_colour_shading_that_cannot_be(tmp_path: Path) -> None:
+    """Warned of: colour shading of frames without colour, or of green; a channel that the camera lacks is refused."""
+    limit = "quantity: colour_shading, at_most: 5 %"
+    rgb = ("  fill: 100 %\n", "  fill: 100 %\n  colour: rgb\n")
+    mono, green = (
+        "warning: frames without colour have no colour shading: no unit can conform",
+        "warning: colour shading of red and blue is held against green, which has none itself: no unit can conform",
+    )
+
+    assert _told(tmp_path, limit) == [mono]
+    assert _told(tmp_path, f"{limit}, channel: mono") == [mono]
+    assert _told(tmp_path, limit, rgb) == [green]
+    assert _told(tmp_path, f"{limit}, channel: green", rgb) == [green]
+    assert _told(tmp_path, f"{limit}, channel: red", rgb) == []
+    assert _told(tmp_path, f"{limit}, channel: red") == ["error: channel 'red' is not in mono frames"]
