@@ -13,6 +13,8 @@ from numpy.typing import NDArray
 from runner.spec.model import Camera
 
 Mask = NDArray[np.bool_]
+_PIECE = 65_536
+"""Pixels worked on at a time: in a processor's cache, and no more memory than that."""
 _LETTERS = {"red": "R", "green": "G", "blue": "B"}
 
 
@@ -49,10 +51,26 @@ def grey(codes: NDArray[Any], camera: Camera) -> NDArray[Any]:
     RGB planes are averaged with the weights 1, 2, 1 of a mosaic cell. A mosaic is smoothed by [1 2 1]/4 along both
     axes, which gives each pixel the same weights wherever it lies in its cell and moves nothing.
     """
-    if codes.ndim == 3:
-        return np.asarray((codes[..., 0] + 2.0 * codes[..., 1] + codes[..., 2]) / 4)
-    if camera.mosaic == "none":
+    if codes.ndim == 2 and camera.mosaic == "none":
         return codes
-    padded = np.pad(codes.astype(np.float32), 1, mode="reflect")  # reflection keeps the cell's order
+    short = codes.dtype.kind in "iu" and codes.dtype.itemsize <= 2  # whose means of 16 float32 holds exactly
+    kind: Any = np.float32 if short or codes.ndim == 2 else np.float64
+    out: NDArray[Any] = np.empty(codes.shape[:2], dtype=kind)
+    height = max(1, _PIECE // codes.shape[1])
+    for y in range(0, codes.shape[0], height):
+        strip = slice(y, min(y + height, codes.shape[0]))
+        if codes.ndim == 3:
+            red, green, blue = (codes[strip, :, n].astype(kind) for n in range(3))
+            out[strip] = (red + 2 * green + blue) / 4
+        else:
+            _smooth(codes, strip, out[strip])
+    return out
+
+
+def _smooth(codes: NDArray[Any], rows: slice, out: NDArray[Any]) -> None:
+    """Smooth some rows of a mosaic; beyond the border it is reflected, which keeps the cell's order."""
+    last = codes.shape[0] - 1
+    around = np.clip(last - np.abs(last - np.abs(np.arange(rows.start - 1, rows.stop + 1))), 0, last)
+    padded = np.pad(codes[around].astype(np.float32), ((0, 0), (1, 1)), mode="reflect")
     along = (padded[:, :-2] + 2 * padded[:, 1:-1] + padded[:, 2:]) / 4
-    return np.asarray((along[:-2] + 2 * along[1:-1] + along[2:]) / 4)
+    out[:] = (along[:-2] + 2 * along[1:-1] + along[2:]) / 4

@@ -5,15 +5,17 @@ is of each row its green pixels, so that an odd row lies one pixel beside the ev
 the array is next to each other in the frame.
 
 Values are linear DN with the camera's black level for black. Where the tone is linear they are the stored codes as they
-are, mostly a view of the frame, never a copy in a wider type; other tones are undone once, in float32.
+are, a view of the frame. What cannot be a view (green of a mosaic, and any other tone, undone in float32) is put
+together some rows at a time when they are asked for: a set of large frames is in memory once.
 
 References:
     B. E. Bayer, US patent 3971065 (1976) (mosaic: green on every second pixel in rows and columns, shifted from row to
     row).
 """
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from math import ceil
 from typing import Any
 
 import numpy as np
@@ -23,8 +25,8 @@ from runner.capture.frame import Codes, Crop, linearise
 from runner.errors import MeasurementRefused
 from runner.spec.model import Camera
 
-Values = NDArray[Any]
-"""Rows × columns: stored codes, or float32."""
+Values = Any
+"""Rows × columns: an array of stored codes, or `Pixels`."""
 
 PIECE = 32_768
 """Pixels whose tone is undone at a time: pieces of float64 stay in a processor's cache."""
@@ -71,13 +73,88 @@ class Grid:
         )
 
 
+class Pixels:
+    """A channel's own pixels of one frame as an array of rows × columns of which only what is asked for is made.
+
+    Asked for are rows, as `[a:b]`, `[a:b:c]` or `take(rows, 0)`, and single pixels, as `[row, column]` of numbers or
+    of arrays. `dtype` is that of the codes, or float32 where a tone is undone.
+    """
+
+    ndim = 2
+
+    def __init__(self, codes: Codes, shift: int = 0, start: int = 0, camera: Camera | None = None) -> None:
+        """Keep where the pixels lie.
+
+        Args:
+            codes: Rows × columns of the frame.
+            shift: 0 if all of them are own ones; of green the columns by which odd rows lie to the right of even ones.
+            start: Column of the first row's first green.
+            camera: Whose tone is undone; None leaves the codes.
+        """
+        self._codes, self._shift, self._start, self._camera = codes, shift, start, camera
+        self.shape = codes.shape[0], codes.shape[1] // 2 if shift else codes.shape[1]
+        self.size = self.shape[0] * self.shape[1]
+        self.dtype = codes.dtype if camera is None else np.dtype(np.float32)
+        self._light = None
+        if camera is not None and codes.dtype.kind == "u" and codes.dtype.itemsize <= 2:
+            self._light = _scaled(np.arange(int(codes.max()) + 1), camera)
+
+    def __getitem__(self, key: Any) -> NDArray[Any]:
+        """Return rows × columns of rows, or one value for each pixel."""
+        if isinstance(key, slice):
+            return self._toned(self._rows(*key.indices(self.shape[0])))
+        rows, columns = key
+        if self._shift:
+            columns = self._start + 2 * columns + self._shift * (rows % 2)
+        return self._toned(self._codes[rows, columns])
+
+    def take(self, rows: NDArray[np.intp], axis: int = 0) -> NDArray[Any]:
+        """Return some rows.
+
+        Raises:
+            ValueError: Another axis is asked for.
+        """
+        if axis != 0:
+            raise ValueError(f"taken along axis {axis}; only rows, axis 0, are made one by one")
+        if not self._shift:
+            return self._toned(self._codes.take(rows, axis=0))
+        out = np.empty((rows.size, self.shape[1]), dtype=self._codes.dtype)
+        for n in (0, 1):
+            mine, x = rows % 2 == n, self._start + n * self._shift
+            out[mine] = self._codes[rows[mine], x : x + 2 * self.shape[1] : 2]
+        return self._toned(out)
+
+    def astype(self, kind: Any) -> NDArray[Any]:
+        """Return all of them as an array of a type of number."""
+        return self[:].astype(kind)
+
+    def __array__(self, dtype: Any = None, copy: bool | None = None) -> NDArray[Any]:
+        """Return all of them."""
+        return np.array(self[:], dtype, copy=copy)
+
+    def _rows(self, first: int, last: int, step: int) -> Codes:
+        codes = self._codes
+        if not self._shift:
+            return codes[first:last:step]
+        out = np.empty((len(range(first, last, step)), self.shape[1]), dtype=codes.dtype)
+        for n in (0, 1):
+            x = self._start + self._shift * ((first + n * step) % 2)
+            out[n::2] = codes[first + n * step : last : 2 * step, x : x + 2 * self.shape[1] : 2]
+        return out
+
+    def _toned(self, codes: Codes) -> NDArray[Any]:
+        if self._light is not None:
+            return np.asarray(self._light.take(codes, mode="clip"))
+        return codes if self._camera is None else _scaled(codes, self._camera)
+
+
 @dataclass(frozen=True)
 class Stack:
     """All frames of a capture in one channel."""
 
     frames: tuple[Values, ...]
     """Each rows × columns, linear DN, black at the camera's black level."""
-    codes: tuple[Codes, ...]
+    codes: tuple[Values, ...]
     """The same pixels' stored codes."""
     files: tuple[str, ...]
     """Where each frame comes from."""
@@ -95,7 +172,7 @@ class Stack:
     @property
     def size(self) -> int:
         """Number of pixels of one frame."""
-        return self.frames[0].size
+        return int(self.frames[0].size)
 
 
 def stack(crops: Sequence[Crop]) -> Stack:
@@ -105,12 +182,23 @@ def stack(crops: Sequence[Crop]) -> Stack:
         crops: One box and channel out of one frame or more.
     """
     grid = _grid(crops[0])
-    codes = tuple(_own(crop.codes, crop, grid) for crop in crops)
-    frames = tuple(_linear(c, crops[0].camera) for c in codes)
+    codes = tuple(_own(crop, grid, None) for crop in crops)
+    frames = codes if crops[0].camera.tone.kind == "linear" else tuple(_own(c, grid, c.camera) for c in crops)
     return Stack(frames, codes, tuple(crop.file for crop in crops), grid, crops[0].camera)
 
 
-def sums(values: Values, axis: int) -> Values:
+def strips(values: Values) -> Iterator[NDArray[Any]]:
+    """Yield all rows, some at a time.
+
+    Args:
+        values: Rows × columns.
+    """
+    height = max(1, PIECE // values.shape[1])
+    for y in range(0, values.shape[0], height):
+        yield values[y : y + height]
+
+
+def sums(values: Values, axis: int) -> NDArray[Any]:
     """Return the sums of an array along an axis; short codes are added up as such, which is twice as fast and exact.
 
     Args:
@@ -118,14 +206,18 @@ def sums(values: Values, axis: int) -> Values:
         axis: 0 adds rows up, 1 columns.
     """
     short = values.dtype.kind == "u" and values.dtype.itemsize <= 2 and values.shape[axis] <= 65_536
-    return np.asarray(values.sum(axis=axis, dtype=np.uint32 if short else np.float64))
+    kind: Any = np.uint32 if short else np.float64
+    if isinstance(values, np.ndarray):
+        return np.asarray(values.sum(axis=axis, dtype=kind))
+    pieces = [strip.sum(axis=axis, dtype=kind) for strip in strips(values)]
+    return np.asarray(np.concatenate(pieces) if axis else np.sum(pieces, axis=0, dtype=kind))
 
 
 def step(of: Stack) -> float:
     """Return the width of one code at the mean level, linear DN; 0 where the codes are not whole numbers."""
     if of.codes[0].dtype.kind not in "ui":
         return 0.0
-    mean = round(float(np.mean(of.codes[0][:: max(1, of.size // ENOUGH)], dtype=np.float64)))
+    mean = round(float(np.mean(_some(of.codes[0]), dtype=np.float64)))
     one, two = linearise(np.array([mean, mean + 1]), of.camera)
     return float(two - one) * (of.camera.white_level - of.camera.black_level)
 
@@ -145,7 +237,7 @@ def refuse_clipped(of: Stack, *, most_low: float = 1.0, most_high: float = 1.0) 
         MeasurementRefused: `clipped`, `too bright` or `no picture`.
     """
     for file, codes in zip(of.files, of.codes, strict=True):
-        first = codes.flat[0]
+        first = codes[0, 0]
         if _share(codes, np.equal, first, 1.0) == 1.0:
             raise MeasurementRefused("no picture", f"every pixel has the code {first}", where=file)
         high = _share(codes, np.greater_equal, of.camera.white_level, most_high)
@@ -170,7 +262,7 @@ def refuse_dark(of: Stack) -> None:
         MeasurementRefused: `too dark`.
     """
     for file, values in zip(of.files, of.frames, strict=True):
-        some = values[:: max(1, of.size // ENOUGH)]
+        some = _some(values)
         light = float(some.mean(dtype=np.float64)) - of.camera.black_level
         share = light / (of.camera.white_level - of.camera.black_level)
         if share < DARKEST:
@@ -214,7 +306,7 @@ def balance_greens(values: NDArray[np.float32], grid: Grid, *, gain: bool) -> No
         odd -= np.float32(apart)
 
 
-def square(values: Values, grid: Grid) -> tuple[Values, int]:
+def square(values: NDArray[Any], grid: Grid) -> tuple[NDArray[Any], int]:
     """Return an array whose pixels are as wide as high, and how many rows of the array make one of its rows.
 
     Of green, means of pairs of rows; all else is so already.
@@ -244,30 +336,34 @@ def _grid(crop: Crop) -> Grid:
     return Grid(crop.box.x0 + x, crop.box.y0 + y, 2, 2)
 
 
-def _own(codes: Codes, crop: Crop, grid: Grid) -> Codes:
+def _own(crop: Crop, grid: Grid, camera: Camera | None) -> Values:
+    """Return the own pixels of a crop, their tone undone if there is a camera: a view if it can be."""
     y, x = grid.y0 - crop.box.y0, grid.x0 - crop.box.x0
-    if not grid.shift:
-        return codes[y :: grid.down, x :: grid.across]
-    rows, columns = codes.shape[0], codes.shape[1] // 2
-    own = np.empty((rows, columns), dtype=codes.dtype)
-    for first in (0, 1):
-        start = x + first * grid.shift
-        own[first::2] = codes[first::2, start : start + 2 * columns : 2]
-    return own
+    if grid.shift:
+        return Pixels(crop.codes, grid.shift, x, camera)
+    own = crop.codes[y :: grid.down, x :: grid.across]
+    return own if camera is None else Pixels(own, camera=camera)
 
 
-def _share(codes: Codes, compare: np.ufunc, end: float, most: float) -> float:
+def _some(values: Values) -> NDArray[Any]:
+    """Return every so many-th row: an odd number, for even and odd rows of green lie beside different colours."""
+    return np.asarray(values[:: max(1, values.size // ENOUGH) | 1])
+
+
+def _share(codes: Values, compare: np.ufunc, end: float, most: float) -> float:
     """Return the share of pixels for which a comparison holds: that of some rows, if it is far less than allowed."""
-    some = codes[:: max(1, codes.size // ENOUGH)]
+    if codes.dtype.kind in "iu":
+        end = ceil(end)  # codes are whole: they need not be made numbers with a point to be compared
+    some = _some(codes)
     share = np.count_nonzero(compare(some, end)) / some.size
     if share < most / 2:
         return share
-    return np.count_nonzero(compare(codes, end)) / codes.size
+    return sum(int(np.count_nonzero(compare(strip, end))) for strip in strips(codes)) / int(codes.size)
 
 
-def _spike(codes: Codes) -> float:
+def _spike(codes: Values) -> float:
     """Return the share of pixels at the highest code if it is a spike, far more than at the next lower ones, else 0."""
-    some = codes[:: max(1, codes.size // ENOUGH)]
+    some = _some(codes)
     top = some.max()
     share = float(np.mean(some == top))
     if share <= MOST_SPIKED or some.dtype.kind not in "ui":
@@ -275,19 +371,6 @@ def _spike(codes: Codes) -> float:
     below = some[some < top]
     spread = below.size > 0 and float(np.median(top - below)) > 2  # else it is a field without noise
     return share if spread and share * some.size > SPIKED * np.count_nonzero(below == below.max()) else 0.0
-
-
-def _linear(codes: Codes, camera: Camera) -> Values:
-    if camera.tone.kind == "linear":
-        return codes
-    if codes.dtype.kind == "u" and codes.dtype.itemsize <= 2:
-        table = _scaled(np.arange(int(codes.max()) + 1), camera)
-        return np.asarray(table.take(codes, mode="clip"))
-    out = np.empty(codes.shape, dtype=np.float32)
-    height = max(1, PIECE // codes.shape[1])
-    for y in range(0, codes.shape[0], height):
-        out[y : y + height] = _scaled(codes[y : y + height], camera)
-    return out
 
 
 def _scaled(codes: Codes, camera: Camera) -> NDArray[np.float32]:

@@ -2,10 +2,7 @@
 
 import hashlib
 import io
-import time
-from dataclasses import replace
 from pathlib import Path
-from types import SimpleNamespace
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -17,9 +14,9 @@ from runner.acceptance import Order
 from runner.capture.integrity import Survey
 from runner.capture.lot import Lot
 from runner.judge.unit import judge_unit
-from runner.measure.plan import Plan
 from tests.benchmarks.plain_edge import plain_edge
 from tests.benchmarks.side_by_side import Row, best_cpu, show
+from tests.benchmarks.timed import timed
 from tests.benchmarks.workload import REGION, SIGMAS, centres, lay_out
 
 if TYPE_CHECKING:
@@ -33,26 +30,6 @@ def _read(path: Path) -> np.ndarray:
     data = path.read_bytes()
     hashlib.sha256(data).hexdigest()
     return np.asarray(tifffile.imread(io.BytesIO(data)))
-
-
-def _timed(plan: Plan, spent: dict[str, float]) -> Plan:
-    """Return a plan whose methods note the CPU time they take."""
-
-    def watched(method: Any) -> Any:
-        def measure(sample: Any, options: Any) -> Any:
-            start = time.process_time()
-            try:
-                return method.measure(sample, options)
-            finally:
-                spent[method.NAME] = spent.get(method.NAME, 0.0) + time.process_time() - start
-
-        names = {name: getattr(method, name) for name in dir(method) if not name.startswith("__")}
-        return SimpleNamespace(**(names | {"measure": measure}))
-
-    captures = [
-        replace(one, methods=tuple(replace(m, method=watched(m.method)) for m in one.methods)) for one in plan.captures
-    ]
-    return replace(plan, captures=tuple(captures))
 
 
 def _plain(path: Path) -> None:
@@ -76,7 +53,7 @@ def test_25_edges_of_a_12_mp_frame(tmp_path: Path, monkeypatch: pytest.MonkeyPat
     def measured() -> Any:
         lot, seen = survey()
         spent.append({})
-        evidence, _, tracebacks = acceptance.measure_unit(_timed(plan, spent[-1]), lot.units[0], seen)
+        evidence, _, tracebacks = acceptance.measure_unit(timed(plan, spent[-1]), lot.units[0], seen)
         assert tracebacks == []
         return judge_unit(plan.spec, evidence)
 

@@ -141,11 +141,11 @@ def points(level: Real, y: Real, x: Real, rows: Places | Real, columns: Places |
     return np.asarray((1 - f) * upper + f * ((1 - g) * level[i1, j] + g * level[i1, j1]))
 
 
-def outstanding(frame: NDArray[Any], of: Ground, low: float | None, high: float | None) -> tuple[Places, Places]:
+def outstanding(frame: Any, of: Ground, low: float | None, high: float | None) -> tuple[Places, Places]:
     """Return rows and columns of the pixels beyond so many times the noise from the level between blocks.
 
     Args:
-        frame: Rows × columns.
+        frame: Rows × columns: an array, or what gives rows as `[a:b]` and single pixels as `[rows, columns]`.
         of: Its ground.
         low: Times the noise below the level; None looks for no low ones.
         high: Times the noise above the level; None looks for no high ones.
@@ -168,7 +168,7 @@ def outstanding(frame: NDArray[Any], of: Ground, low: float | None, high: float 
 
 
 def _look_closer(
-    frame: NDArray[Any],
+    frame: Any,
     of: Ground,
     found: NDArray[np.bool_],
     edges: tuple[Places, Places],

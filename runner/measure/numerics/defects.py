@@ -169,7 +169,7 @@ def unsteady_pixels(frames: Frames, k: float = K, *, gain_drift: bool = False) -
     if not np.all(np.isfinite(levels)):
         raise ValueError("the frames hold values that are not finite numbers")
     factors = levels.mean() / levels if gain_drift else np.ones(levels.size)
-    variance, n = _variances(frames, factors, levels * factors), len(frames)
+    variance, n = _Variances(frames, factors, levels * factors), len(frames)
     one = ground(frames[0], frames[1])
     spread = Ground(one.y, one.x, np.zeros_like(one.level), one.noise**2 / 2, one.tail, one.step)
     limit = float(special.chdtri(n - 1, 2 * special.ndtr(-k))) / (n - 1)
@@ -284,36 +284,47 @@ def _defects(
     )
 
 
-def _variances(frames: Frames, factors: Real, offsets: Real) -> NDArray[np.float32]:
-    """Return the variance over time of each pixel, drift taken out."""
-    count, (m, n) = len(frames), frames[0].shape
-    out = np.empty((m, n), dtype=np.float32)
-    height = max(1, STRIP // n)
-    short = all(short_codes(frame) for frame in frames)  # then float32 is off by less than a hundredth of a code
-    pieces = np.empty((count, height, n), dtype=np.float32 if short else np.float64)
-    for y in range(0, m, height):
-        high = min(height, m - y)
-        for k, frame in enumerate(frames):
-            np.copyto(pieces[k, :high], frame[y : y + high])
-            pieces[k, :high] -= float(offsets[k] / factors[k])
-            if factors[k] != 1:
-                pieces[k, :high] *= float(factors[k])
-        if count == 2:
-            apart = np.subtract(pieces[0, :high], pieces[1, :high], out=pieces[0, :high])
-            apart *= sqrt(0.5)
-            np.multiply(apart, apart, out=out[y : y + high], casting="same_kind")
-        else:
-            out[y : y + high] = pieces[:, :high].var(axis=0, ddof=1)
-    return out
+class _Variances:
+    """The variance over time of each pixel, drift taken out, worked out where it is asked for: it is looked at once.
+
+    Asked for are rows, as `[a:b]`, and single pixels, as `[rows, columns]`.
+    """
+
+    def __init__(self, frames: Frames, factors: Real, offsets: Real) -> None:
+        self._frames, self._factors, self._levels = frames, factors, offsets / factors
+        self.shape: tuple[int, int] = frames[0].shape
+        self.size = self.shape[0] * self.shape[1]
+        # float32 is off by less than a hundredth of a short code
+        self._kind: Any = np.float32 if all(short_codes(frame) for frame in frames) else np.float64
+
+    def __getitem__(self, key: Any) -> NDArray[np.float32]:
+        pieces: list[NDArray[Any]] = []
+        for frame, factor, level in zip(self._frames, self._factors, self._levels, strict=True):
+            piece = np.subtract(frame[key], self._kind(level), dtype=self._kind)
+            if factor != 1:
+                piece *= self._kind(factor)
+            pieces.append(piece)
+        if len(pieces) == 2:
+            apart = np.subtract(pieces[0], pieces[1], out=pieces[0])
+            apart *= self._kind(sqrt(0.5))
+            apart *= apart
+            return np.asarray(apart, dtype=np.float32)
+        return np.asarray(np.var(pieces, axis=0, ddof=1), dtype=np.float32)
 
 
 def _equal(frames: Frames) -> tuple[Places, Places]:
     """Return rows and columns of the pixels that hold the same code in every frame."""
-    same = np.equal(frames[0], frames[1])
-    for frame in frames[2:]:
-        same &= np.equal(frames[0], frame)
-    rows, columns = np.nonzero(same)
-    return rows, columns
+    (m, n), rows, columns = frames[0].shape, [], []
+    height = max(1, STRIP // n)
+    for y in range(0, m, height):
+        first = frames[0][y : y + height]
+        same = np.equal(first, frames[1][y : y + height])
+        for frame in frames[2:]:
+            same &= np.equal(first, frame[y : y + height])
+        down, across = np.nonzero(same)
+        rows.append(down + y)
+        columns.append(across)
+    return np.concatenate(rows), np.concatenate(columns)
 
 
 def _as_normal(ratio: Real, count: int) -> Real:

@@ -18,7 +18,10 @@ from numpy.typing import NDArray
 
 Real = NDArray[np.float64]
 Frames = NDArray[Any] | Sequence[NDArray[Any]]
-"""Frames × rows × columns, or that many arrays of rows × columns; any real number type."""
+"""Frames × rows × columns, or that many arrays of rows × columns; any real number type.
+
+An array may be anything that gives its rows as `[a:b]` and has `shape` and `dtype`.
+"""
 
 STRIP = 32_768
 """Pixels worked on at a time: two or three such pieces of float64 stay in a processor's cache."""
@@ -111,10 +114,13 @@ def short_codes(frame: NDArray[Any]) -> bool:
 
 def level_of(frame: NDArray[Any]) -> float:
     """Return the mean of a frame; short codes are added up as such, which is twice as fast and exact."""
-    if short_codes(frame) and frame.shape[1] <= 65_536:
-        rows = frame.sum(axis=1, dtype=np.uint32)
-        return float(rows.mean(dtype=np.float64)) / int(frame.shape[1])
-    return float(np.mean(frame, dtype=np.float64))
+    kind: Any = np.uint32 if short_codes(frame) and frame.shape[1] <= 65_536 else np.float64
+    height = max(1, STRIP // frame.shape[1])
+    total = sum(
+        float(frame[y : y + height].sum(axis=1, dtype=kind).sum(dtype=np.float64))
+        for y in range(0, frame.shape[0], height)
+    )
+    return total / int(frame.shape[0] * frame.shape[1])
 
 
 def add_up(
