@@ -12,10 +12,11 @@ from typing import Any
 
 import numpy as np
 
-from runner.capture.frame import Crop
+from runner.capture.frame import Crop, linearise
 from runner.errors import MeasurementRefused
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.numerics.grating_fit import GratingFit, GratingLost, Lattice, fit_grating
+from runner.measure.numerics.grating_rounding import Rounding, rounding
 from runner.measure.numerics.grating_search import picture
 from runner.measure.options import number, read_record
 from runner.measure.reading import Component, Curve, Map, Reading, Refusal
@@ -120,7 +121,8 @@ def measure(sample: Sample, options: Options) -> Measurement:
         raise MeasurementRefused("another scene", f"the stripes have no single frequency: {lost}") from lost
     _refuse_strange(fit, lattices)
     profile, area = _profile(sample, fit, lattices), _spectrum(sample, fit, lattices)
-    return Measurement(tuple(_readings(sample, fit, options)), (profile,), (area,))
+    whole = _rounding(sample.crop, fit, lattices)
+    return Measurement(tuple(_readings(sample, fit, whole, options)), (profile,), (area,))
 
 
 def lattices_of(crop: Crop) -> list[Lattice]:
@@ -134,8 +136,9 @@ def lattices_of(crop: Crop) -> list[Lattice]:
 
 def _refuse_clipped(sample: Sample) -> None:
     codes = sample.crop.codes if sample.crop.sites is None else sample.crop.codes[sample.crop.sites]
-    low = 0 if sample.camera.black_level > 0 else -1
-    share = float(np.mean((codes >= sample.camera.white_level) | (codes <= low)))
+    # without a black level code 0 may be an ordinary one, but troughs that are cut there look the same
+    at_end = (codes >= sample.camera.white_level) | ((codes <= 0) if sample.camera.black_level > 0 else (codes == 0))
+    share = float(np.mean(at_end))
     if share > MOST_CLIPPED:
         sentence = f"{100 * share:.2f} % of the patch's pixels lie at an end of the range, at most 0.1 % may"
         raise MeasurementRefused("clipped", sentence)
@@ -186,7 +189,15 @@ def _fine_power(lattice: Lattice) -> float:
     return float(np.mean(bend**2)) / 6 if bend.size else 0.0
 
 
-def _readings(sample: Sample, fit: GratingFit, options: Options) -> list[Reading]:
+def _rounding(crop: Crop, fit: GratingFit, lattices: list[Lattice]) -> Rounding:
+    """Return what rounding to whole codes leaves; nothing, where the codes are no whole numbers."""
+    if crop.codes.dtype.kind not in "ui":
+        return Rounding(0.0, 0.0, np.zeros((2, 2)), np.zeros(len(fit.amplitudes)))
+    codes = np.arange(float(crop.codes.max()) + 2)
+    return rounding(fit, lattices, codes, linearise(codes, crop.camera))
+
+
+def _readings(sample: Sample, fit: GratingFit, whole: Rounding, options: Options) -> list[Reading]:
     amplitude, u_amplitude = abs(fit.amplitudes[0]), float(fit.amplitude_u[0])
     modulation = amplitude / fit.level
     u = modulation * sqrt((u_amplitude / amplitude) ** 2 + (fit.level_u / fit.level) ** 2)
@@ -195,38 +206,46 @@ def _readings(sample: Sample, fit: GratingFit, options: Options) -> list[Reading
     along, across = np.array([fx, fy]) / f, np.array([-fy, fx]) / f
     u_f, u_turn = (sqrt(float(v @ fit.frequency_cov @ v)) for v in (along, across))
     sign = -1.0 if fx < 0 or (fx == 0 and fy < 0) else 1.0  # one of two opposite normals, so that it is within ±90°
-    phase = degrees(sign * float(np.angle(fit.amplitudes[0])))
+    phase, direction = degrees(sign * float(np.angle(fit.amplitudes[0]))), degrees(atan2(sign * fy, sign * fx))
+    code_f, code_turn = (sqrt(float(v @ whole.frequency @ v)) for v in (along, across))
+    more = (*_bias(100 * BIAS * modulation), *_whole_codes(100 * whole.modulation * modulation))
+    turned = _whole_codes(degrees(code_turn / f))
     made = [
-        _reading(sample, "modulation", "%", 100 * modulation, 100 * u, _bias(100 * BIAS * modulation)),
-        _transfer(sample, modulation, u, options),
-        _reading(sample, "grating_frequency", "cy/px", f, u_f),
-        _reading(sample, "grating_direction", "deg", degrees(atan2(sign * fy, sign * fx)), degrees(u_turn / f)),
-        _reading(sample, "grating_phase", "deg", phase, degrees(fit.phase_u)),
+        _reading(sample, "modulation", "%", 100 * modulation, 100 * u, more),
+        _transfer(sample, modulation, u, whole, options),
+        _reading(sample, "grating_frequency", "cy/px", f, u_f, _whole_codes(code_f)),
+        _reading(sample, "grating_direction", "deg", direction, degrees(u_turn / f), turned),
+        _reading(sample, "grating_phase", "deg", phase, degrees(fit.phase_u), _whole_codes(degrees(whole.phase))),
     ]
     for order, name in ((2, "second_harmonic"), (3, "third_harmonic")):
-        made.append(_harmonic(sample, name, order, fit))
+        made.append(_harmonic(sample, name, order, fit, float(whole.harmonics[order - 1])))
     return made
 
 
-def _transfer(sample: Sample, modulation: float, u: float, options: Options) -> Reading:
+def _whole_codes(u: float) -> tuple[Component, ...]:
+    return (Component("rounding", u, "B"),) if u > 0 else ()
+
+
+def _transfer(sample: Sample, modulation: float, u: float, whole: Rounding, options: Options) -> Reading:
     if not isinstance(options.target_modulation, float):
         because = "the spec does not state the target's own modulation: grating response: {target_modulation: …}"
         return _refused(sample, "modulation_transfer", "1", Refusal("not defined", because))
     own, own_u = options.target_modulation, float(options.target_modulation_uncertainty)
     value = modulation / own
     chart = Component("target's modulation", value * own_u / own, "B", shared="target's modulation")
-    return _reading(sample, "modulation_transfer", "1", value, u / own, (*_bias(BIAS * value), chart))
+    more = (*_bias(BIAS * value), *_whole_codes(whole.modulation * value), chart)
+    return _reading(sample, "modulation_transfer", "1", value, u / own, more)
 
 
-def _harmonic(sample: Sample, name: str, order: int, fit: GratingFit) -> Reading:
+def _harmonic(sample: Sample, name: str, order: int, fit: GratingFit, whole: float) -> Reading:
     size, u = abs(fit.amplitudes[order - 1]), float(fit.amplitude_u[order - 1])
     if not np.isfinite(size):
         because = f"the pixels' grid folds {order} times the frequency onto another term"
         return _refused(sample, name, "%", Refusal("undersampled", because))
     first = abs(fit.amplitudes[0])
     # A modulus is never negative, so noise alone makes it positive: its mean square is taken off, down to zero.
-    value = sqrt(max(0.0, size**2 - u**2)) / first
-    return _reading(sample, name, "%", 100 * value, 100 * u / first)
+    value = sqrt(max(0.0, size**2 - u**2 - whole**2)) / first
+    return _reading(sample, name, "%", 100 * value, 100 * u / first, _whole_codes(100 * whole / first))
 
 
 def _bias(u: float) -> tuple[Component, ...]:
