@@ -23,6 +23,7 @@ from runner.exits import Exit, most_serious
 from runner.judge import verdict
 from runner.judge.unit import judge_unit
 from runner.measure import session
+from runner.measure.companions import Loader
 from runner.measure.evidence import CaptureEvidence, RegionFact, UnitEvidence
 from runner.measure.plan import Plan, bind
 from runner.report import glyphs, store
@@ -223,7 +224,8 @@ def measure_unit(
         known = {c.capture.name: survey.faults(unit.serial, attempt.number, c.capture.name) for c in plan.captures}
         load = _loader(plan, unit, attempt, survey)
         parts.append(session.measure_attempt(plan, attempt.number, load, known, painter=paint, faults=faults))
-    evidence = replace(session.unit_evidence(unit.serial, parts), remarks=survey.remarks(unit.serial))
+    evidence = session.unit_evidence(unit.serial, parts)
+    evidence = replace(evidence, remarks=survey.remarks(unit.serial), marked=survey.simulated(unit.serial))
     return evidence, pictures, faults.tracebacks
 
 
@@ -283,7 +285,7 @@ def _announced(results: Iterator[UnitResult], total: int, announce: Announce) ->
         yield result
 
 
-def _loader(plan: Plan, unit: UnitFolder, attempt: AttemptFolder, survey: integrity.Survey) -> session.Loader:
+def _loader(plan: Plan, unit: UnitFolder, attempt: AttemptFolder, survey: integrity.Survey) -> Loader:
     digests = survey.digests(unit.serial, attempt.number)
 
     def load(name: str) -> Sequence[Frame]:

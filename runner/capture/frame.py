@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from runner.capture.mosaic import plane, sites
-from runner.spec.model import Camera
+from runner.spec.model import Amount, Camera
 
 Codes = NDArray[Any]
 """Stored codes, rows × columns, in the file's own number type."""
@@ -40,6 +40,8 @@ class Frame:
     """What the file says of itself (description, software, serial …)."""
     simulated: bool = False
     """The file is marked as a rehearsed frame."""
+    taken: Mapping[str, Amount] = field(default_factory=dict)
+    """What its sidecars say of how it was taken, by field: exposure, gain, level, position, temperature, counter."""
 
     @property
     def shape(self) -> tuple[int, int]:
@@ -79,6 +81,8 @@ class Crop:
     """Levels and tone."""
     axes: Mapping[str, str] = field(default_factory=dict)
     """The frame's axes."""
+    taken: Mapping[str, Amount] = field(default_factory=dict)
+    """What the frame's sidecars say of how it was taken."""
     channel: str = "mono"
     """Colour channel."""
     sites: NDArray[np.bool_] | None = None
@@ -101,7 +105,7 @@ def crop(frame: Frame, box: Box, camera: Camera, channel: str = "mono") -> Crop:
     """
     codes = plane(frame.codes, channel, camera)[box.y0 : box.y1, box.x0 : box.x1]
     mask = sites(channel, camera, (box.y0, box.x0), (codes.shape[0], codes.shape[1]))
-    return Crop(frame.file, box, codes, camera, frame.axes, channel, mask)
+    return Crop(frame.file, box, codes, camera, frame.axes, frame.taken, channel, mask)
 
 
 def linearise(codes: Codes, camera: Camera) -> Signal:

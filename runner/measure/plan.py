@@ -5,8 +5,8 @@ Targets, methods, options, quantities, parameters and units: what is not known i
 
 import difflib
 import re
-from collections.abc import Iterable, Mapping
-from dataclasses import dataclass, fields, replace
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass, field, fields, replace
 from typing import Any
 
 from runner.errors import Complaint, SpecError, UsageError
@@ -32,7 +32,19 @@ class MethodPlan:
     options: Any
     """Its options record."""
     wanted: Mapping[str, tuple[Wanted, ...]]
-    """Readings that limits ask for, by region."""
+    """Readings that limits ask for, by region; for a method that gathers, by the name that its readings carry."""
+    groups: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
+    """For a method that gathers: the regions meant by each such name, besides all of them."""
+
+    @property
+    def gathers(self) -> bool:
+        """It takes all regions together, after the other methods."""
+        return bool(getattr(self.method, "GATHERS", False))
+
+    @property
+    def together(self) -> bool:
+        """It takes all frames of the capture at once."""
+        return bool(getattr(self.method, "TOGETHER", False))
 
 
 @dataclass(frozen=True)
@@ -47,6 +59,8 @@ class CapturePlan:
     """Its options record."""
     methods: tuple[MethodPlan, ...]
     """In the order of measuring."""
+    axes: tuple[str, ...] = ()
+    """Axes along which its frames differ in more than repeats."""
 
 
 @dataclass(frozen=True)
@@ -54,7 +68,7 @@ class Plan:
     """A whole spec, bound."""
 
     spec: Spec
-    """As asked."""
+    """As asked; a limit on all of its regions together says so in `where`."""
     captures: tuple[CapturePlan, ...]
     """In the order of the spec."""
     uncertainty: tuple[UncertaintyComponent, ...]
@@ -86,7 +100,7 @@ def bind(spec: Spec, station: Station | None = None) -> Plan:
     declared = spec.uncertainty + (station.uncertainty if station else ())
     if complaints:
         raise SpecError(tuple(replace(c, where=spec.place(c.where)) for c in complaints))
-    return Plan(spec, captures, declared)
+    return Plan(replace(spec, captures=tuple(plan.capture for plan in captures)), captures, declared)
 
 
 def _bind_capture(spec: Spec, capture: Capture, complaints: list[Complaint]) -> CapturePlan | None:
@@ -95,8 +109,10 @@ def _bind_capture(spec: Spec, capture: Capture, complaints: list[Complaint]) -> 
     if target is None:
         complaints.append(_unknown(place, "target", capture.target, shelf.targets()))
         return None
+    axes = _axes(spec, capture)
     chosen: dict[str, Mapping[str, Any]] = dict(capture.measure) or {name: {} for name in target.METHODS}
-    chosen |= {name: {} for name in ALWAYS if name not in chosen}
+    if not axes:  # along an axis, level and clipping change from step to step
+        chosen |= {name: {} for name in ALWAYS if name not in chosen}
     bound: list[tuple[Method, Any]] = []
     for name, asked in chosen.items():
         method = shelf.methods().get(name)
@@ -111,17 +127,21 @@ def _bind_capture(spec: Spec, capture: Capture, complaints: list[Complaint]) -> 
             bound.append((method, method.read_options(asked)))
         except UsageError as error:
             complaints.append(Complaint(f"{place}, measure, {name}", error.found, error.allowed, error.next_step))
-    _bind_axes(capture, place, complaints)
+    methods = [method for method, _ in bound]
+    _bind_axes(capture, axes, methods, place, complaints)
     try:
         target_options = target.read_options({**_shared_options(target, chosen), **capture.target_options})
     except UsageError as error:
         complaints.append(Complaint(f"{place}, target", error.found, error.allowed, error.next_step))
         target_options = None
-    wanted = _bind_limits(capture, place, [m for m, _ in bound], complaints)
+    meant = [m for m in methods if not axes or _along(m, axes)]
+    if not meant and axes:  # complained of; what its limits ask for cannot be known
+        return CapturePlan(capture, target, target_options, (), axes)
+    capture, wanted, groups = _bind_limits(capture, place, meant, complaints)
     for one in capture.usable_if:
-        _bind_bound(capture, one, place, [m for m, _ in bound], wanted, complaints)
-    plans = tuple(MethodPlan(m, o, wanted.get(m.NAME, {})) for m, o in bound)
-    return CapturePlan(capture, target, target_options, plans)
+        _bind_bound(capture, one, place, meant, wanted, complaints)
+    plans = tuple(MethodPlan(m, o, wanted.get(m.NAME, {}), groups.get(m.NAME, {})) for m, o in bound)
+    return CapturePlan(capture, target, target_options, plans, axes)
 
 
 def _shared_options(target: Target, chosen: Mapping[str, Mapping[str, Any]]) -> dict[str, Any]:
@@ -130,14 +150,35 @@ def _shared_options(target: Target, chosen: Mapping[str, Mapping[str, Any]]) -> 
     return {key: value for asked in chosen.values() for key, value in asked.items() if key in known}
 
 
-def _bind_axes(capture: Capture, place: str, complaints: list[Complaint]) -> None:
-    """Frames along any other axis are no repeats: averaging over them would mix conditions."""
-    if capture.frames is None:
+def _axes(spec: Spec, capture: Capture) -> tuple[str, ...]:
+    """Return the axes of a capture's files along which frames are no repeats of one another."""
+    frames = capture.frames or (spec.capture(capture.same_frames_as).frames if capture.same_frames_as else None)
+    named = re.findall(r"\{([^}]*)\}", frames.names) if frames is not None else []
+    return tuple(axis for axis in dict.fromkeys(named) if axis not in REPEATS)
+
+
+def _along(method: Method, axes: Sequence[str]) -> bool:
+    """Tell whether a method takes frames that differ along these axes; else averaging would mix conditions."""
+    return set(axes) <= set(getattr(method, "AXES", ()))
+
+
+def _bind_axes(
+    capture: Capture, axes: Sequence[str], methods: Sequence[Method], place: str, complaints: list[Complaint]
+) -> None:
+    """Some method must take the frames along their axes, and those that do not must feed one that gathers."""
+    if not axes:
         return
-    for axis in re.findall(r"\{([^}]*)\}", capture.frames.names):
-        if axis not in REPEATS:
-            found = f"the target '{capture.target}' does not know frames along '{axis}'"
-            complaints.append(Complaint(f"{place}, frames", found, "{repeat} names repeats of one condition"))
+    words = ", ".join(axes)
+    takers = [m for m in methods if _along(m, axes)]
+    if not takers:
+        able = [name for name, m in shelf.methods().items() if _along(m, axes)]
+        allowed = f"methods that do: {', '.join(able)}" if able else "{repeat} names repeats of one condition"
+        found = f"no method of the target '{capture.target}' takes frames along '{words}'"
+        complaints.append(Complaint(f"{place}, frames", found, allowed))
+    elif not any(getattr(m, "GATHERS", False) for m in takers):
+        for idle in [m.NAME for m in methods if m not in takers]:
+            found = f"method '{idle}' takes no frames along '{words}', and no method of this capture gathers its values"
+            complaints.append(Complaint(f"{place}, measure", found, next_step=f"leave '{idle}' out"))
 
 
 def _unknown(place: str, kind: str, name: str, known: Iterable[str]) -> Complaint:
@@ -146,26 +187,47 @@ def _unknown(place: str, kind: str, name: str, known: Iterable[str]) -> Complain
     return Complaint(place, f"unknown {kind} '{name}'", f"known are: {', '.join(sorted(known))}", hint)
 
 
+_Asked = dict[str, dict[str, tuple[Wanted, ...]]]
+"""Wanted readings by method, then by region or name of a group."""
+
+
 def _bind_limits(
     capture: Capture, place: str, methods: list[Method], complaints: list[Complaint]
-) -> dict[str, dict[str, tuple[Wanted, ...]]]:
-    wanted: dict[str, dict[str, tuple[Wanted, ...]]] = {}
-    for limit in capture.limits:
+) -> tuple[Capture, _Asked, dict[str, dict[str, tuple[str, ...]]]]:
+    """Return the capture with its limits bound, what they want, and the groups of regions they mean."""
+    wanted: _Asked = {}
+    groups: dict[str, dict[str, tuple[str, ...]]] = {}
+    limits: list[Limit] = []
+    for asked in capture.limits:
+        limit = asked
+        limits.append(limit)
         where = f"{place}, limit {limit.characteristic}"
         method, info = _provider(limit.quantity, limit.method, methods)
         if method is None or info is None:
             complaints.append(_no_provider(where, limit.quantity, limit.method, methods))
             continue
         at = _parameters(capture, limit, info, where, complaints)
+        _check_place(capture, limit, info, where, complaints)
         if at is None or not _unit_fits(capture, limit.unit, _yielded(limit, info), limit.quantity, where, complaints):
             continue
         one = Wanted(limit.quantity, limit.parameters, at, limit.part, limit.estimator)
-        regions = (*limit.where, *limit.against) or ("",)
+        if info.whole and limit.where:
+            groups.setdefault(method.NAME, {})[limit.where_label] = limit.where
+            limits[-1] = limit = replace(limit, where=(limit.where_label,))
         mine = wanted.setdefault(method.NAME, {})
-        for region in regions:
+        for region in (*limit.where, *limit.against) or ("",):
             if one not in mine.get(region, ()):
                 mine[region] = (*mine.get(region, ()), one)
-    return wanted
+    return replace(capture, limits=tuple(limits)), wanted, groups
+
+
+def _check_place(capture: Capture, limit: Limit, info: QuantityInfo, where: str, complaints: list[Complaint]) -> None:
+    if info.whole and limit.combine:
+        found = f"{limit.quantity} is one value of all its regions already"
+        complaints.append(Complaint(where, found, next_step="leave combine: out"))
+    elif not info.whole and not limit.where and capture.regions:
+        known = f"regions: {', '.join(dict.fromkeys(r.group or r.name for r in capture.regions))}"
+        complaints.append(Complaint(where, f"limit {limit.characteristic} does not say where", known, "add where:"))
 
 
 def _yielded(limit: Limit, info: QuantityInfo) -> QuantityInfo:
@@ -228,7 +290,7 @@ def _bind_bound(
     bound: Bound,
     place: str,
     methods: list[Method],
-    wanted: dict[str, dict[str, tuple[Wanted, ...]]],
+    wanted: _Asked,
     complaints: list[Complaint],
 ) -> None:
     where = f"{place}, usable_if"
@@ -241,5 +303,5 @@ def _bind_bound(
         )
     elif _unit_fits(capture, bound.unit, info, bound.quantity, where, complaints):
         mine = wanted.setdefault(method.NAME, {})
-        for region in [r.name for r in capture.regions] or [""]:
+        for region in [""] if info.whole else [r.name for r in capture.regions] or [""]:
             mine[region] = (*mine.get(region, ()), Wanted(bound.quantity, {}, {}))

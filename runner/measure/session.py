@@ -3,22 +3,25 @@
 A fault of one method leaves its readings refused with the cause `fault`; all others go on.
 """
 
-import traceback
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
+from functools import cache
 
-from runner.capture.frame import Box, Crop, Frame, crop
+from runner.capture.frame import Frame, crop
 from runner.capture.mosaic import grey
-from runner.errors import FrameRefused, MeasurementRefused
-from runner.measure.contract import Found, Measurement, NotFound, QuantityInfo, Sample, Wanted
+from runner.errors import FrameRefused
+from runner.measure import tone
+from runner.measure.answers import attempted, refused
+from runner.measure.companions import Companions, Loader
+from runner.measure.contract import Found, Measurement, NotFound, Sample, Wanted, in_channel, joined
 from runner.measure.evidence import CaptureEvidence, FrameFact, RegionFact, UnitEvidence
+from runner.measure.gathering import gather
 from runner.measure.plan import CapturePlan, MethodPlan, Plan
 from runner.measure.reading import Curve, Map, Reading, Refusal, Spot
+from runner.measure.steps import groups
 from runner.measure.uncertainty import mean_of_repeats, with_declared
 from runner.spec import units
 
-Loader = Callable[[str], Sequence[Frame]]
-"""Gives the frames of a capture by its name; raises FrameRefused."""
 Painter = Callable[[str, int, Frame, Sequence[RegionFact]], None]
 """Is shown each capture's first frame with its regions, for pictures: (capture, attempt, frame, regions)."""
 
@@ -60,16 +63,21 @@ def measure_attempt(
         painter: Is shown the frames, for pictures.
         faults: Collects the program's own faults.
     """
-    companions = _Companions(plan, load, known_faults)
-    parts = [
-        _measure_capture(plan, one, attempt, load, known_faults, companions, painter, faults) for one in plan.captures
-    ]
-    return Attempt(tuple(evidence for evidence, _ in parts), _joined([measured for _, measured in parts]))
+    companions = Companions(plan, load, known_faults)
+    parts: dict[str, tuple[CaptureEvidence, Measurement]] = {}
+    for one in tone.in_order(plan.captures):
+        known = known_faults.get(one.capture.name, ())
+        if tone.source(one) and not known:
+            found = tone.linearised(one, [curve for _, measured in parts.values() for curve in measured.curves])
+            one, known = (one, (found,)) if isinstance(found, str) else (found, known)  # noqa: PLW2901 - with its tone
+        parts[one.capture.name] = _measure_capture(plan, one, attempt, load, known, companions, painter, faults)
+    in_spec = [parts[one.capture.name] for one in plan.captures]
+    return Attempt(tuple(evidence for evidence, _ in in_spec), joined([measured for _, measured in in_spec]))
 
 
 def unit_evidence(serial: str, attempts: Sequence[Attempt]) -> UnitEvidence:
     """Put the attempts of a unit together, in one fixed order."""
-    all_of = _joined([attempt.measured for attempt in attempts])
+    all_of = joined([attempt.measured for attempt in attempts])
     return UnitEvidence(
         serial,
         tuple(capture for attempt in attempts for capture in attempt.captures),
@@ -77,15 +85,6 @@ def unit_evidence(serial: str, attempts: Sequence[Attempt]) -> UnitEvidence:
         tuple(sorted(all_of.curves, key=lambda c: (*_place(c), c.name, c.estimator))),
         tuple(sorted(all_of.maps, key=lambda m: (*_place(m), m.name))),
         tuple(sorted(all_of.spots, key=lambda s: (*_place(s), s.kind, s.y, s.x))),
-    )
-
-
-def _joined(parts: Sequence[Measurement]) -> Measurement:
-    return Measurement(
-        tuple(reading for part in parts for reading in part.readings),
-        tuple(curve for part in parts for curve in part.curves),
-        tuple(one for part in parts for one in part.maps),
-        tuple(spot for part in parts for spot in part.spots),
     )
 
 
@@ -98,30 +97,13 @@ def _order(reading: Reading) -> tuple[object, ...]:
     return (*_place(reading), reading.quantity, parameters, reading.part, reading.estimator)
 
 
-class _Companions:
-    """Frames of companion captures, read when first needed and kept while this attempt is measured."""
+@dataclass(frozen=True)
+class _Bench:
+    """What every measurement of one capture needs."""
 
-    def __init__(self, plan: Plan, load: Loader, known_faults: Mapping[str, tuple[str, ...]]) -> None:
-        self._cameras = {one.capture.name: one.capture.camera for one in plan.captures}
-        self._load, self._known_faults = load, known_faults
-        self._frames: dict[str, Sequence[Frame]] = {}
-
-    def crops(self, uses: Mapping[str, str], box: Box, channel: str) -> dict[str, tuple[Crop, ...]]:
-        """Return the same box out of every companion that could be read; a role without frames is left out."""
-        found = {}
-        for role, name in uses.items():
-            frames, camera = self._read(name), self._cameras[name]
-            if frames and channel in camera.channels:
-                found[role] = tuple(crop(frame, box, camera, channel) for frame in frames)
-        return found
-
-    def _read(self, name: str) -> Sequence[Frame]:
-        if name not in self._frames:
-            try:
-                self._frames[name] = () if self._known_faults.get(name) else self._load(name)
-            except FrameRefused:
-                self._frames[name] = ()  # the companion's own capture tells why
-        return self._frames[name]
+    one: CapturePlan
+    companions: Companions
+    tracebacks: list[str]
 
 
 def _measure_capture(
@@ -129,13 +111,13 @@ def _measure_capture(
     one: CapturePlan,
     attempt: int,
     load: Loader,
-    known_faults: Mapping[str, tuple[str, ...]],
-    companions: _Companions,
+    known_faults: tuple[str, ...],
+    companions: Companions,
     painter: Painter | None,
     faults: Faults | None,
 ) -> tuple[CaptureEvidence, Measurement]:
     name = one.capture.name
-    evidence = CaptureEvidence(name, attempt, one.capture.target, (), known_faults.get(name, ()))
+    evidence = CaptureEvidence(name, attempt, one.capture.target, (), known_faults)
     if evidence.faults:
         return evidence, Measurement(())
     try:
@@ -150,18 +132,13 @@ def _measure_capture(
         if painter is not None and frame is frames[0]:
             painter(name, attempt, seen, tuple(_fact(found) for found in located[0]))
     regions = tuple(_fact(found) for found in located[0])
-    each = [plan for plan in one.methods if not getattr(plan.method, "TOGETHER", False)]
-    repeats = [
-        _measure_frames(one, each, (frame,), found, companions, faults)
-        for frame, found in zip(frames, located, strict=True)
-    ]
-    at_once = [plan for plan in one.methods if plan not in each]
-    repeats.append(_measure_frames(one, at_once, frames, located[0], companions, faults))
+    bench = _Bench(one, companions, faults.tracebacks if faults is not None else [])
+    shown = _measure_steps(bench, frames, located)
     context = units.context_of(one.capture.camera, one.capture.optics)
-    declared = [with_declared(r, plan.uncertainty, context) for r in _combine([m.readings for m in repeats])]
-    shown = _joined([repeats[0], repeats[-1]])  # curves of the first frame stand for all, those of all frames as well
     measured = Measurement(
-        tuple(replace(reading, capture=name, attempt=attempt) for reading in declared),
+        tuple(
+            replace(with_declared(r, plan.uncertainty, context), capture=name, attempt=attempt) for r in shown.readings
+        ),
         tuple(replace(curve, capture=name, attempt=attempt) for curve in shown.curves),
         tuple(replace(area, capture=name, attempt=attempt) for area in shown.maps),
         tuple(replace(spot, capture=name, attempt=attempt) for spot in shown.spots),
@@ -169,52 +146,83 @@ def _measure_capture(
     return replace(evidence, frames=tuple(_frame_fact(f) for f in frames), regions=regions), measured
 
 
+def _measure_steps(
+    bench: _Bench, frames: Sequence[Frame], located: Sequence[Sequence[Found | NotFound]]
+) -> Measurement:
+    """Measure every step of a capture, then what takes its steps or its regions together."""
+    one = bench.one
+    steps = groups([frame.axes for frame in frames], one.axes)
+    along = [plan for plan in one.methods if plan.together and (not one.axes or set(one.axes) <= _axes(plan))]
+    gathers = [plan for plan in one.methods if plan.gathers]
+    each = [plan for plan in one.methods if plan not in along and plan not in gathers]
+    parts = []
+    for step in steps:
+        repeats = [_measure_frames(bench, each, (frames[n],), located[n]) for n in step.members]
+        parts.append(replace(repeats[0], readings=tuple(_combine([m.readings for m in repeats]))))
+    at_once = _measure_frames(bench, along, frames, located[0])
+
+    @cache
+    def sampler(number: int, channel: str) -> tuple[Sample, ...]:
+        first = steps[number].members[0]
+        return tuple(
+            _sample(bench, (frames[first],), found, channel, (), together=False)
+            for found in located[first]
+            if isinstance(found, Found)
+        )
+
+    lost = [found for found in located[0] if isinstance(found, NotFound)]
+    read = [(*part.readings, *at_once.readings) for part in parts]
+    gathered = [
+        in_channel(made, channel)
+        for plan in gathers
+        for channel in one.capture.camera.channels
+        for made in gather(one, plan, channel, steps, read, sampler, lost, bench.tracebacks)
+    ]
+    # Curves of the first frame stand for all repeats. Along an axis, other methods only feed those that gather.
+    return joined([*([] if one.axes else parts), at_once, *gathered])
+
+
+def _axes(plan: MethodPlan) -> frozenset[str]:
+    return frozenset(getattr(plan.method, "AXES", ()))
+
+
 def _measure_frames(
-    one: CapturePlan,
-    plans: Sequence[MethodPlan],
-    frames: Sequence[Frame],
-    located: Sequence[Found | NotFound],
-    companions: _Companions,
-    faults: Faults | None,
+    bench: _Bench, plans: Sequence[MethodPlan], frames: Sequence[Frame], located: Sequence[Found | NotFound]
 ) -> Measurement:
     """Let methods measure one frame, or all frames together, in every region and channel."""
-    parts = []
-    for found in located if plans else ():
-        for channel in one.capture.camera.channels:
-            for plan in plans:
-                measured = _measure_region(one, frames, found, channel, plan, companions, faults)
-                parts.append(
-                    Measurement(
-                        tuple(replace(reading, channel=channel) for reading in measured.readings),
-                        tuple(replace(curve, channel=channel) for curve in measured.curves),
-                        tuple(replace(area, channel=channel) for area in measured.maps),
-                        tuple(replace(spot, channel=channel) for spot in measured.spots),
-                    )
-                )
-    return _joined(parts)
+    return joined(
+        [
+            in_channel(_measure_region(bench, frames, found, channel, plan), channel)
+            for found in (located if plans else ())
+            for channel in bench.one.capture.camera.channels
+            for plan in plans
+        ]
+    )
 
 
 def _measure_region(
-    one: CapturePlan,
-    frames: Sequence[Frame],
-    found: Found | NotFound,
-    channel: str,
-    plan: MethodPlan,
-    companions: _Companions,
-    faults: Faults | None,
+    bench: _Bench, frames: Sequence[Frame], found: Found | NotFound, channel: str, plan: MethodPlan
 ) -> Measurement:
     wanted = plan.wanted.get(found.region, ())
     first = frames[0]
     if isinstance(found, NotFound):
         if plan.method.NEEDS or found.box is None or not found.box.inside(first.shape[1], first.shape[0]):
-            return _refused(plan, found.region, wanted, Refusal(found.cause, found.because))
+            return refused(plan, found.region, wanted, Refusal(found.cause, found.because))
         found = Found(found.region, found.box)
-    capture = one.capture
+    sample = _sample(bench, frames, found, channel, wanted, together=plan.together)
+    place = f"{first.file}, {found.region}"
+    return attempted(
+        lambda: plan.method.measure(sample, plan.options), plan, found.region, wanted, place, bench.tracebacks
+    )
+
+
+def _sample(
+    bench: _Bench, frames: Sequence[Frame], found: Found, channel: str, wanted: tuple[Wanted, ...], *, together: bool
+) -> Sample:
+    capture, companions = bench.one.capture, bench.companions
     crops = tuple(crop(frame, found.box, capture.camera, channel) for frame in frames)
-    together = getattr(plan.method, "TOGETHER", False)
     beside = capture.camera.channels if together else ()
-    others = {name: tuple(crop(frame, found.box, capture.camera, name) for frame in frames) for name in beside}
-    sample = Sample(
+    return Sample(
         found,
         crops[0],
         capture.camera,
@@ -223,58 +231,10 @@ def _measure_region(
         wanted,
         companions.crops(capture.uses, found.box, channel),
         crops if together else (),
-        others,
+        {name: tuple(crop(frame, found.box, capture.camera, name) for frame in frames) for name in beside},
+        companions.by_channel(capture.uses, found.box) if together else {},
+        companions.lost(capture.uses),
     )
-    try:
-        measured = plan.method.measure(sample, plan.options)
-    except MeasurementRefused as error:
-        return _refused(plan, found.region, wanted, Refusal(error.cause, str(error)))
-    except Exception as error:  # noqa: BLE001 - one method's fault must not take the unit's other readings along
-        if faults is not None:
-            faults.tracebacks.append(f"{first.file}, {found.region}, {plan.method.NAME}\n{traceback.format_exc()}")
-        because = f"the program failed in '{plan.method.NAME}': {type(error).__name__}: {error}"
-        return _refused(plan, found.region, wanted, Refusal("fault", because))
-    return _complete(measured, plan, found.region, wanted)
-
-
-def _complete(measured: Measurement, plan: MethodPlan, region: str, wanted: tuple[Wanted, ...]) -> Measurement:
-    """Add a refused reading for whatever was wanted and did not come: silence must never look like a pass."""
-    missing = tuple(w for w in wanted if not any(_answers(r, w) for r in measured.readings))
-    if not missing:
-        return measured
-    lost = _refused(plan, region, missing, Refusal("fault", f"'{plan.method.NAME}' gave no value for it"))
-    return replace(measured, readings=(*measured.readings, *lost.readings))
-
-
-def _answers(reading: Reading, wanted: Wanted) -> bool:
-    return (reading.quantity, reading.part) == (wanted.quantity, wanted.part) and (
-        dict(reading.parameters) == dict(wanted.parameters) and wanted.estimator in {None, reading.estimator}
-    )
-
-
-def _refused(plan: MethodPlan, region: str, wanted: tuple[Wanted, ...], refusal: Refusal) -> Measurement:
-    """Give every reading that was wanted, or the method's plain ones where nothing was, its reason."""
-    asked = wanted or tuple(Wanted(q, {}, {}) for q, info in plan.method.quantities().items() if not info.parameters)
-    return Measurement(
-        tuple(
-            Reading(
-                region,
-                w.quantity,
-                _unit(plan.method.quantity(w.quantity)),
-                None,
-                None,
-                parameters=w.parameters,
-                part=w.part,
-                estimator=w.estimator or "",
-                refusal=refusal,
-            )
-            for w in asked
-        )
-    )
-
-
-def _unit(info: QuantityInfo | None) -> str:
-    return info.unit if info is not None else "1"
 
 
 def _combine(repeats: Sequence[tuple[Reading, ...]]) -> list[Reading]:

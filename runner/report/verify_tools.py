@@ -66,7 +66,7 @@ def _judge_again(document: Mapping[str, Any]) -> dict[str, Any]:
     spec, evidence = from_document(document)
     facts = _facts(document)
     plan = bind(spec, facts.station)
-    judgement = judge_unit(spec, evidence)
+    judgement = judge_unit(plan.spec, evidence)
     return to_document(
         plan,
         evidence,
@@ -95,7 +95,7 @@ def _measure_again(document: Mapping[str, Any], frames: Path) -> tuple[dict[str,
     if not units:
         raise VerificationRefused(f"there are no frames of unit {serial}", where=str(frames))
     evidence, pictures, _tracebacks = measure_unit(plan, units[0], integrity.survey(lot, spec, 1))
-    judgement = judge_unit(spec, evidence)
+    judgement = judge_unit(plan.spec, evidence)
     return to_document(plan, evidence, judgement, facts), pictures
 
 

@@ -11,9 +11,10 @@ from runner.spec.devices import build_camera, build_chart, build_optics, overrid
 from runner.spec.file_shapes import SidecarShape
 from runner.spec.files import FIELDS, Agreed, Sidecar
 from runner.spec.leaves import Inequality, share
+from runner.spec.limit_leaves import PARAMETERS
 from runner.spec.model import Amount, Bound, Camera, Capture, FramePattern, Limit, Optics
 from runner.spec.regions import expand, names
-from runner.spec.shapes import PARAMETERS, CaptureShape, LimitShape, OpticsShape, RootShape
+from runner.spec.shapes import CaptureShape, LimitShape, OpticsShape, RootShape
 from runner.spec.tree import Complaints, nearest
 
 
@@ -156,7 +157,8 @@ def _limit(
         characteristic=shape.characteristic,
         capture=capture,
         quantity=shape.quantity,
-        parameters={key: getattr(shape, key) for key in PARAMETERS if getattr(shape, key) is not None},
+        parameters={key: getattr(shape, key) for key in PARAMETERS if getattr(shape, key) is not None}
+        | dict(shape.parameters or {}),
         where=where,
         where_label=", ".join(shape.where or ()),
         unit=unit,
@@ -181,10 +183,6 @@ def _limit(
 def _regions(
     shape: LimitShape, key: str, wanted: tuple[str, ...], meant: Mapping[str, tuple[str, ...]], complaints: Complaints
 ) -> tuple[str, ...] | None:
-    if not wanted and key == "where" and meant:
-        found = f"limit {shape.characteristic} does not say where"
-        complaints.error(shape.at(), found, f"regions: {', '.join(meant)}", "add where:")
-        return None
     found_regions: list[str] = []
     good = True
     for name in wanted:

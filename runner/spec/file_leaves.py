@@ -88,5 +88,6 @@ Fields = Annotated[
 ]
 Exposure = Annotated[Inequality, *agreed(("time",), "2 ms")]
 Gain = Annotated[Inequality, *agreed(("decibel", "ratio"), "6 dB, or 4 as a plain factor")]
+Position = Annotated[Inequality, *agreed(("length",), "1.25 mm")]
 Temperature = Annotated[Inequality, *agreed(("temperature",), "from 20 degC to 30 degC")]
 AnyValue = Annotated[Inequality, *agreed((), "50 %")]

@@ -68,6 +68,8 @@ class SidecarShape(Shape):
     """Gain, e.g. 6 dB, or 4 as a plain factor."""
     level: file_leaves.AnyValue | None = None
     """Level of the light as the station sets it, e.g. 50 %."""
+    position: file_leaves.Position | None = None
+    """Position along the optical axis, of focus or stage, e.g. from 1 mm to 2 mm."""
     temperature: file_leaves.Temperature | None = None
     """Temperature, e.g. from 20 degC to 30 degC."""
     counter: Annotated[str, *choice("consecutive")] | None = None

@@ -27,7 +27,7 @@ PACKINGS: Mapping[str, Packing] = {
     "MIPI RAW12": Packing(12, 2, 3),
 }
 """Packings by the words of the spec (what each means, byte by byte, stands in `capture.formats.packed`)."""
-FIELDS = ("serial", "exposure", "gain", "level", "temperature", "counter", "time")
+FIELDS = ("serial", "exposure", "gain", "level", "position", "temperature", "counter", "time")
 """What a sidecar may say of a frame."""
 
 

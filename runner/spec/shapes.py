@@ -6,7 +6,7 @@ from typing import Annotated, Any, ClassVar
 
 from pydantic import ConfigDict, Field, PlainSerializer, PlainValidator, WithJsonSchema
 
-from runner.spec import device_leaves, leaves, position_leaves
+from runner.spec import device_leaves, leaves, limit_leaves, position_leaves
 from runner.spec.file_shapes import FramesShape, LayoutShape, SidecarShape
 from runner.spec.leaves import choice
 from runner.spec.model import COMBINATIONS, RULES
@@ -15,10 +15,8 @@ from runner.spec.tree import nearest
 
 VERSION = 1
 """Version of the format that this program reads."""
-ROLES = ("dark", "flat")
+ROLES = ("dark", "flat", "tone")
 """Roles that a companion capture may play."""
-PARAMETERS = ("frequency", "modulation")
-"""What a quantity may be taken at."""
 
 
 class DocumentShape(Shape):
@@ -218,8 +216,10 @@ class LimitShape(Shape):
     """Spatial frequency that the quantity is taken at, e.g. 0.25 cy/px."""
     modulation: leaves.Share | None = None
     """Modulation that the quantity is taken at, e.g. 50 %."""
+    parameters: limit_leaves.At | None = None
+    """What else the quantity is taken at, by the method's own names, e.g. {level: 18 %}."""
     where: leaves.Texts | None = None
-    """Region, group (each of its members) or a list of them; left out where a capture has no regions."""
+    """Region, group (each of its members) or a list of them; left out for a value of the whole capture."""
     at_least: leaves.AnyAmount | None = None
     """Lower limit."""
     at_most: leaves.AnyAmount | None = None

@@ -124,7 +124,7 @@ def test_frames_along_other_axes_are_not_averaged(tmp_path: Path) -> None:
     path = tmp_path / "spec.yaml"
     path.write_text(SPEC.format(**GOOD).replace("chart-{repeat}.tif", "chart-{z}.tif"))
 
-    with pytest.raises(SpecError, match="does not know frames along 'z'"):
+    with pytest.raises(SpecError, match="takes frames along 'z'"):
         bind(read_spec(path))
 
 
@@ -135,3 +135,58 @@ def test_the_decision_rule_that_was_filled_in_is_told(tmp_path: Path) -> None:
     path.write_text(SPEC.format(**GOOD) + "decision: {rule: guarded acceptance}\n")
 
     assert bind(read_spec(path)).defaults()["decision"] == {"conformance_probability": 0.95}
+
+
+STRIPES = """\
+probatum-spec: 1
+document: {number: WS8-ACC, revision: C}
+unit: {product: WS8, serial: 'WS8-[0-9]{6}'}
+camera: {frame_size: 800 x 600 px, bit_depth: 12 bit, black_level: 64 DN, white_level: 4095 DN}
+captures:
+  stripes:
+    target: sinusoidal grating
+    frames: 'stripes-{repeat}.tif'
+    regions:
+      upright: {position: {coarse: [25 %, 50 %], fine: [75 %, 50 %]}, size: [80 px, 120 px]}
+      level: {position: [50 %, 50 %], size: [80 px, 120 px]}
+    measure: {grating response: {target_modulation: 80 %}, transfer curve: {}}
+    limits:
+      - {characteristic: 1, LIMIT}
+"""
+
+
+def _bind_stripes(folder: Path, limit: str) -> Plan:
+    path = folder / "stripes.yaml"
+    path.write_text(STRIPES.replace("LIMIT", limit))
+    return bind(read_spec(path))
+
+
+def test_a_whole_quantity_is_wanted_once_for_its_group(tmp_path: Path) -> None:
+    """A group's curve is one reading under the group's name, for measuring and for judging alike."""
+    plan = _bind_stripes(tmp_path, "quantity: mtf, frequency: 0.1 cy/px, where: upright, at_least: 0.4")
+    curve = next(m for m in plan.captures[0].methods if m.method.NAME == "transfer curve")
+
+    assert list(curve.wanted) == ["upright"]
+    assert curve.groups == {"upright": ("upright coarse", "upright fine")}
+    assert plan.spec.captures[0].limits[0].where == ("upright",)
+
+
+def test_a_whole_quantity_may_leave_where_out(tmp_path: Path) -> None:
+    """Then it stands for all regions of the capture."""
+    plan = _bind_stripes(tmp_path, "quantity: mtf50, at_least: 0.1 cy/px")
+    curve = next(m for m in plan.captures[0].methods if m.method.NAME == "transfer curve")
+
+    assert list(curve.wanted) == [""]
+
+
+@pytest.mark.parametrize(
+    ("limit", "words"),
+    [
+        ("quantity: modulation, at_least: 40 %", "limit 1 does not say where"),
+        ("quantity: mtf50, where: upright, combine: range, at_most: 0.1 cy/px", "one value of all its regions already"),
+    ],
+)
+def test_a_place_that_does_not_fit_is_refused(tmp_path: Path, limit: str, words: str) -> None:
+    """A region's quantity needs its region; a value of many regions takes no combination."""
+    with pytest.raises(SpecError, match=words):
+        _bind_stripes(tmp_path, limit)

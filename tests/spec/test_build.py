@@ -140,7 +140,6 @@ PLANTED = [
     ),
     (ONE, ONE.replace("where: centre", "where: §center"), "there is no region 'center'"),
     (ONE, ONE.replace("where: centre", "where: §[corners, lower right]"), "names region 'corners lower right' twice"),
-    (ONE, "§" + ONE.replace("where: centre, ", ""), "limit 1 does not say where"),
     (ONE, "{characteristic: §1, quantity: mtf, frequency: 0.25 cy/px, where: centre}", "limit 1 has no limit"),
     (ONE, _one("at_least: §0.45 cy/p"), "unknown unit 'cy/p'"),
     (ONE, _one("at_least: §0.5, at_most: 0.4"), "at_least 0.5 lies above at_most 0.4"),

@@ -14,7 +14,7 @@ from runner.spec.model import Camera, Region
 NAME = "sinusoidal grating"
 TITLE = "Sinusoidal grating"
 OFFERS = frozenset({"grating"})
-METHODS = ("grating response",)
+METHODS = ("grating response", "transfer curve")
 REFERENCES = (
     "ISO 15529:2010 (modulation transfer of sampled imaging systems)",
     "F. J. Harris, Proc. IEEE 66 (1978) 51 (windows for harmonic analysis)",

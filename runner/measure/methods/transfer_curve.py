@@ -1,0 +1,239 @@
+"""A transfer function from patches of several frequencies: the curve through their modulation transfers.
+
+Each patch gives the transfer at its own frequency (`grating response`). Between neighbouring frequencies the curve is a
+cubic through the four patches around; at frequency 0 it is 1 by definition and symmetric. What the cubic adds to a
+straight line tells how far any curve can be trusted there: a quarter of it is taken as the standard uncertainty. Beyond
+the patches nothing is known.
+"""
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
+from math import sqrt
+from typing import Any, NoReturn
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.optimize import brentq
+
+from runner.errors import MeasurementRefused
+from runner.measure.contract import Measurement, QuantityInfo, Sample, Scene, Wanted
+from runner.measure.options import read_record
+from runner.measure.reading import Component, Curve, Reading, Refusal
+
+NAME = "transfer curve"
+TITLE = "Transfer curve over several patches"
+NEEDS = frozenset({"grating"})
+GATHERS = True
+REFERENCES = ("ISO 15529:2010 (modulation transfer of sampled imaging systems)", "JCGM 100:2008 (uncertainty)")
+ESTIMATOR = "patches"
+
+SAME = 0.02
+"""Patches whose frequencies differ by a smaller share are repeats of one frequency and averaged."""
+LEAST_FREQUENCIES = 2
+TRUST = 0.25
+"""Of what the cubic adds to a straight line: its standard uncertainty (blurs of 0.3 to 1.2 px, patches 0.05 apart)."""
+
+_QUANTITIES: Mapping[str, QuantityInfo] = {
+    "mtf": QuantityInfo(
+        "1", "Transfer function between the patches.", {"frequency": "cy/px"}, ceiling=True, least=0.0, whole=True
+    ),
+    "mtf50": QuantityInfo("cy/px", "Lowest frequency at which the curve falls to 50 %.", least=0.0, whole=True),
+    "mtf30": QuantityInfo("cy/px", "Lowest frequency at which the curve falls to 30 %.", least=0.0, whole=True),
+    "mtf10": QuantityInfo("cy/px", "Lowest frequency at which the curve falls to 10 %.", least=0.0, whole=True),
+}
+_CROSSINGS = {"mtf50": 0.5, "mtf30": 0.3, "mtf10": 0.1}
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class Options:
+    """There is nothing to choose."""
+
+
+@dataclass(frozen=True)
+class _Points:
+    """The curve's points, rising in frequency; no frequency at 0 among them."""
+
+    f: Array
+    """cy/px."""
+    transfer: Array
+    """Modulation transfer."""
+    own: Array
+    """Standard uncertainty that belongs to each point alone."""
+    shared: Mapping[str, Array]
+    """Standard uncertainties that points have in common, by the shared word."""
+
+    def u(self) -> Array:
+        """Return the combined standard uncertainty of each point."""
+        return np.sqrt(self.own**2 + sum((part**2 for part in self.shared.values()), np.zeros_like(self.own)))
+
+
+def read_options(asked: Mapping[str, Any]) -> Options:
+    """Read the options; none are known."""
+    return read_record(Options, asked)
+
+
+def quantity(name: str) -> QuantityInfo | None:
+    """Return what a quantity name means, or None."""
+    return _QUANTITIES.get(name)
+
+
+def quantities() -> Mapping[str, QuantityInfo]:
+    """Return the quantities."""
+    return _QUANTITIES
+
+
+def measure(sample: Sample, options: Options) -> NoReturn:  # noqa: ARG001 - the contract's form
+    """Refuse a single region: a curve needs several.
+
+    Raises:
+        MeasurementRefused: Always.
+    """
+    raise MeasurementRefused("not defined", "one patch alone has no transfer curve")
+
+
+def gather(scene: Scene, options: Options) -> Measurement:  # noqa: ARG001 - the contract's form
+    """Draw the curve through all patches of a capture, or of a group.
+
+    Raises:
+        MeasurementRefused: Something is wanted and a patch was not measured, or they have fewer than two frequencies.
+    """
+    readings = scene.steps[0].readings
+    lost = _lost(scene, readings)
+    if scene.wanted and lost is not None:
+        raise MeasurementRefused(lost.cause, lost.because)
+    points = _points(readings)
+    if points.f.size < LEAST_FREQUENCIES:
+        if not scene.wanted:
+            return Measurement(())
+        found = f"the patches have {points.f.size} frequencies, a curve needs {LEAST_FREQUENCIES}"
+        raise MeasurementRefused("not defined", found)
+    curve = Curve(
+        scene.region,
+        "mtf",
+        tuple(float(v) for v in points.f),
+        tuple(float(v) for v in points.transfer),
+        tuple(float(v) for v in points.u()),
+        "cy/px",
+        "1",
+        estimator=ESTIMATOR,
+    )
+    wanted = [one for one in scene.wanted if one.quantity in _QUANTITIES]
+    asked = {one.quantity for one in wanted}
+    if lost is None:  # plain figures are offered whether or not a limit asks
+        wanted += [Wanted(name, {}, {}) for name in _CROSSINGS if name not in asked]
+    return Measurement(tuple(_reading(scene, one, points) for one in wanted), (curve,))
+
+
+def _lost(scene: Scene, readings: Sequence[Reading]) -> Refusal | None:
+    if scene.lost:
+        return Refusal(scene.lost[0].cause, f"patch {scene.lost[0].region}: {scene.lost[0].because}")
+    for reading in readings:
+        if reading.quantity == "modulation_transfer" and reading.refusal is not None:
+            return Refusal(reading.refusal.cause, f"patch {reading.region}: {reading.refusal.because}")
+    return None
+
+
+def _points(readings: Sequence[Reading]) -> _Points:
+    frequency = {r.region: r.value for r in readings if r.quantity == "grating_frequency" and r.value is not None}
+    patches = [
+        (frequency[r.region], r)
+        for r in readings
+        if r.quantity == "modulation_transfer" and r.value is not None and r.region in frequency
+    ]
+    patches.sort(key=lambda patch: patch[0])
+    groups: list[list[tuple[float, Reading]]] = []
+    for f, reading in patches:
+        if groups and f - groups[-1][0][0] <= SAME * f:
+            groups[-1].append((f, reading))
+        else:
+            groups.append([(f, reading)])
+    words = sorted({c.shared for _, r in patches for c in r.components if c.shared})
+    shared = {word: np.array([_mean([_part(r, word) for _, r in group]) for group in groups]) for word in words}
+    own = [sqrt(sum(_part(r, None) ** 2 for _, r in group)) / len(group) for group in groups]
+    return _Points(
+        np.array([_mean([f for f, _ in group]) for group in groups]),
+        np.array([_mean([float(r.value or 0.0) for _, r in group]) for group in groups]),
+        np.array(own),
+        shared,
+    )
+
+
+def _mean(values: Sequence[float]) -> float:
+    return sum(values) / len(values)
+
+
+def _part(reading: Reading, word: str | None) -> float:
+    """Return the standard uncertainty that a reading shares under a word; None is what it shares with nobody."""
+    return sqrt(sum(c.u**2 for c in reading.components if (c.shared or None) == word))
+
+
+def _reading(scene: Scene, one: Wanted, points: _Points) -> Reading:
+    blank = Reading(
+        scene.region,
+        one.quantity,
+        _QUANTITIES[one.quantity].unit,
+        None,
+        None,
+        parameters=one.parameters,
+        part=one.part,
+        estimator=ESTIMATOR,
+        method=REFERENCES[0],
+    )
+    if one.part != "system":
+        return _refused(blank, "not defined", "patches give the transfer of the whole system only")
+    if one.quantity == "mtf":
+        return _at(blank, one.at["frequency"], points)
+    return _crossing(blank, _CROSSINGS[one.quantity], points)
+
+
+def _at(blank: Reading, f: float, points: _Points) -> Reading:
+    if not points.f[0] * (1 - SAME) <= f <= points.f[-1] * (1 + SAME):
+        found = f"the patches reach from {points.f[0]:.4f} to {points.f[-1]:.4f} cy/px, {f:g} cy/px lies outside"
+        return _refused(blank, "not defined", found)
+    value, straight, parts = _between(points, f, 1.0)
+    return _valued(blank, value, (*parts, Component("curve between patches", TRUST * abs(value - straight), "B")))
+
+
+def _crossing(blank: Reading, level: float, points: _Points) -> Reading:
+    below = np.flatnonzero(points.transfer < level)
+    if below.size == 0:
+        return replace(blank, bound=("above", float(points.f[-1])))
+    i = int(below[0]) - 1
+    if i < 0:
+        return replace(blank, bound=("below", float(points.f[0])))
+    ends = float(points.f[i]), float(points.f[i + 1])
+    f = float(brentq(lambda at: _between(points, at, 1.0)[0] - level, *ends))
+    tiny = 1e-4 * (ends[1] - ends[0])
+    slope = (_between(points, f + tiny, 1.0)[0] - _between(points, f - tiny, 1.0)[0]) / (2 * tiny)
+    value, straight, parts = _between(points, f, 1 / abs(slope))
+    own = Component("curve between patches", TRUST * abs(value - straight) / abs(slope), "B")
+    return _valued(blank, f, (*parts, own))
+
+
+def _between(points: _Points, f: float, scale: float) -> tuple[float, float, tuple[Component, ...]]:
+    """Return the curve at a frequency, the straight line's value there, and the scaled parts of its uncertainty."""
+    known = np.concatenate([-points.f[:1], [0.0], points.f])  # the first patch again, mirrored; then the 1 at 0
+    i = int(np.clip(np.searchsorted(known, f) - 1, 1, known.size - 2))
+    near = range(i - 1, min(i + 3, known.size))
+    on_known = np.zeros(known.size)
+    for k in near:
+        on_known[k] = np.prod([(f - known[j]) / (known[k] - known[j]) for j in near if j != k])
+    weights, at_zero = on_known[2:].copy(), on_known[1]
+    weights[0] += on_known[0]
+    value = float(weights @ points.transfer + at_zero)
+    straight = float(np.interp(f, known[1:], np.concatenate([[1.0], points.transfer])))
+    shared = [
+        Component(word, scale * abs(float(weights @ part)), "B", shared=word) for word, part in points.shared.items()
+    ]
+    noise = scale * float(np.sqrt(np.sum((weights * points.own) ** 2)))
+    return value, straight, (Component("noise", noise, "A"), *shared)
+
+
+def _valued(blank: Reading, value: float, parts: tuple[Component, ...]) -> Reading:
+    return replace(blank, value=value, u=sqrt(sum(part.u**2 for part in parts)), components=parts)
+
+
+def _refused(blank: Reading, cause: str, because: str) -> Reading:
+    return replace(blank, refusal=Refusal(cause, because))
