@@ -6,7 +6,7 @@ from frame to frame as a whole is taken out and told apart as `level_drift`. A p
 bound in place of a value.
 
 Two frames are enough; ISO 15739 asks for eight or more. Of a mosaic's green, rows beside red and rows beside blue are
-rows of one array: where their levels differ, that counts as row noise and is said.
+two arrays, for their columns are not the same; where their levels differ, that is no noise, but it is said.
 """
 
 from collections.abc import Iterator, Mapping
@@ -118,22 +118,34 @@ def measure(sample: Sample, options: Options) -> Measurement:
     frames = planes.stack(sample.frames)
     most = {"most_high": planes.MOST_CLIPPED} if lit else {"most_low": planes.MOST_CLIPPED}
     planes.refuse_clipped(frames, **most)
-    if min(frames.shape) < options.shading_order + 4:
-        rows, columns = frames.shape
+    rows, columns = frames.shape
+    if min(rows // _kinds(frames), columns) < options.shading_order + 4:
         raise MeasurementRefused(
             "outside the estimator's limits",
             f"the region has {rows} rows and {columns} columns of its own",
-            allowed=f"shading of order {options.shading_order} needs {options.shading_order + 4} of each",
+            allowed=f"shading of order {options.shading_order} needs {options.shading_order + 4} of each"
+            + (", twice as many rows of green" if _kinds(frames) > 1 else ""),
         )
     found = _noise(frames, options, lit=lit)
     return Measurement(tuple(_readings(sample, frames, found, lit=lit)))
+
+
+def _kinds(frames: planes.Stack) -> int:
+    """Return how many kinds of rows take turns: the two of green, whose columns are not the same."""
+    return 2 if frames.grid.shift else 1
 
 
 def _noise(frames: planes.Stack, options: Options, *, lit: bool) -> StackNoise:
     camera = frames.camera
     if lit:
         planes.refuse_dark(frames)
-    found = stack_noise(frames.frames, black=camera.black_level, shading_order=options.shading_order, gain_drift=lit)
+    found = stack_noise(
+        frames.frames,
+        black=camera.black_level,
+        shading_order=options.shading_order,
+        gain_drift=lit,
+        kinds=_kinds(frames),
+    )
     if found.temporal.total.value == 0:
         raise MeasurementRefused("no picture", f"all {found.count} frames are the same: there is no noise at all")
     return found
@@ -251,7 +263,7 @@ def _about_green(frames: planes.Stack) -> tuple[str, ...]:
     u = float(steps.std()) / sqrt(len(steps))
     if abs(apart) < 3 * u:
         return ()
-    return (f"green beside red and green beside blue differ by {abs(apart):.3g} DN, which counts in it",)
+    return (f"green beside red and green beside blue differ by {abs(apart):.3g} DN, which is left out",)
 
 
 def _blank(sample: Sample, name: str) -> Reading:

@@ -24,7 +24,7 @@ References:
     H. Scheffé, The Analysis of Variance (1959), 4.1 (two-way layout, mean squares and their expectations).
 """
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from math import log10, sqrt
 
@@ -40,6 +40,7 @@ from runner.measure.numerics.two_way_layout import (
     add_up,
     layout,
     level_of,
+    pooled,
     short_codes,
     split_variances,
 )
@@ -133,7 +134,7 @@ class StackNoise:
     row_means: Real
     """Means of the rows of each frame, frames × rows, drift taken out, less black."""
     column_means: Real
-    """Means of the columns of each frame, frames × columns, drift taken out, less black."""
+    """Means of the columns of each frame, frames × columns, drift taken out, less black; one kind after the other."""
     mean: NDArray[np.float32] | None = None
     """Mean frame, rows × columns, drift taken out, less black; None if not asked for."""
 
@@ -144,45 +145,59 @@ def stack_noise(
     black: float = 0.0,
     shading_order: int = 2,
     gain_drift: bool = False,
+    kinds: int = 1,
     keep_mean: bool = False,
 ) -> StackNoise:
     """Measure the noise of a stack; every pixel counts, defective ones too.
+
+    Of several kinds of rows each is an array of its own, with its own level, shading and columns; mean squares are
+    means over the kinds.
 
     Args:
         frames: n ≥ 2 frames × rows × columns of the same even field, light or DN.
         black: Level of no light in the same unit; only levels and ratios depend on it (and drift as a gain).
         shading_order: Order of the polynomial taken from the mean frame, 0 or more; ISO 15739 practice is 2.
         gain_drift: A frame's level departs as a factor on its light (a lamp), else as an offset (a dark level).
+        kinds: Kinds of rows that take turns, 1 or more: 2 for the green of a mosaic.
         keep_mean: Return the mean frame too, which saves a walk over the pixels.
 
     Raises:
         ValueError: Fewer than two frames, frames of different size, too few rows or columns for the order, values
             that are not finite, or drift as a gain without light.
     """
-    _check(frames, shading_order)
-    raw = np.array([level_of(frame) for frame in frames]) - black
+    parts = [[frame[kind::kinds] for frame in frames] for kind in range(kinds)]
+    for part in parts:
+        _check(part, shading_order)
+    raw = np.array([[level_of(frame) for frame in part] for part in parts]) - black
     if not np.all(np.isfinite(raw)):
         raise ValueError("the frames hold values that are not finite numbers")
-    level = float(raw.mean())
+    levels = raw.mean(axis=0)
+    level = float(levels.mean())
     if gain_drift and np.any(raw <= 0):
         raise ValueError(f"the level of a frame is {raw.min():g} over black; drift as a gain needs light in each")
-    factors = level / raw if gain_drift else np.ones(len(frames))
     mean = np.empty(frames[0].shape, dtype=np.float32) if keep_mean else None
-    sums = add_up(frames, factors, factors * (raw + black), shading_order + BEYOND, keep=mean)
-    if mean is not None:
-        mean += np.float32(level)
-    strata = layout(sums, shading_order)
-    _, m, n = sums.shape
+    sums = []
+    for kind, (part, own) in enumerate(zip(parts, raw, strict=True)):
+        factors = own.mean() / own if gain_drift else np.ones(len(part))
+        keep = None if mean is None else mean[kind::kinds]
+        sums.append(add_up(part, factors, factors * (own + black), shading_order + BEYOND, keep=keep))
+        if keep is not None:
+            keep += np.float32(own.mean())
+    strata = pooled([layout(of, shading_order) for of in sums])
     temporal, fixed, total = _temporal(strata), _fixed(strata), _total(strata)
+    m, n = frames[0].shape
     mean_variance = max(strata.rows.t + strata.columns.t - strata.rest.t, strata.rest.t) / (m * n)
     level_u = sqrt(mean_variance / len(frames))
     removed, left = _shading(sums, strata, shading_order)
+    rows = np.empty((len(frames), m))
+    for kind, (of, own) in enumerate(zip(sums, raw, strict=True)):
+        rows[:, kind::kinds] = of.rows + own.mean()
     return StackNoise(
         count=len(frames),
         level=level,
         level_u=level_u,
-        levels=tuple(float(x) for x in raw),
-        drift=float(raw.std(ddof=1)),
+        levels=tuple(float(x) for x in levels),
+        drift=float(levels.std(ddof=1)),
         drift_noise=sqrt(mean_variance),
         temporal=temporal,
         fixed=fixed,
@@ -193,8 +208,8 @@ def stack_noise(
         shading_order=shading_order,
         shading_rms=removed,
         shading_left=left,
-        row_means=sums.rows + level,
-        column_means=sums.columns + level,
+        row_means=rows,
+        column_means=np.concatenate([of.columns + own.mean() for of, own in zip(sums, raw, strict=True)], axis=1),
         mean=mean,
     )
 
@@ -326,13 +341,13 @@ def _spread(variance: float, u: Callable[[float], float]) -> Spread:
     return Spread(value, (sqrt(variance + away) - sqrt(max(0.0, variance - away))) / 4)
 
 
-def _shading(sums: Sums, s: Layout, order: int) -> tuple[float, float]:
+def _shading(sums: Sequence[Sums], s: Layout, order: int) -> tuple[float, float]:
     """Return the rms of the shading removed and of what the next orders hold beyond chance."""
-    b, a = np.indices(sums.shading.shape)
-    squares = sums.shading**2
-    chance = np.where(a == 0, s.rows.a, np.where(b == 0, s.columns.a, s.rest.a))
+    b, a = np.indices(sums[0].shading.shape)
+    squares = np.asarray(sum(of.shading**2 for of in sums))
+    chance = len(sums) * np.where(a == 0, s.rows.a, np.where(b == 0, s.columns.a, s.rest.a))
     beyond = (a + b > order) & (a + b <= order + BEYOND)
     left = max(0.0, float((squares - chance)[beyond].sum()))
-    pixels = s.shape[0] * s.shape[1]
+    pixels = sum(of.shape[1] * of.shape[2] for of in sums)
     removed = float(squares[(a + b > 0) & (a + b <= order)].sum())
     return sqrt(removed / pixels), sqrt(left / pixels)

@@ -221,6 +221,20 @@ def layout(sums: Sums, order: int) -> Layout:
     )
 
 
+def pooled(layouts: Sequence[Layout]) -> Layout:
+    """Return what layouts of alike arrays tell together: means of mean squares, all their degrees of freedom."""
+    if len(layouts) == 1:
+        return layouts[0]
+
+    def together(strata: Sequence[Stratum]) -> Stratum:
+        t, a, noise = (float(np.mean([getattr(one, name) for one in strata])) for name in ("t", "a", "noise"))
+        t_dof, dof, lost = (float(sum(getattr(one, name) for one in strata)) for name in ("t_dof", "dof", "lost"))
+        return Stratum(t, t_dof, a, dof, lost, noise)
+
+    rows, columns, rest = (together([getattr(one, name) for one in layouts]) for name in ("rows", "columns", "rest"))
+    return Layout(layouts[0].n, layouts[0].shape, rows, columns, rest)
+
+
 def split_variances(total: float, rows: float, columns: float, shape: tuple[int, int]) -> tuple[float, float, float]:
     """Return the variances of pixel, row and column part (EMVA 1288 Release 4.0 Linear).
 

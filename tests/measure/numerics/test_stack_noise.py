@@ -192,3 +192,24 @@ def test_what_is_refused(frames: list[Values], how: dict[str, float], said: str)
     """A stack that tells nothing is refused with what was found and what is allowed."""
     with pytest.raises(ValueError, match=said):
         stack_noise(frames, **how)  # type: ignore[arg-type] # a table of options of several kinds
+
+
+def test_kinds_of_rows_are_arrays_of_their_own() -> None:
+    """Even and odd rows with unlike levels, shadings and columns pool to the means of what each kind alone gives.
+
+    Variances of parts are linear in mean squares, so they are the means of both kinds' to the last digits.
+    """
+    rng = np.random.default_rng(19)
+    codes = 900 + rng.normal(0, 4, (3, 60, 50)) + rng.normal(0, 5, (60, 1)) + rng.normal(0, 6, (60, 50))
+    codes[:, 0::2] += rng.normal(0, 7, 50) + 0.02 * np.arange(50) ** 2
+    codes[:, 1::2] += rng.normal(0, 7, 50) + 40
+    both = stack_noise(codes, kinds=2)
+    each = [stack_noise(codes[:, kind::2]) for kind in (0, 1)]
+
+    for name in ("row", "column", "total"):
+        mean = np.mean([(getattr(alone.fixed, name).value or 0.0) ** 2 for alone in each])
+        assert (getattr(both.fixed, name).value or 0.0) ** 2 == pytest.approx(mean, rel=1e-9)
+        one, two = (getattr(alone.fixed, name).u or 0.0 for alone in each)
+        assert getattr(both.fixed, name).u == pytest.approx(np.hypot(one, two) / 2, rel=0.2)
+    assert both.level == pytest.approx(codes.mean(), rel=1e-12)
+    np.testing.assert_allclose(both.row_means, codes.mean(axis=2), atol=0.6)
