@@ -73,8 +73,10 @@ class UnitEvidence:
     """Sorted like readings, then by kind and place."""
     remarks: tuple[str, ...] = ()
     """What was found out about its files that changes no verdict, e.g. that completeness is only inferred."""
+    marked: bool = False
+    """One of its files is marked as rehearsed, though nothing of it may be measured."""
 
     @property
     def simulated(self) -> bool:
         """One marked frame makes the whole unit simulated."""
-        return any(frame.simulated for capture in self.captures for frame in capture.frames)
+        return self.marked or any(frame.simulated for capture in self.captures for frame in capture.frames)

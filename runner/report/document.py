@@ -179,6 +179,7 @@ def from_document(document: Mapping[str, Any]) -> tuple[Spec, UnitEvidence]:
             tuple(_map_back(m) for m in document.get("maps", ())),
             tuple(Spot(**s) for s in document.get("spots", ())),
             tuple(str(remark) for remark in document.get("remarks", ())),
+            bool(document["simulated"]) and not all(c["frames"] for c in document["captures"]),
         )
     except (KeyError, TypeError, ValueError, AttributeError) as error:
         raise VerificationRefused(f"it cannot be read back: {type(error).__name__}: {error}") from error
@@ -188,8 +189,7 @@ def from_document(document: Mapping[str, Any]) -> tuple[Spec, UnitEvidence]:
 def _no_doubles(pairs: list[tuple[str, Any]]) -> dict[str, Any]:
     keys = dict(pairs)
     if len(keys) != len(pairs):
-        names = [k for k, _ in pairs]
-        doubled = next(name for name in names if names.count(name) > 1)
+        doubled = next(key for n, (key, _) in enumerate(pairs) if key in dict(pairs[:n]))
         raise ValueError(f"the key {doubled!r} stands twice")
     return keys
 

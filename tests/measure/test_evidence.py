@@ -97,3 +97,10 @@ def test_one_marked_frame_makes_the_unit_simulated(marked: tuple[int, int] | Non
 
     assert UnitEvidence("S", captures, (), ()).simulated is (marked is not None)
     assert not UnitEvidence("S", (CaptureEvidence("c", 1, "t", (), ("lost",)),), (), ()).simulated
+
+
+def test_refused_frames_keep_their_mark() -> None:
+    """A unit of which nothing may be measured is as simulated as its files say, though no frame is left to tell it."""
+    refused = (CaptureEvidence("c", 1, "t", (), ("lost",)),)
+
+    assert UnitEvidence("S", refused, (), (), marked=True).simulated

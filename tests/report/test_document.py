@@ -55,6 +55,20 @@ def test_the_evidence_comes_back_as_it_went_in() -> None:
     assert spec.digest == _document()["document"]["digest"]
 
 
+def test_a_mark_comes_back_only_where_no_frame_could_tell_it() -> None:
+    """A capture of refused files has no frames, so the document's word counts; with all frames there, theirs does."""
+    document = _document()
+    (frame,) = document["captures"][0]["frames"]
+
+    frame["simulated"] = False
+    claimed = from_document(document)[1]
+    document["captures"][0]["frames"] = []
+    refused = from_document(document)[1]
+
+    assert not claimed.simulated
+    assert refused.simulated
+
+
 def test_the_contracts_keys_are_there() -> None:
     """Other programs hold on to these names at the top, in readings and in checks."""
     document = _document()
