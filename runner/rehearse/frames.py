@@ -1,4 +1,4 @@
-"""Writes a simulated frame; the file itself says that it is one."""
+"""Makes the file of a simulated frame, which itself says that it is one, and writes files whole."""
 
 import io
 import json
@@ -39,9 +39,9 @@ def tiff_bytes(codes: Codes, serial: str, truth: Mapping[str, Any]) -> bytes:
     return file.getvalue()
 
 
-def write_frame(path: Path, codes: Codes, serial: str, truth: Mapping[str, Any]) -> None:
-    """Write one frame beside its place and rename it into place, so that a cut-off demo leaves no half frame."""
+def write_whole(path: Path, data: bytes) -> None:
+    """Write a file beside its place and rename it into place, so that a demo that is cut off leaves no half file."""
     path.parent.mkdir(parents=True, exist_ok=True)
     beside = path.with_name(f".{path.name}")
-    beside.write_bytes(tiff_bytes(codes, serial, truth))
+    beside.write_bytes(data)
     beside.replace(path)

@@ -8,157 +8,20 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from math import ceil, hypot, radians, tan
 from pathlib import Path
-from typing import Annotated, Any, Literal
+from typing import Any
 
-from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, ValidationError
+from pydantic import ValidationError
 
+from runner.rehearse.amounts import Shape
+from runner.rehearse.delivery import Delivery, Mishap
+from runner.rehearse.flaws import Bands, Defects
+from runner.rehearse.gratings import Patch, StripeChart
+from runner.rehearse.illumination import Correction, Illumination
 from runner.rehearse.optics import Transfer
+from runner.rehearse.scenario_shapes import ChartShape, ScenarioShape, SensorShape, StripesShape, UnitShape
 from runner.rehearse.scene import Chart, Square, View
 from runner.rehearse.sensor import Sensor, Sharpening
-from runner.spec.device_leaves import read_frame_size
-from runner.spec.leaves import refuse, shown
-from runner.spec.tree import Complaints, Mapped, nearest, number_in, place_of, read_tree
-
-
-def _in(**factors: float) -> BeforeValidator:
-    """Return the reader of an amount in one of some units, by their factors."""
-    known = {_SPELLING.get(name, name): factor for name, factor in factors.items()}
-
-    def read(node: Any) -> float:
-        number, _, unit = str(node).strip().partition(" ")
-        value = number_in(number)
-        if not isinstance(node, str) or value is None or unit.strip() not in known:
-            refuse(f"{shown(node)} is no amount that fits here", f"a number and one of: {', '.join(known)}")
-        return value * known[unit.strip()]
-
-    return BeforeValidator(read)
-
-
-_SPELLING = {"percent": "%", "electrons": "e-", "dn_per_e": "DN/e-", "one": "1"}
-Microns = Annotated[float, _in(um=1.0, nm=1e-3, mm=1e3)]
-Millimetres = Annotated[float, _in(mm=1.0)]
-Degrees = Annotated[float, _in(deg=1.0)]
-Pixels = Annotated[float, _in(px=1.0)]
-Share = Annotated[float, _in(percent=1e-2)]
-Electrons = Annotated[float, _in(electrons=1.0)]
-
-
-class Shape(BaseModel):
-    """A part of the file: unknown keys are refused."""
-
-    model_config = ConfigDict(extra="forbid", frozen=True)
-
-
-class ChartShape(Shape):
-    """The chart in the object."""
-
-    modulation: Annotated[Share, Field(gt=0, lt=1)]
-    """(bright - dark) / (bright + dark)."""
-    side: Annotated[Millimetres, Field(gt=0)]
-    """Side of the slanted squares."""
-    slant: Degrees
-    """Their turn, clockwise as seen."""
-    squares: Annotated[Mapping[str, tuple[Millimetres, Millimetres]], Field(min_length=1)]
-    """Their centres from the chart's middle, right and down."""
-    mark_side: Annotated[Millimetres, Field(gt=0)]
-    """Side of the small marks."""
-    mark_pitch: Annotated[Millimetres, Field(gt=0)]
-    """Distance between neighbouring marks of the grid; marks near a slanted square are left out."""
-
-
-class OpticsShape(Shape):
-    """The design of the lens."""
-
-    f_number: Annotated[float, Field(gt=0)]
-    """Working f-number."""
-    wavelength: Annotated[Microns, Field(gt=0)]
-    """Wavelength."""
-    magnification: Annotated[float, Field(gt=0)]
-    """Image size over object size."""
-    field_curvature: Microns
-    """Best focus in the frame's corner against that in its centre."""
-
-
-class SensorShape(Shape):
-    """The design of the sensor."""
-
-    frame_size: Annotated[tuple[int, int], BeforeValidator(read_frame_size)]
-    """Columns and rows."""
-    pixel_pitch: Annotated[Microns, Field(gt=0)]
-    """Pixel pitch."""
-    fill: Annotated[Share, Field(gt=0, le=1)]
-    """Share of the pixel's area that collects light."""
-    quantum_efficiency: Annotated[Share, Field(gt=0, le=1)]
-    """Electrons per photon."""
-    full_well: Annotated[Electrons, Field(gt=0)]
-    """Electrons at which a pixel is full."""
-    read_noise: Annotated[Electrons, Field(ge=0)]
-    """Standard deviation without light."""
-    prnu: Annotated[Share, Field(ge=0)]
-    """Spread of sensitivity."""
-    dsnu: Annotated[Electrons, Field(ge=0)]
-    """Spread of the dark signal."""
-    conversion: Annotated[float, _in(dn_per_e=1.0), Field(gt=0)]
-    """DN per electron."""
-    black_level: Annotated[int, _in(DN=1), Field(ge=0)]
-    """DN without light."""
-    bit_depth: Annotated[int, _in(bit=1), Field(ge=1, le=16)]
-    """Bits of the converter."""
-
-
-class SharpeningShape(Shape):
-    """Unsharp mask of the firmware."""
-
-    amount: float
-    """Amount."""
-    sigma: Annotated[Pixels, Field(gt=0)]
-    """Smoothing kernel."""
-
-
-class UnitShape(Shape):
-    """One unit of the lot and what was done to it."""
-
-    story: str
-    """What is the matter with it, one sentence."""
-    focus_error: Microns = 0.0
-    """Sensor against best focus in the middle of the frame."""
-    blur: Annotated[Microns, Field(ge=0)]
-    """Standard deviation of the Gaussian that stands for aberrations and charge diffusion."""
-    sensor_tilt: tuple[Degrees, Degrees] = (0.0, 0.0)
-    """Slope of the sensor against the image plane, to the right and down."""
-    aim: tuple[Millimetres, Millimetres] = (0.0, 0.0)
-    """Where the unit sees the chart's middle, right and down."""
-    turn: Degrees = 0.0
-    """Turn of the chart as the unit sees it."""
-    sharpening: SharpeningShape | None = None
-    """Unsharp mask of its firmware."""
-    readout: Literal["live", "dead"] = "live"
-    """A dead unit delivers one constant code."""
-    lamp: Literal["lit", "off"] = "lit"
-    """Whether the lamp of the bench was on."""
-
-
-class ScenarioShape(Shape):
-    """The whole file."""
-
-    version: Annotated[Literal["1"], Field(alias="probatum-scenario")]
-    """Version of the format."""
-    title: str
-    """What the lot is."""
-    seed: int
-    """Seed of all noise."""
-    photons: Annotated[float, _in(photons=1.0), Field(gt=0)]
-    """Mean photons per pixel from the bright board in one frame."""
-    repeats: Mapping[Literal["dark", "chart"], Annotated[int, Field(ge=1, le=100)]]
-    """Frames of each capture."""
-    chart: ChartShape
-    """The chart."""
-    optics: OpticsShape
-    """The lens."""
-    sensor: SensorShape
-    """The sensor."""
-    units: Annotated[Mapping[Annotated[str, Field(pattern=r"^\w[\w.-]*$")], UnitShape], Field(min_length=1)]
-    """Units by serial."""
+from runner.spec.tree import Complaints, Mapped, nearest, place_of, read_tree
 
 
 @dataclass(frozen=True)
@@ -178,7 +41,17 @@ class Unit:
     view: View
     """How it sees the chart."""
     sharpening: Sharpening | None
-    """What its firmware does."""
+    """Unsharp mask of its firmware."""
+    illumination: Illumination | None
+    """Fall of light of its lens, or None for an even field."""
+    correction: Correction
+    """What its firmware does about it."""
+    bands: Bands | None
+    """Bands of its readout."""
+    defects: Defects
+    """Its flawed pixels."""
+    mishap: Mishap
+    """What goes wrong with its files."""
     dead: bool
     """It delivers one constant code."""
     lit: bool
@@ -203,9 +76,13 @@ class Scenario:
     photons: float
     """Mean photons per pixel from the bright board in one frame."""
     repeats: Mapping[str, int]
-    """Frames of each capture: `dark`, `chart`."""
-    chart: Chart
-    """The chart."""
+    """Frames of each capture: `dark`, `flat`, `chart`, `stripes`."""
+    chart: Chart | None
+    """The chart of squares."""
+    stripes: StripeChart | None
+    """The chart of gratings."""
+    delivery: Delivery
+    """How the station writes files."""
     sensor: Sensor
     """The sensor's design."""
     units: Mapping[str, Unit]
@@ -228,16 +105,26 @@ def read_scenario(path: Path) -> Scenario:
             _complain(complaints, tree, item)
         complaints.raise_errors()
         raise
-    units = {serial: _unit(serial, unit, shape) for serial, unit in sorted(shape.units.items())}
+    _charts_are_there(shape, tree, complaints)
     return Scenario(
-        shape.title,
-        shape.seed,
-        shape.photons,
-        {str(k): n for k, n in shape.repeats.items()},
-        _chart(shape),
-        _sensor(shape.sensor),
-        units,
+        title=shape.title,
+        seed=shape.seed,
+        photons=shape.photons,
+        repeats={str(k): n for k, n in shape.repeats.items()},
+        chart=_chart(shape.chart, shape) if shape.chart else None,
+        stripes=_stripes(shape.stripes) if shape.stripes else None,
+        delivery=_delivery(shape),
+        sensor=_sensor(shape.sensor),
+        units={serial: _unit(serial, unit, shape) for serial, unit in sorted(shape.units.items())},
     )
+
+
+def _charts_are_there(shape: ScenarioShape, tree: Mapped | None, complaints: Complaints) -> None:
+    for name in ("chart", "stripes"):
+        if name in shape.repeats and getattr(shape, name) is None:
+            where = place_of(tree, "repeats", name)
+            complaints.error(where, f"frames of '{name}' are asked for, and there is no {name}", "", f"add {name}")
+    complaints.raise_errors()
 
 
 _MEANT = {
@@ -271,8 +158,24 @@ def _complain(complaints: Complaints, tree: Mapped | None, item: Mapping[str, An
         complaints.error(where, f"{name}: {_MEANT.get(item['type'], item['msg'][0].lower() + item['msg'][1:])}")
 
 
-def _chart(shape: ScenarioShape) -> Chart:
-    c, mm_per_px = shape.chart, shape.sensor.pixel_pitch / 1e3 / shape.optics.magnification
+def _mm_per_px(shape: ScenarioShape) -> float:
+    return shape.sensor.pixel_pitch / 1e3 / shape.optics.magnification
+
+
+def _delivery(shape: ScenarioShape) -> Delivery:
+    if shape.station is None:
+        return Delivery()
+    settings = {str(name): said for name, said in shape.station.sidecar.items()}
+    return Delivery(tuple(str(name) for name in shape.station.raw), shape.station.packing, settings)
+
+
+def _stripes(s: StripesShape) -> StripeChart:
+    patches = {name: Patch(*p.place, s.side, p.period, p.direction) for name, p in s.patches.items()}
+    return StripeChart(s.level, s.modulation, patches)
+
+
+def _chart(c: ChartShape, shape: ScenarioShape) -> Chart:
+    mm_per_px = _mm_per_px(shape)
     squares = {name: Square(x, y, c.side, c.slant) for name, (x, y) in c.squares.items()}
     columns, rows = shape.sensor.frame_size
     half_x, half_y = columns * mm_per_px / 2, rows * mm_per_px / 2
@@ -300,8 +203,9 @@ def _sensor(shape: SensorShape) -> Sensor:
 
 def _unit(serial: str, unit: UnitShape, shape: ScenarioShape) -> Unit:
     optics, sensor = shape.optics, shape.sensor
-    mm_per_px = sensor.pixel_pitch / 1e3 / optics.magnification
-    sharpening = unit.sharpening
+    mm_per_px, px_per_mm = _mm_per_px(shape), 1e3 / sensor.pixel_pitch
+    sharpening, bands, d = unit.sharpening, unit.bands, unit.defects
+    shift = unit.lens_shift[0] * px_per_mm, unit.lens_shift[1] * px_per_mm
     return Unit(
         serial=serial,
         story=unit.story,
@@ -310,6 +214,11 @@ def _unit(serial: str, unit: UnitShape, shape: ScenarioShape) -> Unit:
         slope=(tan(radians(unit.sensor_tilt[0])), tan(radians(unit.sensor_tilt[1]))),
         view=View(*sensor.frame_size, mm_per_px, (unit.aim[0] / mm_per_px, unit.aim[1] / mm_per_px), unit.turn),
         sharpening=Sharpening(sharpening.amount, sharpening.sigma) if sharpening else None,
+        illumination=Illumination(optics.image_distance * px_per_mm, shift) if optics.image_distance else None,
+        correction=unit.shading_correction,
+        bands=Bands(bands.along, bands.amplitude, bands.frequency) if bands else None,
+        defects=Defects(d.hot, d.hot_signal, d.dead, d.stuck, d.weak_columns, d.weakness),
+        mishap=unit.files,
         dead=unit.readout == "dead",
         lit=unit.lamp == "lit",
     )

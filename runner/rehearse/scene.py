@@ -111,21 +111,34 @@ def _at(square: Square) -> tuple[float, float]:
 
 def _darken(light: Picture, square: Square, view: View, depth: float, spread: tuple[Picture, Picture]) -> None:
     """Take one square's light away, in place."""
+    half = square.side_mm / view.mm_per_px / 2
+    rows, columns = within(square, view, float(spread[0][-1]))
+    across, down = place_on(square, view, rows, columns)
+    light[rows, columns] -= depth * bar(across, half, spread) * bar(down, half, spread)
+
+
+def within(square: Square, view: View, margin: float) -> tuple[slice, slice]:
+    """Return the rows and columns of the frame that a square with a margin around it reaches into, px."""
     x, y = view.place(square)
     half, turn = square.side_mm / view.mm_per_px / 2, np.deg2rad(view.angle(square))
-    reach = half * (abs(np.cos(turn)) + abs(np.sin(turn))) + spread[0][-1]
-    columns = _within(x + view.columns / 2, reach, view.columns)
-    rows = _within(y + view.rows / 2, reach, view.rows)
+    reach = half * (abs(np.cos(turn)) + abs(np.sin(turn))) + margin
+    return _part(y + view.rows / 2, reach, view.rows), _part(x + view.columns / 2, reach, view.columns)
+
+
+def place_on(square: Square, view: View, rows: slice, columns: slice) -> tuple[Picture, Picture]:
+    """Return where pixels lie on a square: px from its centre along its own two axes, each rows × columns."""
+    x, y = view.place(square)
+    turn = np.deg2rad(view.angle(square))
     dx = np.arange(columns.start, columns.stop) + 0.5 - view.columns / 2 - x
     dy = (np.arange(rows.start, rows.stop) + 0.5 - view.rows / 2 - y)[:, None]
-    across, down = dx * np.cos(turn) + dy * np.sin(turn), dy * np.cos(turn) - dx * np.sin(turn)
-    light[rows, columns] -= depth * _bar(across, half, spread) * _bar(down, half, spread)
+    return dx * np.cos(turn) + dy * np.sin(turn), dy * np.cos(turn) - dx * np.sin(turn)
 
 
-def _within(centre: float, reach: float, size: int) -> slice:
+def _part(centre: float, reach: float, size: int) -> slice:
     first, last = int(np.floor(centre - reach)), int(np.ceil(centre + reach))
     return slice(min(max(first, 0), size), min(max(last, 0), size))
 
 
-def _bar(distance: Picture, half: float, spread: tuple[Picture, Picture]) -> Picture:
+def bar(distance: Picture, half: float, spread: tuple[Picture, Picture]) -> Picture:
+    """Return the picture of a bar: what is seen of it at a distance from its middle, px."""
     return np.asarray(np.interp(distance + half, *spread) - np.interp(distance - half, *spread))

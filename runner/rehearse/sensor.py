@@ -4,7 +4,8 @@ The model of EMVA Standard 1288 Release 4.0 Linear: electrons are Poisson distri
 photons, the dark signal adds normal noise, the converter rounds to whole codes between 0 and the white level.
 """
 
-from dataclasses import dataclass
+from collections.abc import Mapping
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -84,10 +85,10 @@ class Sensor:
     def pattern(self, shape: tuple[int, int], rng: np.random.Generator) -> "Pattern":
         """Draw one sensor's fixed pattern; every frame of a unit shares it."""
         gain = 1 + self.prnu * rng.standard_normal(shape)
-        return Pattern(gain, self.dsnu_e * rng.standard_normal(shape))
+        return Pattern(gain, self.dsnu_e * rng.standard_normal(shape), np.zeros(shape))
 
     def expose(
-        self, photons: Picture, pattern: "Pattern", rng: np.random.Generator, sharpening: Sharpening | None = None
+        self, photons: Picture, pattern: "Pattern", rng: np.random.Generator, firmware: "Firmware | None" = None
     ) -> Codes:
         """Return one frame.
 
@@ -95,19 +96,27 @@ class Sensor:
             photons: Mean photons per pixel, rows × columns.
             pattern: The unit's fixed pattern.
             rng: Source of this frame's noise.
-            sharpening: What the firmware does to the codes, or None.
+            firmware: What is done to the codes on their way out, or None.
         """
-        electrons = rng.poisson(self.quantum_efficiency * np.clip(photons * pattern.gain, 0, None)).astype(np.float64)
-        electrons = np.minimum(electrons, self.full_well_e) + pattern.offset_e
+        light = self.quantum_efficiency * np.clip(photons * pattern.gain, 0, None)
+        electrons = np.minimum(rng.poisson(light + pattern.dark_e).astype(np.float64), self.full_well_e)
+        electrons += pattern.offset_e
         electrons += self.read_noise_e * rng.standard_normal(photons.shape)
-        codes = self.convert(electrons)
-        if sharpening is None:
-            return codes
-        return self._whole(sharpening.apply(codes.astype(np.float64)))
+        codes = self.convert(electrons, (firmware or Firmware()).added_dn)
+        for place, code in pattern.stuck.items():
+            codes[place] = code
+        return self._processed(codes, firmware) if firmware else codes
 
-    def convert(self, electrons: Picture) -> Codes:
-        """Turn electrons into whole codes, clipped at both ends."""
-        return self._whole(self.black_level + self.dn_per_e * electrons)
+    def convert(self, electrons: Picture, added_dn: Picture | float = 0.0) -> Codes:
+        """Turn electrons, and what the readout adds to them, into whole codes, clipped at both ends."""
+        return self._whole(self.black_level + self.dn_per_e * electrons + added_dn)
+
+    def _processed(self, codes: Codes, firmware: "Firmware") -> Codes:
+        if firmware.gains is not None:
+            codes = self._whole(self.black_level + (codes.astype(np.float64) - self.black_level) * firmware.gains)
+        if firmware.sharpening is not None:
+            codes = self._whole(firmware.sharpening.apply(codes.astype(np.float64)))
+        return codes
 
     def _whole(self, values: Picture) -> Codes:
         return np.clip(np.rint(values), 0, self.white_level).astype(np.uint16)
@@ -121,3 +130,19 @@ class Pattern:
     """Sensitivity relative to the mean, rows × columns."""
     offset_e: Picture
     """Dark signal against the mean, electrons, rows × columns."""
+    dark_e: Picture
+    """Mean dark signal of hot pixels in one frame, electrons, rows × columns; it has shot noise of its own."""
+    stuck: Mapping[tuple[int, int], int] = field(default_factory=dict)
+    """Codes of stuck pixels by row and column."""
+
+
+@dataclass(frozen=True)
+class Firmware:
+    """What happens to one frame behind the pixels."""
+
+    added_dn: Picture | float = 0.0
+    """What the readout adds before the converter, DN; fits rows × columns."""
+    gains: Picture | None = None
+    """Shading correction: factors on the light over the black level, rows × columns."""
+    sharpening: Sharpening | None = None
+    """Unsharp mask, the last step."""

@@ -7,7 +7,7 @@ import numpy as np
 import tifffile
 
 from runner.capture.readers import read_frames
-from runner.rehearse.frames import tiff_bytes, write_frame
+from runner.rehearse.frames import tiff_bytes, write_whole
 from runner.spec.model import Camera
 
 CODES = np.random.default_rng(0).integers(0, 4096, (30, 40), dtype=np.uint16)
@@ -32,7 +32,7 @@ def test_same_frame_gives_the_same_bytes() -> None:
 
 def test_reader_takes_the_file_for_what_it_is(tmp_path: Path) -> None:
     """The program's reader gives the codes back and knows that they are simulated; no other file is left."""
-    write_frame(tmp_path / "A" / "chart-1.tif", CODES, "A", {})
+    write_whole(tmp_path / "A" / "chart-1.tif", tiff_bytes(CODES, "A", {}))
 
     (frame,) = read_frames(tmp_path / "A" / "chart-1.tif", Camera(40, 30, 12, 64, 4095))
 

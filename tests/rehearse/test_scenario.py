@@ -5,10 +5,12 @@ from pathlib import Path
 import pytest
 
 from runner.errors import SpecError
+from runner.rehearse.flaws import Bands, Defects
 from runner.rehearse.scenario import read_scenario
 from runner.resources import folder
 
 WALNUT = folder("demo_lots") / "walnut_line" / "scenario.yaml"
+SIZER = folder("demo_lots") / "walnut_sizer" / "scenario.yaml"
 
 
 def _changed(tmp_path: Path, **changes: str) -> Path:
@@ -32,7 +34,27 @@ def test_walnut_line_is_read_in_physical_units() -> None:
     assert unit.lens.wavelength_um == 0.55
     assert unit.view.mm_per_px == pytest.approx(0.36)
     assert scenario.sensor.quantum_efficiency == 0.6
+    assert scenario.chart is not None
     assert scenario.chart.dark == pytest.approx(0.25)
+    assert (scenario.stripes, unit.illumination, scenario.delivery.settings) == (None, None, None)
+
+
+def test_walnut_sizer_is_read_in_physical_units() -> None:
+    """Stripes, lens, flaws, station and mishaps arrive in the units of the records: px, DN, electrons, fractions."""
+    scenario = read_scenario(SIZER)
+    mirrored, banded, flawed = (scenario.units[f"WZ2-00020{n}"] for n in (6, 4, 5))
+    assert scenario.stripes is not None
+    assert mirrored.illumination is not None
+
+    assert (scenario.stripes.level, scenario.stripes.modulation, len(scenario.stripes.patches)) == (0.5, 0.6, 10)
+    assert mirrored.illumination.image_distance_px == pytest.approx(6000 / 4.5)
+    assert mirrored.illumination.shift_px == pytest.approx((250 / 4.5, -100 / 4.5))
+    assert (mirrored.correction, banded.correction) == ("mirrored", "right")
+    assert (banded.bands, mirrored.bands) == (Bands("rows", 2.5, 0.11), None)
+    assert flawed.defects == Defects(hot=14, hot_e=900.0, dead=4, stuck=2, weak_columns=1, weakness=0.05)
+    assert scenario.delivery.raw == ("dark", "flat")
+    assert scenario.delivery.settings == {"exposure": "4 ms", "gain": "0 dB", "temperature": "24.5 degC"}
+    assert [u.mishap for u in scenario.units.values()][-2:] == ["other packing", "half copied"]
 
 
 def test_focus_error_follows_tilt_and_curvature() -> None:
@@ -48,6 +70,7 @@ def test_marks_keep_clear_of_the_squares() -> None:
     """No mark stands within a square's side of a square's middle, so that none disturbs a region."""
     chart = read_scenario(WALNUT).chart
 
+    assert chart is not None
     assert len(chart.marks) > 20
     for mark in chart.marks:
         for square in chart.squares.values():
@@ -73,7 +96,8 @@ def test_all_complaints_come_at_once_with_their_lines(tmp_path: Path) -> None:
     ("key", "line", "sentence"),
     [
         ("lamp", '    lamp: "dim"', "lamp: input should be 'lit' or 'off'"),
-        ("repeats", "repeats: {flat: 2}", "flat: input should be 'dark' or 'chart'"),
+        ("repeats", "repeats: {fog: 2}", "fog: input should be 'dark', 'flat', 'chart' or 'stripes'"),
+        ("repeats", "repeats: {stripes: 2}", "frames of 'stripes' are asked for, and there is no stripes"),
         ("seed", "seed: lucky", "seed: a whole number is meant"),
         ("photons", "fill: 1 %", "unknown key 'fill'; it stands in the wrong place"),
         ("WS8-000101", "  WS8/000101:", "a serial has letters, digits, - and . only"),

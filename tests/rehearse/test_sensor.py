@@ -1,9 +1,11 @@
 """Noise, pattern, clipping and firmware against their stated figures."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 
-from runner.rehearse.sensor import Sensor, Sharpening
+from runner.rehearse.sensor import Firmware, Sensor, Sharpening
 
 SENSOR = Sensor(
     quantum_efficiency=0.6,
@@ -94,8 +96,35 @@ def test_exposure_leaves_its_inputs_alone() -> None:
     pattern = SENSOR.pattern((30, 30), np.random.default_rng(1))
     gain, offset = pattern.gain.copy(), pattern.offset_e.copy()
 
-    SENSOR.expose(light, pattern, np.random.default_rng(2), Sharpening(0.5, 1.0))
+    SENSOR.expose(light, pattern, np.random.default_rng(2), Firmware(1.0, gain, Sharpening(0.5, 1.0)))
 
     assert np.array_equal(light, np.full((30, 30), 800.0))
     assert np.array_equal(pattern.gain, gain)
     assert np.array_equal(pattern.offset_e, offset)
+
+
+def test_hot_pixels_have_shot_noise_of_their_own() -> None:
+    """A dark signal of n electrons adds K n to the mean and K² n to the variance (EMVA 1288: dark current).
+
+    A mean of n pixels scatters by σ/sqrt(n), a variance by sqrt(2/n); four times that is allowed.
+    """
+    pattern = replace(SENSOR.pattern(SHAPE, np.random.default_rng(1)), dark_e=np.full(SHAPE, 900.0))
+
+    first, second = (SENSOR.expose(np.zeros(SHAPE), pattern, np.random.default_rng(n)).astype(float) for n in (2, 3))
+
+    assert first.mean() == pytest.approx(64 + 0.4 * 900, abs=4 * first.std() / np.sqrt(PIXELS))
+    stated = 0.4**2 * (900 + 4.0**2) + 1 / 12
+    assert (first - second).var() / 2 == pytest.approx(stated, rel=4 * np.sqrt(2 / PIXELS))
+
+
+def test_stuck_pixels_and_firmware_come_in_their_order() -> None:
+    """A stuck code passes the shading correction like any other; what the readout adds comes before the converter."""
+    quiet = Sensor(1.0, 10500, 0.0, 0.0, 0.0, 0.4, 64, 12)
+    pattern = replace(quiet.pattern((4, 6), np.random.default_rng(0)), stuck={(1, 2): 264})
+    gains = np.full((4, 6), 1.5)
+
+    plain = quiet.expose(np.zeros((4, 6)), pattern, np.random.default_rng(0), Firmware(added_dn=10.0))
+    corrected = quiet.expose(np.zeros((4, 6)), pattern, np.random.default_rng(0), Firmware(10.0, gains))
+
+    assert (plain[0, 0], plain[1, 2]) == (64 + 10, 264)
+    assert (corrected[0, 0], corrected[1, 2]) == (64 + 15, 64 + 300)
