@@ -59,7 +59,7 @@ def _check(path: Path, station: "Station | None", *, expanded: bool) -> "Plan | 
     except SpecError as error:
         _refused(path, (*spec.warnings, *error.complaints))
         return None
-    print("\n".join([*(str(warning) for warning in spec.warnings), _summary(path, spec)]))
+    print("\n".join([*(str(warning) for warning in plan.spec.warnings), _summary(path, plan.spec)]))
     if expanded:
         print(canonical_json(spec.expanded).decode("utf-8"))
     return plan

@@ -12,9 +12,11 @@ from typing import Any
 from runner.errors import Complaint, SpecError, UsageError
 from runner.measure import shelf
 from runner.measure.contract import Method, QuantityInfo, Target, Wanted
+from runner.measure.natural_range import against_range
 from runner.measure.options import describe
 from runner.spec import units
 from runner.spec.build import DEFAULT_PROBABILITY, DEFAULT_RULE
+from runner.spec.lint import CROSSING, NATURAL
 from runner.spec.model import Bound, Capture, Limit, Spec, Station, UncertaintyComponent
 
 ALWAYS = ("exposure",)
@@ -98,9 +100,11 @@ def bind(spec: Spec, station: Station | None = None) -> Plan:
     complaints: list[Complaint] = []
     captures = tuple(plan for c in spec.captures if (plan := _bind_capture(spec, c, complaints)) is not None)
     declared = spec.uncertainty + (station.uncertainty if station else ())
-    if complaints:
-        raise SpecError(tuple(replace(c, where=spec.place(c.where)) for c in complaints))
-    return Plan(replace(spec, captures=tuple(plan.capture for plan in captures)), captures, declared)
+    placed = tuple(replace(c, where=spec.place(c.where)) for c in complaints)
+    if any(c.severity == "error" for c in placed):
+        raise SpecError(placed)
+    bound = replace(spec, captures=tuple(plan.capture for plan in captures), warnings=(*spec.warnings, *placed))
+    return Plan(bound, captures, declared)
 
 
 def _bind_capture(spec: Spec, capture: Capture, complaints: list[Complaint]) -> CapturePlan | None:
@@ -210,6 +214,8 @@ def _bind_limits(
         _check_place(capture, limit, info, where, complaints)
         if at is None or not _unit_fits(capture, limit.unit, _yielded(limit, info), limit.quantity, where, complaints):
             continue
+        if limit.quantity not in NATURAL and not CROSSING.fullmatch(limit.quantity):  # else the reader has done it
+            complaints += against_range(limit, info, where, units.context_of(capture.camera, capture.optics))
         one = Wanted(limit.quantity, limit.parameters, at, limit.part, limit.estimator)
         if info.whole and limit.where:
             groups.setdefault(method.NAME, {})[limit.where_label] = limit.where
