@@ -179,6 +179,7 @@ def _from_neighbours(means: Real) -> Real:
     """Return each mean less what its neighbours say: the median over pairs left and right, whose slope cancels.
 
     Near the ends there are fewer pairs; the first and last three are taken from pairs on one side, continued straight.
+    What many neighbours in a row have in common is a bend of the light: their median is taken off.
     """
     count, reach = means.size, min(NEIGHBOURS, (means.size - 1) // 2)
     out = np.zeros(count)
@@ -194,7 +195,7 @@ def _from_neighbours(means: Real) -> Real:
             if i < 3:
                 pairs = pairs - 2 * means[at + 2 * way * near]
             out[at] = means[at] - float(np.median(pairs)) / 2
-    return out
+    return np.asarray(out - ndimage.median_filter(out, 2 * reach + 1, mode="mirror"))
 
 
 def _cell_means(frame: NDArray[Any], width: int) -> NDArray[np.float32]:
