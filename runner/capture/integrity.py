@@ -13,13 +13,16 @@ from pathlib import Path
 
 import numpy as np
 
+from runner.capture.fitness import Field, field_of, unfit
 from runner.capture.frame import Frame
-from runner.capture.lot import AttemptFolder, FrameRef, Lot, UnitFolder, count_fault, fold, some
-from runner.capture.manifest import manifest_faults
+from runner.capture.lot import FrameRef, Lot, UnitFolder, count_fault, fold, some
 from runner.capture.readers import read_frames
-from runner.capture.sidecar import SidecarRef, faults, read_sidecar, remarks, say
-from runner.errors import FrameRefused, UsageError
+from runner.capture.sentences import Collector, Place
+from runner.capture.sidecar import amounts
+from runner.capture.station import StationWords, station_says
+from runner.errors import FrameRefused
 from runner.spec.model import Camera, Spec
+from runner.spec.serials import is_serial
 
 DARK = "dark frame"
 """The target whose frames may honestly be alike: clamped at zero they hold nothing else."""
@@ -66,10 +69,8 @@ class FileFacts:
     """Marked as a rehearsed frame."""
     refusal: str = ""
     """The sentence, if the file was refused."""
-
-
-Place = tuple[str, int, str]
-"""Serial, attempt, capture."""
+    unfit: Mapping[str, str] = field(default_factory=dict)
+    """By capture, why it cannot serve as what the capture is: a dark frame that is lit, a flat that is not even."""
 
 
 @dataclass(frozen=True)
@@ -86,6 +87,8 @@ class Survey:
     """By serial: files that no pattern used."""
     inferred: Mapping[str, tuple[int, ...]] = field(default_factory=dict)
     """By serial: attempts without a manifest, whose completeness is inferred."""
+    station: Mapping[str, StationWords] = field(default_factory=dict)
+    """By serial: what manifests and sidecars said."""
 
     def faults(self, serial: str, attempt: int, capture: str) -> tuple[str, ...]:
         """Return everything that makes a capture unusable, also what the lot's folders alone show."""
@@ -131,19 +134,24 @@ def survey(
     units = sorted((*lot.units, *lot.others), key=lambda unit: unit.serial)
     tasks = list(_tasks(units, spec))
     files = tuple(_all_facts(tasks, jobs, progress, workers or _new_ones))
-    sentences, marks = _Collector(), _Collector()
+    sentences, marks = Collector(), Collector()
     for unit in units:
         _folder_faults(unit, spec, files, sentences)
     for facts in files:
         if facts.refusal:
-            sentences.add(facts, facts.refusal)
+            _add(sentences, facts, facts.refusal)
+        for capture, sentence in facts.unfit.items():
+            sentences.put((facts.serial, facts.attempt, capture), sentence)
     _foreign(files, spec, sentences)
+    station = {}
     for unit in units:
-        _station_says(unit, spec, files, sentences, marks)
+        digests = {(f.attempt, f.file): f.sha256 for f in files if f.serial == unit.serial and f.sha256}
+        station[unit.serial] = station_says(unit, spec, digests, sentences, marks)
     _twice(files, spec, sentences, marks)
     inferred = {u.serial: tuple(a.number for a in u.attempts if not a.manifests) for u in units}
     unused = {unit.serial: unit.unused for unit in units}
-    return Survey(files, sentences.frozen(), marks.frozen(), unused, {s: n for s, n in inferred.items() if n})
+    inferred = {serial: numbers for serial, numbers in inferred.items() if numbers}
+    return Survey(files, sentences.frozen(), marks.frozen(), unused, inferred, station)
 
 
 def load(refs: Sequence[FrameRef], camera: Camera, expected: Mapping[str, str]) -> tuple[Frame, ...]:
@@ -162,6 +170,7 @@ def load(refs: Sequence[FrameRef], camera: Camera, expected: Mapping[str, str]) 
     """
     frames: list[Frame] = []
     for ref in refs:
+        taken = amounts(ref.sidecars)
         for frame in read_frames(ref.path, camera, name=ref.file, compare=False):  # the survey has compared them
             if frame.sha256 != expected.get(ref.file):
                 raise FrameRefused(
@@ -169,15 +178,16 @@ def load(refs: Sequence[FrameRef], camera: Camera, expected: Mapping[str, str]) 
                     where=ref.file,
                     next_step="let the copying end, then run again",
                 )
-            frames.append(replace(frame, axes={**ref.axes, **frame.axes}))
+            frames.append(replace(frame, axes={**ref.axes, **frame.axes}, taken=taken))
     return tuple(frames)
 
 
-_Task = tuple[Path, Camera, FileFacts]
+_Task = tuple[Path, Camera, FileFacts, tuple[Field, ...]]
 
 
 def _tasks(units: Iterable[UnitFolder], spec: Spec) -> Iterator[_Task]:
-    """Yield every file once per camera it is to be read with."""
+    """Yield every file once per camera it is to be read with, and what its captures must be."""
+    fields = {capture.name: field_of(capture) for capture in spec.captures}
     for unit in units:
         for attempt in unit.attempts:
             users: dict[tuple[Path, str, Camera], list[str]] = {}
@@ -185,7 +195,8 @@ def _tasks(units: Iterable[UnitFolder], spec: Spec) -> Iterator[_Task]:
                 for ref in attempt.frames[capture.name]:
                     users.setdefault((ref.path, ref.file, capture.camera), []).append(capture.name)
             for (path, file, camera), captures in users.items():
-                yield path, camera, FileFacts(unit.serial, attempt.number, file, tuple(captures))
+                facts = FileFacts(unit.serial, attempt.number, file, tuple(captures))
+                yield path, camera, facts, tuple(one for name in captures if (one := fields[name]) is not None)
 
 
 def _new_ones(number: int) -> Executor:
@@ -210,7 +221,7 @@ def _counted(found: Iterable[FileFacts], total: int, progress: Progress | None) 
 
 
 def _facts(task: _Task) -> FileFacts:
-    path, camera, facts = task
+    path, camera, facts, fields = task
     try:
         frames = read_frames(path, camera, name=facts.file)
     except FrameRefused as error:
@@ -221,6 +232,7 @@ def _facts(task: _Task) -> FileFacts:
         pages=tuple(_page_facts(frame) for frame in frames),
         claims=frames[0].metadata.get("serial", ""),
         simulated=frames[0].simulated,
+        unfit={one.capture: words for one in fields for frame in frames[::-1] if (words := unfit(one, frame, camera))},
     )
 
 
@@ -231,27 +243,13 @@ def _page_facts(frame: Frame) -> PageFacts:
     return PageFacts(frame.pixels_sha256, constant, int(np.count_nonzero(codes)) <= CLAMPED * codes.size)
 
 
-class _Collector:
-    """Gathers sentences by place, each once, in the order in which they come."""
-
-    def __init__(self) -> None:
-        self._found: dict[Place, dict[str, None]] = {}
-
-    def add(self, facts: FileFacts, sentence: str) -> None:
-        """Note a sentence for every capture that uses the file."""
-        for capture in facts.captures:
-            self.put((facts.serial, facts.attempt, capture), sentence)
-
-    def put(self, place: Place, sentence: str) -> None:
-        """Note a sentence."""
-        self._found.setdefault(place, {})[sentence] = None
-
-    def frozen(self) -> Mapping[Place, tuple[str, ...]]:
-        """Return what was gathered."""
-        return {place: tuple(sentences) for place, sentences in self._found.items()}
+def _add(collector: Collector, facts: FileFacts, sentence: str) -> None:
+    """Note a sentence for every capture that uses the file."""
+    for capture in facts.captures:
+        collector.put((facts.serial, facts.attempt, capture), sentence)
 
 
-def _folder_faults(unit: UnitFolder, spec: Spec, files: Sequence[FileFacts], sentences: _Collector) -> None:
+def _folder_faults(unit: UnitFolder, spec: Spec, files: Sequence[FileFacts], sentences: Collector) -> None:
     """Note what folders and numbers of frames show: doubled units, lost, surplus and contested files."""
     of_unit = [facts for facts in files if facts.serial == unit.serial]
     for attempt in unit.attempts:
@@ -266,58 +264,22 @@ def _folder_faults(unit: UnitFolder, spec: Spec, files: Sequence[FileFacts], sen
                 sentences.put(place, lost)
 
 
-def _station_says(
-    unit: UnitFolder, spec: Spec, files: Sequence[FileFacts], sentences: _Collector, marks: _Collector
-) -> None:
-    """Note where manifests and sidecars speak against the files, or against what the spec asks for."""
-    for attempt in unit.attempts:
-        digests = {
-            f.file: f.sha256 for f in files if (f.serial, f.attempt) == (unit.serial, attempt.number) and f.sha256
-        }
-        refs = [ref for capture in spec.captures for ref in attempt.frames[capture.name]]
-        used = dict.fromkeys([*(r.file for r in refs), *(s.file for r in refs for s in r.sidecars)])
-        inside = [file for file in used if not file.startswith("../")]
-        listed = [sentence for ref in attempt.manifests for sentence in manifest_faults(ref, inside, digests)]
-        for capture in spec.captures:
-            for sentence in listed:
-                sentences.put((unit.serial, attempt.number, capture.name), sentence)
-        _sidecars_say(unit.serial, attempt, spec, sentences, marks)
-
-
-def _sidecars_say(serial: str, attempt: AttemptFolder, spec: Spec, sentences: _Collector, marks: _Collector) -> None:
-    read: dict[SidecarRef, Mapping[str, object]] = {}
-    broken: dict[SidecarRef, str] = {}
-    for capture in spec.captures:
-        place = (serial, attempt.number, capture.name)
-        refs = attempt.frames[capture.name]
-        for ref in dict.fromkeys(one for frame in refs for one in frame.sidecars):
-            try:
-                read[ref] = read.get(ref) or ({} if ref in broken else read_sidecar(ref))
-            except UsageError as error:
-                broken[ref] = str(error)
-            if ref in broken:
-                sentences.put(place, broken[ref])
-        said = [say(frame.file, frame.sidecars, read) for frame in refs]
-        for sentence in faults(said, capture, serial, spec.unit.serial):
-            sentences.put(place, sentence)
-        for sentence in remarks(said, capture):
-            marks.put(place, sentence)
-
-
-def _foreign(files: Sequence[FileFacts], spec: Spec, sentences: _Collector) -> None:
+def _foreign(files: Sequence[FileFacts], spec: Spec, sentences: Collector) -> None:
     """Note every file that names another unit, in its texts or in its name."""
     known = {fold(facts.serial) for facts in files}
     for facts in files:
-        claimed = facts.claims if re.fullmatch(spec.unit.serial, facts.claims) else ""
+        claimed = facts.claims if is_serial(spec.unit.serial, facts.claims) else ""
         if claimed and fold(claimed) != fold(facts.serial):
-            sentences.add(
+            _add(
+                sentences,
                 facts,
                 f"{facts.file}: the file says that it is of unit {claimed}, it lies with {facts.serial}; "
                 "find out which unit it shows, and capture again",
             )
         for named in _serials_in(facts.file, spec.unit.serial):
             if fold(named) != fold(facts.serial) and (fold(named) in known or _alike(named, facts.serial)):
-                sentences.add(
+                _add(
+                    sentences,
                     facts,
                     f"{facts.file}: the name says unit {named}, the file lies with {facts.serial}; "
                     "find out which unit it shows, and capture again",
@@ -338,14 +300,14 @@ def _serials_in(file: str, pattern: str) -> list[str]:
         if start < taken:
             continue
         for _, end in reversed(words[first:]):
-            if re.fullmatch(pattern, file[start:end]):
+            if is_serial(pattern, file[start:end]):
                 found.append(file[start:end])
                 taken = end
                 break
     return found
 
 
-def _twice(files: Sequence[FileFacts], spec: Spec, sentences: _Collector, marks: _Collector) -> None:
+def _twice(files: Sequence[FileFacts], spec: Spec, sentences: Collector, marks: Collector) -> None:
     """Note frames that hold the same pixels; real frames differ at least in their noise.
 
     Constant frames and clamped dark frames are alike by nature: they are flagged, and the methods say what is wrong.
@@ -355,9 +317,9 @@ def _twice(files: Sequence[FileFacts], spec: Spec, sentences: _Collector, marks:
     for facts in files:
         for number, page in enumerate(facts.pages):
             if page.constant is not None:
-                marks.add(facts, f"{facts.file}: every pixel is {page.constant:g} DN")
+                _add(marks, facts, f"{facts.file}: every pixel is {page.constant:g} DN")
             elif page.clamped and dark.issuperset(facts.captures):
-                marks.add(facts, f"{facts.file}: nearly every pixel is 0 DN, the dark signal is clamped")
+                _add(marks, facts, f"{facts.file}: nearly every pixel is 0 DN, the dark signal is clamped")
             else:
                 same = alike.setdefault(page.pixels_sha256, {})
                 same.setdefault((facts.serial, facts.attempt, facts.file, number), facts)

@@ -8,7 +8,7 @@ import json
 import re
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
-from hashlib import file_digest
+from hashlib import file_digest, sha256
 from pathlib import Path
 from typing import Any
 
@@ -40,8 +40,12 @@ class Entry:
     """Its bytes, or None where the form has no sizes."""
 
 
-def read_manifest(path: Path) -> dict[str, Entry]:
+def read_manifest(path: Path, seen: dict[Path, str] | None = None) -> dict[str, Entry]:
     """Return the listed files by their names, relative to the manifest's folder.
+
+    Args:
+        path: Where it lies.
+        seen: Is told the SHA-256 of the bytes that were read.
 
     Raises:
         UsageError: It cannot be read, or is not whole.
@@ -49,6 +53,8 @@ def read_manifest(path: Path) -> dict[str, Entry]:
     try:
         with path.open("rb") as stream:
             data = stream.read(MAX_BYTES + 1)
+        if seen is not None:
+            seen[path] = sha256(data).hexdigest()
         text = data[:MAX_BYTES].decode("utf-8")  # cut, it is refused like any list that is not whole
         pairs = _json(text) if path.suffix == ".json" else _lines(text)
     except (OSError, ValueError, RecursionError) as error:
@@ -104,17 +110,20 @@ def _once(pairs: Iterable[tuple[str, Entry]]) -> dict[str, Entry]:
     return found
 
 
-def manifest_faults(ref: ManifestRef, used: Iterable[str], digests: Mapping[str, str]) -> list[str]:
+def manifest_faults(
+    ref: ManifestRef, used: Iterable[str], digests: Mapping[str, str], seen: dict[Path, str] | None = None
+) -> list[str]:
     """Return why an attempt is not what its station finished.
 
     Args:
         ref: The manifest.
         used: Files of the attempt that captures use, relative to its folder.
         digests: SHA-256 of those that have been read, so that no file is read twice.
+        seen: Is told the SHA-256 of the manifest itself.
     """
     name = ref.path.name
     try:
-        listed = read_manifest(ref.path)
+        listed = read_manifest(ref.path, seen)
     except UsageError as error:
         return [str(error)]
     mine = {file.removeprefix(ref.prefix): entry for file, entry in listed.items() if file.startswith(ref.prefix)}

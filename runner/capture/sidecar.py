@@ -5,10 +5,11 @@ what the nearest one says counts. Units and numbers are written as in a spec. Fi
 """
 
 import json
-import re
 from collections.abc import Iterable, Mapping, Sequence
+from contextlib import suppress
 from dataclasses import dataclass, field
 from datetime import datetime
+from hashlib import sha256
 from pathlib import Path, PurePosixPath
 from typing import Any
 
@@ -16,6 +17,7 @@ from runner.errors import UsageError
 from runner.spec import units
 from runner.spec.files import FIELDS, Agreed
 from runner.spec.model import Amount, Capture
+from runner.spec.serials import is_serial
 from runner.spec.tree import Complaints, parse, plain_data
 
 ENDINGS = (".json", ".yaml", ".yml")
@@ -24,8 +26,15 @@ SHARED = "unit"
 """Stem of the sidecar of all frames of an attempt or unit."""
 MAX_BYTES = 1_000_000
 CAPTURE_AGAIN = "set the station as the spec says, and capture again"
-_KINDS = {"exposure": ("time",), "gain": ("decibel", "ratio"), "temperature": ("temperature",)}
-_EXAMPLES = {"exposure": "2 ms", "gain": "6 dB", "level": "50 %", "temperature": "23.5 degC", "counter": "17"}
+_KINDS = {"exposure": ("time",), "position": ("length",), "gain": ("decibel", "ratio"), "temperature": ("temperature",)}
+_EXAMPLES = {
+    "exposure": "2 ms",
+    "gain": "6 dB",
+    "level": "50 %",
+    "position": "1.25 mm",
+    "temperature": "23.5 degC",
+    "counter": "17",
+}
 _EXAMPLES |= {"time": "2026-12-01T09:30:00Z", "serial": "the unit's serial"}
 
 
@@ -67,8 +76,12 @@ def shared(files: Iterable[str]) -> list[str]:
     return [name for name in files if name in {f"{SHARED}{ending}" for ending in ENDINGS}]
 
 
-def read_sidecar(ref: SidecarRef) -> dict[str, Any]:
+def read_sidecar(ref: SidecarRef, seen: dict[Path, str] | None = None) -> dict[str, Any]:
     """Read a sidecar as plain data.
+
+    Args:
+        ref: Where it lies.
+        seen: Is told the SHA-256 of the bytes that were read.
 
     Raises:
         UsageError: It cannot be read, or is no mapping of fields to values.
@@ -77,6 +90,8 @@ def read_sidecar(ref: SidecarRef) -> dict[str, Any]:
     try:
         with ref.path.open("rb") as stream:
             data = stream.read(MAX_BYTES + 1)
+        if seen is not None:
+            seen[ref.path] = sha256(data).hexdigest()
         text = data.decode("utf-8-sig")
     except (OSError, UnicodeDecodeError) as error:
         reason = error.strerror if isinstance(error, OSError) else "it is not UTF-8 text"
@@ -125,6 +140,16 @@ def say(file: str, refs: Sequence[SidecarRef], read: Mapping[SidecarRef, Mapping
     return Said(file, values)
 
 
+def amounts(refs: Sequence[SidecarRef]) -> dict[str, Amount]:
+    """Return what a frame's sidecars say in numbers, by field; a sidecar that cannot be read says nothing here."""
+    read: dict[SidecarRef, Mapping[str, Any]] = {}
+    for ref in refs:
+        with suppress(UsageError):  # the survey has told of it
+            read[ref] = read_sidecar(ref)
+    said = say("", refs, read).values
+    return {name: found for name, (value, _) in said.items() if (found := _amount(value)) is not None}
+
+
 def faults(said: Sequence[Said], capture: Capture, serial: str, pattern: str) -> list[str]:
     """Return why frames of a capture cannot be evidence by what their sidecars say.
 
@@ -160,7 +185,7 @@ def remarks(said: Sequence[Said], capture: Capture) -> list[str]:
 
 def _serial(value: Any, source: str, serial: str, pattern: str, *, strict: bool) -> str:
     text = str(value).strip()
-    other = text.casefold() != serial.casefold() and (strict or re.fullmatch(pattern, text) is not None)
+    other = text.casefold() != serial.casefold() and (strict or is_serial(pattern, text))
     words = f"{source}: the sidecar says unit {text or '(nothing)'}, the frame lies with {serial}"
     return f"{words}; find out which unit it shows, and capture again" if other else ""
 

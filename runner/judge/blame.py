@@ -62,4 +62,6 @@ UNUSABLE: Mapping[str, Blame] = {
 """Quantity of a `usable_if` that does not hold to blame."""
 UNUSABLE_OTHERWISE = Blame(AT_FAULT_CANNOT_TELL, f"the capture or the unit may cause it; {SETTLE}")
 FILE = Blame(AT_FAULT_CAPTURE, "a file cannot be evidence")
+UNDECIDED = Blame(AT_FAULT_CANNOT_TELL, f"the capture or the unit may cause what the frame shows; {SETTLE}")
+"""For files whose sentence says that both look alike."""
 TWO_ATTEMPTS = Blame(AT_FAULT_CANNOT_TELL, "there are two valid attempts and the spec has no rule for them")

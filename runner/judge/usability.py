@@ -3,6 +3,7 @@
 from collections.abc import Sequence
 from math import isfinite
 
+from runner.capture.fitness import UNDECIDED
 from runner.judge import blame
 from runner.judge.sentences import show
 from runner.judge.verdict import CaptureState
@@ -21,7 +22,7 @@ def judge_capture(capture: Capture, evidence: CaptureEvidence, readings: Sequenc
         readings: All readings of this capture and attempt.
     """
     if evidence.faults:
-        return _state(evidence, evidence.faults, [blame.FILE])
+        return _state(evidence, evidence.faults, [_of_file(sentence) for sentence in evidence.faults])
     if not evidence.frames and capture.usable_if:
         return CaptureState(evidence.name, evidence.attempt, usable=True)  # nothing measured: each limit tells why
     faults: list[str] = []
@@ -31,6 +32,10 @@ def judge_capture(capture: Capture, evidence: CaptureEvidence, readings: Sequenc
         faults += sentences
         blames += [blame.UNUSABLE.get(bound.quantity, blame.UNUSABLE_OTHERWISE)] * len(sentences)
     return _state(evidence, tuple(faults), blames)
+
+
+def _of_file(sentence: str) -> blame.Blame:
+    return blame.UNDECIDED if UNDECIDED in sentence else blame.FILE
 
 
 def _broken(capture: Capture, bound: Bound, readings: Sequence[Reading]) -> list[str]:

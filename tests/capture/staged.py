@@ -66,6 +66,8 @@ class Staged:
     """Who must be blamed."""
     exit: int = 4
     """Exit code of a run: not measured."""
+    capture: str = "flat"
+    """Capture of the first unit that must not be measured."""
 
 
 def codes(seed: int, camera: Camera = CAMERA, light: NDArray[np.float64] = SHADED) -> Codes:

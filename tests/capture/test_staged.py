@@ -14,11 +14,12 @@ from runner.report.document import RunFacts, to_document
 from runner.spec.build import read_spec
 from runner.spec.model import Station
 from tests.capture.bad_frames_colour import BAD_COLOUR
+from tests.capture.bad_frames_fields import BAD_FIELDS
 from tests.capture.bad_frames_raw import BAD_RAW
 from tests.capture.bad_frames_station import BAD_STATION
 from tests.capture.staged import NEIGHBOUR, UNIT, Kind, Staged, good_lot
 
-ALL = BAD_RAW + BAD_COLOUR + BAD_STATION
+ALL = BAD_RAW + BAD_COLOUR + BAD_STATION + BAD_FIELDS
 KINDS = {id(bad.kind): bad.kind for bad in ALL}
 
 
@@ -44,7 +45,7 @@ def test_a_staged_error_is_told_and_blamed(bad: Staged, tmp_path: Path) -> None:
 
     _, seen, results = _results(tmp_path, bad.kind)
 
-    sentences = seen.faults(UNIT, 1, "flat")
+    sentences = seen.faults(UNIT, 1, bad.capture)
     assert any(re.search(bad.says, sentence) for sentence in sentences), sentences
     assert all("; " in sentence and sentence.isprintable() for sentence in sentences)
     found = results[UNIT]
