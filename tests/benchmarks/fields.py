@@ -44,7 +44,7 @@ def light(rng: np.random.Generator, *, lit: bool) -> np.ndarray:
     size = WIDTH, HEIGHT
     if lit:
         field = 2400 * Shading(size, angle=25, axis=(60, -40)).frame()
-        field *= 1 + Pattern(pixel=0.006, row=0.0005, column=0.001).sum(size, rng)
+        field *= 1 + Pattern(pixel=0.003, row=0.0005, column=0.001).sum(size, rng)
         field[1000:1400, 800:1200] *= spot((400, 400), (200, 200), 40, -0.04)
     else:
         field = 4 + Pattern(pixel=0.5, row=0.05, column=0.2).sum(size, rng)

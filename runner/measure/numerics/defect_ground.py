@@ -35,6 +35,8 @@ SMOOTHED = 9
 """Blocks along each side whose noise is joined: from 8100 pixels it is known within 2 %."""
 CELL = 16
 """Width of a cell, px."""
+AT_ONCE = 512
+"""Cells looked at pixel by pixel at a time: a few MB, however many of them there are."""
 SIDE = 13
 """Width of a pixel's neighbourhood: its median is uncertain by 0.1 of the noise, clusters up to 9 × 9 leave it."""
 COMMON = 0.001
@@ -83,14 +85,16 @@ def ground(frame: NDArray[Any], less: NDArray[Any] | None = None, *, block: int 
     """
     edges = [_edges(size, block) for size in frame.shape]
     rows, columns = (_sampled(e) for e in edges)
-    sample = frame.take(rows.ravel(), axis=0).take(columns.ravel(), axis=1).astype(np.float64)
+    narrow = frame.dtype == np.float32 or (frame.dtype.kind in "iu" and frame.dtype.itemsize <= 2)
+    kind: Any = np.float32 if narrow and (less is None or less.dtype == frame.dtype) else np.float64  # both are exact
+    sample = frame.take(rows.ravel(), axis=0).take(columns.ravel(), axis=1).astype(kind)
     if less is not None:
         sample -= less.take(rows.ravel(), axis=0).take(columns.ravel(), axis=1)
     blocks = _by_blocks(sample, rows.shape, columns.shape)
     level = _median(blocks)
     y, x = (e[:-1] / 2 + e[1:] / 2 for e in edges)
-    sample -= surface(level, y, x, rows.ravel(), columns.ravel())
-    away = _by_blocks(sample.astype(np.float32), rows.shape, columns.shape)
+    under = surface(level, y, x, rows.ravel(), columns.ravel())
+    away = _by_blocks(np.subtract(sample, under, out=under).astype(np.float32), rows.shape, columns.shape)
     known = max(step, 1.0) if frame.dtype.kind in "iu" else step
     step = smallest_step(blocks, float(np.median(np.abs(away[:: max(1, len(away) // 8)]))), known)
     away += (step * _spread_evenly(away.shape[2])).astype(np.float32)
@@ -175,21 +179,25 @@ def _look_closer(
     limits: tuple[float | None, float | None],
 ) -> tuple[Places, Places]:
     down, right = edges
-    cells = np.argwhere(found)
-    rows = down[cells[:, 0], None, None] + np.arange(np.diff(down).max())[None, :, None]
-    columns = right[cells[:, 1], None, None] + np.arange(np.diff(right).max())[None, None, :]
-    rows, columns = np.broadcast_arrays(rows, columns)
-    inside = (rows < down[cells[:, 0] + 1, None, None]) & (columns < right[cells[:, 1] + 1, None, None])
-    rows, columns = rows[inside], columns[inside]
-    level, noise = of.at(rows, columns)
-    away = frame[rows, columns] - level
-    low, high = limits
-    keep = np.zeros(away.shape, dtype=bool)
-    if high is not None:
-        keep |= away > high * noise
-    if low is not None:
-        keep |= away < -low * noise
-    return rows[keep], columns[keep]
+    cells, (low, high) = np.argwhere(found), limits
+    rows_found, columns_found = [np.empty(0, dtype=np.intp)], [np.empty(0, dtype=np.intp)]
+    for start in range(0, len(cells), AT_ONCE):
+        i, j = cells[start : start + AT_ONCE].T
+        rows = down[i, None, None] + np.arange(np.diff(down).max())[None, :, None]
+        columns = right[j, None, None] + np.arange(np.diff(right).max())[None, None, :]
+        keep = (rows < down[i + 1, None, None]) & (columns < right[j + 1, None, None])  # the cell's own pixels
+        rows, columns = rows.clip(0, down[-1] - 1), columns.clip(0, right[-1] - 1)
+        level, noise = of.at(rows, columns)
+        away = frame[rows, columns] - level
+        beyond = np.zeros(away.shape, dtype=bool)
+        if high is not None:
+            beyond |= away > high * noise
+        if low is not None:
+            beyond |= away < -low * noise
+        cell, y, x = np.nonzero(beyond & keep)
+        rows_found.append(rows[cell, y, 0])
+        columns_found.append(columns[cell, 0, x])
+    return np.concatenate(rows_found), np.concatenate(columns_found)
 
 
 def local_medians(frame: NDArray[Any], rows: Places, columns: Places) -> Real:
@@ -211,7 +219,7 @@ def local_medians(frame: NDArray[Any], rows: Places, columns: Places) -> Real:
     return out
 
 
-def smallest_step(values: Real, noise: float, known: float = 0.0) -> float:
+def smallest_step(values: NDArray[Any], noise: float, known: float = 0.0) -> float:
     """Return the smallest distance between two values that is more than rounding.
 
     Values that few pixels have may be defects: they only count where there are no others and nothing is known.
@@ -221,7 +229,7 @@ def smallest_step(values: Real, noise: float, known: float = 0.0) -> float:
         noise: Median size of their noise; a hundred-thousandth of it, and of a value 1e-9, is rounding.
         known: The least that it can be; 0 if not known, and also what is returned if all values are the same.
     """
-    few = values.ravel()[:: max(1, values.size // 20_000)]
+    few = values.ravel()[:: max(1, values.size // 20_000)].astype(np.float64)
     rounding = max(1e-5 * noise, 1e-9 * float(np.abs(few).max()))
     distinct, counts = np.unique(few, return_counts=True)
     gaps = np.diff(distinct[counts >= COMMON * few.size])
@@ -251,7 +259,8 @@ def _median(values: NDArray[Any]) -> Real:
     """Return the median along the last axis; sorting short rows is several times as fast as the library's median."""
     size = values.shape[-1]
     ordered = np.sort(values, axis=-1)
-    return np.asarray(ordered[..., (size - 1) // 2] / 2 + ordered[..., size // 2] / 2, dtype=np.float64)
+    lower, upper = (ordered[..., n].astype(np.float64) for n in ((size - 1) // 2, size // 2))
+    return np.asarray(lower / 2 + upper / 2)
 
 
 def _smoothed(values: Real) -> Real:

@@ -214,27 +214,39 @@ def clusters(defects: Sequence[Defect]) -> tuple[Cluster, ...]:
     Args:
         defects: Of any kinds; a pixel named twice counts once.
     """
-    from scipy.sparse import coo_array  # noqa: PLC0415 - heavy
-    from scipy.sparse.csgraph import connected_components  # noqa: PLC0415 - heavy
-
     places = np.array(sorted({(d.y, d.x) for d in defects}), dtype=np.intp).reshape(-1, 2)
     if len(places) < 2:
         return ()
-    width = int(places[:, 1].max()) + 3  # no neighbour wraps into the next row
-    keys = places[:, 0] * width + places[:, 1]
+    labels = touching(places[:, 0], places[:, 1])
+    order = np.argsort(labels, kind="stable")
+    groups = np.split(places[order], np.cumsum(np.bincount(labels))[:-1])
+    found = [Cluster(tuple((int(x), int(y)) for y, x in group)) for group in groups if len(group) > 1]
+    return tuple(sorted(found, key=lambda c: (-c.size, c.pixels)))
+
+
+def touching(rows: Places, columns: Places) -> NDArray[np.int32]:
+    """Return a number for each place, from 0, the same for those that touch by sides or corners, also through others.
+
+    Args:
+        rows: Rows of the places, row by row.
+        columns: Their columns; no place comes twice.
+    """
+    from scipy.sparse import coo_array  # noqa: PLC0415 - heavy
+    from scipy.sparse.csgraph import connected_components  # noqa: PLC0415 - heavy
+
+    if rows.size == 0:
+        return np.empty(0, dtype=np.int32)
+    width = int(columns.max()) + 3  # no neighbour wraps into the next row
+    keys = rows * width + columns
     ones, others = [], []
     for away in (1, width - 1, width, width + 1):
         at = np.minimum(np.searchsorted(keys, keys + away), keys.size - 1)
-        touching = np.flatnonzero(keys[at] == keys + away)
-        ones.append(touching)
-        others.append(at[touching])
+        near = np.flatnonzero(keys[at] == keys + away)
+        ones.append(near)
+        others.append(at[near])
     pairs = (np.concatenate(ones), np.concatenate(others))
     links = coo_array((np.ones(pairs[0].size, dtype=bool), pairs), shape=(keys.size, keys.size))
-    count, labels = connected_components(links, directed=False)
-    order = np.argsort(labels, kind="stable")
-    groups = np.split(places[order], np.cumsum(np.bincount(labels, minlength=count))[:-1])
-    found = [Cluster(tuple((int(x), int(y)) for y, x in group)) for group in groups if len(group) > 1]
-    return tuple(sorted(found, key=lambda c: (-c.size, c.pixels)))
+    return np.asarray(connected_components(links, directed=False)[1], dtype=np.int32)
 
 
 def _checked(frame: NDArray[Any], k: float) -> NDArray[Any]:
@@ -298,18 +310,28 @@ class _Variances:
         self._kind: Any = np.float32 if all(short_codes(frame) for frame in frames) else np.float64
 
     def __getitem__(self, key: Any) -> NDArray[np.float32]:
+        if len(self._frames) == 2:
+            return self._of_two(key)
         pieces: list[NDArray[Any]] = []
         for frame, factor, level in zip(self._frames, self._factors, self._levels, strict=True):
             piece = np.subtract(frame[key], self._kind(level), dtype=self._kind)
             if factor != 1:
                 piece *= self._kind(factor)
             pieces.append(piece)
-        if len(pieces) == 2:
-            apart = np.subtract(pieces[0], pieces[1], out=pieces[0])
-            apart *= self._kind(sqrt(0.5))
-            apart *= apart
-            return np.asarray(apart, dtype=np.float32)
         return np.asarray(np.var(pieces, axis=0, ddof=1), dtype=np.float32)
+
+    def _of_two(self, key: Any) -> NDArray[np.float32]:
+        """Return half the squared difference; levels of equal frames cancel but for what float32 leaves of them."""
+        (one, other), (factor, second) = self._frames, self._factors * sqrt(0.5)
+        apart, less = one[key].astype(self._kind), other[key].astype(self._kind)
+        apart *= self._kind(factor)
+        less *= self._kind(second)
+        apart -= less
+        between = float(factor * self._levels[0] - second * self._levels[1])
+        if between:
+            apart -= self._kind(between)
+        apart *= apart
+        return np.asarray(apart, dtype=np.float32)
 
 
 def _equal(frames: Frames) -> tuple[Places, Places]:

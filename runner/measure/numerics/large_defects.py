@@ -26,7 +26,7 @@ from numpy.typing import NDArray
 from scipy import ndimage
 
 from runner.measure.numerics.defect_ground import Ground, ground, local_medians, surface_strips
-from runner.measure.numerics.defects import Defect, K
+from runner.measure.numerics.defects import Defect, K, touching
 from runner.measure.numerics.two_way_layout import STRIP
 
 Real = NDArray[np.float64]
@@ -42,6 +42,8 @@ ORDER = 4
 TRUST = 0.5
 """Where the background departs from the polynomial, it is trusted to this share of that: near borders the median over
 the window is one-sided."""
+SPARSE = 0.01
+"""Share of cells below which they are joined one by one, else in a walk over all cells; the result is the same."""
 EXACT = 1e-6
 """Significance is at most one over this, where there is no noise at all."""
 
@@ -151,9 +153,9 @@ def blemishes(flat: NDArray[Any], contrast: float, size: float, *, k: float = K,
     away = _joined(away, joined)
     of = ground(away)
     doubt = replace(doubt, noise=np.hypot(doubt.noise, 1.4826 * np.median(np.abs(of.level - np.median(of.level)))))
-    spots = [one for sign in (1, -1) for one in _spots(away, sign, contrast, k, of, doubt)]
+    spots = [one for sign in (1, -1) for one in _spots(away, sign, contrast, k, of, doubt) if cell * one.width >= size]
     found = [_blemish(one, wide, cell, max(1, joined)) for one in spots]
-    found = sorted((one for one in found if one.size >= size), key=lambda one: -abs(one.contrast))
+    found.sort(key=lambda one: -abs(one.contrast))
     return Blemishes(tuple(found), max(contrast, k * float(np.median(of.noise))), cell)
 
 
@@ -277,36 +279,56 @@ class _Spot:
     sign: int
     """-1 for a dark one."""
 
+    @property
+    def width(self) -> float:
+        """Side of the square of the same area, at most the short side of its bounding box, cells."""
+        return min(sqrt(self.rows.size), float(np.ptp(self.rows) + 1), float(np.ptp(self.columns) + 1))
+
 
 def _spots(cells: NDArray[np.float32], sign: int, contrast: float, k: float, of: Ground, doubt: Ground) -> list[_Spot]:
     """Return the groups of cells above the contrast.
 
     Cells that are joined by others above half the contrast are one group: noise tears a spot at its border.
     """
-    away = cells if sign > 0 else -cells
-    rows, columns = np.nonzero(away > contrast)
+    width = cells.shape[1]
+    rows, columns = np.divmod(np.flatnonzero(_beyond_contrast(cells, sign, contrast)), width)
     noise, off = of.noise_at(rows, columns), doubt.noise_at(rows, columns)
-    keep = away[rows, columns] > np.maximum(k * noise, off)
-    rows, columns, noise, off = rows[keep], columns[keep], noise[keep], off[keep]
+    depth = np.asarray(sign * cells[rows, columns], dtype=np.float64)
+    keep = depth > np.maximum(k * noise, off)
+    rows, columns, noise, off, depth = rows[keep], columns[keep], noise[keep], off[keep], depth[keep]
     if rows.size == 0:
         return []
-    labels, _ = ndimage.label(away > max(contrast, k * float(np.median(of.noise))) / 2, np.ones((3, 3)))
-    boxes = ndimage.find_objects(labels)
-    own = labels[rows, columns]
+    joined = _beyond_contrast(cells, sign, max(contrast, k * float(np.median(of.noise))) / 2)
+    places, labels = _groups(joined)
+    areas = np.bincount(labels)
+    own = labels[np.searchsorted(places, rows * width + columns)]
+    order = np.argsort(own, kind="stable")
+    numbers, starts = np.unique(own[order], return_index=True)
     spots: list[_Spot] = []
-    for number in np.unique(own).tolist():
-        box, mine = boxes[number - 1], own == number
+    for number, mine in zip(numbers.tolist(), np.split(order, starts[1:]), strict=True):
         y, x = rows[mine], columns[mine]
         first = int(y.min()), int(x.min())
-        area = int(np.count_nonzero(labels[box] == number))
-        spots.append(_Spot(first, y - first[0], x - first[1], away[y, x], noise[mine], off[mine], area, sign))
+        size = int(areas[number])
+        spots.append(_Spot(first, y - first[0], x - first[1], depth[mine], noise[mine], off[mine], size, sign))
     return spots
+
+
+def _beyond_contrast(cells: NDArray[np.float32], sign: int, contrast: float) -> NDArray[np.bool_]:
+    return np.asarray(cells > contrast if sign > 0 else cells < -contrast)
+
+
+def _groups(joined: NDArray[np.bool_]) -> tuple[NDArray[np.intp], NDArray[Any]]:
+    """Return the cells that hold, counted row by row, and the number of the group of touching ones that each is in."""
+    places = np.flatnonzero(joined)
+    if places.size < SPARSE * joined.size:
+        return places, touching(*np.divmod(places, joined.shape[1]))
+    return places, ndimage.label(joined, np.ones((3, 3)))[0].ravel()[places]
 
 
 def _blemish(spot: _Spot, window: float, cell: int, joined: int) -> Blemish:
     y = float(np.average(spot.rows, weights=spot.depth))
     x = float(np.average(spot.columns, weights=spot.depth))
-    size = min(sqrt(spot.rows.size), float(np.ptp(spot.rows) + 1), float(np.ptp(spot.columns) + 1))
+    size = spot.width
     middle = np.hypot(spot.rows - y, spot.columns - x) <= max(size / 4, 0.75)
     if not np.any(middle):  # bent round its own middle
         middle[:] = True

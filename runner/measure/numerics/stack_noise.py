@@ -230,7 +230,7 @@ def mean_frame(frames: Frames) -> NDArray[np.float32]:
         np.copyto(piece, frames[0][y : y + height])
         for frame in frames[1:]:
             piece += frame[y : y + height]
-        np.divide(piece, len(frames), out=mean[y : y + height], casting="same_kind")
+        np.multiply(piece, 1 / len(frames), out=mean[y : y + height], casting="same_kind")
     return mean
 
 
