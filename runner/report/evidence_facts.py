@@ -12,6 +12,9 @@ MOST_REGIONS = 12
 MOST_SPOTS = 40
 """Defects and the like that a page lists."""
 
+TROUBLE = frozenset({"does not conform", "cannot decide"})
+"""Verdicts whose evidence comes first."""
+
 
 @dataclass(frozen=True)
 class PictureFact:
@@ -79,10 +82,17 @@ def plain_curve_facts(document: Mapping[str, Any]) -> tuple[tuple[CurveFact, ...
 
 
 def spot_facts(document: Mapping[str, Any]) -> tuple[tuple[tuple[str, str, str, str], ...], int]:
-    """Return spots as rows of kind, place in px, where and words, and how many are left out."""
-    spots = document.get("spots", [])
+    """Return spots as rows of kind, place in px, where and words, and how many are left out; failing counts first."""
+    spots = sorted(document.get("spots", []), key=lambda spot: not _counted(spot, document["checks"]))
     rows = tuple((s["kind"], f"{s['x']:g}, {s['y']:g}", _where(s), s["words"]) for s in spots[:MOST_SPOTS])
     return rows, len(spots) - len(rows)
+
+
+def _counted(spot: Mapping[str, Any], checks: Sequence[Mapping[str, Any]]) -> bool:
+    """Tell whether a count that a spot enters is among what does not conform or cannot be decided."""
+    mine = [c for c in checks if all(c[key] == spot[key] for key in ("capture", "attempt", "channel"))]
+    counts = {spot["kind"].replace(" ", "_") + ending for ending in ("s", "es")}
+    return any(c["quantity"] in counts and c["where"] == spot["region"] and c["verdict"] in TROUBLE for c in mine)
 
 
 def _where(one: Mapping[str, Any]) -> str:
@@ -142,7 +152,7 @@ def _checks(curve: Mapping[str, Any], checks: Sequence[Mapping[str, Any]]) -> li
 
 def _trouble(curve: Mapping[str, Any], checks: Sequence[Mapping[str, Any]]) -> int:
     words = {c["verdict"] for c in _checks(curve, checks)}
-    return 0 if words & {"does not conform", "cannot decide"} else 1
+    return 0 if words & TROUBLE else 1
 
 
 def _companion(curve: Mapping[str, Any], curves: Sequence[Mapping[str, Any]], name: str) -> Mapping[str, Any] | None:

@@ -4,6 +4,7 @@ Drawn from the results alone. As SVG a map of a few thousand cells would take se
 """
 
 from collections.abc import Mapping, Sequence
+from math import ceil, log10
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
@@ -13,7 +14,7 @@ from runner.report.pictures import OUTLINE, SHADOW, png
 from runner.resources import folder
 
 if TYPE_CHECKING:
-    from PIL import ImageDraw
+    from PIL import ImageDraw, ImageFont
 
 SIDE = 460
 """px: longer side of the map itself."""
@@ -24,6 +25,10 @@ STEPS = 48
 INK, GROUND = (28, 33, 38), (255, 255, 255)
 SIZE = 19
 """px: letters; 6 pt where the picture is 76 mm wide."""
+LEAST_SPAN = {"%": 5.0}
+"""By unit: a map of a narrower range is shown on this one, so that an even field looks even."""
+Rectangle = tuple[float, float, float, float]
+"""Left, top, right, bottom, px."""
 
 
 def map_picture(area: Mapping[str, Any]) -> bytes:
@@ -35,7 +40,7 @@ def map_picture(area: Mapping[str, Any]) -> bytes:
     from PIL import Image, ImageDraw  # noqa: PLC0415 - heavy
 
     values = np.array(area["values"], dtype=np.float64)
-    low, high = float(values.min()), float(values.max())
+    low, high = _span(float(values.min()), float(values.max()), str(area["values_in"]))
     x, y = _ends(area["x"]), _ends(area["y"])
     scale = SIDE / max(x[1] - x[0], y[1] - y[0])
     size = max(60, round((x[1] - x[0]) * scale)), max(60, round((y[1] - y[0]) * scale))
@@ -46,10 +51,18 @@ def map_picture(area: Mapping[str, Any]) -> bytes:
     draw = ImageDraw.Draw(picture)
     _axes(draw, size, (x, y), str(area["axes_in"]))
     _scale(draw, size, (low, high), str(area["values_in"]))
-    for across, down, words in area["marks"]:
-        place = LEFT + (across - x[0]) / (x[1] - x[0]) * size[0], TOP + (down - y[0]) / (y[1] - y[0]) * size[1]
-        _mark(draw, place, str(words), LEFT + size[0])
+    marks = [
+        (LEFT + (across - x[0]) / (x[1] - x[0]) * size[0], TOP + (down - y[0]) / (y[1] - y[0]) * size[1], str(words))
+        for across, down, words in area["marks"]
+    ]
+    _marks(draw, marks, (LEFT, TOP, LEFT + size[0], TOP + size[1]))
     return png(picture)
+
+
+def _span(low: float, high: float, unit: str) -> tuple[float, float]:
+    """Return what black and white stand for."""
+    lacking = LEAST_SPAN.get(unit, 0.0) - (high - low)
+    return (low - lacking / 2, high + lacking / 2) if lacking > 0 else (low, high)
 
 
 def _ends(places: Sequence[float]) -> tuple[float, float]:
@@ -97,16 +110,51 @@ def _scale(draw: "ImageDraw.ImageDraw", size: tuple[int, int], ends: tuple[float
         draw.rectangle((left, top, left + 18, top + high / STEPS), fill=(grey, grey, grey))
     draw.rectangle((left, TOP, left + 18, TOP + high), outline=INK)
     for share, value in ((0.0, ends[0]), (1.0, ends[1])):
-        _text(draw, (left + 24, TOP + (1 - share) * high), _number(value), "lm")
+        _text(draw, (left + 24, TOP + (1 - share) * high), _number(value, ends[1] - ends[0]), "lm")
     _text(draw, (left, TOP - 14), "" if unit == "1" else unit, "lb")
 
 
-def _mark(draw: "ImageDraw.ImageDraw", place: tuple[float, float], words: str, right: float) -> None:
-    x, y = place
-    for colour, width in ((SHADOW, 5), (OUTLINE, 3)):
-        draw.ellipse((x - 9, y - 9, x + 9, y + 9), outline=colour, width=width)
-    near = x > right - 60
-    _text(draw, (x - 14 if near else x + 14, y - 14), words, "rb" if near else "lb", OUTLINE, SHADOW)
+def _marks(draw: "ImageDraw.ImageDraw", marks: Sequence[tuple[float, float, str]], inside: Rectangle) -> None:
+    """Draw rings at their places, and their words on dark labels beside them, none over a ring or another label."""
+    for x, y, _ in marks:
+        for colour, width in ((SHADOW, 5), (OUTLINE, 3)):
+            draw.ellipse((x - 9, y - 9, x + 9, y + 9), outline=colour, width=width)
+    taken = [(x - 10, y - 10, x + 10, y + 10) for x, y, _ in marks]
+    for x, y, words in marks:
+        if words:
+            label = _free(x, y, draw.textbbox((0, 0), words, font=_font(), anchor="lt"), taken, inside)
+            taken.append(label)
+            draw.rectangle(label, fill=SHADOW)
+            _text(draw, ((label[0] + label[2]) / 2, (label[1] + label[3]) / 2), words, "mm", OUTLINE)
+
+
+def _free(x: float, y: float, letters: Rectangle, taken: Sequence[Rectangle], inside: Rectangle) -> Rectangle:
+    """Return where a label covers least of what is taken, the nearer places first; inside the map if it can be."""
+    wide, high = letters[2] - letters[0] + 8, letters[3] - letters[1] + 8
+    best, least = (x, y, x + wide, y + high), float("inf")
+    for away in (12, 12 + high, 12 + 2 * high):
+        left, right, above, below = x - away - wide, x + away, y - away - high, y + away
+        middle = x - wide / 2, y - high / 2
+        straight = (middle[0], above), (middle[0], below), (right, middle[1]), (left, middle[1])
+        for at in (*straight, (right, above), (left, above), (right, below), (left, below)):
+            label = (*at, at[0] + wide, at[1] + high)
+            out = wide * high - _shared(label, inside)
+            covered = 2 * out + sum(_shared(label, other) for other in taken)
+            if covered < least - 1e-9:
+                best, least = label, covered
+    return best
+
+
+def _shared(one: Rectangle, other: Rectangle) -> float:
+    """Return the area that two rectangles have in common, px²."""
+    across, down = min(one[2], other[2]) - max(one[0], other[0]), min(one[3], other[3]) - max(one[1], other[1])
+    return max(0.0, across) * max(0.0, down)
+
+
+def _font() -> "ImageFont.FreeTypeFont":
+    from PIL import ImageFont  # noqa: PLC0415 - heavy
+
+    return ImageFont.truetype(str(folder("templates") / "fonts" / "DejaVuSans.ttf"), SIZE)
 
 
 def _text(
@@ -115,13 +163,12 @@ def _text(
     words: str,
     anchor: str,
     colour: tuple[int, int, int] = INK,
-    around: tuple[int, int, int] | None = None,
 ) -> None:
-    from PIL import ImageFont  # noqa: PLC0415 - heavy
-
-    font = ImageFont.truetype(str(folder("templates") / "fonts" / "DejaVuSans.ttf"), SIZE)
-    draw.text(place, words, fill=colour, font=font, anchor=anchor, stroke_width=2 if around else 0, stroke_fill=around)
+    draw.text(place, words, fill=colour, font=_font(), anchor=anchor)
 
 
-def _number(value: float) -> str:
-    return f"{value:.3g}".replace("-", "\N{MINUS SIGN}")
+def _number(value: float, span: float = 0.0) -> str:
+    """Return a number with three digits, or as many as a tenth of the span needs."""
+    digits = 3 if not span else max(3, ceil(log10(max(abs(value), span) / span)) + 2)
+    text = f"{value:.{digits}g}" if not span else f"{value:#.{digits}g}".rstrip(".")
+    return text.replace("-", "\N{MINUS SIGN}")

@@ -140,7 +140,25 @@ def test_other_curves_are_drawn_as_they_are() -> None:
 def test_spots_are_rows() -> None:
     """Each spot says what it is, where in px, in which capture, and how far it departs; forty are listed."""
     spot = {"kind": "hot pixel", "x": 12.0, "y": 3.5, "words": "9 times the noise"} | {"region": "", "channel": "mono"}
-    rows, left = spot_facts({"spots": [spot | {"capture": "dark", "attempt": 1}] * 41})
+    rows, left = spot_facts({"spots": [spot | {"capture": "dark", "attempt": 1}] * 41, "checks": []})
 
     assert rows[0] == ("hot pixel", "12, 3.5", "whole frame (dark)", "9 times the noise")
     assert (len(rows), left) == (40, 1)
+
+
+def test_spots_of_a_failing_count_come_first() -> None:
+    """Of more defects than a page lists, those for which the unit fails are never the ones left out."""
+    at = {"region": "", "channel": "mono", "attempt": 1, "capture": "flat", "x": 1.0, "y": 1.0, "words": ""}
+    spots = [at | {"kind": kind} for kind in [*["bright pixel"] * 50, "blemish", "dead pixel", "defective column"]]
+    check = {"capture": "flat", "attempt": 1, "channel": "mono", "where": "", "verdict": "does not conform"}
+    checks = [
+        check | {"quantity": "defective_columns"},
+        check | {"quantity": "blemishes", "verdict": "cannot decide"},
+        check | {"quantity": "dead_pixels", "capture": "dark"},
+        check | {"quantity": "bright_pixels", "verdict": "conforms"},
+    ]
+
+    rows, left = spot_facts({"spots": spots, "checks": checks})
+
+    assert [row[0] for row in rows[:3]] == ["blemish", "defective column", "bright pixel"]
+    assert (len(rows), left) == (40, 13)

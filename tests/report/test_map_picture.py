@@ -4,9 +4,11 @@ import io
 from typing import Any
 
 import numpy as np
+import pytest
 from PIL import Image
+from scipy.ndimage import find_objects, label
 
-from runner.report.map_picture import LEFT, TOP, map_picture
+from runner.report.map_picture import LEFT, TOP, _number, map_picture
 from runner.report.pictures import OUTLINE
 
 
@@ -52,6 +54,59 @@ def test_a_mark_lies_at_its_place() -> None:
 
     assert abs(x.mean() - place[0]) < 1.5
     assert abs(y.mean() - place[1]) < 1.5
+
+
+def _labels(marks: list[list[Any]]) -> list[tuple[int, int, int, int]]:
+    """Return top, left, bottom, right of each dark label on a white map with marks."""
+    white = np.ones((51, 51))
+    white[:, 25] = 0.8  # else the map is one value, drawn grey
+    white[50, 25] = 0.0
+    dark = _pixels(_map(white, marks=marks)).max(axis=2) < 24
+    groups, _ = label(dark)
+    boxes = [(y.start, x.start, y.stop, x.stop) for y, x in find_objects(groups)]
+    return [box for box in boxes if 18 <= box[2] - box[0] < 60 and 18 <= box[3] - box[1] < 300]
+
+
+@pytest.mark.parametrize("along", [0, 1])
+def test_words_of_near_marks_do_not_cover_one_another(along: int) -> None:
+    """Three marks 0.05 cy/px apart keep three labels, none over another and none over a ring's middle."""
+    places = [(0.05 * n, 0.0)[:: 1 - 2 * along] for n in (-1, 0, 1)]
+    middles = [(TOP + (y + 0.51) / 1.02 * 460, LEFT + (x + 0.51) / 1.02 * 460) for x, y in places]
+
+    found = _labels([[*place, words] for place, words in zip(places, ("-f", "DC", "+f"), strict=True)])
+
+    assert len(found) == 3
+    for top, left, bottom, right in found:
+        assert not any(top - 9 < y < bottom + 9 and left - 9 < x < right + 9 for y, x in middles)
+
+
+def test_words_at_a_border_stay_on_the_map() -> None:
+    """A long label of a mark in any corner lies inside the map."""
+    for x, y in ((-0.5, -0.5), (0.5, -0.5), (-0.5, 0.5), (0.5, 0.5)):
+        ((top, left, bottom, right),) = _labels([[x, y, "brightest 108.8 %"]])
+
+        assert right - left > 100
+        assert TOP <= top < bottom <= TOP + 461
+        assert LEFT <= left < right <= LEFT + 461
+
+
+def test_an_even_field_looks_even() -> None:
+    """A map of 0.1 % is not stretched from black to white: its greys differ by 0.1 of 5 % at most, two steps of 48."""
+    values = 100 + 0.1 * np.random.default_rng(2).random((9, 11))
+
+    shown = _pixels(_map(values, values_in="%"))[TOP + 5 : TOP + 440, LEFT + 5 : LEFT + 440]
+    stretched = _pixels(_map(values))[TOP + 5 : TOP + 440, LEFT + 5 : LEFT + 440]
+
+    assert np.ptp(shown) <= 2 * 225 / 47 + 1
+    assert np.ptp(stretched) == 225
+
+
+@pytest.mark.parametrize(
+    ("value", "span", "text"), [(100.0, 0.1, "100.00"), (97.56, 5.0, "97.56"), (-81.7, 81.7, "\N{MINUS SIGN}81.7")]
+)
+def test_ends_of_a_scale_have_the_digits_that_tell_them_apart(value: float, span: float, text: str) -> None:
+    """Two ends that lie near each other are not both printed as 100."""
+    assert _number(value, span) == text
 
 
 def test_no_word_is_cut_off() -> None:
