@@ -28,6 +28,7 @@ from runner.measure.evidence import CaptureEvidence, RegionFact, UnitEvidence
 from runner.measure.plan import Plan, bind
 from runner.report import glyphs, store
 from runner.report.document import RunFacts, to_document
+from runner.report.station_words import station_data
 from runner.spec.build import read_spec
 from runner.spec.model import Spec, Station
 from runner.spec.station import read_station
@@ -224,8 +225,9 @@ def measure_unit(
         known = {c.capture.name: survey.faults(unit.serial, attempt.number, c.capture.name) for c in plan.captures}
         load = _loader(plan, unit, attempt, survey)
         parts.append(session.measure_attempt(plan, attempt.number, load, known, painter=paint, faults=faults))
+    marked, said = survey.simulated(unit.serial), survey.said(unit.serial)
     evidence = session.unit_evidence(unit.serial, parts)
-    evidence = replace(evidence, remarks=survey.remarks(unit.serial), marked=survey.simulated(unit.serial))
+    evidence = replace(evidence, remarks=survey.remarks(unit.serial), marked=marked, station=said)
     return evidence, pictures, faults.tracebacks
 
 
@@ -329,8 +331,9 @@ def _kept(job: Job, unit: UnitFolder) -> UnitResult | None:
         for a in unit.attempts
         for file, pair in job.survey.digests(unit.serial, a.number).items()
     }
-    faulty = any(place[0] == unit.serial for place in job.survey.sentences)  # a manifest or sidecar may have changed
-    if then != now or faulty or any(c["file_faults"] for c in document["captures"]):
+    faulty = any(place[0] == unit.serial for place in job.survey.sentences)
+    said = station_data(job.survey.said(unit.serial)) != document.get("station_files", [])
+    if then != now or faulty or said or any(c["file_faults"] for c in document["captures"]):
         return None
     return replace(_result(document, folder, fault=False), kept=True)
 

@@ -114,6 +114,10 @@ class Survey:
         inferred = f"Without a manifest of attempt {attempts} its completeness is inferred from the files themselves"
         return (*((f"{inferred}.",) if attempts else ()), *(f"{flag}." for flag in flags))
 
+    def said(self, serial: str) -> StationWords:
+        """Return what manifests and sidecars said of a unit."""
+        return self.station.get(serial, StationWords())
+
     def simulated(self, serial: str) -> bool:
         """Tell whether one of a unit's frames is marked as rehearsed."""
         return any(f.simulated for f in self.files if f.serial == serial)

@@ -234,10 +234,11 @@ def _disagreement(name: str, value: Any, source: str, capture: Capture) -> str:
     high = agreed.at_most is not None and found > agreed.at_most + slack
     if not (low or high):
         return ""
-    return f"{source}: {name} is {units.spell(amount)}, the spec asks for {_words(agreed)}; {CAPTURE_AGAIN}"
+    return f"{source}: {name} is {units.spell(amount)}, the spec asks for {agreed_words(agreed)}; {CAPTURE_AGAIN}"
 
 
-def _words(agreed: Agreed) -> str:
+def agreed_words(agreed: Agreed) -> str:
+    """Return what a field must be, as a person would write it."""
     low, high = (
         "" if end is None else units.spell(Amount(end, agreed.unit)) for end in (agreed.at_least, agreed.at_most)
     )

@@ -1,7 +1,8 @@
 """Everything that was found out about one unit before anyone judges it."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
+from runner.capture.station import StationWords
 from runner.measure.reading import Curve, Map, Reading, Spot
 
 
@@ -75,6 +76,8 @@ class UnitEvidence:
     """What was found out about its files that changes no verdict, e.g. that completeness is only inferred."""
     marked: bool = False
     """One of its files is marked as rehearsed, though nothing of it may be measured."""
+    station: StationWords = field(default_factory=StationWords)
+    """What its manifests and sidecars said."""
 
     @property
     def simulated(self) -> bool:

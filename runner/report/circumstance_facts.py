@@ -1,10 +1,12 @@
 """The circumstances as they appear on a page: captures, frames, methods, uncertainty, deviations, machine."""
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 MOST_ROWS = 60
 """Rows of a table on paper; all others stand in results.json."""
+LATIN_ENDS = 0x250
+"""Characters up to here are printed as they are."""
 
 Document = Mapping[str, Any]
 Pair = tuple[str, str]
@@ -58,6 +60,40 @@ def frame_fact(capture: Mapping[str, Any], frame: Mapping[str, Any]) -> tuple[st
     rows, columns = frame["shape"][:2]
     size = f"{columns} × {rows} {frame['dtype']}" + (", simulated" if frame["simulated"] else "")
     return f"{attempt}{frame['file']}{page}", size, frame["sha256"].removeprefix("sha256:")
+
+
+def station_file_fact(one: Mapping[str, Any]) -> tuple[str, str, str]:
+    """Return file, kind and digest of a manifest or sidecar."""
+    attempt = "" if one["attempt"] == 1 else f"attempt {one['attempt']}: "
+    return f"{attempt}{one['file']}", one["kind"], one["sha256"] or "could not be read"
+
+
+def said_facts(document: Document) -> tuple[tuple[str, tuple[Pair, ...]], ...]:
+    """Return, by capture and attempt, what its sidecars had to say and what they said, title and rows."""
+    tables = []
+    for capture in document["captures"]:
+        sidecar = capture.get("sidecar") or {"demanded": [], "said": []}
+        rows = [("demanded", ", ".join(f"{name}: {words}" for name, words in sidecar["demanded"]) or "nothing")]
+        rows += [(said["file"], _fields(said["fields"])) for said in sidecar["said"]]
+        if len(rows) > 1 or sidecar["demanded"]:
+            attempt = "" if capture["attempt"] == 1 else f", attempt {capture['attempt']}"
+            left = len(rows) - MOST_ROWS
+            more = [(f"{left} more frames", "stand in results.json")] if left > 0 else []
+            tables.append((capture_title(capture) + attempt, (*rows[:MOST_ROWS], *more)))
+    return tuple(tables)
+
+
+def _fields(fields: Sequence[Sequence[str]]) -> str:
+    """Return fields with their values, those of one sidecar together."""
+    by_source: dict[str, list[str]] = {}
+    for name, value, source in fields:
+        by_source.setdefault(source, []).append(f"{name} {_printable(value)}")
+    return "; ".join(f"{', '.join(words)} ({source})" for source, words in by_source.items())
+
+
+def _printable(text: str) -> str:
+    """Return a station's words with whatever the report's fonts may lack spelled as its number."""
+    return "".join(c if c.isprintable() and ord(c) < LATIN_ENDS else f"\\u{ord(c):04x}" for c in text)
 
 
 def methods_fact(document: Document) -> tuple[tuple[str, str, str], ...]:

@@ -30,7 +30,7 @@ def conditions(camera: Camera, optics: Optics, chart: Chart) -> list[list[str]]:
         ("numerical aperture", _stated(optics.numerical_aperture)),
         ("wavelength", _stated(optics.wavelength_um, "µm")),
         ("focal length", _stated(optics.focal_length_mm, "mm")),
-        ("magnification", _stated(optics.magnification, "×")),
+        ("magnification", _factor(optics.magnification)),
         ("chart", " ".join(part for part in (chart.name, chart.serial) if part)),
         ("chart calibration due", chart.due),
     ]
@@ -49,6 +49,14 @@ def _layout(layout: Layout) -> str:
 
 def _stated(value: float | None, unit: str = "") -> str:
     return "" if value is None else f"{value:g} {unit}".strip()
+
+
+def _factor(value: float | None) -> str:
+    """Return a magnification as one thinks of it: `20 ×`, and below one as the fraction that it is, `1/120 ×`."""
+    if value is None or value >= 1:
+        return _stated(value, "×")
+    parts = float(f"{1 / value:.4g}")
+    return f"1/{parts:g} ×" if abs(value * parts - 1) < 1e-6 else f"{value:.6g} ×"
 
 
 def methods(plan: Plan) -> list[dict[str, Any]]:
@@ -85,4 +93,25 @@ def deviations(plan: Plan, evidence: UnitEvidence) -> list[str]:
         rows.append(
             "At least one frame is marked as simulated: this report shows a rehearsal and is no evidence of a unit."
         )
-    return [*rows, *evidence.remarks]
+    return [*rows, *_lost_companions(plan, evidence), *evidence.remarks]
+
+
+def _lost_companions(plan: Plan, evidence: UnitEvidence) -> list[str]:
+    """Say of every capture which companion it was measured without, and why: that must not look like having none."""
+    there = {(c.name, c.attempt): c for c in evidence.captures}
+    uses = {capture.name: capture.uses for capture in plan.spec.captures}
+    rows = []
+    for capture in evidence.captures:
+        if capture.faults or not capture.frames:
+            continue
+        for role, name in uses.get(capture.name, {}).items():
+            other = there.get((name, capture.attempt))
+            if other is not None and other.frames and not other.faults:
+                continue
+            why = other.faults[0] if other is not None and other.faults else "it has no frames"
+            attempt = "" if capture.attempt == 1 else f" in attempt {capture.attempt}"
+            rows.append(
+                f"'{capture.name}' was measured without its companion '{name}' ({role}){attempt}: {why}. What is taken "
+                "from it otherwise is as the spec states it, or was not measured."
+            )
+    return rows

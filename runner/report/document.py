@@ -11,12 +11,15 @@ from importlib import metadata
 from typing import Any
 
 import runner
+from runner.capture.station import StationWords
 from runner.errors import VerificationRefused
 from runner.judge.verdict import Check, Judgement
 from runner.measure.evidence import CaptureEvidence, FrameFact, RegionFact, UnitEvidence
 from runner.measure.plan import Plan
-from runner.measure.reading import Component, Curve, Map, Reading, Refusal, Spot
+from runner.measure.reading import Component, Reading, Refusal, Spot
 from runner.report.conditions import conditions, deviations, methods
+from runner.report.plotted import curve_back, curve_data, map_back, map_data
+from runner.report.station_words import sidecar_data, station_back, station_data
 from runner.spec.build import from_expanded
 from runner.spec.model import Amount, Spec, Station
 from runner.spec.revision import canonical_json
@@ -124,14 +127,15 @@ def to_document(
         "because": judgement.because,
         "reasons": list(judgement.reasons),
         "next": judgement.next,
-        "captures": [_capture(plan, capture, judgement) for capture in evidence.captures],
+        "captures": [_capture(plan, capture, judgement, evidence.station) for capture in evidence.captures],
         "readings": [_reading(reading) for reading in evidence.readings],
         "checks": [_check(check) for check in judgement.checks],
-        "curves": [_curve(curve) for curve in evidence.curves],
-        "maps": [_map(one) for one in evidence.maps],
+        "curves": [curve_data(curve) for curve in evidence.curves],
+        "maps": [map_data(one) for one in evidence.maps],
         "spots": [asdict(one) for one in evidence.spots],
         "pictures": [dict(picture) for picture in pictures],
         "methods": methods(plan),
+        "station_files": station_data(evidence.station),
         "deviations": deviations(plan, evidence),
         "warnings": [str(warning) for warning in spec.warnings],
         "remarks": list(evidence.remarks),
@@ -175,11 +179,12 @@ def from_document(document: Mapping[str, Any]) -> tuple[Spec, UnitEvidence]:
             document["unit"]["serial"],
             tuple(_capture_back(c) for c in document["captures"]),
             tuple(_reading_back(r) for r in document["readings"]),
-            tuple(_curve_back(c) for c in document["curves"]),
-            tuple(_map_back(m) for m in document.get("maps", ())),
+            tuple(curve_back(c) for c in document["curves"]),
+            tuple(map_back(m) for m in document.get("maps", ())),
             tuple(Spot(**s) for s in document.get("spots", ())),
             tuple(str(remark) for remark in document.get("remarks", ())),
             bool(document["simulated"]) and not all(c["frames"] for c in document["captures"]),
+            station_back(document),
         )
     except (KeyError, TypeError, ValueError, AttributeError) as error:
         raise VerificationRefused(f"it cannot be read back: {type(error).__name__}: {error}") from error
@@ -206,7 +211,7 @@ def _amounts_back(parameters: Mapping[str, Any]) -> dict[str, Amount]:
     return {name: Amount(float(value), str(unit)) for name, (value, unit) in parameters.items()}
 
 
-def _capture(plan: Plan, capture: CaptureEvidence, judgement: Judgement) -> dict[str, Any]:
+def _capture(plan: Plan, capture: CaptureEvidence, judgement: Judgement, station: StationWords) -> dict[str, Any]:
     state = next(s for s in judgement.captures if (s.name, s.attempt) == (capture.name, capture.attempt))
     asked = plan.spec.capture(capture.name)
     return {
@@ -239,6 +244,7 @@ def _capture(plan: Plan, capture: CaptureEvidence, judgement: Judgement) -> dict
             for r in capture.regions
         ],
         "conditions": conditions(asked.camera, asked.optics, asked.chart),
+        "sidecar": sidecar_data(asked, capture.attempt, station),
         "chart": {"name": asked.chart.name, "serial": asked.chart.serial, "due": asked.chart.due},
     }
 
@@ -355,46 +361,3 @@ def _check(check: Check) -> dict[str, Any]:
         "reason": check.reason,
         "steps": check.steps,
     }
-
-
-def _curve(curve: Curve) -> dict[str, Any]:
-    return {
-        "capture": curve.capture,
-        "attempt": curve.attempt,
-        "region": curve.region,
-        "channel": curve.channel,
-        "name": curve.name,
-        "estimator": curve.estimator,
-        "x": list(curve.x),
-        "y": list(curve.y),
-        "u": list(curve.u),
-        "x_in": curve.x_in,
-        "y_in": curve.y_in,
-    }
-
-
-def _curve_back(data: Mapping[str, Any]) -> Curve:
-    return Curve(
-        data["region"],
-        data["name"],
-        tuple(data["x"]),
-        tuple(data["y"]),
-        tuple(data["u"]),
-        data["x_in"],
-        data["y_in"],
-        data["capture"],
-        int(data["attempt"]),
-        data["channel"],
-        data["estimator"],
-    )
-
-
-def _map(area: Map) -> dict[str, Any]:
-    plain = {"x": list(area.x), "y": list(area.y), "values": [list(row) for row in area.values]}
-    return asdict(area) | plain | {"marks": [list(mark) for mark in area.marks]}
-
-
-def _map_back(data: Mapping[str, Any]) -> Map:
-    rows = tuple(tuple(row) for row in data["values"])
-    marks = tuple((float(x), float(y), str(words)) for x, y, words in data["marks"])
-    return Map(**(dict(data) | {"x": tuple(data["x"]), "y": tuple(data["y"]), "values": rows, "marks": marks}))

@@ -39,8 +39,10 @@ from runner.report.circumstance_facts import (
     frame_fact,
     machine_fact,
     methods_fact,
+    said_facts,
     sentence,
     station_fact,
+    station_file_fact,
     uncertainty_fact,
 )
 from runner.report.document import canonical
@@ -154,8 +156,12 @@ class Report:
     """Station and instruments."""
     captures: tuple[tuple[str, str, str, str], ...]
     """Capture, attempt, state, remarks."""
+    said: tuple[TableFact, ...]
+    """By capture: what its sidecars had to say, and what they said of each frame."""
     frames: tuple[tuple[str, str, str], ...]
     """File, size, digest."""
+    station_files: tuple[tuple[str, str, str], ...]
+    """Manifest or sidecar, which of both, digest."""
     methods: tuple[tuple[str, str, str], ...]
     """Title, options, sources."""
     uncertainty: tuple[tuple[str, str, str], ...]
@@ -215,6 +221,8 @@ def report_facts(document: Document) -> Report:
         conditions=_conditions(document),
         station=station_fact(document),
         captures=tuple(capture_fact(c) for c in document["captures"]),
+        said=tuple(TableFact(title, rows) for title, rows in said_facts(document)),
+        station_files=tuple(station_file_fact(one) for one in document.get("station_files", ())),
         frames=tuple(dict.fromkeys(frame_fact(c, f) for c in document["captures"] for f in c["frames"])),
         methods=methods_fact(document),
         uncertainty=uncertainty_fact(document),

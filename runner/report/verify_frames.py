@@ -35,6 +35,8 @@ def check_frames(document: Mapping[str, Any], frames: Path, terms: Terms) -> lis
     except Exception as error:  # noqa: BLE001 - whatever goes wrong, the report is not confirmed
         return [Check("frames", False, f"the unit cannot be measured again: {type(error).__name__}: {error}")]
     checks = [_digests(document, again)]
+    if any(one.get("station_files") for one in (document, again)):
+        checks.append(_station_files(document, again))
     if checks[0].held:
         checks += [_values(document, again), _curves(document, again), _verdicts(document, again)]
         if any(one.get(kind) for one in (document, again) for kind in ("maps", "spots")):
@@ -53,6 +55,24 @@ def _digests(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
         return Check("frames", False, f"these are not the frames of the report: {_few(odd)}")
     count = sum(len(capture["frames"]) for capture in document["captures"])
     return Check("frames", True, f"every frame has the digest of the report ({count})")
+
+
+def _station_files(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:
+    """Compare manifests and sidecars by digest, and what was said of each frame."""
+    name = "manifests and sidecars"
+
+    def digests(one: Mapping[str, Any]) -> dict[str, str]:
+        return {f"attempt {f['attempt']}, {f['file']}": f["sha256"] for f in one.get("station_files", ())}
+
+    stated, found = digests(document), digests(again)
+    odd = sorted(file for file in stated.keys() | found.keys() if stated.get(file) != found.get(file))
+    if odd:
+        return Check(name, False, f"these are not those of the report: {_few(odd)}")
+    said = [[capture.get("sidecar") for capture in one["captures"]] for one in (document, again)]
+    words = differing(said[0], said[1])
+    if words:
+        return Check(name, False, f"they do not say what the report says: {_few(words)}")
+    return Check(name, True, f"every manifest and sidecar has the digest of the report ({len(stated)})")
 
 
 def _values(document: Mapping[str, Any], again: Mapping[str, Any]) -> Check:

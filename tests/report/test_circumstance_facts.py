@@ -12,8 +12,10 @@ from runner.report.circumstance_facts import (
     frame_fact,
     machine_fact,
     methods_fact,
+    said_facts,
     sentence,
     station_fact,
+    station_file_fact,
     uncertainty_fact,
 )
 from tests.report import printed_world as world
@@ -129,3 +131,24 @@ def test_the_machine_names_every_version() -> None:
     program = {"name": "probatum", "version": "1", "template": "1", "versions": {"numpy": "2.4"}, "machine": "Linux"}
 
     assert machine_fact(program) == "probatum 1, template 1; numpy 2.4; Linux"
+
+
+def test_what_sidecars_said_is_printed_whatever_they_hold() -> None:
+    """Letters that the fonts may lack, and marks that no page shows, are spelled as numbers; the rest stays."""
+    said = [{"file": "a.tif", "fields": [["serial", "WS8-\u00b5\u4e01", "a.json"], ["time", "no\non", "unit.json"]]}]
+    capture = {"name": "flat", "target": "flat field", "attempt": 2, "sidecar": {"demanded": [], "said": said}}
+    quiet = capture | {"sidecar": {"demanded": [], "said": []}}
+
+    ((title, rows),) = said_facts({"captures": [capture, quiet]})
+
+    assert title == "flat (flat field), attempt 2"
+    assert rows == (("demanded", "nothing"), ("a.tif", "serial WS8-µ\\u4e01 (a.json); time no\\u000aon (unit.json)"))
+
+
+def test_station_files_are_listed_with_their_digests() -> None:
+    """One that could not be read says so in place of a digest."""
+    one = {"attempt": 1, "file": "manifest.json", "kind": "manifest", "sha256": "ab"}
+
+    assert station_file_fact(one) == ("manifest.json", "manifest", "ab")
+    lost = one | {"attempt": 2, "sha256": ""}
+    assert station_file_fact(lost) == ("attempt 2: manifest.json", "manifest", "could not be read")

@@ -61,3 +61,32 @@ def test_departures_are_told() -> None:
     assert deviations(plan, replace(plain, remarks=("It was only inferred.",))) == ["It was only inferred."]
     assert len(deviations(plan, rehearsed)) == 1
     assert len(deviations(jpeg, plain)) == 2
+
+
+def test_a_magnification_is_readable() -> None:
+    """Below one it is the fraction that people think of, where it is one; above it stays a factor."""
+    for value, words in ((1 / 120, "1/120 ×"), (0.05, "1/20 ×"), (0.4, "1/2.5 ×"), (0.0123, "0.0123 ×")):
+        assert dict(conditions(CAMERA, Optics(magnification=value), Chart()))["magnification"] == words
+    for value, words in ((1.0, "1 ×"), (20.0, "20 ×"), (62.5, "62.5 ×")):
+        assert dict(conditions(CAMERA, Optics(magnification=value), Chart()))["magnification"] == words
+
+
+def test_a_lost_companion_does_not_look_like_none() -> None:
+    """A capture that names a companion which was refused or is not there says so, with the reason; a good one not."""
+    plan = bind(read_spec(folder("specs") / "board-camera.yaml"))
+    frame = FrameFact("a.tif", "", (1, 1), "uint16")
+    chart, dark = (CaptureEvidence(name, 1, "t", (frame,)) for name in ("chart", "dark"))
+    refused = CaptureEvidence("dark", 1, "t", (), ("dark-1.tif: the frame is lit",))
+
+    def told(*captures: CaptureEvidence) -> list[str]:
+        return deviations(plan, UnitEvidence("S", captures, (), ()))
+
+    assert plan.spec.capture("chart").uses == {"dark": "dark"}
+    assert told(dark, chart) == []
+    (sentence,) = told(refused, chart)
+    assert sentence.startswith(
+        "'chart' was measured without its companion 'dark' (dark): dark-1.tif: the frame is lit."
+    )
+    assert "it has no frames" in told(chart)[0]
+    assert "in attempt 2" in told(dark, chart, replace(chart, attempt=2), replace(refused, attempt=2))[0]
+    assert told(refused, replace(chart, frames=(), faults=("gone",))) == []
