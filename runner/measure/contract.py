@@ -109,6 +109,8 @@ class Step:
 
     axes: Mapping[str, str]
     """Axes without repeats, as the files' names say."""
+    taken: Mapping[str, Amount]
+    """What the sidecars of its first frame say of how it was taken."""
     samples: tuple[Sample, ...]
     """Every region found in the step's first frame, in this channel."""
     readings: tuple[Reading, ...]
@@ -234,7 +236,8 @@ class Method(Protocol):
     - `TOGETHER = True`: `measure` gets all frames of the capture at once, in `sample.frames`.
     - `GATHERS = True`: after all other methods `gather(scene: Scene, options) -> Measurement` is called in place of
       `measure`, once for all regions of a channel and once for every group that a limit names. It raises as `measure`
-      does. Its quantities are `whole`.
+      does. Its quantities are `whole`. With `wants(options) -> Sequence[tuple[str, Mapping[str, Amount]]]` it names
+      quantities, with what they are taken at, that other methods must read in every region for it.
     - `AXES = frozenset({"z"})`: with one of the two above, the axes of file patterns along which it takes frames that
       differ in more than `repeat`. In a capture with such an axis the readings of other methods are not reported; they
       only reach `gather`, step by step.

@@ -1,6 +1,6 @@
 """Calls the methods that take all regions of a capture together, after the others have measured."""
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from functools import partial
 from typing import Any, Protocol, cast
 
@@ -9,6 +9,7 @@ from runner.measure.contract import Measurement, NotFound, Sample, Scene, Step
 from runner.measure.plan import CapturePlan, MethodPlan
 from runner.measure.reading import Reading
 from runner.measure.steps import Group
+from runner.spec.model import Amount
 
 Sampler = Callable[[int, str], tuple[Sample, ...]]
 """Gives every region found in a step's first frame, by the step's number and the channel."""
@@ -31,6 +32,7 @@ def gather(
     plan: MethodPlan,
     channel: str,
     groups: Sequence[Group],
+    taken: Sequence[Mapping[str, Amount]],
     readings: Sequence[Sequence[Reading]],
     sampler: Sampler,
     lost: Sequence[NotFound],
@@ -43,6 +45,7 @@ def gather(
         plan: The method.
         channel: Colour channel.
         groups: Steps of the capture.
+        taken: What the sidecars of each step's first frame say.
         readings: What the other methods read, by step.
         sampler: Gives the regions of a step.
         lost: Regions that were not found.
@@ -56,6 +59,7 @@ def gather(
         steps = tuple(
             Step(
                 group.axes,
+                taken[number],
                 tuple(sample for sample in sampler(number, channel) if sample.found.region in regions),
                 tuple(r for r in readings[number] if r.channel == channel and r.region in regions),
             )

@@ -25,6 +25,10 @@ REPEATS = frozenset({"repeat", "page"})
 """Axes along which frames are repeats of one another."""
 
 
+_Asked = dict[str, dict[str, tuple[Wanted, ...]]]
+"""Wanted readings by method, then by region or name of a group."""
+
+
 @dataclass(frozen=True)
 class MethodPlan:
     """One method on one capture."""
@@ -144,8 +148,33 @@ def _bind_capture(spec: Spec, capture: Capture, complaints: list[Complaint]) -> 
     capture, wanted, groups = _bind_limits(capture, place, meant, complaints)
     for one in capture.usable_if:
         _bind_bound(capture, one, place, meant, wanted, complaints)
+    _bind_wants(capture, place, bound, wanted, complaints)
     plans = tuple(MethodPlan(m, o, wanted.get(m.NAME, {}), groups.get(m.NAME, {})) for m, o in bound)
     return CapturePlan(capture, target, target_options, plans, axes)
+
+
+def _bind_wants(
+    capture: Capture, place: str, bound: Sequence[tuple[Method, Any]], wanted: _Asked, complaints: list[Complaint]
+) -> None:
+    """Ask other methods, in every region, for what a method that gathers builds upon."""
+    context = units.context_of(capture.camera, capture.optics)
+    others = [method for method, _ in bound if not getattr(method, "GATHERS", False)]
+    for method, options in bound:
+        for quantity, parameters in method.wants(options) if hasattr(method, "wants") else ():
+            where = f"{place}, measure, {method.NAME}"
+            other, info = _provider(quantity, None, others)
+            if other is None or info is None:
+                complaints.append(_no_provider(where, quantity, None, others))
+                continue
+            try:
+                at = {n: units.convert(a.value, a.unit, info.parameters[n], context) for n, a in parameters.items()}
+            except UsageError as error:
+                complaints.append(Complaint(where, error.found, error.allowed, error.next_step))
+                continue
+            mine, one = wanted.setdefault(other.NAME, {}), Wanted(quantity, parameters, at)
+            for region in [r.name for r in capture.regions] or [""]:
+                if one not in mine.get(region, ()):
+                    mine[region] = (*mine.get(region, ()), one)
 
 
 def _shared_options(target: Target, chosen: Mapping[str, Mapping[str, Any]]) -> dict[str, Any]:
@@ -189,10 +218,6 @@ def _unknown(place: str, kind: str, name: str, known: Iterable[str]) -> Complain
     near = difflib.get_close_matches(name, list(known), n=1)
     hint = f"did you mean '{near[0]}'?" if near else ""
     return Complaint(place, f"unknown {kind} '{name}'", f"known are: {', '.join(sorted(known))}", hint)
-
-
-_Asked = dict[str, dict[str, tuple[Wanted, ...]]]
-"""Wanted readings by method, then by region or name of a group."""
 
 
 def _bind_limits(

@@ -171,12 +171,13 @@ def _measure_steps(
         )
 
     lost = [found for found in located[0] if isinstance(found, NotFound)]
+    taken = [frames[step.members[0]].taken for step in steps]
     read = [(*part.readings, *at_once.readings) for part in parts]
     gathered = [
         in_channel(made, channel)
         for plan in gathers
         for channel in one.capture.camera.channels
-        for made in gather(one, plan, channel, steps, read, sampler, lost, bench.tracebacks)
+        for made in gather(one, plan, channel, steps, taken, read, sampler, lost, bench.tracebacks)
     ]
     # Curves of the first frame stand for all repeats. Along an axis, other methods only feed those that gather.
     return joined([*([] if one.axes else parts), at_once, *gathered])

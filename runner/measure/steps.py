@@ -2,8 +2,8 @@
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from typing import Protocol
 
-from runner.capture.frame import Crop
 from runner.errors import UsageError
 from runner.spec.model import Amount
 from runner.spec.units import parse_amount
@@ -40,16 +40,30 @@ def groups(axes_of_frames: Sequence[Mapping[str, str]], axes: Sequence[str]) -> 
     return tuple(Group(dict(zip(axes, key, strict=True)), tuple(members)) for key, members in found.items())
 
 
-def position(crop: Crop, axis: str) -> Amount | None:
-    """Return where along an axis a frame lies: as its sidecar says, else as its name says.
+class Placed(Protocol):
+    """Anything with a place along axes: a crop of a frame, a step of a capture."""
+
+    @property
+    def axes(self) -> Mapping[str, str]:
+        """What names of files say."""
+        ...
+
+    @property
+    def taken(self) -> Mapping[str, Amount]:
+        """What sidecars say."""
+        ...
+
+
+def position(placed: Placed, axis: str) -> Amount | None:
+    """Return where along an axis a frame or a step lies: as its sidecar says, else as its name says.
 
     A name says it as a number with its unit (`lens-0.25mm.tif` for `lens-{z}.tif`, a comma or `p` in place of the
     point is not read) or as a plain number, which is then only a place in a row.
     """
     for name in SIDECAR_FIELDS.get(axis, ()):
-        if name in crop.taken:
-            return crop.taken[name]
-    said = crop.axes.get(axis, "")
+        if name in placed.taken:
+            return placed.taken[name]
+    said = placed.axes.get(axis, "")
     try:
         return Amount(float(said), "1") if said.isdecimal() else parse_amount(said)
     except UsageError:

@@ -31,7 +31,7 @@ def _patch(name: str, f: float, transfer: float, u: float = 0.002, chart: float 
 def _gather(readings: list[Reading], *wanted: Wanted, lost: tuple[NotFound, ...] = ()) -> Measurement:
     regions = tuple(dict.fromkeys(r.region for r in readings))
     scene = Scene(
-        "", regions, (Step({}, (), tuple(readings)),), lost, (800, 600), CAMERA, Optics(), Chart(), tuple(wanted)
+        "", regions, (Step({}, {}, (), tuple(readings)),), lost, (800, 600), CAMERA, Optics(), Chart(), tuple(wanted)
     )
     return transfer_curve.gather(scene, transfer_curve.read_options({}))
 
