@@ -12,6 +12,7 @@ a difference between the greens beside red and beside blue alternates from row t
 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field, replace
+from math import exp, pi, sqrt
 from typing import Any
 
 import numpy as np
@@ -39,6 +40,13 @@ MOST_ORDER = 8
 """Highest order of the shading taken off a profile."""
 LEAST_VALUES = 32
 """Rows or columns that a profile needs, and four for each order of the shading."""
+DITHERED = 0.62
+"""Noise of a pixel in codes, rounding's own 1/√12 with it, from which on rounding changes an amplitude by less than
+0.4 %: √2 exp(-2π² s²) of it, s the noise before."""
+MOST_OPEN = 0.5
+"""Share of an amplitude that rounding may leave open: with more, a weak band may be lost altogether."""
+BLOCK = 16
+"""Width of the blocks whose levels tell how the light is spread over a code."""
 MOST_POINTS = 512
 """Points of a curve: each the highest of the ordinates between, so that no line is lost."""
 
@@ -103,8 +111,9 @@ def measure(sample: Sample, options: Options) -> Measurement:
     planes.refuse_clipped(frame, **{"most_high" if lit else "most_low": planes.MOST_CLIPPED})
     readings: list[Reading] = []
     curves: list[Curve] = []
+    whole = _rounding(frame.codes[0])
     for name, (profile, pitch) in zip(("row", "column"), _profiles(frame), strict=True):
-        readings += _lines(sample, name, profile, pitch, options)
+        readings += _lines(sample, name, profile, pitch, whole, options)
         if profile.size >= LEAST_VALUES:
             curves.append(_spectrum(sample, name, profile, pitch, options))
     return Measurement(tuple(readings), tuple(curves))
@@ -126,26 +135,68 @@ def _profiles(frame: planes.Stack) -> tuple[tuple[Real, int], tuple[Real, int]]:
     return (rows, 1), (columns, 1)
 
 
-def _lines(sample: Sample, name: str, profile: Real, pitch: int, options: Options) -> Iterator[Reading]:
+def _rounding(codes: NDArray[Any]) -> float:
+    """Return the relative uncertainty of a weak band's amplitude by rounding; 0 where noise averages it out.
+
+    Rounding's mean error Σ (-1)^m sin(2πmx) exp(-2π²m²s²)/(πm) has the slope 2 (-1)^m cos(2πmx) exp(-2π²m²s²): where
+    light of one level leaves all pixels at one place between two codes, the first term changes every small step alike.
+    """
+    if codes.dtype.kind not in "ui":
+        return 0.0
+    rows = codes[:: max(1, codes.shape[0] // 256)].astype(np.float64)
+    bend = rows[:, 2:] - 2 * rows[:, 1:-1] + rows[:, :-2]
+    variance = float(np.mean(bend**2)) / 6
+    if variance > DITHERED**2:
+        return 0.0
+    down, across = (max(1, n // BLOCK) for n in codes.shape)
+    some = codes[: down * (codes.shape[0] // down), : across * (codes.shape[1] // across)]
+    blocks = some.reshape(down, -1, across, some.shape[1] // across)
+    alike = abs(np.mean(np.exp(2j * pi * blocks.mean(axis=(1, 3)))))
+    # two codes alone, in 256 pixels, may be those about a border that next to no noise crosses
+    still = np.median(blocks.max(axis=(1, 3)) - blocks.min(axis=(1, 3))) <= 1
+    return sqrt(2) * exp(-2 * pi**2 * (0.0 if still else max(0.0, variance - 1 / 12))) * float(alike)
+
+
+def _lines(sample: Sample, name: str, profile: Real, pitch: int, whole: float, options: Options) -> Iterator[Reading]:
     amplitude = _blank(sample, f"{name}_banding")
     frequency = _blank(sample, f"{name}_banding_frequency")
-    least = max(LEAST_VALUES, 4 * options.shading_order)
-    if profile.size < least:
-        because = f"the region has {profile.size} {name}s of its own; {least} are needed to tell bands from shading"
+    because = _why_none(name, profile.size, whole, options)
+    if because:
         refusal = Refusal("outside the estimator's limits", because)
         yield from (replace(one, refusal=refusal) for one in (amplitude, frequency))
         return
     found = banding(profile, shading_order=options.shading_order)
+    most = 1 / (1 - whole)  # what is seen may be as much smaller
     if not found.lines:
-        yield replace(amplitude, bound=("below", found.bound))
-        because = f"no line stands out of the noise; any that is there stays below {found.bound:.3g} DN"
+        yield replace(amplitude, bound=("below", most * found.bound))
+        because = f"no line stands out of the noise; any that is there stays below {most * found.bound:.3g} DN"
         yield replace(frequency, refusal=Refusal("not defined", because))
         return
     line = found.lines[0]
+    if not line.told:
+        because = (
+            f"{name}s alternate by {line.amplitude:.3g} DN on average, which changes over the region: so near to "
+            f"{0.5 / pitch:g} cy/px less than a cycle of the beat is seen, which leaves the amplitude open"
+        )
+        yield from (replace(one, refusal=Refusal("undersampled", because)) for one in (amplitude, frequency))
+        return
     others = "; ".join(f"{one.amplitude:.3g} DN at {one.frequency / pitch:.4g} cy/px" for one in found.lines[1:])
     flags = (f"weaker lines: {others}",) if others else ()
-    yield replace(_valued(amplitude, line.amplitude, line.amplitude_u), flags=flags)
+    yield replace(_valued(amplitude, line.amplitude, line.amplitude_u, line.amplitude * whole * most), flags=flags)
     yield _valued(frequency, line.frequency / pitch, line.frequency_u / pitch)
+
+
+def _why_none(name: str, size: int, whole: float, options: Options) -> str:
+    """Return why a profile tells no bands, or nothing."""
+    least = max(LEAST_VALUES, 4 * options.shading_order)
+    if size < least:
+        return f"the region has {size} {name}s of its own; {least} are needed to tell bands from shading"
+    if whole > MOST_OPEN:
+        return (
+            f"with so little noise, rounding to whole codes leaves {100 * min(1.0, whole):.0f} % of a weak band's size "
+            f"open, at most {100 * MOST_OPEN:g} % may; deliver frames of more bits, or raise the gain"
+        )
+    return ""
 
 
 def _spectrum(sample: Sample, name: str, profile: Real, pitch: int, options: Options) -> Curve:
@@ -175,6 +226,7 @@ def _blank(sample: Sample, name: str) -> Reading:
     return Reading(sample.found.region, name, unit, None, None, estimator=ESTIMATOR, method=REFERENCES[0])
 
 
-def _valued(blank: Reading, value: float, u: float) -> Reading:
+def _valued(blank: Reading, value: float, u: float, rounding: float = 0.0) -> Reading:
     # rows' own pattern is part of the noise of a single frame and the same in the next: repeats do not lessen it
-    return replace(blank, value=value, u=u, components=(Component("noise", u, "A"),))
+    parts = (Component("noise", u, "A"), *((Component("rounding", rounding, "B"),) if rounding else ()))
+    return replace(blank, value=value, u=sqrt(sum(part.u**2 for part in parts)), components=parts)

@@ -16,6 +16,11 @@ For noise that is not white the median is no less than those of nearer ordinates
 than what is found below the lowest frequency, falling as f⁻⁴, as the power of light with a bend does at least. m counts
 every ordinate looked at; being nearer than a bin they are not independent, so the probability is below what is stated.
 At half the sampling frequency there is one phase only, and the law is that of a chi-square of one degree of freedom.
+Within half a bin of it amplitude and phase are not told apart: what alternates changes its size along the profile.
+
+Not periodic. A few single values far off their neighbours are defective rows (columns) and no bands: they are replaced
+by what their neighbours say. A smooth spot lifts values over a part of the profile: a line that is not there in most of
+eight parts of it is passed over.
 
 References:
     A. Schuster, Terr. Magn. 3 (1898) 13 (law of periodogram ordinates).
@@ -52,6 +57,18 @@ NEAR = 6
 """Bins to both sides that a line must stand out of: shading that is left seldom does."""
 
 
+LONE = 8.0
+"""Times the scatter of values about the median of three pairs of neighbours beyond which it is a defective row's."""
+FEW = 0.01
+"""Share of the values (three at least) up to which such are replaced: more of them are bands of short pulses."""
+PARTS = 8
+"""Parts of the profile in which a line is looked for."""
+MOST_PASSED = 8
+"""Lines passed over before the search ends."""
+BEATS = 3.0
+"""Times its own noise by which an alternation may change along the profile and still be one of 0.5 cy/px."""
+
+
 @dataclass(frozen=True)
 class Line:
     """One line of a profile's spectrum."""
@@ -66,6 +83,9 @@ class Line:
     """Its standard uncertainty."""
     false_alarm: float
     """Probability that noise alone gives such a line anywhere in the spectrum."""
+    told: bool = True
+    """False for what alternates and changes along the profile, within half a bin of 0.5 cy/px: its amplitude is not
+    told."""
 
 
 @dataclass(frozen=True)
@@ -121,7 +141,7 @@ def banding(
     Raises:
         ValueError: A profile too short for what is asked, or with values that are not finite.
     """
-    values = np.asarray(profile, dtype=np.float64)
+    values = np.array(profile, dtype=np.float64)
     cycles = max(1.0, float(shading_order)) if lowest is None else lowest
     if values.ndim != 1 or values.size < max(32, 4 * cycles, 4 * shading_order):
         raise ValueError(
@@ -132,22 +152,24 @@ def banding(
         raise ValueError("the profile holds values that are not finite numbers")
     grid = np.arange(np.ceil(PADDING * cycles), PADDING * (values.size - 1) / 2 + 1) / (PADDING * values.size)
     grid = np.append(grid, 0.5)
+    values = _without_lone(values)
     model = _fit(values, shading_order, [])
     chances: list[float] = []
     passed: list[float] = []
-    while len(chances) < most:
+    while len(chances) < most and len(passed) < MOST_PASSED:
         frequency, chance = _highest(grid, model, passed)
         if chance > false_alarms:
             break
         wider = _fit(values, shading_order, [*model.frequencies, frequency])
-        if min(wider.frequencies) < grid[0]:  # it is shading that the polynomial does not follow
+        shading = min(wider.frequencies) < grid[0]  # which the polynomial does not follow
+        if shading or not _is_all_along(wider):
             passed.append(frequency)
             continue
         chances.append(chance)
         model = wider
     ordinates, level = _spectrum(grid, model.residual)
     lines = [
-        _line(f, a, float(np.interp(f, grid, level)), values.size, p)
+        _line(f, a, float(np.interp(f, grid, level)), model.residual, p)
         for f, a, p in zip(model.frequencies, model.amplitudes, chances, strict=True)
     ]
     return Banding(
@@ -159,16 +181,49 @@ def banding(
     )
 
 
-def _line(frequency: float, amplitude: float, level: float, count: int, chance: float) -> Line:
+def _without_lone(values: Real) -> Real:
+    """Return the values with a few single ones far off their neighbours replaced by what these say."""
+    at, pairs = np.arange(values.size), []
+    for k in (1, 2, 3):  # at the ends two from one side, continued straight
+        before, after = values[np.abs(at - k)], values[np.minimum(at + k, values.size - 1)]
+        pairs.append((before + after) / 2)
+        pairs[-1][:k] = 2 * values[k : 2 * k] - values[2 * k : 3 * k]
+        pairs[-1][-k:] = 2 * values[-2 * k : -k] - values[-3 * k : -2 * k]
+    around = np.median(pairs, axis=0)
+    away = np.abs(values - around)
+    lone = away > LONE * 1.4826 * float(np.median(away))
+    if np.count_nonzero(lone) > max(3, FEW * values.size):
+        return values
+    return np.asarray(np.where(lone, around, values))
+
+
+def _is_all_along(model: "_Model") -> bool:
+    """Tell whether the line fitted last is there in most parts of the profile, at half its size or more."""
+    f, wave, t = model.frequencies[-1], model.waves[-1], model.places
+    parts = np.array_split((model.residual + wave) * np.exp(-2j * pi * f * t), min(PARTS, max(2, int(f * t.size / 2))))
+    sizes = [(1 if f == 0.5 else 2) * abs(part.mean()) for part in parts]
+    return float(np.median(sizes)) >= model.amplitudes[-1] / 2
+
+
+def _line(frequency: float, amplitude: float, level: float, residual: Real, chance: float) -> Line:
     """Return a line with its uncertainties, the bounds in noise of the local level.
 
     The phase and the frequency found are those where noise adds most: it raises the squared amplitude by u² for each.
     """
-    alternating = frequency == 0.5
+    alternating, count = frequency == 0.5, residual.size
     u = sqrt(level / 4 if alternating else level / 2)
     value = amplitude if alternating else sqrt(max(0.0, amplitude**2 - 2 * u**2))
     frequency_u = 0.0 if alternating else sqrt(6 * level) / (2 * pi * amplitude * count)
-    return Line(frequency, frequency_u, value, u, chance)
+    told = _is_even(residual, level) if alternating else frequency <= 0.5 - 0.5 / count
+    return Line(frequency, frequency_u, value, u, chance, told)
+
+
+def _is_even(residual: Real, level: float) -> bool:
+    """Tell whether what alternates does not change along the profile, by slope and bend in units of their own noise."""
+    along = np.polynomial.legendre.legvander(np.linspace(-1, 1, residual.size), 2)[:, 1:]
+    changes = along * (-1.0) ** np.arange(residual.size)[:, None]
+    noise = np.sqrt(level * residual.size / 4 * (changes**2).sum(axis=0))
+    return bool(np.all(np.abs(residual @ changes) <= BEATS * noise))
 
 
 def _spectrum(grid: Real, residual: Real) -> tuple[Real, Real]:
@@ -217,6 +272,10 @@ class _Model:
     """Of the lines."""
     residual: Real
     """What is left of the profile."""
+    waves: Real
+    """The lines, lines × values."""
+    places: Real
+    """The values' places from the profile's middle."""
 
 
 def _fit(values: Real, order: int, start: list[float]) -> _Model:
@@ -237,8 +296,15 @@ def _fit(values: Real, order: int, start: list[float]) -> _Model:
         if not np.any(np.abs(step) * values.size > SETTLED):
             break
     terms, fitted = _linear(values, shading, f, t)
-    waves = fitted[order + 1 :].reshape(2, -1)
-    return _Model([float(x) for x in f], [float(a) for a in np.hypot(*waves)], values - terms @ fitted)
+    factors = fitted[order + 1 :].reshape(2, -1)
+    lines = terms[:, order + 1 :].reshape(t.size, 2, -1)
+    return _Model(
+        frequencies=[float(x) for x in f],
+        amplitudes=[float(a) for a in np.hypot(*factors)],
+        residual=values - terms @ fitted,
+        waves=np.einsum("tki,ki->it", lines, factors),
+        places=t,
+    )
 
 
 def _sine(t: Real, f: Real) -> Real:

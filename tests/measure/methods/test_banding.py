@@ -157,6 +157,45 @@ def test_a_dark_has_bands_too() -> None:
     assert value(found["row_banding"]) == pytest.approx(2, rel=0.05)
 
 
+@pytest.mark.parametrize("noise", [0.1, 0.3, 0.4, 0.6])
+def test_few_codes_of_noise(noise: float) -> None:
+    """In 8 bits with a noise below a code, a band of 0.15 codes is within 3 u, or it is not told.
+
+    Rounding's mean error has a slope of up to 2 exp(-2π² s²), 0.34 at 0.3 codes (Widrow and Kollár 2008): light of one
+    level, so that nothing averages it. Twelve places between two codes.
+    """
+    rng = np.random.default_rng(8)
+    told = 0
+    for place in np.arange(12) / 12:
+        light = 100 + place + wave(160, 1 / 9.7, 0.15)[:, None] + rng.normal(0, noise, (160, 240))
+        frame = np.round(light).astype(np.uint8)
+        found = read(_measure(frame, camera(frame, bit_depth=8, black_level=0, white_level=255)))
+        reading = found["row_banding"]
+        if reading.value is not None:
+            told += 1
+            assert abs(reading.value - 0.15) < 3 * (reading.u or 0), place
+        elif reading.bound is not None:
+            assert reading.bound[1] > 0.15, place
+        else:
+            assert reading.refusal is not None
+            assert "rounding to whole codes leaves" in reading.refusal.because
+    assert told == 12 or noise < 0.4
+
+
+def test_a_beat_with_the_rows_is_said() -> None:
+    """A band a quarter of a bin from 0.5 cy/px is refused with what is seen of it; columns are measured."""
+    rng = np.random.default_rng(9)
+    bands = wave(480, 0.4995, 40.0, 0.7)[:, None] + wave(640, 0.21, 40.0)[None, :]
+    found = read(_measure(codes(9000 + bands + rng.normal(0, 60, (480, 640)))))
+
+    for name in ("row_banding", "row_banding_frequency"):
+        refusal = found[name].refusal
+        assert refusal is not None
+        assert refusal.cause == "undersampled"
+        assert "less than a cycle of the beat is seen" in refusal.because
+    assert value(found["column_banding"]) == pytest.approx(40, rel=0.05)
+
+
 @pytest.mark.parametrize("order", [-1, 9, 2.5, True])
 def test_the_order_is_held_to_its_meaning(order: object) -> None:
     """Only whole numbers from 0 to 8 are an order."""

@@ -95,7 +95,10 @@ def test_noise_at_half_the_sampling_frequency() -> None:
     """
     rng = np.random.default_rng(9)
     grid = np.append(np.arange(16, 255) / 512, 0.5)
-    found = [_highest(grid, _Model([], [], rng.normal(0, 1, 128)), []) for _ in range(3000)]
+    found = [
+        _highest(grid, _Model([], [], rng.normal(0, 1, 128), np.zeros((0, 128)), np.arange(128.0)), [])
+        for _ in range(3000)
+    ]
 
     assert sum(f == 0.5 and chance < 0.3 for f, chance in found) <= 4
 
@@ -171,3 +174,72 @@ def test_what_is_refused(profile: Values, said: str) -> None:
     """A profile too short, of two dimensions or with holes is refused with what is allowed."""
     with pytest.raises(ValueError, match=said):
         banding(profile)
+
+
+@pytest.mark.parametrize("bins", [0.1, 0.2, 0.3, 0.4])
+def test_within_half_a_bin_of_half_the_sampling_frequency_nothing_is_told(bins: float) -> None:
+    """A band of 20 DN, a fraction of a bin off 0.5 cy/px, is never given a wrong amplitude: it is not told, or right.
+
+    Amplitude and phase are not told apart there: 40 phases. Right is within 4 u or within the 3 % by which what
+    alternates may change along the profile unseen.
+    """
+    rng = np.random.default_rng(6)
+    for phase in rng.uniform(0, 2 * np.pi, 40):
+        found = banding(wave(480, 0.5 - bins / 480, 20.0, phase) + rng.normal(0, 2.7, 480))
+        for line in found.lines[:1]:
+            assert not line.told or abs(line.amplitude - 20) < max(4 * line.amplitude_u, 0.6), phase
+
+
+def test_an_even_alternation_is_told() -> None:
+    """Rows that alternate by ± 5 DN all along are a line of 0.5 cy/px with that amplitude, within 4 u."""
+    rng = np.random.default_rng(7)
+    (line, *_) = banding(5.0 * (-1.0) ** np.arange(480) + rng.normal(0, 1, 480)).lines
+
+    assert line.told
+    assert line.frequency == 0.5
+    assert abs(line.amplitude - 5) < 4 * line.amplitude_u
+
+
+def test_defective_rows_do_not_hide_a_band() -> None:
+    """Three dead rows of 4000 DN, one at the border, in a steep light: the band of 5 DN reads as it does without them.
+
+    Within 3 u, and with less than one and a half times that u: three of 480 values are lost.
+    """
+    rng = np.random.default_rng(8)
+    values = np.linspace(4000, 9000, 480) + wave(480, 0.137, 5.0, 0.4) + rng.normal(0, 1.5, 480)
+    (clean,) = banding(values).lines
+    values[[0, 77, 300]] -= 4000
+    (line,) = banding(values).lines
+
+    assert line.frequency == pytest.approx(0.137, abs=0.5 / 480)
+    assert abs(line.amplitude - 5) < 3 * line.amplitude_u
+    assert line.amplitude_u < 1.5 * clean.amplitude_u
+
+
+def test_pulses_that_repeat_are_bands() -> None:
+    """One bright row in every 16 is a band of 1/16 cy/px and its multiples: 2 h/16 for pulses of height h."""
+    rng = np.random.default_rng(9)
+    values = rng.normal(0, 1, 480)
+    values[5::16] += 40
+    found = banding(values)
+
+    assert len(found.lines) == 3
+    for line in found.lines:
+        assert line.amplitude == pytest.approx(5.0, rel=0.05)
+        assert line.frequency * 16 == pytest.approx(round(line.frequency * 16), abs=0.02)
+
+
+@pytest.mark.parametrize("width", [15, 30, 60])
+def test_a_spot_is_no_band(width: int) -> None:
+    """A dent of 60 times the noise over a part of the profile is no line, wherever it lies; a line beside it is.
+
+    A dust spot on 20 places each; the line's amplitude may take 10 % from the dent's own spectrum.
+    """
+    rng = np.random.default_rng(10)
+    for place in rng.uniform(40, 600, 20):
+        dent = -60.0 * np.sqrt(np.maximum(0, 1 - ((np.arange(640) - place) / width) ** 2))
+        values = dent + rng.normal(0, 1, 640)
+        assert banding(values).lines == (), place
+        lines = banding(values + wave(640, 0.2137, 20.0, 0.3)).lines
+        assert lines[0].frequency == pytest.approx(0.2137, abs=0.5 / 640)
+        assert lines[0].amplitude == pytest.approx(20.0, rel=0.1)
