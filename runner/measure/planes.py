@@ -99,10 +99,12 @@ class Pixels:
         if camera is not None and codes.dtype.kind == "u" and codes.dtype.itemsize <= 2:
             self._light = _scaled(np.arange(int(codes.max()) + 1), camera)
 
-    def __getitem__(self, key: Any) -> NDArray[Any]:
-        """Return rows × columns of rows, or one value for each pixel."""
+    def __getitem__(self, key: Any) -> Any:
+        """Return rows × columns of rows, or one value for each pixel; every second row of a tone is again not made."""
         if isinstance(key, slice):
-            return self._toned(self._rows(*key.indices(self.shape[0])))
+            first, last, step = key.indices(self.shape[0])
+            rows = self._rows(first, last, step)
+            return Pixels(rows, camera=self._camera) if step % 2 == 0 and self._camera else self._toned(rows)
         rows, columns = key
         if self._shift:
             columns = self._start + 2 * columns + self._shift * (rows % 2)
@@ -126,20 +128,23 @@ class Pixels:
 
     def astype(self, kind: Any) -> NDArray[Any]:
         """Return all of them as an array of a type of number."""
-        return self[:].astype(kind)
+        return np.asarray(self[:], dtype=kind)
 
     def __array__(self, dtype: Any = None, copy: bool | None = None) -> NDArray[Any]:
         """Return all of them."""
         return np.array(self[:], dtype, copy=copy)
 
     def _rows(self, first: int, last: int, step: int) -> Codes:
-        codes = self._codes
+        """Return rows of the codes; a view where they are of one kind."""
+        codes, width = self._codes, 2 * self.shape[1]
         if not self._shift:
             return codes[first:last:step]
+        start = [self._start + self._shift * ((first + n * step) % 2) for n in (0, 1)]
+        if step % 2 == 0:
+            return codes[first:last:step, start[0] : start[0] + width : 2]
         out = np.empty((len(range(first, last, step)), self.shape[1]), dtype=codes.dtype)
-        for n in (0, 1):
-            x = self._start + self._shift * ((first + n * step) % 2)
-            out[n::2] = codes[first + n * step : last : 2 * step, x : x + 2 * self.shape[1] : 2]
+        for n, x in enumerate(start):
+            out[n::2] = codes[first + n * step : last : 2 * step, x : x + width : 2]
         return out
 
     def _toned(self, codes: Codes) -> NDArray[Any]:

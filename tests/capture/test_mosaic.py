@@ -4,6 +4,7 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+from scipy import ndimage
 
 from runner.capture.frame import Box, Frame, crop
 from runner.capture.mosaic import grey, plane, sites
@@ -51,6 +52,17 @@ def test_grey_is_the_same_wherever_a_pixel_lies_in_its_cell() -> None:
 
     assert grey(codes, CAMERA) == pytest.approx(np.full((6, 8), 225.0))
     assert grey(np.arange(48.0).reshape(6, 8), CAMERA)[2:4, 2].tolist() == [18, 26]
+
+
+@pytest.mark.parametrize("dtype", [np.uint8, np.uint16, np.float32])
+def test_grey_of_large_frames(dtype: type) -> None:
+    """Worked out in pieces, the picture is that of the whole: [1 2 1]/4 both ways, mirrored about the outer pixels."""
+    codes: np.ndarray = np.random.default_rng(1).integers(0, 256, (301, 402)).astype(dtype)
+    kernel = np.outer([1, 2, 1], [1, 2, 1]) / 16
+
+    assert np.array_equal(grey(codes, CAMERA), ndimage.convolve(codes.astype(float), kernel, mode="mirror"))
+    planes: np.ndarray = np.random.default_rng(2).integers(0, 256, (301, 402, 3)).astype(dtype)
+    assert np.array_equal(grey(planes, replace(CAMERA, mosaic="none", colour="rgb")), planes @ [0.25, 0.5, 0.25])
 
 
 def test_a_crop_of_a_channel_carries_its_sites() -> None:

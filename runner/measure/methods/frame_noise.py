@@ -254,11 +254,10 @@ def _about_shading(found: StackNoise) -> tuple[str, ...]:
 
 def _about_green(frames: planes.Stack) -> tuple[str, ...]:
     """Say how far the two kinds of green differ, if by more than three times what the scatter of rows explains."""
-    values = frames.frames[0]
-    some = values[: 2 * (frames.shape[0] // 2)]
-    apart = planes.green_balance(some, frames.grid)
-    if not apart:
+    if not frames.grid.shift:
         return ()
+    some = frames.frames[0][: 2 * (frames.shape[0] // 2)]
+    apart = planes.green_balance(some, frames.grid)
     steps = np.diff(some.mean(axis=1, dtype=np.float64).reshape(-1, 2), axis=1)
     u = float(steps.std()) / sqrt(len(steps))
     if abs(apart) < 3 * u:

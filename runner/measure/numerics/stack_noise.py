@@ -165,7 +165,7 @@ def stack_noise(
         ValueError: Fewer than two frames, frames of different size, too few rows or columns for the order, values
             that are not finite, or drift as a gain without light.
     """
-    parts = [[frame[kind::kinds] for frame in frames] for kind in range(kinds)]
+    parts = [frames] if kinds == 1 else [[frame[kind::kinds] for frame in frames] for kind in range(kinds)]
     for part in parts:
         _check(part, shading_order)
     raw = np.array([[level_of(frame) for frame in part] for part in parts]) - black

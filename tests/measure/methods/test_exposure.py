@@ -6,9 +6,10 @@ import numpy as np
 import pytest
 
 from runner.capture.frame import Box, Frame, crop
+from runner.errors import MeasurementRefused
 from runner.measure.contract import Found, Sample
 from runner.measure.methods import exposure
-from runner.spec.model import Camera, Chart, Optics
+from runner.spec.model import Camera, Chart, Optics, Tone
 
 CAMERA = Camera(width=40, height=30, bit_depth=12, black_level=64, white_level=4095)
 
@@ -58,6 +59,43 @@ def test_the_levels_uncertainty_covers_its_error() -> None:
         ratios.append((value - 100 * (2000 - 64) / (4095 - 64)) / u)
 
     assert 0.9 < np.std(ratios) < 1.1  # 1000 draws: the sample's own scatter is 2.2 %; robust noise adds 3 %
+
+
+def test_of_large_regions_only_the_noise_is_sampled() -> None:
+    """Of 3 MP the level is the mean of all pixels, one clipped pixel is counted, and u is within 2 % of the noise's.
+
+    The noise is that of 100 000 differences, known within 0.5 % (see `ENOUGH`): 2 % is four times that.
+    """
+    rng = np.random.default_rng(2)
+    codes = np.round(rng.normal(2000, 20, (1500, 2000))).astype(np.uint16)
+    codes[7, 13] = 4095
+    read = _readings(codes)
+    mean = sum(codes.ravel().tolist()) / codes.size
+
+    assert read["level"][0] == pytest.approx(100 * (mean - 64) / (4095 - 64), rel=1e-12)
+    assert read["level"][1] == pytest.approx(100 * 20 / np.sqrt(codes.size) / (4095 - 64), rel=0.02)
+    assert read["clipped"][0] == pytest.approx(100 / codes.size)
+
+
+@pytest.mark.parametrize("dtype", [np.uint8, np.float32])
+def test_the_level_is_that_of_the_light(dtype: type) -> None:
+    """Half of the pixels at sRGB 188, half at 0: 188 is 50.29 % of the light (IEC 61966-2-1), so 25.14 % in all."""
+    camera = replace(CAMERA, bit_depth=8, black_level=0, white_level=255, tone=Tone("srgb"))
+    codes: np.ndarray = np.zeros((30, 40), dtype=dtype)
+    codes[::2] = 188
+
+    assert _readings(codes, camera)["level"] == pytest.approx((50 * ((188 / 255 + 0.055) / 1.055) ** 2.4, 0.0))
+    assert _readings(codes, camera)["level"][0] == pytest.approx(25.14, abs=0.01)
+
+
+def test_a_region_without_a_pixel_of_the_channel() -> None:
+    """One row of a mosaic may hold no blue at all: refused in words, not by a division by zero."""
+    camera = replace(CAMERA, mosaic="RGGB")
+    box = Box(0, 0, 40, 1)
+    cut = crop(Frame("a.tif", "", "", np.ones((30, 40), dtype=np.uint16)), box, camera, "blue")
+
+    with pytest.raises(MeasurementRefused, match="1 × 40 px, none of them blue"):
+        exposure.measure(Sample(Found("all", box), cut, camera, Optics(), Chart(), wanted=()), exposure.Options())
 
 
 def test_the_frame_is_not_changed() -> None:

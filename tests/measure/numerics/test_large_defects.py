@@ -3,6 +3,7 @@
 import numpy as np
 import pytest
 
+from runner.measure.numerics import large_defects
 from runner.measure.numerics.defects import flat_pixels, hot_pixels
 from runner.measure.numerics.large_defects import blemishes, line_defects, off_lines
 from tests.scenes.flats import Shading, plant, scattered, spot
@@ -88,6 +89,19 @@ def test_blemishes_and_their_uncertainty(radius: float, contrast: float, least: 
         held.append([abs(one.contrast - contrast) <= 2 * one.contrast_u, abs(one.size - true_size) <= 2 * one.size_u])
 
     assert np.all(np.mean(held, axis=0) >= 0.93 - 0.1)
+
+
+def test_few_and_many_cells_are_joined_alike(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Cells joined one by one and in a walk over all cells make the same blemishes, touching corners and all."""
+    flat = 1000 * spot((300, 240), (80, 90), 12, -0.05) * spot((300, 240), (200, 150), 9, 0.04)
+    flat += np.random.default_rng(8).normal(0, 4, flat.shape)
+    found = []
+    for share in (0.0, 1.0):
+        monkeypatch.setattr(large_defects, "SPARSE", share)
+        found.append(blemishes(flat, 0.015, 5.0))
+
+    assert len(found[0].spots) == 2
+    assert found[0] == found[1]
 
 
 def test_what_is_below_contrast_or_size_is_none() -> None:
