@@ -1,8 +1,9 @@
 """A chart of stripes whose light follows a sine, in millimetres of the object, and its picture on the sensor.
 
 A sine through any linear system is a sine again, so each patch is drawn from the transfer function alone: its own
-modulation times the function at its frequency and direction, pixel aperture included. Nothing is resampled. What ends a
-patch is the product of four edge spreads, which is exact along its sides and an approximation near its corners only.
+modulation times the function at its frequency and direction, pixel aperture included. Nothing is resampled. A patch
+ends with a ramp as wide as the blur, which stands for its true border: ground and stripes have the same mean, so there
+is no step of light, and inside the ramp the sine is exact.
 """
 
 from collections.abc import Mapping
@@ -10,10 +11,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from runner.rehearse.scene import Picture, Square, TransferAt, View, bar, place_on, within
-
-TAIL = 60.0
-"""How far beyond a side a patch is drawn, px: what diffraction still spreads beyond that is below 1e-3 of its swing."""
+from runner.rehearse.optics import Transfer
+from runner.rehearse.scene import Picture, Square, TransferAt, View, place_on, within
 
 
 @dataclass(frozen=True)
@@ -81,12 +80,20 @@ def picture(chart: StripeChart, view: View, transfer_at: TransferAt) -> Picture:
 
 def _draw(light: Picture, patch: Patch, view: View, swing: float, transfer_at: TransferAt) -> None:
     """Add one patch's stripes, in place; a bright stripe runs through the patch's centre."""
-    x, y = view.place(patch.square)
-    spread = transfer_at(x, y).edge_spread(view.turn, TAIL + 1.2 * transfer_at(x, y).disc_radius)
+    ramp = ramp_of(transfer_at(*view.place(patch.square)))
     half = patch.side_mm / view.mm_per_px / 2
-    rows, columns = within(patch.square, view, float(spread[0][-1]))
+    rows, columns = within(patch.square, view, ramp)
     across, down = place_on(patch.square, view, rows, columns)
     turn = np.deg2rad(patch.direction)  # the chart's own turn is in `across` and `down`
     phase = 2 * np.pi * frequency_of(patch, view) * (across * np.cos(turn) + down * np.sin(turn))
     stripes = swing * transfer_of(patch, view, transfer_at) * np.cos(phase)
-    light[rows, columns] += stripes * bar(across, half, spread) * bar(down, half, spread)
+    light[rows, columns] += stripes * _window(across, half, ramp) * _window(down, half, ramp)
+
+
+def ramp_of(system: Transfer) -> float:
+    """Return half the width of the ramp that ends a patch, px: pixel, blur disc and twice the Gaussian's spread."""
+    return 0.5 + system.disc_radius + 2 * system.blur_um / system.pitch_um
+
+
+def _window(distance: Picture, half: float, ramp: float) -> Picture:
+    return np.asarray(np.clip((half - np.abs(distance)) / (2 * ramp) + 0.5, 0, 1))

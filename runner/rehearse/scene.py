@@ -114,7 +114,7 @@ def _darken(light: Picture, square: Square, view: View, depth: float, spread: tu
     half = square.side_mm / view.mm_per_px / 2
     rows, columns = within(square, view, float(spread[0][-1]))
     across, down = place_on(square, view, rows, columns)
-    light[rows, columns] -= depth * bar(across, half, spread) * bar(down, half, spread)
+    light[rows, columns] -= depth * _bar(across, half, spread) * _bar(down, half, spread)
 
 
 def within(square: Square, view: View, margin: float) -> tuple[slice, slice]:
@@ -139,6 +139,5 @@ def _part(centre: float, reach: float, size: int) -> slice:
     return slice(min(max(first, 0), size), min(max(last, 0), size))
 
 
-def bar(distance: Picture, half: float, spread: tuple[Picture, Picture]) -> Picture:
-    """Return the picture of a bar: what is seen of it at a distance from its middle, px."""
+def _bar(distance: Picture, half: float, spread: tuple[Picture, Picture]) -> Picture:
     return np.asarray(np.interp(distance + half, *spread) - np.interp(distance - half, *spread))

@@ -1,11 +1,15 @@
 """The demo command: its table, its exit code, what it refuses. The whole demo runs in tests/demo_lots."""
 
+from pathlib import Path
+
 import pytest
 
 from runner.cli import run
-from runner.commands.demo import _lot_folder, _progress, _tell
+from runner.commands import demo
+from runner.commands.demo import _lot_folder, _lots, _progress, _tell
 from runner.exits import Exit
-from runner.rehearse.expected import Documented, Expected
+from runner.rehearse.expected import Documented, Expected, read_expected
+from runner.rehearse.scenario import read_scenario
 
 GOOD, BAD = Documented("conforms", None, ()), Documented("does not conform", "unit", ("2",))
 EXPECTED = Expected("spec.yaml", "A1", {"A1": GOOD, "A2": BAD})
@@ -42,14 +46,38 @@ def test_unknown_lot_is_refused(capsys: pytest.CaptureFixture[str]) -> None:
     """A lot that is not there ends in one sentence that names those that are."""
     assert run(["demo", "no_such_lot"]) == Exit.USAGE
 
-    assert capsys.readouterr().err == "LOT: there is no demo lot 'no_such_lot'; lots: walnut_line\n"
+    assert capsys.readouterr().err == "LOT: there is no demo lot 'no_such_lot'; lots: walnut_line, walnut_sizer\n"
 
 
-def test_every_lot_folder_is_whole() -> None:
-    """A lot has its scenario, its documented verdicts and the spec that these name."""
-    home = _lot_folder("walnut_line")
+@pytest.mark.parametrize("lot", list(_lots()))
+def test_every_lot_folder_is_whole(lot: str) -> None:
+    """A lot has its scenario, its documented verdicts and the spec that these name, and documents each of its units."""
+    home = _lot_folder(lot)
+    expected = read_expected(home / "expected.yaml")
 
-    assert {"scenario.yaml", "expected.yaml", "walnut-board-camera.yaml"} <= {p.name for p in home.iterdir()}
+    assert (home / expected.spec).is_file()
+    assert set(expected.units) == set(read_scenario(home / "scenario.yaml").units)
+    assert expected.open_first in expected.units
+
+
+def test_without_a_lot_all_are_run_and_what_to_open_comes_last(
+    monkeypatch: pytest.MonkeyPatch, tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    """Each lot has a folder of its own; one that differs makes the whole command fail; a named lot is run alone."""
+    ran: list[tuple[str, Path]] = []
+
+    def run_lot(home: Path, out: Path, _jobs: int) -> tuple[bool, str]:
+        ran.append((home.name, out))
+        print("table")
+        return home.name == "walnut_line", f"open {home.name}"
+
+    monkeypatch.setattr(demo, "_run_lot", run_lot)
+
+    assert run(["demo", "--out", str(tmp_path)]) == Exit.FAULT
+    assert capsys.readouterr().out == "table\ntable\nopen walnut_line\n\nopen walnut_sizer\n"
+    assert run(["demo", "walnut_line", "--out", str(tmp_path)]) == Exit.CONFORMS
+    lots = [(name, tmp_path / name) for name in ("walnut_line", "walnut_sizer")]
+    assert ran == [*lots, ("walnut_line", tmp_path)]
 
 
 def test_progress_is_plain_lines_off_a_terminal(capsys: pytest.CaptureFixture[str]) -> None:

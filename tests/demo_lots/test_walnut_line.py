@@ -49,7 +49,7 @@ def demo(tmp_path_factory: pytest.TempPathFactory) -> Iterator[tuple[Exit, str, 
         patch.delenv("XDG_DATA_HOME", raising=False)
         printed = io.StringIO()
         with contextlib.redirect_stdout(printed):
-            code = run(["demo", "--out", str(out / "demo")])
+            code = run(["demo", "walnut_line", "--out", str(out / "demo")])
         yield code, printed.getvalue(), out / "demo"
 
 

@@ -23,16 +23,13 @@ def _inside(light: np.ndarray, reach: int = 40) -> tuple[np.ndarray, np.ndarray,
 
 
 def test_stripes_are_the_sine_that_the_transfer_function_leaves() -> None:
-    """Inside the patch the light is level × (1 + modulation × T cos(2π f·r)), a bright stripe at the centre.
-
-    The patch ends 35 px and more from there: diffraction leaves 2/(π³ fc d) = 1e-3 of the swing on each of four sides.
-    """
+    """Inside the patch the light is level × (1 + modulation × T cos(2π f·r)), a bright stripe at the centre."""
     light, dx, dy = _inside(picture(CHART, VIEW, lambda _x, _y: SYSTEM))
     f, turn = 0.25, np.deg2rad(30.4)
     across = dx * np.cos(turn) + dy * np.sin(turn)
     swing = 0.3 * float(SYSTEM.along(f, 30.4))
 
-    assert light == pytest.approx(0.5 + swing * np.cos(2 * np.pi * f * across), abs=4e-3 * swing)
+    assert light == pytest.approx(0.5 + swing * np.cos(2 * np.pi * f * across), abs=1e-9)
 
 
 def test_frequency_and_transfer_are_those_of_period_and_direction() -> None:

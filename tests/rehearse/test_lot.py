@@ -147,12 +147,12 @@ def test_truth_tells_stripes_bands_and_defects(sizer: Scenario) -> None:
 
 
 def test_every_unit_of_the_sizer_leaves_what_its_station_says(sizer: Scenario, tmp_path: Path) -> None:
-    """Twelve frames with a sidecar each and a manifest; darks and flats packed, stripes TIFF."""
+    """Ten frames with a sidecar each and a manifest; darks and flats packed, stripes TIFF."""
     place = lot.make_unit(sizer, sizer.units["WZ2-000201"], tmp_path)
     endings = sorted(path.suffix for path in place.iterdir())
 
-    assert endings == 13 * [".json"] + 10 * [".raw"] + 2 * [".tif"]
-    assert (place / "flat-6.raw").stat().st_size == 160 * 120 * 3 // 2
+    assert endings == 11 * [".json"] + 8 * [".raw"] + 2 * [".tif"]
+    assert (place / "flat-5.raw").stat().st_size == 160 * 120 * 3 // 2
 
 
 def test_announces_each_unit(small: Scenario, tmp_path: Path) -> None:
