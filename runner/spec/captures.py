@@ -86,7 +86,9 @@ def _build(
     )
     if camera is None or context is None:
         return None
-    regions = expand(shape.regions or {}, camera, complaints)
+    chart = build_chart(shape.chart, context, complaints)
+    broken = not shape.sound("chart") or (shape.chart is not None and shape.chart.file is not None and not chart.file)
+    regions = () if broken else expand(shape.regions or {}, camera, chart.file, complaints)
     frames = shape.frames
     target, target_options = next(iter((shape.target or Chosen({"": {}})).options.items()))
     capture = Capture(
@@ -97,7 +99,7 @@ def _build(
         uses=shape.uses or {},
         camera=camera,
         optics=optics,
-        chart=build_chart(shape.chart, context, complaints),
+        chart=chart,
         regions=regions,
         measure=shape.measure.options if shape.measure is not None else {},
         target_options=target_options,

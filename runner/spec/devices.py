@@ -2,6 +2,7 @@
 
 from runner.errors import UsageError
 from runner.spec import units
+from runner.spec.charts import build_chart_file, build_view
 from runner.spec.files import PACKINGS, Layout
 from runner.spec.leaves import share
 from runner.spec.model import Amount, Camera, Chart, Optics, Tone
@@ -131,7 +132,7 @@ def build_optics(base: OpticsShape, complaints: Complaints, part: OpticsShape | 
 
 
 def build_chart(shape: ChartShape | None, context: units.FrequencyContext, complaints: Complaints) -> Chart:
-    """Return the chart, its transfer table in cy/px."""
+    """Return the chart, its transfer table in cy/px, its file's data in mm."""
     if shape is None:
         return Chart()
     table: tuple[tuple[float, float], ...] = ()
@@ -141,7 +142,17 @@ def build_chart(shape: ChartShape | None, context: units.FrequencyContext, compl
     except UsageError as error:
         complaints.error(shape.at("transfer"), error.found, error.allowed, error.next_step)
     u = share(shape.transfer_uncertainty) if shape.transfer_uncertainty is not None else 0.0
-    return Chart(shape.name or "", shape.serial or "", shape.due or "", table, u)
+    if shape.file is None:
+        return Chart(shape.name or "", shape.serial or "", shape.due or "", table, u)
+    file = build_chart_file(shape.file, complaints)
+    if file is None:
+        return Chart()
+    view = build_view(shape.view, file.view)
+    if view.most_tilt is not None and (context.focal_length_mm is None or context.pixel_pitch_um is None):
+        found = "a tilt in degrees needs the camera's pixel_pitch and the optics' focal_length"
+        place = shape.view.at("tilt") if shape.view is not None else shape.at("file")
+        complaints.error(place, found, "", "state them, or bound the keystone in place of the tilt")
+    return Chart(file.name, file.serial, file.due, table, u, file, view)
 
 
 def micrometres(length: Amount | None) -> float | None:

@@ -2,13 +2,15 @@
 
 Mappings are merged key by key; what is not a mapping is replaced. Limits are merged by characteristic: the variant's
 limits of a characteristic take the place of all the base's limits of that characteristic in that capture. `remove:
-true` takes a key, or a characteristic, away. A base lies in the folder of the spec or below it.
+true` takes a key, or a characteristic, away. A base lies in the folder of the spec or below it. Last, the contents of
+chart files take the place of their names.
 """
 
 from pathlib import Path, PurePosixPath
 from typing import Any, TypeGuard
 
 from runner.errors import UsageError
+from runner.spec.charts import lay_in
 from runner.spec.leaves import read_truth, shown
 from runner.spec.tree import Complaints, Listed, Mapped, Text, read_tree
 
@@ -27,7 +29,11 @@ def read_merged(path: Path, complaints: Complaints) -> Mapped | None:
         UsageError: The spec itself cannot be read.
     """
     tree = _read(path, path.as_posix(), path.resolve().parent, (), complaints)
-    return None if tree is None else _without_removed(tree, complaints)
+    if tree is None:
+        return None
+    whole = _without_removed(tree, complaints)
+    lay_in(whole, path.resolve().parent, complaints)
+    return whole
 
 
 def _read(path: Path, label: str, top: Path, seen: tuple[Path, ...], complaints: Complaints) -> Mapped | None:

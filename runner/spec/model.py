@@ -4,6 +4,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
+from runner.spec.chart_model import ChartFile, View
 from runner.spec.files import Layout, Sidecar
 
 SIMPLE_ACCEPTANCE = "simple acceptance"
@@ -134,11 +135,18 @@ class Region:
     name: str
     """Unique in its capture; members of a group carry their own names."""
     position: tuple[Amount, Amount]
-    """Centre, x to the right then y down, in % of the frame or px; outer borders are 0 % and 100 %."""
+    """Centre, x to the right then y down, in % of the frame or px; outer borders are 0 % and 100 %.
+
+    With `on` chart in mm from the chart's centre, until it has been placed in a frame.
+    """
     size: tuple[Amount, Amount]
-    """Width and height, in % or px."""
+    """Width and height, in % or px, or mm."""
     group: str | None = None
     """The group it was written in."""
+    on: str = "frame"
+    """`frame` or `chart`."""
+    feature: str = ""
+    """The chart's feature that it is."""
 
     def centre_px(self, width: int, height: int) -> tuple[float, float]:
         """Return the centre (x, y) in px from the frame's outer upper left corner; pixel centres lie at +0.5."""
@@ -150,6 +158,9 @@ class Region:
 
 
 def _px(length: Amount, whole: int) -> float:
+    if length.unit not in {"%", "px"}:
+        msg = f"{length.value:g} {length.unit} on the chart is no place in a frame before the chart was found"
+        raise ValueError(msg)
     return length.value * whole / 100 if length.unit == "%" else length.value
 
 
@@ -193,6 +204,10 @@ class Chart:
     """The chart's own transfer function in the image: (cy/px, modulation), rising; empty is 1."""
     transfer_u: float = 0.0
     """Standard uncertainty of those modulations."""
+    file: ChartFile | None = None
+    """Its file; name, serial and due day are the file's then."""
+    view: View = field(default_factory=View)
+    """How it must lie in a frame, with the file's own demands where the spec has none."""
 
 
 @dataclass(frozen=True)

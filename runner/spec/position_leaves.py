@@ -9,7 +9,8 @@ from runner.spec.leaves import leaf, read_amount, refuse, share, shown, write_am
 from runner.spec.model import Amount
 from runner.spec.units import UNITS, spell
 
-LENGTHS_IN_FRAME = ("%", "px")
+LENGTHS = ("%", "px", "mm", "µm")
+"""In the frame the first two; the others on a chart."""
 
 
 @dataclass(frozen=True)
@@ -31,9 +32,14 @@ def read_pair(node: Any) -> tuple[Amount, Amount]:
         refuse(f"{shown(node)} is no pair", "two lengths in % or px, for example [50 %, 50 %]")
     first, second = (read_amount(item) for item in node)
     for index, part in enumerate((first, second)):
-        if part.unit not in LENGTHS_IN_FRAME:
+        if part.unit not in LENGTHS:
             given = "no unit" if part.unit == "1" else f"unit {part.unit}"
-            refuse(f"{part.value:g} has {given}", "% of the frame, or px", f"for example {part.value:g} px", (index,))
+            refuse(
+                f"{part.value:g} has {given}",
+                "% of the frame or px; mm on: chart",
+                f"for example {part.value:g} px",
+                (index,),
+            )
     return first, second
 
 

@@ -3,16 +3,20 @@
 from collections.abc import Mapping
 from math import cos, hypot, radians, sin
 
+from runner.spec.chart_leaves import in_mm
+from runner.spec.chart_model import ChartFile
 from runner.spec.model import Amount, Camera, Region
 from runner.spec.position_leaves import FieldPoint, Point
 from runner.spec.shapes import GridShape, RegionShape
-from runner.spec.tree import Complaints
+from runner.spec.tree import Complaints, nearest
 
 MIN_SIDE = 4
 """px; less cannot hold anything to measure."""
 
 
-def expand(shapes: Mapping[str, RegionShape | None], camera: Camera, complaints: Complaints) -> tuple[Region, ...]:
+def expand(
+    shapes: Mapping[str, RegionShape | None], camera: Camera, chart: ChartFile | None, complaints: Complaints
+) -> tuple[Region, ...]:
     """Return the regions of a capture in the order of the spec; a broken shape gives none.
 
     A member of a group carries the group's name and its own: `corners upper left`, `field r1c2`.
@@ -20,16 +24,26 @@ def expand(shapes: Mapping[str, RegionShape | None], camera: Camera, complaints:
     Args:
         shapes: By name as written.
         camera: Gives the frame's size.
+        chart: The chart's file, for regions on it.
         complaints: Takes complaints about regions off the frame and names used twice.
     """
     regions: list[Region] = []
     for name, shape in shapes.items():
         if shape is None:
             continue
-        for region in _members(name, shape, camera):
+        on_chart = shape.on == "chart" or shape.feature is not None
+        if on_chart and (chart is None or not _known(shape, chart, complaints)):
+            if chart is None:
+                key = "on" if shape.stated("on") else "feature"
+                complaints.error(shape.at(key), "the capture has no chart file", "", "add chart: {file: …} to it")
+            continue
+        for region in _on_chart(name, shape, chart) if on_chart and chart else _members(name, shape, camera):
             if any(region.name == other.name for other in regions):
                 complaints.error(shape.at(), f"two regions have the name '{region.name}'", "", "rename one of them")
-            _inside(region, shape, camera, complaints)
+            if on_chart and chart:
+                _on_sheet(region, shape, chart, complaints)
+            else:
+                _inside(region, shape, camera, complaints)
             regions.append(region)
     return tuple(regions)
 
@@ -56,10 +70,14 @@ def names(shapes: Mapping[str, RegionShape | None]) -> dict[str, tuple[str, ...]
 def _member_names(shape: RegionShape) -> tuple[str, ...]:
     if shape.grid is not None:
         return tuple(f"r{r + 1}c{c + 1}" for r in range(shape.grid.rows) for c in range(shape.grid.columns))
+    if shape.feature is not None and len(shape.feature) > 1:
+        return shape.feature
     return tuple(shape.position) if isinstance(shape.position, dict) else ()
 
 
 def _members(name: str, shape: RegionShape, camera: Camera) -> list[Region]:
+    if shape.size is None:  # complained of
+        return []
     if shape.grid is not None:
         centres = _grid(shape.grid, camera)
     elif isinstance(shape.position, dict):
@@ -70,6 +88,63 @@ def _members(name: str, shape: RegionShape, camera: Camera) -> list[Region]:
         return []
     members = zip(_member_names(shape), centres, strict=True)
     return [Region(f"{name} {member}", centre, shape.size, group=name) for member, centre in members]
+
+
+def _known(shape: RegionShape, chart: ChartFile, complaints: Complaints) -> bool:
+    """Complain of features that the chart has not."""
+    unknown = [name for name in shape.feature or () if name not in chart.features]
+    for name in unknown:
+        found = f"chart '{chart.name}' has no feature '{name}'"
+        step = nearest(name, chart.features)
+        complaints.error(shape.at("feature"), found, f"features: {', '.join(chart.features)}", step)
+    return not unknown
+
+
+def _on_chart(name: str, shape: RegionShape, chart: ChartFile) -> list[Region]:
+    """Return regions in mm on the chart; a size in px stays in px."""
+    members = _member_names(shape)
+    names = [f"{name} {member}" for member in members] or [name]
+    group = name if members else None
+    if shape.feature is not None:
+        features = [chart.features[one] for one in shape.feature]
+        sizes = [_mm_or_px(shape.size) if shape.size else _mm(one.size) for one in features]
+        rows = zip(names, [_mm(one.position) for one in features], sizes, [one.name for one in features], strict=True)
+        return [Region(full, centre, size, group, "chart", one) for full, centre, size, one in rows]
+    if shape.size is None:  # complained of
+        return []
+    if shape.grid is not None:
+        ends = [(in_mm(a), in_mm(b)) for a, b in zip(shape.grid.start, shape.grid.to, strict=True)]
+        counts = (shape.grid.columns, shape.grid.rows)
+        xs, ys = (
+            _steps(Amount(a, "mm"), Amount(b, "mm"), count, 0) for (a, b), count in zip(ends, counts, strict=True)
+        )
+        centres = [(x, y) for y in ys for x in xs]
+    else:
+        points = shape.position.values() if isinstance(shape.position, dict) else [shape.position]
+        centres = [_mm((in_mm(p[0]), in_mm(p[1]))) for p in points if isinstance(p, tuple)]
+    size = _mm_or_px(shape.size)
+    return [Region(full, centre, size, group, "chart") for full, centre in zip(names, centres, strict=True)]
+
+
+def _mm(pair: tuple[float, float]) -> tuple[Amount, Amount]:
+    return Amount(pair[0], "mm"), Amount(pair[1], "mm")
+
+
+def _mm_or_px(size: tuple[Amount, Amount]) -> tuple[Amount, Amount]:
+    width, height = (part if part.unit == "px" else Amount(in_mm(part), "mm") for part in size)
+    return width, height
+
+
+def _on_sheet(region: Region, shape: RegionShape, chart: ChartFile, complaints: Complaints) -> None:
+    over = []
+    for centre, size, whole in zip(region.position, region.size, chart.size, strict=True):
+        half = size.value / 2 if size.unit == "mm" else 0.0
+        over.append(abs(centre.value) + half - whole / 2)
+    if max(over) > 0.005:
+        place = shape.at("grid") if shape.grid is not None else shape.at("position")
+        found = f"region '{region.name}' reaches {max(over):.3g} mm over the chart's border"
+        sheet = f"a sheet of {chart.size[0]:g} mm × {chart.size[1]:g} mm, positions from its centre"
+        complaints.error(place, found, sheet, "move it or make it smaller")
 
 
 def _centre(point: Point, camera: Camera) -> tuple[Amount, Amount]:

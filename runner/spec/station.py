@@ -9,10 +9,11 @@ from pydantic import Field
 from runner.errors import UsageError
 from runner.spec import leaves
 from runner.spec.build import build_component
+from runner.spec.chart_shapes import day
 from runner.spec.model import Station
 from runner.spec.revision import digest
 from runner.spec.shape import Found, Shape
-from runner.spec.shapes import VERSION, ComponentShape, day
+from runner.spec.shapes import VERSION, ComponentShape
 from runner.spec.tree import Complaints, Place, from_plain, read_tree
 
 

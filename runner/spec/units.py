@@ -81,6 +81,7 @@ _LIST = (
     Unit("e-/s", "dark current"),
     Unit("DN/s", "dark signal"),
     Unit("photons", "photons per pixel"),
+    Unit("px/mm", "image scale"),
     Unit("px", "length"),
     Unit("nm", "length", 1.0, "1/pitch"),
     Unit("µm", "length", 1e3, "1/pitch", ("um", "μm")),

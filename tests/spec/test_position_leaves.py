@@ -42,7 +42,7 @@ def test_positions_are_read_and_written(text: str, value: object, written: objec
     ("kind", "text", "told"),
     [
         (Position, "centre", "'centre' is no pair"),
-        (Position, "[50 %, 3 mm]", "3 has unit mm"),
+        (Position, "[50 %, 3 DN]", "3 has unit DN"),
         (Position, "{}", "the group has no positions"),
         (Position, "{field: 1.2, azimuth: 0 deg}", "1.2 is no field height"),
         (Position, "{field: 0.5, azimuth: 0.3}", "0.3 is no azimuth"),
