@@ -3,6 +3,7 @@
 import numpy as np
 import pytest
 
+from runner.measure.numerics import defect_ground
 from runner.measure.numerics.defect_ground import ground, local_medians, outstanding, points, smallest_step, surface
 from tests.scenes.flats import Shading, plant, scattered
 
@@ -53,8 +54,13 @@ def test_whole_codes_never_have_too_little_noise(noise: float) -> None:
         assert np.median(found.noise) == pytest.approx(np.sqrt(noise**2 + 2 / 12), rel=0.06)
 
 
-def test_the_search_misses_nothing_and_adds_nothing() -> None:
-    """Pixels beyond a limit are those that a look at every pixel finds, both signs and each alone."""
+@pytest.mark.parametrize("at_once", [defect_ground.AT_ONCE, 7])
+def test_the_search_misses_nothing_and_adds_nothing(monkeypatch: pytest.MonkeyPatch, at_once: int) -> None:
+    """Pixels beyond a limit are those that a look at every pixel finds, both signs and each alone, however many cells.
+
+    None is found twice.
+    """
+    monkeypatch.setattr(defect_ground, "AT_ONCE", at_once)
     rng = np.random.default_rng(3)
     frame = 0.5 * Shading((330, 270), angle=30, axis=(40.0, 10.0)).frame() + rng.normal(0, 0.004, (270, 330))
     frame = plant(frame, scattered((330, 270), 40, rng), rng.uniform(-0.05, 0.05, 40).tolist())
@@ -69,8 +75,10 @@ def test_the_search_misses_nothing_and_adds_nothing() -> None:
         if high is not None:
             wanted |= away > high
         found = np.zeros(frame.shape, dtype=bool)
-        found[outstanding(frame, of, low, high)] = True
+        places = outstanding(frame, of, low, high)
+        found[places] = True
         np.testing.assert_array_equal(found, wanted)
+        assert places[0].size == np.count_nonzero(wanted)
 
 
 def test_medians_of_neighbours() -> None:

@@ -140,6 +140,21 @@ def test_stuck_and_blinking_pixels(gain_drift: bool) -> None:
     assert np.median([d.contrast for d in found.blinking.defects]) == pytest.approx(6, rel=0.15)
 
 
+@pytest.mark.parametrize("count", [2, 3])
+def test_a_blinking_pixels_scatter(count: int) -> None:
+    """Contrast is the pixel's standard deviation over the frames over its neighbours', drift taken out (n-1)."""
+    rng = np.random.default_rng(9)
+    frames = [np.round(rng.normal(2000, 20, (160, 200))) for _ in range(count)]
+    for frame, code in zip(frames, (3000, 1500, 2000), strict=False):
+        frame[70, 90] = code
+    codes = [(frame * gain).astype(np.uint16) for frame, gain in zip(frames, (1.0, 1.02, 0.98), strict=False)]
+    (one,) = unsteady_pixels(codes, gain_drift=True).blinking.defects
+
+    assert (one.x, one.y) == (90, 70)
+    planted = np.std([frame[70, 90] for frame in frames], ddof=1) / 20
+    assert one.contrast == pytest.approx(planted, rel=0.06)  # the local noise is known within 2 %, the gain adds 1 %
+
+
 def test_two_frames_of_whole_codes_tell_nothing_of_stuck_pixels() -> None:
     """In a pair of noise 8 DN one pixel in 28 is equal by chance: stuck pixels are not told, and the chance is."""
     rng = np.random.default_rng(6)
