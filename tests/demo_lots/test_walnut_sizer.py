@@ -89,13 +89,13 @@ def test_documented_stripes_follow_from_the_truth(serial: str, scenario: Scenari
     patches = truth(scenario, scenario.units[serial])["patches"]
     limits = {limit.characteristic: limit.at_least for limit in spec.capture("stripes").limits}
 
-    for group, number in TRANSFER.items():
+    for frequency, number in TRANSFER.items():
         low = limits[number]
         assert low is not None
-        for patch in ("upright", "level"):
-            value = patches[f"{group} {patch}"]["modulation transfer"]
+        for way in ("upright", "level"):
+            value = patches[f"{way} {frequency}"]["modulation transfer"]
             assert abs(value - low) > 5 * 0.005 * value
-            assert (value < low) == (number in EXPECTED.units[serial].characteristics), (group, patch)
+            assert (value < low) == (number in EXPECTED.units[serial].characteristics), (way, frequency)
 
 
 @pytest.mark.parametrize("serial", MEASURED)

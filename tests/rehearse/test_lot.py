@@ -30,7 +30,7 @@ def sizer() -> Scenario:
     """Return the walnut sizer on a sensor of 160 × 120 px with one patch of stripes, so that it is quick."""
     whole = read_scenario(folder("demo_lots") / "walnut_sizer" / "scenario.yaml")
     assert whole.stripes is not None
-    patch = replace(whole.stripes.patches["stripes 0.25 upright"], x_mm=0, y_mm=0, side_mm=40)
+    patch = replace(whole.stripes.patches["upright 0.25"], x_mm=0, y_mm=0, side_mm=40)
     units = {s: replace(u, view=View(160, 120, 0.45)) for s, u in whole.units.items()}
     return replace(whole, stripes=replace(whole.stripes, patches={"only": patch}), units=units)
 

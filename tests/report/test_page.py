@@ -120,3 +120,15 @@ def test_a_drawing_in_the_page_is_taken_as_it_is() -> None:
     """What `drawing` made is the only text that is not escaped."""
     assert inline("<svg/>") == "<svg/>"
     assert hasattr(inline("<svg/>"), "__html__")
+
+
+def test_a_curve_without_an_edge_fit_is_drawn_alone() -> None:
+    """A transfer curve over patches of stripes has no edge beside it; no empty drawing takes its place."""
+    document = world.failing()
+    document["curves"] = [curve for curve in document["curves"] if curve["name"] == "mtf"]
+
+    text, drawings = paper_page(document)
+
+    assert text.count('class="curve-box"') == len(document["curves"])
+    assert all(drawings.values())
+    assert 'src=""' not in text
