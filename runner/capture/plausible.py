@@ -16,6 +16,7 @@ from numpy.typing import NDArray
 
 from runner.capture.formats import packed
 from runner.capture.frame import Codes
+from runner.capture.row_length import STREAM, row_length
 from runner.errors import FrameRefused
 from runner.spec.files import PACKINGS, Layout
 from runner.spec.model import Camera
@@ -197,99 +198,25 @@ def _check_padding(codes: Codes, where: str, camera: Camera) -> None:
     )
 
 
-_SHORTEST = 32
-"""px of a row that is looked for; no frame is narrower."""
-_STREAM = 1 << 17
-"""Pixels of a frame in which another row length is looked for."""
-_SEAM = 8.0
-"""Standard deviations of all other columns by which the step between the borders of a picture stands out."""
-
-
 def _check_row_length(data: bytes, number: int, where: str, camera: Camera) -> None:
-    """Refuse rows of another length than the picture's: it repeats itself after fewer or more pixels.
-
-    Read with a wrong length the picture is sheared. Stripes at an angle are too, and repeat themselves after another
-    length for an honest reason; what they do not have is the seam, a step from one pixel to the next that comes back
-    after exactly that length, where the right border of the picture meets the left.
-    """
+    """Refuse rows of another length than the picture's: it repeats itself after fewer or more pixels."""
     layout, packing = camera.layout, PACKINGS[camera.layout.packing]
     pitch_bytes = layout.row_bytes(camera.width)
     if pitch_bytes % packing.octets:
         return
     pitch = pitch_bytes // packing.octets * packing.pixels
-    count = min(camera.height, max(16, _STREAM // pitch))
+    count = min(camera.height, max(16, STREAM // pitch))
     first = (camera.height - count) // 2
     start = layout.header + (number * camera.height + first) * pitch_bytes
     raw = np.frombuffer(data, np.uint8, count * pitch_bytes, start).reshape(count, pitch_bytes)
     stream = packed.unpack(raw, layout).ravel().astype(np.float64)
-    lengths = [_between_zeros(stream, count)] if camera.black_level > 0 else []
-    seams = 1 if camera.mosaic == "none" else 2
-    stream = stream[::seams]  # of a mosaic every second pixel; two rows of them, one of each colour, have the pitch
-    lengths += [length for length in _row_lengths(stream, pitch) if _has_seam(stream, length, pitch, seams)]
-    for likely in lengths:
-        if likely not in {0, pitch}:
-            raise _refused(
-                f"the picture repeats itself after {likely} px, not after the declared {pitch} px of a row",
-                f"a row of {likely} px, padding included",
-                where,
-            )
-
-
-def _between_zeros(stream: NDArray[np.float64], rows: int) -> int:
-    """Return the distance at which groups of zeros, padding, come back in the picture; 0 where there are none."""
-    zeros = np.flatnonzero(stream == 0)
-    if not 0.9 * rows <= zeros.size <= 0.5 * stream.size:
-        return 0
-    starts = zeros[np.flatnonzero(np.diff(zeros, prepend=-2) > 1)]
-    gaps = np.diff(starts)
-    if gaps.size < 0.9 * rows - 2:
-        return 0
-    usual = int(np.median(gaps))
-    return usual if usual >= _SHORTEST and np.count_nonzero(gaps == usual) >= 0.95 * gaps.size else 0
-
-
-def _row_lengths(stream: NDArray[np.float64], declared: int) -> list[int]:
-    """Return row lengths after which the picture is at least as like itself as after the declared one, best first."""
-    size = stream.size
-    spread = np.fft.rfft(stream - stream.mean(), 2 * size)
-    along = np.fft.irfft(spread.real**2 + spread.imag**2)[: size // 4]
-    if along[0] <= 0 or declared >= along.size - 1:
-        return []
-    along = along / along[0] * size / (size - np.arange(along.size))
-    lengths = np.arange(max(_SHORTEST, declared // 4), min(4 * declared, along.size - 1))
-    peak = (along[lengths] >= along[lengths - 1]) & (along[lengths] >= along[lengths + 1])
-    like = along[lengths] > np.where(declared % lengths == 0, along[declared] - 0.02, along[declared])
-    lengths = lengths[peak & like & (lengths % declared != 0)]
-    return sorted(lengths.tolist(), key=lambda length: -float(along[length]))[:8]
-
-
-def _has_seam(stream: NDArray[np.float64], length: int, declared: int, seams: int) -> bool:
-    """Tell whether one sharp step comes back after exactly that length, in nearly every row, and none where declared.
-
-    A sharp edge of the scene is spread over more than one step by any optics, has its counterpart elsewhere in the row,
-    or leaves a step where the declared rows meet.
-    """
-    steps = np.abs(np.diff(stream))
-    rows = steps.size // length
-    if rows < 8:
-        return False
-    folded = steps[: rows * length].reshape(rows, length)
-    columns = folded.mean(axis=0)
-    usual = float(np.median(columns))
-    seam = int(np.argmax(columns))
-    height = float(columns[seam]) - usual
-    near = np.array([(seam + n) % length for n in (-2, -1, 1, 2)])
-    twin = [(seam + length // seams + n) % length for n in range(-2, 3)]
-    others = np.delete(columns, [seam, *near, *twin]) - usual
-    wraps = np.arange(declared // seams - 1, steps.size, declared // seams)
-    wraps = wraps[(wraps - seam) % (length // seams) != 0]
-    if wraps.size == 0 or height <= _SEAM * max(float(others.std()), 1e-9):
-        return False
-    beside = (columns[near[1:3]] - usual) / height  # optics spread an edge to both sides, the picture ends on either
-    second = columns[twin[2]] - usual > 0.5 * height
-    alone = beside.min() < 0.1 and beside.max() < 0.35 and others.max() < 0.7 * height and second
-    always = np.count_nonzero(folded[:, seam] > usual + 0.25 * height) >= (0.9 if seams == 1 else 0.6) * rows
-    return bool(alone and always and steps[wraps].mean() < usual + height / 3)
+    likely = row_length(stream, pitch, camera, count)
+    if likely not in {0, pitch}:
+        raise _refused(
+            f"the picture repeats itself after {likely} px, not after the declared {pitch} px of a row",
+            f"a row of {likely} px, padding included",
+            where,
+        )
 
 
 # ---- mosaic

@@ -49,6 +49,13 @@ def _on_its_side(_: Codes) -> bytes:
     return write((light + np.random.default_rng(1).normal(0, 20, light.shape)).astype(np.uint16), LITTLE)
 
 
+def _wider(_: Codes) -> bytes:
+    """Return a picture of 216 x 128 px with a bright disc: its borders are alike, so that they leave no seam."""
+    y, x = np.mgrid[:128, :216]
+    light = 1500 + 1100 * erf((np.hypot(x - 108, y - 64) - 40) / 1.2)
+    return write((light + np.random.default_rng(1).normal(0, 20, light.shape)).astype(np.uint16), LITTLE)
+
+
 def _replaced(layout: Layout, **changes: object) -> Layout:
     return replace(layout, **changes)  # type: ignore[arg-type]
 
@@ -75,6 +82,8 @@ BAD_RAW = (
     Staged("raw of 14 bit", "the highest code is 1", WORDS, second(lambda c: write(c * 4 + 1, LITTLE), "raw")),
     Staged("raw on its side", "repeats itself after 144 px, not after the declared 192 px", WORDS,
            second(_on_its_side, "raw")),
+    Staged("raw of another row length, borders alike", "after 216 px, not after the declared 192 px of a row", WORDS,
+           second(_wider, "raw")),
     Staged("raw with padding counted as picture", "the last 8 columns are zero in every row: padding", WORDS,
            second(lambda c: write(np.where(np.arange(WIDTH) < WIDTH - 8, c, 0), LITTLE), "raw")),
     Staged("TIFF as raw", "the file holds TIFF, its name ends in '.raw'", WORDS, second(tiff, "raw")),

@@ -1,7 +1,7 @@
 """A wrong layout, depth or mosaic is told by its pixels; honest frames of any scene pass.
 
 What cannot be told: constant frames, texture as rough as a wrong reading, a mosaic without light, under grey light or
-with red for blue, a lower depth that never clips, and a wrong row length where the borders of the picture are alike.
+with red for blue, a lower depth that never clips, and what `test_row_length` lists.
 """
 
 import re
