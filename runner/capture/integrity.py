@@ -18,7 +18,7 @@ from runner.capture.frame import Frame
 from runner.capture.lot import FrameRef, Lot, UnitFolder, count_fault, fold, some
 from runner.capture.readers import read_frames
 from runner.capture.sentences import Collector, Place
-from runner.capture.sidecar import amounts
+from runner.capture.sidecar import SEQUENCE, amounts
 from runner.capture.station import StationWords, station_says
 from runner.errors import FrameRefused
 from runner.spec.model import Camera, Spec
@@ -328,9 +328,13 @@ def _twice(files: Sequence[FileFacts], spec: Spec, sentences: Collector, marks: 
                 same = alike.setdefault(page.pixels_sha256, {})
                 same.setdefault((facts.serial, facts.attempt, facts.file, number), facts)
     users = _users(files)
+    sequences = {capture.name for capture in spec.captures if capture.target == SEQUENCE}
     for same in alike.values():
         if len(same) < 2:
             continue
+        captures = {(key[0], key[1], capture) for key in same for capture in users[key[:3]]}
+        if len(captures) == 1 and next(iter(captures))[2] in sequences:
+            continue  # frames that come twice are what such a capture measures
         for key, facts in same.items():
             others = [_name(other, key, same[other]) for other in same if other != key]
             which = f", page {key[3] + 1}" if len(facts.pages) > 1 else ""

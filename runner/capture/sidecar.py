@@ -8,7 +8,7 @@ import json
 from collections.abc import Iterable, Mapping, Sequence
 from contextlib import suppress
 from dataclasses import dataclass, field
-from datetime import datetime
+from datetime import UTC, datetime
 from hashlib import sha256
 from pathlib import Path, PurePosixPath
 from typing import Any
@@ -25,6 +25,8 @@ ENDINGS = (".json", ".yaml", ".yml")
 SHARED = "unit"
 """Stem of the sidecar of all frames of an attempt or unit."""
 MAX_BYTES = 1_000_000
+SEQUENCE = "frame sequence"
+"""The target that measures lost and repeated frames: their counters are no fault of the capture."""
 CAPTURE_AGAIN = "set the station as the spec says, and capture again"
 _KINDS = {"exposure": ("time",), "position": ("length",), "gain": ("decibel", "ratio"), "temperature": ("temperature",)}
 _EXAMPLES = {
@@ -147,7 +149,20 @@ def amounts(refs: Sequence[SidecarRef]) -> dict[str, Amount]:
         with suppress(UsageError):  # the survey has told of it
             read[ref] = read_sidecar(ref)
     said = say("", refs, read).values
-    return {name: found for name, (value, _) in said.items() if (found := _amount(value)) is not None}
+    found = {name: amount for name, (value, _) in said.items() if (amount := _amount(value)) is not None}
+    stamp = _stamp(said["time"][0]) if "time" in said else None
+    return found | ({} if stamp is None else {"time": Amount(stamp, "s")})
+
+
+def _stamp(value: Any) -> float | None:
+    """Return a time stamp in seconds since 1970; one without a zone counts as UTC."""
+    try:
+        said = datetime.fromisoformat(value) if isinstance(value, str) else None
+    except ValueError:
+        return None
+    if said is None:
+        return None
+    return (said if said.tzinfo else said.replace(tzinfo=UTC)).timestamp()
 
 
 def faults(said: Sequence[Said], capture: Capture, serial: str, pattern: str) -> list[str]:
@@ -174,13 +189,13 @@ def faults(said: Sequence[Said], capture: Capture, serial: str, pattern: str) ->
                 sentence = _form(name, value, source) or _disagreement(name, value, source, capture)
             if sentence:
                 found[sentence] = None
-    counters, jumps = _counters(said)
+    counters, jumps = _counters(said) if capture.target != SEQUENCE else ([], [])
     return [*found, *counters, *(jumps if rule.consecutive else [])]
 
 
 def remarks(said: Sequence[Said], capture: Capture) -> list[str]:
     """Return jumps of counters that a capture does not refuse."""
-    return [] if capture.sidecar.consecutive else _counters(said)[1]
+    return [] if capture.sidecar.consecutive or capture.target == SEQUENCE else _counters(said)[1]
 
 
 def _serial(value: Any, source: str, serial: str, pattern: str, *, strict: bool) -> str:
