@@ -95,6 +95,8 @@ def refuse_constant(frames: Sequence[Crop]) -> None:
         MeasurementRefused: A frame holds one value only.
     """
     for frame in frames:
+        if frame.codes.min() >= frame.camera.white_level:
+            raise MeasurementRefused("clipped", f"{frame.file}: all pixels lie at the white level")
         if frame.codes.min() == frame.codes.max():
             raise MeasurementRefused("no picture", f"{frame.file}: every pixel has the code {frame.codes.flat[0]:g}")
 
