@@ -1,8 +1,8 @@
 """Frames of a light series put together by level, with what names, sidecars or options say of the light of each.
 
-Light is said by amounts with a unit: a level (`level-25%.tif` for `level-{level}.tif`, or a sidecar's `level`), or an
-exposure time under a steady lamp. Photons are photons per pixel during the exposure. A plain number in a name is only a
-place in a row, unless it is said to be an amount of light.
+Light is said by a level (`level-25/flat-1.tif` for `level-{level}/flat-{repeat}.tif`, or a sidecar's `level`) or by an
+exposure time under a steady lamp. Photons are photons per pixel during the exposure. A plain number in a name is taken
+for an amount in a unit of its own, unless it is said to be only a place in a row.
 """
 
 from collections.abc import Iterator, Mapping, Sequence
@@ -35,6 +35,8 @@ class LevelFrames:
     """Place in a row, as a plain number in the names says; None without one."""
     exposure: float | None = None
     """Exposure time, s; None where nothing says it."""
+    mark: str = ""
+    """What names say along the axis of exposure: alike for the darks of the same exposure."""
 
 
 @dataclass(frozen=True)
@@ -48,7 +50,7 @@ class Series:
 
 
 def series(
-    crops: Sequence[Crop], *, frames_per_level: int = 0, light: Sequence[Amount] = (), plain_is_light: bool = False
+    crops: Sequence[Crop], *, frames_per_level: int = 0, light: Sequence[Amount] = (), plain_is_light: bool = True
 ) -> Series:
     """Put the frames of a capture together by level.
 
@@ -57,7 +59,7 @@ def series(
         frames_per_level: Where neither names nor sidecars tell levels apart: so many frames one after another are a
             level; 0 takes them all for one.
         light: Amounts of light of the levels, one by one, in place of what names and sidecars say.
-        plain_is_light: Plain numbers in names are amounts of light.
+        plain_is_light: Plain numbers in names are amounts of light, else places in a row.
 
     Raises:
         MeasurementRefused: Frames do not divide into levels, amounts are not one for each level, or in units of
@@ -84,7 +86,10 @@ def _grouped(crops: Sequence[Crop]) -> list[LevelFrames]:
     found = []
     for number, members in enumerate(groups.values(), 1):
         words = [f"{axis} {members[0].axes[axis]}" for axis in AXES if axis in members[0].axes]
-        found.append(LevelFrames(", ".join(words) or f"level {number}", tuple(members), place=_place(members[0])))
+        mark = members[0].axes.get("exposure", "") if "exposure" not in members[0].taken else ""
+        found.append(
+            LevelFrames(", ".join(words) or f"level {number}", tuple(members), place=_place(members[0]), mark=mark)
+        )
     return found
 
 

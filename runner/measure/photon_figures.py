@@ -169,25 +169,28 @@ def photons(of: Transfer, count: float, count_u: float) -> Figures:
 
 
 def _counted(of: Transfer, count: float, count_u: float) -> tuple[np.ndarray[Any, np.dtype[np.float64]], float]:
-    """Return the photons of the fitted levels and how well they are known."""
-    light = np.array([one.light or 0.0 for one in of.fitted])
-    if of.light_in == "photons":
-        return light, count_u
-    if not count:
+    """Return the photons of the fitted levels and how well they are known.
+
+    Raises:
+        MeasurementRefused: They are not known.
+    """
+    if not count and of.light_in != "photons":
         raise MeasurementRefused(
             "not defined",
             "nothing says how many photons reached a pixel",
             next_step="give the option photons, or levels in photons by a calibrated detector",
         )
     brightest = of.points[-1]
-    if not of.light_in and len(of.points) > 1:
+    if len(of.points) > 1 and of.response is None:
         raise MeasurementRefused(
             "not defined",
-            f"photons are given for {brightest.label} alone, and nothing says how much light the others had",
-            next_step="name levels with their unit, give sidecars, or the option light",
+            "signals are not in proportion to the light that is said of the levels, or nothing is said",
+            next_step="give each level its light, by sidecars or the option light",
         )
-    top = brightest.light if of.light_in else 1.0
-    return count * (light if of.light_in else np.ones(1)) / float(top or 1.0), count_u
+    light = np.array([one.light or 1.0 for one in of.fitted])
+    if of.light_in == "photons":
+        return light, count_u
+    return count * light / float(brightest.light or 1.0), count_u
 
 
 def rise_in_darkness(of: Transfer, without: tuple[Dark, ...], *, by_variance: bool) -> Figure:

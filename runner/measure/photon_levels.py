@@ -25,6 +25,8 @@ LEAST_FRAMES = 2
 """One frame does not tell what changes from what stays."""
 LEAST_SIDE = 8
 """Rows and columns below which they are not told apart."""
+MOST_DARK = 0.02
+"""Darks of the shortest exposure may lie so far over the black level, as a share of the range."""
 MOST_DRIFT = 0.05
 """Frames of one level that differ by more are not of one level."""
 BLOCK, BLOCKS = 1000, 8
@@ -41,6 +43,8 @@ class Dark:
 
     exposure: float | None
     """Exposure time, s; None where nothing says it."""
+    mark: str
+    """What names say of it."""
     level: float
     """Mean, DN."""
     level_u: float
@@ -87,16 +91,26 @@ class Point:
 
 
 def darks(levels: Sequence[LevelFrames], order: int) -> tuple[Dark, ...]:
-    """Measure frames without light, by exposure time.
+    """Measure frames without light, by exposure time, the shortest first.
 
     Args:
         levels: Frames by exposure time.
         order: Order of the polynomial shading that is no pattern.
 
     Raises:
-        MeasurementRefused: Single frames, frames cut off at code 0, or without any noise.
+        MeasurementRefused: Single frames, frames cut off at code 0, without any noise, or with light.
     """
-    return tuple(_dark(level, order) for level in levels)
+    found = sorted((_dark(level, order) for level in levels), key=lambda one: (one.exposure or 0.0, one.level))
+    camera = levels[0].crops[0].camera
+    share = (found[0].level - camera.black_level) / (camera.white_level - camera.black_level)
+    if share > MOST_DARK:
+        raise MeasurementRefused(
+            "too bright",
+            f"the darks lie {100 * share:.1f} % of the range over the black level of {camera.black_level:g} DN",
+            allowed=f"{100 * MOST_DARK:g} % at the shortest exposure",
+            next_step="switch the lamp off and cover the sensor, or correct camera: black_level in the spec",
+        )
+    return tuple(found)
 
 
 def _dark(level: LevelFrames, order: int) -> Dark:
@@ -108,7 +122,9 @@ def _dark(level: LevelFrames, order: int) -> Dark:
     if found.variance == 0:
         raise MeasurementRefused("no picture", f"all {count} dark frames are the same: there is no noise at all")
     u = max(found.level_u, float(found.levels.std(ddof=1)) / sqrt(count))
-    return Dark(level.exposure, float(found.levels.mean()), u, found.variance, found.variance_u, found.fixed)
+    return Dark(
+        level.exposure, level.mark, float(found.levels.mean()), u, found.variance, found.variance_u, found.fixed
+    )
 
 
 def points(levels: Sequence[LevelFrames], without: Sequence[Dark], order: int) -> tuple[Point, ...]:
@@ -145,6 +161,9 @@ def _dark_at(level: LevelFrames, without: Sequence[Dark]) -> Dark:
     """Return the dark of a level's exposure time: that of the same time, or between its neighbours."""
     if len(without) == 1:
         return without[0]
+    alike = [one for one in without if one.mark and one.mark == level.mark]
+    if len(alike) == 1:
+        return alike[0]
     timed = sorted((d for d in without if d.exposure is not None), key=lambda d: d.exposure or 0.0)
     if level.exposure is None or len(timed) < len(without):
         unknown = f"{level.label} does not" if level.exposure is None else "not every dark frame does"
@@ -168,7 +187,7 @@ def _dark_at(level: LevelFrames, without: Sequence[Dark]) -> Dark:
         float(np.interp(at, times, [float(getattr(d, name)) for d in timed]))
         for name in ("level", "level_u", "variance", "variance_u")
     )
-    return Dark(at, mean, mean_u, variance, variance_u, timed[near].fixed)
+    return Dark(at, level.mark, mean, mean_u, variance, variance_u, timed[near].fixed)
 
 
 def _point(level: LevelFrames, dark: Dark, order: int) -> Point:
@@ -273,7 +292,7 @@ def _refuse_mixed(found: Sequence[Point]) -> None:
         raise MeasurementRefused(
             "another scene",
             f"{swapped[1]} is darker than {swapped[0]}, against their order",
-            next_step="find out which folder or name is wrong, or capture the series again",
+            next_step="find out which folder or name is wrong; plain_numbers: order, if numbers tell no amounts",
         )
 
 

@@ -69,7 +69,7 @@ class Transfer:
     fitted: tuple[Point, ...]
     """Levels that the gain was fitted to."""
     response: float | None
-    """Signal for one unit of light, DN; None where the light is not known."""
+    """Signal for one unit of light, DN; None where signals are not in proportion to what is said of the light."""
     drift: float
     """Drift of the lamp from frame to frame, as a share."""
 
@@ -100,7 +100,7 @@ def transfer(points: Sequence[Point], darks: Sequence[Dark], light_in: str) -> T
     Raises:
         MeasurementRefused: Too much light, or a level whose noise is no photon noise.
     """
-    dark = min(darks, key=lambda one: one.exposure or 0.0)
+    dark = darks[0]
     whole = points[0].frames.crops[0].codes.dtype.kind in "iu"
     brightest = max(points, key=lambda one: one.variance - one.dark.variance)
     fitted = tuple(one for one in points if 0 < one.signal <= law.TOP * brightest.signal)
@@ -110,11 +110,7 @@ def transfer(points: Sequence[Point], darks: Sequence[Dark], light_in: str) -> T
         _refuse_ends(one)
     gain, slope = _gain(fitted, dark)
     drift = _drift(points)
-    lit = [(one.light, one.signal) for one in fitted if one.light]
-    response = None
-    if light_in and lit:
-        x, y = (np.array(column, dtype=np.float64) for column in zip(*lit, strict=True))
-        response = law.slope(x, y, y).value
+    response = _response(fitted) if light_in else None
     signal = np.array([one.signal for one in points])
     linear = signal if response is None else np.array([response * (one.light or 0.0) for one in points])
     excess = np.array([one.variance - one.dark.variance + dark.variance for one in points])
@@ -122,6 +118,17 @@ def transfer(points: Sequence[Point], darks: Sequence[Dark], light_in: str) -> T
     pattern = np.array([one.pattern for one in points])
     end = saturation(signal, linear, excess, spread, pattern, gain=slope, dark=dark.variance)
     return Transfer(tuple(points), light_in, dark, law.ROUNDING if whole else 0.0, gain, end, fitted, response, drift)
+
+
+def _response(fitted: Sequence[Point]) -> float | None:
+    """Return the signal for one unit of light; None where it is not the same for all levels."""
+    top = max(one.signal for one in fitted)
+    lit = [(one.light, one.signal) for one in fitted if one.light and one.signal > law.LINEAR_FROM * top]
+    if not lit:
+        return None
+    x, y = (np.array(column, dtype=np.float64) for column in zip(*lit, strict=True))
+    found = law.slope(x, y, y).value
+    return found if np.all(np.abs(y - found * x) <= MOST_BENT / 100 * y) else None
 
 
 def _alone(points: Sequence[Point], brightest: Point) -> tuple[Point, ...]:
@@ -217,7 +224,7 @@ def linearity(of: Transfer) -> tuple[law.Linearity, Sequence[Point]]:
         raise MeasurementRefused(
             "not defined",
             "nothing says how much light each level had",
-            next_step="name levels with their unit, e.g. level-25%, give sidecars, or the option light",
+            next_step="number levels by their light, e.g. level-25, give sidecars, or the option light",
         )
     used = [one for one in of.points if law.LINEAR_FROM * of.top <= one.signal <= law.LINEAR_TO * of.top]
     if len(used) < LEAST_LEVELS:

@@ -105,8 +105,10 @@ class Options:
         default=(), metadata={"sentence": "Amounts of light, one for each level, in place of names and sidecars."}
     )
     plain_numbers: str = field(
-        default="order",
-        metadata={"sentence": "What a number without a unit in a name is: order (a place in a row) or light."},
+        default="light",
+        metadata={
+            "sentence": "What a number without a unit in a name is: light (an amount) or order (a place in a row)."
+        },
     )
     photons: float = field(
         default=0.0,
@@ -217,9 +219,9 @@ def _dark_frames(sample: Sample, found: Series, options: Options) -> tuple[tuple
 
 def _by_exposure(levels: tuple[LevelFrames, ...]) -> list[LevelFrames]:
     """Return darks by exposure time alone: without light their level says nothing."""
-    groups: dict[float | None, list[LevelFrames]] = {}
+    groups: dict[tuple[float | None, str], list[LevelFrames]] = {}
     for level in levels:
-        groups.setdefault(level.exposure, []).append(level)
+        groups.setdefault((level.exposure, level.mark), []).append(level)
     return [replace(some[0], crops=tuple(c for one in some for c in one.crops)) for some in groups.values()]
 
 
