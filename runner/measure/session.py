@@ -131,6 +131,7 @@ def _measure_capture(
         located.append(one.target.locate([seen], one.capture.regions, camera, one.target_options))
         if painter is not None and frame is frames[0]:
             painter(name, attempt, seen, tuple(_fact(found) for found in located[0]))
+        del seen  # a picture of its own where there are colours; a large one would lie about while methods work
     regions = tuple(_fact(found) for found in located[0])
     bench = _Bench(one, companions, faults.tracebacks if faults is not None else [])
     shown = _measure_steps(bench, frames, located)

@@ -31,6 +31,8 @@ MOST_STEPS = 30
 """Corrections of the frequency; three to six are usual."""
 SETTLED = 1e-10
 """Correction, in periods over the patch, at which the frequency stands."""
+MOST_POWER = 4
+"""Highest power of x or y in a product of two terms: backgrounds are of order 2 at most."""
 PROBES = 12
 """Frequencies around the fundamental at which the residual is looked at, for noise that is not white."""
 
@@ -193,6 +195,7 @@ class _Sums:
         self.half = max(reach, 1.0)
         self.mean = sum(float(one.values.sum()) for one in lattices) / self.count
         self._lattices = [(one.values - self.mean, one.x / self.half, one.y / self.half) for one in lattices]
+        self._powers = [[[r**k for k in range(MOST_POWER + 1)] for r in (x, y)] for _, x, y in self._lattices]
         self.power = sum(float(np.vdot(v, v)) for v, _, _ in self._lattices)
 
     def apart(self, u: Real, v: Real) -> float:
@@ -210,8 +213,8 @@ class _Sums:
     def pairs(self, one: Sequence[Term], two: Sequence[Term], u: Real, v: Real) -> Complex:
         """Return Σ T_i T_j over all pixels, i of `one` at frequency u, j of `two` at v."""
         out = np.zeros((len(one), len(two)), dtype=np.complex128)
-        for _, x, y in self._lattices:
-            across, down = _Line(x * self.half, self.half), _Line(y * self.half, self.half)
+        for powers in self._powers:
+            across, down = (_Line(one, self.half) for one in powers)
             for i, s in enumerate(one):
                 for j, t in enumerate(two):
                     w = s.h * u + t.h * v
@@ -231,12 +234,22 @@ class _Sums:
                 out[j] += rows[kinds.index((t.h, t.b))] @ along
         return out
 
+    def waves(self, frequencies: Real) -> Complex:
+        """Return Σ values · e^{2πi v·r} over all pixels for each frequency, number × 2, in one walk over the pixels."""
+        out = np.zeros(len(frequencies), dtype=np.complex128)
+        for values, x, y in self._lattices:
+            down = np.exp(2j * np.pi * self.half * np.outer(frequencies[:, 1], y))
+            both = np.concatenate([down.real, down.imag]) @ values
+            along = np.exp(2j * np.pi * self.half * np.outer(frequencies[:, 0], x))
+            out += np.einsum("ij,ij->i", both[: len(down)] + 1j * both[len(down) :], along)
+        return out
+
 
 class _Line:
     """Sums of powers and waves along one axis, each worked out once."""
 
-    def __init__(self, places: Real, half: float) -> None:
-        self._places, self._half = places, half
+    def __init__(self, powers: Sequence[Real], half: float) -> None:
+        self._powers, self._places = powers, powers[1] * half
         self._waves: dict[float, Complex] = {}
         self._known: dict[tuple[int, float], complex] = {}
 
@@ -245,7 +258,7 @@ class _Line:
         if (power, w) not in self._known:
             if w not in self._waves:
                 self._waves[w] = np.exp(2j * np.pi * w * self._places)
-            self._known[power, w] = complex((self._places / self._half) ** power @ self._waves[w])
+            self._known[power, w] = complex(self._powers[power] @ self._waves[w])
         return self._known[power, w]
 
 
@@ -302,12 +315,11 @@ class _Solution:
         if self.noise == 0:
             return 1.0
         probes = [Term(0, 0, 1)]
+        turns = 2 * np.pi * (np.arange(PROBES) + 0.5) / PROBES
+        away = (2.5 + 1.5 * (np.arange(PROBES) % 2)) / (2 * self._sums.half)
+        around = self.u + away[:, None] * np.stack([np.cos(turns), np.sin(turns)], axis=1)
         power = []
-        for k in range(PROBES):
-            turn = 2 * np.pi * (k + 0.5) / PROBES
-            away = (2.5 + 1.5 * (k % 2)) / (2 * self._sums.half)
-            v = self.u + away * np.array([np.cos(turn), np.sin(turn)])
-            seen = self._sums.projections(probes, v)[0]
+        for v, seen in zip(around, self._sums.waves(around), strict=True):
             plain = self._sums.pairs(probes, self.terms, v, self.u)[0]
             turned = self._sums.pairs(probes, self.terms, v, -self.u)[0]
             model = (plain @ self.coefficients + turned @ self.coefficients.conj()) / 2

@@ -84,12 +84,17 @@ def spectrum(values: NDArray[np.floating], *, level: bool = False) -> Real:
     """
     rows, columns = values.shape
     x, y = _centred(columns), _centred(rows)
-    flat = values - values.mean()
+    mean = values.mean()
+    flat = values - mean
     slope_x = float(x @ flat.sum(axis=0)) / (rows * float(x @ x))
     slope_y = float(y @ flat.sum(axis=1)) / (columns * float(y @ y))
-    flat = flat - slope_x * x[None, :] - slope_y * y[:, None] + (values.mean() if level else 0.0)
+    flat -= slope_x * x[None, :]
+    flat -= slope_y * y[:, None]
+    if level:
+        flat += mean
     wx, wy = _hann(columns), _hann(rows)
-    flat = flat * (wx / wx.mean())[None, :] * (wy / wy.mean())[:, None]
+    flat *= (wx / wx.mean())[None, :]
+    flat *= (wy / wy.mean())[:, None]
     transformed = fft.rfft2(flat.astype(np.float32)) / flat.size
     return np.asarray(transformed.real**2 + transformed.imag**2, dtype=np.float64)
 
@@ -144,12 +149,12 @@ def picture(values: NDArray[np.floating], pitch: float, most: int) -> tuple[Real
     whole = fft.fftshift(whole, axes=0)
     x = np.concatenate([-fft.rfftfreq(columns)[1 : (columns + 1) // 2][::-1], fft.rfftfreq(columns)]) / pitch
     y = fft.fftshift(fft.fftfreq(rows)) / pitch
-    decibels = 10 * np.log10(np.maximum(whole, 1e-30) / max(float(whole.max()), 1e-30))
+    highest = max(float(whole.max()), 1e-30)
     for axis, size in ((0, rows), (1, x.size)):
         step = -(-size // most)
         starts = np.arange(0, size, step)
-        decibels = np.maximum.reduceat(decibels, starts, axis=axis)
+        whole = np.maximum.reduceat(whole, starts, axis=axis)
         places = (y, x)[axis]
         means = np.add.reduceat(places, starts) / np.diff(np.append(starts, size))
         y, x = (means, x) if axis == 0 else (y, means)
-    return x, y, decibels
+    return x, y, 10 * np.log10(np.maximum(whole, 1e-30) / highest)
