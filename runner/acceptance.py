@@ -175,7 +175,7 @@ def accept_units(job: Job, units: Sequence[UnitFolder], announce: Announce) -> I
         results: Iterator[UnitResult] = (accept_unit(job, unit) for unit in units)
         yield from _announced(results, len(units), announce)
         return
-    arguments = (job.order, job.plan.spec, job.facts, job.survey)
+    arguments = (job.order, job.plan.asked, job.facts, job.survey)
     with processes.pool(min(job.order.jobs, len(units)), _start_worker, *arguments) as pool:
         yield from _announced(pool.map(_accept_in_worker, units), len(units), announce)
 

@@ -79,6 +79,8 @@ class Plan:
     """In the order of the spec."""
     uncertainty: tuple[UncertaintyComponent, ...]
     """Declared components of spec and station together."""
+    asked: Spec | None = None
+    """The spec before it was bound; only that can be bound once more."""
 
     def defaults(self) -> dict[str, Any]:
         """Return what the program filled in, as plain JSON data for the results."""
@@ -108,7 +110,7 @@ def bind(spec: Spec, station: Station | None = None) -> Plan:
     if any(c.severity == "error" for c in placed):
         raise SpecError(placed)
     bound = replace(spec, captures=tuple(plan.capture for plan in captures), warnings=(*spec.warnings, *placed))
-    return Plan(bound, captures, declared)
+    return Plan(bound, captures, declared, spec)
 
 
 def _bind_capture(spec: Spec, capture: Capture, complaints: list[Complaint]) -> CapturePlan | None:

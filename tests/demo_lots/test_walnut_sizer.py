@@ -52,7 +52,7 @@ def spec() -> Spec:
 
 @pytest.fixture(scope="module")
 def demo(tmp_path_factory: pytest.TempPathFactory) -> Iterator[tuple[Exit, str, Path]]:
-    """Run the whole demo once in a home of its own; yield exit code, printed text and its folder."""
+    """Run the whole demo once, on two processes, in a home of its own; yield exit code, printed text and its folder."""
     out = tmp_path_factory.mktemp("demo")
     with pytest.MonkeyPatch.context() as patch:
         patch.setenv("HOME", str(out / "home"))
@@ -60,7 +60,7 @@ def demo(tmp_path_factory: pytest.TempPathFactory) -> Iterator[tuple[Exit, str, 
         patch.delenv("XDG_DATA_HOME", raising=False)
         printed = io.StringIO()
         with contextlib.redirect_stdout(printed):
-            code = run(["demo", "walnut_sizer", "--out", str(out / "demo")])
+            code = run(["demo", "walnut_sizer", "--out", str(out / "demo"), "--jobs", "2"])
         yield code, printed.getvalue(), out / "demo"
     shutil.rmtree(out / "demo")  # 80 MB
 

@@ -171,6 +171,17 @@ def test_a_whole_quantity_is_wanted_once_for_its_group(tmp_path: Path) -> None:
     assert plan.spec.captures[0].limits[0].where == ("upright",)
 
 
+def test_what_another_process_binds_again_is_the_same_plan(tmp_path: Path) -> None:
+    """Bound once more from what was asked, groups and warnings are the same; a bound spec has lost the members."""
+    plan = _bind_stripes(tmp_path, "quantity: mtf, frequency: 0.1 cy/px, where: upright, at_least: 0.4")
+    assert plan.asked is not None
+
+    again = bind(plan.asked)
+
+    assert again.spec == plan.spec
+    assert [m.groups for m in again.captures[0].methods] == [m.groups for m in plan.captures[0].methods]
+
+
 def test_a_whole_quantity_may_leave_where_out(tmp_path: Path) -> None:
     """Then it stands for all regions of the capture."""
     plan = _bind_stripes(tmp_path, "quantity: mtf50, at_least: 0.1 cy/px")
