@@ -132,3 +132,24 @@ def test_the_program_starts_from_any_folder(tmp_path: Path) -> None:
     )
 
     assert json.loads(done.stdout)["$schema"].startswith("https://json-schema.org/")
+
+
+@pytest.mark.parametrize(("words", "full"), [("schema", "stdout"), ("run nowhere", "stderr"), ("--help", "stdout")])
+def test_lines_that_cannot_be_written_never_read_as_a_verdict(words: str, full: str) -> None:
+    """With its lines going to a full disk the program ends with 70: 1 would say that a unit does not conform."""
+    command = [sys.executable, "-m", "runner", *words.split()]
+    with Path("/dev/full").open("wb") as disk:
+        to, also = (disk, subprocess.PIPE) if full == "stdout" else (subprocess.PIPE, disk)
+        done = subprocess.run(command, cwd=ROOT, check=False, stdout=to, stderr=also)
+
+    assert done.returncode == 70
+    assert b"Traceback" not in (done.stdout or b"") + (done.stderr or b"")
+
+
+def test_a_reader_who_goes_away_changes_nothing() -> None:
+    """Whoever reads only the first lines, as `head` does, gets them without a complaint."""
+    line = f"{sys.executable} -m runner schema | head -1"
+    done = subprocess.run(line, shell=True, cwd=ROOT, capture_output=True, check=False)  # noqa: S602 - fixed words
+
+    assert done.stdout.startswith(b"{")
+    assert done.stderr == b""

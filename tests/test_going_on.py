@@ -30,7 +30,7 @@ def _start(folder: Path, out: str, jobs: int) -> subprocess.Popen[bytes]:
     command = [sys.executable, "-m", "runner", "run", "spec.yaml", "frames", "--out", out, "--time", TIME, "--quiet"]
     root = str(Path(__file__).resolve().parent.parent)
     environment = os.environ | {"XDG_CONFIG_HOME": str(folder / "config"), "PYTHONPATH": root}
-    with (folder / f"{out}.err").open("ab") as said:
+    with (folder / f"{Path(out).name}.err").open("ab") as said:
         return subprocess.Popen(
             [*command, "--jobs", str(jobs)],
             cwd=folder,
@@ -124,6 +124,87 @@ def test_a_folder_that_is_lost_on_the_way(tmp_path: Path) -> None:
     assert not (folder / "out").exists()
 
 
+@pytest.fixture(scope="module")
+def calm(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """Return the folder of a lot of two units with the results of an undisturbed run beside it."""
+    folder = _lot(tmp_path_factory.mktemp("calm"), 2)
+    assert _start(folder, "calm", 1).wait() == 0
+    return folder
+
+
+def _small_disk(place: Path, size: str) -> None:
+    """Mount a file system of so much memory, or give it another size; skip where that is not allowed."""
+    place.mkdir(exist_ok=True)
+    option = f"{'remount,' if place.is_mount() else ''}size={size}"
+    made = subprocess.run(["mount", "-t", "tmpfs", "-o", option, "tmpfs", place], capture_output=True, check=False)
+    if made.returncode:
+        pytest.skip(f"a small file system cannot be mounted: {made.stderr.decode().strip()}")
+
+
+def test_a_full_disk(calm: Path, tmp_path: Path) -> None:
+    """When the disk is full in the middle of a lot a sentence says so and 70 ends the run; nothing is torn.
+
+    Once there is room, a rerun completes with the bytes of an undisturbed run.
+    """
+    folder = tmp_path / "lot"
+    shutil.copytree(calm, folder)
+    disk = folder / "disk"
+    _small_disk(disk, "240k")  # a unit's files take 150 kB
+    try:
+        run = _start(folder, "disk/out", 1)
+        assert run.wait() == 70
+        said, done = (folder / "out.err").read_text(), list((disk / "out").glob("WS8-*"))
+        _whole(disk / "out")
+        _small_disk(disk, "20m")
+        assert _start(folder, "disk/out", 1).wait() == 0
+
+        assert len(done) == 1
+        assert "Traceback" not in said
+        assert "cannot be written: No space left on device" in said
+        assert _contents(disk / "out") == _contents(folder / "calm")
+    finally:
+        subprocess.run(["umount", "-l", disk], check=False)
+
+
+FULL = """
+import errno, os, runpy, sys, tempfile
+room, made = int(sys.argv.pop(1)), tempfile.mkstemp
+def mkstemp(*arguments, **named):
+    global room
+    if str(named.get("dir", "")).startswith("out"):
+        room -= 1
+        if room < 0:
+            raise OSError(errno.ENOSPC, os.strerror(errno.ENOSPC), str(named["dir"]))
+    return made(*arguments, **named)
+tempfile.mkstemp = mkstemp
+sys.argv[0] = "probatum"
+runpy.run_module("runner", run_name="__main__")
+"""
+"""Runs the program with room for so many files in its folder of results."""
+
+
+@pytest.mark.parametrize(
+    "room", [4, pytest.param(0, marks=pytest.mark.study), pytest.param(9, marks=pytest.mark.study)]
+)
+def test_room_for_so_many_files(room: int, calm: Path, tmp_path: Path) -> None:
+    """Wherever the room ends, before, in or after a unit, a sentence says so, 70 ends the run, a rerun completes it."""
+    folder = tmp_path / "lot"
+    shutil.copytree(calm, folder)
+    root = str(Path(__file__).resolve().parent.parent)
+    environment = os.environ | {"XDG_CONFIG_HOME": str(folder / "config"), "PYTHONPATH": root}
+    command = [sys.executable, "-c", FULL, str(room), "run", "spec.yaml", "frames", "--out", "out", "--time", TIME]
+    ended = subprocess.run(command, cwd=folder, env=environment, capture_output=True, text=True, check=False)
+    _whole(folder / "out")
+    assert _start(folder, "out", 1).wait() == 0
+
+    told = ended.stdout + ended.stderr
+    assert ended.returncode == 70
+    assert "No space left on device" in told
+    assert "make room" in told.lower()
+    assert "Traceback" not in told
+    assert _contents(folder / "out") == _contents(folder / "calm")
+
+
 def test_units_one_after_another_are_one_lot(tmp_path: Path) -> None:
     """`--unit` for each serial in turn ends with the bytes of one run over all."""
     folder = _lot(tmp_path, 3)
@@ -134,4 +215,28 @@ def test_units_one_after_another_are_one_lot(tmp_path: Path) -> None:
         subprocess.run([*command, "--unit", f"WS8-{n:06d}"], cwd=folder, env=environment, check=True)
     assert _start(folder, "calm", 2).wait() == 0
 
+    assert _contents(folder / "out") == _contents(folder / "calm")
+
+
+@pytest.mark.study
+def test_the_time_of_a_unit_does_not_grow(tmp_path: Path) -> None:
+    """Of 200 units run with `--unit` one after another the last ones take no longer, and the lot is that of one run.
+
+    What is allowed, half as much again for the last fifth as for the first, is far above the scatter of a machine that
+    does nothing else, and far below what looking at every unit in every run would take.
+    """
+    folder = _lot(tmp_path, 200)
+    root = str(Path(__file__).resolve().parent.parent)
+    environment = os.environ | {"XDG_CONFIG_HOME": str(folder / "config"), "PYTHONPATH": root}
+    command = [sys.executable, "-m", "runner", "run", "spec.yaml", "frames", "--out", "out", "--time", TIME, "--quiet"]
+    took = []
+    for n in range(1, 201):
+        begun = time.monotonic()
+        subprocess.run([*command, "--unit", f"WS8-{n:06d}"], cwd=folder, env=environment, check=True)
+        took.append(time.monotonic() - begun)
+    assert _start(folder, "calm", 2).wait() == 0
+
+    first, last = sorted(took[:40])[20], sorted(took[-40:])[20]
+    print(f"median of the first 40 units {first:.2f} s, of the last 40 {last:.2f} s")
+    assert last < 1.5 * first
     assert _contents(folder / "out") == _contents(folder / "calm")

@@ -1,6 +1,7 @@
 """Files that appear whole or not at all, and the folder of a run."""
 
 import contextlib
+import errno
 import fcntl
 import json
 import os
@@ -11,7 +12,7 @@ from hashlib import sha256
 from pathlib import Path
 from typing import Any
 
-from runner.errors import UsageError
+from runner.errors import StorageError, UsageError
 
 RESULTS = "results.json"
 HTML = "report.html"
@@ -20,6 +21,8 @@ PDF = "report.pdf"
 PICTURES = "pictures"
 EARLIER = "earlier"
 RUN = "run.json"
+FULL = frozenset({errno.ENOSPC, errno.EDQUOT})
+"""What the system says when there is no room left."""
 _MAKING = ".making-"
 _READY = ".ready"
 _RUN_LOCK = ".lock"
@@ -175,6 +178,7 @@ def start_run(out: Path, facts: Mapping[str, Any]) -> dict[str, Any]:
 
     Raises:
         UsageError: The folder holds a run of another spec, program or station, or cannot be written.
+        StorageError: There is no room in it.
     """
     try:
         out.mkdir(parents=True, exist_ok=True)
@@ -185,9 +189,9 @@ def start_run(out: Path, facts: Mapping[str, Any]) -> dict[str, Any]:
                 return dict(facts)
             kept = json.loads(path.read_text(encoding="utf-8"))
     except OSError as error:
-        raise UsageError(
-            f"the folder cannot be written: {error.strerror}", where=str(out), next_step="choose another --out"
-        ) from error
+        kind = StorageError if error.errno in FULL else UsageError
+        step = "make room and run again, or choose another --out" if error.errno in FULL else "choose another --out"
+        raise kind(f"the folder cannot be written: {error.strerror}", where=str(out), next_step=step) from error
     except ValueError as error:
         raise UsageError(f"{RUN} cannot be read: {error}", where=str(out), next_step="choose another --out") from error
     differing = [k for k in facts if k != "time" and kept.get(k) != facts[k]]

@@ -1,11 +1,13 @@
 """Files appear whole or not at all; nothing that was written is lost."""
 
+import errno
 import json
+import os
 from pathlib import Path
 
 import pytest
 
-from runner.errors import UsageError
+from runner.errors import StorageError, UsageError
 from runner.report import store
 
 FACTS = {"time": "2026-12-01T09:30:00Z", "digest": "sha256:1", "lot": "L1"}
@@ -130,3 +132,19 @@ def test_results_of_another_spec_do_not_enter_the_lot(tmp_path: Path) -> None:
 
     assert [d["unit"]["serial"] for d in store.each_result(tmp_path, "sha256:1")] == ["S1"]
     assert list(store.each_result(tmp_path, "sha256:2")) == []
+
+
+@pytest.mark.parametrize(("number", "kind"), [(errno.ENOSPC, StorageError), (errno.EACCES, UsageError)])
+def test_a_folder_without_room_is_no_wrong_command_line(
+    number: int, kind: type[Exception], tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """A disk that is full at the very start is told as such, not as an option that was chosen wrongly."""
+
+    def full(*_arguments: object, **_named: object) -> None:
+        raise OSError(number, os.strerror(number))
+
+    monkeypatch.setattr("tempfile.mkstemp", full)
+
+    with pytest.raises(kind, match="the folder cannot be written: (No space left on device|Permission denied)"):
+        store.start_run(tmp_path / "out", {"time": "t"})
+    assert not (tmp_path / "out" / store.RUN).exists()
