@@ -145,6 +145,6 @@ def test_a_folder_without_room_is_no_wrong_command_line(
 
     monkeypatch.setattr("tempfile.mkstemp", full)
 
-    with pytest.raises(kind, match="the folder cannot be written: (No space left on device|Permission denied)"):
+    with pytest.raises(kind, match=r"the folder cannot be written: (No space left on device|Permission denied)"):
         store.start_run(tmp_path / "out", {"time": "t"})
     assert not (tmp_path / "out" / store.RUN).exists()
