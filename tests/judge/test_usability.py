@@ -5,6 +5,7 @@ from collections.abc import Sequence
 
 import pytest
 
+from runner.capture.fitness import UNDECIDED
 from runner.judge.usability import judge_capture
 from runner.judge.verdict import CaptureState
 from runner.measure.evidence import CaptureEvidence
@@ -74,3 +75,17 @@ def test_a_quantity_that_the_unit_could_spoil_blames_nobody() -> None:
     )
 
     assert (state.usable, state.at_fault) == (False, "cannot tell")
+
+
+def test_a_frame_that_unit_or_light_may_have_spoilt_blames_nobody() -> None:
+    """A sentence that leaves open what the frame shows blames nobody; beside a plain fault of a file that one counts."""
+    open_ = f"dark-1.tif: the frame is lit; light and a unit's own dark signal {UNDECIDED}"
+    plain = "dark-2.tif: the file is truncated"
+
+    def state(*faults: str) -> CaptureState:
+        return _state(capture=CaptureEvidence("chart", 1, "dark frame", (), faults))
+
+    assert (state(open_).usable, state(open_).at_fault) == (False, "cannot tell")
+    assert "known to be good" in (state(open_).because or "")
+    assert state(plain).at_fault == state(open_, plain).at_fault == "capture"
+    assert state(open_, plain).faults == (open_, plain)
