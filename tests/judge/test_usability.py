@@ -78,7 +78,7 @@ def test_a_quantity_that_the_unit_could_spoil_blames_nobody() -> None:
 
 
 def test_a_frame_that_unit_or_light_may_have_spoilt_blames_nobody() -> None:
-    """A sentence that leaves open what the frame shows blames nobody; beside a plain fault of a file that one counts."""
+    """A sentence that leaves open what the frame shows blames nobody; a plain fault of a file beside it counts."""
     open_ = f"dark-1.tif: the frame is lit; light and a unit's own dark signal {UNDECIDED}"
     plain = "dark-2.tif: the file is truncated"
 
