@@ -191,7 +191,7 @@ def accept_unit(job: Job, unit: UnitFolder) -> UnitResult:
 
 def _accept(job: Job, unit: UnitFolder) -> UnitResult:
     try:
-        evidence, pictures, tracebacks = measure_unit(job.plan, unit, job.survey)
+        evidence, pictures, tracebacks = measure_unit(job.plan, unit, job.survey, job.facts.time)
     except Exception:  # noqa: BLE001 - a fault of the program leaves this unit not measured and the lot goes on
         evidence, pictures, tracebacks = _fault_evidence(job.plan, unit), {}, [traceback.format_exc()]
     try:
@@ -208,9 +208,9 @@ def _accept(job: Job, unit: UnitFolder) -> UnitResult:
 
 
 def measure_unit(
-    plan: Plan, unit: UnitFolder, survey: integrity.Survey
+    plan: Plan, unit: UnitFolder, survey: integrity.Survey, time: str = ""
 ) -> tuple[UnitEvidence, dict[str, bytes], list[str]]:
-    """Measure every attempt of one unit: evidence, pictures by name, tracebacks of the program's own faults."""
+    """Measure every attempt of one unit: evidence, pictures by name, tracebacks; charts are due by the run's time."""
     pictures: dict[str, bytes] = {}
     faults = session.Faults()
 
@@ -224,7 +224,7 @@ def measure_unit(
     for attempt in unit.attempts:
         known = {c.capture.name: survey.faults(unit.serial, attempt.number, c.capture.name) for c in plan.captures}
         load = _loader(plan, unit, attempt, survey)
-        parts.append(session.measure_attempt(plan, attempt.number, load, known, painter=paint, faults=faults))
+        parts.append(session.measure_attempt(plan, attempt.number, load, known, time, painter=paint, faults=faults))
     marked, said = survey.simulated(unit.serial), survey.said(unit.serial)
     evidence = session.unit_evidence(unit.serial, parts)
     evidence = replace(evidence, remarks=survey.remarks(unit.serial), marked=marked, station=said)

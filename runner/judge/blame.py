@@ -62,6 +62,8 @@ UNUSABLE: Mapping[str, Blame] = {
 """Quantity of a `usable_if` that does not hold to blame."""
 UNUSABLE_OTHERWISE = Blame(AT_FAULT_CANNOT_TELL, f"the capture or the unit may cause it; {SETTLE}")
 FILE = Blame(AT_FAULT_CAPTURE, "a file cannot be evidence")
+CHART = Blame(AT_FAULT_CAPTURE, "the chart is another one, does not lie in the frame as it must, or may not be used")
+"""For sentences about a chart that has a file."""
 UNDECIDED = Blame(AT_FAULT_CANNOT_TELL, f"the capture or the unit may cause what the frame shows; {SETTLE}")
 """For files whose sentence says that both look alike."""
 TWO_ATTEMPTS = Blame(AT_FAULT_CANNOT_TELL, "there are two valid attempts and the spec has no rule for them")

@@ -7,6 +7,7 @@ from runner.capture.fitness import UNDECIDED
 from runner.judge import blame
 from runner.judge.sentences import show
 from runner.judge.verdict import CaptureState
+from runner.measure.chart_view import BEGINS
 from runner.measure.evidence import CaptureEvidence
 from runner.measure.reading import Reading
 from runner.spec import units
@@ -35,7 +36,9 @@ def judge_capture(capture: Capture, evidence: CaptureEvidence, readings: Sequenc
 
 
 def _of_file(sentence: str) -> blame.Blame:
-    return blame.UNDECIDED if UNDECIDED in sentence else blame.FILE
+    if UNDECIDED in sentence:
+        return blame.UNDECIDED
+    return blame.CHART if sentence.startswith(BEGINS) else blame.FILE
 
 
 def _broken(capture: Capture, bound: Bound, readings: Sequence[Reading]) -> list[str]:

@@ -11,6 +11,7 @@ from typing import Any
 
 from runner.errors import Complaint, SpecError, UsageError
 from runner.measure import shelf
+from runner.measure.chart_options import Filled, filled
 from runner.measure.contract import Method, QuantityInfo, Target, Wanted
 from runner.measure.natural_range import against_range
 from runner.measure.options import describe
@@ -41,6 +42,12 @@ class MethodPlan:
     """Readings that limits ask for, by region; for a method that gathers, by the name that its readings carry."""
     groups: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
     """For a method that gathers: the regions meant by each such name, besides all of them."""
+    own: Mapping[str, Any] = field(default_factory=dict)
+    """Options by region, where the chart's features have values of their own."""
+
+    def options_in(self, region: str) -> Any:
+        """Return the options for a region."""
+        return self.own.get(region, self.options)
 
     @property
     def gathers(self) -> bool:
@@ -67,6 +74,13 @@ class CapturePlan:
     """In the order of measuring."""
     axes: tuple[str, ...] = ()
     """Axes along which its frames differ in more than repeats."""
+    own: Mapping[str, Any] = field(default_factory=dict)
+    """The target's options by region, where the chart's features have values of their own."""
+
+    def of_the_chart(self) -> dict[str, Any]:
+        """Return options that the chart's features fill by region, as plain JSON data."""
+        by_module = {self.target.NAME: self.own} | {m.method.NAME: m.own for m in self.methods}
+        return {name: {r: describe(o) for r, o in own.items()} for name, own in by_module.items() if own}
 
 
 @dataclass(frozen=True)
@@ -89,6 +103,7 @@ class Plan:
                 "target": {plan.target.NAME: describe(plan.target_options)},
                 "measure": {m.method.NAME: describe(m.options) for m in plan.methods},
             }
+            | ({"by region": own} if (own := plan.of_the_chart()) else {})
             for plan in self.captures
         }
         asked = self.spec.expanded.get("decision") or {}
@@ -123,7 +138,7 @@ def _bind_capture(spec: Spec, capture: Capture, complaints: list[Complaint]) -> 
     chosen: dict[str, Mapping[str, Any]] = dict(capture.measure) or {name: {} for name in target.METHODS}
     if not axes:  # along an axis, level and clipping change from step to step
         chosen |= {name: {} for name in ALWAYS if name not in chosen}
-    bound: list[tuple[Method, Any]] = []
+    bound: list[tuple[Method, Filled]] = []
     for name, asked in chosen.items():
         method = shelf.methods().get(name)
         if method is None:
@@ -134,25 +149,26 @@ def _bind_capture(spec: Spec, capture: Capture, complaints: list[Complaint]) -> 
             complaints.append(Complaint(f"{place}, measure", found, next_step="choose another method or target"))
             continue
         try:
-            bound.append((method, method.read_options(asked)))
+            bound.append((method, filled(method.read_options, method.Options, asked, capture)))
         except UsageError as error:
             complaints.append(Complaint(f"{place}, measure, {name}", error.found, error.allowed, error.next_step))
     methods = [method for method, _ in bound]
     _bind_axes(capture, axes, methods, place, complaints)
     try:
-        target_options = target.read_options({**_shared_options(target, chosen), **capture.target_options})
+        asked = {**_shared_options(target, chosen), **capture.target_options}
+        target_options = filled(target.read_options, target.Options, asked, capture)
     except UsageError as error:
         complaints.append(Complaint(f"{place}, target", error.found, error.allowed, error.next_step))
-        target_options = None
+        target_options = Filled(None, {})
     meant = [m for m in methods if not axes or _along(m, axes)]
     if not meant and axes:  # complained of; what its limits ask for cannot be known
-        return CapturePlan(capture, target, target_options, (), axes)
+        return CapturePlan(capture, target, target_options.options, (), axes, target_options.own)
     capture, wanted, groups = _bind_limits(capture, place, meant, complaints)
     for one in capture.usable_if:
         _bind_bound(capture, one, place, meant, wanted, complaints)
     _bind_wants(capture, place, bound, wanted, complaints)
-    plans = tuple(MethodPlan(m, o, wanted.get(m.NAME, {}), groups.get(m.NAME, {})) for m, o in bound)
-    return CapturePlan(capture, target, target_options, plans, axes)
+    plans = tuple(MethodPlan(m, o.options, wanted.get(m.NAME, {}), groups.get(m.NAME, {}), o.own) for m, o in bound)
+    return CapturePlan(capture, target, target_options.options, plans, axes, target_options.own)
 
 
 def _bind_wants(

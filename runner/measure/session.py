@@ -12,6 +12,9 @@ from runner.capture.mosaic import grey
 from runner.errors import FrameRefused
 from runner.measure import tone
 from runner.measure.answers import attempted, refused
+from runner.measure.chart_frames import poses
+from runner.measure.chart_placing import locate, own_transfer
+from runner.measure.chart_view import worn
 from runner.measure.companions import Companions, Loader
 from runner.measure.contract import Found, Measurement, NotFound, Sample, Wanted, in_channel, joined
 from runner.measure.evidence import CaptureEvidence, FrameFact, RegionFact, UnitEvidence
@@ -49,6 +52,7 @@ def measure_attempt(
     attempt: int,
     load: Loader,
     known_faults: Mapping[str, tuple[str, ...]],
+    time: str = "",
     *,
     painter: Painter | None = None,
     faults: Faults | None = None,
@@ -60,13 +64,14 @@ def measure_attempt(
         attempt: Its number, from 1.
         load: Gives a capture's frames.
         known_faults: Sentences from the survey, by capture; such a capture is not measured.
+        time: Of the run, ISO 8601, by which charts are due; empty where days do not count.
         painter: Is shown the frames, for pictures.
         faults: Collects the program's own faults.
     """
     companions = Companions(plan, load, known_faults)
     parts: dict[str, tuple[CaptureEvidence, Measurement]] = {}
     for one in tone.in_order(plan.captures):
-        known = known_faults.get(one.capture.name, ())
+        known = known_faults.get(one.capture.name, ()) + worn(one.capture.chart, time)
         if tone.source(one) and not known:
             found = tone.linearised(one, [curve for _, measured in parts.values() for curve in measured.curves])
             one, known = (one, (found,)) if isinstance(found, str) else (found, known)  # noqa: PLW2901 - with its tone
@@ -102,8 +107,11 @@ class _Bench:
     """What every measurement of one capture needs."""
 
     one: CapturePlan
+    """The capture, bound."""
     companions: Companions
+    """Frames of its companions."""
     tracebacks: list[str]
+    """Takes the texts of faults of the program."""
 
 
 def _measure_capture(
@@ -126,11 +134,14 @@ def _measure_capture(
         return replace(evidence, faults=(str(error),)), Measurement(())
     camera = one.capture.camera
     located = []
-    for frame in frames:
+    views, unfit = poses(frames, one.capture, fixed=bool(one.axes))
+    for frame, pose in zip(frames, views, strict=True):
         seen = replace(frame, codes=grey(frame.codes, camera))
-        located.append(one.target.locate([seen], one.capture.regions, camera, one.target_options))
+        located.append([] if unfit else locate(one, seen, pose))
         if painter is not None and frame is frames[0]:
             painter(name, attempt, seen, tuple(_fact(found) for found in located[0]))
+        if unfit:
+            return replace(evidence, frames=tuple(_frame_fact(f) for f in frames), faults=unfit), Measurement(())
         del seen  # a picture of its own where there are colours; a large one would lie about while methods work
     regions = tuple(_fact(found) for found in located[0])
     bench = _Bench(one, companions, faults.tracebacks if faults is not None else [])
@@ -214,7 +225,12 @@ def _measure_region(
     sample = _sample(bench, frames, found, channel, wanted, together=plan.together)
     place = f"{first.file}, {found.region}"
     return attempted(
-        lambda: plan.method.measure(sample, plan.options), plan, found.region, wanted, place, bench.tracebacks
+        lambda: plan.method.measure(sample, plan.options_in(found.region)),
+        plan,
+        found.region,
+        wanted,
+        place,
+        bench.tracebacks,
     )
 
 
@@ -229,7 +245,7 @@ def _sample(
         crops[0],
         capture.camera,
         capture.optics,
-        capture.chart,
+        own_transfer(capture, found),
         wanted,
         companions.crops(capture.uses, found.box, channel),
         crops if together else (),

@@ -94,7 +94,7 @@ def _measure_again(document: Mapping[str, Any], frames: Path) -> tuple[dict[str,
     units = [unit for unit in lot.units if unit.serial == serial]
     if not units:
         raise VerificationRefused(f"there are no frames of unit {serial}", where=str(frames))
-    evidence, pictures, _tracebacks = measure_unit(plan, units[0], integrity.survey(lot, spec, 1))
+    evidence, pictures, _tracebacks = measure_unit(plan, units[0], integrity.survey(lot, spec, 1), facts.time)
     judgement = judge_unit(plan.spec, evidence)
     return to_document(plan, evidence, judgement, facts), pictures
 

@@ -7,7 +7,7 @@ from runner.spec.chart_leaves import in_mm
 from runner.spec.chart_model import ChartFile
 from runner.spec.model import Amount, Camera, Region
 from runner.spec.position_leaves import FieldPoint, Point
-from runner.spec.shapes import GridShape, RegionShape
+from runner.spec.region_shapes import GridShape, RegionShape
 from runner.spec.tree import Complaints, nearest
 
 MIN_SIDE = 4

@@ -18,7 +18,7 @@ CAPTURE = """\
     chart: {file: chart.yaml, view: {scale: at least 3 px/mm}}
     regions:
       edge: {feature: left edge}
-      spot: {on: chart, position: [-50 mm, 5 mm], size: [20 mm, 60 px]}
+      spot: {on: chart, position: [-50 mm, 5 mm], size: [20 mm, 60 mm]}
     limits: [{characteristic: 9, quantity: mtf50, where: edge, at_least: 0.1 cy/px}]
 """
 

@@ -7,6 +7,7 @@ import pytest
 from runner.spec import shapes
 from runner.spec.file_shapes import FramesShape
 from runner.spec.model import COMBINATIONS, RULES
+from runner.spec.region_shapes import RegionShape
 from runner.spec.shape import Shape
 from runner.spec.tree import Complaints, parse
 
@@ -32,7 +33,7 @@ def _told(kind: type[Shape], text: str) -> list[str]:
         (shapes.DecisionShape, "rule: simple acceptance, conformance_probability: 0.99"),
         (FramesShape, "names: 'a-{repeat}-{z}.tif', count: 10"),
         (shapes.ChartShape, "name: a, serial: 007, due: 2027-03-31, transfer: [[0 cy/px, 1], [0.5 cy/px, 0.9]]"),
-        (shapes.RegionShape, "on: field, position: {field: 1, azimuth: 0 deg}, size: [10 %, 10 %]"),
+        (RegionShape, "on: field, position: {field: 1, azimuth: 0 deg}, size: [10 %, 10 %]"),
         (shapes.ComponentShape, "name: a, of: [b, c], absolute: 3 px, shared: d"),
         (shapes.OpticsShape, "numerical_aperture: 1.4, immersion: 1.518, magnification: 60, wavelength: 0.52 um"),
         (shapes.CameraPart, "bit_depth: 10 bit, tone: gamma 2.2, processing: [sharpened, denoised], delivers: jpeg"),
@@ -52,16 +53,6 @@ def test_what_a_mapping_may_say(kind: type[Shape], text: str) -> None:
         (shapes.LimitShape, f"{LIMIT} at_most: 3 px, conformance_probability: 100 %", "probability of 100 % is not"),
         (shapes.ComponentShape, "name: a, of: b, relative: 1 %, absolute: 3 px", "either relative or absolute"),
         (shapes.ChartShape, "transfer_uncertainty: 0.1", "a transfer table that is not there"),
-        (shapes.RegionShape, "on: frame, position: {field: 1, azimuth: 0 deg}, size: [9 %, 9 %]", "under on: frame"),
-        (shapes.RegionShape, "on: chart, position: [9 %, 9 mm], size: [9 mm, 9 px]", "9 % is no length on the chart"),
-        (shapes.RegionShape, "position: [9 %, 9 mm], size: [9 %, 9 %]", "9 mm is a length on a chart"),
-        (
-            shapes.RegionShape,
-            "position: [9 %, 9 %], feature: a, size: [9 px, 9 px]",
-            "a position or a grid or a feature",
-        ),
-        (shapes.RegionShape, "feature: a, on: frame", "stands under on: frame"),
-        (shapes.RegionShape, "position: [9 %, 9 %]", "lacks the key 'size'"),
         (shapes.ChartShape, "view: {tilt: at most 3 deg}", "known by its marks only"),
         (shapes.CaptureShape, "target: a, uses: {}", "a mapping stands where companions are meant"),
         (shapes.CaptureShape, "target: a, uses: [dark]", "a list stands where companions are meant"),
