@@ -12,6 +12,7 @@ References:
     Thresholds: common practice, no source; each is argued where it stands.
 """
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -56,6 +57,8 @@ class Field:
     """`DARK` or `FLAT`."""
     boxes: tuple[Box, ...]
     """Where a flat must be even."""
+    series: bool = False
+    """Its frames differ in exposure: the longest may have any dark signal."""
 
 
 def field_of(capture: Capture) -> Field | None:
@@ -67,7 +70,8 @@ def field_of(capture: Capture) -> Field | None:
         _box(*region.centre_px(width, height), *region.size_px(width, height), width, height)
         for region in capture.regions
     ] or [_box(width / 2, height / 2, MIDDLE * width, MIDDLE * height, width, height)]
-    return Field(capture.name, capture.target, tuple(boxes))
+    series = capture.frames is not None and "{exposure}" in capture.frames.names
+    return Field(capture.name, capture.target, tuple(boxes), series)
 
 
 def unfit(field: Field, frame: Frame, camera: Camera) -> str:
@@ -82,7 +86,7 @@ def unfit(field: Field, frame: Frame, camera: Camera) -> str:
     level = float(cells.light.mean())
     where = frame.file + (f", page {frame.page + 1}" if frame.page is not None else "")
     if field.target == DARK:
-        return _not_dark(where, level, cells) if level >= LIT else ""
+        return _not_dark(where, level, cells, math.inf if field.series else STRONGLY_LIT) if level >= LIT else ""
     if level < UNLIT:
         return (
             f"{where}: the field lies {100 * level:.2f} % of the range over the black level, {100 * UNLIT:g} % is "
@@ -143,12 +147,12 @@ def _cells(codes: Codes, box: Box, camera: Camera) -> _Cells:
 # ---- dark
 
 
-def _not_dark(where: str, level: float, cells: _Cells) -> str:
+def _not_dark(where: str, level: float, cells: _Cells, strongly: float) -> str:
     words = f"{where}: the frame is lit: its level lies {100 * level:.1f} % of the range over the black level"
     told = "a scene shows in it" if _edges(cells) else "it falls off to all corners" if _falls_off(cells.light) else ""
     if told:
         return f"{words}, and {told}; a dark frame has less than {100 * LIT:g} %: shut all light out, and capture again"
-    if level < STRONGLY_LIT:
+    if level < strongly:
         return ""
     return (
         f"{words}, without a picture in it; light and a unit's own dark signal {UNDECIDED}: a dark frame of a unit "

@@ -96,6 +96,15 @@ def test_light_through_a_lens_blames_the_capture(level: float) -> None:
     assert bool(even) == (level > 0.1)
 
 
+def test_a_series_of_exposures_may_have_any_dark_signal() -> None:
+    """Where dark signal is what is measured, its level alone is no fault; a scene in it still is."""
+    series = Field("any", DARK, WHOLE, series=True)
+    even, lit = (take(light, CAMERA, 3) for light in (np.full((HEIGHT, WIDTH), 0.4), edge(30)))
+
+    assert unfit(series, Frame("a.tif", "", "", even), CAMERA) == ""
+    assert "a scene shows in it" in unfit(series, Frame("a.tif", "", "", lit), CAMERA)
+
+
 def test_what_a_captures_frames_must_be(spec: Spec) -> None:
     """Only flats and darks are fields; without regions the middle of the frame must be even."""
     captures = {capture.target: capture for capture in spec.captures}
