@@ -22,7 +22,7 @@ Real = NDArray[np.float64]
 
 SPREADS = (0.5, 0.3, 0.03, 0.03)
 """k1, k2 and the optical centre as lenses have them: up to a fisheye's barrel, 3 % of the half diagonal off."""
-TELLS = {0: 0, 6: 1, 9: 2, 12: 4}
+TELLS = {0: 0, 7: 1, 9: 2, 12: 4}
 """Marks from which on so many numbers of the lens are fitted: two coordinates each against 8 of the view and them."""
 STEPS = 25
 SETTLED = 1e-10

@@ -21,8 +21,10 @@ TILE = 12
 LEAST_STEP, STEEPEST = 0.2, 20
 """Surroundings that differ by less than that share of the 20th steepest tile's are plain: a single hot pixel makes nine
 tiles steep, three marks make more than 20."""
-SMALLEST, LARGEST = 7, 300
-"""px across in the small picture: a hole of three px, and what three tiles each way still surround with their rim."""
+SMALLEST, LARGEST = 7, 200
+"""px across in the small picture: a hole of three px, and what tiles within reach still surround."""
+REACH = 5
+"""Tiles from a steep one whose middle a plain one takes over: the inside of a large dark piece is dark."""
 LONGEST = 3.0
 """Longer over shorter side of the box around a mark: views steeper than 70° are none."""
 ROUND = (0.88, 1.12)
@@ -97,7 +99,9 @@ def _below_middle(small: Picture) -> NDArray[np.bool_]:
     high = ndimage.maximum_filter(tiles.max(axis=(1, 3)), 3, mode="nearest")
     steps = high - low
     largest = np.partition(steps.ravel(), -min(STEEPEST, steps.size))[-min(STEEPEST, steps.size)]
-    middle = np.where(steps > LEAST_STEP * largest, (low + high) / 2, -np.inf).astype(np.float32)
+    plain = steps <= LEAST_STEP * largest
+    gap, (i, j) = ndimage.distance_transform_edt(plain, return_indices=True)
+    middle = np.where(gap <= REACH, ((low + high) / 2)[i, j], -np.inf).astype(np.float32)
     smooth = np.repeat(np.repeat(middle, TILE, axis=0), TILE, axis=1)[:rows, :columns]
     return np.asarray(small < smooth, dtype=np.bool_)
 
