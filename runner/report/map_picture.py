@@ -115,17 +115,26 @@ def _scale(draw: "ImageDraw.ImageDraw", size: tuple[int, int], ends: tuple[float
 
 
 def _marks(draw: "ImageDraw.ImageDraw", marks: Sequence[tuple[float, float, str]], inside: Rectangle) -> None:
-    """Draw rings at their places, and their words on dark labels beside them, none over a ring or another label."""
+    """Draw rings at their places, and their words on dark labels beside them, none over a ring or another label.
+
+    A line leads from a ring to a label that found no room beside it.
+    """
+    taken = [(x - 10, y - 10, x + 10, y + 10) for x, y, _ in marks]
+    labels = []
+    for x, y, words in marks:
+        label = _free(x, y, draw.textbbox((0, 0), words, font=_font(), anchor="lt"), taken, inside)
+        if words:
+            taken.append(label)
+            labels.append((label, words))
+            end = min(max(x, label[0]), label[2]), min(max(y, label[1]), label[3])
+            if max(abs(end[0] - x), abs(end[1] - y)) > 14:
+                draw.line((x, y, *end), fill=SHADOW, width=3)
     for x, y, _ in marks:
         for colour, width in ((SHADOW, 5), (OUTLINE, 3)):
             draw.ellipse((x - 9, y - 9, x + 9, y + 9), outline=colour, width=width)
-    taken = [(x - 10, y - 10, x + 10, y + 10) for x, y, _ in marks]
-    for x, y, words in marks:
-        if words:
-            label = _free(x, y, draw.textbbox((0, 0), words, font=_font(), anchor="lt"), taken, inside)
-            taken.append(label)
-            draw.rectangle(label, fill=SHADOW)
-            _text(draw, ((label[0] + label[2]) / 2, (label[1] + label[3]) / 2), words, "mm", OUTLINE)
+    for label, words in labels:
+        draw.rectangle(label, fill=SHADOW)
+        _text(draw, ((label[0] + label[2]) / 2, (label[1] + label[3]) / 2), words, "mm", OUTLINE)
 
 
 def _free(x: float, y: float, letters: Rectangle, taken: Sequence[Rectangle], inside: Rectangle) -> Rectangle:
@@ -134,7 +143,7 @@ def _free(x: float, y: float, letters: Rectangle, taken: Sequence[Rectangle], in
     best, least = (x, y, x + wide, y + high), float("inf")
     for away in (12, 12 + high, 12 + 2 * high):
         left, right, above, below = x - away - wide, x + away, y - away - high, y + away
-        middle = x - wide / 2, y - high / 2
+        middle = min(max(x - wide / 2, inside[0]), inside[2] - wide), y - high / 2
         straight = (middle[0], above), (middle[0], below), (right, middle[1]), (left, middle[1])
         for at in (*straight, (right, above), (left, above), (right, below), (left, below)):
             label = (*at, at[0] + wide, at[1] + high)
