@@ -20,6 +20,7 @@ from numpy.typing import NDArray
 
 from runner.measure import planes
 from runner.measure.contract import Measurement, QuantityInfo, Sample
+from runner.measure.evenness import refuse_uneven
 from runner.measure.numerics.banding import banding
 from runner.measure.options import read_record
 from runner.measure.reading import Component, Curve, Reading, Refusal
@@ -109,6 +110,7 @@ def measure(sample: Sample, options: Options) -> Measurement:
     frame = planes.stack([sample.crop])
     lit = bool(sample.found.geometry.get("lit", 0.0))
     planes.refuse_clipped(frame, **{"most_high" if lit else "most_low": planes.MOST_CLIPPED})
+    refuse_uneven(frame, lit=lit)
     readings: list[Reading] = []
     curves: list[Curve] = []
     whole = _rounding(frame.codes[0])

@@ -22,6 +22,7 @@ from runner.measure import planes
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.defect_overlaps import area_of, outside, whole
 from runner.measure.defect_spots import Listed
+from runner.measure.evenness import refuse_uneven
 from runner.measure.numerics.defects import (
     Cluster,
     Defect,
@@ -179,6 +180,7 @@ def measure(sample: Sample, options: Options) -> Measurement:
     lit = bool(sample.found.geometry.get("lit", 0.0))
     frames = planes.stack(sample.frames)
     planes.refuse_clipped(frames, **({"most_high": planes.MOST_CLIPPED} if lit else {"most_low": MOST_CLAMPED}))
+    refuse_uneven(frames, lit=lit)
     if min(frames.shape) < LEAST_SIDE:
         rows, columns = frames.shape
         raise MeasurementRefused(

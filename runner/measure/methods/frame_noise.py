@@ -19,6 +19,7 @@ import numpy as np
 from runner.errors import MeasurementRefused
 from runner.measure import planes
 from runner.measure.contract import Measurement, QuantityInfo, Sample
+from runner.measure.evenness import refuse_uneven
 from runner.measure.numerics.stack_noise import Spread, StackNoise, signal_to_noise, stack_noise
 from runner.measure.options import read_record
 from runner.measure.reading import Component, Reading, Refusal
@@ -118,6 +119,7 @@ def measure(sample: Sample, options: Options) -> Measurement:
     frames = planes.stack(sample.frames)
     most = {"most_high": planes.MOST_CLIPPED} if lit else {"most_low": planes.MOST_CLIPPED}
     planes.refuse_clipped(frames, **most)
+    refuse_uneven(frames, lit=lit)
     rows, columns = frames.shape
     if min(rows // _kinds(frames), columns) < options.shading_order + 4:
         raise MeasurementRefused(

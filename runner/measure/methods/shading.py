@@ -22,6 +22,7 @@ from runner.capture.frame import Crop
 from runner.errors import MeasurementRefused
 from runner.measure import planes
 from runner.measure.contract import Measurement, QuantityInfo, Sample
+from runner.measure.evenness import refuse_uneven
 from runner.measure.numerics.shading_map import DRAWS, SEED, ShadingMap, shading_map
 from runner.measure.numerics.shading_peak import Peak, find_peak
 from runner.measure.options import read_record
@@ -152,6 +153,7 @@ def _map(sample: Sample, frames: planes.Stack, darks: tuple[Crop, ...], options:
             allowed="a block needs 2 rows and 4 columns",
         )
     planes.refuse_clipped(frames, most_high=planes.MOST_CLIPPED)
+    refuse_uneven(frames, lit=True)
     edges = _edges(rows, blocks[0]), _edges(columns, blocks[1])
     black = _black(sample, darks, options, edges)
     cells = [_cells(values, edges) - black.values for values in frames.frames]
