@@ -18,6 +18,7 @@ COMMANDS = {
     "schema": "Print the JSON Schema of test specs, for editors.",
     "targets": "List the targets, or tell about one.",
     "methods": "List the methods, or tell about one.",
+    "chart": "Check chart files; draw their artwork 1:1.",
     "keys": "Make keys that sign reports.",
 }
 """Verb and its one line for `--help`; the module of the same name in `runner.commands` holds the command."""
