@@ -155,7 +155,8 @@ def _light(levels: Sequence[LevelFrames], said: Sequence[Mapping[str, Amount]]) 
 
 
 def _alike(amounts: Sequence[Amount]) -> tuple[list[float], str]:
-    unit = BASE.get(UNITS[amounts[0].unit].kind, amounts[0].unit)
+    plain = all(one.unit == "1" for one in amounts)
+    unit = "1" if plain else BASE.get(UNITS[amounts[0].unit].kind, amounts[0].unit)
     try:
         return [convert(one.value, one.unit, unit, FrequencyContext()) for one in amounts], unit
     except UsageError as error:

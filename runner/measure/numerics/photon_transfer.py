@@ -43,7 +43,7 @@ class Slope:
     value: float
     """Its slope."""
     noise: float
-    """Standard uncertainty from the ordinates' own, not less than their scatter about the line tells."""
+    """Standard uncertainty from the ordinates' own, or from their scatter where chance cannot explain that."""
     dof: float | None
     """Degrees of freedom behind `noise`; None is infinite."""
     offset: float
@@ -94,15 +94,20 @@ def slope(x: Real, y: Real, y_u: Real) -> Slope:
     value = float(weight @ (x * y)) / power
     freedom = x.size - 1
     birge = sqrt(float(weight @ (y - value * x) ** 2) / freedom) if freedom else 1.0
-    larger = birge > 1 and special.chdtrc(freedom, freedom * birge**2) < 0.05  # else chance alone may do it
+    larger = _beyond_chance(birge, freedom)
     noise = (birge if larger else 1.0) / sqrt(power)
     offset = float(weight @ x) / power
     pull = float(weight @ (y - 2 * value * x)) / power
     return Slope(value, noise, float(freedom) if larger else None, offset, pull, birge)
 
 
+def _beyond_chance(birge: float, freedom: int) -> bool:
+    """Tell whether a scatter is more than chance alone gives in 19 of 20 cases."""
+    return birge > 1 and bool(special.chdtrc(freedom, freedom * birge**2) < 0.05)
+
+
 def line(x: Real, y: Real, y_u: Real) -> tuple[float, float, float]:
-    """Return slope, its standard uncertainty (not less than the scatter tells) and ordinate at 0 of a line.
+    """Return slope, its standard uncertainty (of the scatter, where that is no chance) and ordinate at 0 of a line.
 
     Args:
         x: Abscissae, two at least that differ.
@@ -124,7 +129,7 @@ def line(x: Real, y: Real, y_u: Real) -> tuple[float, float, float]:
     freedom = x.size - 2
     left = float(y_u**-2.0 @ (y - start - value * x) ** 2)
     birge = sqrt(left / freedom) if freedom > 0 else 1.0
-    return value, own * max(1.0, birge), start
+    return value, own * (birge if _beyond_chance(birge, freedom) else 1.0), start
 
 
 def dark_noise(variance: float, gain: float, rounding: float = ROUNDING) -> float:
