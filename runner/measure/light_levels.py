@@ -184,12 +184,11 @@ def out_of_order(levels: Sequence[LevelFrames], light: Sequence[float], toleranc
         tolerance: Differences below it tell nothing.
     """
     keys = [level.light if level.light is not None else level.place for level in levels]
-    if any(key is None for key in keys):
+    known = [key for key in keys if key is not None]
+    if len(known) < len(keys) or len(keys) < 2:
         return None
-    ranked = sorted(
-        zip(keys, light, [level.label for level in levels], strict=True), key=lambda row: float(row[0] or 0)
-    )
-    falls = levels[0].light is None and len(ranked) > 1 and ranked[-1][1] < ranked[0][1]
+    ranked = sorted(zip(known, light, [level.label for level in levels], strict=True), key=lambda row: row[0])
+    falls = levels[0].light is None and ranked[-1][1] < ranked[0][1]
     for before, after in pairwise(reversed(ranked) if falls else ranked):
         if after[1] < before[1] - tolerance:
             return before[2], after[2]

@@ -27,6 +27,8 @@ MOST_BENT = 10.0
 """Departure of a level from a straight response, %, from which on the sensor is not linear: Release 4.0 General."""
 LEAST_LEVELS = 5
 """Levels that tell departures from a line, which takes two of them away."""
+SAME = 0.005
+"""Levels of different light that differ by no more are all saturated."""
 SURE = 6.0
 """Standard uncertainties that no chance explains."""
 
@@ -103,12 +105,14 @@ def transfer(points: Sequence[Point], darks: Sequence[Dark], light_in: str) -> T
     dark = darks[0]
     whole = points[0].frames.crops[0].codes.dtype.kind in "iu"
     brightest = max(points, key=lambda one: one.variance - one.dark.variance)
+    _refuse_noiseless(points, brightest)
     fitted = tuple(one for one in points if 0 < one.signal <= law.TOP * brightest.signal)
     if not fitted:
         fitted = _alone(points, brightest)
     for one in fitted:
         _refuse_ends(one)
     gain, slope = _gain(fitted, dark)
+    _refuse_excess(points, gain)
     drift = _drift(points)
     response = _response(fitted) if light_in else None
     signal = np.array([one.signal for one in points])
@@ -137,17 +141,40 @@ def _alone(points: Sequence[Point], brightest: Point) -> tuple[Point, ...]:
     Raises:
         MeasurementRefused: It may be.
     """
-    camera = brightest.frames.crops[0].camera
-    room = camera.white_level - brightest.dark.level
     near = tuple(one for one in points if one.signal > 0)
-    if brightest is not points[-1] or brightest.signal > law.TOP * room or not near:
-        raise MeasurementRefused(
-            "too bright",
-            f"no level lies between darkness and {100 * law.TOP:g} % of saturation: the lowest has "
-            f"{min(one.signal for one in points):.4g} DN over dark, the noise is greatest at {brightest.signal:.4g} DN",
-            next_step="begin the series with less light",
-        )
+    if brightest is not points[-1] or brightest.signal > law.TOP * _room(brightest) or not near:
+        raise _all_bright(points, brightest)
     return near
+
+
+def _room(point: Point) -> float:
+    """Return the codes from dark to the white level."""
+    return point.frames.crops[0].camera.white_level - point.dark.level
+
+
+def _all_bright(points: Sequence[Point], brightest: Point) -> MeasurementRefused:
+    return MeasurementRefused(
+        "too bright",
+        f"no level lies between darkness and {100 * law.TOP:g} % of saturation: the lowest has "
+        f"{min(one.signal for one in points):.4g} DN over dark, the noise is greatest at {brightest.signal:.4g} DN",
+        next_step="begin the series with less light",
+    )
+
+
+def _refuse_noiseless(points: Sequence[Point], brightest: Point) -> None:
+    """Refuse a series without photon noise: all too bright, or no frames of a sensor."""
+    extra = brightest.variance - brightest.dark.variance
+    if extra > SURE * hypot(brightest.variance_u, brightest.dark.variance_u):
+        return
+    signals = [one.signal for one in points]
+    alike = len(points) > 1 and max(signals) - min(signals) <= SAME * max(signals)
+    if alike or min(signals) > law.TOP * _room(points[0]):
+        raise _all_bright(points, brightest)
+    raise MeasurementRefused(
+        "no picture",
+        f"light adds no noise: at most {extra:.3g} DN² over that of the darks, at {brightest.signal:.4g} DN",
+        next_step="give frames as the sensor delivers them, not averaged, not copies of one another",
+    )
 
 
 def _refuse_ends(point: Point) -> None:
@@ -165,24 +192,7 @@ def _gain(fitted: Sequence[Point], dark: Dark) -> tuple[Figure, float]:
     x = np.array([one.signal for one in fitted])
     y = np.array([one.variance - one.dark.variance for one in fitted])
     u = np.array([one.variance_u for one in fitted])
-    typical = float(np.median(y / x))
-    worst = int(np.argmax(np.abs(y - typical * x) / np.hypot(u, dark.variance_u)))
-    away = y[worst] - typical * x[worst]
-    allowed = MOST_AWAY * (abs(typical) * x[worst] + dark.variance) + SURE * hypot(u[worst], dark.variance_u)
-    if typical <= 0 or float(np.max(y / u)) < SURE:
-        raise MeasurementRefused(
-            "not defined",
-            f"light adds no noise: at {x.max():.4g} DN over dark the variance is {y[int(np.argmax(x))]:.3g} DN² over "
-            "that of the darks",
-            next_step="give frames as the sensor delivers them, not averaged or denoised",
-        )
-    if abs(away) > allowed:
-        raise MeasurementRefused(
-            "another scene",
-            f"{fitted[worst].label} has a temporal variance of {y[worst]:.4g} DN² over dark, the other levels tell "
-            f"{typical * x[worst]:.4g} DN² for its light",
-            next_step="let the lamp settle, let nothing move, and capture it again",
-        )
+    _refuse_strange(fitted, x, y, np.hypot(u, dark.variance_u), dark.variance)
     found = law.slope(x, y, u)
     parts = (
         Component("noise", found.noise, "A", found.dof),
@@ -190,6 +200,44 @@ def _gain(fitted: Sequence[Point], dark: Dark) -> tuple[Figure, float]:
         Component("dark level", abs(found.shift) * dark.level_u, "A"),
     )
     return Figure(found.value, parts), found.value
+
+
+def _refuse_strange(fitted: Sequence[Point], x: Real, y: Real, u: Real, dark: float) -> None:
+    """Refuse levels whose variance over dark is not in proportion to their signal."""
+    typical = float(np.median(y / x))
+    strange = np.flatnonzero(np.abs(y - typical * x) > MOST_AWAY * (abs(typical) * x + dark) + SURE * u)
+    if not strange.size:
+        return
+    one = fitted[int(strange[0])]
+    found = (
+        f"{one.label} has a temporal variance of {y[strange[0]]:.4g} DN² over dark, the other levels tell "
+        f"{typical * x[strange[0]]:.4g} DN² for its light"
+    )
+    if strange.size == 1 and one is not fitted[0]:
+        raise _disturbed(found)
+    raise MeasurementRefused(
+        "not defined",
+        found,
+        allowed=f"{100 * MOST_AWAY:g} % apart",
+        next_step="give frames as the sensor delivers them; a sensor that is not linear needs EMVA 1288 General",
+    )
+
+
+def _disturbed(found: str) -> MeasurementRefused:
+    return MeasurementRefused(
+        "another scene", found, next_step="let the lamp settle, let nothing move, and capture it again"
+    )
+
+
+def _refuse_excess(points: Sequence[Point], gain: Figure) -> None:
+    """Refuse a level with more noise than its light can have: beyond saturation there is less of it."""
+    for one in points:
+        most = float(gain.value or 0.0) * max(one.signal, 0.0) + one.dark.variance
+        if one.variance > (1 + MOST_AWAY) * most + SURE * one.variance_u:
+            raise _disturbed(
+                f"{one.label} has a temporal variance of {one.variance:.4g} DN², the other levels tell {most:.4g} DN² "
+                "for its light"
+            )
 
 
 def propagated(of: Transfer, model: Callable[[float, float, float], float]) -> Figure:
