@@ -112,7 +112,7 @@ def test_noiseless(order: str) -> None:
 
 
 def test_a_small_sample() -> None:
-    """At step/noise 100, as many pixels on the edge as 40 × 60: 24 captures have an rms below 0.9 %, none is 2.7 % off."""
+    """At step/noise 100, as many pixels on the edge as 40 × 60: 24 captures have an rms below 0.9 %, none is 2.7 %."""
     off, scores, refused = errors("40 × 60", 24, 100, 2)
 
     assert refused == 0
