@@ -73,7 +73,7 @@ def _run(folder: Path, sheet: np.ndarray, camera: Camera) -> tuple[acceptance.Ou
     spec = folder / "spec.yaml"
     spec.write_text(SPEC.format(width=width, height=height, **values), encoding="utf-8")
     (folder / "frames" / "RND-01").mkdir(parents=True)
-    np.save(folder / "frames" / "RND-01" / "chart-1.npy", camera.codes(sheet, chart.size, 1))
+    np.save(folder / "frames" / "RND-01" / "chart-1.npy", camera.codes(sheet, DPI, chart.size, 1))
     order = acceptance.Order(spec, folder / "frames", folder / "out", time="2026-12-01T09:30:00Z")
     outcome = acceptance.run(order)
     document = store.read_results(folder / "out" / "RND-01")

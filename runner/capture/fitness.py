@@ -63,7 +63,7 @@ class Field:
 
 def field_of(capture: Capture) -> Field | None:
     """Return what a capture's frames must be, or None where its target is another scene."""
-    if capture.target not in {DARK, FLAT}:
+    if capture.target not in {DARK, FLAT} or capture.chart.file is not None:  # a chart is found by its marks
         return None
     width, height = capture.camera.width, capture.camera.height
     boxes = [

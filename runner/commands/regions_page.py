@@ -17,6 +17,8 @@ from runner.capture.mosaic import grey
 from runner.capture.patterns import natural, read_pattern
 from runner.capture.readers import read_frames
 from runner.errors import FrameRefused, UsageError
+from runner.measure.chart_placing import in_frame, locate
+from runner.measure.chart_view import Unfit, look
 from runner.measure.contract import Found, NotFound
 from runner.measure.plan import CapturePlan, Plan
 from runner.resources import folder
@@ -79,11 +81,16 @@ def _capture(one: CapturePlan, files: Sequence[Path]) -> dict[str, Any]:
     except FrameRefused as refused:
         return page | {"sentences": [f"The file was refused. {refused}"]}
     frame = replace(frame, codes=grey(frame.codes, capture.camera))  # as the session lets targets see it
-    located = one.target.locate([frame], capture.regions, capture.camera, one.target_options)
     rows, columns = frame.shape
-    asked = {region.name: region for region in capture.regions}
+    sentences = [f"File {files[0].name}, {columns} × {rows} px."]
+    pose = look(frame.codes, capture.camera, capture.optics, capture.chart)
+    seen = None if isinstance(pose, Unfit) else pose
+    located = [] if isinstance(pose, Unfit) else locate(one, frame, seen)
+    if isinstance(pose, Unfit):
+        sentences.append(f"No region can be placed: {pose.because}.")
+    asked = {region.name: region for region in in_frame(capture.regions, seen, capture.chart)}
     return page | {
-        "sentences": [f"File {files[0].name}, {columns} × {rows} px."],
+        "sentences": sentences,
         "picture": _picture(frame, capture.camera),
         "width": columns,
         "height": rows,

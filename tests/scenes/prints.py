@@ -50,11 +50,12 @@ class Camera:
         pixel = np.sin(np.pi * frequency) / (FINE * np.sin(np.pi * frequency / FINE))
         return float(lens * pixel)
 
-    def codes(self, sheet: NDArray[np.float32], size: tuple[float, float], seed: int) -> NDArray[np.uint16]:
+    def codes(self, sheet: NDArray[np.float32], dpi: int, size: tuple[float, float], seed: int) -> NDArray[np.uint16]:
         """Return a frame of the sheet; beyond it is bare sheet too.
 
         Args:
             sheet: Reflectance.
+            dpi: Its pixels to an inch.
             size: Its width and height, mm.
             seed: Of the noise.
         """
@@ -66,8 +67,8 @@ class Camera:
             x = (np.arange(-margin * FINE, (columns + margin) * FINE) + 0.5) / FINE
             place = self.view.to_chart(np.stack(np.meshgrid(x, y), axis=-1).reshape(-1, 2))
             at = [
-                (place[:, n] / size[n] + 0.5) * sheet.shape[1 - n] - 0.5 for n in (1, 0)
-            ]  # rows, columns of the print's pixels
+                (place[:, n] + size[n] / 2) * dpi / 25.4 - 0.5 for n in (1, 0)
+            ]  # rows, columns of the print's pixels; it begins with the sheet's upper left corner
             fine = ndimage.map_coordinates(sheet, at, order=1, mode="nearest").reshape(len(y), len(x))
             fine = ndimage.gaussian_filter(fine, self.blur * FINE, truncate=5)
             pixels = fine.reshape(len(y) // FINE, FINE, len(x) // FINE, FINE).mean(axis=(1, 3))
