@@ -168,8 +168,9 @@ def banding(
         chances.append(chance)
         model = wider
     ordinates, level = _spectrum(grid, model.residual)
+    doubt = np.maximum(level, 2 * _shading_left(grid, model.residual))  # a tone's amplitude, not a noise's mean square
     lines = [
-        _line(f, a, float(np.interp(f, grid, level)), model.residual, p)
+        _line(f, a, float(np.interp(f, grid, doubt)), model.residual, p)
         for f, a, p in zip(model.frequencies, model.amplitudes, chances, strict=True)
     ]
     return Banding(
@@ -248,9 +249,7 @@ def _highest(grid: Real, model: "_Model", passed: list[float]) -> tuple[float, f
     count = model.residual.size
     ordinates, level = _spectrum(grid, model.residual)
     level = np.maximum(level, _medians(ordinates, PADDING * NEAR) / log(2))
-    below = np.arange(PADDING / 2, grid[0] * PADDING * count) / (PADDING * count)
-    if below.size:
-        level = np.maximum(level, np.max(_spectrum(below, model.residual)[0] * below**4) / grid**4)
+    level = np.maximum(level, _shading_left(grid, model.residual))
     z = ordinates / np.maximum(level, np.finfo(float).tiny)
     d = log(2) ** 2 * count / 2  # a median's variance, 1/n, over ln 2 squared: that of the mean of so many
     chances = (1 + z / d) ** -d
@@ -260,6 +259,15 @@ def _highest(grid: Real, model: "_Model", passed: list[float]) -> tuple[float, f
     best = int(np.argmin(chances))
     chance = float(chances[best])
     return float(grid[best]), 1.0 if chance >= 1 else -expm1(grid.size * log1p(-chance))
+
+
+def _shading_left(grid: Real, residual: Real) -> Real:
+    """Return what shading below the lowest frequency leaves at the grid's, falling as f⁻⁴; squared amplitudes."""
+    count = residual.size
+    below = np.arange(PADDING / 2, grid[0] * PADDING * count) / (PADDING * count)
+    if not below.size:
+        return np.zeros(grid.size)
+    return np.asarray(np.max(_spectrum(below, residual)[0] * below**4) / grid**4)
 
 
 @dataclass(frozen=True)
