@@ -12,11 +12,14 @@ from runner.measure.chart_view import look
 from runner.measure.numerics.chart_pose import ChartPose
 from runner.report import store
 from runner.report.chart_artwork import artwork_pdf
+from runner.report.verify_tools import default_tools
 from runner.spec.charts import read_chart
 from runner.spec.model import Camera as SpecCamera
 from runner.spec.model import Chart, Optics
-from tests.scenes.chart_views import View
+from tests.scenes.chart_text import write_chart
+from tests.scenes.chart_views import Scene, View, edge, ring
 from tests.scenes.prints import Camera, printed
+from tests.scenes.spec_text import write
 
 CHART = Path(__file__).resolve().parents[1] / "specs" / "charts" / "edges-a4.yaml"
 DPI = 500
@@ -42,7 +45,9 @@ captures:
     target: sinusoidal grating
     same_frames_as: edges
     chart: {{file: edges-a4.yaml}}
-    regions: {{coarse: {{feature: coarse stripes}}, medium: {{feature: medium stripes}}}}
+    regions:  # small ones: through a wide lens stripes have no one frequency over a large one
+      coarse: {{feature: coarse stripes, size: [18 mm, 18 mm]}}
+      medium: {{feature: medium stripes, size: [18 mm, 18 mm]}}
     limits:
       - {{characteristic: 3, quantity: modulation_transfer, where: coarse, nominal: {coarse}, tolerance: 0.02}}
       - {{characteristic: 4, quantity: modulation_transfer, where: medium, nominal: {medium}, tolerance: 0.02}}
@@ -111,3 +116,52 @@ def test_printed_artwork_conforms(tmp_path: Path, sheet: np.ndarray, name: str) 
     assert np.sqrt(np.mean(np.sum((pose.to_frame(marks) - view.to_frame(marks)) ** 2, axis=1))) < 0.02
     places = np.array([(x, y) for x in np.linspace(-128, 128, 9) for y in np.linspace(-85, 85, 7)])
     assert np.abs(pose.to_frame(places) - view.to_frame(places)).max() < 0.3
+
+
+DUE = """\
+probatum-spec: 1
+document: {number: DUE-1, revision: A}
+unit: {product: DUE, serial: 'DUE-[0-9]{2}'}
+camera: {frame_size: 640 x 480 px, bit_depth: 12 bit, black_level: 64 DN, white_level: 4095 DN}
+captures:
+  board:
+    target: slanted edge
+    frames: 'a.npy'
+    chart: {file: chart.yaml}
+    regions: {edge: {feature: left edge}}
+    limits: [{characteristic: 1, quantity: mtf, frequency: 0.2 cy/px, where: edge, at_least: 0.3}]
+"""
+
+
+@pytest.mark.parametrize(
+    ("time", "turn", "verdict", "reason"),
+    [
+        ("2027-03-01T23:00:00Z", 0.0, "conforms", "conforms"),
+        ("2027-03-02T00:00:00Z", 0.0, "not measured", "is overdue for calibration: it was due on 2027-03-01"),
+        ("2026-12-01T09:30:00Z", 180.0, "not measured", "lies upside down"),
+    ],
+    ids=["on the day", "the day after", "upside down"],
+)
+def test_an_unfit_chart_is_the_capture_s_fault(
+    tmp_path: Path, time: str, turn: float, verdict: str, reason: str
+) -> None:
+    """The day is that of the run; an unfit chart leaves the unit unmeasured and blames the capture, read back alike."""
+    chart = read_chart(write_chart(tmp_path))
+    rings = [ring(at, chart.marks.diameter, chart.marks.hole, chart.ink, chart.ground) for at in chart.marks.at]
+    picture = edge((-50.0, 0.0), (20.0, 30.0), 5.0, chart.ink, chart.ground)
+    scene = Scene([*rings, picture], chart.ground, View(size=(640, 480), scale=2.8, turn=turn), noise=10)
+    (tmp_path / "frames" / "DUE-01").mkdir(parents=True)
+    np.save(tmp_path / "frames" / "DUE-01" / "a.npy", scene.codes())
+    order = acceptance.Order(write(tmp_path, DUE), tmp_path / "frames", tmp_path / "out", time=time)
+    acceptance.run(order)
+    document = store.read_results(tmp_path / "out" / "DUE-01")
+
+    assert document is not None
+    assert document["verdict"] == verdict, document["reasons"]
+    assert reason in document["reasons"][0]
+    assert document["at_fault"] == (None if verdict == "conforms" else "capture")
+    tools = default_tools()
+    for again in (tools.judge_again(document), tools.measure_again(document, tmp_path / "frames")[0]):
+        assert [again[key] for key in ("verdict", "at_fault", "reasons", "because")] == [
+            document[key] for key in ("verdict", "at_fault", "reasons", "because")
+        ]
