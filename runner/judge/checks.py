@@ -7,7 +7,7 @@ from math import inf, isfinite
 from runner.judge import blame, decision_rule
 from runner.judge.combine import Member, combine, combine_bounds
 from runner.judge.decision_rule import Limits
-from runner.judge.sentences import combination_steps, consequence, joined, requirement, show
+from runner.judge.sentences import combination_steps, consequence, joined, requirement, show, whole
 from runner.judge.verdict import (
     AT_FAULT_UNIT,
     CANNOT_DECIDE,
@@ -44,7 +44,13 @@ def not_measured(capture: Capture, limit: Limit, attempt: int, reason: str, at_f
     """Return every check of a limit whose capture cannot be judged."""
     places = [_where(limit)] if limit.combine else list(limit.where or ("",))
     return [
-        replace(_blank(one, place, attempt), verdict=NOT_MEASURED, reason=reason, at_fault=at_fault, because=because)
+        replace(
+            _blank(capture, one, place, attempt),
+            verdict=NOT_MEASURED,
+            reason=reason,
+            at_fault=at_fault,
+            because=because,
+        )
         for one in _by_channel(capture, limit)
         for place in places
     ]
@@ -78,7 +84,7 @@ def _where(limit: Limit) -> str:
     return f"{limit.combine} of {limit.where_label}"
 
 
-def _blank(limit: Limit, where: str, attempt: int) -> Check:
+def _blank(capture: Capture, limit: Limit, where: str, attempt: int) -> Check:
     return Check(
         characteristic=limit.characteristic,
         capture=limit.capture,
@@ -96,12 +102,15 @@ def _blank(limit: Limit, where: str, attempt: int) -> Check:
         part=limit.part,
         parameters=limit.parameters,
         attempt=attempt,
+        place=where or whole(capture.name, regions=bool(capture.regions)),
     )
 
 
 def _one(capture: Capture, limit: Limit, region: str, reading: Reading, attempt: int) -> Check:
     blank = replace(
-        _blank(limit, region, attempt), channel=reading.channel, estimator=reading.estimator or (limit.estimator or "")
+        _blank(capture, limit, region, attempt),
+        channel=reading.channel,
+        estimator=reading.estimator or (limit.estimator or ""),
     )
     if not limit.unit:
         blank = replace(blank, measured_in=reading.measured_in)
@@ -175,7 +184,7 @@ def _refused(blank: Check, refusal: Refusal) -> Check:
 def _combined(
     capture: Capture, limit: Limit, members: Sequence[Reading], against: Sequence[Reading], attempt: int
 ) -> Check:
-    blank = _blank(limit, _where(limit), attempt)
+    blank = _blank(capture, limit, _where(limit), attempt)
     everyone = [*members, *against]
     if not limit.unit:
         blank = replace(blank, measured_in="1" if limit.combine == "ratio" else everyone[0].measured_in)
@@ -229,5 +238,4 @@ def _in_unit(capture: Capture, value: float, unit: str, wanted: str) -> float:
 
 
 def _place(check: Check) -> str:
-    words = check.where if check.channel == "mono" else f"{check.where} {check.channel}".strip()
-    return f"{words}: " if words else ""
+    return f"{check.place}: " if check.channel == "mono" else f"{check.place} {check.channel}: "

@@ -2,6 +2,7 @@
 
 from collections import Counter
 from collections.abc import Mapping, Sequence
+from math import inf, isfinite
 from typing import Any
 
 from runner.errors import UsageError
@@ -66,16 +67,21 @@ def margin(check: Mapping[str, Any]) -> float | None:
     return min(ends) / u if ends else None
 
 
+def distance(check: Mapping[str, Any]) -> float | None:
+    """Return a check's margin; minus infinity for a count that does not conform: it is beyond by any number of u."""
+    counted = check["value"] is not None and not check["u"] and check["verdict"] == DOES_NOT_CONFORM
+    return -inf if counted else margin(check)
+
+
 def _worst(documents: Sequence[Mapping[str, Any]]) -> list[dict[str, Any]]:
     nearest: dict[str, tuple[float, dict[str, Any]]] = {}
     for document in documents:
         for check in document["checks"]:
-            distance = margin(check)
+            away = distance(check)
             key = str(check["characteristic"])
-            if distance is not None and (key not in nearest or distance < nearest[key][0]):
+            if away is not None and (key not in nearest or away < nearest[key][0]):
                 row = {"characteristic": check["characteristic"], "serial": document["unit"]["serial"]}
-                nearest[key] = (
-                    distance,
-                    row | {"where": check["where"], "margin": distance, "reason": check["reason"]},
-                )
+                shown = away if isfinite(away) else None
+                row |= {"where": check["where"], "margin": shown, "reason": check["reason"]}
+                nearest[key] = away, row
     return [row for _, row in sorted(nearest.values(), key=lambda pair: pair[0])]

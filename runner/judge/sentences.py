@@ -2,6 +2,7 @@
 
 from math import ceil, floor, isfinite, log10
 
+from runner.judge.meanings import meaning
 from runner.judge.verdict import Check
 
 MOST_DECIMALS = 9
@@ -91,25 +92,27 @@ def combination_steps(check: Check, kind: str, plain: float, excess: float) -> s
     return f"{check.where}: {check.label}, {words[kind]} {found}; {off} is {way}, {because}"
 
 
-_MEANS = {
-    ("mtf", "low"): "the unit is soft there",
-    ("mtf", "high"): "the unit transfers more than it may there",
-    ("edge_width", "high"): "the unit is soft there",
-    ("lsf_fwhm", "high"): "the unit is soft there",
-    ("overshoot", "high"): "the unit sharpens its edges too much there",
-    ("undershoot", "high"): "the unit sharpens its edges too much there",
-    ("edge_noise", "high"): "the unit is too noisy there",
-    ("lsf_asymmetry", "high"): "the unit smears edges to one side there",
-}
-
-
 def consequence(check: Check) -> str:
-    """Return what a check that does not conform says about the unit."""
+    """Return what a check that does not conform says about the unit, `there` if it is about a region."""
     if check.where.startswith("range of"):
         return "the unit is too uneven over the field"
     side = "high" if check.at_most is not None and (check.value is None or check.value >= _middle(check)) else "low"
-    family = "mtf" if check.quantity.startswith("mtf") else check.quantity
-    return _MEANS.get((family, side), "the unit does not meet the requirement there")
+    return f"the unit {meaning(check.quantity, side)}{' there' if check.where else ''}"
+
+
+def whole(capture: str, *, regions: bool) -> str:
+    """Return the place of what has no region.
+
+    Args:
+        capture: The capture's name: two captures may be checked for the same quantity.
+        regions: It has regions, of which the quantity is taken together.
+    """
+    return f"{extent(regions=regions)} ({capture})"
+
+
+def extent(*, regions: bool) -> str:
+    """Return what a quantity without a region is taken of."""
+    return "all regions" if regions else "whole frame"
 
 
 def _middle(check: Check) -> float:

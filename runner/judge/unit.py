@@ -24,6 +24,9 @@ from runner.measure.evidence import UnitEvidence
 from runner.measure.reading import Reading
 from runner.spec.model import Capture, Spec
 
+COPY = "again from the station"
+"""Part of every sentence that asks for a file to be copied again; a word of capture in it comes second."""
+CAPTURE = "capture again"
 MOST_PLACES = 4
 """Places named in one sentence; the checks name all."""
 _BLAME_ORDER = (AT_FAULT_PROGRAM, AT_FAULT_CAPTURE, AT_FAULT_CANNOT_TELL, AT_FAULT_UNIT)
@@ -104,7 +107,7 @@ def _rolled_up(checks: tuple[Check, ...], states: tuple[CaptureState, ...]) -> J
         )
     if verdict == CONFORMS:
         reasons = (_all_well(checks),)
-    return Judgement(verdict, at_fault, because, reasons, _next(verdict, at_fault, deciding), checks, states)
+    return Judgement(verdict, at_fault, because, reasons, _next(verdict, at_fault, deciding, states), checks, states)
 
 
 def _weight(check: Check) -> tuple[object, ...]:
@@ -152,23 +155,23 @@ def _blame(verdict: str, deciding: Sequence[Check]) -> tuple[str | None, str]:
 
 
 def _what_is_wrong(deciding: Sequence[Check]) -> str:
-    """Return what the failing checks say about the unit, each thing once, with its places."""
+    """Return what the failing checks say about the unit, each thing once, with its places, or captures as a whole."""
     places: dict[str, list[str]] = {}
     for check in sorted(deciding, key=_weight):
         what = (check.because or "").removesuffix(" there")
-        places.setdefault(what, []).append(check.where)
+        places.setdefault(what, []).append(check.where or check.capture)
     said = []
     for what, where in places.items():
-        named = [place for place in dict.fromkeys(where) if place]
+        named = list(dict.fromkeys(where))
         more = f" and {len(named) - MOST_PLACES} more" if len(named) > MOST_PLACES else ""
         words = joined(named) if not more else ", ".join(named[:MOST_PLACES]) + more
-        said.append(f"{what} ({words})" if words else what)
+        said.append(f"{what} ({words})")
     return "; ".join(said)
 
 
 def _all_well(checks: Sequence[Check]) -> str:
     judged = [c for c in checks if c.verdict == CONFORMS]
-    known = [c for c in judged if c.probability is not None]
+    known = [c for c in judged if c.probability is not None and not _none_of_none(c)]
     count = f"All {len(judged)} checks conform" if len(judged) > 1 else "The one check conforms"
     if not known:
         return f"{count}."
@@ -176,8 +179,13 @@ def _all_well(checks: Sequence[Check]) -> str:
     return f"{count}; nearest to its limit: {nearest.reason}."
 
 
+def _none_of_none(check: Check) -> bool:
+    """Tell whether none was found of what there must be none: it lies on its limit, and could not lie better."""
+    return check.value == 0 == check.at_most and not check.u
+
+
 def _margin(check: Check) -> float:
-    """Return the distance to the nearest limit in standard uncertainties, or relative to the limit where u is 0."""
+    """Return the distance to the nearest limit in standard uncertainties; without any, only on the limit is near."""
     if check.value is None:
         return float("inf")
     ends = [e for e in (check.at_least, check.at_most) if e is not None]
@@ -185,7 +193,7 @@ def _margin(check: Check) -> float:
     return nearest / check.u if check.u else nearest * 1e9
 
 
-def _next(verdict: str, at_fault: str | None, deciding: Sequence[Check]) -> str:
+def _next(verdict: str, at_fault: str | None, deciding: Sequence[Check], states: Sequence[CaptureState]) -> str:
     if verdict == CONFORMS:
         return "Release the unit."
     if verdict == DOES_NOT_CONFORM:
@@ -197,8 +205,35 @@ def _next(verdict: str, at_fault: str | None, deciding: Sequence[Check]) -> str:
     if at_fault == AT_FAULT_PROGRAM:
         return "Keep the unit and its frames; tell whoever maintains the program."
     if at_fault == AT_FAULT_CAPTURE:
-        return f"Capture again: {names}. First mend what the reason says."
+        return _again(deciding, states)
     return f"Capture again: {names}. First capture a unit known to be good in the same place: it tells unit from bench."
+
+
+def _again(deciding: Sequence[Check], states: Sequence[CaptureState]) -> str:
+    """Return which captures' files are copied again and which captures are made again, by what their faults ask for.
+
+    A capture whose only lack is a companion that cannot be used need not be made again.
+    """
+    lost = blame.BY_CAUSE["missing companion"].because
+    asked = {(c.capture, c.attempt) for c in deciding if c.because != lost} or {
+        (c.capture, c.attempt) for c in deciding
+    }
+    copied, captured, doubted = set(), set(), set()
+    for name, attempt in asked:
+        faults = next((s.faults for s in states if (s.name, s.attempt) == (name, attempt)), ())
+        copies = [sentence for sentence in faults if COPY in sentence]
+        copied |= {f"'{name}'"} if copies else set()
+        captured |= {f"'{name}'"} if len(copies) < len(faults) or not faults else set()
+        doubted |= {f"'{name}'"} if any(CAPTURE in sentence for sentence in copies) else set()
+    words = []
+    if copied:
+        doubt = (
+            f"; if the reason stays, capture {joined(sorted(doubted))} again" if (doubted := doubted - captured) else ""
+        )
+        words.append(f"Copy again from the station: {joined(sorted(copied))}{doubt}.")
+    if captured:
+        words.append(f"Capture again: {joined(sorted(captured))}. First mend what the reason says.")
+    return " ".join(words)
 
 
 def _natural(word: str) -> tuple[int, str]:

@@ -75,6 +75,8 @@ class Check:
     """Why that is at fault."""
     attempt: int = 1
     """Attempt judged."""
+    place: str = ""
+    """`where` in words; where it is empty, what the capture is checked on as a whole."""
     steps: str = ""
     """How a combination came about from its members, as a sentence; empty for a single region."""
 

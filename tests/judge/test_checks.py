@@ -11,9 +11,10 @@ from hypothesis import strategies as st
 from runner.judge.checks import checks_of, not_measured
 from runner.judge.unit import judge_unit
 from runner.judge.verdict import Check
+from runner.measure.evidence import CaptureEvidence
 from runner.measure.reading import Reading
 from runner.spec.model import Limit
-from tests.judge.hand_made import CAMERA, evidence, limit, reading, refused, spec
+from tests.judge.hand_made import CAMERA, FRAME, evidence, limit, reading, refused, spec
 
 
 def _check(asked: Limit, *readings: Reading, at: int = 0) -> Check:
@@ -35,6 +36,21 @@ def test_a_group_is_checked_in_each_of_its_members() -> None:
     checks = judge_unit(asked, evidence(reading(0.3, region="left"), reading(0.1, region="right"))).checks
 
     assert [(c.where, c.verdict) for c in checks] == [("left", "conforms"), ("right", "does not conform")]
+
+
+def test_a_sentence_without_a_region_names_its_capture() -> None:
+    """The same quantity of two captures is told apart; a capture with regions is spoken of as all of them."""
+    asked = spec(limit(where=()), limit("2", where=(), capture="dark"), captures=("chart", "dark"))
+    bare = tuple(replace(one, regions=()) if one.name == "dark" else one for one in asked.captures)
+    two = [CaptureEvidence(name, 1, "slanted edge", (FRAME,)) for name in ("chart", "dark")]
+    found = evidence(reading(0.1, region=""), reading(0.1, region="", capture="dark"), captures=two)
+
+    judged = judge_unit(replace(asked, captures=bare), found)
+
+    assert {r.partition(": ")[0] for r in judged.reasons} == {"all regions (chart)", "whole frame (dark)"}
+    assert {r.partition("; ")[2] for r in judged.reasons} == {"the unit is soft"}
+    assert judged.because == "the unit is soft (chart and dark)"
+    assert [c.where for c in judged.checks] == ["", ""], "what results.json holds stays as it is"
 
 
 def test_places_are_unique() -> None:

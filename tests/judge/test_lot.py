@@ -6,12 +6,13 @@ import pytest
 
 from runner.errors import UsageError
 from runner.exits import Exit
-from runner.judge.lot import judge_lot, margin
+from runner.judge.lot import distance, judge_lot, margin
 
 
 def document(serial: str, verdict: str = "conforms", at_fault: str | None = None, **more: Any) -> dict[str, Any]:
     """Return a unit's results as far as a lot reads them."""
     check = {"characteristic": 1, "where": "centre", "value": 0.25, "u": 0.01, "at_least": 0.2, "at_most": None}
+    check["verdict"] = "conforms"
     known = {
         "unit": {"serial": serial},
         "verdict": verdict,
@@ -71,6 +72,18 @@ def test_the_nearest_miss_of_each_characteristic_is_named() -> None:
     lot = judge_lot([near, document("B")])
 
     assert [(w["serial"], round(w["margin"], 6)) for w in lot["worst"]] == [("A", -1.0)]
+
+
+def test_a_failing_count_is_beyond_all_others() -> None:
+    """16 hot pixels of 8 have no distance in u, and still stand first; no infinite number gets into the file."""
+    counted = document("A")
+    count = {"value": 16.0, "u": 0.0, "at_least": None, "at_most": 8.0, "verdict": "does not conform", "where": ""}
+    counted["checks"].append(counted["checks"][0] | count | {"characteristic": 2})
+
+    first, second = judge_lot([counted])["worst"]
+    assert (first["characteristic"], first["margin"]) == (2, None)
+    assert second["margin"] == pytest.approx(5)
+    assert distance(counted["checks"][1] | {"verdict": "conforms"}) is None
 
 
 def test_a_margin_needs_a_value_and_its_uncertainty() -> None:

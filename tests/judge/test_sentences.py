@@ -6,7 +6,7 @@ import pytest
 from hypothesis import assume, given
 from hypothesis import strategies as st
 
-from runner.judge.sentences import combination_steps, consequence, decimals, joined, requirement, show
+from runner.judge.sentences import combination_steps, consequence, decimals, joined, requirement, show, whole
 from runner.judge.verdict import Check
 
 CHECK = Check(
@@ -59,11 +59,13 @@ def test_requirements_in_words() -> None:
         ({"quantity": "edge_width", "at_least": None, "at_most": 0.1}, "the unit is soft there"),
         ({"where": "range of corners", "at_least": None, "at_most": 0.1}, "the unit is too uneven over the field"),
         ({"at_least": 0.05, "at_most": 0.1}, "the unit transfers more than it may there"),
+        ({"where": ""}, "the unit is soft"),
+        ({"where": "", "quantity": "row_banding", "at_least": None, "at_most": 0.1}, "the unit adds bands"),
         ({"quantity": "edge_angle"}, "the unit does not meet the requirement there"),
     ],
 )
 def test_what_a_failure_says_about_the_unit(change: dict[str, object], words: str) -> None:
-    """Trade words per quantity and side."""
+    """Trade words per quantity and side; `there` only where there is a place."""
     assert consequence(replace(CHECK, **change)) == words  # type: ignore[arg-type]
 
 
@@ -71,6 +73,12 @@ def test_lists_in_sentences() -> None:
     """One, two and more names read like English."""
     assert [joined(list("abc")[:n]) for n in range(4)] == ["", "a", "a and b", "a, b and c"]
     assert decimals(0.0, 0.0) == 0
+
+
+def test_what_has_no_region_names_its_capture() -> None:
+    """Banding of darks and of flats have two places; what is taken of all regions is not the whole frame."""
+    assert [whole(name, regions=False) for name in ("dark", "flat")] == ["whole frame (dark)", "whole frame (flat)"]
+    assert whole("chart", regions=True) == "all regions (chart)"
 
 
 def test_a_range_tells_what_was_taken_off() -> None:

@@ -5,6 +5,8 @@ from itertools import combinations_with_replacement
 
 import pytest
 
+from runner.capture.formats.contract import COPY_AGAIN as COPY_FILE
+from runner.capture.manifest import COPY_AGAIN as COPY_UNIT
 from runner.judge.unit import judge_unit, roll_up
 from runner.measure.evidence import CaptureEvidence
 from runner.measure.reading import CAUSES
@@ -92,6 +94,56 @@ def test_a_refused_file_makes_every_check_of_its_capture_not_measured() -> None:
 
     assert [(c.verdict, c.at_fault) for c in judged.checks] == [("not measured", "capture")] * 2
     assert "it is truncated" in judged.checks[0].reason
+
+
+@pytest.mark.parametrize(
+    ("faults", "step"),
+    [
+        ([f"a.tif: it is truncated; {COPY_FILE}"], "Copy again from the station: 'chart'."),
+        ([f"manifest.json: a.tif is another; {COPY_UNIT}"], "Copy again from the station: 'chart'."),
+        (
+            [f"a.tif: half of it is zero; {COPY_FILE}; if it stays so, capture again"],
+            "Copy again from the station: 'chart'; if the reason stays, capture 'chart' again.",
+        ),
+        (
+            [f"a.tif: it is truncated; {COPY_FILE}", "a.tif: no sidecar says its serial; capture again"],
+            "Copy again from the station: 'chart'. Capture again: 'chart'. First mend what the reason says.",
+        ),
+        (["a.tif: counter 3 as in b.tif; capture again"], "Capture again: 'chart'. First mend what the reason says."),
+    ],
+)
+def test_a_half_copied_file_is_copied_again(faults: list[str], step: str) -> None:
+    """What only the copy lacks is copied, not captured, again; both stand where faults ask for both."""
+    bad = CaptureEvidence("chart", 1, "slanted edge", (FRAME,), tuple(faults))
+
+    assert judge_unit(spec(limit()), evidence(captures=[bad])).next == step
+
+
+def test_a_capture_that_only_lacks_its_companion_is_not_made_again() -> None:
+    """The dark's file is copied again; the chart, whose frames are good, is left alone."""
+    bad = CaptureEvidence("dark", 1, "dark frame", (FRAME,), (f"dark-1.tif: it is truncated; {COPY_FILE}",))
+    good = CaptureEvidence("chart", 1, "slanted edge", (FRAME,))
+    asked = spec(limit(), limit("2", capture="dark"), captures=("chart", "dark"))
+
+    judged = judge_unit(asked, evidence(refused("missing companion"), captures=[bad, good]))
+
+    assert judged.next == "Copy again from the station: 'dark'."
+
+
+def test_none_of_what_there_must_be_none_is_not_near_its_limit() -> None:
+    """No stuck pixel where none is allowed could not be better; two of two is on its limit, and said."""
+    none = {"at_least": None, "unit": "1", "rule": "simple acceptance"}
+    limits = (limit(), limit("2", quantity="stuck_pixels", at_most=0.0, **none))
+    two = limit("3", quantity="dead_pixels", at_most=2.0, **none)
+    sharp = reading(0.3)
+    counts = [
+        reading(n, 0.0, quantity=q, measured_in="1", count=True)
+        for q, n in (("stuck_pixels", 0.0), ("dead_pixels", 2.0))
+    ]
+
+    assert "nearest to its limit: centre: mtf50" in judge_unit(spec(*limits), evidence(sharp, *counts)).reasons[0]
+    assert "centre: dead pixels 2, at most 2" in judge_unit(spec(*limits, two), evidence(sharp, *counts)).reasons[0]
+    assert judge_unit(spec(limits[1]), evidence(*counts)).reasons == ("The one check conforms.",)
 
 
 def test_two_valid_attempts_need_a_rule() -> None:
