@@ -7,7 +7,7 @@ from typing import Any
 from runner.judge.sentences import decimals, show
 from runner.judge.verdict import NOT_MEASURED
 from runner.report import drawing
-from runner.report.circumstance_facts import capital, sentence
+from runner.report.circumstance_facts import Document, capital, extent_of, sentence
 
 PROBABLE = 0.9995
 """From here on a probability prints as `> 99.9 %`."""
@@ -69,11 +69,11 @@ def verdict_fact(word: str, size: int = 14) -> VerdictFact:
     return VerdictFact(word, drawing.slug(word), drawing.verdict_shape(word, size))
 
 
-def check_fact(check: Check) -> CheckFact:
-    """Return one check as a row."""
+def check_fact(check: Check, document: Document) -> CheckFact:
+    """Return one check of a document as a row."""
     return CheckFact(
         number=str(check["characteristic"]),
-        where=place(check),
+        where=place(check, document),
         quantity=check["label"],
         value=value_text(check),
         limit=limit_text(check),
@@ -83,9 +83,9 @@ def check_fact(check: Check) -> CheckFact:
     )
 
 
-def place(check: Check) -> str:
-    """Return where a check is, with its channel if there are several."""
-    where = check["where"] or "whole frame"
+def place(check: Check, document: Document) -> str:
+    """Return where a check is, with its channel if there are several; without a region, in which capture."""
+    where = check["where"] or f"{extent_of(check['capture'], document)} ({check['capture']})"
     return where if check["channel"] in {"mono", None, ""} else f"{where}, {check['channel']}"
 
 
@@ -150,11 +150,11 @@ def fault_text(word: str | None) -> str:
     }.get(word, f"At fault: {word}.")
 
 
-def why_facts(checks: Sequence[Check]) -> tuple[WhyFact, ...]:
-    """Return each cause of `not measured` once, with the checks that it took."""
-    unmeasured = [c for c in checks if c["verdict"] == NOT_MEASURED]
+def why_facts(document: Document) -> tuple[WhyFact, ...]:
+    """Return each cause of `not measured` once, with the checks of a document that it took."""
+    unmeasured = [c for c in document["checks"] if c["verdict"] == NOT_MEASURED]
     groups = _by_cause(
-        (_cause(c["reason"]), f"{c['characteristic']}.{JOIN}{place(c)}: {c['label']}") for c in unmeasured
+        (_cause(c["reason"]), f"{c['characteristic']}.{JOIN}{place(c, document)}: {c['label']}") for c in unmeasured
     )
     return tuple(WhyFact("; ".join(names), capital(sentence(cause))) for cause, names in groups.items())
 

@@ -3,6 +3,8 @@
 from collections.abc import Mapping, Sequence
 from typing import Any
 
+from runner.judge.sentences import extent
+
 MOST_ROWS = 60
 """Rows of a table on paper; all others stand in results.json."""
 LATIN_ENDS = 0x250
@@ -112,6 +114,12 @@ def _plain(value: Any) -> str:
     return f"{value:g}" if isinstance(value, float) else str(value)
 
 
+def extent_of(capture: str, document: Document) -> str:
+    """Return what a quantity without a region is taken of in a capture: the whole frame, or all of its regions."""
+    asked = (one[capture] for one in document["spec"].get("captures", ()) if capture in one)
+    return extent(regions=bool((next(asked, None) or {}).get("regions")))
+
+
 def uncertainty_fact(document: Document) -> tuple[tuple[str, str, str], ...]:
     """Return the components of the readings that checks use, in themselves or as members of a combination."""
     rows = []
@@ -119,7 +127,7 @@ def uncertainty_fact(document: Document) -> tuple[tuple[str, str, str], ...]:
         if reading["u"] and any(_uses(check, reading) for check in document["checks"]):
             parts = [f"{c['name']} {c['u']:.2g} {c['type']}" for c in reading["components"] if c["u"] > 0]
             unit = "" if reading["measured_in"] == "1" else f" {reading['measured_in']}"
-            where = reading["region"] or "whole frame"
+            where = _where(reading, document)
             channel = "" if reading["channel"] == "mono" else f", {reading['channel']}"
             rows.append((f"{where}{channel}: {reading['label']}", f"{reading['u']:.2g}{unit}", ", ".join(parts)))
     left = len(rows) - MOST_ROWS
@@ -138,7 +146,7 @@ def deviations_fact(document: Document) -> tuple[str, ...]:
     flags: dict[str, list[str]] = {}
     for reading in document["readings"]:
         for flag in reading["flags"]:
-            flags.setdefault(f"{reading['label']}: {flag}", []).append(reading["region"] or "whole frame")
+            flags.setdefault(f"{reading['label']}: {flag}", []).append(_where(reading, document))
     rows += [sentence(f"{flag} ({', '.join(dict.fromkeys(places))})") for flag, places in flags.items()]
     if document["unused"]:
         rows.append(f"Files that no pattern used: {', '.join(document['unused'])}.")
@@ -146,6 +154,10 @@ def deviations_fact(document: Document) -> tuple[str, ...]:
         rows.append(f"An earlier result of this unit is kept in the folder {document['earlier']}.")
     left = len(rows) - MOST_ROWS
     return (*rows[:MOST_ROWS], *([f"{left} more remarks stand in results.json."] if left > 0 else []))
+
+
+def _where(reading: Mapping[str, Any], document: Document) -> str:
+    return reading["region"] or f"{extent_of(reading['capture'], document)} ({reading['capture']})"
 
 
 def machine_fact(program: Mapping[str, Any]) -> str:

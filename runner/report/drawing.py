@@ -28,6 +28,22 @@ _TICK, _WORD = 9.5, 10.0
 """px: sizes of letters; on paper, where 300 px are 76 mm, they are 7 pt."""
 _LETTER = 6.4
 """px: width of a figure of `_WORD` size."""
+_FEW = 12
+"""Points up to which a curve has a dot at each: between them it is not known."""
+_ACROSS: Mapping[str, str] = {
+    "through focus": "position",
+    "dark level": "exposure time",
+    "dark variance": "exposure time",
+    "photon transfer": "mean signal",
+    "signal-to-noise ratio": "mean signal",
+    "linearity": "light",
+    "distortion": "image height over half the diagonal",
+    "radial chromatic displacement": "image height over half the diagonal",
+}
+"""What runs along x, by a curve's name."""
+_ACROSS_IN: Mapping[str, str] = {"cy/px": "spatial frequency", "s": "time"}
+"""The same by its unit, for curves of any name."""
+_UNITLESS = frozenset({"", "1"})
 _APART = 70.0
 """px: limits nearer than this have their words on outer sides."""
 
@@ -104,6 +120,7 @@ def transfer_picture(curve: Mapping[str, Any], checks: Sequence[Mapping[str, Any
     parts.append(
         f'<path d="{_path([frame.at(*p) for p in zip(xs, ys, strict=True)])}" {_stroke(LINE, 1.6)} class="curve"/>'
     )
+    parts += _dots(frame, xs, ys)
     parts += [line for mark in marks for line in _drawn(frame, mark)]
     return _svg(parts, _WIDE, _HIGH, title)
 
@@ -187,11 +204,26 @@ def plain_picture(curve: Mapping[str, Any], title: str) -> str:
         (low, high + 0.05 * ((high - low) or 1.0)),
         (_LEFT + 8, _TOP, _WIDE - _RIGHT, _HIGH - _BOTTOM),
     )
-    unit = "" if curve["y_in"] in {"1", ""} else f", {curve['y_in']}"
-    parts = _axes(frame, _ticks(*frame.x, 5), _ticks(*frame.y, 4), curve["x_in"], f"{curve['name']}{unit}")
+    unit = "" if curve["y_in"] in _UNITLESS else f", {curve['y_in']}"
+    parts = _axes(frame, _ticks(*frame.x, 5), _ticks(*frame.y, 4), _across(curve), f"{curve['name']}{unit}")
     points = [frame.at(*p) for p in zip(xs, ys, strict=True)]
     parts.append(f'<path d="{_path(points)}" {_stroke(LINE, 1.4)} class="curve"/>')
+    parts += _dots(frame, xs, ys)
     return _svg(parts, _WIDE, _HIGH, title)
+
+
+def _across(curve: Mapping[str, Any]) -> str:
+    """Return what stands at the x axis of any curve: what runs along it where that is known, and its unit."""
+    word, unit = _ACROSS.get(curve["name"]) or _ACROSS_IN.get(curve["x_in"], ""), curve["x_in"]
+    return ", ".join(one for one in (word, "" if unit in _UNITLESS else unit) if one)
+
+
+def _dots(frame: Frame, xs: Sequence[float], ys: Sequence[float]) -> list[str]:
+    """Draw the points of a curve that has few."""
+    if len(xs) > _FEW:
+        return []
+    places = [frame.at(x, y) for x, y in zip(xs, ys, strict=True) if isfinite(x) and isfinite(y)]
+    return [f'<circle cx="{x:.1f}" cy="{y:.1f}" r="2.6" fill="{LINE}" class="dot"/>' for x, y in places]
 
 
 def margin_picture(check: Mapping[str, Any], title: str) -> str:

@@ -1,13 +1,18 @@
 """What a page shows as evidence: overviews with their regions, transfer curves, edge fits."""
 
+from collections import Counter
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
 from runner.report import drawing
+from runner.report.circumstance_facts import Document, extent_of
 
 MOST_REGIONS = 12
 """Regions whose curves a page shows; those of all others stand in results.json."""
+
+MOST_ALIKE = 4
+"""Regions of one capture whose maps or profiles of one kind a page shows."""
 
 MOST_SPOTS = 40
 """Defects and the like that a page lists."""
@@ -62,21 +67,51 @@ def map_facts(document: Mapping[str, Any]) -> tuple[tuple[MapFact, ...], int]:
 
     maps = document.get("maps", [])
     facts = []
-    for number, area in enumerate(maps[:MOST_REGIONS], 1):
-        title = f"{area['name']}: {_where(area)}"
+    for number, area in enumerate(_telling(maps, document), 1):
+        title = f"{area['name']}: {_where(area, document)}"
         marks = ", ".join(words for _, _, words in area["marks"])
         alt = f"Map of the {title}" + (f", marked: {marks}" if marks else "")
         facts.append(MapFact(f"map-{number}.png", title, alt, map_picture(area)))
     return tuple(facts), len(maps) - len(facts)
 
 
+def plan_facts(document: Document) -> tuple[MapFact, ...]:
+    """Return a plan of each capture's frame with its defects marked, where there are any."""
+    from runner.report.spot_picture import SIGNS, spot_picture  # noqa: PLC0415 - heavy, and most documents have no spot
+
+    spots: dict[tuple[str, int], list[Mapping[str, Any]]] = {}
+    for spot in document.get("spots", ()):
+        if spot["kind"] in SIGNS:
+            spots.setdefault((spot["capture"], spot["attempt"]), []).append(spot)
+    facts = []
+    for number, ((capture, attempt), mine) in enumerate(spots.items(), 1):
+        frames = next(c["frames"] for c in document["captures"] if (c["name"], c["attempt"]) == (capture, attempt))
+        counts = Counter(spot["kind"] for spot in mine)
+        title = f"defects: {capture}" + ("" if attempt == 1 else f", attempt {attempt}")
+        alt = f"Plan of the frame with its {title}: " + ", ".join(f"{n} × {kind}" for kind, n in counts.items())
+        facts.append(MapFact(f"plan-{number}.png", title, alt, spot_picture(tuple(frames[0]["shape"][:2]), mine)))
+    return tuple(facts)
+
+
+def _telling(rows: Sequence[Mapping[str, Any]], document: Document) -> list[Mapping[str, Any]]:
+    """Return which of many maps or profiles a page shows: of one kind those of regions with trouble, else the first."""
+    kinds: dict[tuple[Any, ...], list[Mapping[str, Any]]] = {}
+    for row in rows:
+        kinds.setdefault(tuple(row[key] for key in ("capture", "attempt", "name", "channel")), []).append(row)
+    chosen = []
+    for alike in kinds.values():
+        troubled = [row for row in alike if not _trouble(row, document["checks"])]
+        chosen += troubled[:MOST_ALIKE] or alike[:1]
+    return chosen[:MOST_REGIONS]
+
+
 def plain_curve_facts(document: Mapping[str, Any]) -> tuple[tuple[CurveFact, ...], int]:
     """Return curves that are no transfer curves and belong to none, and how many are left out."""
-    known = {"mtf", "edge spread", "residual", "line spread"}
+    known = {"mtf", "edge spread", "edge spread data", "residual", "line spread"}
     curves = [c for c in document["curves"] if c["name"] not in known and len(c["x"]) > 1]
     facts = []
-    for curve in curves[:MOST_REGIONS]:
-        title = f"{curve['name']}: {_where(curve)}"
+    for curve in _telling(curves, document):
+        title = f"{curve['name']}: {_where(curve, document)}"
         facts.append(CurveFact(title, drawing.plain_picture(curve, title), ""))
     return tuple(facts), len(curves) - len(facts)
 
@@ -84,7 +119,7 @@ def plain_curve_facts(document: Mapping[str, Any]) -> tuple[tuple[CurveFact, ...
 def spot_facts(document: Mapping[str, Any]) -> tuple[tuple[tuple[str, str, str, str], ...], int]:
     """Return spots as rows of kind, place in px, where and words, and how many are left out; failing counts first."""
     spots = sorted(document.get("spots", []), key=lambda spot: not _counted(spot, document["checks"]))
-    rows = tuple((s["kind"], f"{s['x']:g}, {s['y']:g}", _where(s), s["words"]) for s in spots[:MOST_SPOTS])
+    rows = tuple((s["kind"], f"{s['x']:g}, {s['y']:g}", _where(s, document), s["words"]) for s in spots[:MOST_SPOTS])
     return rows, len(spots) - len(rows)
 
 
@@ -95,10 +130,10 @@ def _counted(spot: Mapping[str, Any], checks: Sequence[Mapping[str, Any]]) -> bo
     return any(c["quantity"] in counts and c["where"] == spot["region"] and c["verdict"] in TROUBLE for c in mine)
 
 
-def _where(one: Mapping[str, Any]) -> str:
+def _where(one: Mapping[str, Any], document: Document) -> str:
     channel = "" if one["channel"] == "mono" else f" {one['channel']}"
     attempt = "" if one["attempt"] == 1 else f", attempt {one['attempt']}"
-    return f"{one['region'] or 'whole frame'}{channel} ({one['capture']}{attempt})"
+    return f"{one['region'] or extent_of(one['capture'], document)}{channel} ({one['capture']}{attempt})"
 
 
 def picture_facts(document: Mapping[str, Any]) -> tuple[PictureFact, ...]:
@@ -135,7 +170,7 @@ def curve_facts(document: Mapping[str, Any]) -> tuple[tuple[CurveFact, ...], int
         mine = _checks(curve, document["checks"])
         spread, residual = (_companion(curve, document["curves"], name) for name in ("edge spread", "residual"))
         channel = "" if curve["channel"] == "mono" else f", {curve['channel']}"
-        where = f"{curve['region'] or 'whole frame'}{channel}"
+        where = f"{curve['region'] or extent_of(curve['capture'], document)}{channel}"
         attempt = "" if curve["attempt"] == 1 else f", attempt {curve['attempt']}"
         title = f"{where} ({curve['capture']}{attempt}, {curve['estimator']})"
         transfer = drawing.transfer_picture(curve, mine, f"Transfer curve of {where} with limits")

@@ -9,7 +9,7 @@ from dataclasses import dataclass
 from hashlib import sha256
 from typing import Any
 
-from runner.judge.lot import margin
+from runner.judge.lot import distance
 from runner.judge.sentences import joined
 from runner.judge.verdict import CANNOT_DECIDE, CONFORMS, DOES_NOT_CONFORM, NOT_MEASURED, REPORT_ONLY
 from runner.report import drawing
@@ -54,6 +54,7 @@ from runner.report.evidence_facts import (
     map_facts,
     picture_facts,
     plain_curve_facts,
+    plan_facts,
     spot_facts,
 )
 from runner.spec.model import SIMPLE_ACCEPTANCE
@@ -185,7 +186,7 @@ def report_facts(document: Document) -> Report:
     reasons = reason_texts(document["reasons"])
     curves, more_curves = curve_facts(document)
     (plain, more_plain), (maps, more_maps) = plain_curve_facts(document), map_facts(document)
-    spots, more_spots = spot_facts(document)
+    (spots, more_spots), plans = spot_facts(document), plan_facts(document)
     left = ((more_plain, "profiles"), (more_maps, "maps"), (more_spots, "spots"))
     return Report(
         title=f"Test report {unit['serial']}",
@@ -201,21 +202,21 @@ def report_facts(document: Document) -> Report:
         next=document["next"],
         reasons=reasons[:REASONS],
         more_reasons=_more(len(reasons) - REASONS, "reasons", "the results below"),
-        margins=_margins(checks),
+        margins=_margins(document),
         who=_who(document, digest),
         conformity=_conformity(document),
-        checks=tuple(check_fact(c) for c in kept),
+        checks=tuple(check_fact(c, document) for c in kept),
         left_out=left_out,
         combined=tuple(dict.fromkeys(sentence(c["steps"]) for c in kept if c["steps"])),
-        not_measured=why_facts(checks),
+        not_measured=why_facts(document),
         not_measured_because=blame_texts(checks),
-        reported=tuple(check_fact(c) for c in checks if c["verdict"] == REPORT_ONLY),
+        reported=tuple(check_fact(c, document) for c in checks if c["verdict"] == REPORT_ONLY),
         pictures=picture_facts(document),
         curves=curves,
         curves_left_out=_more(more_curves, "curves", "results.json"),
-        more_evidence="Evidence: " + joined(shown) if (shown := _named(maps, plain, spots)) else "",
+        more_evidence="Evidence: " + joined(shown) if (shown := _named((*maps, *plans), plain, spots)) else "",
         plain_curves=plain,
-        maps=maps,
+        maps=(*maps, *plans),
         spots=spots,
         evidence_left_out=tuple(_more(number, what, "results.json") for number, what in left if number),
         conditions=_conditions(document),
@@ -243,15 +244,15 @@ def _kept(checks: Sequence[Mapping[str, Any]]) -> tuple[list[Mapping[str, Any]],
 
 
 def _distance(check: Mapping[str, Any]) -> float:
-    distance = margin(check)
-    return float("inf") if distance is None else distance
+    away = distance(check)
+    return float("inf") if away is None else away
 
 
-def _margins(checks: Sequence[Mapping[str, Any]]) -> tuple[MarginFact, ...]:
-    judged = [c for c in checks if c["verdict"] != REPORT_ONLY and margin(c) is not None]
+def _margins(document: Document) -> tuple[MarginFact, ...]:
+    judged = [c for c in document["checks"] if c["verdict"] != REPORT_ONLY and distance(c) is not None]
     rows = []
     for check in sorted(judged, key=_distance)[:WORST]:
-        title = f"{check['characteristic']}. {check['label']}, {place(check)}"
+        title = f"{check['characteristic']}. {check['label']}, {place(check, document)}"
         text = f"{value_text(check)}; limit {limit_text(check)}"
         rows.append(MarginFact(title, text, drawing.margin_picture(check, f"{title}: {text}")))
     return tuple(rows)

@@ -60,7 +60,7 @@ class LotReport:
     units: tuple[UnitRow, ...]
     """Units by serial."""
     worst: tuple[tuple[str, str, str], ...]
-    """Unit, margin in standard uncertainties, sentence."""
+    """Unit, margin in standard uncertainties or `beyond`, sentence."""
     strips: tuple[StripFact, ...]
     """Values against limits."""
     unused: tuple[str, ...]
@@ -100,7 +100,7 @@ def lot_facts(lot: Mapping[str, Any], documents: Sequence[Mapping[str, Any]]) ->
         blame=blame,
         who=tuple((label, text) for label, text in who if text),
         units=tuple(_unit(u) for u in lot["units"]),
-        worst=tuple((f"{w['serial']}", _signed(w["margin"]), sentence(w["reason"])) for w in lot["worst"]),
+        worst=tuple((f"{w['serial']}", margin_text(w["margin"]), sentence(w["reason"])) for w in lot["worst"]),
         strips=_strips(documents),
         unused=tuple(lot["unused"]),
     )
@@ -121,7 +121,7 @@ def _strips(documents: Sequence[Mapping[str, Any]]) -> tuple[StripFact, ...]:
                 continue
             key = tuple(check[k] for k in ("characteristic", "label", "measured_in", "at_least", "at_most"))
             row = values.setdefault(key, {"check": check, "units": {}, "places": {}})
-            row["places"][place(check)] = None
+            row["places"][place(check, document)] = None
             serial = document["unit"]["serial"]
             row["units"].setdefault(serial, []).append((check["value"], check["verdict"]))
     strips = []
@@ -138,8 +138,10 @@ def _strips(documents: Sequence[Mapping[str, Any]]) -> tuple[StripFact, ...]:
     return tuple(strips)
 
 
-def _signed(margin: float) -> str:
-    """Return a margin with its sign, never as a zero that hides which side it is on."""
+def margin_text(margin: float | None) -> str:
+    """Return a margin with its sign, never as a zero that hides which side it is on; a failing count has none."""
+    if margin is None:
+        return "beyond"
     return f"{margin:+.1f}" if abs(margin) >= 0.05 or margin == 0 else f"{margin:+.1g}"
 
 

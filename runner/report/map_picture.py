@@ -49,7 +49,7 @@ def map_picture(area: Mapping[str, Any]) -> bytes:
     picture = Image.new("RGB", (LEFT + size[0] + RIGHT, TOP + max(size[1], 120) + BOTTOM), GROUND)
     picture.paste(tiles.convert("RGB"), (LEFT, TOP))
     draw = ImageDraw.Draw(picture)
-    _axes(draw, size, (x, y), str(area["axes_in"]))
+    axes(draw, size, (x, y), str(area["axes_in"]))
     _scale(draw, size, (low, high), str(area["values_in"]))
     marks = [
         (LEFT + (across - x[0]) / (x[1] - x[0]) * size[0], TOP + (down - y[0]) / (y[1] - y[0]) * size[1], str(words))
@@ -78,20 +78,21 @@ def _grey(shares: NDArray[np.float64]) -> NDArray[np.uint8]:
     return np.asarray(np.round(24 + steps * (225 / (STEPS - 1))), dtype=np.uint8)
 
 
-def _axes(draw: "ImageDraw.ImageDraw", size: tuple[int, int], ends: tuple[tuple[float, float], ...], unit: str) -> None:
+def axes(draw: "ImageDraw.ImageDraw", size: tuple[int, int], ends: tuple[tuple[float, float], ...], unit: str) -> None:
+    """Draw a frame of so many px (width, height) with round numbers along x and y between two ends each."""
     (x0, x1), (y0, y1) = ends
     draw.rectangle((LEFT - 1, TOP - 1, LEFT + size[0], TOP + size[1]), outline=INK)
     bottom = TOP + size[1]
     for value in _round_numbers(x0, x1):
         across = LEFT + (value - x0) / (x1 - x0) * size[0]
         draw.line((across, bottom, across, bottom + 5), fill=INK)
-        _text(draw, (across, bottom + 8), _number(value), "ma")
+        text(draw, (across, bottom + 8), _number(value), "ma")
     for value in _round_numbers(y0, y1):
         down = TOP + (value - y0) / (y1 - y0) * size[1]
         draw.line((LEFT - 6, down, LEFT - 1, down), fill=INK)
-        _text(draw, (LEFT - 10, down), _number(value), "rm")
-    _text(draw, (LEFT + size[0] / 2, bottom + 32), f"x, {unit}", "ma")
-    _text(draw, (LEFT - 10, TOP - 14), f"y, {unit}", "mb")
+        text(draw, (LEFT - 10, down), _number(value), "rm")
+    text(draw, (LEFT + size[0] / 2, bottom + 32), f"x, {unit}", "ma")
+    text(draw, (LEFT - 10, TOP - 14), f"y, {unit}", "mb")
 
 
 def _round_numbers(low: float, high: float) -> list[float]:
@@ -110,8 +111,8 @@ def _scale(draw: "ImageDraw.ImageDraw", size: tuple[int, int], ends: tuple[float
         draw.rectangle((left, top, left + 18, top + high / STEPS), fill=(grey, grey, grey))
     draw.rectangle((left, TOP, left + 18, TOP + high), outline=INK)
     for share, value in ((0.0, ends[0]), (1.0, ends[1])):
-        _text(draw, (left + 24, TOP + (1 - share) * high), _number(value, ends[1] - ends[0]), "lm")
-    _text(draw, (left, TOP - 14), "" if unit == "1" else unit, "lb")
+        text(draw, (left + 24, TOP + (1 - share) * high), _number(value, ends[1] - ends[0]), "lm")
+    text(draw, (left, TOP - 14), "" if unit == "1" else unit, "lb")
 
 
 def _marks(draw: "ImageDraw.ImageDraw", marks: Sequence[tuple[float, float, str]], inside: Rectangle) -> None:
@@ -134,7 +135,7 @@ def _marks(draw: "ImageDraw.ImageDraw", marks: Sequence[tuple[float, float, str]
             draw.ellipse((x - 9, y - 9, x + 9, y + 9), outline=colour, width=width)
     for label, words in labels:
         draw.rectangle(label, fill=SHADOW)
-        _text(draw, ((label[0] + label[2]) / 2, (label[1] + label[3]) / 2), words, "mm", OUTLINE)
+        text(draw, ((label[0] + label[2]) / 2, (label[1] + label[3]) / 2), words, "mm", OUTLINE)
 
 
 def _free(x: float, y: float, letters: Rectangle, taken: Sequence[Rectangle], inside: Rectangle) -> Rectangle:
@@ -166,13 +167,14 @@ def _font() -> "ImageFont.FreeTypeFont":
     return ImageFont.truetype(str(folder("templates") / "fonts" / "DejaVuSans.ttf"), SIZE)
 
 
-def _text(
+def text(
     draw: "ImageDraw.ImageDraw",
     place: tuple[float, float],
     words: str,
     anchor: str,
     colour: tuple[int, int, int] = INK,
 ) -> None:
+    """Write words at a place in the font that travels with the program."""
     draw.text(place, words, fill=colour, font=_font(), anchor=anchor)
 
 

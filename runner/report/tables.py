@@ -113,14 +113,13 @@ def markdown_summary(lot: Mapping[str, Any], documents: Sequence[Document]) -> s
     ]
     if lot.get("simulated"):
         lines += ["", "**Simulated: a rehearsal, no evidence of any unit.**"]
-    worst = [row for row in lot["worst"] if row["margin"] < WORST][:WORST]
+    worst = [row for row in lot["worst"] if row["margin"] is None or row["margin"] < WORST][:WORST]
     if worst:
         lines += ["", "## Nearest to their limits, or beyond", ""]
         lines += ["| unit | characteristic | margin in u | |", "|---|---|---:|---|"]
-        lines += [
-            f"| {_cell(r['serial'])} | {_cell(r['characteristic'])} | {r['margin']:+.1f} | {_cell(r['reason'])} |"
-            for r in worst
-        ]
+        for r in worst:
+            away = "beyond" if r["margin"] is None else f"{r['margin']:+.1f}"  # a count has no u
+            lines.append(f"| {_cell(r['serial'])} | {_cell(r['characteristic'])} | {away} | {_cell(r['reason'])} |")
     lines += ["", "## Units", "", "| unit | verdict | at fault | why | next |", "|---|---|---|---|---|"]
     text = "\n".join(lines) + "\n"
     left = len(documents)

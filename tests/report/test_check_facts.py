@@ -19,11 +19,14 @@ from runner.report.check_facts import (
 
 VALUES = st.floats(0.01, 10)
 GAPS = st.floats(1e-7, 0.01)
+BARE: dict[str, Any] = {"spec": {}}
+"""A document in which no capture has regions."""
 
 
 def _check(**more: Any) -> dict[str, Any]:
     known = {
         "characteristic": 2,
+        "capture": "chart",
         "where": "centre",
         "channel": "mono",
         "label": "mtf50",
@@ -51,7 +54,7 @@ def _number(text: str) -> float:
 
 def test_a_row_as_it_is_printed() -> None:
     """Value with U = 2u to two digits (JCGM 100, 7.2.6), limits with unit, the acceptance limit in the same digits."""
-    row = check_fact(_check())
+    row = check_fact(_check(), BARE)
     cells = (row.number, row.where, row.quantity, row.value, row.limit, row.acceptance, row.probability)
 
     assert tuple(" ".join(cell.split()) for cell in cells) == (
@@ -123,7 +126,7 @@ def test_what_has_no_value_prints_none() -> None:
     """A dash for what was not measured; a bound for a value beyond the band, told from its limit."""
     none = _check(value=None, u=None, probability=None, acceptance={"at_least": None, "at_most": None})
 
-    assert (value_text(none), check_fact(none).probability, acceptance_text(none)) == ("–", "–", "–")
+    assert (value_text(none), check_fact(none, BARE).probability, acceptance_text(none)) == ("–", "–", "–")
     assert value_text(_check(value=None, u=None, bound=["above", 0.8])) == "above 0.8 cy/px"
     assert value_text(_check(value=None, u=None, bound=["above", 0.200004])) == "above 0.200004 cy/px"
 
@@ -140,8 +143,18 @@ def test_limits_on_both_sides() -> None:
 
 def test_channels_are_told_apart() -> None:
     """Rows of one place in several colours differ."""
-    assert [check_fact(_check(channel=c)).where for c in ("mono", "red")] == ["centre", "centre, red"]
-    assert check_fact(_check(where="")).where == "whole frame"
+    assert [check_fact(_check(channel=c), BARE).where for c in ("mono", "red")] == ["centre", "centre, red"]
+
+
+def test_captures_are_told_apart() -> None:
+    """The same quantity of darks and of a chart's regions together reads as two rows."""
+    document = {"spec": {"captures": [{"dark": {"target": "dark frame"}}, {"chart": {"regions": {"centre": {}}}}]}}
+
+    assert [check_fact(_check(where="", capture=name), document).where for name in ("dark", "chart")] == [
+        "whole frame (dark)",
+        "all regions (chart)",
+    ]
+    assert check_fact(_check(where="", channel="red"), BARE).where == "whole frame (chart), red"
 
 
 def _lost(number: int, where: str, cause: str, **more: Any) -> dict[str, Any]:
@@ -160,7 +173,7 @@ def test_a_cause_is_said_once_with_all_that_it_took() -> None:
         _lost(4, "centre", "clipped", at_fault="cannot tell", because=""),
     ]
 
-    first, second = why_facts(checks)
+    first, second = why_facts(BARE | {"checks": checks})
 
     assert (first.cause, second.cause) == ("No edge.", "Clipped.")
     assert [" ".join(name.split()) for name in first.checks.split("; ")] == [

@@ -15,6 +15,7 @@ from runner.report.drawing import (
     COLOURS,
     edge_picture,
     margin_picture,
+    plain_picture,
     slug,
     strip_picture,
     transfer_picture,
@@ -116,6 +117,40 @@ def test_a_transfer_curve_lies_on_its_figures() -> None:
     assert min(band[1::2]) <= min(ys)
     assert band[3] < curve[3] < band[-3], "above and below the curve at 0.25 cy/px (y runs down)"
     assert _inside(svg)
+
+
+def test_few_points_are_dots_and_many_a_line() -> None:
+    """Five patches are five dots on their figures: between them nothing is known; a dense curve has none."""
+    svg = transfer_picture(CURVE, [], "patches")
+    dots = [(float(one.get("cx", "")), float(one.get("cy", ""))) for one in _read(svg).iter(f"{SVG}circle")]
+    (line,) = _points(svg, "curve")
+    dense = {"x": [n / 20 for n in range(21)], "y": [1.0] * 21, "u": []}
+
+    assert [place for dot in dots for place in dot] == pytest.approx(line, abs=0.01)
+    assert "<circle" not in transfer_picture(dense, [], "edge")
+    assert _inside(svg)
+
+
+@pytest.mark.parametrize(
+    ("name", "unit", "words"),
+    [
+        ("through focus", "µm", "position, µm"),
+        ("level over time", "s", "time, s"),
+        ("level over time", "frame", "frame"),
+        ("dark level", "s", "exposure time, s"),
+        ("spectrum of row means", "cy/px", "spatial frequency, cy/px"),
+        ("distortion", "1", "image height over half the diagonal"),
+        ("stripe profile", "period", "period"),
+    ],
+)
+def test_the_x_axis_says_what_runs_along_it(name: str, unit: str, words: str) -> None:
+    """A unit alone is no axis: µm may be anything; where nothing is known the unit stands alone."""
+    svg = plain_picture({"name": name, "x": [0.0, 1.0], "y": [1.0, 2.0], "u": [], "x_in": unit, "y_in": "%"}, name)
+
+    assert words in [one.text for one in _read(svg).iter(f"{SVG}text")]
+    assert f"{name}, %" in [one.text for one in _read(svg).iter(f"{SVG}text")]
+    assert _inside(svg)
+    assert _words_inside(svg)
 
 
 @pytest.mark.parametrize(

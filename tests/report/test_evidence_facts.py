@@ -8,9 +8,13 @@ from runner.report.evidence_facts import (
     map_facts,
     picture_facts,
     plain_curve_facts,
+    plan_facts,
     spot_facts,
 )
 from tests.report import printed_world as world
+
+BARE: dict[str, Any] = {"spec": {}, "checks": []}
+"""A document in which no capture has regions and nothing is checked."""
 
 
 def test_a_picture_names_its_regions_by_number() -> None:
@@ -117,20 +121,58 @@ def _area(**more: Any) -> dict[str, Any]:
 
 def test_maps_are_drawn_and_the_rest_is_counted() -> None:
     """Twelve maps are drawn, named by region, channel and capture, with their marks in words; others are counted."""
-    facts, left = map_facts({"maps": [_area()] * 14})
+    facts, left = map_facts(BARE | {"maps": [_area(capture=name) for name in ["stripes", *"abcdefghijklm"]]})
 
     assert (len(facts), left) == (12, 2)
     assert facts[0].title == "spectrum: patch green (stripes)"
     assert facts[0].alt == "Map of the spectrum: patch green (stripes), marked: DC"
     assert facts[0].png.startswith(b"\x89PNG")
-    assert map_facts({}) == ((), 0)
+    assert map_facts(BARE) == ((), 0)
+
+
+def test_of_many_alike_those_with_trouble_are_shown() -> None:
+    """Ten spectra of good patches are one, those of bad ones four at most; other captures and kinds have their own."""
+    patches = [_area(region=f"patch {n}") for n in range(10)]
+    check = {"capture": "stripes", "attempt": 1, "channel": "green", "part": "system", "verdict": "does not conform"}
+    bad = [check | {"where": f"patch {n}"} for n in (3, 7)]
+
+    def shown(*checks: dict[str, Any], more: tuple[dict[str, Any], ...] = ()) -> tuple[list[str], int]:
+        facts, left = map_facts(BARE | {"maps": [*patches, *more], "checks": list(checks)})
+        return [fact.title.split(": ")[1].split(" green")[0] for fact in facts], left
+
+    assert shown() == (["patch 0"], 9)
+    assert shown(*bad) == (["patch 3", "patch 7"], 8)
+    assert shown(*(check | {"where": f"patch {n}"} for n in range(2, 9))) == ([f"patch {n}" for n in range(2, 6)], 6)
+    assert shown(more=(_area(region="x", capture="flat"), _area(region="y", name="shading")))[0] == [
+        "patch 0",
+        "x",
+        "y",
+    ]
+
+
+def test_defects_are_marked_on_a_plan_of_the_frame() -> None:
+    """Each capture with defects has a plan that counts them in words; lost frames are no place on a sensor."""
+    at = {"region": "", "channel": "mono", "attempt": 1, "x": 12.0, "y": 3.5, "words": ""}
+    spots = [
+        at | {"capture": c, "kind": k} for c, k in (("dark", "hot pixel"), ("chart", "blemish"), ("dark", "hot pixel"))
+    ]
+    document = world.document() | {"spots": [*spots, at | {"capture": "chart", "kind": "torn frame"}]}
+
+    dark, chart = plan_facts(document)
+
+    assert (dark.name, dark.title) == ("plan-1.png", "defects: dark")
+    assert dark.alt == "Plan of the frame with its defects: dark: 2 × hot pixel"
+    assert chart.alt.endswith("chart: 1 × blemish")
+    assert plan_facts(world.document()) == ()
 
 
 def test_other_curves_are_drawn_as_they_are() -> None:
     """A profile belongs to no transfer curve and is drawn alone; edge spreads and residuals are not repeated."""
     curve = {"region": "", "channel": "mono", "capture": "flat", "attempt": 2, "x": [0, 1], "y": [1, 3], "u": []}
-    curves = [curve | {"name": name, "x_in": "period", "y_in": "DN"} for name in ("stripe profile", "residual", "mtf")]
-    facts, left = plain_curve_facts({"curves": curves})
+    curves = [
+        curve | {"name": name, "x_in": "period", "y_in": "DN"} for name in ("stripe profile", "edge spread data", "mtf")
+    ]
+    facts, left = plain_curve_facts(BARE | {"curves": curves})
 
     assert [f.title for f in facts] == ["stripe profile: whole frame (flat, attempt 2)"]
     assert "stripe profile, DN" in facts[0].transfer
@@ -140,7 +182,7 @@ def test_other_curves_are_drawn_as_they_are() -> None:
 def test_spots_are_rows() -> None:
     """Each spot says what it is, where in px, in which capture, and how far it departs; forty are listed."""
     spot = {"kind": "hot pixel", "x": 12.0, "y": 3.5, "words": "9 times the noise"} | {"region": "", "channel": "mono"}
-    rows, left = spot_facts({"spots": [spot | {"capture": "dark", "attempt": 1}] * 41, "checks": []})
+    rows, left = spot_facts(BARE | {"spots": [spot | {"capture": "dark", "attempt": 1}] * 41})
 
     assert rows[0] == ("hot pixel", "12, 3.5", "whole frame (dark)", "9 times the noise")
     assert (len(rows), left) == (40, 1)
@@ -158,7 +200,7 @@ def test_spots_of_a_failing_count_come_first() -> None:
         check | {"quantity": "bright_pixels", "verdict": "conforms"},
     ]
 
-    rows, left = spot_facts({"spots": spots, "checks": checks})
+    rows, left = spot_facts({"spots": spots, "checks": checks, "spec": {}})
 
     assert [row[0] for row in rows[:3]] == ["blemish", "defective column", "bright pixel"]
     assert (len(rows), left) == (40, 13)

@@ -113,6 +113,21 @@ def test_the_nearest_to_their_limits_stand_on_page_one() -> None:
     assert report_facts(world.unmeasured()).margins == ()
 
 
+def test_counts_that_fail_come_before_values_that_fail() -> None:
+    """16 hot pixels of 8 stand on page one though they have no U; counts that conform have no distance at all."""
+    document = world.failing()
+    count = {"where": "", "capture": "dark", "measured_in": "1", "u": 0.0, "at_least": None, "at_most": 8.0}
+    count |= {"acceptance": {"at_least": None, "at_most": 8.0}}
+    check = document["checks"][0] | count
+    failing = check | {"characteristic": 9, "label": "hot pixels", "value": 16.0, "verdict": "does not conform"}
+    document["checks"] += [failing, check | {"characteristic": 10, "value": 0.0, "verdict": "conforms"}]
+
+    first, second, _ = report_facts(document).margins
+
+    assert (first.title, second.title) == ("9. hot pixels, whole frame (dark)", "3. mtf50, range of corners")
+    assert " ".join(first.text.split()) == "16; limit ≤ 8"
+
+
 def test_what_fails_is_never_left_out_of_a_long_table() -> None:
     """Paper holds 60 rows: first what fails, then what is undecided or lost, then what is nearest; the rest is told."""
     facts = report_facts(_many(("not measured", 50), ("conforms", 40), ("does not conform", 12), ("cannot decide", 3)))

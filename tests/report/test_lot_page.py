@@ -119,8 +119,9 @@ def test_what_is_nearest_to_its_limit_comes_first() -> None:
     assert [(serial, margin) for serial, margin, why in facts.worst if why.startswith("centre: mtf")] == [
         ("WS8-000105", "-0.05")
     ]
-    assert lot_page._signed(-0.0004) == "-0.0004"
-    assert lot_page._signed(12.34) == "+12.3"
+    assert lot_page.margin_text(-0.0004) == "-0.0004"
+    assert lot_page.margin_text(None) == "beyond", "a count that does not conform"
+    assert lot_page.margin_text(12.34) == "+12.3"
 
 
 def test_the_page_is_whole_and_in_order() -> None:

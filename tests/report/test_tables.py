@@ -101,6 +101,17 @@ def test_a_summary_stays_small() -> None:
     assert "more units are in lot.html and lot.csv" in text
 
 
+def test_a_summary_tells_of_counts_beyond_their_limit() -> None:
+    """A failing count has no margin in u, and is not left out for it; what is far inside is."""
+    rows = [{"serial": "A", "characteristic": n, "reason": f"no. {n}"} for n in (1, 2, 3)]
+    lot = _lot([]) | {"worst": [one | {"margin": m} for one, m in zip(rows, (None, -1.25, 40.0), strict=True)]}
+    text = markdown_summary(lot, [])
+
+    assert "| A | 1 | beyond | no. 1 |" in text
+    assert "| A | 2 | -1.2 | no. 2 |" in text
+    assert "no. 3" not in text
+
+
 def test_a_summary_escapes_what_markdown_would_read() -> None:
     """A serial or reason cannot break the table or bring in markup."""
     text = markdown_summary(_lot([]), [_unit("A|B", reasons=["<img src=x> [a](b) `c`"])])
