@@ -101,7 +101,8 @@ VIEWS = {
 def test_printed_artwork_conforms(tmp_path: Path, sheet: np.ndarray, name: str) -> None:
     """Print and camera are known, so every limit is what they make of the chart: all of them conform.
 
-    Marks lie within 0.02 px (rms) of where the camera has them, all places on the chart within 0.3 px.
+    Marks lie within 0.02 px (rms) of where the camera has them, all places on the chart within 0.3 px. The wide lens is
+    defined from the frame to the chart; two terms the other way leave up to 0.05 px of it (its corners move by 18 %).
     """
     view, chart = VIEWS[name], read_chart(CHART)
     outcome, document = _run(tmp_path, sheet, Camera(view))
@@ -113,7 +114,9 @@ def test_printed_artwork_conforms(tmp_path: Path, sheet: np.ndarray, name: str) 
     pose = look(codes, SpecCamera(*view.size, 12, 64, 4095), Optics(), piece)
     assert isinstance(pose, ChartPose)
     marks = np.array(chart.marks.at)
-    assert np.sqrt(np.mean(np.sum((pose.to_frame(marks) - view.to_frame(marks)) ** 2, axis=1))) < 0.02
+    assert np.sqrt(np.mean(np.sum((pose.to_frame(marks) - view.to_frame(marks)) ** 2, axis=1))) < (
+        0.05 if view.lens[0] else 0.02
+    )
     places = np.array([(x, y) for x in np.linspace(-128, 128, 9) for y in np.linspace(-85, 85, 7)])
     assert np.abs(pose.to_frame(places) - view.to_frame(places)).max() < 0.3
 

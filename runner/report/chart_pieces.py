@@ -166,6 +166,21 @@ def _grating(data: _Data) -> Iterator[Piece]:
     yield Clipped(one.position, one.size, tuple(painted))
 
 
+def _bars(data: _Data) -> Iterator[Piece]:
+    """Bars as wide as their gaps, a dark one in the middle of the box; `angle` is the direction across them."""
+    one = data.feature
+    period = data.number("period", "mm")
+    c, s = cos(radians(data.degrees("angle", 0.0))), sin(radians(data.degrees("angle", 0.0)))
+    far = hypot(*one.size) / 2 + period
+    x, y = one.position
+    painted: list[Area | Disc] = [box(one.position, one.size, data.number("bright", "%", data.chart.ground))]
+    for n in range(-ceil(far / period), ceil(far / period) + 1):
+        a, b = (n - 0.25) * period, (n + 0.25) * period
+        corners = tuple((x + u * c - v * s, y + u * s + v * c) for u, v in ((a, -far), (b, -far), (b, far), (a, far)))
+        painted.append(Area(corners, data.number("dark", "%", data.chart.ink)))
+    yield Clipped(one.position, one.size, tuple(painted))
+
+
 def _star(data: _Data) -> Iterator[Piece]:
     """A star that fills its box, on a ground of its mean."""
     one = data.feature
@@ -263,6 +278,7 @@ def _black(data: _Data) -> Iterator[Piece]:
 DRAWN: Mapping[str, Callable[[_Data], Iterator[Any]]] = {
     "slanted edge": _edge,
     "sinusoidal grating": _grating,
+    "square wave bars": _bars,
     "sine star": _star,
     "dot grid": _dots,
     "checkerboard": _squares,

@@ -47,6 +47,16 @@ def test_no_gap_between_strips() -> None:
     assert spans[0][0] < -25 < 25 < spans[-1][1]  # half diagonal of 40 × 30 mm
 
 
+def test_bars_are_as_wide_as_their_gaps() -> None:
+    """Dark bars of half a period stand a period apart, one in the middle of the box."""
+    (clipped,) = _drawn("square wave bars", period="4 mm", angle="0 deg")
+    spans = sorted((min(x for x, _ in bar.points), max(x for x, _ in bar.points)) for bar in clipped.pieces[1:])
+
+    assert [b - a for a, b in spans] == pytest.approx([2.0] * len(spans))
+    assert np.diff([a for a, _ in spans]) == pytest.approx(4.0)
+    assert (9.0, 11.0) in [(round(a, 9), round(b, 9)) for a, b in spans]
+
+
 def test_a_star_has_its_cycles() -> None:
     """A star's tone at an angle is the sine of so many cycles around, its first maximum to the right."""
     found = _drawn("sine star", cycles=36, mean="40 %", target_modulation="80 %")

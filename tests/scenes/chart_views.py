@@ -127,7 +127,7 @@ class Scene:
         light *= self.exposure * (1 - self.shading * (np.arange(columns) / columns)[None])
         codes = BLACK + (WHITE - BLACK) * light
         codes += np.random.default_rng(seed).normal(0, self.noise, codes.shape) if self.noise else 0
-        return np.clip(np.rint(codes), 0, WHITE).astype(np.uint16)
+        return np.asarray(np.clip(np.rint(codes), 0, WHITE), dtype=np.uint16)
 
     def _paint(self, light: Real, patch: Patch) -> None:
         ends = np.linspace(-1, 1, 9)
