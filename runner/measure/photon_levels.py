@@ -17,7 +17,6 @@ from runner.errors import MeasurementRefused
 from runner.measure import planes
 from runner.measure.light_levels import LevelFrames, out_of_order
 from runner.measure.numerics.stack_noise import Parts, stack_noise
-from runner.measure.numerics.two_way_layout import level_of
 
 Real = NDArray[np.float64]
 
@@ -239,11 +238,18 @@ def _measured(frames: planes.Stack, dark: float, order: int, *, lamp: bool) -> _
     rows, columns = frames.shape
     if min(rows // kinds, columns) < max(LEAST_SIDE, order + 4):
         return _few(frames.frames, dark, lamp=lamp)
-    least = min(level_of(one[kind::kinds]) for one in frames.frames for kind in range(kinds)) if lamp else dark
-    found = stack_noise(frames.frames, black=dark, shading_order=order, gain_drift=least > dark, kinds=kinds)
+    gain = lamp and all(_is_lit(one[kind::kinds], dark) for one in frames.frames for kind in range(kinds))
+    found = stack_noise(frames.frames, black=dark, shading_order=order, gain_drift=gain, kinds=kinds)
     total = found.temporal.total
     value, u = total.value or 0.0, total.u or 0.0
     return _Set(np.array(found.levels) + dark, found.level_u, value**2, 2 * value * u, found.fixed)
+
+
+def _is_lit(values: Any, dark: float) -> bool:
+    """Tell whether some rows plainly lie over dark, so that a lamp's drift is a factor on their light."""
+    some = np.asarray(values[:: max(1, values.size // SOME)])
+    over = float(some.mean(dtype=np.float64)) - dark
+    return over > UNSURE * float(some.std(dtype=np.float64)) / sqrt(some.size)
 
 
 def _few(frames: Sequence[Any], dark: float, *, lamp: bool) -> _Set:

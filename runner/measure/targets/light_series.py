@@ -4,13 +4,14 @@ Unlike `flat field` it takes frames without light too, so that a series may begi
 """
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from typing import Any
 
-from runner.capture.frame import Frame
+from runner.capture.frame import Box, Frame
 from runner.measure.contract import Found, NotFound
-from runner.measure.numerics.uniform import locate_uniform
+from runner.measure.numerics.uniform import WHOLE_FRAME
 from runner.measure.options import read_record
+from runner.measure.placing import outline, place
 from runner.spec.model import Camera, Region
 
 NAME = "light series"
@@ -33,9 +34,17 @@ def read_options(asked: Mapping[str, Any]) -> Options:
 def locate(
     frames: Sequence[Frame],
     regions: Sequence[Region],
-    camera: Camera,
+    camera: Camera,  # noqa: ARG001 - the contract's form
     options: Options,  # noqa: ARG001 - the contract's form
 ) -> Sequence[Found | NotFound]:
     """Offer each region as it stands; without regions, the whole frame. How much light it has is for the method."""
-    offered = locate_uniform(frames[0], regions, camera, lit=False)
-    return [replace(one, geometry={"lit": 1.0}) if isinstance(one, Found) else one for one in offered]
+    frame = frames[0]
+    rows, columns = frame.shape
+    if not regions:
+        return [_offer(WHOLE_FRAME, Box(0, 0, columns, rows))]
+    placed = [(region, place(region, frame)) for region in regions]
+    return [box if isinstance(box, NotFound) else _offer(region.name, box) for region, box in placed]
+
+
+def _offer(name: str, box: Box) -> Found:
+    return Found(name, box, OFFERS, {"lit": 1.0}, outline(box))

@@ -33,7 +33,10 @@ def test_a_region_outside_the_frame_is_not() -> None:
     (found,) = _locate(500, outside)
 
     assert isinstance(found, NotFound)
-    assert (found.cause, found.because) == ("off the frame", "it reaches to column 83, row 35 of a frame of 80 × 60 px")
+    assert (found.cause, found.because) == (
+        "off the frame",
+        "it reaches from column 73, row 25 to column 83, row 35 of a frame of 80 × 60 px",
+    )
 
 
 def test_there_is_nothing_to_choose() -> None:
