@@ -10,6 +10,7 @@ from concurrent.futures import Executor, ProcessPoolExecutor
 from dataclasses import dataclass, field, replace
 from multiprocessing import get_context
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 
@@ -18,7 +19,7 @@ from runner.capture.frame import Frame
 from runner.capture.lot import FrameRef, Lot, UnitFolder, count_fault, fold, some
 from runner.capture.readers import read_frames
 from runner.capture.sentences import Collector, Place
-from runner.capture.sidecar import SEQUENCE, amounts
+from runner.capture.sidecar import SEQUENCE, SidecarRef, amounts, hear, simulated
 from runner.capture.station import StationWords, station_says
 from runner.errors import FrameRefused
 from runner.spec.model import Camera, Spec
@@ -66,7 +67,7 @@ class FileFacts:
     claims: str = ""
     """Serial that the file's own texts name."""
     simulated: bool = False
-    """Marked as a rehearsed frame."""
+    """Marked as a rehearsed frame, by itself or by a sidecar."""
     refusal: str = ""
     """The sentence, if the file was refused."""
     unfit: Mapping[str, str] = field(default_factory=dict)
@@ -173,8 +174,10 @@ def load(refs: Sequence[FrameRef], camera: Camera, expected: Mapping[str, str]) 
         FrameRefused: A file has changed since, or cannot be evidence.
     """
     frames: list[Frame] = []
+    heard: dict[SidecarRef, dict[str, Any]] = {}
     for ref in refs:
-        taken = amounts(ref.sidecars)
+        hear(ref.sidecars, heard)
+        taken, marked = amounts(ref.sidecars, heard), simulated(ref.sidecars, heard)
         for frame in read_frames(ref.path, camera, name=ref.file, compare=False):  # the survey has compared them
             if frame.sha256 != expected.get(ref.file):
                 raise FrameRefused(
@@ -182,7 +185,8 @@ def load(refs: Sequence[FrameRef], camera: Camera, expected: Mapping[str, str]) 
                     where=ref.file,
                     next_step="let the copying end, then run again",
                 )
-            frames.append(replace(frame, axes={**ref.axes, **frame.axes}, taken=taken))
+            marked = marked or frame.simulated
+            frames.append(replace(frame, axes={**ref.axes, **frame.axes}, taken=taken, simulated=marked))
     return tuple(frames)
 
 
@@ -193,13 +197,17 @@ def _tasks(units: Iterable[UnitFolder], spec: Spec) -> Iterator[_Task]:
     """Yield every file once per camera it is to be read with, and what its captures must be."""
     fields = {capture.name: field_of(capture) for capture in spec.captures}
     for unit in units:
+        heard: dict[SidecarRef, dict[str, Any]] = {}
         for attempt in unit.attempts:
+            marked: set[str] = set()
             users: dict[tuple[Path, str, Camera], list[str]] = {}
             for capture in spec.captures:
                 for ref in attempt.frames[capture.name]:
                     users.setdefault((ref.path, ref.file, capture.camera), []).append(capture.name)
+                    hear(ref.sidecars, heard)
+                    marked |= {ref.file} if simulated(ref.sidecars, heard) else set()
             for (path, file, camera), captures in users.items():
-                facts = FileFacts(unit.serial, attempt.number, file, tuple(captures))
+                facts = FileFacts(unit.serial, attempt.number, file, tuple(captures), simulated=file in marked)
                 yield path, camera, facts, tuple(one for name in captures if (one := fields[name]) is not None)
 
 
@@ -235,7 +243,7 @@ def _facts(task: _Task) -> FileFacts:
         sha256=frames[0].sha256,
         pages=tuple(_page_facts(frame) for frame in frames),
         claims=frames[0].metadata.get("serial", ""),
-        simulated=frames[0].simulated,
+        simulated=facts.simulated or frames[0].simulated,
         unfit={one.capture: words for one in fields for frame in frames[::-1] if (words := unfit(one, frame, camera))},
     )
 

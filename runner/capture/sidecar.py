@@ -25,6 +25,8 @@ ENDINGS = (".json", ".yaml", ".yml")
 SHARED = "unit"
 """Stem of the sidecar of all frames of an attempt or unit."""
 MAX_BYTES = 1_000_000
+MARKED, MARK = "probatum", "simulated frame"
+"""Field and value by which a sidecar says that frames are rehearsed: headerless files cannot say so themselves."""
 SEQUENCE = "frame sequence"
 """The target that measures lost and repeated frames: their counters are no fault of the capture."""
 CAPTURE_AGAIN = "set the station as the spec says, and capture again"
@@ -142,13 +144,23 @@ def say(file: str, refs: Sequence[SidecarRef], read: Mapping[SidecarRef, Mapping
     return Said(file, values)
 
 
-def amounts(refs: Sequence[SidecarRef]) -> dict[str, Amount]:
-    """Return what a frame's sidecars say in numbers, by field; a sidecar that cannot be read says nothing here."""
-    read: dict[SidecarRef, Mapping[str, Any]] = {}
+def hear(refs: Sequence[SidecarRef], heard: dict[SidecarRef, dict[str, Any]]) -> None:
+    """Read sidecars that have not been heard yet; one that cannot be read says nothing here: the survey tells of it."""
     for ref in refs:
-        with suppress(UsageError):  # the survey has told of it
-            read[ref] = read_sidecar(ref)
-    said = say("", refs, read).values
+        if ref not in heard:
+            heard[ref] = {}
+            with suppress(UsageError):
+                heard[ref] = read_sidecar(ref)
+
+
+def simulated(refs: Sequence[SidecarRef], heard: Mapping[SidecarRef, Mapping[str, Any]]) -> bool:
+    """Tell whether one of a frame's sidecars marks it as rehearsed; nothing nearer can take the mark away."""
+    return any(str(heard[ref].get(MARKED, "")).strip().casefold() == MARK for ref in refs)
+
+
+def amounts(refs: Sequence[SidecarRef], heard: Mapping[SidecarRef, Mapping[str, Any]]) -> dict[str, Amount]:
+    """Return what a frame's sidecars say in numbers, by field."""
+    said = say("", refs, heard).values
     found = {name: amount for name, (value, _) in said.items() if (amount := _amount(value)) is not None}
     stamp = _stamp(said["time"][0]) if "time" in said else None
     return found | ({} if stamp is None else {"time": Amount(stamp, "s")})

@@ -7,7 +7,7 @@ from typing import Any
 
 import pytest
 
-from runner.capture.integrity import survey
+from runner.capture.integrity import load, survey
 from runner.capture.lot import find_lot
 from runner.capture.sidecar import Said, SidecarRef, beside, faults, is_sidecar, read_sidecar, remarks, say
 from runner.errors import UsageError
@@ -132,6 +132,42 @@ def test_sidecars_are_no_frames_and_not_unused(tmp_path: Path, spec: Spec) -> No
     assert [ref.file for ref in lot.units[0].attempts[0].frames["chart"]] == ["chart-1.tif", "chart-2.tif"]
     assert lot.unused == (f"{UNIT}/chart-9.json",)
     assert survey(lot, spec).sentences == {}
+
+
+@pytest.mark.parametrize(
+    ("name", "text", "marked"),
+    [
+        ("chart-1.json", '{"probatum": "simulated frame"}', ["chart-1.tif"]),
+        ("chart-1.yaml", "probatum: Simulated frame\n", ["chart-1.tif"]),
+        ("unit.json", '{"probatum": "simulated frame"}', ["chart-1.tif", "chart-2.tif"]),
+        ("chart-1.json", '{"probatum": "frame", "note": "simulated frame"}', []),
+        ("chart-1.json", '{"probatum": "simulated fr', []),
+    ],
+)
+def test_a_sidecar_marks_a_rehearsed_frame(name: str, text: str, marked: list[str], tmp_path: Path, spec: Spec) -> None:
+    """A frame that cannot say so itself counts as simulated by its sidecar, and so does its unit, but no other."""
+    good_unit(tmp_path / UNIT, 100)
+    good_unit(tmp_path / "WS8-000102", 200)
+    (tmp_path / UNIT / name).write_text(text)
+
+    lot = find_lot(tmp_path, spec)
+    seen = survey(lot, spec)
+    chart = spec.capture("chart")
+    digests = {file: digest for file, (digest, _) in seen.digests(UNIT, 1).items()}
+    frames = load(lot.units[0].attempts[0].frames["chart"], chart.camera, digests)
+
+    assert [frame.file for frame in frames if frame.simulated] == marked
+    assert [seen.simulated(serial) for serial in (UNIT, "WS8-000102")] == [bool(marked), False]
+    assert [f.file for f in seen.files if f.simulated and "chart" in f.captures] == marked
+
+
+def test_a_refused_frame_stays_marked(tmp_path: Path, spec: Spec) -> None:
+    """A rehearsed file that cannot be read is still none of a real unit's."""
+    good_unit(tmp_path / UNIT, 100)
+    (tmp_path / UNIT / "chart-1.json").write_text('{"probatum": "simulated frame"}')
+    (tmp_path / UNIT / "chart-1.tif").write_bytes(b"II*\0")
+
+    assert survey(find_lot(tmp_path, spec), spec).simulated(UNIT)
 
 
 def test_the_units_sidecar_speaks_of_every_attempt(tmp_path: Path, spec: Spec) -> None:

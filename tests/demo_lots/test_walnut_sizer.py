@@ -66,6 +66,7 @@ def test_every_documented_verdict_is_found(serial: str, demo: tuple[Exit, str, P
 
     assert found_in(document) == EXPECTED.units[serial], document["reasons"]
     assert document["simulated"]
+    assert all(frame["simulated"] for capture in document["captures"] for frame in capture["frames"])
 
 
 def test_demo_ends_well(demo: tuple[Exit, str, Path]) -> None:
@@ -221,6 +222,7 @@ def test_half_copied_file_is_told_from_a_bad_unit(demo: tuple[Exit, str, Path]) 
     assert "manifest.json: flat-5.raw is not the file that was listed" in told
     assert {check["verdict"] for check in document["checks"]} == {"not measured"}
     assert {check["at_fault"] for check in document["checks"]} == {"capture"}
+    assert document["next"].startswith("Copy again from the station: 'dark', 'flat' and 'stripes'")
 
 
 def _table(unit: Unit) -> Any:
