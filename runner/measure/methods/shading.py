@@ -190,6 +190,13 @@ def _cells(values: planes.Values, edges: tuple[NDArray[np.intp], NDArray[np.intp
 def _black(
     sample: Sample, darks: tuple[Crop, ...], options: Options, edges: tuple[NDArray[np.intp], NDArray[np.intp]]
 ) -> _Black:
+    taken = MEAN_FRAME if options.dark == AUTO else options.dark
+    if taken != BLACK_LEVEL and (lost := sample.lost_companions.get(DARK)):
+        raise MeasurementRefused(
+            "missing companion",
+            f"the companion '{lost}' whose {taken} is black cannot be used",
+            next_step="capture it again, or write dark: black level",
+        )
     if options.dark in {MEAN_FRAME, MEAN_LEVEL} and not darks:
         raise MeasurementRefused(
             "missing companion",

@@ -1,5 +1,6 @@
 """Shading from frames to readings: closed forms of lenses, colours, blacks, refusals, and how well u covers."""
 
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -167,6 +168,21 @@ def test_a_companion_that_is_asked_for_must_be_there() -> None:
     with pytest.raises(MeasurementRefused, match="'dark' whose mean frame is black is missing or unusable; name it"):
         _measure(frames, dark="mean frame")
     assert read(_measure(frames))["luminance_shading"].flags == (f"black is the stated black level of {BLACK} DN",)
+
+
+def test_a_companion_that_was_lost_is_not_passed_over() -> None:
+    """Where the spec names darks and they cannot be used, shading is not measured with another black in silence."""
+    frames = [codes(np.full((120, 160), 9000.0) + np.arange(160))]
+    lost = replace(sample(frames), lost_companions={"dark": "cap on"})
+
+    for dark, taken in (("auto", "mean frame"), ("mean level", "mean level")):
+        said = rf"'cap on' whose {taken} is black cannot be used; capture it again, or write dark: black level"
+        with pytest.raises(MeasurementRefused, match=said) as caught:
+            shading.measure(lost, shading.read_options({"dark": dark}))
+        assert caught.value.cause == "missing companion"
+    assert read(shading.measure(lost, shading.read_options({"dark": "black level"})))["uniformity"].value is not None
+    other = replace(lost, lost_companions={"flat": "lit"})
+    assert read(shading.measure(other, shading.Options()))["uniformity"].value is not None
 
 
 def test_a_mosaics_channel_and_its_dark() -> None:
