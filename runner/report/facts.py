@@ -264,7 +264,9 @@ def _named(maps: Sequence[object], profiles: Sequence[object], spots: Sequence[o
 
 
 def _more(number: int, what: str, where: str) -> str:
-    return f"{number} more {what} stand in {where}." if number > 0 else ""
+    if number == 1:
+        return f"1 more {what.removesuffix('s')} stands in {where}."
+    return f"{number} more {what} stand in {where}." if number > 1 else ""
 
 
 def _grouped(serial: str) -> tuple[str, ...]:

@@ -154,6 +154,8 @@ def test_reasons_beyond_page_one_are_pointed_to() -> None:
 
     assert report_facts(document).reasons == ("reason 0.", "reason 1.", "reason 2.", "reason 3.")
     assert report_facts(document).more_reasons == "2 more reasons stand in the results below."
+    one = document | {"reasons": document["reasons"][:5]}
+    assert report_facts(one).more_reasons == "1 more reason stands in the results below."
 
 
 def test_a_rehearsal_says_so() -> None:
