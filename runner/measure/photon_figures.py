@@ -76,7 +76,8 @@ def _about_gain(of: Transfer) -> tuple[str, ...]:
     alike = correlation(middle)
     pixels = min(SOME, middle.frames.crops[0].codes.size)
     if max(alike) > max(ALIKE, 4 / sqrt(pixels)):
-        low = 200 * sum(max(0.0, one) for one in alike)
+        lost = 2 * sum(max(0.0, one) for one in alike)  # variance that went to where neighbours have it in common
+        low = 100 * lost / (1 + lost)
         said.append(f"noise of neighbours is correlated by {max(alike):.3f}: the gain reads low by some {low:.0f} %")
     processing = middle.frames.crops[0].camera.processing
     if processing:

@@ -38,8 +38,11 @@ MOST_ORDER = 6
 """Highest order of shading that may be taken off."""
 MOST_UNEVEN = 0.2
 """Beyond, pixels saturate at levels so different that the series tells of no one sensor."""
-MOST_ALIKE = 0.1
-"""Noise of neighbours that is more alike was filtered or interpolated: the gain would read too low by 20 % or more."""
+MOST_ALIKE = 0.35
+"""Correlation of neighbours' noise from which on frames were filtered: means of two pixels have 0.5, of 3 × 3 0.67.
+
+Scintillators, crosstalk and slow amplifiers give up to 0.25; the gain then reads low, which is said.
+"""
 
 _WORDS = {"_row": "common to a row", "_column": "common to a column", "_pixel": "of single pixels"}
 _QUANTITIES: dict[str, QuantityInfo] = {
