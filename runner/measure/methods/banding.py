@@ -29,6 +29,7 @@ Real = NDArray[np.float64]
 
 NAME = "banding"
 TITLE = "Banding along rows and columns"
+GROUP = "uniformity and noise"
 NEEDS = frozenset({"uniform"})
 REFERENCES = (
     "EMVA Standard 1288 Release 4.0 Linear (2021), spectrograms of row and column means",

@@ -23,6 +23,7 @@ from runner.measure.reading import Component, Curve, Reading, Refusal
 
 NAME = "bar response"
 TITLE = "Bar response"
+GROUP = "transfer function"
 NEEDS = frozenset({"bars"})
 REFERENCES = (
     "J. W. Coltman, J. Opt. Soc. Am. 44 (1954) 468 (square-wave response and its conversion)",

@@ -23,6 +23,7 @@ Real = NDArray[np.float64]
 
 NAME = "chromatic displacement"
 TITLE = "Chromatic displacement"
+GROUP = "geometry"
 TOGETHER = True
 NEEDS = frozenset({"lattice"})
 REFERENCES = (

@@ -20,6 +20,7 @@ from runner.measure.reading import Component, Curve, Reading, Refusal
 
 NAME = "coltman conversion"
 TITLE = "Coltman's conversion of several bar groups"
+GROUP = "transfer function"
 NEEDS = frozenset({"bars"})
 GATHERS = True
 REFERENCES = (

@@ -20,6 +20,7 @@ from runner.measure.reading import Component, Curve, Reading, Refusal
 
 NAME = "dark current"
 TITLE = "Dark current over exposure time"
+GROUP = "sensor"
 TOGETHER = True
 AXES = frozenset({"exposure"})
 NEEDS = frozenset({"uniform"})

@@ -7,6 +7,9 @@ Stuck and blinking pixels show in a set of frames only: a blinking one from two 
 equal codes do not come by chance, with whole codes from some ten frames on.
 
 A mosaic's channel is compared with pixels of its own colour; the two kinds of green are brought to one level first.
+
+Every count is to be had for the middle of the region and for what lies around it too: `hot_pixels_centre`,
+`clusters_outer` and so on, with the option `centre`.
 """
 
 from collections.abc import Iterator, Mapping, Sequence
@@ -22,6 +25,7 @@ from runner.measure import planes
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.defect_overlaps import area_of, outside, whole
 from runner.measure.defect_spots import Listed
+from runner.measure.defect_zones import CENTRE, Zone, split
 from runner.measure.evenness import refuse_uneven
 from runner.measure.numerics.defects import (
     Cluster,
@@ -48,6 +52,7 @@ from runner.measure.reading import Reading, Refusal, Spot
 
 NAME = "defects"
 TITLE = "Defective pixels, lines and blemishes"
+GROUP = "uniformity and noise"
 TOGETHER = True
 NEEDS = frozenset({"uniform"})
 REFERENCES = (
@@ -77,7 +82,8 @@ _QUANTITIES: Mapping[str, QuantityInfo] = {
     "stuck_pixels": QuantityInfo("1", "Pixels of the same code in every frame while their neighbours change."),
     "blinking_pixels": QuantityInfo(
         "1",
-        "Pixels that change from frame to frame more than their neighbours, as rarely as noise passes the threshold.",
+        "Pixels that change from frame to frame more than their neighbours, as rarely as noise passes the threshold; "
+        "a hot one counts as hot alone, for its dark signal has noise of its own.",
     ),
     "blemishes": QuantityInfo(
         "1", "Smooth spots of a flat of more than `blemish_contrast` over more than `blemish_size`."
@@ -120,6 +126,13 @@ class Options:
         default=5.0,
         metadata={"sentence": "Width over which it must depart so, 2 px to 1000 px (4 px at least in a mosaic)."},
     )
+    centre: float | str = field(
+        default=0.5,
+        metadata={
+            "sentence": "Share of the region's width and height that the centre takes, 10 % to 90 %, for quantities that "
+            "end in _centre or _outer."
+        },
+    )
 
     def __post_init__(self) -> None:
         """Turn amounts into numbers and keep each option inside its meaning."""
@@ -128,6 +141,7 @@ class Options:
             ("dead_below", "%", 0.01, 0.99),
             ("blemish_contrast", "%", 0.001, 0.9),
             ("blemish_size", "px", 2.0, 1000.0),
+            ("centre", "%", 0.1, 0.9),
         ):
             object.__setattr__(self, name, number(name, getattr(self, name), unit, low, high))
 
@@ -143,7 +157,12 @@ def read_options(asked: Mapping[str, Any]) -> Options:
 
 def quantity(name: str) -> QuantityInfo | None:
     """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
+    plain, zone = split(name)
+    info = _QUANTITIES.get(plain)
+    if info is None or not zone:
+        return info
+    where = "the centre of the region" if zone == CENTRE else "what lies around the centre of the region"
+    return replace(info, sentence=f"{info.sentence.removesuffix('.')}; in {where}.")
 
 
 def quantities() -> Mapping[str, QuantityInfo]:
@@ -211,7 +230,11 @@ def _find(frames: planes.Stack, mean: NDArray[np.float32], options: Options, *, 
     met = [] if not isinstance(spots, Blemishes) else [area_of(one, frames.grid) for one in spots.spots]
     lines = tuple(one for one in line_defects(mean, pixels.defects, k) if whole(mean, one, met, k))
     alone = outside(pixels.defects, met)
-    every = [alone] if unsteady is None else [alone, unsteady.stuck or (), unsteady.blinking.defects]
+    every = [alone]
+    if unsteady is not None:
+        hot = set() if lit else {(one.x, one.y) for one in pixels.defects}
+        blinking = [one for one in unsteady.blinking.defects if (one.x, one.y) not in hot]
+        every += [unsteady.stuck or (), blinking]
     singles: dict[str, list[Defect]] = {}
     for defect in (one for some in every for one in off_lines(some, lines)):
         singles.setdefault(defect.kind, []).append(defect)
@@ -246,23 +269,47 @@ def _readings(
     sample: Sample, frames: planes.Stack, found: _Found, options: Options, told: Sequence[Spot]
 ) -> Iterator[Reading]:
     wanted = {one.quantity for one in sample.wanted}
-    for name in _QUANTITIES:
-        if _ONLY.get(name, found.lit) is not found.lit:
+    for name in (*_QUANTITIES, *sorted(wanted - set(_QUANTITIES))):
+        plain, word = split(name)
+        zone = Zone(frames.shape, float(options.centre), word == CENTRE) if word else None
+        if _ONLY.get(plain, found.lit) is not found.lit:
             if name in wanted:
                 where = "a dark frame" if found.lit else "an evenly lit field"
                 refusal = Refusal("not defined", f"{name.replace('_', ' ')} are counted in {where}")
                 yield replace(_blank(sample, name), refusal=refusal)
             continue
-        count = _count(name, len(frames.frames), found)
+        part = found if zone is None else _within(found, zone, frames)
+        count = _count(plain, len(frames.frames), part)
         if isinstance(count, Refusal):
             yield replace(_blank(sample, name), refusal=count)
             continue
-        listed = sum(spot.kind == _kind(name) for spot in told)
-        cut = (f"{listed} of them are listed",) if name != "largest_cluster" and listed < count else ()
-        flags = (*cut, *_about_noise(name, found, options))
-        yield replace(
-            _blank(sample, name), value=float(count), u=0.0, trials=_trials(name, frames), count=True, flags=flags
+        listed = count if zone else sum(spot.kind == _kind(name) for spot in told)
+        cut = (f"{listed} of them are listed",) if plain != "largest_cluster" and listed < count else ()
+        flags = (*cut, *_about_noise(plain, part, options))
+        trials = _trials(
+            plain, frames.size if zone is None else zone.size, frames.shape if zone is None else zone.lines
         )
+        yield replace(_blank(sample, name), value=float(count), u=0.0, trials=trials, count=True, flags=flags)
+
+
+def _within(found: _Found, zone: Zone, frames: planes.Stack) -> _Found:
+    """Return what lies in a zone."""
+    share = zone.size / frames.size
+    unsteady, spots = found.unsteady, found.spots
+    if unsteady is not None:
+        blinking = replace(unsteady.blinking, expected_false=share * unsteady.blinking.expected_false)
+        unsteady = replace(unsteady, blinking=blinking)
+    if isinstance(spots, Blemishes):
+        spots = replace(spots, spots=zone.blemishes(spots.spots, 2 if frames.grid.shift else 1))
+    return replace(
+        found,
+        pixels=replace(found.pixels, expected_false=share * found.pixels.expected_false),
+        singles={kind: zone.pixels(some) for kind, some in found.singles.items()},
+        lines=zone.through(found.lines),
+        unsteady=unsteady,
+        groups=zone.clusters(found.groups),
+        spots=spots,
+    )
 
 
 def _count(name: str, frames: int, found: _Found) -> int | Refusal:
@@ -284,10 +331,10 @@ def _count(name: str, frames: int, found: _Found) -> int | Refusal:
     return len(found.singles.get(name.removesuffix("_pixels"), ()))
 
 
-def _trials(name: str, frames: planes.Stack) -> int | None:
+def _trials(name: str, pixels: int, lines: tuple[int, int]) -> int | None:
     if name.endswith("_pixels"):
-        return frames.size
-    return {"defective_rows": frames.shape[0], "defective_columns": frames.shape[1]}.get(name)
+        return pixels
+    return {"defective_rows": lines[0], "defective_columns": lines[1]}.get(name)
 
 
 def _about_noise(name: str, found: _Found, options: Options) -> tuple[str, ...]:

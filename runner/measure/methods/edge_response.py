@@ -26,6 +26,7 @@ from runner.spec.units import parse_amount
 
 NAME = "edge response"
 TITLE = "Edge response"
+GROUP = "transfer function"
 NEEDS = frozenset({"edge"})
 REFERENCES = (
     "ISO 12233:2014 6.2 (edge-based spatial frequency response)",

@@ -23,6 +23,7 @@ from runner.spec.model import Camera
 
 NAME = "exposure"
 TITLE = "Level and clipping"
+GROUP = "every capture"
 NEEDS: frozenset[str] = frozenset()
 REFERENCES = ("EMVA Standard 1288 Release 4.0 Linear (2021), mean and saturation of grey values",)
 

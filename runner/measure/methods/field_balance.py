@@ -18,6 +18,7 @@ from runner.spec.units import parse_amount
 
 NAME = "field balance"
 TITLE = "Balance over the field"
+GROUP = "transfer function"
 NEEDS: frozenset[str] = frozenset()
 GATHERS = True
 REFERENCES = ("JCGM 100:2008 (uncertainty)", "ISO 9334:2012 (sagittal and tangential directions)")

@@ -26,6 +26,7 @@ from runner.measure.reading import Component, Reading, Refusal
 
 NAME = "frame noise"
 TITLE = "Noise of a set of frames"
+GROUP = "uniformity and noise"
 TOGETHER = True
 NEEDS = frozenset({"uniform"})
 REFERENCES = (

@@ -20,6 +20,7 @@ from runner.spec.units import FrequencyContext, convert
 
 NAME = "frame order"
 TITLE = "Order and timing of frames"
+GROUP = "stray light and time"
 NEEDS = frozenset({"sequence"})
 TOGETHER = True
 AXES = frozenset({"time"})

@@ -23,6 +23,7 @@ from runner.measure.reading import Component, Curve, Map, Reading, Refusal
 
 NAME = "grating response"
 TITLE = "Grating response"
+GROUP = "transfer function"
 NEEDS = frozenset({"grating"})
 REFERENCES = (
     "ISO 15529:2010 (modulation transfer of sampled imaging systems)",

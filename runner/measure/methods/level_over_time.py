@@ -25,6 +25,7 @@ from runner.measure.reading import Component, Curve, Reading, Refusal
 
 NAME = "level over time"
 TITLE = "Level and colour over time"
+GROUP = "stray light and time"
 NEEDS = frozenset({"sequence"})
 TOGETHER = True
 AXES = frozenset({"time"})

@@ -32,6 +32,7 @@ Real = NDArray[np.float64]
 
 NAME = "shading"
 TITLE = "Shading"
+GROUP = "uniformity and noise"
 TOGETHER = True
 NEEDS = frozenset({"uniform"})
 REFERENCES = (

@@ -25,6 +25,7 @@ from runner.measure.reading import Component, Curve, Reading, Refusal
 
 NAME = "star response"
 TITLE = "Sine star response"
+GROUP = "transfer function"
 NEEDS = frozenset({"star"})
 REFERENCES = (
     "ISO 12233:2014 (s-SFR: spatial frequency response from a sine-modulated star)",

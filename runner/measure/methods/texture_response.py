@@ -34,6 +34,7 @@ from runner.measure.reading import Component, Curve, Reading, Refusal
 
 NAME = "texture response"
 TITLE = "Texture response"
+GROUP = "transfer function"
 NEEDS = frozenset({"texture"})
 TOGETHER = True
 REFERENCES = (

@@ -28,6 +28,7 @@ from runner.spec.units import context_of, convert, parse_amount
 
 NAME = "through focus"
 TITLE = "Through focus"
+GROUP = "transfer function"
 NEEDS: frozenset[str] = frozenset()
 GATHERS = True
 AXES = frozenset({"z"})

@@ -22,6 +22,7 @@ from runner.measure.reading import Component, Curve, Reading, Refusal
 
 NAME = "transfer curve"
 TITLE = "Transfer curve over several patches"
+GROUP = "transfer function"
 NEEDS = frozenset({"grating"})
 GATHERS = True
 REFERENCES = ("ISO 15529:2010 (modulation transfer of sampled imaging systems)", "JCGM 100:2008 (uncertainty)")

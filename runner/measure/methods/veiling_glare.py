@@ -26,6 +26,7 @@ from runner.measure.reading import Component, Reading
 
 NAME = "veiling glare"
 TITLE = "Veiling glare"
+GROUP = "stray light and time"
 NEEDS = frozenset({"black area"})
 REFERENCES = (
     "ISO 9358:1994 (veiling glare index)",

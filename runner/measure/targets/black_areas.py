@@ -13,6 +13,7 @@ from runner.spec.model import Camera, Region
 
 NAME = "black areas"
 TITLE = "Black areas in a bright field"
+GROUP = "stray light and time"
 OFFERS = frozenset({"black area"})
 METHODS = ("veiling glare",)
 REFERENCES = (

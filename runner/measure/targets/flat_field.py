@@ -16,6 +16,7 @@ from runner.spec.model import Camera, Region
 
 NAME = "flat field"
 TITLE = "Flat field"
+GROUP = "uniformity and noise"
 OFFERS = frozenset({"uniform"})
 METHODS: tuple[str, ...] = ()
 REFERENCES = ("EMVA Standard 1288 Release 4.0 Linear (2021), homogeneous illumination",)

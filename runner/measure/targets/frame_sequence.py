@@ -15,6 +15,7 @@ from runner.spec.model import Camera, Region
 
 NAME = "frame sequence"
 TITLE = "Frames one after another"
+GROUP = "stray light and time"
 OFFERS = frozenset({"sequence"})
 METHODS = ("frame order", "level over time")
 REFERENCES = ("IEEE Std 2020 (flicker and frame sequences of vehicle cameras; from memory)",)

@@ -16,6 +16,7 @@ from runner.spec.model import Camera, Region
 
 NAME = "light series"
 TITLE = "Even field at several levels of light"
+GROUP = "sensor"
 OFFERS = frozenset({"uniform"})
 METHODS = ("photon transfer",)
 REFERENCES = ("EMVA Standard 1288 Release 4.0 Linear (2021), homogeneous illumination at equidistant exposures",)

@@ -12,6 +12,7 @@ from runner.spec.model import Camera, Region
 
 NAME = "random pattern"
 TITLE = "Stochastic pattern"
+GROUP = "transfer function"
 OFFERS = frozenset({"texture"})
 METHODS = ("texture response",)
 REFERENCES = (

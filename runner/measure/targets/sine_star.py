@@ -16,6 +16,7 @@ from runner.spec.model import Camera, Region
 
 NAME = "sine star"
 TITLE = "Sine star"
+GROUP = "transfer function"
 OFFERS = frozenset({"star"})
 METHODS = ("star response",)
 REFERENCES = (

@@ -13,6 +13,7 @@ from runner.spec.model import Camera, Region
 
 NAME = "sinusoidal grating"
 TITLE = "Sinusoidal grating"
+GROUP = "transfer function"
 OFFERS = frozenset({"grating"})
 METHODS = ("grating response", "transfer curve")
 REFERENCES = (

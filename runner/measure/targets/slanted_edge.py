@@ -24,6 +24,7 @@ from runner.spec.units import parse_amount
 
 NAME = "slanted edge"
 TITLE = "Slanted edge"
+GROUP = "transfer function"
 OFFERS = frozenset({"edge"})
 METHODS = ("edge response",)
 REFERENCES = ("ISO 12233:2014 6.2 (slanted edge)", "J. Bigün and G. H. Granlund, ICCV 1987 (structure tensor)")

@@ -13,6 +13,7 @@ from runner.spec.model import Camera, Region
 
 NAME = "square wave bars"
 TITLE = "Square-wave bar groups"
+GROUP = "transfer function"
 OFFERS = frozenset({"bars"})
 METHODS = ("bar response", "coltman conversion")
 REFERENCES = (
