@@ -129,8 +129,8 @@ class Options:
     centre: float | str = field(
         default=0.5,
         metadata={
-            "sentence": "Share of the region's width and height that the centre takes, 10 % to 90 %, for quantities that "
-            "end in _centre or _outer."
+            "sentence": "Share of the region's width and height that the centre takes, 10 % to 90 %, for quantities "
+            "that end in _centre or _outer."
         },
     )
 

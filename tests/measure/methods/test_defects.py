@@ -74,6 +74,53 @@ def test_a_flat_with_every_kind_of_defect() -> None:
     assert words[bright[0]].startswith("8")
 
 
+def test_counts_by_zone() -> None:
+    """Hot pixels, a cluster, a column and blinking pixels in the centre and around it add up to those of all.
+
+    The centre takes 50 % of width and height: columns 160 to 479, rows 120 to 359 of 640 × 480.
+    """
+    rng = np.random.default_rng(21)
+    frames = _pair(np.full(SIZE[::-1], 500.0), rng, 6, 20.0)
+    centre, outer = [(320, 240), (161, 121), (470, 350)], [(20, 30), (159, 200), (300, 119), (600, 400)]
+    for frame in frames:
+        for x, y in (*centre, *outer, (479, 200), (480, 200)):  # the last two touch across the border
+            frame[y, x] += 400
+        frame[:, 100] += 30
+    for y, x in ((50, 60), (300, 300)):  # their means stay, so that they are not hot as well
+        frames[2][y, x] += 300
+        frames[4][y, x] -= 300
+    names = ("hot_pixels", "clusters", "defective_columns", "blinking_pixels", "largest_cluster")
+    seen = sample(
+        [codes(f) for f in frames], lit=False, wanted=(*(f"{n}_{z}" for n in names for z in ("centre", "outer")),)
+    )
+    found = read(defects.measure(seen, defects.read_options({})))
+
+    assert {n: (value(found[f"{n}_centre"]), value(found[f"{n}_outer"])) for n in names} == {
+        "hot_pixels": (4, 5),
+        "clusters": (1, 0),
+        "defective_columns": (0, 1),
+        "blinking_pixels": (1, 1),
+        "largest_cluster": (2, 0),
+    }
+    assert value(found["hot_pixels"]) == 9
+    assert (found["hot_pixels_centre"].trials, found["hot_pixels_outer"].trials) == (320 * 240, 640 * 480 - 320 * 240)
+    assert found["defective_columns_outer"].trials == 320
+    assert defects.quantity("hot_pixels_edge") is None
+    info = defects.quantity("hot_pixels_outer")
+    assert info is not None
+    assert info.sentence.endswith("; in what lies around the centre of the region.")
+
+
+def test_zones_refuse_what_the_whole_does_not_hold() -> None:
+    """Hot pixels of the centre are counted in a dark frame, as those of all; stuck pixels take some ten frames."""
+    rng = np.random.default_rng(22)
+    seen = sample([codes(f) for f in _pair(LENS, rng)], wanted=("hot_pixels_centre", "stuck_pixels_outer"))
+    found = read(defects.measure(seen, defects.read_options({"centre": "30 %"})))
+
+    refusals = [found[name].refusal for name in ("hot_pixels_centre", "stuck_pixels_outer")]
+    assert [r.cause for r in refusals if r is not None] == ["not defined", "too few frames"]
+
+
 def test_a_column_counts_by_half_of_its_length() -> None:
     """A column that departs in its upper half is defective, as where halves are read out apart; a dark spot is none.
 
@@ -177,6 +224,25 @@ def test_stuck_and_blinking_pixels_of_a_set() -> None:
     assert _places(spots, "blinking pixel") == set(blinking)
     assert (value(found["stuck_pixels"]), value(found["blinking_pixels"])) == (2, 2)
     assert {one.words for one in spots if one.kind == "stuck pixel"} == {"the same code in all 12 frames"}
+
+
+def test_a_hot_pixels_own_noise_is_no_blinking() -> None:
+    """Dark signal has shot noise (EMVA 1288 Release 4.0): forty hot pixels count once, and one that jumps blinks."""
+    rng = np.random.default_rng(8)
+    hot = scattered(SIZE, 41, rng)
+    jumping = hot.pop()
+    frames = []
+    for number in range(4):
+        frame = rng.normal(0, 15, (SIZE[1], SIZE[0]))
+        for x, y in hot:
+            frame[y, x] += 10 * rng.poisson(300)  # 10 DN for an electron: 173 DN of noise among 15
+        frame[jumping[1], jumping[0]] += (-1) ** number * 160
+        frames.append(codes(frame))
+    found, spots = _measure(frames, lit=False)
+
+    assert _places(spots, "hot pixel") == set(hot)
+    assert _places(spots, "blinking pixel") == {jumping}
+    assert (value(found["hot_pixels"]), value(found["blinking_pixels"])) == (40, 1)
 
 
 def test_what_too_few_frames_cannot_tell() -> None:
