@@ -24,8 +24,14 @@ STRANGE = 4.0
 """A fit that leaves so many times what most leave is of something else: dirt, a shadow, a finger."""
 FLOOR = 0.002
 """px: bound on what the model of a border leaves of a centre's place (0.001 px in closed-form scenes, twice that)."""
-LEAST_PIXELS = 40.0
-"""Own pixels on a point that are needed for its parameters."""
+SHARP_DISC, SHARP_CORNER = (0.42, 0.07), (0.58, 0.08)
+"""px: borders sharper than the first are undersampled; the bound grows by e for every so much of the second.
+
+Closed-form discs at blurs of 0.42, 0.37, 0.32 px lie off by up to 0.0016, 0.0033, 0.008 px, corners at 0.58, 0.50,
+0.42, 0.35 px by up to 0.0017, 0.004, 0.011, 0.029 px.
+"""
+LEAST_PIXELS = 32.0
+"""Own pixels on a point: four to each of a disc's parameters."""
 
 
 @dataclass(frozen=True)
@@ -96,7 +102,9 @@ def centres_of(found: Found, crop: Crop) -> Centres:
         found_words = f"{lost} of {len(start)} {words} do not look like {words}: their borders cannot be fitted"
         allowed = f"at most {100 * MOST_LOST:g} % may, and {LEAST_POINTS} must remain"
         raise MeasurementRefused("another scene", found_words, allowed=allowed)
-    u = np.hypot(np.sqrt(np.einsum("nii->n", covariance[good]) / 2), FLOOR)
+    knee, scale = SHARP_DISC if dots else SHARP_CORNER
+    bound = FLOOR * np.exp(np.maximum(0.0, knee - float(np.median(blur[good]))) / scale)
+    u = np.hypot(np.sqrt(np.einsum("nii->n", covariance[good]) / 2), bound)
     at = centres[good] + [crop.box.x0, crop.box.y0]
     marks = Marks(marks.kind, np.asarray(marks.extent)[good])
     return Centres(at, places[good], u, marks, good, float(np.median(blur[good])))

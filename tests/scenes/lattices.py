@@ -9,6 +9,7 @@ Gaussian, and averaged over each pixel. The centre of a drawn disc lies within 0
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -120,16 +121,31 @@ class LatticeScene:
         return np.asarray(self.distorted(self.ideal(places)) * self.scale + self.middle + np.array(self.moved))
 
     def places_at(self, points: Values) -> Values:
-        """Return the places (n, 2) that points of the frame show: by fixed-point iteration and the inverse plane."""
+        """Return the places (n, 2) that points of the frame show: the lens undone, then the inverse plane."""
         wanted = (points - self.middle - np.array(self.moved)) / self.scale
-        ideal = wanted.copy()
-        for _ in range(60):
-            step = wanted - self.distorted(ideal)
-            ideal += step
-            if np.abs(step).max() < 1e-7:
-                break
+        ideal = self._undone(wanted)
+        if any(self.tangential):
+            for _ in range(60):  # radial terms undone exactly, the small tangential ones step by step
+                shown = self.distorted(ideal)
+                ideal = ideal + self._undone(wanted) - self._undone(shown)
+                if np.abs(shown - wanted).max() < 1e-9:
+                    break
         out = np.column_stack([ideal, np.ones(len(ideal))]) @ np.linalg.inv(self.plane()).T
         return np.asarray(out[:, :2] / out[:, 2:])
+
+    def _undone(self, seen: Values) -> Values:
+        """Return ideal positions whose radial terms give these, px about the centre; far away where none do."""
+        grid = np.linspace(0, 4, 4001)
+        shown = grid * (1 + sum(k * grid ** (2 * i) for i, k in enumerate(self.radial, 1)))
+        falls = np.flatnonzero(np.diff(shown) <= 0)
+        last = falls[0] if len(falls) else len(grid) - 1
+        wanted = np.maximum(np.hypot(*seen.T) / self.half, 1e-12)
+        r = np.interp(wanted, shown[: last + 1], grid[: last + 1], right=4.0)
+        for _ in range(3):
+            value = r * (1 + sum(k * r ** (2 * i) for i, k in enumerate(self.radial, 1)))
+            slope = 1 + sum((2 * i + 1) * k * r ** (2 * i) for i, k in enumerate(self.radial, 1))
+            r = np.where(wanted < shown[last], r - (value - wanted) / np.maximum(slope, 0.05), r)
+        return np.asarray(seen * (r / wanted)[:, None])
 
     def all_places(self) -> Values:
         """Return every place of the chart, row after row, (n, 2)."""
@@ -165,10 +181,13 @@ class LatticeScene:
         across = self.shading[0] * (2 * x / self.size[0] - 1)
         down = self.shading[1] * (2 * y / self.size[1] - 1)
         lamp = 1 + across[None, :] + down[:, None]
-        return np.asarray(lamp * (self.bright + (self.dark - self.bright) * share))
+        light = np.asarray(lamp * (self.bright + (self.dark - self.bright) * share))
+        light.flags.writeable = False
+        return light
 
+    @lru_cache(maxsize=32)  # noqa: B019 - scenes are few, and tests share them
     def dots(self) -> Values:
-        """Return the light of a dot grid without noise, rows × columns."""
+        """Return the light of a dot grid without noise, rows × columns; not to be written to."""
         u, v, grow_u, grow_v = self._cells()
         i, j = np.round(u), np.round(v)
         du, dv = u - i, v - j
@@ -183,8 +202,12 @@ class LatticeScene:
         covered = np.clip(0.5 + (radius - rho) / steep * CELLS, 0, 1) * inside
         return self._finished(covered)
 
+    @lru_cache(maxsize=32)  # noqa: B019 - scenes are few, and tests share them
     def board(self) -> Values:
-        """Return the light of a chequered board without noise, rows × columns; the square above the first is dark."""
+        """Return the light of a chequered board without noise, rows × columns; the square above the first is dark.
+
+        Not to be written to.
+        """
         u, v, grow_u, grow_v = self._cells()
         sign = np.ones(u.shape)
         for at, grow, count in ((u, grow_u, self.places[0]), (v, grow_v, self.places[1])):

@@ -27,6 +27,7 @@ Real = NDArray[np.float64]
 
 NAME = "geometry"
 TITLE = "Geometry"
+GROUP = "geometry"
 NEEDS = frozenset({"lattice"})
 REFERENCES = (
     "ISO 17850:2015 (geometric distortion)",
@@ -42,7 +43,7 @@ CENTRE_TOLD = 0.1
 """Half diagonals: the centre of distortion is fitted where its uncertainty will be less."""
 FARTHEST_CENTRE = 0.5
 """Half diagonals from the frame's middle to a centre of distortion that is believed."""
-WORST = 0.02
+WORST = 0.004
 """Residuals' rms in half diagonals: above, no lens shows the chart."""
 
 _QUANTITIES: Mapping[str, QuantityInfo] = {

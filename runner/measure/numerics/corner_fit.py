@@ -17,7 +17,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from runner.measure.numerics.mark_pixels import Pixels, Real, inverses, solved
+from runner.measure.numerics.mark_pixels import Pixels, Real, Short, covered, inverses, solved
 
 WINDOW = 0.3
 """Half the window's side, in pitches: it stays clear of the next borders and of a mark in a square's middle."""
@@ -56,6 +56,10 @@ class CornerFits:
     extent: Real
     """Half the window's side that was used, in pitches, (n,)."""
 
+    def some(self, which: NDArray[np.intp]) -> "CornerFits":
+        """Return the fits of some corners."""
+        return CornerFits(**{name: getattr(self, name)[which] for name in self.__dataclass_fields__})
+
 
 def fit_corners(pixels: Pixels, centres: Real, steps: Real) -> CornerFits:
     """Fit corners.
@@ -87,26 +91,32 @@ def fit_corners(pixels: Pixels, centres: Real, steps: Real) -> CornerFits:
 
 def _fit_group(pixels: Pixels, centres: Real, steps: Real, extent: Real, wide: tuple[float, float]) -> tuple[Real, ...]:
     offsets, bases = pixels.offsets(wide), pixels.bases(centres)
-    light, x, y, there = pixels.around(bases, offsets)
-    x, y = x - centres[:, :1], y - centres[:, 1:]
-    inverse = np.linalg.inv(steps)
-    weight = there.astype(np.float64)
+    seen, across, down, there = pixels.around(bases, offsets)
+    light: Short = seen.astype(np.float32)
+    x: Short = (across - centres[:, :1]).astype(np.float32)
+    y: Short = (down - centres[:, 1:]).astype(np.float32)
+    inverse: Short = np.linalg.inv(steps).astype(np.float32)
+    weight: Short = there.astype(np.float32)
     for i in (0, 1):
         weight *= np.abs(inverse[:, i, :1] * x + inverse[:, i, 1:] * y) <= extent[:, None]
-    used = weight.sum(axis=1)
+    used = weight.sum(axis=1, dtype=np.float64)
     state = _first(light, x, y, weight, steps)
     pitch = np.sqrt(np.abs(np.linalg.det(steps)))
-    for _ in range(STEPS):
-        normal, right, squares = _equations(light, x, y, weight, state)
-        change = solved(normal, right)
-        left = squares - np.einsum("ni,ni->n", right, change)
-        change[:, :2] = np.clip(change[:, :2], -0.06 * pitch[:, None], 0.06 * pitch[:, None])
+    normal, left, moved = np.zeros((len(state), P, P)), np.zeros(len(state)), np.full(len(state), np.inf)
+    at = np.arange(len(state))
+    for _ in range(STEPS):  # only of those that have not settled
+        normal[at], right, squares = _equations(light[at], x[at], y[at], weight[at], state[at])
+        change = solved(normal[at], right)
+        left[at] = squares - np.einsum("ni,ni->n", right, change)
+        size, blur = pitch[at, None], state[at, 4]
+        change[:, :2] = np.clip(change[:, :2], -0.06 * size, 0.06 * size)
         change[:, 2:4] = np.clip(change[:, 2:4], -0.15, 0.15)
-        change[:, 4] = np.clip(change[:, 4], -0.4 * state[:, 4], 0.6 * state[:, 4])
-        state = state + change
+        change[:, 4] = np.clip(change[:, 4], -0.4 * blur, 0.6 * blur)
+        state[at] += change
         state[:, 4] = np.clip(state[:, 4], LEAST_BLUR, 0.5 * pitch)
-        moved = np.hypot(change[:, 0], change[:, 1])
-        if moved.max(initial=0.0) < SETTLED:
+        moved[at] = np.hypot(change[:, 0], change[:, 1])
+        at = at[moved[at] >= SETTLED]
+        if not len(at):
             break
     variance = np.maximum(left, 0.0) / np.maximum(used - P, 1)
     covariance = inverses(normal)[:, :2, :2] * variance[:, None, None]
@@ -123,7 +133,7 @@ def _fit_group(pixels: Pixels, centres: Real, steps: Real, extent: Real, wide: t
     )
 
 
-def _first(light: Real, x: Real, y: Real, weight: Real, steps: Real) -> Real:
+def _first(light: Short, x: Short, y: Short, weight: Short, steps: Real) -> Real:
     """Return parameters to begin with, (n, P)."""
     turn = np.arctan2(steps[:, 1, :], steps[:, 0, :])
     one, two = (-np.sin(turn[:, i, None]) * x + np.cos(turn[:, i, None]) * y for i in (0, 1))
@@ -132,28 +142,30 @@ def _first(light: Real, x: Real, y: Real, weight: Real, steps: Real) -> Real:
     swing = 1.2 * ((light - mean[:, None]) * sign).sum(axis=1) / count
     none = np.zeros(len(light))
     blur = np.maximum(0.6, 0.04 * np.sqrt(np.abs(np.linalg.det(steps))))
-    return np.column_stack([none, none, turn, blur, mean, swing, none, none])
+    return np.column_stack([none, none, turn, blur, mean, swing, none, none]).astype(np.float64)
 
 
-def _equations(light: Real, x: Real, y: Real, weight: Real, state: Real) -> tuple[Real, Real, Real]:
-    """Return the normal equations of a step, (n, P, P) and (n, P), and the sum of squares, (n,)."""
-    from scipy.special import erf  # noqa: PLC0415 - heavy
+def _equations(light: Short, x: Short, y: Short, weight: Short, state: Real) -> tuple[Real, Real, Real]:
+    """Return the normal equations of a step, (n, P, P) and (n, P), and the sum of squares, (n,).
 
-    cx, cy, one, two, sigma, mean, swing, gx, gy = (state[:, i, None] for i in range(P))
+    Positions count from where the fit began; in float32, which holds them to 1e-6 px.
+    """
+    cx, cy, one, two, sigma, mean, swing, gx, gy = (state[:, i, None].astype(np.float32) for i in range(P))
     dx, dy = x - cx, y - cy
     lamp = 1 + gx * x + gy * y
     sides, bells, along, away = [], [], [], []
     for turn in (one, two):
         c, s = np.cos(turn), np.sin(turn)
         d = (c * dy - s * dx) / sigma
+        bell = np.exp(np.float32(-0.5) * d * d)
         away.append(d)
         along.append(c * dx + s * dy)
-        sides.append(erf(d / np.sqrt(2)))
-        bells.append(np.exp(-0.5 * d * d) * (np.sqrt(2 / np.pi) / sigma))
+        sides.append(1 - 2 * covered(d, bell))
+        bells.append(bell * (np.float32(0.7978845608) / sigma))
     crossed = sides[0] * sides[1]
     shown = mean + swing * crossed
     first, second = (lamp * swing * bells[i] * sides[1 - i] for i in (0, 1))
-    jacobian = np.empty((len(light), P, light.shape[1]))
+    jacobian = np.empty((len(light), P, light.shape[1]), dtype=np.float32)
     jacobian[:, 0] = first * np.sin(one) + second * np.sin(two)
     jacobian[:, 1] = -first * np.cos(one) - second * np.cos(two)
     jacobian[:, 2] = -first * along[0]
@@ -165,4 +177,6 @@ def _equations(light: Real, x: Real, y: Real, weight: Real, state: Real) -> tupl
     jacobian[:, 8] = shown * y
     jacobian *= weight[:, None, :]
     rest = (light - lamp * shown) * weight
-    return jacobian @ jacobian.swapaxes(1, 2), (jacobian @ rest[..., None])[..., 0], np.einsum("nk,nk->n", rest, rest)
+    normal = (jacobian @ jacobian.swapaxes(1, 2)).astype(np.float64)
+    right = (jacobian @ rest[..., None])[..., 0].astype(np.float64)
+    return normal, right, np.einsum("nk,nk->n", rest, rest).astype(np.float64)

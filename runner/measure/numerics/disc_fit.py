@@ -16,15 +16,11 @@ References:
 """
 
 from dataclasses import dataclass, replace
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from runner.measure.numerics.mark_pixels import Pixels, Real, inverses, solved
-
-Short = NDArray[Any]
-"""float32, or what becomes it."""
+from runner.measure.numerics.mark_pixels import Pixels, Real, Short, covered, inverses, solved
 
 PILOTS = 24
 """Discs that are fitted first, over the whole room each has, to learn the blur."""
@@ -34,6 +30,8 @@ MORE_RING = 1.5
 """px besides."""
 CHUNK = 60_000
 """Pixels fitted at a time: their derivatives stay in a processor's cache."""
+NEAR = 8
+"""Discs of a group of like size that are asked which pixels they need."""
 STEPS, PILOT_STEPS = 6, 12
 SETTLED = 3e-3
 """px; a smaller step of every centre ends the iteration: what a next one would do is a hundredth of that."""
@@ -187,10 +185,15 @@ def _bounds(shapes: Real, room: Real, ring: float | None) -> tuple[Real, Real]:
 
 
 def _near(offsets: Short, inverse: Short, room: Real, shapes: Real, ring: float | None, step: int) -> NDArray[np.bool_]:
-    """Return which offsets can lie between the bounds of any disc of a group, whose centres lie off their bases."""
+    """Return which offsets can lie between the bounds of discs of a group, whose centres lie off their bases.
+
+    A few discs stand for all; their like size is that of the others.
+    """
+    some = np.unique(np.linspace(0, len(shapes) - 1, min(NEAR, len(shapes))).astype(int))
+    inverse, room, shapes = inverse[some], room[some], shapes[some]
     rho = _radius(offsets[None, :, 1], offsets[None, :, 0], inverse)[0]
     low, high = _bounds(shapes, room, ring)
-    slack = step * 0.75 / np.linalg.svd(shapes, compute_uv=False)[:, 1]
+    slack = (step * 0.75 + 0.5) / np.linalg.svd(shapes, compute_uv=False)[:, 1]
     return np.asarray(((rho >= (low - slack)[:, None]) & (rho <= (high + slack)[:, None])).any(axis=0))
 
 
@@ -209,12 +212,12 @@ def _equations(light: Short, x: Short, y: Short, weight: Short, inverse: Short, 
     """
     cx, cy, s, sigma, ground, step, gx, gy = (state[:, i, None].astype(np.float32) for i in range(P))
     rho, nx, ny = _radius(x - cx, y - cy, inverse)
-    steep = np.sqrt(nx * nx + ny * ny)
+    steep = np.sqrt(nx * nx + ny * ny) + np.float32(1e-6)  # 0 in the very centre
     t = (rho - s) / (steep * sigma)
     bell = np.exp(np.float32(-0.5) * t * t)
-    covered = _covered(t, bell)
+    inside = covered(t, bell)
     lamp = 1 + gx * x + gy * y
-    shown = ground + step * covered
+    shown = ground + step * inside
     slope = bell * lamp * (step * np.float32(0.3989422804) / sigma) / steep
     jacobian = np.empty((len(light), P, light.shape[1]), dtype=np.float32)
     np.multiply(slope, nx, out=jacobian[:, 0])
@@ -222,7 +225,7 @@ def _equations(light: Short, x: Short, y: Short, weight: Short, inverse: Short, 
     jacobian[:, 2] = slope
     np.multiply(slope * steep, t, out=jacobian[:, 3])
     jacobian[:, 4] = lamp
-    np.multiply(lamp, covered, out=jacobian[:, 5])
+    np.multiply(lamp, inside, out=jacobian[:, 5])
     np.multiply(shown, x, out=jacobian[:, 6])
     np.multiply(shown, y, out=jacobian[:, 7])
     jacobian *= weight[:, None, :]
@@ -230,13 +233,3 @@ def _equations(light: Short, x: Short, y: Short, weight: Short, inverse: Short, 
     normal = (jacobian @ jacobian.swapaxes(1, 2)).astype(np.float64)
     right = (jacobian @ rest[..., None])[..., 0].astype(np.float64)
     return normal, right, np.einsum("nk,nk->n", rest, rest).astype(np.float64)
-
-
-def _covered(t: Short, bell: Short) -> Short:
-    """Return Φ(-t), given exp(-t²/2), within 1e-7 (Abramowitz and Stegun, equation 26.2.17)."""
-    k = 1 / (1 + np.float32(0.2316419) * np.abs(t))
-    sum_of: Short = np.full_like(k, 1.330274429)
-    for b in (-1.821255978, 1.781477937, -0.356563782, 0.319381530):
-        sum_of = sum_of * k + np.float32(b)
-    tail = bell * k * sum_of * np.float32(0.3989422804)
-    return np.where(t > 0, tail, 1 - tail)

@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 
 Real = NDArray[np.float64]
 Whole = NDArray[np.intp]
+Flags = NDArray[np.bool_]
 
 NEIGHBOURS = 9
 """Nearest points looked at about a seed, itself included."""
@@ -25,11 +26,13 @@ MATCH = 0.2
 """A seed's opposite neighbours are so far from symmetric at most, in steps."""
 REACH = 0.28
 """A point may lie so far from where its neighbour's steps put it, in steps."""
-BEND = 0.15
-"""A point may lie so far from the middle between its two neighbours in a row, in steps."""
+BEND = 0.18
+"""A cell may miss closing, or a row bend from one step to the next, by so much, in steps: views bend by less."""
+MAIN = 0.6
+"""Share of all cells that close in one patch: there is a lattice; else they close by chance."""
 SEEDS = 8
 """Seeds that are tried, from the middle outwards; the largest lattice counts."""
-FAR = 400
+FAR = 250
 """Places that an index may lie from the seed's."""
 STEPS: Whole = np.array([(1, 0), (-1, 0), (0, 1), (0, -1)], dtype=np.intp)
 JUMPS: Whole = np.array([(2, 0), (-2, 0), (0, 2), (0, -2), (1, 1), (1, -1), (-1, 1), (-1, -1)], dtype=np.intp)
@@ -148,7 +151,7 @@ class _Spread:
         source = np.repeat(front, len(steps))
         step = np.tile(steps, (len(front), 1))
         place = self.place[source] + step
-        free = (place.min(axis=1) > 1) & (place.max(axis=1) < 2 * FAR - 1)
+        free = (place.min(axis=1) > 3) & (place.max(axis=1) < 2 * FAR - 4)
         free &= self.grid[np.clip(place[:, 0], 0, 2 * FAR), np.clip(place[:, 1], 0, 2 * FAR)] < 0
         source, step, place = source[free], step[free], place[free]
         if not len(source):
@@ -177,35 +180,61 @@ class _Spread:
         self.steps[which] = _steps_of(self.points, self.grid, self.place[which], self.steps[which])
 
     def result(self) -> LatticeIndex:
-        """Return the lattice, without points that do not lie between their neighbours."""
-        for _ in range(1 + int(self.known.sum()) // 4):
-            members = np.flatnonzero(self.known)
-            off = self._bend(members)
-            if not len(off) or off.max() < BEND:
-                break
-            worst = members[off.argmax()]
-            self.known[worst] = False
-            self.grid[tuple(self.place[worst])] = -1
+        """Return the lattice: the largest patch of cells that close, and what continues its rows and columns."""
+        used = np.argwhere(self.grid >= 0)
+        low, high = used.min(axis=0) - 3, used.max(axis=0) + 4
+        self.grid = self.grid[low[0] : high[0], low[1] : high[1]]
+        self.place = self.place - low
+        kept = self._attached(self._patch())
+        for place in np.argwhere((self.grid >= 0) & ~kept):
+            self.known[self.grid[tuple(place)]] = False
+            self.grid[tuple(place)] = -1
         members = np.flatnonzero(self.known)
+        if not len(members):
+            return _nothing()
         self._refresh(members)
         places = self.place[members]
         return LatticeIndex(members, places - places.min(axis=0), self.steps[members])
 
-    def _bend(self, members: Whole) -> Real:
-        """Return how far points lie from the middle between two neighbours, in steps; the lesser of both directions.
+    def _patch(self) -> Flags:
+        """Return the places in cells that are nearly parallelograms; of many patches of them in the largest alone."""
+        from scipy.ndimage import label  # noqa: PLC0415 - heavy
 
-        At the lattice's border there is only one direction, in which a strange neighbour shows the same: 0.
-        """
-        off = np.full((len(members), 2), np.nan)
-        for axis in (0, 1):
-            step = np.eye(2, dtype=np.intp)[axis]
-            before, after = (self.grid[tuple((self.place[members] + s * step).T)] for s in (-1, 1))
-            both = (before >= 0) & (after >= 0)
-            middle = (self.points[before] + self.points[after]) / 2
-            length = np.hypot(*(self.points[after] - self.points[before]).T) / 2
-            away = np.hypot(*(self.points[members] - middle).T) / np.maximum(length, 1e-9)
-            off[both, axis] = away[both]
-        return np.asarray(np.nan_to_num(off.min(axis=1)))
+        at = self._positions()
+        corners = at[:-1, :-1], at[1:, :-1], at[:-1, 1:], at[1:, 1:]
+        close = np.hypot(*np.moveaxis(corners[0] + corners[3] - corners[1] - corners[2], 2, 0))
+        sides = [np.hypot(*np.moveaxis(corners[n] - corners[0], 2, 0)) for n in (1, 2)]
+        with np.errstate(invalid="ignore"):
+            cells, count = label(close < BEND * np.minimum(*sides))
+        kept = np.zeros(self.grid.shape, dtype=bool)
+        if count:
+            sizes = np.bincount(cells.ravel())[1:]
+            sound = sizes.max() > MAIN * sizes.sum()  # what gaps have cut off from a large lattice is part of it too
+            meant = cells > 0 if sound else cells == sizes.argmax() + 1
+            for i, j in ((0, 0), (1, 0), (0, 1), (1, 1)):
+                kept[i : i - 1 or None, j : j - 1 or None] |= meant
+        return kept
+
+    def _attached(self, kept: Flags) -> Flags:
+        """Return the places of a patch with those that continue a row or column by two known steps of it."""
+        at = self._positions()
+        while True:
+            more = np.zeros_like(kept)
+            for axis in (0, 1):
+                for side in (1, -1):
+                    near, far = (np.roll(kept, n * side, axis) for n in (1, 2))
+                    one, two = (np.roll(at, n * side, axis) for n in (1, 2))
+                    off = np.hypot(*np.moveaxis(at - 2 * one + two, 2, 0))
+                    with np.errstate(invalid="ignore"):
+                        more |= near & far & (off < BEND * np.hypot(*np.moveaxis(one - two, 2, 0)))
+            more &= (self.grid >= 0) & ~kept
+            if not more.any():
+                return kept
+            kept = kept | more
+
+    def _positions(self) -> Real:
+        """Return the point of every place, NaN where there is none."""
+        return np.where((self.grid >= 0)[..., None], self.points[self.grid], np.nan)
 
 
 def _steps_of(points: Real, grid: Whole, places: Whole, old: Real) -> Real:

@@ -125,14 +125,16 @@ def largest_bow(view: View, places: Real, axis: int) -> float:
         places: Columns and rows that were seen, (n, 2).
         axis: 1 takes rows, 0 columns.
     """
-    most = 0.0
-    for one in np.unique(places[:, axis]):
-        line = places[places[:, axis] == one]
-        line = line[np.argsort(line[:, 1 - axis])]
-        if len(line) < 3:
-            continue
-        seen = view.seen(line)
-        chord = seen[-1] - seen[0]
-        away = (chord[0] * (seen[:, 1] - seen[0, 1]) - chord[1] * (seen[:, 0] - seen[0, 0])) / np.hypot(*chord)
-        most = max(most, float(np.abs(away).max() / np.hypot(*chord)))
-    return 100 * most
+    order = np.lexsort((places[:, 1 - axis], places[:, axis]))
+    line = places[order, axis]
+    starts = np.flatnonzero(np.append(True, np.diff(line) > 0))
+    lengths = np.diff(np.append(starts, len(line)))
+    seen = view.seen(places[order])
+    first = seen[starts]
+    chord = seen[starts + lengths - 1] - first
+    of = np.repeat(np.arange(len(starts)), lengths)
+    dx, dy = (seen - first[of]).T
+    size = np.maximum((chord**2).sum(axis=1), 1e-12)
+    away = np.abs(chord[of, 0] * dy - chord[of, 1] * dx) / size[of]
+    bows = np.where(lengths >= 3, np.maximum.reduceat(away, starts), 0.0)
+    return 100 * float(bows.max())

@@ -14,6 +14,7 @@ from runner.capture.frame import Box, Frame, linearise
 from runner.errors import MeasurementRefused
 from runner.measure.contract import Found, NotFound
 from runner.measure.lattice_finding import (
+    LEAST_POINTS,
     Lattice,
     LatticeOptions,
     counted,
@@ -33,6 +34,7 @@ from runner.spec.model import Camera, Region
 
 NAME = "checkerboard"
 TITLE = "Checkerboard"
+GROUP = "geometry"
 OFFERS = frozenset({"lattice"})
 METHODS = ("geometry",)
 REFERENCES = (
@@ -40,7 +42,7 @@ REFERENCES = (
     "ISO 17850:2015 (geometric distortion; its charts are dots and lines, corners stand for dots here)",
 )
 
-LEAST_SQUARE = 8.0
+LEAST_SQUARE = 9.0
 """px: in smaller squares the blur of one border reaches the next."""
 MOST_MISFIT = 0.2
 """Rms of what two crossed borders leave over their swing: corners of a printed board stay below 0.15."""
@@ -97,10 +99,7 @@ def _locate_one(frame: Frame, name: str, box: Box, camera: Camera, options: Opti
     pixels = Pixels(np.ascontiguousarray(codes), lambda some: linearise(some, camera))
     seen, index, fits = _search(pixels)
     refuse_few(index, "corners of squares", seen, "a chequered board")
-    side = float(np.median(np.sqrt(np.abs(np.linalg.det(index.steps)))))
-    if side < LEAST_SQUARE:
-        found = f"the squares are {side:.1f} px wide; {LEAST_SQUARE:g} px are needed"
-        raise MeasurementRefused("undersampled", found, next_step="go nearer or take a chart with larger squares")
+    side = _side(index)
     lattice = Lattice(fits.centres, index.places, index.steps, "corners")
     marked = _marked(pixels, lattice, fits) if options.marks else np.zeros((0, 2), np.intp)
     lattice = counted(lattice, marked, options, squares=True)
@@ -114,7 +113,7 @@ def _search(pixels: Pixels) -> tuple[int, LatticeIndex, CornerFits]:
     while True:
         corners = find_corners(codes, binning)
         index, fits = _confirmed(pixels, corners.centres, corners.parity)
-        if (len(index.members) >= 25 and min(index.size) >= 4) or binning == 1:
+        if (len(index.members) >= LEAST_POINTS and min(index.size) >= 4) or binning == 1:
             return len(corners.centres), index, fits
         binning = max(1, binning // 2)
 
@@ -122,18 +121,26 @@ def _search(pixels: Pixels) -> tuple[int, LatticeIndex, CornerFits]:
 def _confirmed(pixels: Pixels, points: Real, parity: Whole) -> tuple[LatticeIndex, CornerFits]:
     """Return the lattice of those points that are crossings of two borders, with their fits."""
     index = index_lattice(points, parity)
+    if len(index.members) >= LEAST_POINTS and _side(index) < LEAST_SQUARE:
+        found = f"the squares are {_side(index):.1f} px wide; {LEAST_SQUARE:g} px are needed"
+        raise MeasurementRefused("undersampled", found, next_step="go nearer or take a chart with larger squares")
     fits = fit_corners(pixels, points[index.members], index.steps)
     for _ in range(2):  # a strange point beside the board may have kept a true one off; then they are counted again
         swing = np.abs(fits.swing)
         usual = float(np.median(swing[fits.settled])) if fits.settled.any() else np.inf
         good = fits.settled & (fits.misfit < MOST_MISFIT * swing) & (swing > LEAST_SWING * usual)
-        kept = index.members[good]
-        index = index_lattice(points[kept], parity[kept])
-        fits = fit_corners(pixels, points[kept][index.members], index.steps)
-        index = LatticeIndex(kept[index.members], index.places, index.steps)
         if good.all():
             break
+        kept = index.members[good]
+        again = index_lattice(fits.centres[good], parity[kept])
+        fits = fits.some(np.flatnonzero(good)[again.members])
+        index = LatticeIndex(kept[again.members], again.places, again.steps)
     return index, fits
+
+
+def _side(index: LatticeIndex) -> float:
+    """Return the side of a square, px: the median over the lattice."""
+    return float(np.median(np.sqrt(np.abs(np.linalg.det(index.steps)))))
 
 
 def _marked(pixels: Pixels, lattice: Lattice, fits: CornerFits) -> Whole:

@@ -14,6 +14,8 @@ from runner.capture.frame import Box, Frame
 from runner.errors import MeasurementRefused
 from runner.measure.contract import Found, NotFound
 from runner.measure.lattice_finding import (
+    LEAST_POINTS,
+    LEAST_SIDE,
     Lattice,
     LatticeOptions,
     counted,
@@ -30,6 +32,7 @@ from runner.spec.model import Camera, Region
 
 NAME = "dot grid"
 TITLE = "Dot grid"
+GROUP = "geometry"
 OFFERS = frozenset({"lattice"})
 METHODS = ("geometry",)
 REFERENCES = ("ISO 17850:2015 (dot chart)", "ISO 19084:2015 4.2.1 (dot chart)")
@@ -151,6 +154,6 @@ def _search(codes: Any, options: Options) -> tuple[Blobs, LatticeIndex]:
         assert best is not None  # noqa: S101 - one of both kinds was looked for
         members = best[1].members
         seen = 2 * np.sqrt(np.median(best[0].areas[members]) / np.pi) / best[0].binning if len(members) else 0.0
-        if (min(best[1].size) >= 4 and len(members) >= 25 and seen >= WELL_SEEN) or binning == 1:
+        if (min(best[1].size) >= LEAST_SIDE and len(members) >= LEAST_POINTS and seen >= WELL_SEEN) or binning == 1:
             return best
         binning = max(1, binning // 2)
