@@ -24,6 +24,7 @@ from runner.spec.units import parse_amount, spell
 
 NAME = "photon transfer"
 TITLE = "Photon transfer of a linear sensor"
+GROUP = "sensor"
 TOGETHER = True
 AXES = frozenset({"level", "exposure"})
 NEEDS = frozenset({"uniform"})
