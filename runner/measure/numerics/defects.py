@@ -21,7 +21,7 @@ References:
     Threshold on the median and the median absolute deviation: common practice, no source.
 """
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from math import sqrt
 from typing import Any
@@ -41,6 +41,8 @@ MARGIN = 1.0
 """So much less than k, in times the noise, suffices for a pixel to be compared with its own neighbours."""
 DEAD = 0.5
 """A pixel below this share of its neighbours' light is dead (trade: 50 to 80 %)."""
+TRIMMED = 0.1
+"""Share of a line's pixels left out at either end where it is asked what a frame adds to the line."""
 PHASES = 16
 """Places between two codes over which the chance of equal codes is averaged."""
 
@@ -152,7 +154,8 @@ def unsteady_pixels(frames: Frames, k: float = K, *, gain_drift: bool = False) -
 
     A blinking pixel's variance over n frames passes what chi-square of n-1 degrees of freedom gives as rarely as
     normal noise passes k. Equal codes tell a stuck pixel only where chance gives them as rarely: with whole codes
-    finer than the noise that takes some ten frames; without whole codes three are enough.
+    finer than the noise that takes some ten frames; without whole codes three are enough. What a frame adds to a whole
+    row or column (bands that run) is no single pixel's: it is taken off first.
 
     Args:
         frames: n ≥ 2 frames × rows × columns, light over black or DN.
@@ -174,8 +177,10 @@ def unsteady_pixels(frames: Frames, k: float = K, *, gain_drift: bool = False) -
     spread = Ground(one.y, one.x, np.zeros_like(one.level), one.noise**2 / 2, one.tail, one.step)
     limit = float(special.chdtri(n - 1, 2 * special.ndtr(-k))) / (n - 1)
     rows, columns = outstanding(variance, spread, None, limit)
-    found = variance[rows, columns].astype(np.float64)
+    found = variance.off_lines(rows, columns)
     ratio = found / _positive(spread.at(rows, columns)[1], found)
+    there = ratio > limit
+    rows, columns, ratio = rows[there], columns[there], ratio[there]
     blinking = _defects(rows, columns, "blinking", np.sqrt(ratio), _as_normal(ratio, n))
     noise = float(np.sqrt(np.median(spread.noise)))
     chance = equal_chance(noise / one.step if one.step > 0 else np.inf, n)
@@ -319,6 +324,29 @@ class _Variances:
                 piece *= self._kind(factor)
             pieces.append(piece)
         return np.asarray(np.var(pieces, axis=0, ddof=1), dtype=np.float32)
+
+    def off_lines(self, rows: Places, columns: Places) -> Real:
+        """Return the variances of single pixels without what each frame adds to the pixel's whole row and column."""
+        values = self._values((rows, columns))
+        values -= self._added(rows, lambda at: (at, slice(None)))
+        values -= self._added(columns, lambda at: (slice(None), at))
+        return np.asarray(values.var(axis=0, ddof=1))
+
+    def _added(self, lines: Places, key: Callable[[int], tuple[Any, ...]]) -> Real:
+        """Return what each frame adds to lines, frames × lines: a mean that a few far pixels do not move."""
+        added = np.zeros((len(self._frames), lines.size))
+        for line in np.unique(lines):
+            away = self._values(key(int(line)))
+            away -= away.mean(axis=0)
+            cut = int(TRIMMED * away.shape[1])
+            away.sort(axis=1)
+            added[:, lines == line] = away[:, cut : away.shape[1] - cut].mean(axis=1)[:, None]
+        return added
+
+    def _values(self, key: Any) -> Real:
+        """Return values with drift taken out, frames × what the key asks for."""
+        known = zip(self._frames, self._factors, self._levels, strict=True)
+        return np.array([(frame[key].astype(np.float64) - level) * factor for frame, factor, level in known])
 
     def _of_two(self, key: Any) -> NDArray[np.float32]:
         """Return half the squared difference; levels of equal frames cancel but for what float32 leaves of them."""

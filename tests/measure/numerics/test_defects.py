@@ -140,6 +140,26 @@ def test_stuck_and_blinking_pixels(gain_drift: bool) -> None:
     assert np.median([d.contrast for d in found.blinking.defects]) == pytest.approx(6, rel=0.15)
 
 
+@pytest.mark.parametrize("gain_drift", [False, True])
+@pytest.mark.parametrize("count", [3, 5])
+def test_bands_that_run_make_no_pixel_blink(count: int, gain_drift: bool) -> None:
+    """Bands that stand elsewhere in the last frame, ten times the noise together, are no pixel's own.
+
+    A pixel's variance passes the limit there in half of the frame; only four pixels jump, and only they are found.
+    """
+    rng = np.random.default_rng(12)
+    blinking = scattered(SIZE, 4, rng)
+    y, x = np.arange(SIZE[1])[:, None], np.arange(SIZE[0])
+    frames = []
+    for number in range(count):
+        turn = np.pi * (number == count - 1)
+        bands = 12 * np.sin(2 * np.pi * y / 37 + turn) + 8 * np.cos(2 * np.pi * x / 61 + turn)
+        frame = 400 + bands + rng.normal(0, 2, bands.shape)
+        frames.append(np.round(plant(frame, blinking, [30.0 * (-1) ** number] * 4)).astype(np.uint16))
+
+    assert _places(unsteady_pixels(frames, gain_drift=gain_drift).blinking.defects) == set(blinking)
+
+
 @pytest.mark.parametrize("count", [2, 3])
 def test_a_blinking_pixels_scatter(count: int) -> None:
     """Contrast is the pixel's standard deviation over the frames over its neighbours', drift taken out (n-1)."""
