@@ -40,12 +40,16 @@ LEAST_APART = 3.0
 """Periods over the patch between a wave and its mirror image: nearer, their lines merge under the search's window."""
 MOST_STRANGE = 0.1
 """Power that neither the sine with its harmonics nor noise explains, over the sine's: above, it is another scene."""
+MOST_BENT = 0.35
+"""rad rms by which the stripes' phase may depart from a plane: what they lose by it is then put back within a tenth."""
 STRIP = 32_768
 """Pixels worked on at a time."""
 MAP_SIZE = 65
 """Ordinates along each axis of the spectrum's picture."""
 DEEPEST = -90.0
 """dB: what lies deeper is drawn as that."""
+LOST = 0.1
+"""Of what bent stripes lose: its standard uncertainty."""
 BIAS = 2e-4
 """Bound on the relative bias of a modulation (shading and amplitude that change by 30 % over the patch)."""
 
@@ -171,6 +175,12 @@ def _refuse_undersampled(crop: Crop, frequency: tuple[float, float]) -> None:
 
 
 def _refuse_strange(fit: GratingFit, lattices: list[Lattice]) -> None:
+    if fit.bend > MOST_BENT:
+        sentence = (
+            f"the stripes bend over the patch by {fit.bend / (2 * np.pi):.2f} of a period rms, at most "
+            f"{MOST_BENT / (2 * np.pi):.2f} may: take a smaller region"
+        )
+        raise MeasurementRefused("outside the estimator's limits", sentence)
     amplitude = abs(fit.amplitudes[0])
     if fit.level <= 0 or amplitude < 5 * fit.amplitude_u[0]:
         found = 100 * amplitude / abs(fit.level or 1)
@@ -221,11 +231,12 @@ def _readings(sample: Sample, fit: GratingFit, whole: Rounding, options: Options
     sign = -1.0 if fx < 0 or (fx == 0 and fy < 0) else 1.0  # one of two opposite normals, so that it is within ±90°
     phase, direction = degrees(sign * float(np.angle(fit.amplitudes[0]))), degrees(atan2(sign * fy, sign * fx))
     code_f, code_turn = (sqrt(float(v @ whole.frequency @ v)) for v in (along, across))
-    more = (*_bias(100 * BIAS * modulation), *_whole_codes(100 * whole.modulation * modulation))
+    lost = LOST * fit.lost
+    more = (*_bias(100 * hypot(BIAS, lost) * modulation), *_whole_codes(100 * whole.modulation * modulation))
     turned = _whole_codes(degrees(code_turn / f))
     made = [
         _reading(sample, "modulation", "%", 100 * modulation, 100 * u, more),
-        _transfer(sample, modulation, u, whole, options),
+        _transfer(sample, modulation, u, hypot(BIAS, lost), whole, options),
         _reading(sample, "grating_frequency", "cy/px", f, u_f, _whole_codes(code_f)),
         _reading(sample, "grating_direction", "deg", direction, degrees(u_turn / f), turned),
         _reading(sample, "grating_phase", "deg", phase, degrees(fit.phase_u), _whole_codes(degrees(whole.phase))),
@@ -239,14 +250,14 @@ def _whole_codes(u: float) -> tuple[Component, ...]:
     return (Component("rounding", u, "B"),) if u > 0 else ()
 
 
-def _transfer(sample: Sample, modulation: float, u: float, whole: Rounding, options: Options) -> Reading:
+def _transfer(sample: Sample, modulation: float, u: float, bias: float, whole: Rounding, options: Options) -> Reading:
     if not isinstance(options.target_modulation, float):
         because = "the spec does not state the target's own modulation: grating response: {target_modulation: …}"
         return _refused(sample, "modulation_transfer", "1", Refusal("not defined", because))
     own, own_u = options.target_modulation, float(options.target_modulation_uncertainty)
     value = modulation / own
     chart = Component("target's modulation", value * own_u / own, "B", shared="target's modulation")
-    more = (*_bias(BIAS * value), *_whole_codes(whole.modulation * value), chart)
+    more = (*_bias(bias * value), *_whole_codes(whole.modulation * value), chart)
     return _reading(sample, "modulation_transfer", "1", value, u / own, more)
 
 

@@ -33,6 +33,8 @@ SETTLED = 1e-10
 """Correction, in periods over the patch, at which the frequency stands."""
 MOST_POWER = 4
 """Highest power of x or y in a product of two terms: backgrounds are of order 2 at most."""
+BENT = 30.0
+"""Chi-squared of three degrees of freedom from which stripes are bent: noise reaches it with odds of 1e-6."""
 PROBES = 12
 """Frequencies around the fundamental at which the residual is looked at, for noise that is not white."""
 
@@ -85,6 +87,10 @@ class GratingFit:
     """Power of the residual around the fundamental over that of white noise of the same rms, at least 1."""
     count: int
     """Pixels."""
+    bend: float = 0.0
+    """Rms departure of the stripes from straight and even ones, rad of their phase; 0 where none stands out."""
+    lost: float = 0.0
+    """Share of the fundamental's amplitude that one frequency misses for it; put back into `amplitudes`."""
 
 
 class GratingLost(ArithmeticError):
@@ -147,12 +153,15 @@ def _read_out(sums: "_Sums", solution: "_Solution", harmonics: int) -> GratingFi
     first = terms.index(Term(0, 0, 1))
     c = solution.coefficients[first]
     excess = solution.excess()
-    amplitudes = np.full(harmonics, np.nan + 0j)
+    amplitudes: Complex = np.full(harmonics, np.nan + 0j, dtype=np.complex128)
     amplitude_u = np.full(harmonics, np.nan)
     for j, term in enumerate(terms):
         if term.h >= 1 and term.a == term.b == 0:
             amplitudes[term.h - 1] = solution.coefficients[j]
             amplitude_u[term.h - 1] = np.sqrt(excess * _along(solution, j))
+    bend, kept = _bend(sums, solution, harmonics)
+    amplitudes /= kept
+    amplitude_u /= kept
     across = np.array([-c.imag, c.real]) / abs(c)
     block = cov[np.ix_(solution.columns(first), solution.columns(first))]
     # a gradient in quadrature of size q over the half patch is a frequency of q / (2π |c| half)
@@ -173,7 +182,33 @@ def _read_out(sums: "_Sums", solution: "_Solution", harmonics: int) -> GratingFi
         noise=solution.noise,
         excess=excess,
         count=sums.count,
+        bend=bend,
+        lost=1 - float(kept[0]),
     )
+
+
+def _bend(sums: "_Sums", solution: "_Solution", harmonics: int) -> tuple[float, Real]:
+    """Return how far stripes bend over the patch, and what share of each harmonic a single frequency keeps.
+
+    A lens's distortion or a tilted target makes the phase a curved function of place. Second-order terms of the
+    fundamental, in quadrature to it, are that curvature; a wave whose phase departs by φ keeps |mean of e^{ihφ}|.
+    """
+    wide = _Solution(sums, [*solution.terms, Term(2, 0, 1), Term(1, 1, 1), Term(0, 2, 1)], solution.u)
+    c = wide.coefficients[wide.terms.index(Term(0, 0, 1))]
+    curved = (wide.coefficients[-3:] / c).imag
+    places = [wide.columns(len(wide.terms) + k) for k in (-3, -2, -1)]
+    turn = np.array([-c.imag, c.real]) / abs(c) ** 2
+    spread = np.array([[turn @ wide.covariance[np.ix_(i, j)] @ turn for j in places] for i in places])
+    if float(curved @ np.linalg.pinv(spread, hermitian=True) @ curved) < BENT and wide.noise > 0:
+        return 0.0, np.ones(harmonics)
+    x, y = sums.grid()
+    first = wide.terms.index(Term(0, 0, 1))
+    waves = [*wide.coefficients[first : first + 3], *wide.coefficients[-3:]]
+    phase = np.angle(np.array(waves) / c @ np.stack([np.ones_like(x), x, y, x * x, x * y, y * y]))
+    straight = np.stack([np.ones_like(x), x, y], axis=1)
+    phase -= straight @ np.linalg.lstsq(straight, phase, rcond=None)[0]
+    kept = [abs(complex(np.mean(np.exp(1j * h * phase)))) for h in range(1, harmonics + 1)]
+    return float(np.sqrt(np.mean(phase**2))), np.array(kept)
 
 
 def _along(solution: "_Solution", term: int) -> float:
@@ -197,6 +232,12 @@ class _Sums:
         self._lattices = [(one.values - self.mean, one.x / self.half, one.y / self.half) for one in lattices]
         self._powers = [[[r**k for k in range(MOST_POWER + 1)] for r in (x, y)] for _, x, y in self._lattices]
         self.power = sum(float(np.vdot(v, v)) for v, _, _ in self._lattices)
+
+    def grid(self) -> tuple[Real, Real]:
+        """Return places spread evenly over the patch, in half patches."""
+        ends = [max(float(np.abs(one[k]).max()) for one in self._lattices) for k in (1, 2)]
+        x, y = np.meshgrid(*(np.linspace(-end, end, 41) for end in ends))
+        return x.ravel(), y.ravel()
 
     def apart(self, u: Real, v: Real) -> float:
         """Return how far two frequencies lie apart, periods over the patch, folding by the lattices' grid undone."""

@@ -213,3 +213,14 @@ def test_options_are_held_to_their_meaning(options: dict[str, Any], words: str) 
     """A share above the whole, another unit, an order beyond two and an unknown key are told."""
     with pytest.raises(UsageError, match=words):
         grating_response.read_options(options)
+
+
+def test_stripes_that_bend_too_far_are_refused() -> None:
+    """A chart seen through strong distortion: a large region is refused with the way out, a small one is measured."""
+    x = np.arange(120) - 59.5
+    phase = 2 * np.pi * 0.09 * x * (1 + 0.15 * x / 120)
+    light = 0.5 + 0.3 * np.cos(phase)[None, :] * np.ones((100, 1))
+    frame = Frame("s.tif", "", "", np.round(65535 * light).astype(np.uint16))
+
+    with pytest.raises(MeasurementRefused, match="take a smaller region"):
+        _measure(frame)

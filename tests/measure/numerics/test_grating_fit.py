@@ -131,3 +131,28 @@ def test_a_start_far_off_is_told() -> None:
     x = np.arange(-19.5, 20)
     with pytest.raises(GratingLost, match=r"did not settle near 0\.1000, 0\.1000 cy/px"):
         fit_grating([Lattice(np.full((40, 40), 0.5), x, x)], (0.1, 0.1))
+
+
+@pytest.mark.parametrize(("chirp", "bow"), [(0.02, 0.0), (-0.04, 0.0), (0.0, 0.2), (0.02, -0.2)])
+def test_bent_stripes_lose_nothing_that_is_not_put_back(chirp: float, bow: float) -> None:
+    """A scale that changes over the patch, or stripes that bow: the amplitude lies within a tenth of what was lost."""
+    x, y = np.arange(-99.5, 100), np.arange(-79.5, 80)
+    across, down = np.meshgrid(x, y)
+    phase = 2 * np.pi * 0.06 * (across * (1 + chirp * across / 200) + bow * down**2 / 640)
+    fit = fit_grating([Lattice(0.5 + 0.3 * np.cos(phase), x, y)], (0.06, 0.0001))
+
+    assert fit.bend > 0.05
+    assert abs(abs(fit.amplitudes[0]) / 0.3 - 1) < 0.1 * fit.lost + 2e-4
+
+
+def test_noise_does_not_bend_straight_stripes() -> None:
+    """Of 100 straight gratings in noise none is taken for bent."""
+    rng = np.random.default_rng(6)
+    x = np.arange(-39.5, 40)
+    turn = 2 * np.pi * (0.07 * x[None, :] + 0.03 * x[:, None])
+    fits = [
+        fit_grating([Lattice(0.5 + 0.2 * np.cos(turn) + rng.normal(0, 0.02, (80, 80)), x, x)], (0.07, 0.03))
+        for _ in range(100)
+    ]
+
+    assert max(fit.bend for fit in fits) == 0.0
