@@ -45,8 +45,8 @@ MEANINGS = (
     _high("adds bands", "row_banding", "column_banding"),
     _high(
         "has too many defects",
-        *("hot_pixels", "dead_pixels", "stuck_pixels", "dim_pixels", "bright_pixels", "blinking_pixels"),
-        *("blemishes", "clusters", "largest_cluster", "defective_columns", "defective_rows"),
+        *("hot_pixels*", "dead_pixels*", "stuck_pixels*", "dim_pixels*", "bright_pixels*", "blinking_pixels*"),
+        *("blemishes*", "clusters*", "largest_cluster*", "defective_columns*", "defective_rows*"),
     ),
     _high(
         "is too noisy",

@@ -126,8 +126,10 @@ def spot_facts(document: Mapping[str, Any]) -> tuple[tuple[tuple[str, str, str, 
 def _counted(spot: Mapping[str, Any], checks: Sequence[Mapping[str, Any]]) -> bool:
     """Tell whether a count that a spot enters is among what does not conform or cannot be decided."""
     mine = [c for c in checks if all(c[key] == spot[key] for key in ("capture", "attempt", "channel"))]
-    counts = {spot["kind"].replace(" ", "_") + ending for ending in ("s", "es")}
-    return any(c["quantity"] in counts and c["where"] == spot["region"] and c["verdict"] in TROUBLE for c in mine)
+    counts = tuple(spot["kind"].replace(" ", "_") + ending for ending in ("s", "es"))  # or those of a zone
+    return any(
+        c["quantity"].startswith(counts) and c["where"] == spot["region"] and c["verdict"] in TROUBLE for c in mine
+    )
 
 
 def _where(one: Mapping[str, Any], document: Document) -> str:

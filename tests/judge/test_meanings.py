@@ -25,6 +25,7 @@ PLANNED = {"texture_mtf*", "texture_acutance*", "colour_difference*", "contrast_
         ("row_banding", "does not meet the requirement", "adds bands"),
         ("row_banding_frequency", "does not meet the requirement", "does not meet the requirement"),
         ("defective_columns", "does not meet the requirement", "has too many defects"),
+        ("hot_pixels_centre", "does not meet the requirement", "has too many defects"),
         ("snr_temporal", "is too noisy", "does not meet the requirement"),
         ("temporal_noise", "does not meet the requirement", "is too noisy"),
         ("best_focus", "is not focused as asked", "is not focused as asked"),

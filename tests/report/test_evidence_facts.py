@@ -194,7 +194,7 @@ def test_spots_of_a_failing_count_come_first() -> None:
     spots = [at | {"kind": kind} for kind in [*["bright pixel"] * 50, "blemish", "dead pixel", "defective column"]]
     check = {"capture": "flat", "attempt": 1, "channel": "mono", "where": "", "verdict": "does not conform"}
     checks = [
-        check | {"quantity": "defective_columns"},
+        check | {"quantity": "defective_columns_centre"},
         check | {"quantity": "blemishes", "verdict": "cannot decide"},
         check | {"quantity": "dead_pixels", "capture": "dark"},
         check | {"quantity": "bright_pixels", "verdict": "conforms"},
