@@ -134,7 +134,7 @@ def test_counts_are_never_judged_by_a_normal_u() -> None:
 
 
 def test_an_exact_binomial_bound_is_clopper_pearsons() -> None:
-    """CV-241: no defect in 22 has the one-sided upper bound 0.127305 at 95 % (Clopper and Pearson 1934)."""
+    """No defect in 22 has the one-sided upper bound 0.127305 at 95 % (Clopper and Pearson 1934)."""
     just_above, just_below = (Limits(None, 22 * p, GUARDED_ACCEPTANCE, 0.95) for p in (0.12731, 0.12730))
 
     assert decide_count(0, 22, "binomial", just_above)[0] == YES

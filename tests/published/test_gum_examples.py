@@ -11,7 +11,7 @@ from runner.measure.uncertainty import Input, combined_u, coverage_factor, effec
 
 
 def test_gum_h1_end_gauge() -> None:
-    """CV-200, GUM H.1: u_c = 32 nm, 16 effective degrees of freedom, t99 = 2.92, U99 = 93 nm."""
+    """GUM H.1: u_c = 32 nm, 16 effective degrees of freedom, t99 = 2.92, U99 = 93 nm."""
     budget = {"standard": (25.0, 18), "comparator": (5.8, 24), "random": (3.9, 5), "systematic": (6.7, 8)}
     budget |= {"expansion": (2.887, 50), "temperature": (16.599, 2)}
     parts = [Component(name, u, "B", dof) for name, (u, dof) in budget.items()]
@@ -25,7 +25,7 @@ def test_gum_h1_end_gauge() -> None:
 
 
 def test_gum_h2_correlated_inputs() -> None:
-    """CV-201, GUM H.2: resistance, reactance and impedance from correlated readings (raw data from memory)."""
+    """GUM H.2: resistance, reactance and impedance from correlated readings (raw data from memory)."""
     volts = np.array([5.007, 4.994, 5.005, 4.990, 4.999])
     amps = np.array([19.663, 19.639, 19.640, 19.685, 19.678]) / 1000
     phase = np.array([1.0456, 1.0438, 1.0468, 1.0428, 1.0433])
@@ -52,7 +52,7 @@ def test_gum_table_g2() -> None:
 
 
 def test_jcgm_101_four_rectangular_inputs() -> None:
-    """CV-205, JCGM 101:2008 9.2.3: the sum of four rectangular inputs has u = 2.0 and the 95 % interval ±3.88."""
+    """JCGM 101:2008 9.2.3: the sum of four rectangular inputs has u = 2.0 and the 95 % interval ±3.88."""
     out = propagate(lambda x: x.sum(axis=0), [Input(0.0, 1.0, shape="rectangular")] * 4)
     low, high = out.interval(0.95)
 
@@ -65,7 +65,7 @@ def test_jcgm_101_four_rectangular_inputs() -> None:
     [(0.0, 50, 50, (0, 149.8)), (0.010, 150, 111.8, (2.0, 366.0)), (0.050, 2550, 502.5, (1594, 3549))],
 )
 def test_jcgm_101_comparison_loss(x1: float, mean: float, sd: float, shortest: tuple[float, float]) -> None:
-    """CV-206, JCGM 101:2008 9.4: a sum of squares near its floor, where the first order fails (values × 1e-6)."""
+    """JCGM 101:2008 9.4: a sum of squares near its floor, where the first order fails (values × 1e-6)."""
     out = propagate(lambda x: (x[0] ** 2 + x[1] ** 2) * 1e6, [Input(x1, 0.005), Input(0.0, 0.005)])
 
     assert out.mean == pytest.approx(mean, rel=0.015)

@@ -9,13 +9,13 @@ from tests.scenes.line_spreads import Boxes, Exponential, Gaussian, Pupil, Sharp
 
 
 def test_square_pixel_at_an_angle() -> None:
-    """A pixel alone transfers sinc(f cos t) sinc(f sin t): the values of CV-14 (geometry), tol 1e-6."""
+    """A pixel alone transfers sinc(f cos t) sinc(f sin t): closed form of geometry, tol 1e-6."""
     pixel = EdgeScene(optics=Boxes(()), direction=5)
     assert pixel.mtf([0.1, 0.25, 0.5]) == pytest.approx([0.983632, 0.900347, 0.637046], abs=1e-6)
 
 
 def test_pixel_along_an_axis() -> None:
-    """Along an axis the pixel is sinc(f): values of CV-27, and CV-28 for half the area filled, tol 1e-6."""
+    """Along an axis the pixel is sinc(f), also for half the area filled: closed forms, tol 1e-6."""
     pixel = EdgeScene(optics=Boxes(()), direction=0)
     f = [0.1, 0.2, 0.25, 0.3, 0.4, 0.5, 0.75]
     assert pixel.mtf(f) == pytest.approx(
@@ -31,7 +31,7 @@ def test_pixel_along_an_axis() -> None:
     [(0.5, 0.32309, 0.58128, 0.18539), (0.7, 0.24711, 0.44859, 0.05672), (1.0, 0.17996, 0.32766, 0.00458)],
 )
 def test_gaussian_through_pixel(sigma: float, mtf50: float, mtf10: float, nyquist: float) -> None:
-    """A Gaussian through a pixel has the crossings of CV-15 (closed form), tol 1e-5."""
+    """A Gaussian through a pixel has the crossings of the closed form, tol 1e-5."""
     scene = EdgeScene(optics=Gaussian(sigma), direction=0)
     assert scene.mtf50() == pytest.approx(mtf50, abs=1e-5)
     assert scene.mtf_crossing(0.1) == pytest.approx(mtf10, abs=1e-5)
@@ -39,7 +39,7 @@ def test_gaussian_through_pixel(sigma: float, mtf50: float, mtf10: float, nyquis
 
 
 def test_defocus_reverses_contrast() -> None:
-    """At W20 = 0.75 waves and s = 0.4 the transfer is -0.03734 (CV-26): modulus 0.0373, phase 180 degrees."""
+    """At W20 = 0.75 waves and s = 0.4 the transfer is -0.03734: modulus 0.0373, phase 180 degrees."""
     value = Pupil(1.0, defocus=0.75).transfer(0.4)
     assert value.real == pytest.approx(-0.03734, abs=1e-4)
     assert abs(np.degrees(np.angle(value))) == pytest.approx(180, abs=1e-6)

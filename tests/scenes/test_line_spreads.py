@@ -97,7 +97,7 @@ def test_diffraction_tail_reaches_far() -> None:
 
 
 def test_defocus_table() -> None:
-    """The pupil autocorrelation reproduces the defocus table CV-60 (1-D integral after Hopkins 1955), tol 1e-5."""
+    """The pupil autocorrelation reproduces the defocus table (1-D integral after Hopkins 1955), tol 1e-5."""
     table = {
         0.25: (0.83886, 0.65858, 0.50157, 0.37942, 0.28747, 0.21529, 0.15249, 0.09239, 0.03603),
         1.0: (0.42665, -0.01441, -0.06952, -0.03689, -0.02007, -0.01904, -0.01730, 0.00203, 0.01949),

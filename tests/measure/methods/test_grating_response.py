@@ -61,7 +61,7 @@ def test_noiseless_gratings(periods: float, direction: float) -> None:
 
 
 def test_the_transfer_is_the_pixels_sinc() -> None:
-    """A perfect lens leaves the pixel's aperture: 0.9003 at 0.25 cy/px, 0.9836 at 0.1 (sinc f, CV-27).
+    """A perfect lens leaves the pixel's aperture: 0.9003 at 0.25 cy/px, 0.9836 at 0.1 (sinc f).
 
     The frequencies lie a hair off, so that no harmonic falls onto the sine.
     """

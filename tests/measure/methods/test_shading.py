@@ -67,7 +67,7 @@ def test_closed_forms_of_lenses(scene: Shading) -> None:
 
 
 def test_cosine_fourth_at_the_corner() -> None:
-    """Published values of cos⁴: 0.779728 at 20 degrees, 0.562500 at 30 (methods: CV-120), within 0.3 %.
+    """Published values of cos⁴: 0.779728 at 20 degrees, 0.562500 at 30, within 0.3 %.
 
     A corner block's middle lies short of the corner by half its width: 20 and 40 blocks a side are taken on to none.
     """

@@ -18,7 +18,7 @@ from tests.scenes.stars import StarScene
 
 @pytest.mark.parametrize("centre", [(160.3, 149.8), (157.3, 152.8), (163.0, 147.0)])
 def test_the_transfer_within_0005_with_the_centre_off(centre: tuple[float, float]) -> None:
-    """Blur of 0.5 px and pixel (CV-15 of Gaussian × sinc) within 0.005 at 0.1 to 0.45 cy/px, up to 3 px off centre.
+    """Blur of 0.5 px and pixel (Gaussian × sinc) within 0.005 at 0.1 to 0.45 cy/px, up to 3 px off centre.
 
     Without noise 0.001 is held too: codes of 16 bit leave 1e-5. MTF50 of blur and pixel along the rows is 0.32309.
     """

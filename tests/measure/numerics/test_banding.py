@@ -26,7 +26,7 @@ def test_a_line_of_a_third_of_the_noise(frequency: float) -> None:
 
 
 def test_power_of_a_line_over_that_of_noise() -> None:
-    """Amplitude 0.5 at an exact bin in noise 2 averaged over 1024 rows: A² N/(4 σ²) = 16384 (methods: CV-125), ±5 %.
+    """Amplitude 0.5 at an exact bin in noise 2 averaged over 1024 rows: A² N/(4 σ²) = 16384, ±5 %.
 
     The noise's level that the lines are held against is the larger of two medians, of 512 and of 64 ordinates: up to
     a tenth more.

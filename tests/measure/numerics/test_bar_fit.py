@@ -27,7 +27,7 @@ def test_contrast_is_the_closed_form(f: float, turn: float, sigma: float) -> Non
 
 @pytest.mark.parametrize("f", [0.08, 0.19, 0.33, 0.47])
 def test_a_pixel_alone_leaves_the_contrast(f: float) -> None:
-    """Square pixels blur no bar that is wider than they are: C = 1 up to 0.5 cy/px, M = sinc f (CV-32).
+    """Square pixels blur no bar that is wider than they are: C = 1 up to 0.5 cy/px, M = sinc f.
 
     Harmonics beyond the last leave steps, 1/k² in size: 1 % of 60 % is allowed, twice that where only four are fitted.
     """

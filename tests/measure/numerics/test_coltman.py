@@ -38,7 +38,7 @@ def test_signs_are_coltmans() -> None:
 
 
 def test_the_series_undoes_a_round_pupils_square_wave_response() -> None:
-    """C of a round pupil at s = 0.05 to 0.7 (CV-30, closed form) converts back to its M within 1e-6."""
+    """C of a round pupil at s = 0.05 to 0.7 (closed form) converts back to its M within 1e-6."""
     s = np.array([0.05, 0.1, 0.2, 0.3, 0.5, 0.7])
     printed = [0.959716, 0.917271, 0.830332, 0.778428, 0.497839, 0.239522]
     points = np.linspace(0.01, 1.0, 100)
@@ -49,7 +49,7 @@ def test_the_series_undoes_a_round_pupils_square_wave_response() -> None:
 
 
 def test_beyond_a_third_of_the_end_it_is_four_over_pi() -> None:
-    """Only the first term is left for s > 1/3: C/M = 4/π exactly (CV-31)."""
+    """Only the first term is left for s > 1/3: C/M = 4/π exactly."""
     s = np.array([0.34, 0.5, 0.9])
 
     assert _contrast(s, 1.0) / _pupil(s) == pytest.approx(np.full(3, 4 / np.pi), abs=1e-6)

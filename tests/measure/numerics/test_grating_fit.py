@@ -48,7 +48,7 @@ def test_a_harmonic_that_folds_onto_the_fundamental_is_left_out() -> None:
 
 
 def test_a_shift_turns_the_phase() -> None:
-    """Shift theorem: 0.25 px along the normal at 0.25 cy/px is 22.5°, at 0.1 cy/px 9° (methods: CV-25)."""
+    """Shift theorem: 0.25 px along the normal at 0.25 cy/px is 22.5°, at 0.1 cy/px 9°."""
     for f, degrees in ((0.2501, 22.509), (0.1, 9.0)):
         still = GratingScene((90, 70), (f, 0.0))
         moved = GratingScene((90, 70), (f, 0.0), phase=-2 * np.pi * f * 0.25)

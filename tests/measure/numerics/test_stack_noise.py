@@ -10,7 +10,7 @@ PARTS = ("total", "pixel", "row", "column")
 
 
 def test_eight_frames_of_known_noise() -> None:
-    """ISO 15739 formulas: σ_temp 3, σ_fp 1, n = 8, 512² px give 3.000 ± 0.01 and 1.000 ± 0.01 (methods: CV-100).
+    """ISO 15739 formulas: σ_temp 3, σ_fp 1, n = 8, 512² px give 3.000 ± 0.01 and 1.000 ± 0.01.
 
     Taking the spread of the mean frame as the fixed pattern would give √(1 + 9/8) = 1.4577.
     """

@@ -51,7 +51,7 @@ def test_reversed_contrast_is_no_error_of_the_geometry() -> None:
 
 @pytest.mark.parametrize(("offset", "kept"), [(0.1, 0.97548), (0.25, 0.85163), (0.5, 0.47200)])
 def test_a_centre_that_is_off_costs_what_the_law_says(offset: float, kept: float) -> None:
-    """Phases of a geometry that is off by ε lose J0(2π f ε) over a circle (Birch and Griffin 2015; CV-21 at 0.5).
+    """Phases of a geometry that is off by ε lose J0(2π f ε) over a circle (Birch and Griffin 2015 at 0.5).
 
     The circle is read where f is 0.5 cy/px, without any picture; 1e-4 is the printed digits'.
     """

@@ -18,7 +18,7 @@ def _projector(columns: list[Values]) -> Values:
 
 
 def test_the_split_of_the_standard() -> None:
-    """EMVA 1288 Release 4.0 Linear: 480 × 640 px with column, row and pixel variance 4, 1, 9 (methods: CV-115)."""
+    """EMVA 1288 Release 4.0 Linear: 480 × 640 px with column, row and pixel variance 4, 1, 9."""
     c, r, t = 4 + 9 / 480, 1 + 9 / 640, 4.0 + 1 + 9
 
     assert (c, r) == pytest.approx((4.01875, 1.0140625), abs=1e-12)
