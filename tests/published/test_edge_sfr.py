@@ -75,7 +75,7 @@ def test_noiseless_chain(direction: float, sigma: float, most: float) -> None:
     [(0.5, 0.32309, 0.58128, 0.18539), (0.7, 0.24711, 0.44859, 0.05672), (1.0, 0.17996, 0.32766, 0.00458)],
 )
 def test_gaussian_with_a_square_pixel(sigma: float, mtf50: float, mtf10: float, at_nyquist: float) -> None:
-    """A blur and a pixel, exp(-2π²σ²f²) sinc f, read back from rendered edges by the program's own estimator (closed form).
+    """Closed form of a blur and a pixel, exp(-2π²σ²f²) sinc f, read back from rendered edges by the own estimator.
 
     The table is for an upright edge; at 2° from it the pixel's sides differ by 6e-4, far below 0.2 % and 1e-3.
     """
