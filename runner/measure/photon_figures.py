@@ -10,7 +10,7 @@ import numpy as np
 
 from runner.errors import MeasurementRefused
 from runner.measure.numerics import photon_transfer as law
-from runner.measure.photon_levels import SOME, Dark, Point, correlation
+from runner.measure.photon_levels import SOME, Dark, Point, Unevenness, correlation
 from runner.measure.photon_results import Figure, Transfer, beyond, dark_current, linearity, pattern, propagated
 from runner.measure.reading import Component
 
@@ -112,12 +112,18 @@ def patterns(of: Transfer, half: Point, uneven: float, shading_order: int) -> Fi
     }
 
 
-def spread_of_light(half: Point, uneven: float) -> Figure:
-    """Return how uneven the light is; blocks hold a thousand pixels, and the span is of the two farthest."""
-    noise = sqrt(half.variance + half.pattern**2) / half.signal
-    size = half.frames.crops[0].codes.size
-    u = noise * sqrt(2 * min(64, max(1, size // 1000)) / size)
-    return Figure(100 * uneven, (Component("noise", 100 * u, "A"),))
+def spread_of_light(light: Unevenness) -> Figure:
+    """Return how uneven the light is, in %; a bound where noise of the blocks alone would give half of it.
+
+    Raises:
+        MeasurementRefused: The region is too small for blocks.
+    """
+    if light.blocks < 2:
+        raise MeasurementRefused("outside the estimator's limits", "the region has fewer than 4000 pixels of its own")
+    u = 100 * sqrt(2) * light.noise
+    if light.span < 2 * light.by_noise:
+        return Figure(None, bound=("below", 100 * light.span + 2 * u))
+    return Figure(100 * light.span, (Component("noise", u, "A"),))
 
 
 def departure(of: Transfer) -> Figure:

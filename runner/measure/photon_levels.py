@@ -8,6 +8,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from itertools import pairwise
 from math import hypot, sqrt
+from statistics import NormalDist
 from typing import Any
 
 import numpy as np
@@ -302,8 +303,25 @@ def _refuse_mixed(found: Sequence[Point]) -> None:
         )
 
 
-def unevenness(point: Point) -> float:
-    """Return how far the light of a level varies over the field: greatest less least block mean, over the mean.
+@dataclass(frozen=True)
+class Unevenness:
+    """How far light varies over a field."""
+
+    span: float
+    """Greatest less least block mean, over the mean."""
+    noise: float
+    """Standard deviation of a block's mean from temporal noise, over the mean."""
+    blocks: int
+    """Number of blocks."""
+
+    @property
+    def by_noise(self) -> float:
+        """What noise alone gives on average: the span of so many normal values (G. Blom, 1958)."""
+        return 2 * self.noise * NormalDist().inv_cdf((self.blocks - 0.375) / (self.blocks + 0.25))
+
+
+def unevenness(point: Point) -> Unevenness:
+    """Return how far the light of a level varies over the field.
 
     Blocks hold a thousand pixels at least, so that noise counts little; there are 8 × 8 at most.
     """
@@ -315,7 +333,8 @@ def unevenness(point: Point) -> float:
     for top, bottom in pairwise(y):
         strip = values[top:bottom]
         means.append([float(strip[:, left:right].mean(dtype=np.float64)) for left, right in pairwise(x)])
-    return float(np.ptp(means)) / point.signal
+    noise = sqrt(point.variance * across**2 / values.size)
+    return Unevenness(float(np.ptp(means)) / point.signal, noise / point.signal, across**2)
 
 
 def correlation(point: Point) -> tuple[float, float]:

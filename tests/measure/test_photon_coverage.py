@@ -25,12 +25,14 @@ TIMES = (0.01, 0.3, 0.6, 0.9, 1.2, 1.5)
 """Exposure times of the darks, s."""
 PHOTONS_U = 0.03
 """Standard uncertainty of the calibrated detector."""
+EFFICIENCY = 0.6
+"""Electrons for one photon."""
 LAMP = 0.0004
 """Drift of the lamp from frame to frame, as a share."""
 UNSHAPED = ("saturation_capacity", "snr_max", "dynamic_range_emva1288", "dynamic_range_emva1288_bits")
 """Quantities in which the bound on saturation's shape dominates: no upper end."""
-SIZES = (*UNSHAPED, "linearity_error_emva1288")
-"""And the one in which noise only adds."""
+SIZES = (*UNSHAPED, "linearity_error_emva1288", "light_unevenness")
+"""And those in which noise only adds."""
 
 
 def _series(sensor: Sensor, levels: np.ndarray, rng: np.random.Generator) -> list[Shot]:
@@ -70,11 +72,24 @@ def _truth(sensor: Sensor, levels: np.ndarray) -> dict[str, float]:
         "dark_current": DARK_CURRENT,
         "dark_current_from_variance": DARK_CURRENT,
     }
+    fitted = bent <= 0.7 * full
+    share = EFFICIENCY * float(np.mean(bent[fitted] / light[fitted]))  # of the response's slope, which bends
+    found |= {"quantum_efficiency": 100 * share, "absolute_sensitivity_threshold_photons": least / share}
+    half = sensor.prnu.all[: sensor.shape[0], : sensor.shape[1]] + sensor.dsnu.all / (full / 2)
+    found["light_unevenness"] = 100 * _span(1 + half)
     for part in ("total", "row", "column", "pixel"):
         end = "" if part == "total" else f"_{part}"
         found[f"dsnu1288{end}"] = sensor.dsnu.spread(part)
         found[f"prnu1288{end}"] = 100 * sensor.prnu.spread(part)
     return found
+
+
+def _span(light: np.ndarray) -> float:
+    """Return the span of block means of a thousand pixels or more."""
+    count = int(np.sqrt(light.size / 1000))
+    rows = np.array_split(light, count)
+    means = [float(block.mean()) for row in rows for block in np.array_split(row, count, axis=1)]
+    return max(means) - min(means)
 
 
 def coverage(draws: int, shape: tuple[int, int], seed: int) -> dict[str, tuple[float, float, float | None]]:
@@ -86,7 +101,12 @@ def coverage(draws: int, shape: tuple[int, int], seed: int) -> dict[str, tuple[f
         sensor = replace(CAMERAS[kind], seed=1000 * seed + draw, shape=shape, dark_current=DARK_CURRENT)
         rng = np.random.default_rng([seed, draw])
         levels = np.arange(1, LEVELS[kind] + 1) / LEVELS[kind]
-        found = measure(_series(sensor, levels, rng), unlit(sensor, rng, repeats=3, times=TIMES))
+        told = 1.15 * sensor.well / EFFICIENCY * (1 + PHOTONS_U * rng.standard_normal())
+        found = measure(
+            _series(sensor, levels, rng),
+            unlit(sensor, rng, repeats=3, times=TIMES),
+            options={"photons": told, "photons_u": PHOTONS_U},
+        )
         for name, planted in _truth(sensor, levels).items():
             reading = found[name]
             assert reading.refusal is None, reading

@@ -109,8 +109,13 @@ def test_uneven_light_and_filtered_noise_are_told() -> None:
     (one,) = _points(shots, without)
     blocks = int(np.sqrt(200 * 256 / 1000))
 
-    assert unevenness(one) == pytest.approx(0.1 * (1 - 1 / blocks), rel=0.06)
+    assert unevenness(one).span == pytest.approx(0.1 * (1 - 1 / blocks), rel=0.06)
     assert max(map(abs, correlation(one))) < 0.02
+    even = [Shot(large.frame(5000.0, rng), {"level": "1", "repeat": n}) for n in "12"]
+    spans = [unevenness(point) for point in _points(even, without)]
+    assert [s.blocks for s in spans] == [blocks**2]
+    assert spans[0].noise == pytest.approx(np.sqrt(5025) / 5000 * blocks / np.sqrt(200 * 256), rel=0.05)
+    assert 0.4 < spans[0].span / spans[0].by_noise < 1.8  # the span of 49 normal values scatters by 16 % about its mean
     soft = [replace(s, codes=np.round(ndimage.uniform_filter(s.codes.astype(float), 3))) for s in shots]
     assert correlation(_points(soft, without)[0]) == pytest.approx((2 / 3, 2 / 3), abs=0.03)
 

@@ -17,7 +17,7 @@ from runner.measure import photon_figures as figures
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.light_levels import LevelFrames, Series, series
 from runner.measure.options import number, read_record
-from runner.measure.photon_levels import Dark, Point, correlation, darks, points, unevenness
+from runner.measure.photon_levels import Dark, Point, Unevenness, correlation, darks, points, unevenness
 from runner.measure.photon_results import Transfer, linearity, transfer
 from runner.measure.reading import Curve, Reading, Refusal
 from runner.spec.units import parse_amount, spell
@@ -45,7 +45,11 @@ MOST_ALIKE = 0.35
 Scintillators, crosstalk and slow amplifiers give up to 0.25; the gain then reads low, which is said.
 """
 
-_WORDS = {"_row": "common to a row", "_column": "common to a column", "_pixel": "of single pixels"}
+_WORDS = {
+    "_row": "that is common to a row",
+    "_column": "that is common to a column",
+    "_pixel": "that single pixels have",
+}
 _QUANTITIES: dict[str, QuantityInfo] = {
     "system_gain": QuantityInfo("DN/e-", "Codes for one electron: slope of variance over mean.", least=0.0),
     "temporal_dark_noise": QuantityInfo("e-", "Noise of darks from frame to frame, rounding taken off.", least=0.0),
@@ -78,11 +82,13 @@ _QUANTITIES: dict[str, QuantityInfo] = {
 for _end in figures.PARTS:
     _words = _WORDS.get(_end)
     _QUANTITIES[f"dsnu1288{_end}"] = QuantityInfo(
-        "e-", f"Part of it {_words}." if _words else "Pattern of darks over the field, standard deviation.", least=0.0
+        "e-",
+        f"Part of dsnu1288 {_words}." if _words else "Pattern of darks over the field, standard deviation.",
+        least=0.0,
     )
     _QUANTITIES[f"prnu1288{_end}"] = QuantityInfo(
         "%",
-        f"Part of it {_words}." if _words else "Pattern of the response at half of saturation, over the signal.",
+        f"Part of prnu1288 {_words}." if _words else "Pattern of the response at half of saturation, over the signal.",
         least=0.0,
     )
 _ONLY_ASKED = (
@@ -235,13 +241,13 @@ def _half(of: Transfer) -> Point:
     return min(lit, key=lambda one: abs(one.signal - of.top / 2))
 
 
-def _refuse_foreign(half: Point) -> float:
+def _refuse_foreign(half: Point) -> Unevenness:
     """Refuse frames that hold no even field or are not the sensor's own; return how uneven the light is."""
     uneven = unevenness(half)
-    if uneven > MOST_UNEVEN:
+    if uneven.span > MOST_UNEVEN:
         raise MeasurementRefused(
             "uneven",
-            f"at {half.label} the light varies by {100 * uneven:.0f} % over the field",
+            f"at {half.label} the light varies by {100 * uneven.span:.0f} % over the field",
             allowed=f"{100 * figures.EVEN:g} % for EMVA 1288, {100 * MOST_UNEVEN:g} % at most",
             next_step="light the bare sensor evenly, or choose a smaller region",
         )
@@ -257,14 +263,14 @@ def _refuse_foreign(half: Point) -> float:
 
 
 def _readings(
-    sample: Sample, of: Transfer, half: Point, without: tuple[Dark, ...], uneven: float, options: Options
+    sample: Sample, of: Transfer, half: Point, without: tuple[Dark, ...], uneven: Unevenness, options: Options
 ) -> Iterator[Reading]:
     asked = {one.quantity for one in sample.wanted}
     given: figures.Figures = {
         **figures.electrons(of),
-        **figures.patterns(of, half, uneven, options.shading_order),
+        **figures.patterns(of, half, uneven.span, options.shading_order),
         "linearity_error_emva1288": lambda: figures.departure(of),
-        "light_unevenness": lambda: figures.spread_of_light(half, uneven),
+        "light_unevenness": lambda: figures.spread_of_light(uneven),
         **figures.photons(of, options.photons, options.photons_u),
         "dark_current": lambda: figures.rise_in_darkness(of, without, by_variance=False),
         "dark_current_from_variance": lambda: figures.rise_in_darkness(of, without, by_variance=True),
