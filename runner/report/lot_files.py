@@ -27,7 +27,7 @@ def write_lot_files(out: Path, spec: Spec, facts: RunFacts, unused: tuple[str, .
         unused: Files and folders that no pattern used.
     """
     known: dict[str, str] = {}
-    parts = (_needed(document, known) for document in store.each_result(out, spec.digest))
+    parts = (_needed(document, known) | {"spec": spec.expanded} for document in store.each_result(out, spec.digest))
     documents = sorted(parts, key=lambda d: str(d["unit"]["serial"]))
     document = {"number": spec.document.number, "revision": spec.document.revision, "digest": spec.digest}
     lot: dict[str, Any] = dict(judge_lot(documents)) | {
