@@ -9,13 +9,16 @@ References:
     ISO 32000-1:2008 (PDF).
 """
 
+from base64 import b64encode
 from collections.abc import Iterator, Sequence
 from html import escape
+from io import BytesIO
 from math import hypot
 from typing import Any
+from zlib import compress
 
 from runner.errors import UsageError
-from runner.report.chart_pieces import Area, Clipped, Disc, Piece, box, pieces
+from runner.report.chart_pieces import Area, Clipped, Disc, Picture, Piece, box, pieces
 from runner.spec.chart_model import ChartFile, Point
 
 BARS = (100.0, 50.0, 20.0, 10.0, 5.0, 2.0, 1.0)
@@ -70,6 +73,12 @@ def _svg_pieces(found: Sequence[Piece], chart: ChartFile) -> Iterator[str]:
         elif isinstance(piece, Disc):
             (x, y), r = piece.centre, piece.radius
             yield f'<circle cx="{x:.4f}" cy="{y:.4f}" r="{r:.4f}" fill="{_hex(piece.reflectance, chart)}"/>'
+        elif isinstance(piece, Picture):
+            (x, y), (w, h) = piece.centre, piece.size
+            yield (
+                f'<image x="{x - w / 2:.4f}" y="{y - h / 2:.4f}" width="{w:.4f}" height="{h:.4f}" '
+                f'preserveAspectRatio="none" style="image-rendering:pixelated" href="{_png(piece, chart)}"/>'
+            )
         else:
             (x, y), (w, h) = piece.centre, piece.size
             shape = (
@@ -80,6 +89,21 @@ def _svg_pieces(found: Sequence[Piece], chart: ChartFile) -> Iterator[str]:
             yield f'<clipPath id="c{number}">{shape}</clipPath><g clip-path="url(#c{number})">'
             yield from _svg_pieces(piece.pieces, chart)
             yield "</g>"
+
+
+def _png(picture: Picture, chart: ChartFile) -> str:
+    """Return a picture's cells as the address of an embedded PNG."""
+    from PIL import Image  # noqa: PLC0415 - heavy
+
+    rows = picture.reflectances
+    stream = BytesIO()
+    Image.frombytes("L", (len(rows[0]), len(rows)), _codes(picture, chart)).save(stream, "PNG")
+    return f"data:image/png;base64,{b64encode(stream.getvalue()).decode()}"
+
+
+def _codes(picture: Picture, chart: ChartFile) -> bytes:
+    """Return a picture's cells as one byte each, row by row."""
+    return bytes(round(255 * code(value, chart)) for row in picture.reflectances for value in row)
 
 
 # ---- PDF
@@ -94,16 +118,19 @@ def artwork_pdf(chart: ChartFile) -> bytes:
     w, h = chart.size
     point = 72 / 25.4
     lines = [f"q {point:.8f} 0 0 {-point:.8f} {w / 2 * point:.6f} {h / 2 * point:.6f} cm"]
-    lines += _pdf_pieces([_sheet(chart), *pieces(chart), *bar(chart)], chart)
+    drawn = list(pieces(chart))
+    pictures = [piece for piece in drawn if isinstance(piece, Picture)]
+    lines += _pdf_pieces([_sheet(chart), *drawn, *bar(chart)], chart)
     for words, (x, y), size in notes(chart):
         text = words.encode("cp1252", "replace").replace(b"\\", b"\\\\").replace(b"(", b"\\(").replace(b")", b"\\)")
         tone = f"{code(chart.ink, chart):.5f} g"
         lines.append(f"BT {tone} /F1 {size:.4f} Tf 1 0 0 -1 {x:.4f} {y:.4f} Tm ({text.decode('latin-1')}) Tj ET")
     stream = "\n".join([*lines, "Q"]).encode("latin-1")
     font = b"<< /Type /Font /Subtype /Type1 /BaseFont /Helvetica /Encoding /WinAnsiEncoding >>"
+    names = [f"/I{number} {6 + number} 0 R" for number in range(len(pictures))]
     page = (
         f"<< /Type /Page /Parent 2 0 R /MediaBox [0 0 {w * point:.6f} {h * point:.6f}] /Contents 4 0 R "
-        "/Resources << /Font << /F1 5 0 R >> >> >>"
+        f"/Resources << /Font << /F1 5 0 R >> /XObject << {' '.join(names)} >> >> >>"
     ).encode()
     name = title(chart).encode("utf-16-be").hex()
     return _file(
@@ -113,9 +140,20 @@ def artwork_pdf(chart: ChartFile) -> bytes:
             page,
             b"<< /Length %d >>\nstream\n%s\nendstream" % (len(stream), stream),
             font,
+            *(_image(picture, chart) for picture in pictures),
             f"<< /Title <FEFF{name}> >>".encode(),
         ]
     )
+
+
+def _image(picture: Picture, chart: ChartFile) -> bytes:
+    rows = picture.reflectances
+    data = compress(_codes(picture, chart), 9)
+    head = (
+        f"<< /Type /XObject /Subtype /Image /Width {len(rows[0])} /Height {len(rows)} /ColorSpace /DeviceGray "
+        f"/BitsPerComponent 8 /Interpolate false /Filter /FlateDecode /Length {len(data)} >>"
+    )
+    return head.encode() + b"\nstream\n" + data + b"\nendstream"
 
 
 def _file(objects: list[bytes]) -> bytes:
@@ -132,7 +170,13 @@ def _file(objects: list[bytes]) -> bytes:
 
 
 def _pdf_pieces(found: Sequence[Piece], chart: ChartFile) -> Iterator[str]:
+    number = 0
     for piece in found:
+        if isinstance(piece, Picture):
+            (x, y), (w, h) = piece.centre, piece.size
+            yield f"q {w:.5f} 0 0 {-h:.5f} {x - w / 2:.5f} {y + h / 2:.5f} cm /I{number} Do Q"
+            number += 1
+            continue
         if isinstance(piece, Clipped):
             (x, y), (w, h) = piece.centre, piece.size
             path = _ellipse((x, y), w / 2) if piece.round else f"{x - w / 2:.5f} {y - h / 2:.5f} {w:.5f} {h:.5f} re"

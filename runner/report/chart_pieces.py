@@ -9,7 +9,7 @@ light shines through between them.
 """
 
 from collections.abc import Callable, Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 from math import ceil, cos, hypot, pi, radians, sin
 from typing import Any
 
@@ -58,7 +58,19 @@ class Clipped:
     """The box is an ellipse."""
 
 
-Piece = Area | Disc | Clipped
+@dataclass(frozen=True)
+class Picture:
+    """Square cells of one tone each, for patterns that no outline describes."""
+
+    centre: Point
+    """mm."""
+    size: Point
+    """Width and height, mm."""
+    reflectances: tuple[tuple[float, ...], ...]
+    """Rows of cells, from the upper left."""
+
+
+Piece = Area | Disc | Clipped | Picture
 
 
 def pieces(chart: ChartFile) -> Iterator[Piece]:
@@ -268,6 +280,20 @@ def _steps(data: _Data) -> Iterator[Piece]:
         yield box(centre, (pitch[0] * (1 - gap), pitch[1] * (1 - gap)), tone)
 
 
+def _random(data: _Data) -> Iterator[Piece]:
+    """A stochastic pattern in the middle of its box, its cells as they are measured with."""
+    from runner.measure.methods.texture_response import Options, pattern_of, read_options  # noqa: PLC0415 - heavy
+
+    one = data.feature
+    known = {f.name for f in fields(Options)}
+    pattern = pattern_of(read_options({key: value for key, value in one.data.items() if key in known}))
+    side = data.number("side", "mm")
+    if side > min(one.size):
+        raise UsageError(f"feature '{one.name}' has a side of {side:g} mm in a box of {min(one.size):g} mm")
+    rows = tuple(tuple(float(v) for v in row) for row in pattern.raster)
+    yield Picture(one.position, (side, side), rows)
+
+
 def _black(data: _Data) -> Iterator[Piece]:
     """A black area in the middle of a bright box."""
     one = data.feature
@@ -284,6 +310,7 @@ DRAWN: Mapping[str, Callable[[_Data], Iterator[Any]]] = {
     "checkerboard": _squares,
     "grey steps": _steps,
     "black areas": _black,
+    "random pattern": _random,
     "flat field": _flat,
     "flat": _flat,
 }

@@ -46,7 +46,7 @@ def test_what_cannot_be_drawn_is_a_warning_to_check_and_an_error_to_draw(
 def test_draw_writes_the_file(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
     """Artwork is written where asked for, and what it shows is said."""
     path = write_chart(
-        tmp_path, CHART + "  bought: {kind: random pattern, position: [0, -35 mm], size: [20 mm, 20 mm]}\n"
+        tmp_path, CHART + "  bought: {kind: colour patches, position: [0, -35 mm], size: [20 mm, 20 mm]}\n"
     )
     out = tmp_path / "new" / "art.svg"
 

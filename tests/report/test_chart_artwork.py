@@ -5,14 +5,17 @@ from dataclasses import replace
 from pathlib import Path
 from xml.etree import ElementTree as ET
 
+import numpy as np
 import pikepdf
 import pytest
 
 from runner.errors import UsageError
+from runner.measure.numerics.random_pattern import noise
 from runner.report.chart_artwork import artwork, artwork_pdf, artwork_svg, bar, code, notes
 from runner.spec.chart_model import Feature
 from runner.spec.charts import read_chart
-from tests.scenes.chart_text import write_chart
+from tests.scenes.chart_text import CHART, write_chart
+from tests.scenes.prints import printed
 
 READY = sorted((Path(__file__).resolve().parents[2] / "specs" / "charts").glob("*.yaml"))
 
@@ -83,3 +86,36 @@ def test_no_room_for_a_bar_is_told(tmp_path: Path) -> None:
     full = Feature("all", "flat field", (0.0, 0.0), chart.size, {"reflectance": "40 %"})
     with pytest.raises(UsageError, match="no free ground for a bar to check the print by"):
         artwork(replace(chart, features={"all": full}), ".pdf")
+
+
+def test_a_random_pattern_is_printed_cell_by_cell(tmp_path: Path) -> None:
+    """Rendered at four dots a cell, every cell's middle has the reflectance that the pattern is measured with.
+
+    Codes are whole 255ths of sRGB: near white one step is 0.9 % of the range.
+    """
+    text = CHART + (
+        "  fine:\n    kind: random pattern\n    position: [0, -35 mm]\n    size: [20 mm, 20 mm]\n"
+        "    data: {pattern: noise, seed: 4, cells: 64, side: 16 mm, low: 20 %, high: 70 %}\n"
+    )
+    chart = read_chart(write_chart(tmp_path, text))
+    path = tmp_path / "art.pdf"
+    path.write_bytes(artwork_pdf(chart))
+    dpi = round(4 * 64 / 16 * 25.4)
+    sheet = printed(path, dpi, chart.ink, chart.ground)
+    scale = dpi / 25.4
+    left, top = (side / 2 + place - 8 for side, place in zip(chart.size, (0.0, -35.0), strict=True))
+    cells = (np.arange(64) + 0.5) * 16 / 64
+    seen = sheet[np.ix_(((top + cells) * scale).astype(int), ((left + cells) * scale).astype(int))]
+
+    assert np.abs(seen - noise(4, 64, 1.8, 0.2, 0.7)).max() < 0.01
+    assert artwork_svg(chart).count("data:image/png;base64,") == 1
+
+
+def test_a_pattern_that_does_not_fit_its_box(tmp_path: Path) -> None:
+    """A side longer than the box is told, with both lengths."""
+    text = CHART + (
+        "  fine:\n    kind: random pattern\n    position: [0, -35 mm]\n    size: [20 mm, 20 mm]\n"
+        "    data: {cells: 64, side: 30 mm, largest: 20}\n"
+    )
+    with pytest.raises(UsageError, match="a side of 30 mm in a box of 20 mm"):
+        artwork_svg(read_chart(write_chart(tmp_path, text)))

@@ -118,9 +118,9 @@ def test_what_cannot_be_drawn_is_told(kind: str, data: dict[str, Any], told: str
 
 def test_kinds_without_artwork_are_named() -> None:
     """What this program does not draw is left out and named."""
-    chart = replace(PLAIN, features={"x": Feature("x", "random pattern", (0, 0), (9, 9), {})})
+    chart = replace(PLAIN, features={"x": Feature("x", "colour patches", (0, 0), (9, 9), {})})
 
-    assert "random pattern" not in DRAWN
+    assert "colour patches" not in DRAWN
     assert (list(pieces(chart)), without_artwork(chart)) == ([], ("x",))
 
 

@@ -80,7 +80,10 @@ class Options:
     )
     slope: float = field(default=1.8, metadata={"sentence": "Of noise: its power falls as frequency to minus this."})
     smallest: float = field(default=2.0, metadata={"sentence": "Of dead leaves: least radius, cells."})
-    largest: float = field(default=120.0, metadata={"sentence": "Of dead leaves: greatest radius, cells."})
+    largest: float | None = field(
+        default=None,
+        metadata={"sentence": "Of dead leaves: greatest radius, cells; a quarter of the side if not said."},
+    )
     low: float | str = field(default=0.1, metadata={"sentence": "Least reflectance, e.g. 10 %."})
     high: float | str = field(default=0.9, metadata={"sentence": "Greatest reflectance, e.g. 90 %."})
     estimator: str = field(
@@ -103,8 +106,9 @@ class Options:
             object.__setattr__(self, name, number(name, getattr(self, name), "%", 0.0, 1.0))
         object.__setattr__(self, "slope", number("slope", self.slope, "", 0.0, 4.0))
         object.__setattr__(self, "smallest", number("smallest", self.smallest, "", 1.0, 100.0))
-        object.__setattr__(self, "largest", number("largest", self.largest, "", 2.0, float(self.cells)))
-        if float(self.low) >= float(self.high) or self.smallest >= self.largest:
+        largest = self.cells / 4 if self.largest is None else self.largest
+        object.__setattr__(self, "largest", number("largest", largest, "", 2.0, float(self.cells)))
+        if float(self.low) >= float(self.high) or self.smallest >= float(self.largest or 0):
             raise ValueError("low lies below high, and smallest below largest")
         if self.side is not None:
             object.__setattr__(self, "side", number("side", self.side, "mm", 0.1, 1e5))
@@ -145,7 +149,9 @@ def pattern_of(options: Options) -> Pattern:
     low, high = float(options.low), float(options.high)
     if options.pattern == "noise":
         return Pattern(random_pattern.noise(options.seed, options.cells, options.slope, low, high))
-    leaves = random_pattern.dead_leaves(options.seed, options.cells, options.smallest, options.largest, low, high)
+    leaves = random_pattern.dead_leaves(
+        options.seed, options.cells, options.smallest, float(options.largest or 0), low, high
+    )
     return Pattern(leaves)
 
 
