@@ -7,12 +7,15 @@ from math import hypot, sqrt
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from runner.errors import MeasurementRefused
 from runner.measure.numerics import photon_transfer as law
 from runner.measure.photon_levels import SOME, Dark, Point, Unevenness, correlation
 from runner.measure.photon_results import Figure, Transfer, beyond, dark_current, linearity, pattern, propagated
 from runner.measure.reading import Component
+
+Real = NDArray[np.float64]
 
 PARTS = {"": "total", "_row": "row", "_column": "column", "_pixel": "pixel"}
 """Endings of quantities by the part of the pattern they are of."""
@@ -110,6 +113,30 @@ def patterns(of: Transfer, half: Point, uneven: float, shading_order: int) -> Fi
         **{f"dsnu1288{end}": partial(dark, part) for end, part in PARTS.items()},
         **{f"prnu1288{end}": partial(response, part) for end, part in PARTS.items()},
     }
+
+
+def total_ratio(of: Transfer, half: Point) -> tuple[Real, Real, Real]:
+    """Return electrons of light, the ratio of signal to all noise with both patterns, and its standard uncertainty.
+
+    Raises:
+        MeasurementRefused: Patterns cannot be told apart.
+    """
+    dark, response = pattern(half, of, "total")
+    variance, variance_u = of.dark_variance
+    signal = np.array([one.signal for one in of.points if 0 < one.signal <= of.top])
+    inputs = (of.k, variance, dark.value or 0.0, response.value or 0.0)
+    us = (of.gain.u, variance_u, dark.u, response.u)
+
+    def ratio(k: float, temporal: float, offset: float, share: float) -> Real:
+        return law.signal_to_noise(
+            signal / k, law.dark_noise(temporal, k, of.rounding), k, pattern=offset, response=share / 100
+        )
+
+    away = []
+    for place, u in enumerate(us):
+        low, high = ([*inputs[:place], inputs[place] + side * u, *inputs[place + 1 :]] for side in (-1.0, 1.0))
+        away.append((ratio(*high) - ratio(*low)) / 2)
+    return signal / of.k, ratio(*inputs), np.sqrt(np.sum(np.square(away), axis=0))
 
 
 def spread_of_light(light: Unevenness) -> Figure:

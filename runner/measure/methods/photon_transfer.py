@@ -8,6 +8,7 @@ Where the lamp is bright, keep to the local rules for optical radiation at the w
 """
 
 from collections.abc import Iterator, Mapping
+from contextlib import suppress
 from dataclasses import dataclass, field, replace
 from math import sqrt
 from typing import Any
@@ -206,7 +207,7 @@ def measure(sample: Sample, options: Options) -> Measurement:
     of = transfer(points(lit, without, options.shading_order), without, found.light_in)
     half = _half(of)
     uneven = _refuse_foreign(half)
-    return Measurement(tuple(_readings(sample, of, half, without, uneven, options)), tuple(_curves(sample, of)))
+    return Measurement(tuple(_readings(sample, of, half, without, uneven, options)), tuple(_curves(sample, of, half)))
 
 
 def _dark_frames(sample: Sample, found: Series, options: Options) -> tuple[tuple[Dark, ...], list[LevelFrames]]:
@@ -297,7 +298,7 @@ def _readings(
             yield replace(blank, value=made.value, u=made.u, components=made.parts, flags=made.flags)
 
 
-def _curves(sample: Sample, of: Transfer) -> Iterator[Curve]:
+def _curves(sample: Sample, of: Transfer, half: Point) -> Iterator[Curve]:
     lit = [one for one in of.points if one.signal > 0]
     region = sample.found.region
     signal = tuple(one.signal for one in lit)
@@ -323,17 +324,18 @@ def _curves(sample: Sample, of: Transfer) -> Iterator[Curve]:
         "1",
         estimator=ESTIMATOR,
     )
-    try:
+    with suppress(MeasurementRefused):
+        x, y, u = (tuple(float(v) for v in row) for row in figures.total_ratio(of, half))
+        yield Curve(region, "total signal-to-noise ratio", x, y, u, "e-", "1", estimator=ESTIMATOR)
+    with suppress(MeasurementRefused):
         found, used = linearity(of)
-    except MeasurementRefused:
-        return
-    yield Curve(
-        region,
-        "linearity",
-        tuple(float(one.light or 0.0) for one in used),
-        tuple(float(v) for v in found.deviations),
-        tuple(float(v) for v in found.u),
-        of.light_in,
-        "%",
-        estimator=ESTIMATOR,
-    )
+        yield Curve(
+            region,
+            "linearity",
+            tuple(float(one.light or 0.0) for one in used),
+            tuple(float(v) for v in found.deviations),
+            tuple(float(v) for v in found.u),
+            of.light_in,
+            "%",
+            estimator=ESTIMATOR,
+        )

@@ -87,20 +87,26 @@ def test_study_of_the_bars() -> None:
 
 
 def test_curves_are_those_of_the_sensor() -> None:
-    """Variance over mean lies on K μ + dark, SNR on the model, departures from linearity on 0, each within 4 u."""
+    """Variance over mean lies on K μ + dark, both SNRs on the model, departures from linearity on 0, within 4 u."""
     rng = np.random.default_rng(1)
     found = photon_transfer.measure(sample(lit(SMALL, rng), unlit(SMALL, rng)), photon_transfer.read_options({}))
-    transfer, ratio, straight = found.curves
+    transfer, ratio, total, straight = found.curves
 
     assert [(c.name, c.x_in, c.y_in) for c in found.curves] == [
         ("photon transfer", "DN", "DN²"),
         ("signal-to-noise ratio", "e-", "1"),
+        ("total signal-to-noise ratio", "e-", "1"),
         ("linearity", "%", "%"),
     ]
     for x, y, u in zip(transfer.x[:12], transfer.y[:12], transfer.u[:12], strict=True):
         assert abs(y - (0.4 * x + 0.16 * 25 + 1 / 12)) < 4 * u
     for x, y, u in zip(ratio.x[:12], ratio.y[:12], ratio.u[:12], strict=True):
         assert abs(y - x / np.sqrt(x + 25 + 1 / 12 / 0.16)) < 4 * u + 0.003 * y  # the gain's own 0.3 % is in x
+    patterns = SMALL.dsnu.spread("total"), SMALL.prnu.spread("total")
+    for x, y, u in zip(total.x, total.y, total.u, strict=True):
+        noise = x + 25 + 1 / 12 / 0.16 + patterns[0] ** 2 + (patterns[1] * x) ** 2
+        assert abs(y - x / np.sqrt(noise)) < 3 * u
+        assert u < 0.02 * y
     assert all(abs(y) < 4 * u for y, u in zip(straight.y, straight.u, strict=True))
 
 
