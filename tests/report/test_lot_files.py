@@ -47,6 +47,22 @@ def test_the_files_hold_the_whole_lot(tmp_path: Path) -> None:
     assert [u["serial"] for u in lot["units"]] == ["WS8-000101", "WS8-000103", "WS8-000105", "WS8-000108"]
 
 
+def test_the_lots_page_tells_captures_apart(tmp_path: Path) -> None:
+    """A count of the darks, which have no regions, and one over all regions of the chart name their captures."""
+    document = world.document()
+    count = {"where": "", "measured_in": "1", "value": 12.0, "u": 0.0, "at_least": None, "at_most": 8.0}
+    count |= {"label": "hot pixels", "reason": "hot pixels 12, at most 8", "verdict": "does not conform"}
+    for number, capture in ((8, "dark"), (9, "chart")):
+        document["checks"].append(document["checks"][0] | count | {"characteristic": number, "capture": capture})
+    lot = _write(tmp_path, [document])
+    page = (tmp_path / "lot.html").read_text()
+
+    assert "8. hot pixels, whole frame (dark)" in page
+    assert "9. hot pixels, all regions (chart)" in page
+    assert [row["margin"] for row in lot["worst"][:2]] == [None, None]
+    assert page.count('<td class="num">beyond</td>') == 2
+
+
 def test_writing_again_gives_the_same_bytes(tmp_path: Path) -> None:
     """The files follow from the results, not from the order in which units were judged or from what lay there."""
     (tmp_path / "one").mkdir()
