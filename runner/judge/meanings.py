@@ -35,6 +35,7 @@ MEANINGS = (
         "transfers more than it may",
     ),
     _high("is soft", "edge_width", "lsf_fwhm"),
+    _low("is soft", "resolving_power*", "bar_contrast", "tri_bar_contrast"),
     _high("sharpens its edges too much", "overshoot", "undershoot"),
     _off("smears edges to one side", "lsf_asymmetry"),
     _off("is not focused as asked", "best_focus", "field_curvature", "astigmatism"),

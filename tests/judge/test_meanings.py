@@ -10,6 +10,7 @@ import runner.measure.methods as shelf
 from runner.judge.meanings import MEANINGS, meaning
 
 PLANNED = {"texture_mtf*", "texture_acutance*", "colour_difference*", "contrast_transfer"}
+PLANNED |= {"resolving_power*", "bar_contrast", "tri_bar_contrast"}
 """Quantities of methods that need not be on the shelf."""
 
 
