@@ -21,7 +21,7 @@ def show(value: float, u: float | None, unit: str, *, against: tuple[float | Non
     """
     wide = 2 * (u or 0.0)
     places = decimals(value, wide, against)
-    text = f"{value:.{places}f}"
+    text = f"{value:z.{places}f}"
     if u:
         text += f" ± {wide:.{places}f}"
     elif "." in text:

@@ -35,6 +35,12 @@ def test_digits_are_added_until_the_reason_shows() -> None:
     assert show(0.26996, 0.002, "1", against=(0.27, None)).startswith("0.26996")
 
 
+def test_nothing_has_no_sign() -> None:
+    """What rounds to zero is not printed as minus zero, unless its side of a limit at zero is what matters."""
+    assert show(-0.0004, 0.05, "DN") == "0.00 ± 0.10 DN"
+    assert show(-0.0004, 0.05, "DN", against=(0.0,)).startswith("-0.0004 ±")
+
+
 @given(value=st.floats(0.01, 10), gap=st.floats(1e-8, 0.01), u=st.floats(1e-6, 0.1))
 def test_a_printed_value_lies_on_its_own_side_of_the_limit(value: float, gap: float, u: float) -> None:
     """However near a value comes to its limit, the print shows on which side it lies."""
