@@ -6,7 +6,7 @@ References:
 """
 
 from dataclasses import dataclass
-from math import log, sqrt
+from math import hypot, log, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
@@ -70,13 +70,12 @@ def describe(times: Array, levels: Array, noise: Array) -> Series:
     variance = float(left @ left) / free if free > 0 else own
     covariance = np.linalg.inv(design.T @ design) * max(variance, own)
     span = float(times[-1] - times[0])
-    line = _design(times, None)
-    about = relative - line @ _solve(line, relative)[0]
-    n = len(times)
-    total = float(about @ about) / (n - 2)
-    doubt = total * sqrt(2 / (n - 2))
-    unsteady = sqrt(max(0.0, total - own))
-    unsteady_u = doubt / (2 * unsteady) if unsteady**2 > CLEAR * doubt else sqrt(doubt)
+    # A wave's own power is as well known as its amplitude; only the rest scatters as noise does.
+    excess = variance - own
+    total = max(0.0, wave.amplitude**2 / 2 + excess)
+    doubt = hypot(wave.amplitude * wave.amplitude_u if wave.frequency else 0.0, variance * sqrt(2 / max(1, free)))
+    unsteady = sqrt(total)
+    unsteady_u = doubt / (2 * unsteady) if total > CLEAR * doubt else sqrt(doubt)
     return Series(mean, float(terms[1]) * span, sqrt(float(covariance[1, 1])) * span, unsteady, unsteady_u, wave)
 
 
