@@ -1,11 +1,12 @@
 """Reads a module's options record from the spec's plain keys, for target and method modules alike."""
 
 import difflib
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import fields
 from typing import Any, TypeVar
 
 from runner.errors import UsageError
+from runner.measure.contract import QuantityInfo
 from runner.spec.units import parse_amount
 
 Record = TypeVar("Record")
@@ -31,6 +32,36 @@ def read_record(record: type[Record], asked: Mapping[str, Any]) -> Record:
         return record(**asked)
     except (TypeError, ValueError) as error:
         raise UsageError(str(error)) from error
+
+
+def reader(record: type[Record]) -> Callable[[Mapping[str, Any]], Record]:
+    """Return the `read_options` of a module whose options are this record."""
+
+    def read_options(asked: Mapping[str, Any]) -> Record:
+        """Read the options from a spec's keys.
+
+        Raises:
+            UsageError: A key or value is not allowed.
+        """
+        return read_record(record, asked)
+
+    return read_options
+
+
+def lookups(
+    known: Mapping[str, QuantityInfo],
+) -> tuple[Callable[[str], QuantityInfo | None], Callable[[], Mapping[str, QuantityInfo]]]:
+    """Return the `quantity` and the `quantities` of a method that yields just these."""
+
+    def quantity(name: str) -> QuantityInfo | None:
+        """Return what a quantity name means, or None."""
+        return known.get(name)
+
+    def quantities() -> Mapping[str, QuantityInfo]:
+        """Return the quantities."""
+        return known
+
+    return quantity, quantities
 
 
 def number(name: str, asked: object, unit: str, low: float, high: float) -> float:

@@ -5,7 +5,8 @@ from dataclasses import dataclass
 import pytest
 
 from runner.errors import UsageError
-from runner.measure.options import describe, number, read_record
+from runner.measure.contract import QuantityInfo
+from runner.measure.options import describe, lookups, number, read_record, reader
 
 
 @dataclass(frozen=True)
@@ -53,3 +54,15 @@ def test_what_is_no_share_is_told_with_what_is(asked: object) -> None:
     """Another unit, a value outside, a truth value and a word are refused by the option's name."""
     with pytest.raises(ValueError, match="dead_below is"):
         number("dead_below", asked, "%", 0.0, 1.0)
+
+
+def test_a_modules_usual_functions_come_from_its_records() -> None:
+    """`reader` reads the record it was made for; `lookups` knows the named quantities and no others."""
+    info = QuantityInfo("DN", "Mean.")
+    quantity, quantities = lookups({"mean": info})
+
+    assert reader(_Options)({"order": 3}) == _Options(3)
+    with pytest.raises(UsageError, match="unknown option 'oder'"):
+        reader(_Options)({"oder": 3})
+    assert (quantity("mean"), quantity("median")) == (info, None)
+    assert quantities() == {"mean": info}

@@ -22,7 +22,7 @@ from runner.measure import planes
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.evenness import refuse_uneven
 from runner.measure.numerics.banding import banding
-from runner.measure.options import read_record
+from runner.measure.options import lookups, reader
 from runner.measure.reading import Component, Curve, Reading, Refusal
 
 Real = NDArray[np.float64]
@@ -83,23 +83,10 @@ class Options:
             raise ValueError(f"shading_order is {order!r}; allowed are whole numbers from 0 to {MOST_ORDER}")
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def measure(sample: Sample, options: Options) -> Measurement:

@@ -18,7 +18,7 @@ from runner.measure.methods.grating_response import lattices_of
 from runner.measure.numerics.bar_fit import BarFit, fit_bars
 from runner.measure.numerics.grating_fit import GratingLost, Lattice
 from runner.measure.numerics.grating_rounding import rounding
-from runner.measure.options import number, read_record
+from runner.measure.options import lookups, number, reader
 from runner.measure.reading import Component, Curve, Reading, Refusal
 
 NAME = "bar response"
@@ -84,23 +84,10 @@ class Options:
         object.__setattr__(self, "target_contrast_uncertainty", doubt)
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def measure(sample: Sample, options: Options) -> Measurement:

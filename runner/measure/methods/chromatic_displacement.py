@@ -16,7 +16,7 @@ from runner.errors import MeasurementRefused
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.lattice_centres import Centres, centres_of
 from runner.measure.numerics.vector_field import VectorField, fit_field
-from runner.measure.options import number, read_record
+from runner.measure.options import lookups, number, reader
 from runner.measure.reading import Component, Curve, Map, Reading, Refusal
 
 Real = NDArray[np.float64]
@@ -78,23 +78,10 @@ class Options:
         object.__setattr__(self, "bias", number("bias", self.bias, "px", 0.0, 5.0))
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def measure(sample: Sample, options: Options) -> Measurement:

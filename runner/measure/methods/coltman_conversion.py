@@ -7,7 +7,7 @@ series needs the response at odd multiples of a frequency; what the groups do no
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from math import sqrt
-from typing import Any, NoReturn
+from typing import NoReturn
 
 import numpy as np
 from numpy.typing import NDArray
@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from runner.errors import MeasurementRefused
 from runner.measure.contract import Measurement, QuantityInfo, Sample, Scene, Wanted
 from runner.measure.numerics.coltman import ContrastCurve
-from runner.measure.options import read_record
+from runner.measure.options import lookups, reader
 from runner.measure.reading import Component, Curve, Reading, Refusal
 
 NAME = "coltman conversion"
@@ -54,19 +54,10 @@ class Options:
     """There is nothing to choose."""
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options; none are known."""
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def measure(sample: Sample, options: Options) -> NoReturn:  # noqa: ARG001 - the contract's form

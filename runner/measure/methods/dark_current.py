@@ -8,12 +8,11 @@ gain, by photon transfer.
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from math import hypot
-from typing import Any
 
 from runner.errors import MeasurementRefused
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.light_levels import series
-from runner.measure.options import number, read_record
+from runner.measure.options import lookups, number, reader
 from runner.measure.photon_levels import Dark, darks
 from runner.measure.photon_results import dark_current
 from runner.measure.reading import Component, Curve, Reading, Refusal
@@ -51,23 +50,10 @@ class Options:
         object.__setattr__(self, "system_gain_u", number("system_gain_u", self.system_gain_u, "%", 0.0, 1.0))
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def measure(sample: Sample, options: Options) -> Measurement:

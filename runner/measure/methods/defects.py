@@ -15,7 +15,6 @@ Every count is to be had for the middle of the region and for what lies around i
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from math import ceil
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -47,7 +46,7 @@ from runner.measure.numerics.large_defects import (
     off_lines,
 )
 from runner.measure.numerics.stack_noise import mean_frame
-from runner.measure.options import number, read_record
+from runner.measure.options import number, reader
 from runner.measure.reading import Reading, Refusal, Spot
 
 NAME = "defects"
@@ -146,13 +145,7 @@ class Options:
             object.__setattr__(self, name, number(name, getattr(self, name), unit, low, high))
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
 def quantity(name: str) -> QuantityInfo | None:

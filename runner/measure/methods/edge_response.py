@@ -20,7 +20,7 @@ from runner.measure.numerics.edge_curves import Curves
 from runner.measure.numerics.edge_fit import fit_edge
 from runner.measure.numerics.edge_rounding import rounding
 from runner.measure.numerics.edge_shading import Flat, smooth_flat
-from runner.measure.options import read_record
+from runner.measure.options import reader
 from runner.measure.reading import Component, Curve, Reading, Refusal
 from runner.spec.units import parse_amount
 
@@ -100,13 +100,7 @@ def _length(asked: object) -> float:
     return float(value)
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
 def measure(sample: Sample, options: Options) -> Measurement:

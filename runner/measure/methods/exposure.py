@@ -8,7 +8,6 @@ code 0: codes below the black level are ordinary noise.
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from math import ceil, sqrt
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,7 +16,7 @@ from runner.capture.frame import Codes, Crop, linearise
 from runner.errors import MeasurementRefused
 from runner.measure import planes
 from runner.measure.contract import Measurement, QuantityInfo, Sample
-from runner.measure.options import read_record
+from runner.measure.options import lookups, reader
 from runner.measure.reading import Component, Reading
 from runner.spec.model import Camera
 
@@ -45,19 +44,10 @@ class Options:
     """There is nothing to choose."""
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options; none are known."""
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def measure(sample: Sample, options: Options) -> Measurement:  # noqa: ARG001 - the contract's form

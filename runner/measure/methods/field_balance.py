@@ -7,11 +7,11 @@ A region counts to a half where its centre lies clearly on that side. Directions
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from math import atan2, degrees, hypot, sqrt
-from typing import Any, NoReturn
+from typing import NoReturn
 
 from runner.errors import MeasurementRefused, UsageError
 from runner.measure.contract import Found, Measurement, QuantityInfo, Sample, Scene
-from runner.measure.options import read_record
+from runner.measure.options import lookups, reader
 from runner.measure.reading import Component, Reading, Refusal
 from runner.spec.model import Amount
 from runner.spec.units import parse_amount
@@ -55,23 +55,10 @@ class Options:
                 raise ValueError(f"frequency is {self.frequency!r}; for example 0.25 cy/px")
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def wants(options: Options) -> Sequence[tuple[str, Mapping[str, Amount]]]:

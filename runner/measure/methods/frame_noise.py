@@ -12,7 +12,6 @@ two arrays, for their columns are not the same; where their levels differ, that 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field, replace
 from math import hypot, log10, sqrt
-from typing import Any
 
 import numpy as np
 
@@ -21,7 +20,7 @@ from runner.measure import planes
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.evenness import refuse_uneven
 from runner.measure.numerics.stack_noise import Spread, StackNoise, signal_to_noise, stack_noise
-from runner.measure.options import read_record
+from runner.measure.options import lookups, reader
 from runner.measure.reading import Component, Reading, Refusal
 
 NAME = "frame noise"
@@ -84,23 +83,10 @@ class Options:
             raise ValueError(f"shading_order is {order!r}; allowed are whole numbers from 0 to {MOST_ORDER}")
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def measure(sample: Sample, options: Options) -> Measurement:

@@ -7,13 +7,12 @@ A frame's counter and time stamp come from its sidecar (`counter`, `time`); a ti
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from math import sqrt
-from typing import Any
 
 from runner.capture.frame import Crop
 from runner.errors import MeasurementRefused, UsageError
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.numerics.frame_order import Order, numbered, put_in_order, row_digests, timing
-from runner.measure.options import number, read_record
+from runner.measure.options import lookups, number, reader
 from runner.measure.reading import Component, Reading, Refusal, Spot
 from runner.measure.steps import position
 from runner.spec.units import FrequencyContext, convert
@@ -58,23 +57,10 @@ class Options:
         object.__setattr__(self, "time_resolution", step)
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def times_of(frames: Sequence[Crop]) -> list[float] | None:

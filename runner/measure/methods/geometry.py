@@ -10,7 +10,6 @@ they are named apart, and neither sees a distortion that turns over on the way o
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field, replace
 from math import hypot, sqrt
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -20,7 +19,7 @@ from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.geometry_figures import BEYOND, Figure, Setting, curve, displacement_map, figures_of
 from runner.measure.lattice_centres import Centres, centres_of
 from runner.measure.numerics.plane_view import Lens, ViewFit, ViewLost, fit_view
-from runner.measure.options import number, read_record
+from runner.measure.options import lookups, number, reader
 from runner.measure.reading import Component, Reading, Refusal
 
 Real = NDArray[np.float64]
@@ -126,23 +125,10 @@ class Options:
             raise ValueError(f"centre is {self.centre!r}; allowed are {FITTED} and {FRAME}")
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def measure(sample: Sample, options: Options) -> Measurement:

@@ -8,7 +8,6 @@ no sine.
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from math import atan2, degrees, hypot, sqrt
-from typing import Any
 
 import numpy as np
 
@@ -18,7 +17,7 @@ from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.numerics.grating_fit import GratingFit, GratingLost, Lattice, fit_grating
 from runner.measure.numerics.grating_rounding import Rounding, rounding
 from runner.measure.numerics.grating_search import picture
-from runner.measure.options import number, read_record
+from runner.measure.options import lookups, number, reader
 from runner.measure.reading import Component, Curve, Map, Reading, Refusal
 
 NAME = "grating response"
@@ -93,23 +92,10 @@ class Options:
             raise ValueError(f"background is {self.background!r}; allowed are 0, 1 and 2")
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def measure(sample: Sample, options: Options) -> Measurement:

@@ -10,7 +10,6 @@ A lamp on the bench drifts and flickers too: a capture of a steady reference bes
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 from math import sqrt
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -20,7 +19,7 @@ from runner.errors import MeasurementRefused
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.methods.frame_order import refuse_constant, times_of
 from runner.measure.numerics.level_series import LEAST_FRAMES, Series, describe, settled
-from runner.measure.options import number, read_record
+from runner.measure.options import lookups, number, reader
 from runner.measure.reading import Component, Curve, Reading, Refusal
 
 NAME = "level over time"
@@ -72,23 +71,10 @@ class Options:
         object.__setattr__(self, "settled_within", number("settled_within", self.settled_within, "%", 1e-4, 0.5))
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def measure(sample: Sample, options: Options) -> Measurement:

@@ -7,17 +7,16 @@ Frames must be the sensor's own: linear, not filtered, no lens, light even withi
 Where the lamp is bright, keep to the local rules for optical radiation at the workplace: never look into it.
 """
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator
 from contextlib import suppress
 from dataclasses import dataclass, field, replace
 from math import sqrt
-from typing import Any
 
 from runner.errors import MeasurementRefused, UsageError
 from runner.measure import photon_figures as figures
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.light_levels import LevelFrames, Series, series
-from runner.measure.options import number, read_record
+from runner.measure.options import lookups, number, reader
 from runner.measure.photon_levels import Dark, Point, Unevenness, correlation, darks, points, unevenness
 from runner.measure.photon_results import Transfer, linearity, transfer
 from runner.measure.reading import Curve, Reading, Refusal
@@ -164,23 +163,10 @@ def _amounts(asked: object) -> tuple[str, ...]:
     return tuple(spell(one) for one in found)
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def measure(sample: Sample, options: Options) -> Measurement:

@@ -13,7 +13,6 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field, replace
 from itertools import pairwise
 from math import hypot, sqrt
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -25,7 +24,7 @@ from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.evenness import refuse_uneven
 from runner.measure.numerics.shading_map import DRAWS, SEED, ShadingMap, shading_map
 from runner.measure.numerics.shading_peak import Peak, find_peak
-from runner.measure.options import read_record
+from runner.measure.options import lookups, reader
 from runner.measure.reading import Component, Map, Reading, Refusal
 
 Real = NDArray[np.float64]
@@ -95,23 +94,10 @@ class Options:
             raise ValueError(f"dark is {self.dark!r}; allowed are {', '.join(BLACKS)}")
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 @dataclass(frozen=True)

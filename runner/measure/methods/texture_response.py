@@ -11,7 +11,6 @@ of the viewer's field (constants of ISO/TS 19567-2 and IEEE Std 1858, from memor
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from math import hypot, sqrt
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -29,7 +28,7 @@ from runner.measure.numerics.texture_spectrum import (
     even_light,
     spectra,
 )
-from runner.measure.options import number, read_record
+from runner.measure.options import lookups, number, reader
 from runner.measure.reading import Component, Curve, Reading, Refusal
 
 NAME = "texture response"
@@ -125,23 +124,10 @@ class _Seen:
     pitch: int
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def pattern_of(options: Options) -> Pattern:

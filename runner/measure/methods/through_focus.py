@@ -11,7 +11,7 @@ right angles to the radius), the sagittal one where it lies across (lines along 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from math import atan2, cos, degrees, hypot, isfinite, radians, sqrt
-from typing import Any, NoReturn
+from typing import NoReturn
 
 import numpy as np
 from numpy.typing import NDArray
@@ -20,7 +20,7 @@ from runner.errors import MeasurementRefused, UsageError
 from runner.measure.contract import Found, Measurement, QuantityInfo, Sample, Scene, Step
 from runner.measure.numerics.focal_surface import Surface, fit_surface
 from runner.measure.numerics.focus_curve import FocusLost, FocusPeak, fit_peak
-from runner.measure.options import number, read_record
+from runner.measure.options import lookups, number, reader
 from runner.measure.reading import Component, Curve, Reading, Refusal
 from runner.measure.steps import position
 from runner.spec.model import Amount
@@ -96,23 +96,10 @@ class Options:
                 raise ValueError(f"{name} is {asked!r}; for example {example}")
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def wants(options: Options) -> Sequence[tuple[str, Mapping[str, Amount]]]:

@@ -9,7 +9,7 @@ the patches nothing is known.
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from math import sqrt
-from typing import Any, NoReturn
+from typing import NoReturn
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,7 +17,7 @@ from scipy.optimize import brentq
 
 from runner.errors import MeasurementRefused
 from runner.measure.contract import Measurement, QuantityInfo, Sample, Scene, Wanted
-from runner.measure.options import read_record
+from runner.measure.options import lookups, reader
 from runner.measure.reading import Component, Curve, Reading, Refusal
 
 NAME = "transfer curve"
@@ -70,19 +70,10 @@ class _Points:
         return np.sqrt(self.own**2 + sum((part**2 for part in self.shared.values()), np.zeros_like(self.own)))
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options; none are known."""
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def measure(sample: Sample, options: Options) -> NoReturn:  # noqa: ARG001 - the contract's form

@@ -12,7 +12,6 @@ for.
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from math import sqrt
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,7 +20,7 @@ from runner.capture.frame import Crop
 from runner.errors import MeasurementRefused
 from runner.measure.contract import Measurement, QuantityInfo, Sample
 from runner.measure.numerics.black_area import AreaLost, BlackArea, find_black_area, surround_at
-from runner.measure.options import number, read_record
+from runner.measure.options import lookups, number, reader
 from runner.measure.reading import Component, Reading
 
 NAME = "veiling glare"
@@ -90,23 +89,10 @@ class _Lights:
     zero_u: tuple[str, float]
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
-def quantity(name: str) -> QuantityInfo | None:
-    """Return what a quantity name means, or None."""
-    return _QUANTITIES.get(name)
-
-
-def quantities() -> Mapping[str, QuantityInfo]:
-    """Return the quantities."""
-    return _QUANTITIES
+quantity, quantities = lookups(_QUANTITIES)
 
 
 def measure(sample: Sample, options: Options) -> Measurement:

@@ -1,13 +1,12 @@
 """Black areas in a bright, even field: holes into a dark box, or patches of a black that is known."""
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, field
-from typing import Any
 
 from runner.capture.frame import Frame, linearise
 from runner.measure.contract import Found, NotFound
 from runner.measure.numerics.black_area import AreaLost, find_black_area
-from runner.measure.options import number, read_record
+from runner.measure.options import number, reader
 from runner.measure.placing import place
 from runner.spec.model import Camera, Region
 
@@ -38,13 +37,7 @@ class Options:
         object.__setattr__(self, "margin", number("margin", self.margin, "%", 0.0, 0.4))
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
 def locate(

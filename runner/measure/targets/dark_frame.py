@@ -4,14 +4,13 @@ Nothing is measured but their exposure unless `measure` names it, so that a comp
 and defects take an even field.
 """
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Any
 
 from runner.capture.frame import Frame
 from runner.measure.contract import Found, NotFound
 from runner.measure.numerics.uniform import locate_uniform
-from runner.measure.options import read_record
+from runner.measure.options import reader
 from runner.spec.model import Camera, Region
 
 NAME = "dark frame"
@@ -27,9 +26,7 @@ class Options:
     """There is nothing to choose."""
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options; none are known."""
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
 def locate(

@@ -4,7 +4,7 @@ Dots may be darker or brighter than the ground. A chart whose grid overflows the
 lie wholly in it. Marks are dots that are larger; the first is the origin.
 """
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -27,7 +27,7 @@ from runner.measure.lattice_finding import (
 )
 from runner.measure.numerics.blob_search import Blobs, find_blobs, first_binning, levels
 from runner.measure.numerics.lattice_index import LatticeIndex, index_lattice
-from runner.measure.options import number, read_record
+from runner.measure.options import number, reader
 from runner.spec.model import Camera, Region
 
 NAME = "dot grid"
@@ -75,13 +75,7 @@ class Options(LatticeOptions):
             object.__setattr__(self, "diameter", number("diameter", self.diameter, "mm", 1e-4, 1e4))
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
 def locate(

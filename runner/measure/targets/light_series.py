@@ -3,14 +3,13 @@
 Unlike `flat field` it takes frames without light too, so that a series may begin in the dark.
 """
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Any
 
 from runner.capture.frame import Box, Frame
 from runner.measure.contract import Found, NotFound
 from runner.measure.numerics.uniform import WHOLE_FRAME
-from runner.measure.options import read_record
+from runner.measure.options import reader
 from runner.measure.placing import outline, place
 from runner.spec.model import Camera, Region
 
@@ -27,9 +26,7 @@ class Options:
     """There is nothing to choose."""
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options; none are known."""
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
 def locate(

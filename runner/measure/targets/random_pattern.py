@@ -1,12 +1,11 @@
 """A stochastic pattern that is known to the last detail: noise or dead leaves, drawn from its numbers."""
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Any
 
 from runner.capture.frame import Frame, linearise
 from runner.measure.contract import Found, NotFound
-from runner.measure.options import read_record
+from runner.measure.options import reader
 from runner.measure.placing import outline, place
 from runner.spec.model import Camera, Region
 
@@ -30,9 +29,7 @@ class Options:
     """There is nothing to choose."""
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options; none are known."""
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
 def locate(

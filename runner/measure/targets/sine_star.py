@@ -1,16 +1,15 @@
 """A star whose light follows a sine around its centre: one star in every region."""
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from math import hypot, pi
-from typing import Any
 
 import numpy as np
 
 from runner.capture.frame import Codes, Frame, linearise
 from runner.measure.contract import Found, NotFound
 from runner.measure.numerics.star_search import Star, find_star
-from runner.measure.options import number, read_record
+from runner.measure.options import number, reader
 from runner.measure.placing import place
 from runner.spec.model import Camera, Region
 
@@ -59,13 +58,7 @@ class Options:
         object.__setattr__(self, "centre_mark", number("centre_mark", self.centre_mark, "%", 0.0, 0.9))
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options from a spec's keys.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
 def locate(

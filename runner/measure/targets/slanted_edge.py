@@ -1,9 +1,8 @@
 """A slanted edge in every region: finds it, moves the region onto it, or says why there is none."""
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from math import cos, degrees, sin
-from typing import Any
 
 import numpy as np
 
@@ -18,7 +17,7 @@ from runner.measure.numerics.edge_search import (
     trace_edge,
     without_specks,
 )
-from runner.measure.options import read_record
+from runner.measure.options import reader
 from runner.spec.model import Camera, Region
 from runner.spec.units import parse_amount
 
@@ -70,13 +69,7 @@ def _length(asked: object) -> float:
     return float(value)
 
 
-def read_options(asked: Mapping[str, Any]) -> Options:
-    """Read the options; a length is written with its unit, `10 px`, or as a plain number of px.
-
-    Raises:
-        UsageError: A key or value is not allowed.
-    """
-    return read_record(Options, asked)
+read_options = reader(Options)
 
 
 def locate(
