@@ -71,10 +71,11 @@ def figures(view: View, setting: Setting, pitch: float, distance: float) -> dict
         distance: mm.
     """
     frame = setting.frame
-    scale, turn, ratio = view_figures.axes_of(view, frame)
+    at = view_figures.outlook(view, frame)
+    scale, turn, ratio = view_figures.axes_of(view, at)
     across, down = view_figures.keystone(view, frame)
-    wide, high, diagonal = view_figures.reach(view, frame) * pitch
-    left, right, up, low, one, two = (degrees(atan(a * pitch / distance)) for a in view_figures.arms(view, frame))
+    wide, high, diagonal = view_figures.reach(at) * pitch
+    left, right, up, low, one, two = (degrees(atan(a * pitch / distance)) for a in view_figures.arms(at))
     sag, smia = view_figures.picture_height(view, frame)
     offset = view.centre - np.array(frame) / 2
     made = {

@@ -73,8 +73,17 @@ def find_corners(codes: NDArray[np.generic], binning: int) -> Corners:
     at = np.column_stack([x, y]) + move
     low, high = np.percentile(soft[::4, ::4], (1, 99))
     contrast = float(high - low)
+    at = _single(at)
     good, bright = _checked(soft, at, contrast)
     return Corners((at[good] + 0.5) * binning, _parity(bright[good]), binning)
+
+
+def _single(at: Real) -> Real:
+    """Return places without those that others already stand for: neighbouring pixels may tie for one saddle."""
+    from scipy.spatial import cKDTree  # noqa: PLC0415 - heavy
+
+    pairs = np.array(sorted(cKDTree(at).query_pairs(1.0)), dtype=np.intp).reshape(-1, 2)
+    return np.asarray(np.delete(at, np.unique(pairs[:, 1]), axis=0))
 
 
 def _checked(soft: Picture, at: Real, contrast: float) -> tuple[NDArray[np.bool_], Real]:

@@ -57,6 +57,18 @@ class Pixels:
         at = np.where(there, rows * wide + columns, 0)
         return self.light(self.codes.reshape(-1)[at]), np.asarray(columns + 0.5), np.asarray(rows + 0.5), there
 
+    def between(self, points: Real) -> Real:
+        """Return the light at points (x, y), (n, 2), linear between all pixels; at the border its pixels' own."""
+        rows, columns = self.codes.shape
+        x, y = (np.clip(points[:, i] - 0.5, 0, n - 1) for i, n in ((0, columns), (1, rows)))
+        left, up = (np.minimum(v.astype(np.intp), n - 2) for v, n in ((x, columns), (y, rows)))
+        across, down = x - left, y - up
+        upper, lower = (
+            self.light(self.codes[r, left]) * (1 - across) + self.light(self.codes[r, left + 1]) * across
+            for r in (up, up + 1)
+        )
+        return np.asarray(upper * (1 - down) + lower * down)
+
 
 def solved(normal: Real, right: Real) -> Real:
     """Solve n small systems, scaled to unit diagonals; a singular one gives zeros.

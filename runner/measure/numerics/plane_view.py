@@ -128,7 +128,10 @@ class View:
 
     def places(self, points: Real) -> Real:
         """Return the places (n, 2) of the chart that points of the frame show; NaN where there are none."""
-        ideal = self.undistorted(points)
+        return self.places_of(self.undistorted(points))
+
+    def places_of(self, ideal: Real) -> Real:
+        """Return the places (n, 2) of the chart that a lens without distortion shows at ideal positions."""
         out = np.column_stack([ideal, np.ones(len(ideal))]) @ np.linalg.inv(self.plane).T
         return np.asarray(out[:, :2] / out[:, 2:])
 

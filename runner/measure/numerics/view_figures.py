@@ -12,6 +12,7 @@ References:
 """
 
 from collections.abc import Sequence
+from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
@@ -24,16 +25,35 @@ ALONG = 41
 """Heights at which a curve of distortion is worked out."""
 
 
-def axes_of(view: View, frame: tuple[int, int]) -> Real:
-    """Return scale (px to a place), rotation (deg, clockwise) and column over row scale, in the frame's middle.
+@dataclass(frozen=True)
+class Outlook:
+    """Where the frame looks on the chart: through its middle, its sides' middles and its corners."""
 
-    The scale is the ideal one, distortion taken out, the geometric mean of both directions.
+    ideal: Real
+    """Ideal positions of middle, left, right, upper, lower side, upper left and lower right corner, px, (7, 2)."""
+    places: Real
+    """Places of the chart there, (7, 2); NaN where the lens's terms have no ideal position."""
+
+
+def outlook(view: View, frame: tuple[int, int]) -> Outlook:
+    """Return where a frame looks.
 
     Args:
         view: The view.
         frame: Columns and rows.
     """
-    step = view.steps(view.undistorted(np.array([frame]) / 2))[0]
+    w, h = frame
+    ends = np.array([[w / 2, h / 2], [0, h / 2], [w, h / 2], [w / 2, 0], [w / 2, h], [0, 0], [w, h]], dtype=np.float64)
+    ideal = view.undistorted(ends)
+    return Outlook(ideal, view.places_of(ideal))
+
+
+def axes_of(view: View, at: Outlook) -> Real:
+    """Return scale (px to a place), rotation (deg, clockwise) and column over row scale, in the frame's middle.
+
+    The scale is the ideal one, distortion taken out, the geometric mean of both directions.
+    """
+    step = view.steps(at.ideal[:1])[0]
     scale = np.sqrt(abs(np.linalg.det(step)))
     turn = np.degrees(np.arctan2(step[1, 0] - step[0, 1], step[0, 0] + step[1, 1]))
     return np.array([scale, turn, np.hypot(*step[:, 0]) / np.hypot(*step[:, 1])])
@@ -54,23 +74,14 @@ def keystone(view: View, frame: tuple[int, int]) -> Real:
     return np.array([200 * (left - right) / (left + right), 200 * (upper - lower) / (upper + lower)])
 
 
-def reach(view: View, frame: tuple[int, int]) -> Real:
-    """Return how far the frame looks on the chart, in places: width, height and diagonal, each through the middle.
-
-    NaN where the lens's terms have no ideal position.
-    """
-    w, h = frame
-    ends = np.array([[0, h / 2], [w, h / 2], [w / 2, 0], [w / 2, h], [0, 0], [w, h]], dtype=np.float64)
-    place = view.places(ends)
-    return np.asarray(np.hypot(*(place[1::2] - place[::2]).T))
+def reach(at: Outlook) -> Real:
+    """Return how far the frame looks on the chart, in places: width, height and diagonal, each through the middle."""
+    return np.asarray(np.hypot(*(at.places[2::2] - at.places[1::2]).T))
 
 
-def arms(view: View, frame: tuple[int, int]) -> Real:
+def arms(at: Outlook) -> Real:
     """Return how far the frame looks to the left, right, up, down and into two corners from its middle, in places."""
-    w, h = frame
-    ends = np.array([[w / 2, h / 2], [0, h / 2], [w, h / 2], [w / 2, 0], [w / 2, h], [0, 0], [w, h]], dtype=np.float64)
-    place = view.places(ends)
-    return np.asarray(np.hypot(*(place[1:] - place[0]).T))
+    return np.asarray(np.hypot(*(at.places[1:] - at.places[0]).T))
 
 
 def distortion(view: View, heights: Sequence[float] | Real) -> Real:

@@ -48,6 +48,8 @@ MOST_MISFIT = 0.2
 """Rms of what two crossed borders leave over their swing: corners of a printed board stay below 0.15."""
 LEAST_SWING = 0.5
 """A corner's swing over that of most."""
+MOST_LEAN = 0.5
+"""How far the light midway between corners lies towards a square's: of boards 0.1, of large dots 0.65 to 1."""
 MARK = 0.5
 """A square's middle is a mark where it lies nearer to the other colour than to its own border."""
 
@@ -100,6 +102,7 @@ def _locate_one(frame: Frame, name: str, box: Box, camera: Camera, options: Opti
     seen, index, fits = _search(pixels)
     refuse_few(index, "corners of squares", seen, "a chequered board")
     side = _side(index)
+    _refuse_round(pixels, index, fits)
     lattice = Lattice(fits.centres, index.places, index.steps, "corners")
     marked = _marked(pixels, lattice, fits) if options.marks else np.zeros((0, 2), np.intp)
     lattice = counted(lattice, marked, options, squares=True)
@@ -136,6 +139,21 @@ def _confirmed(pixels: Pixels, points: Real, parity: Whole) -> tuple[LatticeInde
         fits = fits.some(np.flatnonzero(good)[again.members])
         index = LatticeIndex(kept[again.members], again.places, again.steps)
     return index, fits
+
+
+def _refuse_round(pixels: Pixels, index: LatticeIndex, fits: CornerFits) -> None:
+    """Refuse a lattice of gaps between large dots: midway between two corners of a board two squares meet halves."""
+    at = {(int(a), int(b)): n for n, (a, b) in enumerate(index.places)}
+    pairs = np.array([(n, at[a + 1, b]) for (a, b), n in at.items() if (a + 1, b) in at], dtype=np.intp)
+    middle = (fits.centres[pairs[:, 0]] + fits.centres[pairs[:, 1]]) / 2
+    light = pixels.between(middle)
+    lean = float(np.median((light - fits.mean[pairs].mean(axis=1)) / np.abs(fits.swing[pairs]).mean(axis=1)))
+    if abs(lean) > MOST_LEAN:
+        found = (
+            f"midway between corners the light lies {100 * abs(lean):.0f} % of the way to one colour of the squares; "
+            "their borders are not straight"
+        )
+        raise MeasurementRefused("another scene", found, allowed=f"at most {100 * MOST_LEAN:g} % may")
 
 
 def _side(index: LatticeIndex) -> float:

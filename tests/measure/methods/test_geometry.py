@@ -46,13 +46,7 @@ def test_views_of_one_chart_agree() -> None:
     At step/noise 50, of the lens's distortion, centre and both percentages of the picture's height.
     """
     base = LatticeScene(radial=(-0.12, 0.02), centre=(5, -3), pitch=20.5)
-    views = [
-        base,
-        replace(base, shift=(-9, 4)),
-        replace(base, turn=7),
-        replace(base, pitch=19),
-        replace(base, tilt=(6, -7)),
-    ]
+    views = [base, replace(base, shift=(-9, 4)), replace(base, turn=7), replace(base, pitch=19, tilt=(6, -7))]
     names = ["local distortion at 0.3", "local distortion at 0.6", "optical centre x", "optical centre y"]
     names += ["tv distortion ebu", "tv distortion smia"]
     rng = np.random.default_rng(2)

@@ -62,3 +62,12 @@ def test_the_normal_distribution_in_short() -> None:
     t = np.linspace(-6, 6, 2001).astype(np.float32)
 
     assert covered(t, np.exp(-0.5 * t * t)) == pytest.approx(ndtr(-t.astype(float)), abs=4e-7)
+
+
+def test_light_between_pixels() -> None:
+    """On a plane of light it is the plane, pixel centres at +0.5, and goes no farther than the outermost pixels."""
+    y, x = np.mgrid[0:20, 0:30] + 0.5
+    pixels = Pixels(2 * x + 3 * y, lambda some: some.astype(float))
+    points = np.array([[0.5, 0.5], [12.25, 7.75], [29.5, 19.5], [0.0, 10.5]])
+
+    assert pixels.between(points) == pytest.approx([2.5, 47.75, 117.5, 32.5])

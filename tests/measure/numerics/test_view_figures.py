@@ -47,8 +47,9 @@ def test_all_figures_of_a_tilted_chart(turn: float) -> None:
     scene = LatticeScene(turn=turn, tilt=(7, -5), radial=(-0.12, 0.02), centre=(6, -4), pitch=17)
     view = View(scene.plane(), scene.middle, np.array(scene.radial), np.zeros(2), scene.half)
     truth = lattice_truth.truth(scene, 5.0, 100.0, 0.003)
-    scale, rotation, ratio = figures.axes_of(view, scene.size)
-    wide, high, diagonal = figures.reach(view, scene.size)
+    at = figures.outlook(view, scene.size)
+    scale, rotation, ratio = figures.axes_of(view, at)
+    wide, high, diagonal = figures.reach(at)
     across, down = figures.keystone(view, scene.size)
     places = scene.all_places()
 
@@ -65,4 +66,4 @@ def test_all_figures_of_a_tilted_chart(turn: float) -> None:
 
 def test_arms_reach_from_the_middle() -> None:
     """Without distortion or tilt they are half the frame's sides and diagonal, in places."""
-    assert figures.arms(_lens(0.0), FRAME) == pytest.approx([800, 800, 600, 600, 1000, 1000], abs=1e-6)
+    assert figures.arms(figures.outlook(_lens(0.0), FRAME)) == pytest.approx([800, 800, 600, 600, 1000, 1000], abs=1e-6)

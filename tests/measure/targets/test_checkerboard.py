@@ -106,7 +106,7 @@ CHALLENGES: dict[str, tuple[Callable[[], np.ndarray], dict[str, Any], str, str]]
     "stuck at one code": (lambda: np.full((240, 320), 0.5), {}, "no picture", "has the code 2080"),
     "blown out": (partial(_noise, 0.001, 1.0), {}, "too bright", "the darkest part lies at 99"),
     "dot grid": (PLAIN.dots, {}, "another scene", "this is not a chequered board"),
-    "large dots": (LatticeScene(radius=0.4).dots, {}, "another scene", "this is not a chequered board"),
+    "large dots": (LatticeScene(radius=0.4).dots, {}, "another scene", "their borders are not straight"),
     "mirrored": (_mirrored, WHOLE, "another scene", "marks lie mirrored"),
     "other marks": (
         replace(PLAIN, marks=((6, 4), (7, 4), (6, 5))).board,
