@@ -6,13 +6,13 @@ jointly (`numerics.edge_fit`); `iso 12233:2014` follows the standard's letter, f
 
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, replace
-from math import isfinite, sqrt
+from math import sqrt
 from typing import Any
 
 import numpy as np
 
 from runner.capture.frame import Crop, linearise
-from runner.errors import MeasurementRefused, UsageError
+from runner.errors import MeasurementRefused
 from runner.measure import edge_readings
 from runner.measure.contract import Measurement, QuantityInfo, Sample, Wanted
 from runner.measure.numerics.edge_checks import check
@@ -20,9 +20,8 @@ from runner.measure.numerics.edge_curves import Curves
 from runner.measure.numerics.edge_fit import fit_edge
 from runner.measure.numerics.edge_rounding import rounding
 from runner.measure.numerics.edge_shading import Flat, smooth_flat
-from runner.measure.options import reader
+from runner.measure.options import number, reader
 from runner.measure.reading import Component, Curve, Reading, Refusal
-from runner.spec.units import parse_amount
 
 NAME = "edge response"
 TITLE = "Edge response"
@@ -77,7 +76,7 @@ class Options:
             raise ValueError(f"estimator is {self.estimator!r}; allowed are: {', '.join(ESTIMATORS)}")
         if isinstance(self.order, bool) or not isinstance(self.order, int) or not 1 <= self.order <= 5:
             raise ValueError(f"order is {self.order!r}; allowed is a whole number from 1 to 5")
-        object.__setattr__(self, "search", _length(self.search))
+        object.__setattr__(self, "search", number("search", self.search, "px", 0.0, 200.0))
         if isinstance(self.shading, Mapping):
             role = self.shading.get(FROM)
             good = set(self.shading) == {FROM} and isinstance(role, str) and bool(role)
@@ -85,19 +84,6 @@ class Options:
             good = self.shading in ("none", "fitted")  # no set: a list may stand here
         if not good:
             raise ValueError(f"shading is {self.shading!r}; allowed are: none, fitted, {{from: ROLE}}")
-
-
-def _length(asked: object) -> float:
-    value: object = asked
-    if isinstance(asked, str):
-        try:
-            amount = parse_amount(asked)
-        except UsageError as error:
-            raise ValueError(f"search is {asked!r}: {error.found}; allowed is a length, for example 10 px") from error
-        value = amount.value if amount.unit == "px" else None
-    if isinstance(value, bool) or not isinstance(value, (int, float)) or not isfinite(value) or not 0 <= value <= 200:
-        raise ValueError(f"search is {asked!r}; allowed is a length from 0 to 200 px, for example 10 px")
-    return float(value)
 
 
 read_options = reader(Options)

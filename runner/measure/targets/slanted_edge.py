@@ -7,7 +7,7 @@ from math import cos, degrees, sin
 import numpy as np
 
 from runner.capture.frame import Box, Frame, Signal, linearise
-from runner.errors import MeasurementRefused, UsageError
+from runner.errors import MeasurementRefused
 from runner.measure.contract import Found, NotFound
 from runner.measure.numerics.edge_search import (
     LEAST_MODULATION,
@@ -17,9 +17,8 @@ from runner.measure.numerics.edge_search import (
     trace_edge,
     without_specks,
 )
-from runner.measure.options import reader
+from runner.measure.options import number, reader
 from runner.spec.model import Camera, Region
-from runner.spec.units import parse_amount
 
 NAME = "slanted edge"
 TITLE = "Slanted edge"
@@ -52,21 +51,7 @@ class Options:
 
     def __post_init__(self) -> None:
         """Turn a length with its unit into px and keep it inside its meaning."""
-        object.__setattr__(self, "search", _length(self.search))
-
-
-def _length(asked: object) -> float:
-    value = asked
-    if isinstance(asked, str):
-        try:
-            amount = parse_amount(asked)
-        except UsageError as error:
-            raise ValueError(f"search is {asked!r}: {error.found}; allowed is a length, for example 10 px") from error
-        value = amount.value if amount.unit == "px" else None
-    if isinstance(value, bool) or not isinstance(value, (int, float)) or not 0 <= value <= MOST_SEARCH:
-        allowed = f"a length from 0 to {MOST_SEARCH:g} px, for example 10 px"
-        raise ValueError(f"search is {asked!r}; allowed is {allowed}")
-    return float(value)
+        object.__setattr__(self, "search", number("search", self.search, "px", 0.0, MOST_SEARCH))
 
 
 read_options = reader(Options)
