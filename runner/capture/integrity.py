@@ -28,7 +28,7 @@ from runner.spec.serials import is_serial
 DARK = "dark frame"
 """The target whose frames may honestly be alike: clamped at zero they hold nothing else."""
 CLAMPED = 1e-4
-"""Share of pixels above zero up to which a dark frame counts as clamped: a few hot pixels."""
+"""Share of pixels above zero up to which a dark frame counts as clamped: a few hot pixels. Likewise below white."""
 
 Progress = Callable[[int, int], None]
 """Is told how many files of how many have been read."""
@@ -46,6 +46,8 @@ class PageFacts:
     """The one code that every pixel has, or None."""
     clamped: bool
     """Nearly every pixel is zero."""
+    saturated: bool = False
+    """Nearly every pixel lies at the white level."""
 
 
 @dataclass(frozen=True)
@@ -241,18 +243,23 @@ def _facts(task: _Task) -> FileFacts:
     return replace(
         facts,
         sha256=frames[0].sha256,
-        pages=tuple(_page_facts(frame) for frame in frames),
+        pages=tuple(_page_facts(frame, camera) for frame in frames),
         claims=frames[0].metadata.get("serial", ""),
         simulated=facts.simulated or frames[0].simulated,
         unfit={one.capture: words for one in fields for frame in frames[::-1] if (words := unfit(one, frame, camera))},
     )
 
 
-def _page_facts(frame: Frame) -> PageFacts:
+def _page_facts(frame: Frame, camera: Camera) -> PageFacts:
     codes = frame.codes
     first = codes.flat[0]
     constant = float(first) if first == codes.flat[-1] and bool((codes == first).all()) else None
-    return PageFacts(frame.pixels_sha256, constant, int(np.count_nonzero(codes)) <= CLAMPED * codes.size)
+    clamped = int(np.count_nonzero(codes)) <= CLAMPED * codes.size
+    some = codes.reshape(-1)[:: max(1, codes.size // 10_000)]  # few frames are white throughout: the others cost little
+    saturated = bool((some >= camera.white_level).mean() > 1 - 100 * CLAMPED) and (
+        int(np.count_nonzero(codes < camera.white_level)) <= CLAMPED * codes.size
+    )
+    return PageFacts(frame.pixels_sha256, constant, clamped, saturated)
 
 
 def _add(collector: Collector, facts: FileFacts, sentence: str) -> None:
@@ -322,7 +329,7 @@ def _serials_in(file: str, pattern: str) -> list[str]:
 def _twice(files: Sequence[FileFacts], spec: Spec, sentences: Collector, marks: Collector) -> None:
     """Note frames that hold the same pixels; real frames differ at least in their noise.
 
-    Constant frames and clamped dark frames are alike by nature: they are flagged, and the methods say what is wrong.
+    Constant, saturated and clamped dark frames are alike by nature: they are flagged, and the methods say what is wrong.
     """
     dark = {capture.name for capture in spec.captures if capture.target == DARK}
     alike: dict[str, dict[tuple[str, int, str, int], FileFacts]] = {}
@@ -332,6 +339,8 @@ def _twice(files: Sequence[FileFacts], spec: Spec, sentences: Collector, marks: 
                 _add(marks, facts, f"{facts.file}: every pixel is {page.constant:g} DN")
             elif page.clamped and dark.issuperset(facts.captures):
                 _add(marks, facts, f"{facts.file}: nearly every pixel is 0 DN, the dark signal is clamped")
+            elif page.saturated:
+                _add(marks, facts, f"{facts.file}: nearly every pixel lies at the white level")
             else:
                 same = alike.setdefault(page.pixels_sha256, {})
                 same.setdefault((facts.serial, facts.attempt, facts.file, number), facts)

@@ -162,3 +162,17 @@ def test_only_another_units_serial_in_a_name_is_foreign(file: str, says: str, tm
 
     assert len(faults) == bool(says)
     assert not says or says in faults[0]
+
+
+def test_saturated_frames_are_flagged_and_no_copies(tmp_path: Path, spec: Spec) -> None:
+    """Two frames at the white level but for one dead pixel are alike by nature; with a thousand more they are copies."""
+    good_unit(tmp_path / UNIT, 100)
+    codes = np.full((HEIGHT, WIDTH), 4095, dtype=np.uint16)
+    for dead, told in ((1, ()), (1000, ("the same pixels",))):
+        codes.reshape(-1)[1 : dead + 1] = 70
+        for number in (1, 2):
+            (tmp_path / UNIT / f"chart-{number}.tif").write_bytes(tiff(codes))
+        seen = survey(find_lot(tmp_path, spec), spec)
+        assert any("at the white level" in mark for mark in seen.remarks(UNIT)) == (dead == 1)
+        assert all(any(words in sentence for sentence in seen.faults(UNIT, 1, "chart")) for words in told)
+        assert bool(seen.faults(UNIT, 1, "chart")) == bool(told)

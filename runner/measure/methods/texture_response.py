@@ -121,7 +121,9 @@ class _Seen:
     """Spectra of one lattice of pixels, and its pitch in px of the frame."""
 
     given: Spectra
+    """Spectra of all frames and of the pattern."""
     pitch: int
+    """px of the frame from one pixel of the lattice to the next."""
 
 
 read_options = reader(Options)

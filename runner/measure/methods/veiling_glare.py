@@ -83,10 +83,15 @@ class _Lights:
     """Linear light, as shares of the range, and their standard uncertainties by name."""
 
     black: float
+    """Of the black area over the dark level."""
     white: float
+    """Of the surround at the area's place over the dark level, at the frames' own exposure."""
     black_u: Mapping[str, float]
+    """Parts of the black area's."""
     white_u: Mapping[str, float]
+    """Parts of the surround's."""
     zero_u: tuple[str, float]
+    """Where the dark level comes from, and its own."""
 
 
 read_options = reader(Options)
