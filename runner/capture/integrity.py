@@ -329,7 +329,7 @@ def _serials_in(file: str, pattern: str) -> list[str]:
 def _twice(files: Sequence[FileFacts], spec: Spec, sentences: Collector, marks: Collector) -> None:
     """Note frames that hold the same pixels; real frames differ at least in their noise.
 
-    Constant, saturated and clamped dark frames are alike by nature: they are flagged, and the methods say what is wrong.
+    Constant, saturated and clamped dark frames are alike by nature: they are flagged; the methods say what is wrong.
     """
     dark = {capture.name for capture in spec.captures if capture.target == DARK}
     alike: dict[str, dict[tuple[str, int, str, int], FileFacts]] = {}

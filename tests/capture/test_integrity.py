@@ -165,7 +165,7 @@ def test_only_another_units_serial_in_a_name_is_foreign(file: str, says: str, tm
 
 
 def test_saturated_frames_are_flagged_and_no_copies(tmp_path: Path, spec: Spec) -> None:
-    """Two frames at the white level but for one dead pixel are alike by nature; with a thousand more they are copies."""
+    """Two frames at white but for one dead pixel are alike by nature; with a thousand dead ones they are copies."""
     good_unit(tmp_path / UNIT, 100)
     codes = np.full((HEIGHT, WIDTH), 4095, dtype=np.uint16)
     for dead, told in ((1, ()), (1000, ("the same pixels",))):
