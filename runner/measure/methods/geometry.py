@@ -35,7 +35,7 @@ REFERENCES = (
     "JCGM 100:2008 (uncertainty)",
 )
 FITTED, FRAME = "fitted", "frame"
-MOST_TERMS = 4
+MOST_TERMS = 6
 SHOWS = 3.0
 """A further radial term shows if it is so many times its uncertainty."""
 CENTRE_TOLD = 0.1
@@ -73,6 +73,8 @@ _QUANTITIES: Mapping[str, QuantityInfo] = {
     "radial_k2": QuantityInfo("1", "Radial term of order 4, likewise."),
     "radial_k3": QuantityInfo("1", "Radial term of order 6, likewise."),
     "radial_k4": QuantityInfo("1", "Radial term of order 8, likewise."),
+    "radial_k5": QuantityInfo("1", "Radial term of order 10, likewise."),
+    "radial_k6": QuantityInfo("1", "Radial term of order 12, likewise."),
     "tangential_p1": QuantityInfo("1", "Tangential term p1, likewise, about the frame's middle."),
     "tangential_p2": QuantityInfo("1", "Tangential term p2, likewise, about the frame's middle."),
     "distortion_residual": QuantityInfo("px", "Rms of what the view leaves of the points, each way.", least=0),
@@ -102,7 +104,12 @@ class Options:
     distance_uncertainty: float | str = field(
         default=0.0, metadata={"sentence": "Its relative standard uncertainty, e.g. 0.2 %."}
     )
-    radial_terms: int = field(default=3, metadata={"sentence": f"Number of radial terms, 1 to {MOST_TERMS}."})
+    radial_terms: int = field(
+        default=3,
+        metadata={
+            "sentence": f"Number of radial terms, 1 to {MOST_TERMS}: 3 hold lenses up to 60° to 0.01 px, 6 up to 110°."
+        },
+    )
     centre: str = field(
         default=FITTED,
         metadata={

@@ -185,7 +185,8 @@ class _Spread:
         low, high = used.min(axis=0) - 3, used.max(axis=0) + 4
         self.grid = self.grid[low[0] : high[0], low[1] : high[1]]
         self.place = self.place - low
-        kept = self._attached(self._patch())
+        at = _positions(self.points, self.grid)
+        kept = _attached(at, _patch(at))
         for place in np.argwhere((self.grid >= 0) & ~kept):
             self.known[self.grid[tuple(place)]] = False
             self.grid[tuple(place)] = -1
@@ -196,45 +197,46 @@ class _Spread:
         places = self.place[members]
         return LatticeIndex(members, places - places.min(axis=0), self.steps[members])
 
-    def _patch(self) -> Flags:
-        """Return the places in cells that are nearly parallelograms; of many patches of them in the largest alone."""
-        from scipy.ndimage import label  # noqa: PLC0415 - heavy
 
-        at = self._positions()
-        corners = at[:-1, :-1], at[1:, :-1], at[:-1, 1:], at[1:, 1:]
-        close = np.hypot(*np.moveaxis(corners[0] + corners[3] - corners[1] - corners[2], 2, 0))
-        sides = [np.hypot(*np.moveaxis(corners[n] - corners[0], 2, 0)) for n in (1, 2)]
-        with np.errstate(invalid="ignore"):
-            cells, count = label(close < BEND * np.minimum(*sides))
-        kept = np.zeros(self.grid.shape, dtype=bool)
-        if count:
-            sizes = np.bincount(cells.ravel())[1:]
-            sound = sizes.max() > MAIN * sizes.sum()  # what gaps have cut off from a large lattice is part of it too
-            meant = cells > 0 if sound else cells == sizes.argmax() + 1
-            for i, j in ((0, 0), (1, 0), (0, 1), (1, 1)):
-                kept[i : i - 1 or None, j : j - 1 or None] |= meant
-        return kept
+def _patch(at: Real) -> Flags:
+    """Return the places in cells that are nearly parallelograms; of many patches of them in the largest alone."""
+    from scipy.ndimage import label  # noqa: PLC0415 - heavy
 
-    def _attached(self, kept: Flags) -> Flags:
-        """Return the places of a patch with those that continue a row or column by two known steps of it."""
-        at = self._positions()
-        while True:
-            more = np.zeros_like(kept)
-            for axis in (0, 1):
-                for side in (1, -1):
-                    near, far = (np.roll(kept, n * side, axis) for n in (1, 2))
-                    one, two = (np.roll(at, n * side, axis) for n in (1, 2))
-                    off = np.hypot(*np.moveaxis(at - 2 * one + two, 2, 0))
-                    with np.errstate(invalid="ignore"):
-                        more |= near & far & (off < BEND * np.hypot(*np.moveaxis(one - two, 2, 0)))
-            more &= (self.grid >= 0) & ~kept
-            if not more.any():
-                return kept
-            kept = kept | more
+    corners = at[:-1, :-1], at[1:, :-1], at[:-1, 1:], at[1:, 1:]
+    close = np.hypot(*np.moveaxis(corners[0] + corners[3] - corners[1] - corners[2], 2, 0))
+    sides = [np.hypot(*np.moveaxis(corners[n] - corners[0], 2, 0)) for n in (1, 2)]
+    with np.errstate(invalid="ignore"):
+        cells, count = label(close < BEND * np.minimum(*sides))
+    kept = np.zeros(at.shape[:2], dtype=bool)
+    if count:
+        sizes = np.bincount(cells.ravel())[1:]
+        sound = sizes.max() > MAIN * sizes.sum()  # what gaps have cut off from a large lattice is part of it too
+        meant = cells > 0 if sound else cells == sizes.argmax() + 1
+        for i, j in ((0, 0), (1, 0), (0, 1), (1, 1)):
+            kept[i : i - 1 or None, j : j - 1 or None] |= meant
+    return kept
 
-    def _positions(self) -> Real:
-        """Return the point of every place, NaN where there is none."""
-        return np.where((self.grid >= 0)[..., None], self.points[self.grid], np.nan)
+
+def _attached(at: Real, kept: Flags) -> Flags:
+    """Return the places of a patch with those that continue a row or column by two known steps of it."""
+    while True:
+        more = np.zeros_like(kept)
+        for axis in (0, 1):
+            for side in (1, -1):
+                near, far = (np.roll(kept, n * side, axis) for n in (1, 2))
+                one, two = (np.roll(at, n * side, axis) for n in (1, 2))
+                off = np.hypot(*np.moveaxis(at - 2 * one + two, 2, 0))
+                with np.errstate(invalid="ignore"):
+                    more |= near & far & (off < BEND * np.hypot(*np.moveaxis(one - two, 2, 0)))
+        more &= ~np.isnan(at[..., 0]) & ~kept
+        if not more.any():
+            return kept
+        kept = kept | more
+
+
+def _positions(points: Real, grid: Whole) -> Real:
+    """Return the point of every place, NaN where there is none."""
+    return np.where((grid >= 0)[..., None], points[grid], np.nan)
 
 
 def _steps_of(points: Real, grid: Whole, places: Whole, old: Real) -> Real:

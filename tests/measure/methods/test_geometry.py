@@ -155,7 +155,7 @@ def test_a_lens_of_few_terms_says_so() -> None:
         ({"pitch": "5 px"}, "pitch is '5 px'"),
         ({"pitch": "0 mm"}, "pitch is '0 mm'"),
         ({"pitch_uncertainty": "80 %"}, "allowed is 0 % to 50 %"),
-        ({"radial_terms": 5}, "radial_terms is 5; allowed are whole numbers from 1 to 4"),
+        ({"radial_terms": 7}, "radial_terms is 7; allowed are whole numbers from 1 to 6"),
         ({"centre": "middle"}, "centre is 'middle'; allowed are fitted and frame"),
         ({"distanse": "1 mm"}, "did you mean 'distance'"),
     ],

@@ -131,3 +131,17 @@ def test_too_few_points() -> None:
 
     with pytest.raises(ViewLost, match="10 points do not determine 13 parameters"):
         fit_view(SCENE.seen(places), places, np.full(10, 0.01), SCENE.size, Lens(3), Marks())
+
+
+def test_a_wide_lens_that_is_no_polynomial() -> None:
+    """An equidistant lens (r = f θ) of 110° over 12 MP: six radial terms leave 0.05 px at most, and find its middle."""
+    y, x = np.mgrid[0:29, 0:39]
+    places = np.column_stack([x.ravel(), y.ravel()]).astype(np.float64)
+    half, widest = 2500.0, np.radians(55.0)
+    tangents = (places - [19, 14]) / np.hypot(19, 14) * np.tan(widest) * 0.98
+    r = np.hypot(*tangents.T)
+    points = tangents * (half / widest * np.arctan(r) / np.maximum(r, 1e-12))[:, None] + [2000.0, 1500.0]
+    fit = fit_view(points, places, np.full(len(points), 0.01), (4000, 3000), Lens(6), Marks())
+
+    assert np.abs(fit.residuals).max() < 0.05
+    assert fit.view.centre == pytest.approx([2000, 1500], abs=0.01)
