@@ -316,7 +316,7 @@ def _plain(star: _Star, blank: Reading) -> Reading:
     if blank.quantity in {"star_centre_x", "star_centre_y"}:
         axis = 0 if blank.quantity.endswith("x") else 1
         corner = (box.x0, box.y0)[axis]
-        return _valued(blank, corner + at.centre[axis] + 0.5, at.doubt, (Component("method bias", 2e-3, "B"),))
+        return _valued(blank, corner + at.centre[axis] + 0.5, at.doubt, (Component("method bias", 5e-4, "B"),))
     if blank.quantity == "diameter_ratio":
         return _valued(blank, at.ratio, 2 * at.doubt / at.outer, (Component("method bias", 1e-4, "B"),))
     order = 0 if blank.quantity == "second_harmonic" else 1
