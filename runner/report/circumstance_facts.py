@@ -102,7 +102,9 @@ def methods_fact(document: Document) -> tuple[tuple[str, str, str], ...]:
     """Return title, options and sources of every module that took part."""
     rows: dict[tuple[str, str], tuple[str, str, str]] = {}
     for method in document["methods"]:
-        options = ", ".join(f"{k.replace('_', ' ')}: {_plain(v)}" for k, v in method["options"].items())
+        options = ", ".join(
+            f"{k.replace('_', ' ')}: {_plain(v)}" for k, v in method["options"].items() if v not in (None, [])
+        )
         row = (method["title"], options or "no options", "; ".join(method["references"]))
         rows.setdefault((method["name"], options), row)
     return tuple(rows.values())

@@ -21,6 +21,10 @@ TROUBLE = frozenset({"does not conform", "cannot decide"})
 """Verdicts whose evidence comes first."""
 
 
+EVEN = frozenset({"flat field", "dark frame", "light series"})
+"""Targets whose frames hold nothing to see."""
+
+
 @dataclass(frozen=True)
 class PictureFact:
     """An overview picture."""
@@ -139,7 +143,7 @@ def _where(one: Mapping[str, Any], document: Document) -> str:
 
 
 def picture_facts(document: Mapping[str, Any]) -> tuple[PictureFact, ...]:
-    """Return the overviews that show regions; a capture without regions needs no picture on paper."""
+    """Return the overviews; an even field without regions needs no picture on paper."""
     facts = []
     for picture in document["pictures"]:
         capture = _pictured(picture, document["captures"])
@@ -149,12 +153,15 @@ def picture_facts(document: Mapping[str, Any]) -> tuple[PictureFact, ...]:
             for n, r in enumerate(regions, 1)
             if r["region"]
         )
+        attempt = "" if capture["attempt"] == 1 else f", attempt {capture['attempt']}"
         if named:
-            attempt = "" if capture["attempt"] == 1 else f", attempt {capture['attempt']}"
-            title = f"Regions of '{capture['name']}'{attempt} as found"
+            title = f"Regions of '{capture['name']}'{attempt} as found:"
             words = ", ".join(f"{n} {name}" for n, name in named)
             alt = f"Frame of {capture['name']}{attempt} with regions {words}"
             facts.append(PictureFact(picture["name"], title, alt, named))
+        elif capture["target"] not in EVEN:
+            title = f"First frame of '{capture['name']}'{attempt}"
+            facts.append(PictureFact(picture["name"], title, f"Frame of {capture['name']}{attempt}", ()))
     return tuple(facts)
 
 

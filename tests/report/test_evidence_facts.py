@@ -22,7 +22,7 @@ def test_a_picture_names_its_regions_by_number() -> None:
     (fact,) = picture_facts(world.failing())
 
     assert fact.regions == tuple((str(n), name) for n, name in enumerate(world.BOXES, 1))
-    assert fact.title == "Regions of 'chart' as found"
+    assert fact.title == "Regions of 'chart' as found:"
     assert fact.alt.startswith("Frame of chart with regions 1 centre, 2 corners upper left, ")
 
 
@@ -31,6 +31,16 @@ def test_regions_that_were_not_found_are_told() -> None:
     (fact,) = picture_facts(world.unmeasured())
 
     assert {name.endswith(" (not found)") for _, name in fact.regions} == {True}
+
+
+def test_a_frame_without_regions_is_shown_unless_it_is_even() -> None:
+    """A board seen whole is evidence for an auditor; a flat field or a dark frame shows nothing."""
+    document = world.document()
+    chart = next(c for c in document["captures"] if c["name"] == "chart")
+    chart["regions"] = []
+    assert [fact.title for fact in picture_facts(document)] == ["First frame of 'chart'"]
+    chart["target"] = "flat field"
+    assert picture_facts(document) == ()
 
 
 def test_each_attempt_has_its_own_regions() -> None:
@@ -44,9 +54,9 @@ def test_each_attempt_has_its_own_regions() -> None:
 
     two, one = picture_facts(document)
 
-    assert two.title == "Regions of 'chart', attempt 2 as found"
+    assert two.title == "Regions of 'chart', attempt 2 as found:"
     assert two.regions[0] == ("1", "centre (not found)")
-    assert (one.title, one.regions[0]) == ("Regions of 'chart' as found", ("1", "centre"))
+    assert (one.title, one.regions[0]) == ("Regions of 'chart' as found:", ("1", "centre"))
 
 
 def test_a_capture_without_regions_needs_no_picture() -> None:
