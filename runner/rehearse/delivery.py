@@ -9,7 +9,7 @@ References:
 
 import json
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from hashlib import sha256
 from pathlib import Path
 from typing import Any, Literal
@@ -47,11 +47,15 @@ class Shot:
     """From 1."""
     codes: Codes
     """Rows × columns."""
+    step: str = ""
+    """Where along the capture's axis it was taken, as names say; empty without one."""
+    said: Mapping[str, Any] = field(default_factory=dict)
+    """What its sidecar says besides, or otherwise."""
 
 
-def file_name(delivery: Delivery, capture: str, repeat: int) -> str:
+def file_name(delivery: Delivery, capture: str, repeat: int, step: str = "") -> str:
     """Return the name of a frame's file."""
-    return f"{capture}-{repeat}.{'raw' if capture in delivery.raw else 'tif'}"
+    return f"{'-'.join(filter(None, (capture, step, str(repeat))))}.{'raw' if capture in delivery.raw else 'tif'}"
 
 
 def pack(codes: Codes, packing: str) -> bytes:
@@ -88,12 +92,12 @@ def deliver(
     listed: list[dict[str, Any]] = []
     write = _writer(folder, listed)
     for number, shot in enumerate(shots, 1):
-        name = file_name(delivery, shot.capture, shot.repeat)
+        name = file_name(delivery, shot.capture, shot.repeat, shot.step)
         whole = pack(shot.codes, delivery.packing) if name.endswith(".raw") else tiff_bytes(shot.codes, serial, truth)
         cut = mishap == "half copied" and shot is _last_raw(shots, delivery)
         write(name, whole, half(whole) if cut else whole)
         if delivery.settings is not None:
-            said = {"probatum": MARK, "serial": serial, "counter": number, **delivery.settings}
+            said = {"probatum": MARK, "serial": serial, "counter": number, **delivery.settings, **shot.said}
             text = (json.dumps(said, sort_keys=True) + "\n").encode()
             write(f"{Path(name).stem}.json", text, text)
     if delivery.settings is not None:

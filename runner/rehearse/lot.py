@@ -16,7 +16,7 @@ from typing import Any
 import numpy as np
 
 from runner.errors import UsageError
-from runner.rehearse import gratings, scene
+from runner.rehearse import bench, gratings, scene
 from runner.rehearse.delivery import Shot, deliver
 from runner.rehearse.flaws import Defects, plant
 from runner.rehearse.gratings import Patch
@@ -85,6 +85,9 @@ def shots(scenario: Scenario, unit: Unit) -> Iterator[Shot]:
                 firmware = _firmware(unit, _source(scenario, unit, f"readout of {name}"))
                 codes = sensor.expose(light, pattern, _source(scenario, unit, name), firmware)
             yield Shot(capture, repeat, codes)
+    if scenario.bench:
+        camera = bench.Camera(sensor, scenario.mosaic, pattern, unit.transfer_at, view.mm_per_px, unit.bench)
+        yield from bench.shots(scenario.bench, camera, scenario.photons, lambda name: _source(scenario, unit, name))
 
 
 def pattern_of(scenario: Scenario, unit: Unit) -> Pattern:
@@ -152,6 +155,8 @@ def truth(scenario: Scenario, unit: Unit) -> dict[str, Any]:
         known["defects"] = asdict(unit.defects)
     if unit.illumination:
         known["shading correction"] = unit.correction
+    if scenario.bench:
+        known["bench"] = bench.known(unit.bench)
     return known
 
 

@@ -13,10 +13,13 @@ from typing import Any
 from pydantic import ValidationError
 
 from runner.rehearse.amounts import Shape
+from runner.rehearse.bench_captures import BenchCapture, BenchUnit
+from runner.rehearse.bench_shapes import captures_of
 from runner.rehearse.delivery import Delivery, Mishap
 from runner.rehearse.flaws import Bands, Defects
 from runner.rehearse.gratings import Patch, StripeChart
 from runner.rehearse.illumination import Correction, Illumination
+from runner.rehearse.mosaics import Mosaic
 from runner.rehearse.optics import Transfer
 from runner.rehearse.scenario_shapes import ChartShape, ScenarioShape, SensorShape, StripesShape, UnitShape
 from runner.rehearse.scene import Chart, Square, View
@@ -56,6 +59,8 @@ class Unit:
     """It delivers one constant code."""
     lit: bool
     """The lamp was on."""
+    bench: BenchUnit
+    """What is particular about it in captures of the bench."""
 
     def transfer_at(self, x: float, y: float) -> Transfer:
         """Return the optics and pixel at a place of the sensor, (x, y) px from its middle."""
@@ -85,6 +90,10 @@ class Scenario:
     """How the station writes files."""
     sensor: Sensor
     """The sensor's design."""
+    mosaic: Mosaic
+    """Colours of its pixels, in captures of the bench."""
+    bench: tuple[BenchCapture, ...]
+    """Captures of other scenes."""
     units: Mapping[str, Unit]
     """Units by serial."""
 
@@ -115,6 +124,8 @@ def read_scenario(path: Path) -> Scenario:
         stripes=_stripes(shape.stripes) if shape.stripes else None,
         delivery=_delivery(shape),
         sensor=_sensor(shape.sensor),
+        mosaic=Mosaic(shape.sensor.mosaic, shape.sensor.sensitivity),
+        bench=captures_of(shape.bench),
         units={serial: _unit(serial, unit, shape) for serial, unit in sorted(shape.units.items())},
     )
 
@@ -221,4 +232,5 @@ def _unit(serial: str, unit: UnitShape, shape: ScenarioShape) -> Unit:
         mishap=unit.files,
         dead=unit.readout == "dead",
         lit=unit.lamp == "lit",
+        bench=unit.bench.unit(hypot(*sensor.frame_size) / 2),
     )

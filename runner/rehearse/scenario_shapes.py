@@ -17,6 +17,7 @@ from runner.rehearse.amounts import (
     Share,
     amount_in,
 )
+from runner.rehearse.bench_shapes import BenchUnitShape, CaptureShape, CaptureWord
 from runner.rehearse.delivery import Mishap
 from runner.rehearse.illumination import Correction
 from runner.spec.device_leaves import read_frame_size
@@ -106,6 +107,10 @@ class SensorShape(Shape):
     """DN without light."""
     bit_depth: Annotated[int, amount_in(bit=1), Field(ge=1, le=16)]
     """Bits of the converter."""
+    mosaic: Annotated[str, Field(pattern="^(RGGB|GRBG|GBRG|BGGR)$")] = "RGGB"
+    """Colours of the upper left four pixels; for captures of the bench."""
+    sensitivity: tuple[Share, Share, Share] = (1.0, 1.0, 1.0)
+    """Of red, green and blue pixels to white light, over the quantum efficiency; likewise."""
 
 
 class SharpeningShape(Shape):
@@ -187,6 +192,8 @@ class UnitShape(Shape):
     """A dead unit delivers one constant code."""
     lamp: Literal["lit", "off"] = "lit"
     """Whether the lamp of the bench was on."""
+    bench: BenchUnitShape = BenchUnitShape()
+    """What is particular about it in captures of the bench."""
 
 
 class ScenarioShape(Shape):
@@ -200,8 +207,10 @@ class ScenarioShape(Shape):
     """Seed of all noise."""
     photons: Annotated[float, amount_in(photons=1.0), Field(gt=0)]
     """Mean photons per pixel from the bright board in one frame."""
-    repeats: Mapping[CaptureName, Annotated[int, Field(ge=1, le=100)]]
+    repeats: Mapping[CaptureName, Annotated[int, Field(ge=1, le=100)]] = {}
     """Frames of each capture, in the order in which they are taken."""
+    bench: Mapping[CaptureWord, CaptureShape] = {}
+    """Captures of other scenes, each in a window of its own, taken after those."""
     chart: ChartShape | None = None
     """The chart of squares; needed for frames of `chart`."""
     stripes: StripesShape | None = None
