@@ -12,13 +12,13 @@ References:
 """
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import hypot, pi, sqrt
 
 import numpy as np
 from numpy.typing import NDArray
 
-from runner.measure.numerics.grating_fit import GratingFit, Lattice, fit_grating
+from runner.measure.numerics.grating_fit import PROBES, GratingFit, Lattice, fit_grating
 
 Real = NDArray[np.float64]
 
@@ -28,6 +28,8 @@ ALTERNATES = 0.7
 """cy/px; up to here harmonics alternate in sign whatever the bars' direction."""
 REST = 0.3
 """Of the last harmonic: what the rest of the series may be misjudged by (bars under blurs of 0.2 to 1 px)."""
+CHANCE = 1 + 2 / sqrt(PROBES)
+"""Power about the fundamental over white noise's that a mean of so many ordinates reaches by chance."""
 LEAST_ORDER, MOST_ORDER = 7, 17
 """Harmonics fitted."""
 
@@ -70,7 +72,7 @@ def fit_bars(lattices: Sequence[Lattice], start: tuple[float, float], *, backgro
     """
     f = hypot(*start)
     orders = min(MOST_ORDER, max(LEAST_ORDER, int(FINEST / f)))
-    fit = fit_grating(lattices, start, harmonics=orders, background=background)
+    fit = _without_chance(fit_grating(lattices, start, harmonics=orders, background=background))
     c = fit.amplitudes
     phase = float(np.angle(c[0]))
     order = np.arange(1, orders + 1)
@@ -99,4 +101,18 @@ def fit_bars(lattices: Sequence[Lattice], start: tuple[float, float], *, backgro
         first / fit.level,
         hypot(first_u, first / fit.level * fit.level_u) / fit.level,
         weight * told,
+    )
+
+
+def _without_chance(fit: GratingFit) -> GratingFit:
+    """Return a fit whose uncertainties are not raised by what is only chance in the residual's power."""
+    if fit.excess > CHANCE:
+        return fit
+    root = sqrt(fit.excess)
+    return replace(
+        fit,
+        frequency_cov=fit.frequency_cov / fit.excess,
+        amplitude_u=fit.amplitude_u / root,
+        phase_u=fit.phase_u / root,
+        excess=1.0,
     )
