@@ -28,7 +28,7 @@ def amount_in(**factors: float) -> BeforeValidator:
     return BeforeValidator(read)
 
 
-_SPELLING = {"percent": "%", "electrons": "e-", "dn_per_e": "DN/e-", "cycles": "cy/px"}
+_SPELLING = {"percent": "%", "electrons": "e-", "dn_per_e": "DN/e-", "cycles": "cy/px", "line_pairs": "lp/mm"}
 Microns = Annotated[float, amount_in(um=1.0, nm=1e-3, mm=1e3)]
 Millimetres = Annotated[float, amount_in(mm=1.0)]
 Degrees = Annotated[float, amount_in(deg=1.0)]
@@ -38,3 +38,4 @@ Electrons = Annotated[float, amount_in(electrons=1.0)]
 Codes = Annotated[float, amount_in(DN=1.0)]
 CyclesPerPixel = Annotated[float, amount_in(cycles=1.0)]
 Hertz = Annotated[float, amount_in(Hz=1.0)]
+LinePairs = Annotated[float, amount_in(line_pairs=1.0)]

@@ -5,6 +5,7 @@ from dataclasses import dataclass, field
 from runner.rehearse.bars import BarChart
 from runner.rehearse.denoising import Denoising
 from runner.rehearse.lattices import Board, DotGrid
+from runner.rehearse.line_targets import ElementChart, Wedge
 from runner.rehearse.painting import Lens
 from runner.rehearse.patches import PatchChart
 from runner.rehearse.scene import Chart
@@ -12,7 +13,7 @@ from runner.rehearse.sequences import SequenceFaults
 from runner.rehearse.stars import Star
 from runner.rehearse.texture import NoiseTexture
 
-BenchScene = Star | BarChart | DotGrid | Board | NoiseTexture | PatchChart | Chart
+BenchScene = Star | BarChart | ElementChart | Wedge | DotGrid | Board | NoiseTexture | PatchChart | Chart
 """What may stand before the camera; without one, an even field."""
 
 

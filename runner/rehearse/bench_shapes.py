@@ -5,11 +5,12 @@ from typing import Annotated, Literal, Self
 
 from pydantic import BeforeValidator, Field, model_validator
 
-from runner.rehearse.amounts import Codes, Degrees, Hertz, Microns, Millimetres, Shape, Share
+from runner.rehearse.amounts import Codes, Degrees, Hertz, LinePairs, Microns, Millimetres, Shape, Share
 from runner.rehearse.bars import BarChart, Group
 from runner.rehearse.bench_captures import BenchCapture, BenchScene, BenchUnit, Step
 from runner.rehearse.denoising import Denoising
 from runner.rehearse.lattices import Board, DotGrid
+from runner.rehearse.line_targets import Element, ElementChart, Wedge
 from runner.rehearse.painting import Lens
 from runner.rehearse.patches import Area, PatchChart
 from runner.rehearse.scene import Chart, Square
@@ -60,6 +61,46 @@ class BarsShape(Shape):
         """Return the chart."""
         groups = {name: Group(g.place, self.side, g.period, g.direction) for name, g in self.groups.items()}
         return BarChart(self.bright, self.dark, groups)
+
+
+class ElementShape(Shape):
+    """One element of three bars."""
+
+    place: Place
+    element: tuple[int, Annotated[int, Field(ge=1, le=6)]]
+    """Group and number."""
+    direction: Degrees
+
+
+class ElementsShape(Shape):
+    """Elements of three bars, as the table has them."""
+
+    bright: Light
+    dark: Light
+    elements: Annotated[Mapping[str, ElementShape], Field(min_length=1)]
+
+    def scene(self) -> ElementChart:
+        """Return the chart; group G, number E has 2^(G + (E - 1)/6) line pairs per mm."""
+        made = {
+            name: Element(e.place, 2.0 ** (e.element[0] + (e.element[1] - 1) / 6), e.direction)
+            for name, e in self.elements.items()
+        }
+        return ElementChart(self.bright, self.dark, made)
+
+
+class WedgeShape(Shape):
+    """A wedge of converging lines."""
+
+    bright: Light
+    dark: Light
+    lines: Whole
+    length: Length
+    coarse: Annotated[LinePairs, Field(gt=0)]
+    fine: Annotated[LinePairs, Field(gt=0)]
+
+    def scene(self) -> Wedge:
+        """Return the wedge."""
+        return Wedge(self.bright, self.dark, self.lines, self.length, self.coarse, self.fine)
 
 
 class DotsShape(Shape):
@@ -141,7 +182,7 @@ class SquaresShape(Shape):
         return Chart(self.modulation, squares, ())
 
 
-SCENES = ("star", "bars", "dots", "board", "texture", "patches", "squares")
+SCENES = ("star", "bars", "elements", "wedge", "dots", "board", "texture", "patches", "squares")
 
 
 class CaptureShape(Shape):
@@ -165,6 +206,8 @@ class CaptureShape(Shape):
     """Frames a second: the frames are a sequence."""
     star: StarShape | None = None
     bars: BarsShape | None = None
+    elements: ElementsShape | None = None
+    wedge: WedgeShape | None = None
     dots: DotsShape | None = None
     board: BoardShape | None = None
     texture: TextureShape | None = None

@@ -46,7 +46,10 @@ def test_unknown_lot_is_refused(capsys: pytest.CaptureFixture[str]) -> None:
     """A lot that is not there ends in one sentence that names those that are."""
     assert run(["demo", "no_such_lot"]) == Exit.USAGE
 
-    assert capsys.readouterr().err == "LOT: there is no demo lot 'no_such_lot'; lots: walnut_line, walnut_sizer\n"
+    assert (
+        capsys.readouterr().err
+        == "LOT: there is no demo lot 'no_such_lot'; lots: walnut_bench, walnut_line, walnut_sizer\n"
+    )
 
 
 @pytest.mark.parametrize("lot", list(_lots()))
@@ -74,9 +77,11 @@ def test_without_a_lot_all_are_run_and_what_to_open_comes_last(
     monkeypatch.setattr(demo, "_run_lot", run_lot)
 
     assert run(["demo", "--out", str(tmp_path)]) == Exit.FAULT
-    assert capsys.readouterr().out == "table\ntable\nopen walnut_line\n\nopen walnut_sizer\n"
+    assert (
+        capsys.readouterr().out == "table\ntable\ntable\nopen walnut_bench\n\nopen walnut_line\n\nopen walnut_sizer\n"
+    )
     assert run(["demo", "walnut_line", "--out", str(tmp_path)]) == Exit.CONFORMS
-    lots = [(name, tmp_path / name) for name in ("walnut_line", "walnut_sizer")]
+    lots = [(name, tmp_path / name) for name in ("walnut_bench", "walnut_line", "walnut_sizer")]
     assert ran == [*lots, ("walnut_line", tmp_path)]
 
 

@@ -32,7 +32,7 @@ PLAIN = (SOUND, BENT, HUNTING, "WB4-000305")
 """Units whose firmware leaves frames alone."""
 ELSEWHERE = {"flat field", "sinusoidal grating"}
 """Targets that the walnut sizer stands before."""
-TO_COME = {"grey steps", "colour patches", "tri-bar elements", "hyperbolic wedge"}
+TO_COME = {"colour patches"}
 """Targets of which the lot has no capture yet."""
 
 
@@ -142,6 +142,34 @@ def test_the_lens_is_the_one_of_the_scenario(serial: str, scenario: Scenario, de
     for channel, scale in zip(("red", "blue"), (lens.colours[0], lens.colours[2]), strict=True):
         reading = _reading(document, "dots", "", "chromatic magnification", channel)
         assert abs(reading["value"] - scale) <= 4 * reading["u"] + 1e-5, channel
+
+
+@pytest.mark.parametrize("serial", [SOUND, HUNTING])
+def test_elements_tell_the_size_of_a_pixel(serial: str, scenario: Scenario, demo: tuple[Exit, str, Path]) -> None:
+    """By the table's periods a pixel sees what the scenario says, to 0.5 %: distortion, and a tenth of a degree."""
+    document, truth = _results(demo[2], serial), 1e3 * scenario.units[serial].view.mm_per_px
+    for region in ("c up", "c across", "d up", "d across"):
+        reading = _reading(document, "elements", region, "pixel in object")
+        assert abs(reading["value"] - truth) <= 4 * reading["u"] + 0.005 * truth, region
+    contrasts = [_reading(document, "elements", f"{n} up", "tri bar contrast")["value"] for n in "cd"]
+    assert 100 * 80 / 90 > contrasts[0] > contrasts[1] > 70  # the target's own, then finer bars lower
+
+
+@pytest.mark.parametrize("serial", [SOUND, "WB4-000305"])
+def test_grey_steps_tell_a_linear_camera(serial: str, demo: tuple[Exit, str, Path]) -> None:
+    """Codes are straight in light: departures from the best line lie below 0.5 %, and a veil is an offset."""
+    document = _results(demo[2], serial)
+
+    assert _reading(document, "greys", "greys", "linearity error")["value"] < 0.5
+
+
+def test_the_wedges_end_is_still_resolved(scenario: Scenario, demo: tuple[Exit, str, Path]) -> None:
+    """At its fine end, 0.45 cy/px, the system's transfer function lies above 10 %: what is read is a bound."""
+    reading = _reading(_results(demo[2], SOUND), "wedge", "wedge", "limiting resolution by modulation")
+
+    assert float(scenario.units[SOUND].transfer_at(0.0, 0.0).along(0.45, 90.0)) > 0.1
+    assert reading["value"] is None
+    assert reading["bound"] == ["above", pytest.approx(0.45, abs=0.01)]
 
 
 @pytest.mark.parametrize("serial", PLAIN)
