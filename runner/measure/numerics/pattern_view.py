@@ -26,6 +26,8 @@ TURNS = np.radians(np.arange(-4, 4.1, 1.0))
 SCALES = 1 + np.arange(-0.06, 0.061, 0.02)
 LEAST_PEAK = 8.0
 """Peak of the phase correlation over its own root mean square; the largest of 10⁴ places of noise reaches about 4."""
+CLEAR_PEAK = 20.0
+"""Peak at which the start is near enough: no turns and scales need be tried."""
 LEAST_ALIKE = 0.6
 """Correlation of picture and pattern, both softened by 1.5 px: noise of half the pattern's contrast leaves 0.8."""
 
@@ -133,12 +135,16 @@ def register(picture: Values, pattern: Pattern, start: View, *, search: bool) ->
     Raises:
         PatternLost: The picture shows another pattern, or this one mirrored or turned over.
     """
-    view, peak = _coarse(picture, pattern, start, search=search)
+    view, peak = _coarse(picture, pattern, start, search=False)
+    if search and peak < CLEAR_PEAK:
+        view, peak = _coarse(picture, pattern, start, search=True)
     if peak < LEAST_PEAK:
         raise PatternLost(_what_else(picture, pattern, start, peak, None))
-    for step, turns, order in ((4, 4, 3), (2, 3, 3), (1, 3, 6)):
-        for _ in range(turns):
-            view = _improved(picture, pattern, view, step, order)
+    for step, sigma, orders in ((4, 3.0, (3, 3, 3, 3)), (2, 1.2, (3, 3, 6, 6, 6))):
+        soft = pattern.blurred(sigma * view.cells_per_px)
+        seen = ndimage.gaussian_filter(picture, sigma)
+        for order in orders:
+            view = _improved(seen, soft, view, step, order)
     alike = _likeness(picture, pattern, view)
     if alike < LEAST_ALIKE:
         raise PatternLost(_what_else(picture, pattern, start, peak, alike))
@@ -184,27 +190,24 @@ def _whitened(picture: Values) -> NDArray[np.complex128]:
 
 
 def _improved(picture: Values, pattern: Pattern, view: View, step: int, order: int) -> View:
-    """Return the view after one Gauss-Newton step on every so many-th pixel of softened pictures."""
-    soft_cells = max(0.5, 0.7 * step * view.cells_per_px)
-    soft = pattern.blurred(soft_cells)
-    seen = ndimage.gaussian_filter(picture, soft_cells / view.cells_per_px)
+    """Return the view after one Gauss-Newton step on every so many-th pixel of a softened picture and pattern."""
     edge = 2 * step + 2
-    x = np.arange(edge, picture.shape[1] - edge, step) + 0.5
-    y = (np.arange(edge, picture.shape[0] - edge, step) + 0.5)[:, None]
+    x: Values = np.arange(edge, picture.shape[1] - edge, step, dtype=np.float64) + 0.5
+    y: Values = (np.arange(edge, picture.shape[0] - edge, step, dtype=np.float64) + 0.5)[:, None]
     u, v = view.cells(x, y)
-    little = 0.25
-    by_u = (soft.at(u + little, v) - soft.at(u - little, v)) / (2 * little)
-    by_v = (soft.at(u, v + little) - soft.at(u, v - little)) / (2 * little)
-    known = soft.at(u, v)
-    values = seen[edge : picture.shape[0] - edge : step, edge : picture.shape[1] - edge : step]
+    little = 0.05
+    known = pattern.at(u, v)
+    by_u = (pattern.at(u + little, v) - known) / little
+    by_v = (pattern.at(u, v + little) - known) / little
+    values = picture[edge : picture.shape[0] - edge : step, edge : picture.shape[1] - edge : step]
     powers = view.powers(x, y)
     gain = float(np.cov(known.ravel(), values.ravel())[0, 1] / known.var())
     columns = [gain * by_u * p for p in powers[:order]] + [gain * by_v * p for p in powers[:order]]
     columns += [known * p for p in powers[:3]] + powers[:3]
-    design = np.stack([c.ravel() for c in columns], axis=1)
+    design = np.stack([c.ravel() for c in columns])
     target = (values - gain * known).ravel()
-    normal = design.T @ design
-    moved = np.linalg.solve(normal + 1e-9 * np.diag(np.diag(normal)), design.T @ target)
+    normal = design @ design.T
+    moved = np.linalg.solve(normal + 1e-9 * np.diag(np.diag(normal)), design @ target)
     terms = view.terms.copy()
     terms[0, :order] += moved[:order]
     terms[1, :order] += moved[order : 2 * order]

@@ -34,14 +34,14 @@ LEAST_WAVES = 120
 
 @dataclass(frozen=True)
 class Spectra:
-    """Spectra of the frames and of the pattern, on the picture's own frequencies."""
+    """Spectra of the frames and of the pattern, on the picture's own frequencies; ordinates rise in frequency."""
 
     frames: tuple[Complex, ...]
     """Of each frame over its mean, half plane."""
     known: Complex
     """Of the pattern over its mean."""
     f: Values
-    """Frequency of each ordinate, cy/px; infinite for those that do not count."""
+    """Frequency of each ordinate, cy/px."""
     weight: Values
     """2 where an ordinate stands for its mirror image too, else 1."""
 
@@ -78,13 +78,16 @@ def spectra(pictures: Sequence[Values], pattern: Pattern, view: View) -> Spectra
     known = np.concatenate([whole[: (rows + 1) // 2, :half], whole[-(rows // 2) :, :half]])
     seen = tuple(fft.rfft2((one / np.average(one, weights=window) - 1) * window) for one in pictures)
     f = np.hypot(fft.fftfreq(rows)[:, None], fft.rfftfreq(columns)[None, :])
-    f[np.abs(fft.fftfreq(rows)) >= 0.5 - 0.5 / rows] = np.inf
     weight = np.full(f.shape, 2.0)
     weight[:, 0] = 1.0
-    if columns % 2 == 0:
-        f[:, -1] = np.inf
-    f[0, 0] = np.inf
-    return Spectra(seen, known, f, weight)
+    counts = np.ones(f.shape, dtype=bool)
+    counts[0, 0] = False
+    counts[np.abs(fft.fftfreq(rows)) >= 0.5 - 0.5 / rows] = False
+    counts[:, columns // 2 :] = False
+    order = np.argsort(f[counts], kind="stable")
+    return Spectra(
+        tuple(one[counts][order] for one in seen), known[counts][order], f[counts][order], weight[counts][order]
+    )
 
 
 def even_light(picture: Values, pattern: Pattern, view: View) -> Values:
@@ -144,9 +147,9 @@ def direct_transfer(given: Spectra, frequency: float) -> Transfer | None:
     return Transfer(value, u, float(square > 0))
 
 
-def _near(given: Spectra, frequency: float) -> NDArray[np.bool_] | None:
-    near = np.abs(given.f - frequency) <= REACH
-    return near if float(given.weight[near].sum()) / 2 >= LEAST_WAVES else None
+def _near(given: Spectra, frequency: float) -> slice | None:
+    first, last = np.searchsorted(given.f, (frequency - REACH, frequency + REACH))
+    return slice(first, last) if float(given.weight[first:last].sum()) / 2 >= LEAST_WAVES else None
 
 
 def _hann(count: int, finer: int) -> Values:
