@@ -20,6 +20,7 @@ from runner.measure.reading import Component, Curve, Reading, Refusal
 
 NAME = "resolving power"
 TITLE = "Resolving power by tri-bar elements"
+GROUP = "transfer function"
 NEEDS = frozenset({"three bars"})
 GATHERS = True
 REFERENCES = ("MIL-STD-150A (1959) 5.1.1.7 (table of elements)", "JCGM 100:2008 (uncertainty)")

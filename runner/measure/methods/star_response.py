@@ -158,7 +158,8 @@ def measure(sample: Sample, options: Options) -> Measurement:
     plain = [Wanted(name, {}, {}) for name, info in quantities().items() if not info.parameters]
     wishes: dict[tuple[object, ...], Wanted] = {}
     for one in (*sample.wanted, *plain):
-        wishes.setdefault((one.quantity, one.part, *sorted(one.at.items())), one)
+        key = one.quantity, one.part, *sorted((k, a.value, a.unit) for k, a in one.parameters.items())
+        wishes.setdefault(key, one)
     if star.own == 0.0:
         raise MeasurementRefused("no modulation", "the star has no modulation")
     curves = {part: _curves(star, part) for part in {one.part for one in wishes.values()}}

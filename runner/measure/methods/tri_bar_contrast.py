@@ -20,6 +20,7 @@ from runner.measure.reading import Component, Reading, Refusal
 
 NAME = "tri-bar contrast"
 TITLE = "Contrast of tri-bar elements"
+GROUP = "transfer function"
 NEEDS = frozenset({"three bars"})
 REFERENCES = ("MIL-STD-150A (1959) 5.1.1.7 (table of elements)", "JCGM 100:2008 (uncertainty)")
 ESTIMATOR = "three bars"

@@ -20,6 +20,7 @@ from runner.measure.targets.hyperbolic_wedge import turned
 
 NAME = "wedge resolution"
 TITLE = "Limiting resolution of a wedge"
+GROUP = "transfer function"
 NEEDS = frozenset({"wedge"})
 REFERENCES = (
     "ISO 12233:2014 (visual resolution from hyperbolic wedges)",

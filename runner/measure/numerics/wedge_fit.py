@@ -67,9 +67,13 @@ class _Line:
     """f = a + b z, y_c = c + d z."""
 
     a: float
+    """Frequency at the patch's left border, cy/px."""
     b: float
+    """How it rises, cy/px per px."""
     c: float
+    """Middle line's row at the left border, px."""
     d: float
+    """Its slope."""
 
     def f(self, z: Real) -> Real:
         """Return the frequency."""

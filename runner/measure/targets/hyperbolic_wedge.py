@@ -16,6 +16,7 @@ from runner.spec.model import Camera, Region
 
 NAME = "hyperbolic wedge"
 TITLE = "Hyperbolic resolution wedge"
+GROUP = "transfer function"
 OFFERS = frozenset({"wedge"})
 METHODS = ("wedge resolution",)
 REFERENCES = (

@@ -22,6 +22,7 @@ from runner.spec.model import Camera, Region
 
 NAME = "tri-bar elements"
 TITLE = "Tri-bar elements"
+GROUP = "transfer function"
 OFFERS = frozenset({"three bars"})
 METHODS = ("tri-bar contrast", "resolving power")
 REFERENCES = ("MIL-STD-150A (1959) 5.1.1.7 (table of elements)",)
