@@ -29,7 +29,10 @@ def refuse_uneven(frames: planes.Stack, *, lit: bool) -> None:
     """
     camera, file = frames.camera, frames.files[0]
     if not lit:
-        level = float(np.median(frames.codes[0].ravel()[:: max(1, frames.size // ENOUGH)])) - camera.black_level
+        level = (
+            float(np.median(np.asarray(frames.codes[0][:]).ravel()[:: max(1, frames.size // ENOUGH)]))
+            - camera.black_level
+        )
         share = level / (camera.white_level - camera.black_level)
         if share > MOST_DARK:
             raise MeasurementRefused(

@@ -97,6 +97,7 @@ def centres_of(found: Found, crop: Crop) -> Centres:
         settled, blur = fits.settled, fits.blur
     rest = misfit / np.maximum(np.abs(step), 1e-9)
     good &= settled & (rest < np.maximum(STRANGE * np.median(rest), 0.02)) & np.isfinite(covariance[:, 0, 0])
+    good &= np.einsum("nii->n", covariance) >= 0  # an ill-posed fit may leave a negative variance
     lost = int(np.count_nonzero(~good))
     if lost > MOST_LOST * len(start) or len(start) - lost < LEAST_POINTS:
         found_words = f"{lost} of {len(start)} {words} do not look like {words}: their borders cannot be fitted"

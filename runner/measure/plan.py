@@ -178,7 +178,7 @@ def _bind_wants(
     context = units.context_of(capture.camera, capture.optics)
     others = [method for method, _ in bound if not getattr(method, "GATHERS", False)]
     for method, options in bound:
-        for quantity, parameters in method.wants(options) if hasattr(method, "wants") else ():
+        for quantity, parameters in method.wants(options.options) if hasattr(method, "wants") else ():
             where = f"{place}, measure, {method.NAME}"
             other, info = _provider(quantity, None, others)
             if other is None or info is None:

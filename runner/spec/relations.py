@@ -73,6 +73,8 @@ def _unused(root: RootShape, drafts: tuple[Draft, ...], found: Complaints) -> No
                 note = f"capture '{capture.name}' has no limits and no other capture uses it"
                 found.warn(root.at("captures", capture.name), note, "", "drop it or give it limits")
             continue
+        if any(not limit.where for limit in capture.limits):
+            continue  # a value of the whole capture may use every region
         used = {region for limit in capture.limits for region in (*limit.where, *limit.against)}
         for name in shape.regions or {}:
             if not any(region.name in used for region in capture.regions if name in {region.name, region.group}):

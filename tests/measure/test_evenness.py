@@ -48,3 +48,12 @@ def test_processed_frames_may_have_twice_as_much() -> None:
     with pytest.raises(MeasurementRefused, match="picture"):
         refuse_uneven(_stack(9000 + noise, lit=True), lit=True)
     refuse_uneven(_stack(9000 + noise, lit=True, processing=("denoised",)), lit=True)
+
+
+@pytest.mark.parametrize("channel", ["red", "green", "blue"])
+def test_every_colour_of_a_mosaic_is_looked_at(channel: str) -> None:
+    """Even darks of a mosaic pass in each colour, green with its two sites too."""
+    frame = codes(np.random.default_rng(7).normal(0, 20, (120, 160)))
+    of = replace(camera(frame), mosaic="RGGB")
+
+    refuse_uneven(planes.stack(sample([frame], of, lit=False, channel=channel).frames), lit=False)

@@ -20,8 +20,9 @@ from scipy.interpolate import CubicSpline
 
 Real = NDArray[np.float64]
 
-ENDS = tuple(1.05 + 0.145 * n for n in range(11))
-"""Where the response may end, over the last group's frequency."""
+NEAREST, FARTHEST, STEPS = 1.05, (2.5, 10.0), 11
+"""Where the response may end, over the last group's frequency: the nearest; least and greatest of the farthest; how
+many between are tried. A Gaussian that has the last group's contrast there is down to 2 % at the farthest."""
 MOST_TERM = 801
 """Greatest k: at a frequency of 1/400 of the last one the series has come to its end."""
 TRUST, NEAR = 0.35, 1.4
@@ -80,7 +81,7 @@ class ContrastCurve:
         for word, each in self.shared.items():
             parts[word] = np.abs(_converted(self.f, self.contrast + each, f) - value)
         parts["interpolation"] = self._between(f)
-        ends = [_converted(self.f, self.contrast, f, ends=(end,)) for end in ENDS]
+        ends = [_converted(self.f, self.contrast, f, ends=(end,)) for end in _ends(float(self.contrast[-1]))]
         parts["beyond the last group"] = np.std(ends, axis=0)
         return value, parts
 
@@ -92,9 +93,14 @@ class ContrastCurve:
         return np.asarray(TRUST * np.max(np.where(near, apart[None, :], 0.0), axis=1))
 
 
-def _converted(
-    points: Real, contrast: Real, f: Real, *, straight: bool = False, ends: tuple[float, ...] = ENDS
-) -> Real:
+def _ends(last: float) -> tuple[float, ...]:
+    """Return where the response may end, over the last group's frequency, by the contrast that it still has there."""
+    farthest = float(np.clip(np.sqrt(-4 / np.log(np.clip(last, 0.01, 0.99))), *FARTHEST))
+    return tuple(np.linspace(NEAREST, farthest, STEPS).tolist())
+
+
+def _converted(points: Real, contrast: Real, f: Real, *, straight: bool = False, ends: tuple[float, ...] = ()) -> Real:
+    ends = ends or _ends(float(contrast[-1]))
     x, y = np.insert(points, 0, 0.0), np.insert(contrast, 0, 1.0)
     curve = None if straight or x.size < 3 else CubicSpline(x, y)
     out, last = np.zeros_like(f), float(points[-1])

@@ -82,3 +82,16 @@ def test_the_stated_uncertainty_covers() -> None:
 
     assert np.mean(np.abs(z) <= 2) >= 0.93
     assert abs(np.mean(z)) < 0.3
+
+
+def test_a_last_group_that_is_hardly_weakened_leaves_the_end_open() -> None:
+    """With contrast left beyond the last group, its fall may lie far out: the truth stays within 2u all the same."""
+    f = np.array([0.03, 0.06, 0.09, 0.125])
+    contrast = _contrast(f, 1.1, 0.4)
+    curve = ContrastCurve(f, contrast, np.full(4, 1e-3), {})
+    value, parts = curve.converted(np.array([0.06, 0.083]))
+    truth = _pupil(np.array([0.06, 0.083]) / 1.1) * np.exp(-2 * (np.pi * 0.4 * np.array([0.06, 0.083])) ** 2)
+    u = np.sqrt(sum(part**2 for part in parts.values()))
+
+    assert contrast[-1] > 0.85
+    assert np.all(np.abs(value - truth) <= 2 * u)
