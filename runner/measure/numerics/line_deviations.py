@@ -1,12 +1,7 @@
 """How far points lie off their best straight line, in relative terms: mean or largest size, noise taken off.
 
-Sizes are never negative, so noise alone makes them positive. The deviations as found are therefore made smaller by one
-factor until, with the noise put on again, they read on average what was read; the interval of factors that do not
-contradict the reading gives the uncertainty (Neyman's construction along that one direction).
-
 References:
     EMVA Standard 1288 Release 4.0 Linear (2021), linearity: line of least relative deviations, mean of their sizes.
-    J. Neyman, Phil. Trans. R. Soc. A 236 (1937) 333 (confidence intervals).
     JCGM 101:2008 (propagation of distributions).
 """
 
@@ -15,13 +10,11 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from runner.measure.numerics.sizes import FACTORS, normal_draws, told
+
 Real = NDArray[np.float64]
 
-DRAWS = 1000
-"""Draws of the noise: a mean is then known within 3 % of its spread."""
 SEED = 1288
-FACTORS = np.concatenate([np.linspace(0, 2, 17), np.geomspace(2.2, 12, 14)])
-"""Of the deviations as found: from none at all to many times as large."""
 PLAIN = 0.08
 """Spread of the size over the size: below, only factors near 1 are of interest."""
 
@@ -63,8 +56,8 @@ def deviation_sizes(x: Real, y: Real, y_u: Real, x_u: float) -> tuple[Size, Size
         x_u: Standard uncertainty of each point, as a share of it.
     """
     found = deviations(x, y)
-    rng = np.random.default_rng(SEED)
-    by_y, by_x = rng.standard_normal((2, DRAWS, x.size))
+    both = normal_draws(SEED, 2, x.size)
+    by_y, by_x = both[:, 0], both[:, 1]
     moved_y, moved_x = np.maximum(y + y_u * by_y, 0.2 * y), x * (1 + x_u * by_x)
     noise = deviations(np.broadcast_to(x, by_x.shape), moved_y) - found
     light = deviations(moved_x, np.broadcast_to(y, by_y.shape)) - found
@@ -85,22 +78,6 @@ def _size(found: Real, noise: Real, light: Real, *, largest: bool) -> Size:
     for n, factor in enumerate(factors):
         drawn = size(factor * found + both)
         means[n], spreads[n] = float(drawn.mean()), float(drawn.std())
-    value, high, low = (
-        _crossing(factors, np.maximum.accumulate(curve), read) * read
-        for curve in (means, means - 2 * spreads, means + 2 * spreads)
-    )
-    u = max(high - value, value - low) / 2
+    value, u = told(read, means, spreads, factors)
     share = float(noise.var() / (noise.var() + light.var()))
     return Size(value, float(u * np.sqrt(share)), float(u * np.sqrt(1 - share)))
-
-
-def _crossing(factors: Real, curve: Real, at: float) -> float:
-    """Return the factor from which on a rising curve lies above a value: the first where it does from the start."""
-    above = np.flatnonzero(curve >= at)
-    if not above.size:
-        return float(factors[-1])
-    n = int(above[0])
-    if n == 0:
-        return float(factors[0])
-    part = (at - curve[n - 1]) / (curve[n] - curve[n - 1])
-    return float(factors[n - 1] + part * (factors[n] - factors[n - 1]))
