@@ -4,7 +4,7 @@ Each group gives the contrast transfer at its own frequency (`bar response`); gr
 series needs the response at odd multiples of a frequency; what the groups do not reach is told in the uncertainty.
 """
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from math import sqrt
 from typing import NoReturn
@@ -16,6 +16,7 @@ from runner.errors import MeasurementRefused
 from runner.measure.contract import Measurement, QuantityInfo, Sample, Scene, Wanted
 from runner.measure.numerics.coltman import ContrastCurve
 from runner.measure.options import lookups, reader
+from runner.measure.patch_points import lost_patch, points_of
 from runner.measure.reading import Component, Curve, Reading, Refusal
 
 NAME = "coltman conversion"
@@ -30,8 +31,6 @@ REFERENCES = (
 )
 ESTIMATOR = "coltman series"
 
-SAME = 0.02
-"""Groups whose frequencies differ by a smaller share are repeats of one frequency and averaged."""
 LEAST_FREQUENCIES = 3
 POINTS = 81
 """Of the curve."""
@@ -75,11 +74,11 @@ def gather(scene: Scene, options: Options) -> Measurement:  # noqa: ARG001 - the
     Raises:
         MeasurementRefused: Something is wanted and a group was not measured, or they have too few frequencies.
     """
-    readings = scene.steps[0].readings
-    lost = _lost(scene, readings)
+    lost = lost_patch(scene, "contrast_transfer", "group")
     if scene.wanted and lost is not None:
         raise MeasurementRefused(lost.cause, lost.because)
-    curve = _points(readings)
+    points = points_of(scene.steps[0].readings, "bar_frequency", "contrast_transfer")
+    curve = ContrastCurve(points.f, points.values, points.own, points.shared)
     if curve.f.size < LEAST_FREQUENCIES:
         if not scene.wanted:
             return Measurement(())
@@ -99,48 +98,6 @@ def gather(scene: Scene, options: Options) -> Measurement:  # noqa: ARG001 - the
 def _curve(scene: Scene, name: str, x: Array, y: Array, u: Array) -> Curve:
     points = [tuple(float(v) for v in each) for each in (x, y, u)]
     return Curve(scene.region, name, points[0], points[1], points[2], "cy/px", "1", estimator=ESTIMATOR)
-
-
-def _lost(scene: Scene, readings: Sequence[Reading]) -> Refusal | None:
-    if scene.lost:
-        return Refusal(scene.lost[0].cause, f"group {scene.lost[0].region}: {scene.lost[0].because}")
-    for reading in readings:
-        if reading.quantity == "contrast_transfer" and reading.refusal is not None:
-            return Refusal(reading.refusal.cause, f"group {reading.region}: {reading.refusal.because}")
-    return None
-
-
-def _points(readings: Sequence[Reading]) -> ContrastCurve:
-    frequency = {r.region: r.value for r in readings if r.quantity == "bar_frequency" and r.value is not None}
-    found = [
-        (frequency[r.region], r)
-        for r in readings
-        if r.quantity == "contrast_transfer" and r.value is not None and r.region in frequency
-    ]
-    groups: list[list[tuple[float, Reading]]] = []
-    for f, reading in sorted(found, key=lambda one: one[0]):
-        if groups and f - groups[-1][0][0] <= SAME * f:
-            groups[-1].append((f, reading))
-        else:
-            groups.append([(f, reading)])
-    words = sorted({c.shared for _, r in found for c in r.components if c.shared})
-    shared = {word: np.array([_mean([_part(r, word) for _, r in group]) for group in groups]) for word in words}
-    own = [sqrt(sum(_part(r, None) ** 2 for _, r in group)) / len(group) for group in groups]
-    return ContrastCurve(
-        np.array([_mean([f for f, _ in group]) for group in groups]),
-        np.array([_mean([float(r.value or 0.0) for _, r in group]) for group in groups]),
-        np.array(own),
-        shared,
-    )
-
-
-def _mean(values: Sequence[float]) -> float:
-    return sum(values) / len(values)
-
-
-def _part(reading: Reading, word: str | None) -> float:
-    """Return the standard uncertainty that a reading shares under a word; None is what it shares with nobody."""
-    return sqrt(sum(c.u**2 for c in reading.components if (c.shared or None) == word))
 
 
 def _reading(scene: Scene, one: Wanted, curve: ContrastCurve, grid: Array, value: Array) -> Reading:

@@ -6,7 +6,7 @@ straight line tells how far any curve can be trusted there: a quarter of it is t
 the patches nothing is known.
 """
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from math import sqrt
 from typing import NoReturn
@@ -18,6 +18,7 @@ from scipy.optimize import brentq
 from runner.errors import MeasurementRefused
 from runner.measure.contract import Measurement, QuantityInfo, Sample, Scene, Wanted
 from runner.measure.options import lookups, reader
+from runner.measure.patch_points import SAME, Points, lost_patch, points_of
 from runner.measure.reading import Component, Curve, Reading, Refusal
 
 NAME = "transfer curve"
@@ -28,8 +29,6 @@ GATHERS = True
 REFERENCES = ("ISO 15529:2010 (modulation transfer of sampled imaging systems)", "JCGM 100:2008 (uncertainty)")
 ESTIMATOR = "patches"
 
-SAME = 0.02
-"""Patches whose frequencies differ by a smaller share are repeats of one frequency and averaged."""
 LEAST_FREQUENCIES = 2
 TRUST = 0.25
 """Of what the cubic adds to a straight line: its standard uncertainty (blurs of 0.3 to 1.2 px, patches 0.05 apart)."""
@@ -50,24 +49,6 @@ Array = NDArray[np.float64]
 @dataclass(frozen=True)
 class Options:
     """There is nothing to choose."""
-
-
-@dataclass(frozen=True)
-class _Points:
-    """The curve's points, rising in frequency; no frequency at 0 among them."""
-
-    f: Array
-    """cy/px."""
-    transfer: Array
-    """Modulation transfer."""
-    own: Array
-    """Standard uncertainty that belongs to each point alone."""
-    shared: Mapping[str, Array]
-    """Standard uncertainties that points have in common, by the shared word."""
-
-    def u(self) -> Array:
-        """Return the combined standard uncertainty of each point."""
-        return np.sqrt(self.own**2 + sum((part**2 for part in self.shared.values()), np.zeros_like(self.own)))
 
 
 read_options = reader(Options)
@@ -91,11 +72,10 @@ def gather(scene: Scene, options: Options) -> Measurement:  # noqa: ARG001 - the
     Raises:
         MeasurementRefused: Something is wanted and a patch was not measured, or they have fewer than two frequencies.
     """
-    readings = scene.steps[0].readings
-    lost = _lost(scene, readings)
+    lost = lost_patch(scene, "modulation_transfer", "patch")
     if scene.wanted and lost is not None:
         raise MeasurementRefused(lost.cause, lost.because)
-    points = _points(readings)
+    points = points_of(scene.steps[0].readings, "grating_frequency", "modulation_transfer")
     if points.f.size < LEAST_FREQUENCIES:
         if not scene.wanted:
             return Measurement(())
@@ -105,7 +85,7 @@ def gather(scene: Scene, options: Options) -> Measurement:  # noqa: ARG001 - the
         scene.region,
         "mtf",
         tuple(float(v) for v in points.f),
-        tuple(float(v) for v in points.transfer),
+        tuple(float(v) for v in points.values),
         tuple(float(v) for v in points.u()),
         "cy/px",
         "1",
@@ -118,50 +98,7 @@ def gather(scene: Scene, options: Options) -> Measurement:  # noqa: ARG001 - the
     return Measurement(tuple(_reading(scene, one, points) for one in wanted), (curve,))
 
 
-def _lost(scene: Scene, readings: Sequence[Reading]) -> Refusal | None:
-    if scene.lost:
-        return Refusal(scene.lost[0].cause, f"patch {scene.lost[0].region}: {scene.lost[0].because}")
-    for reading in readings:
-        if reading.quantity == "modulation_transfer" and reading.refusal is not None:
-            return Refusal(reading.refusal.cause, f"patch {reading.region}: {reading.refusal.because}")
-    return None
-
-
-def _points(readings: Sequence[Reading]) -> _Points:
-    frequency = {r.region: r.value for r in readings if r.quantity == "grating_frequency" and r.value is not None}
-    patches = [
-        (frequency[r.region], r)
-        for r in readings
-        if r.quantity == "modulation_transfer" and r.value is not None and r.region in frequency
-    ]
-    patches.sort(key=lambda patch: patch[0])
-    groups: list[list[tuple[float, Reading]]] = []
-    for f, reading in patches:
-        if groups and f - groups[-1][0][0] <= SAME * f:
-            groups[-1].append((f, reading))
-        else:
-            groups.append([(f, reading)])
-    words = sorted({c.shared for _, r in patches for c in r.components if c.shared})
-    shared = {word: np.array([_mean([_part(r, word) for _, r in group]) for group in groups]) for word in words}
-    own = [sqrt(sum(_part(r, None) ** 2 for _, r in group)) / len(group) for group in groups]
-    return _Points(
-        np.array([_mean([f for f, _ in group]) for group in groups]),
-        np.array([_mean([float(r.value or 0.0) for _, r in group]) for group in groups]),
-        np.array(own),
-        shared,
-    )
-
-
-def _mean(values: Sequence[float]) -> float:
-    return sum(values) / len(values)
-
-
-def _part(reading: Reading, word: str | None) -> float:
-    """Return the standard uncertainty that a reading shares under a word; None is what it shares with nobody."""
-    return sqrt(sum(c.u**2 for c in reading.components if (c.shared or None) == word))
-
-
-def _reading(scene: Scene, one: Wanted, points: _Points) -> Reading:
+def _reading(scene: Scene, one: Wanted, points: Points) -> Reading:
     blank = Reading(
         scene.region,
         one.quantity,
@@ -180,7 +117,7 @@ def _reading(scene: Scene, one: Wanted, points: _Points) -> Reading:
     return _crossing(blank, _CROSSINGS[one.quantity], points)
 
 
-def _at(blank: Reading, f: float, points: _Points) -> Reading:
+def _at(blank: Reading, f: float, points: Points) -> Reading:
     if not points.f[0] * (1 - SAME) <= f <= points.f[-1] * (1 + SAME):
         found = f"the patches reach from {points.f[0]:.4f} to {points.f[-1]:.4f} cy/px, {f:g} cy/px lies outside"
         return _refused(blank, "not defined", found)
@@ -188,8 +125,8 @@ def _at(blank: Reading, f: float, points: _Points) -> Reading:
     return _valued(blank, value, (*parts, Component("curve between patches", TRUST * abs(value - straight), "B")))
 
 
-def _crossing(blank: Reading, level: float, points: _Points) -> Reading:
-    below = np.flatnonzero(points.transfer < level)
+def _crossing(blank: Reading, level: float, points: Points) -> Reading:
+    below = np.flatnonzero(points.values < level)
     if below.size == 0:
         return replace(blank, bound=("above", float(points.f[-1])))
     i = int(below[0]) - 1
@@ -204,7 +141,7 @@ def _crossing(blank: Reading, level: float, points: _Points) -> Reading:
     return _valued(blank, f, (*parts, own))
 
 
-def _between(points: _Points, f: float, scale: float) -> tuple[float, float, tuple[Component, ...]]:
+def _between(points: Points, f: float, scale: float) -> tuple[float, float, tuple[Component, ...]]:
     """Return the curve at a frequency, the straight line's value there, and the scaled parts of its uncertainty."""
     known = np.concatenate([-points.f[:1], [0.0], points.f])  # the first patch again, mirrored; then the 1 at 0
     i = int(np.clip(np.searchsorted(known, f) - 1, 1, known.size - 2))
@@ -214,8 +151,8 @@ def _between(points: _Points, f: float, scale: float) -> tuple[float, float, tup
         on_known[k] = np.prod([(f - known[j]) / (known[k] - known[j]) for j in near if j != k])
     weights, at_zero = on_known[2:].copy(), on_known[1]
     weights[0] += on_known[0]
-    value = float(weights @ points.transfer + at_zero)
-    straight = float(np.interp(f, known[1:], np.concatenate([[1.0], points.transfer])))
+    value = float(weights @ points.values + at_zero)
+    straight = float(np.interp(f, known[1:], np.concatenate([[1.0], points.values])))
     shared = [
         Component(word, scale * abs(float(weights @ part)), "B", shared=word) for word, part in points.shared.items()
     ]
