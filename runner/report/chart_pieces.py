@@ -8,6 +8,7 @@ much stronger, so that the modulation stated is the modulation drawn. Each strip
 light shines through between them.
 """
 
+import re
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, fields
 from math import ceil, cos, hypot, pi, radians, sin
@@ -268,9 +269,8 @@ def _squares(data: _Data) -> Iterator[Piece]:
 def _steps(data: _Data) -> Iterator[Piece]:
     """Grey patches in rows from the upper left, on a ground of `surround`, gaps of `gap` of a patch's pitch."""
     one = data.feature
-    tones = data.reflectances("reflectances")
-    columns = round(data.number("columns", "1", float(len(tones))))
-    rows = ceil(len(tones) / columns)
+    tones = data.reflectances("reflectance")
+    columns, rows = _layout(data, len(tones))
     gap = data.number("gap", "%", 0.1, above=-1.0)
     yield box(one.position, one.size, data.number("surround", "%", tones[len(tones) // 2]))
     pitch = one.size[0] / columns, one.size[1] / rows
@@ -292,6 +292,18 @@ def _random(data: _Data) -> Iterator[Piece]:
         raise UsageError(f"feature '{one.name}' has a side of {side:g} mm in a box of {min(one.size):g} mm")
     rows = tuple(tuple(float(v) for v in row) for row in pattern.raster)
     yield Picture(one.position, (side, side), rows)
+
+
+def _layout(data: _Data, count: int) -> tuple[int, int]:
+    """Return columns and rows of patches, all in one row where it is not said."""
+    raw = data.feature.data.get("layout", f"{count} x 1")
+    found = re.fullmatch(r"\s*(\d{1,3})\s*x\s*(\d{1,3})\s*", str(raw))
+    if found is None or int(found[1]) * int(found[2]) != count:
+        raise UsageError(
+            f"'layout' of feature '{data.feature.name}' is {raw!r}",
+            allowed=f"columns x rows of its {count} patches, e.g. {count} x 1",
+        )
+    return int(found[1]), int(found[2])
 
 
 def _black(data: _Data) -> Iterator[Piece]:

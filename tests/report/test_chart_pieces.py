@@ -86,7 +86,7 @@ def test_dots_squares_and_steps_are_counted() -> None:
     assert len(dots) == 8 * 6
     assert np.mean([dot.centre for dot in dots], axis=0) == pytest.approx((10, -5))
     assert len(_drawn("checkerboard", square="5 mm")) == 8 * 6 / 2
-    steps = _drawn("grey steps", reflectances=["5 %", "18 %", 0.4, "80 %"], columns=2)
+    steps = _drawn("grey steps", reflectance=["5 %", "18 %", 0.4, "80 %"], layout="2 x 2")
     assert [round(piece.reflectance, 3) for piece in steps[1:]] == [0.05, 0.18, 0.4, 0.8]
     assert Counter(piece.points[0][1] for piece in steps[1:]).most_common()[0][1] == 2
 
@@ -107,7 +107,7 @@ def test_dots_squares_and_steps_are_counted() -> None:
         ),
         ("slanted edge", {"angle": 5}, "'angle' of feature 'it' is 5"),
         ("flat field", {}, "lacks 'reflectance'"),
-        ("grey steps", {}, "lacks 'reflectances'"),
+        ("grey steps", {}, "lacks 'reflectance'"),
     ],
 )
 def test_what_cannot_be_drawn_is_told(kind: str, data: dict[str, Any], told: str) -> None:
