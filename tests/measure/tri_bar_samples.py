@@ -2,6 +2,7 @@
 
 from collections.abc import Mapping
 from dataclasses import replace
+from functools import lru_cache
 from typing import Any
 
 import numpy as np
@@ -32,18 +33,24 @@ def period(number: int) -> float:
 def pattern(region: str, **changes: Any) -> ThreeBars:
     """Return the closed form of a region's pattern."""
     turn = 0.05 if region[0] == "v" else 0.05 + np.pi / 2
-    made = ThreeBars((CELL, CELL), (0.4, -0.3), period(int(region[1])), turn, 0.7, 0.2, 0.6)
+    made = ThreeBars((CELL, CELL), (0.4, -0.3), period(int(region[1])), turn, 0.7, 0.2, 0.7)
     return replace(made, **changes)
 
 
-def draw(noise: float = 0.004, seed: int = 1, **changes: Any) -> NDArray[np.float64]:
+def draw(noise: float = 0.004, seed: int = 1, sigma: float = 0.7) -> NDArray[np.float64]:
     """Return the target's light: dark bars on a bright ground."""
+    out = _quiet(sigma)
+    return out + np.random.default_rng(seed).normal(0, noise, out.shape)
+
+
+@lru_cache(maxsize=8)
+def _quiet(sigma: float) -> NDArray[np.float64]:
     out = np.empty((2 * CELL, 6 * CELL))
     for region in ELEMENTS:
         row, column = (0 if region[0] == "v" else 1), int(region[1]) - 1
-        light = pattern(region, **changes).light()
+        light = pattern(region, sigma=sigma).light()
         out[row * CELL : (row + 1) * CELL, column * CELL : (column + 1) * CELL] = light
-    return out + np.random.default_rng(seed).normal(0, noise, out.shape)
+    return out
 
 
 def frame_of(light: NDArray[np.float64]) -> Frame:

@@ -34,7 +34,9 @@ WIDEST = 0.45
 """Blur over the period: a wider one leaves nothing of the bars."""
 UNLIKE = 0.03
 """Standard deviation, over the bars' own rise, by which levels of single bars and of spaces may differ."""
-MOST_PIXELS = 1200
+EXACT = 2e-3
+"""Of the rise: what the model itself leaves; levels of their own are not made of less."""
+MOST_PIXELS = 800
 """Pixels that place, direction, period and blur are fitted to."""
 COVERED = 0.85
 """Part of the looked-at area that must lie in the patch."""
@@ -133,9 +135,11 @@ def fit_three_bars(
     tried.sort(key=lambda one: one[0])
     best = None
     for _, state in tried[:BEST]:
-        found = _settled(values, own, state, fixed=known is not None)
+        found = _settled(values, own, state, fixed=known is not None, most=8)
         if best is None or found[0] > best[0]:
             best = found
+    if best is not None:
+        best = _settled(values, own, best[1], fixed=known is not None, most=40)  # the pixels used follow the fit
     if best is None or not _covered(_used(values, own, best[1][:4])[2].size, float(best[1][2]), share):
         return None
     return _read_out(values, own, best[1], fixed=known is not None)
@@ -194,7 +198,10 @@ def _columns(p: Real, t: Real, s: Real, base: float) -> Real:
     offset, more, period, sigma = p[0], p[1], float(np.exp(p[2])), float(np.exp(p[3]))
     along = t * np.cos(more) + s * np.sin(more) - offset
     sides = abs(float(np.cos(base + more))), abs(float(np.sin(base + more)))
-    steps = {k: pixel_gauss(along - k * period / 4, sigma, sides)[0] for k in (-5, -3, -1, 1, 3, 5)}
+    # one blurred step, tabulated: straight lines between its nodes are good to 3e-4 of it
+    nodes = np.linspace(-4 * sigma - 1.5, 4 * sigma + 1.5, int((8 * sigma + 3) / (0.04 * max(sigma, 0.3))) + 2)
+    table = pixel_gauss(nodes, sigma, sides)[0]
+    steps = {k: np.interp(along - k * period / 4, nodes, table) for k in (-5, -3, -1, 1, 3, 5)}
     bars = [steps[k] - steps[k + 2] for k in (-5, -1, 3)]
     return np.stack([np.ones_like(along), along / period, s / period, *bars, steps[-5] - steps[5]], axis=1)
 
@@ -209,40 +216,39 @@ def _rigid(p: Real, t: Real, s: Real, light: Real, base: float) -> tuple[Real, R
     return light - design @ factors, factors
 
 
-def _settled(values: Real, own: NDArray[np.bool_] | None, state: Real, *, fixed: bool) -> tuple[float, Real]:
-    """Return the share explained and (x, y, period, turn, sigma) from one start; the pixels used follow the fit."""
-    state, sigma, share = state[:4], float(state[4]), 0.0
-    for _ in range(2):
-        t, s, light = _used(values, own, state)
-        if light.size < LEAST_PIXELS:
-            break
-        step = max(1, light.size // MOST_PIXELS)
-        t, s, light, base = t[::step], s[::step], light[::step], float(state[3])
-        free = [0, 3] if fixed else [0, 1, 2, 3]
-        first = np.array([0.0, 0.0, np.log(state[2]), np.log(max(sigma, 0.2))])
-        low = np.array([-0.3 * state[2], -0.2, first[2] - 0.25, np.log(0.1)])
-        high = np.array([0.3 * state[2], 0.2, first[2] + 0.25, np.log(WIDEST * state[2])])
-        first[3] = np.clip(first[3], low[3] + 1e-3, high[3] - 1e-3)
+def _settled(values: Real, own: NDArray[np.bool_] | None, start: Real, *, fixed: bool, most: int) -> tuple[float, Real]:
+    """Return the share explained and (x, y, period, turn, sigma) from a start after so many steps at most."""
+    t, s, light = _used(values, own, start[:4])
+    if light.size < LEAST_PIXELS:
+        return -np.inf, start
+    step, base = max(1, light.size // MOST_PIXELS), float(start[3])
+    t, s, light = t[::step], s[::step], light[::step]
+    free = [0, 3] if fixed else [0, 1, 2, 3]
+    first = np.array([0.0, 0.0, np.log(start[2]), np.log(max(start[4], 0.2))])
+    low = np.array([-0.3 * start[2], -0.2, first[2] - 0.25, np.log(0.1)])
+    high = np.array([0.3 * start[2], 0.2, first[2] + 0.25, np.log(WIDEST * start[2])])
+    first[3] = np.clip(first[3], low[3] + 1e-3, high[3] - 1e-3)
+    steps = np.array([1e-3 * start[2], 1e-3, 1e-3, 1e-2])[free]
 
-        def left(
-            q: Real,
-            first: Real = first,
-            free: list[int] = free,
-            seen: tuple[Real, Real, Real, float] = (t, s, light, base),
-        ) -> Real:
-            p = first.copy()
-            p[free] = q
-            return _rigid(p, *seen)[0]
-
-        scale = np.array([1, 0.05, 0.05, 0.3])[free]
-        solved = least_squares(left, first[free], bounds=(low[free], high[free]), x_scale=scale, max_nfev=25)
+    def left(q: Real) -> Real:
         p = first.copy()
-        p[free] = solved.x
-        turn, sigma = base + p[1], float(np.exp(p[3]))
-        x, y = state[0] + p[0] * np.cos(turn), state[1] + p[0] * np.sin(turn)
-        state = np.array([x, y, np.exp(p[2]), turn])
-        share = 1 - 2 * solved.cost / max(float(np.var(light)) * light.size, 1e-300)
-    return share, np.append(state, sigma)
+        p[free] = q
+        return _rigid(p, t, s, light, base)[0]
+
+    def slopes(q: Real) -> Real:
+        at = left(q)
+        return np.stack(
+            [(left(q + h * unit) - at) / h for h, unit in zip(steps, np.eye(len(free)), strict=True)], axis=1
+        )
+
+    scale = np.array([1, 0.05, 0.05, 0.3])[free]
+    solved = least_squares(left, first[free], slopes, bounds=(low[free], high[free]), x_scale=scale, max_nfev=most)
+    p = first.copy()
+    p[free] = solved.x
+    turn = base + p[1]
+    x, y = start[0] + p[0] * np.cos(turn), start[1] + p[0] * np.sin(turn)
+    share = 1 - 2 * solved.cost / max(float(np.var(light)) * light.size, 1e-300)
+    return share, np.array([x, y, np.exp(p[2]), turn, np.exp(p[3])])
 
 
 def _contrast(q: Real, base: float) -> float:
@@ -266,7 +272,8 @@ def _read_out(values: Real, own: NDArray[np.bool_] | None, state: Real, *, fixed
     design = np.column_stack([columns[:, :3], columns[:, 3:6].sum(axis=1), columns[:, 3:7]])
     # d and g are expected to be nothing, give or take some per cent of a: that many pixels' worth of evidence
     prior = np.zeros(8)
-    prior[4:] = variance / max((UNLIKE * rigid[3]) ** 2, 1e-300)
+    rise = max(abs(float(rigid[3])), 1e-150)
+    prior[4:] = max(variance, (EXACT * rise) ** 2) / (UNLIKE * rise) ** 2
     factors = np.linalg.solve(design.T @ design + np.diag(prior) + 1e-12 * np.eye(8), design.T @ light)
     left = light - design @ factors
     variance = float(left @ left) / max(1, light.size - 12)
