@@ -103,6 +103,23 @@ def _pair(name: str, asked: object) -> tuple[float, float]:
     return number(name, asked[0], "%", 0.001, 1.0), number(name, asked[1], "%", 0.001, 1.0)
 
 
+def colours(asked: object) -> tuple[tuple[float, float, float], ...]:
+    """Turn an option into colours L*, a*, b*.
+
+    Raises:
+        ValueError: It is no list of three numbers each, or a lightness lies outside 0 to 105.
+    """
+    made = []
+    rows = asked if isinstance(asked, Sequence) and not isinstance(asked, str) else [asked]
+    for n, one in enumerate(rows, 1):
+        good = isinstance(one, Sequence) and not isinstance(one, str) and len(one) == 3
+        good = good and all(isinstance(part, (int, float)) and not isinstance(part, bool) for part in one)
+        if not good or not (0 <= one[0] <= 105 and max(abs(one[1]), abs(one[2])) <= 200):
+            raise ValueError(f"lab {n} is {one!r}; allowed is [L*, a*, b*], L* from 0 to 105, the others within ±200")
+        made.append((float(one[0]), float(one[1]), float(one[2])))
+    return tuple(made)
+
+
 @dataclass(frozen=True)
 class Patches:
     """The patches of a region in one reading of where they lie."""

@@ -16,7 +16,7 @@ Real = NDArray[np.float64]
 
 DRAWS = 1000
 """Draws of the noise: a mean is then known within 3 % of its spread."""
-FACTORS: Real = np.concatenate([np.linspace(0, 2, 17), np.geomspace(2.2, 12, 14)])
+FACTORS: Real = np.concatenate([np.linspace(0, 2, 11), np.geomspace(2.4, 12, 8)])
 """Of the deviations as found: from none at all to many times as large."""
 
 
