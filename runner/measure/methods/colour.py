@@ -33,6 +33,7 @@ Real = NDArray[np.float64]
 
 NAME = "colour"
 TITLE = "Colour"
+GROUP = "tone and colour"
 TOGETHER = True
 NEEDS = frozenset({"colour patches"})
 REFERENCES = (

@@ -32,6 +32,7 @@ Real = NDArray[np.float64]
 
 NAME = "noise and dynamic range"
 TITLE = "Noise and dynamic range"
+GROUP = "tone and colour"
 TOGETHER = True
 NEEDS = frozenset({"grey steps"})
 REFERENCES = (

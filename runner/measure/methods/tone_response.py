@@ -30,6 +30,7 @@ Real = NDArray[np.float64]
 
 NAME = "tone response"
 TITLE = "Tone response"
+GROUP = "tone and colour"
 NEEDS = frozenset({"grey steps"})
 REFERENCES = (
     "ISO 14524:2009 (opto-electronic conversion function)",

@@ -24,6 +24,7 @@ Real = NDArray[np.float64]
 
 NAME = "colour patches"
 TITLE = "Colour patches"
+GROUP = "tone and colour"
 OFFERS = frozenset({"colour patches"})
 METHODS = ("colour",)
 AGREES, CERTAIN = 0.7, 0.9

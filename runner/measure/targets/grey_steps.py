@@ -17,6 +17,7 @@ from runner.spec.model import Camera, Region
 
 NAME = "grey steps"
 TITLE = "Grey steps"
+GROUP = "tone and colour"
 OFFERS = frozenset({"grey steps"})
 METHODS = ("tone response",)
 REFERENCES = (
