@@ -60,20 +60,20 @@ def test_reversed_contrast_is_modulation_again() -> None:
 
 
 def test_the_stated_noise_is_the_noise() -> None:
-    """Over 30 noisy stars the mean over segments scatters as stated, and single segments too: 0.8 to 1.25 pooled."""
+    """Over 12 noisy stars the mean over segments scatters as stated, and single segments too: 0.7 to 1.35 pooled."""
     scene = StarScene(size=(240, 230), centre=(120.2, 114.7), outer=108, noise=0.02)
     quiet, rng = scene.light(), np.random.default_rng(4)
     true = np.array([[scene.mtf(f, k * np.pi / 4, np.pi / 4) for f in F[1:]] for k in range(8)]) * scene.modulation
     off, segments = [], []
-    for _ in range(30):
+    for _ in range(12):
         fit = _fit(scene, quiet + rng.normal(0, scene.noise, quiet.shape))
         mean, u = fit.mean(F[1:])
         off.append((mean - true.mean(axis=0)) / u)
         size, su = fit.segment(F[1:])
         segments.append((size - true) / su)
 
-    assert 0.8 < np.std(off) < 1.25
-    assert 0.8 < np.std(segments) < 1.25
+    assert 0.7 < np.std(off) < 1.35
+    assert 0.7 < np.std(segments) < 1.35
     assert abs(np.mean(off)) < 0.35
 
 

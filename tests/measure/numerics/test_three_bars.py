@@ -79,10 +79,10 @@ def test_a_blur_that_is_no_gaussian() -> None:
 
 
 def test_the_stated_uncertainty_covers() -> None:
-    """Over 25 noisy patterns ±2u holds contrast and period in 93 % less two deviations of the sample, or more."""
+    """Over 15 noisy patterns ±2u holds contrast and period in 93 % less two deviations of the sample, or more."""
     rng = np.random.default_rng(8)
     off: dict[str, list[float]] = {"contrast": [], "period": []}
-    for _ in range(25):
+    for _ in range(15):
         period, turn = rng.uniform(5, 12), rng.uniform(-1.5, 1.5)
         side = int(4 * period) + 8
         scene = ThreeBars(
@@ -93,7 +93,7 @@ def test_the_stated_uncertainty_covers() -> None:
         off["contrast"].append((found.contrast - scene.seen_contrast()) / np.hypot(found.contrast_u, 1.5e-3))
         off["period"].append((found.period - period) / np.hypot(found.period_u, 5e-4 * period))
     for each in off.values():
-        assert np.mean(np.abs(each) <= 2) >= 0.93 - 2 * np.sqrt(0.93 * 0.07 / 25)
+        assert np.mean(np.abs(each) <= 2) >= 0.93 - 2 * np.sqrt(0.93 * 0.07 / 15)
         assert 0.4 < np.std(each) < 1.35
 
 
