@@ -9,6 +9,8 @@ References:
     JCGM 101:2008 (propagation of distributions by draws).
 """
 
+from functools import lru_cache
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -20,6 +22,7 @@ FACTORS: Real = np.concatenate([np.linspace(0, 2, 11), np.geomspace(2.4, 12, 8)]
 """Of the deviations as found: from none at all to many times as large."""
 
 
+@lru_cache(maxsize=8)
 def normal_draws(seed: int, *shape: int) -> Real:
     """Return standard normal draws (DRAWS, …) whose mean is zero: the second half is the first with the other sign.
 
@@ -28,7 +31,9 @@ def normal_draws(seed: int, *shape: int) -> Real:
         shape: Of one draw.
     """
     half = np.random.default_rng(seed).standard_normal((DRAWS // 2, *shape))
-    return np.asarray(np.concatenate([half, -half]))
+    draws = np.concatenate([half, -half])
+    draws.flags.writeable = False  # the same draws serve again
+    return np.asarray(draws)
 
 
 def told(read: float, means: Real, spreads: Real, factors: Real = FACTORS) -> tuple[float, float]:

@@ -107,8 +107,10 @@ FAULTS = {
 }
 
 
-@pytest.mark.parametrize("fault", FAULTS)
-@pytest.mark.parametrize("tone", ["linear", "srgb"])
+@pytest.mark.parametrize(
+    ("fault", "tone"),
+    [("none", "linear"), ("warm", "linear"), ("pale", "linear"), ("turned", "linear"), ("warm", "srgb")],
+)
 def test_faults_are_told_as_another_library_has_them(fault: str, tone: str) -> None:
     """White balance, chroma, hue and differences of known faults, within 0.03 or 1 % of skimage's (3 u besides)."""
     rgb = RGB @ FAULTS[fault].T
@@ -338,12 +340,12 @@ def _check(found: dict[str, tuple[float, float, float]], room: float, *, at_zero
 
 
 def test_the_uncertainty_holds() -> None:
-    """±2 u holds the truth in 93 to 97 % of captures, spread/u is 0.8 to 1.25; 24 captures leave room for chance.
+    """±2 u holds the truth in 93 to 97 % of captures, spread/u is 0.8 to 1.25; 16 captures leave room for chance.
 
     Sizes of a camera without fault are zero, where there is no upper end.
     """
-    _check(coverage(18, 3, ("warm", "pale", "turned")), 0.16, at_zero=False)
-    _check(coverage(6, 4, ("none",)), 0.45, at_zero=True)
+    _check(coverage(12, 3, ("warm", "pale", "turned")), 0.19, at_zero=False)
+    _check(coverage(4, 4, ("none",)), 0.5, at_zero=True)
 
 
 @pytest.mark.study

@@ -236,10 +236,10 @@ def coverage(draws: int, seed: int) -> dict[str, tuple[float, float, float]]:
 
 
 def test_the_uncertainty_holds() -> None:
-    """±2 u holds the truth in 93 to 97 % of captures, spread/u is 0.8 to 1.25; 24 captures leave room for chance."""
-    for name, (share, spread, _) in coverage(24, 8).items():
-        assert share >= 0.75, name
-        assert 0.65 < spread < 1.45, name
+    """±2 u holds the truth in 93 to 97 % of captures, spread/u is 0.8 to 1.25; 16 captures leave room for chance."""
+    for name, (share, spread, _) in coverage(16, 8).items():
+        assert share >= 0.7, name
+        assert 0.55 < spread < 1.6, name
 
 
 @pytest.mark.study

@@ -18,13 +18,13 @@ def _off(chart: PatchChart, centres: np.ndarray) -> float:
 
 
 def test_charts_in_many_views() -> None:
-    """Of 24 random views (8° turned, 3 % slant, four grounds, gaps to 20 %) every patch's centre lies within 0.2 patch.
+    """Of 12 random views (8° turned, 3 % slant, four grounds, gaps to 20 %) every patch's centre lies within 0.2 patch.
 
     A clear middle that keeps a fifth of the patch free at each border stays within the patch then. Of values in no
     order the best grid is the right one.
     """
     rng = np.random.default_rng(21)
-    for draw in range(24):
+    for draw in range(12):
         lights = grey(rng.uniform(0.03, 0.9, 24).tolist())
         chart = PatchChart(
             lights,

@@ -50,20 +50,20 @@ def test_light_of_saturation_and_rise_from_dark() -> None:
 
 
 def test_noise_of_the_curve_is_that_of_draws() -> None:
-    """Stated noise of code, exponent, saturation and rise agrees with the scatter of 400 noisy curves, within 20 %."""
+    """Stated noise of code, exponent, saturation and rise agrees with the scatter of 120 noisy curves, within 30 %."""
     rng = np.random.default_rng(6)
     u, light_u = 2.0 + 0.004 * 4000 * STEPS, 0.01
     clean = tone_curve(STEPS, 4000 * STEPS, u, light_u)
     figures = [clean.code_at(0.18), clean.exponent_at(0.18), clean.light_at(4000), clean.rise_from_dark()]
     drawn = []
-    for _ in range(400):
+    for _ in range(120):
         lights = STEPS * (1 + light_u * rng.standard_normal(STEPS.size))
         one = tone_curve(lights, 4000 * STEPS + u * rng.standard_normal(STEPS.size), u)
         drawn.append(
             [one.code_at(0.18).value, one.exponent_at(0.18).value, one.light_at(4000).value, one.rise_from_dark().value]
         )
     for figure, spread in zip(figures, np.std(drawn, axis=0), strict=True):
-        assert np.hypot(figure.noise, figure.light) == pytest.approx(float(spread), rel=0.2)
+        assert np.hypot(figure.noise, figure.light) == pytest.approx(float(spread), rel=0.3)
 
 
 def test_steps_out_of_order_by_noise_are_taken_together() -> None:
