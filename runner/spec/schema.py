@@ -20,6 +20,7 @@ def spec_schema() -> dict[str, Any]:
     required = schema.pop("required")
     schema["if"] = {"not": {"required": ["include"]}}
     schema["then"] = {"required": required}
+    schema["$defs"]["FramesShape"]["type"] = ["object", "string"]  # the pattern alone stands for a mapping with it
     for name in ("LimitShape", "CaptureShape", "RegionShape"):
         schema["$defs"][name]["properties"]["remove"] = REMOVE
     return {"$schema": DIALECT, **schema}
