@@ -13,11 +13,14 @@ from numpy.typing import NDArray
 from runner.measure.numerics.colour_conversion import Way, srgb_of, tristimulus
 from runner.measure.numerics.colour_difference import ciede2000
 from runner.measure.numerics.colour_spaces import chroma_of, lab_of, xyz_of
-from runner.measure.numerics.sizes import FACTORS, normal_draws, told
+from runner.measure.numerics.sizes import FACTORS, normal_draws, shrunk, told
 
 Real = NDArray[np.float64]
 
 SEED = 11664
+DIFFERENCE = "difference"
+ROUNDING = 0.015, 2e-4
+"""Four digits of sRGB's matrix and of whites move a difference, and a ratio, by so much (standard uncertainties)."""
 NEUTRAL, CHROMATIC = 5.0, 10.0
 """Chroma of a reference below which it is neutral, and above which it has a hue."""
 NOT_BLACK = 20.0
@@ -72,25 +75,44 @@ def figures(colours: Colours, way: Way) -> dict[str, Told]:
         colours: The patches.
         way: How their light becomes tristimulus values.
     """
-    lab = measured_lab(colours, way)
-    found = lab - colours.lab
-    noise = {cause: _moved(colours, way, (cause,)) for cause in CAUSES}
+    found = measured_lab(colours, way) - colours.lab
+    causes = {cause: _moved(colours, way, (cause,)) for cause in CAUSES}
     both = _moved(colours, way, CAUSES)
-    sizes = _sizes(colours)
-
-    def read(offsets: Real) -> Real:
-        return np.concatenate([of(colours.lab + offsets) for of in sizes.values()], axis=-1)
-
-    names = [name for name, of in sizes.items() for name in _names(name, of(lab[None]).shape[1])]
-    plain = read(found[None])[0]
-    drawn = [read(factor * found + both) for factor in FACTORS]
-    means, spreads = np.array([d.mean(axis=0) for d in drawn]), np.array([d.std(axis=0) for d in drawn])
-    shares = _shares({cause: read(found + moved).var(axis=0) for cause, moved in noise.items()})
-    made = {}
-    for n, name in enumerate(names):
-        value, u = told(float(plain[n]), means[:, n], spreads[:, n])
-        made[name] = Told(value, {cause: u * float(np.sqrt(share[n])) for cause, share in shares.items()})
+    made: dict[str, Told] = {}
+    for kind, of in _sizes(colours).items():
+        made |= _told(colours.lab, found, both, causes, kind, of)
     return made
+
+
+def _told(
+    lab: Real, found: Real, both: Real, causes: Mapping[str, Real], kind: str, of: Callable[[Real], Real]
+) -> dict[str, Told]:
+    """Return what can be told of one kind of size: of a difference also of each patch and the largest."""
+    base = found.copy()
+    each, noise = of(lab + found[None])[0], of(lab + both)
+    base[_those(kind, lab)] *= shrunk(each, noise)[:, None]
+    plain, size = (_gathered(kind, of(lab + offsets[None]))[0] for offsets in (found, base))
+    drawn = [_gathered(kind, of(lab + factor * base + both)) for factor in FACTORS]
+    means, spreads = np.array([d.mean(axis=0) for d in drawn]), np.array([d.std(axis=0) for d in drawn])
+    shares = _shares({cause: _gathered(kind, of(lab + found + moved)).var(axis=0) for cause, moved in causes.items()})
+    made = {}
+    for n, name in enumerate(_names(kind, plain.size)):
+        value, u = told(float(plain[n]), float(size[n]), means[:, n], spreads[:, n])
+        parts = {cause: u * float(np.sqrt(share[n])) for cause, share in shares.items()}
+        made[name] = Told(value, parts | {"conversion's rounding": ROUNDING[0]})
+    return made
+
+
+def _gathered(kind: str, each: Real) -> Real:
+    """Return the sizes that are told of those of patches (draws, n): of differences all, their mean and the largest."""
+    mean = each.mean(axis=1, keepdims=True)
+    return np.concatenate([each, mean, each.max(axis=1, keepdims=True)], axis=1) if kind == DIFFERENCE else mean
+
+
+def _those(kind: str, lab: Real) -> NDArray[np.bool_]:
+    """Return the patches that a kind of size is taken over."""
+    chroma = chroma_of(lab)
+    return np.asarray({"hue": chroma > CHROMATIC, "neutral": chroma < NEUTRAL}.get(kind, chroma >= 0))
 
 
 def measured_lab(colours: Colours, way: Way) -> Real:
@@ -125,25 +147,22 @@ def _moved(colours: Colours, way: Way, causes: tuple[str, ...]) -> Real:
 
 
 def _sizes(colours: Colours) -> dict[str, Callable[[Real], Real]]:
-    """Return the sizes that can be told, each a function of colours (draws, n, 3) to (draws, k)."""
+    """Return the sizes that can be told, each a function of colours (draws, n, 3) to those of patches (draws, k)."""
     reference, neutral, chromatic = colours.lab, colours.neutral, colours.chromatic
 
     def differences(lab: Real) -> Real:
-        each = ciede2000(lab, reference)
-        mean, worst = each.mean(axis=1, keepdims=True), each.max(axis=1, keepdims=True)
-        return np.concatenate([each, mean, worst], axis=1)
+        return ciede2000(lab, reference)
 
     def hues(lab: Real) -> Real:
         a, b = lab[:, chromatic, 1], lab[:, chromatic, 2]
         a0, b0 = reference[chromatic, 1], reference[chromatic, 2]
-        turned = np.degrees(np.arctan2(a0 * b - b0 * a, a0 * a + b0 * b))
-        return np.asarray(np.abs(turned).mean(axis=1, keepdims=True))
+        return np.asarray(np.abs(np.degrees(np.arctan2(a0 * b - b0 * a, a0 * a + b0 * b))))
 
     def chromas(lab: Real) -> Real:
         off = lab[:, neutral, 1:] - reference[neutral, 1:]
-        return np.asarray(np.hypot(off[..., 0], off[..., 1]).mean(axis=1, keepdims=True))
+        return np.asarray(np.hypot(off[..., 0], off[..., 1]))
 
-    made: dict[str, Callable[[Real], Real]] = {"patch": differences}
+    made: dict[str, Callable[[Real], Real]] = {DIFFERENCE: differences}
     if chromatic.any():
         made["hue"] = hues
     if neutral.any():
@@ -151,8 +170,8 @@ def _sizes(colours: Colours) -> dict[str, Callable[[Real], Real]]:
     return made
 
 
-def _names(name: str, count: int) -> list[str]:
-    return [name] if count == 1 else [f"patch {n}" for n in range(1, count - 1)] + ["mean", "worst"]
+def _names(kind: str, count: int) -> list[str]:
+    return [f"patch {n}" for n in range(1, count - 1)] + ["mean", "worst"] if kind == DIFFERENCE else [kind]
 
 
 def _shares(variances: Mapping[str, Real]) -> dict[str, Real]:
@@ -198,4 +217,4 @@ def _ratio(colours: Colours, way: Way, of: Callable[[Real, Real], Real]) -> Told
         return of(tristimulus(rgb, xyz_of(lab, way.target), _matching(colours), way), lab)
 
     parts = {cause: float(value(*_drawn(colours, (cause,))).std()) for cause in CAUSES}
-    return Told(float(value(colours.rgb, colours.lab)), parts)
+    return Told(float(value(colours.rgb, colours.lab)), parts | {"conversion's rounding": ROUNDING[1]})

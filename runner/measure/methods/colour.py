@@ -367,9 +367,13 @@ def _u(told: Told) -> float:
 def _of(blank: Reading, told: Told | None, scale: float, kind: str, less: float = 0.0) -> Reading:
     if told is None:
         return replace(blank, refusal=Refusal("not defined", f"the references hold no {kind} patches"))
-    shared = {"references": "colour references", "uneven light": None, "noise": None}
     parts = tuple(
-        Component(name, scale * u, "A" if name == "noise" else "B", shared=shared[name])
+        Component(
+            name,
+            scale * u,
+            "A" if name == "noise" else "B",
+            shared="colour references" if name == "references" else None,
+        )
         for name, u in told.parts.items()
         if u > 0
     )

@@ -78,6 +78,6 @@ def _size(found: Real, noise: Real, light: Real, *, largest: bool) -> Size:
     for n, factor in enumerate(factors):
         drawn = size(factor * found + both)
         means[n], spreads[n] = float(drawn.mean()), float(drawn.std())
-    value, u = told(read, means, spreads, factors)
+    value, u = told(read, read, means, spreads, factors)
     share = float(noise.var() / (noise.var() + light.var()))
     return Size(value, float(u * np.sqrt(share)), float(u * np.sqrt(1 - share)))

@@ -36,17 +36,31 @@ def normal_draws(seed: int, *shape: int) -> Real:
     return np.asarray(draws)
 
 
-def told(read: float, means: Real, spreads: Real, factors: Real = FACTORS) -> tuple[float, float]:
+def shrunk(found: Real, noise: Real) -> Real:
+    """Return by what each deviation is made smaller at first: those that noise alone explains do not count.
+
+    Without that, parts that have no deviation would be taken for as large as their noise.
+
+    Args:
+        found: Sizes of the parts as found, (n,).
+        noise: Sizes that noise alone gives, (draws, n).
+    """
+    explained = np.mean(noise**2, axis=0) / np.maximum(found**2, 1e-300)
+    return np.asarray(np.sqrt(np.maximum(1 - explained, 0)))
+
+
+def told(read: float, size: float, means: Real, spreads: Real, factors: Real = FACTORS) -> tuple[float, float]:
     """Return the size without what noise adds, and its standard uncertainty.
 
     Args:
         read: Size of the deviations as found, noise and all.
-        means: Mean size over draws where the deviations are so many times those found, and the noise is put on.
+        size: Size of the deviations that the factors multiply: those found, or made smaller one by one before.
+        means: Mean size over draws where the deviations are so many times these, and the noise is put on.
         spreads: Standard deviations over these draws.
         factors: How many times, rising; they hold 1.
     """
     value, high, low = (
-        _crossing(factors, np.maximum.accumulate(curve), read) * read
+        _crossing(factors, np.maximum.accumulate(curve), read) * size
         for curve in (means, means - 2 * spreads, means + 2 * spreads)
     )
     # a reading that lies below what noise alone gives is chance, and no knowledge of the size
